@@ -68,17 +68,17 @@ type Code string
 
 // The doubts that reading and preparing a spectrum can raise.
 const (
-	MediumAssumed   Code = "medium_assumed"   // air or vacuum was not stated
-	FrameAssumed    Code = "frame_assumed"    // velocity frame was not stated
-	UnitAssumed     Code = "unit_assumed"     // wavelength unit was not stated
-	LayoutAssumed   Code = "layout_assumed"   // columns or axes were guessed
-	NoiseEstimated  Code = "noise_estimated"  // no errors in the input
-	WeightsSuspect  Code = "weights_suspect"  // stated errors disagree with the scatter
-	PixelsDropped   Code = "pixels_dropped"   // repeated, unordered or non-finite wavelengths dropped
-	CoverageCut     Code = "coverage_cut"     // wavelengths outside the supported range cut
-	ArmsRescaled    Code = "arms_rescaled"    // arms brought to a common flux level
-	FrameUncertain  Code = "frame_uncertain"  // correction stated in words only, or contradictory cards
-	RestFrameStated Code = "rest_frame"       // the file says the redshift was already taken out
+	MediumAssumed   Code = "medium_assumed"  // air or vacuum was not stated
+	FrameAssumed    Code = "frame_assumed"   // velocity frame was not stated
+	UnitAssumed     Code = "unit_assumed"    // wavelength unit was not stated
+	LayoutAssumed   Code = "layout_assumed"  // columns or axes were guessed
+	NoiseEstimated  Code = "noise_estimated" // no errors in the input
+	WeightsSuspect  Code = "weights_suspect" // stated errors disagree with the scatter
+	PixelsDropped   Code = "pixels_dropped"  // repeated, unordered or non-finite wavelengths dropped
+	CoverageCut     Code = "coverage_cut"    // wavelengths outside the supported range cut
+	ArmsRescaled    Code = "arms_rescaled"   // arms brought to a common flux level
+	FrameUncertain  Code = "frame_uncertain" // correction stated in words only, or contradictory cards
+	RestFrameStated Code = "rest_frame"      // the file says the redshift was already taken out
 )
 
 // Warning is a doubt that travels with its spectrum to the catalog row.

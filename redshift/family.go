@@ -1,0 +1,234 @@
+// Package redshift finds the redshift of a spectrum: it scans rest-frame
+// template families over their redshift ranges, judges the best few peaks of
+// each by one exact joint fit with the continuum, refines the winner below the
+// pixel, and says how sure the answer is.
+//
+// A template family is a handful of components, each a set of lines, bands or
+// breaks whose ratios are fixed by physics, with one free, non-negative
+// amplitude. Emission adds to the continuum; absorption multiplies it.
+package redshift
+
+import (
+	"math"
+)
+
+const (
+	speedOfLight  = 299792.458 // km/s
+	maxComponents = 16
+	// reach is how many sigma of a Gaussian are drawn.
+	reach = 4.0
+	ln10 = math.Ln10
+)
+
+// Family is a compiled template family. It is immutable.
+type Family struct {
+	Name    string
+	Class   string
+	Summary string
+	Digest  string
+	ZMin    float64
+	ZMax    float64
+	Widths  []float64
+
+	components []component
+	expected   []expectedLine
+}
+
+type expectedLine struct {
+	name    string
+	logWave float64
+}
+
+// component is a set of shapes of fixed ratios.
+type component struct {
+	name       string
+	absorption bool
+	width      float64 // km/s; 0: the family's
+	scale      float64 // on the family's width
+	terms      []term
+	edges      []edge
+	heads      []head
+	forest     bool
+}
+
+// term is a Gaussian.
+type term struct {
+	name    string // of the line, empty for a bump
+	logWave float64
+	width   float64 // km/s; 0: the component's
+	amp     float64
+}
+
+// sigmaKms returns the Gaussian width of a term for a family width.
+func (c *component) sigmaKms(t *term, familyWidth float64) float64 {
+	if t.width > 0 {
+		return t.width
+	}
+	if c.width > 0 {
+		return c.width
+	}
+	return familyWidth * c.scale
+}
+
+// dense reports whether the component reaches over most of a spectrum.
+func (c *component) dense() bool { return c.forest || len(c.edges) > 0 || len(c.heads) > 0 }
+
+// run is a half-open range of pixels.
+type run struct{ lo, hi int }
+
+// drawing is a component drawn on the pixels of a level: values, zero outside
+// runs.
+type drawing struct {
+	values []float64
+	runs   []run
+}
+
+func (d *drawing) reset(n int) {
+	if cap(d.values) < n {
+		d.values = make([]float64, n)
+		d.runs = d.runs[:0]
+		return
+	}
+	if len(d.values) == n {
+		for _, r := range d.runs {
+			clear(d.values[r.lo:r.hi])
+		}
+	} else {
+		d.values = d.values[:n]
+		clear(d.values)
+	}
+	d.runs = d.runs[:0]
+}
+
+// include adds a range and merges it with the runs it touches; runs stay
+// sorted.
+func (d *drawing) include(lo, hi int) {
+	i := 0
+	for i < len(d.runs) && d.runs[i].hi < lo {
+		i++
+	}
+	j := i
+	for j < len(d.runs) && d.runs[j].lo <= hi {
+		lo, hi = min(lo, d.runs[j].lo), max(hi, d.runs[j].hi)
+		j++
+	}
+	if i == j {
+		d.runs = append(d.runs, run{})
+		copy(d.runs[i+1:], d.runs[i:])
+		d.runs[i] = run{lo, hi}
+		return
+	}
+	d.runs[i] = run{lo, hi}
+	d.runs = append(d.runs[:i+1], d.runs[j:]...)
+}
+
+// draw draws the component at 1+z = 10^shift on n pixels that start at log10
+// wavelength start with the given step. Absorption shapes come out negative:
+// the caller multiplies them by the continuum.
+func (c *component) draw(d *drawing, n int, start, step, shift, familyWidth float64) {
+	d.reset(n)
+	sign := 1.0
+	if c.absorption {
+		sign = -1
+	}
+	for i := range c.terms {
+		t := &c.terms[i]
+		sigma := c.sigmaKms(t, familyWidth) / (speedOfLight * ln10 * step)
+		gaussian(d, n, (t.logWave+shift-start)/step, sigma, sign*t.amp)
+	}
+	if !c.dense() {
+		return
+	}
+	zp1 := math.Pow(10, shift)
+	wave0, ratio := math.Pow(10, start)/zp1, math.Pow(10, step)
+	for _, e := range c.edges {
+		drawEdge(d, n, wave0, ratio, e)
+	}
+	for _, h := range c.heads {
+		drawHead(d, n, wave0, ratio, h)
+	}
+	if c.forest {
+		forest().draw(d, n, start-shift, step, zp1-1)
+	}
+}
+
+// gaussian adds amp*exp(-(i-center)^2/(2 sigma^2)) by the recurrence for equal
+// steps, outward from the pixel next to the center.
+func gaussian(d *drawing, n int, center, sigma, amp float64) {
+	half := reach * sigma
+	lo, hi := int(math.Ceil(center-half)), int(math.Floor(center+half))+1
+	lo, hi = max(0, lo), min(n, hi)
+	if lo >= hi {
+		return
+	}
+	d.include(lo, hi)
+	mid := max(lo, min(hi-1, int(math.Round(center))))
+	q := 1 / (sigma * sigma)
+	step2 := math.Exp(-q)
+	u := float64(mid) - center
+	g0 := amp * math.Exp(-0.5*u*u*q)
+	g, r := g0, math.Exp(-(u+0.5)*q)
+	for i := mid; i < hi; i++ {
+		d.values[i] += g
+		g *= r
+		r *= step2
+	}
+	g, r = g0, math.Exp((u-0.5)*q)
+	for i := mid - 1; i >= lo; i-- {
+		g *= r
+		r *= step2
+		d.values[i] += g
+	}
+}
+
+// drawEdge adds a logistic step: -height blueward, 0 redward.
+func drawEdge(d *drawing, n int, wave0, ratio float64, e edge) {
+	lo, hi := 0, n
+	wave := wave0
+	for i := 0; i < n; i++ {
+		if wave < e.From {
+			lo = i + 1
+		}
+		q := (wave - e.Wave) / e.Width
+		if q > 12 {
+			hi = i
+			break
+		}
+		if wave >= e.From {
+			d.values[i] -= e.Height / (1 + math.Exp(q))
+		}
+		wave *= ratio
+	}
+	if lo < hi {
+		d.include(lo, hi)
+	}
+}
+
+// drawHead adds a molecular band: a sharp head and an exponential tail.
+func drawHead(d *drawing, n int, wave0, ratio float64, h head) {
+	const blur = 6.0 // Angstrom, softness of the head on its steep side
+	lo, hi := n, 0
+	wave := wave0
+	for i := 0; i < n; i++ {
+		q := wave - h.Wave
+		if h.Blue {
+			q = -q
+		}
+		v := 0.0
+		switch {
+		case q >= 0 && q < 6*h.Tail:
+			v = math.Exp(-q / h.Tail)
+		case q < 0 && q > -3*blur:
+			v = math.Exp(-q * q / (blur * blur))
+		}
+		if v > 0 {
+			d.values[i] -= h.Depth * v
+			lo, hi = min(lo, i), max(hi, i+1)
+		}
+		wave *= ratio
+	}
+	if lo < hi {
+		d.include(lo, hi)
+	}
+}
+

@@ -1,0 +1,61 @@
+package redshift
+
+import (
+	"math"
+	"sync"
+
+	"duskline/hydrogen"
+)
+
+// forestTable tabulates the mean Lyman-series transmission of the
+// intergalactic medium less one (Inoue et al. 2014) over source redshift and
+// rest wavelength. In the rest frame the edges of the series stay in place, so
+// that interpolation between redshifts is smooth.
+type forestTable struct {
+	values [][]float64 // [redshift][rest pixel]
+}
+
+const (
+	forestStart = 2.7782 // log10 of 600 Angstrom
+	forestStep  = 4e-4   // dex
+	forestDz    = 0.1
+	forestZMax  = 8.0
+	forestEdge  = 1215.67
+)
+
+// forest builds the table at its first use.
+var forest = sync.OnceValue(func() *forestTable {
+	n := int((math.Log10(forestEdge)-forestStart)/forestStep) + 1
+	t := &forestTable{}
+	for k := 0; float64(k)*forestDz <= forestZMax; k++ {
+		z := float64(k) * forestDz
+		row := make([]float64, n)
+		for i := range row {
+			row[i] = hydrogen.Transmission(z, math.Pow(10, forestStart+float64(i)*forestStep)*(1+z)) - 1
+		}
+		t.values = append(t.values, row)
+	}
+	return t
+})
+
+// draw adds transmission less one for a source at redshift z on n pixels whose
+// rest-frame log10 wavelengths start at start. Below the table its first value
+// holds.
+func (t *forestTable) draw(d *drawing, n int, start, step, z float64) {
+	last := int(math.Ceil((math.Log10(forestEdge) - start) / step))
+	if last <= 0 || z <= 0 {
+		return
+	}
+	last = min(last, n)
+	k := min(int(z/forestDz), len(t.values)-2)
+	f := min(1, z/forestDz-float64(k))
+	a, b := t.values[k], t.values[k+1]
+	top := float64(len(a) - 1)
+	for i := 0; i < last; i++ {
+		p := max(0, min(top, (start+float64(i)*step-forestStart)/forestStep))
+		j := min(int(p), len(a)-2)
+		u := p - float64(j)
+		d.values[i] += (1-f)*((1-u)*a[j]+u*a[j+1]) + f*((1-u)*b[j]+u*b[j+1])
+	}
+	d.include(0, last)
+}

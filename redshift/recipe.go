@@ -1,0 +1,237 @@
+package redshift
+
+import (
+	"bytes"
+	"crypto/sha256"
+	"encoding/hex"
+	"errors"
+	"fmt"
+	"math"
+
+	"duskline/hydrogen"
+	"duskline/linelist"
+
+	"github.com/pelletier/go-toml/v2"
+)
+
+// Recipe is the TOML form of a template family: what it is made of, where each
+// number comes from, and over which redshifts it is tried.
+type Recipe struct {
+	Name     string    `toml:"name"`
+	Class    string    `toml:"class"`
+	Summary  string    `toml:"summary"`
+	Redshift []float64 `toml:"redshift"` // first and last redshift
+	Widths   []float64 `toml:"widths"`   // Gaussian sigma of the lines, km/s; the family is tried with each
+	// Expected names the lines that should stand out when the family is right
+	// and the lines are covered.
+	Expected   []string          `toml:"expected"`
+	Components []ComponentRecipe `toml:"component"`
+}
+
+// ComponentRecipe is one component: shapes with fixed ratios and one free,
+// non-negative amplitude.
+type ComponentRecipe struct {
+	Name string `toml:"name"`
+	// Kind is "emission" (adds to the continuum) or "absorption" (multiplies
+	// it; its shapes are depths).
+	Kind       string       `toml:"kind"`
+	Width      float64      `toml:"width"`       // Gaussian sigma in km/s; the family's when 0
+	WidthScale float64      `toml:"width_scale"` // factor on the family's width; 1 when 0
+	Source     string       `toml:"source"`
+	Lines      []lineRatio  `toml:"lines"`
+	CaseB      *caseBRecipe `toml:"case_b"`
+	Bumps      []bump       `toml:"bumps"`
+	Edges      []edge       `toml:"edges"`
+	Heads      []head       `toml:"heads"`
+	Forest     bool         `toml:"forest"`
+}
+
+type lineRatio struct {
+	Line  string  `toml:"line"`
+	Ratio float64 `toml:"ratio"`
+	// Shift moves the line against the family's redshift, km/s, as outflows do.
+	Shift float64 `toml:"shift"`
+}
+
+// caseBRecipe asks for hydrogen recombination lines of the Balmer series at
+// their Case B ratios.
+type caseBRecipe struct {
+	Temperature float64 `toml:"temperature"`
+	Density     float64 `toml:"density"`
+	Upper       []int   `toml:"upper"`
+}
+
+type bump struct {
+	Wave   float64 `toml:"wave"`   // vacuum Angstrom
+	Width  float64 `toml:"width"`  // Gaussian sigma, km/s
+	Height float64 `toml:"height"` // relative
+}
+
+type edge struct {
+	Wave   float64 `toml:"wave"`
+	Width  float64 `toml:"width"`  // Angstrom, of the logistic step
+	Height float64 `toml:"height"` // depth on the blue side
+	From   float64 `toml:"from"`   // blue end of the step, Angstrom; 0 for none
+}
+
+type head struct {
+	Wave  float64 `toml:"wave"`
+	Depth float64 `toml:"depth"`
+	Tail  float64 `toml:"tail"` // e-folding length of the band, Angstrom
+	Blue  bool    `toml:"blue"` // band degrades to the blue
+}
+
+var classes = map[string]bool{"galaxy": true, "quasar": true, "star": true, "nebula": true}
+
+// ParseRecipe reads a family recipe and compiles it against the line list.
+// Every problem found is reported, each with the file and key it stands in.
+func ParseRecipe(file string, text []byte, list *linelist.List) (*Family, error) {
+	var r Recipe
+	dec := toml.NewDecoder(bytes.NewReader(text)).DisallowUnknownFields()
+	if err := dec.Decode(&r); err != nil {
+		var strict *toml.StrictMissingError
+		if errors.As(err, &strict) {
+			return nil, fmt.Errorf("%s: unknown keys:\n%s", file, strict.String())
+		}
+		return nil, fmt.Errorf("%s: %w", file, err)
+	}
+	var errs []error
+	bad := func(format string, args ...any) {
+		errs = append(errs, fmt.Errorf("%s: %s", file, fmt.Sprintf(format, args...)))
+	}
+	if r.Name == "" {
+		bad("name is missing")
+	}
+	if !classes[r.Class] {
+		bad("class = %q, want galaxy, quasar, star or nebula", r.Class)
+	}
+	if len(r.Redshift) != 2 || !(r.Redshift[0] < r.Redshift[1]) || r.Redshift[0] <= -0.5 || r.Redshift[1] > 12 {
+		bad("redshift = %v, want [first, last] with -0.5 < first < last <= 12", r.Redshift)
+	}
+	if len(r.Widths) == 0 {
+		bad("widths is empty, want at least one Gaussian sigma in km/s")
+	}
+	for _, w := range r.Widths {
+		if !(w >= 10 && w <= 30000) {
+			bad("widths: %g is outside 10 to 30000 km/s", w)
+		}
+	}
+	if len(r.Components) == 0 || len(r.Components) > maxComponents {
+		bad("%d components, want 1 to %d", len(r.Components), maxComponents)
+	}
+	f := &Family{Name: r.Name, Class: r.Class, Summary: r.Summary, Widths: r.Widths}
+	if len(r.Redshift) == 2 {
+		f.ZMin, f.ZMax = r.Redshift[0], r.Redshift[1]
+	}
+	for _, name := range r.Expected {
+		if l, ok := list.Find(name); ok {
+			f.expected = append(f.expected, expectedLine{name, math.Log10(l.Wave)})
+		} else {
+			bad("expected: no line %q in the line list", name)
+		}
+	}
+	for i := range r.Components {
+		c, problems := compile(&r.Components[i], list)
+		for _, p := range problems {
+			bad("component %q: %s", r.Components[i].Name, p)
+		}
+		f.components = append(f.components, c)
+	}
+	if len(errs) > 0 {
+		return nil, errors.Join(errs...)
+	}
+	sum := sha256.Sum256(text)
+	f.Digest = hex.EncodeToString(sum[:8])
+	return f, nil
+}
+
+func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
+	var problems []string
+	bad := func(format string, args ...any) { problems = append(problems, fmt.Sprintf(format, args...)) }
+	c := component{name: r.Name, width: r.Width, scale: r.WidthScale}
+	if c.scale == 0 {
+		c.scale = 1
+	}
+	if c.scale < 0 || r.Width < 0 {
+		bad("width and width_scale must not be negative")
+	}
+	switch r.Kind {
+	case "emission":
+	case "absorption":
+		c.absorption = true
+	default:
+		bad("kind = %q, want emission or absorption", r.Kind)
+	}
+	if r.Source == "" {
+		bad("source is missing: say where the ratios come from")
+	}
+	for _, l := range r.Lines {
+		found, ok := list.Find(l.Line)
+		if !ok {
+			bad("lines: no line %q in the line list", l.Line)
+			continue
+		}
+		if !(l.Ratio > 0) {
+			bad("lines: %s: ratio = %g, want a positive number", l.Line, l.Ratio)
+		}
+		shift := math.Log10(1 + l.Shift/speedOfLight)
+		c.terms = append(c.terms, term{name: l.Line, logWave: math.Log10(found.Wave) + shift, amp: l.Ratio})
+	}
+	if b := r.CaseB; b != nil {
+		for _, n := range b.Upper {
+			t, err := hydrogen.NewTransition(2, n)
+			if err != nil {
+				bad("case_b: %v", err)
+				continue
+			}
+			ratio := hydrogen.CaseB(b.Temperature, b.Density, n)
+			if !(ratio > 0) {
+				bad("case_b: no ratio for upper level %d", n)
+				continue
+			}
+			c.terms = append(c.terms, term{name: lineNear(list, t.Wave), logWave: math.Log10(t.Wave), amp: ratio})
+		}
+	}
+	for _, b := range r.Bumps {
+		if !(b.Wave > 0 && b.Width > 0 && b.Height > 0) {
+			bad("bumps: wave, width and height must be positive")
+			continue
+		}
+		c.terms = append(c.terms, term{logWave: math.Log10(b.Wave), width: b.Width, amp: b.Height})
+	}
+	for _, e := range r.Edges {
+		if !(e.Wave > 0 && e.Width > 0 && e.Height > 0) {
+			bad("edges: wave, width and height must be positive")
+			continue
+		}
+		c.edges = append(c.edges, e)
+	}
+	for _, h := range r.Heads {
+		if !(h.Wave > 0 && h.Depth > 0 && h.Tail > 0) {
+			bad("heads: wave, depth and tail must be positive")
+			continue
+		}
+		c.heads = append(c.heads, h)
+	}
+	c.forest = r.Forest
+	if len(c.terms)+len(c.edges)+len(c.heads) == 0 && !c.forest {
+		bad("has no lines, case_b, bumps, edges, heads or forest")
+	}
+	if !c.absorption && len(c.edges)+len(c.heads) > 0 {
+		bad("edges and heads are depths: kind must be absorption")
+	}
+	if c.forest && !c.absorption {
+		bad("a forest absorbs: kind must be absorption")
+	}
+	return c, problems
+}
+
+// lineNear names the listed line within 30 km/s of a wavelength, if any.
+func lineNear(list *linelist.List, wave float64) string {
+	for _, l := range list.Lines() {
+		if math.Abs(l.Wave/wave-1) < 1e-4 && l.Ion == "H I" {
+			return l.Name
+		}
+	}
+	return ""
+}
