@@ -1,0 +1,36 @@
+package pipeline
+
+import (
+	"errors"
+	"fmt"
+	"strings"
+)
+
+// InputError says that the inputs or the run folder cannot be used as asked:
+// the command has to be changed. Each problem is one sentence.
+type InputError struct{ Problems []string }
+
+// Error gives one line a problem.
+func (e *InputError) Error() string { return strings.Join(e.Problems, "\n") }
+
+func inputError(format string, args ...any) error {
+	return &InputError{[]string{fmt.Sprintf(format, args...)}}
+}
+
+// MismatchError says that a run folder belongs to a run with other inputs,
+// settings or program version than those asked for now.
+type MismatchError struct {
+	Out         string
+	Differences []string // one clause each
+}
+
+// Error names the differences and the ways out.
+func (e *MismatchError) Error() string {
+	return fmt.Sprintf("%s holds a run that was planned differently: %s. "+
+		"To finish that run as planned, give --out %s without any PATH or settings; to process what you asked for, give a new --out.",
+		e.Out, strings.Join(e.Differences, "; "), e.Out)
+}
+
+// ErrDamaged is wrapped by errors about a file of the run folder that is not
+// as it was written.
+var ErrDamaged = errors.New("damaged")

@@ -1,0 +1,67 @@
+package pipeline
+
+import (
+	"crypto/rand"
+	"fmt"
+	"io"
+	"os"
+	"path/filepath"
+
+	"github.com/google/renameio/v2"
+)
+
+// The files of a run folder beside the plan.
+const (
+	settingsName = "plan.toml"    // effective settings, for people
+	blocksName   = "blocks"       // one folder a finished block
+	unfinished   = ".unfinished-" // begins the name of what is not whole yet
+	logName      = "run.log"      // times and messages, see LogFile
+	catalogFITS  = "catalog.fits" // tables OBJECTS and LINES
+	catalogCSV   = "catalog.csv"  // the object table
+	objectsName  = "objects.parquet"
+	linesName    = "lines.parquet"
+	summaryName  = "summary.json"
+)
+
+// LogFile returns the path of the log of a run. It is kept out of the other
+// files because times are in it: their bytes depend on the inputs alone.
+func (r *Run) LogFile() string { return filepath.Join(r.out, logName) }
+
+// createUnfinished makes a file that is renamed or linked when it is whole.
+func createUnfinished(folder, what string) (*os.File, error) {
+	name := filepath.Join(folder, unfinished+what+"-"+rand.Text())
+	return os.OpenFile(name, os.O_RDWR|os.O_CREATE|os.O_EXCL, 0o666)
+}
+
+// writeAtomic replaces a file by what write makes, or leaves it as it was.
+func writeAtomic(path string, write func(w io.Writer) error) error {
+	return writePending(path, func(f *renameio.PendingFile) error { return write(f) })
+}
+
+func writePending(path string, write func(f *renameio.PendingFile) error) error {
+	f, err := renameio.NewPendingFile(path, renameio.WithTempDir(filepath.Dir(path)), renameio.WithPermissions(0o666))
+	if err != nil {
+		return fmt.Errorf("%s cannot be written: %w", path, err)
+	}
+	defer f.Cleanup()
+	if err := write(f); err != nil {
+		return fmt.Errorf("%s cannot be written: %w", path, err)
+	}
+	if err := f.CloseAtomicallyReplace(); err != nil {
+		return fmt.Errorf("%s cannot be put into place: %w", path, err)
+	}
+	return syncFolder(filepath.Dir(path))
+}
+
+// syncFolder makes renames inside a folder last.
+func syncFolder(path string) error {
+	d, err := os.Open(path)
+	if err != nil {
+		return err
+	}
+	defer d.Close()
+	if err := d.Sync(); err != nil {
+		return fmt.Errorf("folder %s cannot be synced: %w", path, err)
+	}
+	return nil
+}

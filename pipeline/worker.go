@@ -1,0 +1,229 @@
+package pipeline
+
+import (
+	"errors"
+	"fmt"
+	"math"
+	"os"
+	"path/filepath"
+	"runtime"
+	"runtime/debug"
+	"strings"
+
+	"duskline/catalog"
+	"duskline/fitsread"
+	"duskline/spectrum"
+)
+
+// task is one object to be worked on: row of an input, for a place in a block.
+type task struct {
+	block *block
+	place int
+	in    *planInput
+	row   int
+	// elsewhere is the length of a block that another process did; the task
+	// is then nothing but this news on its way to the collector.
+	elsewhere int
+}
+
+// result is a finished task.
+type result struct {
+	task
+	outcome  Outcome
+	internal bool // the row reports a defect of the program
+}
+
+// objectWorker turns tasks into results. It keeps the last file open: the
+// spectra of one file mostly come one after another.
+type objectWorker struct {
+	run     *Run
+	science Worker
+	in      *planInput // of file
+	file    SpectrumFile
+	fault   *fault // why in has no file
+}
+
+// fault is why an object has no spectrum.
+type fault struct {
+	reason   string
+	internal bool
+}
+
+// do works on one object. Whatever is wrong with it becomes a row.
+func (w *objectWorker) do(t task) result {
+	r := result{task: t}
+	s, digest, bad := w.read(t)
+	if bad != nil {
+		r.outcome.Object = blankObject()
+		r.outcome.Object.Flags = catalog.Unreadable
+		r.outcome.Object.Reason = bad.reason
+		r.internal = bad.internal
+	} else {
+		s.SourceFile, s.SourceRow = t.in.Path, t.row
+		r.outcome, bad = w.process(s)
+		if bad != nil {
+			r.outcome = Outcome{Object: blankObject()}
+			r.outcome.Object.ObjectID = s.ObjectID
+			r.outcome.Object.RA, r.outcome.Object.Dec = s.RA, s.Dec
+			r.outcome.Object.Reason = bad.reason
+			r.internal = true
+		}
+	}
+	o := &r.outcome.Object
+	o.SourceFile, o.SourceRow = t.in.Path, int64(t.row)
+	if o.ObjectID == "" {
+		o.ObjectID = fallbackID(t.in, t.row)
+	}
+	if o.InputDigest == "" {
+		o.InputDigest = digest
+	}
+	o.Reason = strings.Join(strings.Fields(o.Reason), " ")
+	for i := range r.outcome.Lines {
+		r.outcome.Lines[i].ObjectID = o.ObjectID
+	}
+	return r
+}
+
+// read returns the spectrum of a task and the digest of its input, or what is
+// wrong with it.
+func (w *objectWorker) read(t task) (s *spectrum.Spectrum, digest string, bad *fault) {
+	if t.in.Trouble != "" {
+		return nil, "", &fault{t.in.Trouble, t.in.Internal}
+	}
+	if w.in != t.in {
+		w.close()
+		w.in = t.in
+		w.fault = w.open(t.in)
+	}
+	if w.fault != nil {
+		return nil, "", w.fault
+	}
+	defer func() {
+		if p := recover(); p != nil {
+			s, bad = nil, w.report(t, p)
+		}
+	}()
+	digest, err := w.file.Digest(t.row)
+	if err == nil {
+		s, err = w.file.Read(t.row)
+	}
+	if err != nil {
+		return nil, digest, &fault{readReason(err, t.in.Path), false}
+	}
+	return s, digest, nil
+}
+
+// open opens an input that is still as it was planned.
+func (w *objectWorker) open(in *planInput) (bad *fault) {
+	defer func() {
+		if p := recover(); p != nil {
+			bad = w.report(task{in: in}, p)
+		}
+	}()
+	path := in.file(w.run.head.Folder)
+	info, err := os.Stat(path)
+	if err != nil {
+		return &fault{fmt.Sprintf("%s was there when the run was planned and is not now: %s", in.Path, plain(err)), false}
+	}
+	if info.Size() != in.Size || info.ModTime().UnixNano() != in.MTime {
+		return &fault{in.Path + " was written to after the run was planned; begin a new run to process it", false}
+	}
+	if w.file, err = w.run.job.Open(path); err != nil {
+		w.file = nil
+		return &fault{readReason(err, in.Path), false}
+	}
+	return nil
+}
+
+func (w *objectWorker) close() {
+	if w.file != nil {
+		if err := w.file.Close(); err != nil {
+			w.run.job.Log.Warn("closing an input failed", "file", w.in.Path, "error", err)
+		}
+	}
+	w.in, w.file, w.fault = nil, nil, nil
+}
+
+// process runs the science on one spectrum. After a panic the worker's scratch
+// cannot be trusted and is replaced.
+func (w *objectWorker) process(s *spectrum.Spectrum) (out Outcome, bad *fault) {
+	defer func() {
+		if p := recover(); p != nil {
+			bad = w.report(task{in: w.in, row: s.SourceRow}, p)
+			w.science = nil
+		}
+	}()
+	if w.science == nil {
+		w.science = w.run.job.Processor.NewWorker()
+	}
+	out = w.science.Process(s)
+	if err := checkOutcome(&out); err != nil {
+		w.run.job.Log.Error("an object came out with values that a catalog must not hold",
+			"file", s.SourceFile, "row", s.SourceRow, "error", err)
+		return out, &fault{"internal error: " + err.Error(), true}
+	}
+	return out, nil
+}
+
+// report logs a panic with its stack and returns what the row says.
+func (w *objectWorker) report(t task, p any) *fault {
+	w.run.job.Log.Error("an internal error stopped one object; the run goes on",
+		"file", t.in.Path, "row", t.row, "panic", fmt.Sprint(p), "stack", string(debug.Stack()))
+	return &fault{internalReason(p), true}
+}
+
+// internalReason describes a recovered panic by its value and the place of
+// its cause, without anything that changes from run to run. It is called by
+// the deferred function that recovered.
+func internalReason(p any) string {
+	pcs := make([]uintptr, 64)
+	frames := runtime.CallersFrames(pcs[:runtime.Callers(0, pcs)])
+	where, raised := "", false
+	for {
+		f, more := frames.Next()
+		switch {
+		case strings.HasPrefix(f.Function, "runtime."):
+			raised = raised || f.Function == "runtime.gopanic"
+		case raised:
+			where = fmt.Sprintf(" (%s:%d)", filepath.Base(f.File), f.Line)
+		}
+		if where != "" || !more {
+			return fmt.Sprintf("internal error: %v%s", p, where)
+		}
+	}
+}
+
+// readReason returns why an input could not be read. It names the file as the
+// plan does, wherever the run is repeated.
+func readReason(err error, path string) string {
+	var re *fitsread.ReadError
+	if errors.As(err, &re) {
+		named := *re
+		named.File = path
+		return named.Error()
+	}
+	return fmt.Sprintf("%s: %s", path, plain(err))
+}
+
+// fallbackID names an object whose file does not.
+func fallbackID(in *planInput, row int) string {
+	name := filepath.Base(in.Path)
+	for _, suffix := range []string{".gz", ".fits", ".fit", ".fts"} {
+		if len(name) > len(suffix) && strings.EqualFold(name[len(name)-len(suffix):], suffix) {
+			name = name[:len(name)-len(suffix)]
+		}
+	}
+	if in.Rows > 1 {
+		return fmt.Sprintf("%s-%d", name, row)
+	}
+	return name
+}
+
+// blankObject is a row of which nothing is known.
+func blankObject() catalog.Object {
+	nan := math.NaN()
+	return catalog.Object{
+		RA: nan, Dec: nan, Class: catalog.Unknown, Redshift: nan, RedshiftErr: nan, Confidence: nan, Verdict: catalog.None,
+		RivalRedshift: nan, Gap: nan, RStat: nan, SNR: nan, WaveMin: nan, WaveMax: nan, Chi2Dof: nan, BaryVelocity: nan,
+	}
+}
