@@ -58,19 +58,37 @@ const (
 	WeightsSuspect                   // the stated errors disagree with the scatter
 )
 
-// flagNames is in order of bits.
-var flagNames = [...]string{
-	"unreadable", "few_pixels", "faint", "tied", "range_end", "lone_line", "misfit", "lines_unseen",
-	"lines_missing", "below_zero", "scattered", "on_sky_line", "frame_assumed", "noise_estimated",
-	"weights_suspect",
+// flagTable is in order of bits.
+var flagTable = [...]struct{ name, says string }{
+	{"unreadable", "the file or this spectrum in it could not be read"},
+	{"few_pixels", "too few usable pixels"},
+	{"faint", "neither continuum nor lines stand above the noise"},
+	{"tied", "another redshift fits nearly as well"},
+	{"range_end", "best redshift at the end of the searched range"},
+	{"lone_line", "a single line carries the redshift"},
+	{"misfit", "the best model describes the spectrum badly"},
+	{"lines_unseen", "strong lines are outside the coverage or masked"},
+	{"lines_missing", "strong lines are covered and not there"},
+	{"below_zero", "the continuum is negative over a good part"},
+	{"scattered", "the lines disagree on the velocity"},
+	{"on_sky_line", "a supporting line is on a night-sky feature"},
+	{"frame_assumed", "air/vacuum or velocity frame was assumed"},
+	{"noise_estimated", "noise was estimated from the flux"},
+	{"weights_suspect", "the stated errors disagree with the scatter"},
 }
 
 // knownFlags has every defined bit set.
-const knownFlags = Flags(1<<len(flagNames) - 1)
+const knownFlags = Flags(1<<len(flagTable) - 1)
 
 // FlagNames lists the names of all flags in order of their bits. It returns a
 // new slice.
-func FlagNames() []string { return append([]string(nil), flagNames[:]...) }
+func FlagNames() []string {
+	names := make([]string, len(flagTable))
+	for bit, f := range flagTable {
+		names[bit] = f.name
+	}
+	return names
+}
 
 // Has reports whether every flag of g is set in f.
 func (f Flags) Has(g Flags) bool { return f&g == g }
@@ -84,8 +102,8 @@ func (f Flags) Names() []string {
 	names := make([]string, 0, bits.OnesCount32(uint32(f)))
 	for rest := uint32(f); rest != 0; rest &= rest - 1 {
 		bit := bits.TrailingZeros32(rest)
-		if bit < len(flagNames) {
-			names = append(names, flagNames[bit])
+		if bit < len(flagTable) {
+			names = append(names, flagTable[bit].name)
 		} else {
 			names = append(names, fmt.Sprintf("bit_%d", bit))
 		}
@@ -105,13 +123,13 @@ func ParseFlags(s string) (Flags, error) {
 	}
 next:
 	for name := range strings.SplitSeq(s, "|") {
-		for bit, known := range flagNames {
-			if name == known {
+		for bit, known := range flagTable {
+			if name == known.name {
 				f |= 1 << bit
 				continue next
 			}
 		}
-		return 0, fmt.Errorf("unknown flag %q; the flags are %s", name, strings.Join(flagNames[:], ", "))
+		return 0, fmt.Errorf("unknown flag %q; the flags are %s", name, strings.Join(FlagNames(), ", "))
 	}
 	return f, nil
 }
@@ -156,14 +174,14 @@ type Line struct {
 	ObjectID string  // key into the object table
 	Line     string  // name in the line list
 	RestWave float64 // vacuum Angstrom
-	Kind     string  // how it was seen, such as "emission" or "absorption"
+	Kind     string  // "emission", "absorption", "limit" or "unmeasured"
 
 	EWRest, EWRestErr float64 // rest-frame equivalent width of the profile fit, Angstrom, positive in absorption
 	EWSum, EWSumErr   float64 // the same by direct sum
 	Flux, FluxErr     float64 // integrated flux of the profile, input flux unit times Angstrom
 
 	OffsetKms, OffsetErr float64 // center minus that of the redshift, km/s
-	WidthKms, WidthErr   float64 // full width at half maximum, km/s
+	WidthKms, WidthErr   float64 // Gaussian sigma, km/s
 	SNR                  float64
 	Continuum            float64 // at the line, input flux unit
 	UpperLimit           float64 // on the absolute rest-frame equivalent width where nothing is seen, Angstrom
