@@ -9,7 +9,7 @@ const inoueLimit = 911.8
 // zSource that reaches us at the observed wavelength waveObs (vacuum Angstrom)
 // through the intergalactic medium: Lyman-series and Lyman-continuum absorption
 // by the forest, Lyman-limit and damped systems (Inoue, Shimizu, Iwata & Tanaka
-// 2014, equations 20-29 and Table 2).
+// 2014, section 4 and Table 2).
 //
 // It is one redward of Lyman alpha of the source and for zSource <= 0. Observed
 // wavelengths below 911.8 Angstrom, where nothing is seen from Earth, get the
@@ -35,12 +35,14 @@ func Transmission(zSource, waveObs float64) float64 {
 		}
 	}
 	if r := math.Max(waveObs/inoueLimit, 1); r < onePlusZ {
-		tau += forestContinuum(onePlusZ, r) + dampedContinuum(onePlusZ, r)
+		// The fits with their rounded coefficients dip below zero by 1e-5 at r = 1 + z.
+		tau += math.Max(forestContinuum(onePlusZ, r)+dampedContinuum(onePlusZ, r), 0)
 	}
 	return math.Exp(-tau)
 }
 
-// forest is equation 21; r = 1 + z of the absorber.
+// forest is the forest's part of the optical depth in one line; r = 1 + z of the
+// absorber.
 func (l *forestLine) forest(r float64) float64 {
 	switch {
 	case r < 2.2:
@@ -51,7 +53,7 @@ func (l *forestLine) forest(r float64) float64 {
 	return l.laf3 * math.Pow(r, 5.5)
 }
 
-// damped is equation 22.
+// damped is the damped systems' part.
 func (l *forestLine) damped(r float64) float64 {
 	if r < 3 {
 		return l.dla1 * r * r
@@ -59,51 +61,53 @@ func (l *forestLine) damped(r float64) float64 {
 	return l.dla2 * r * r * r
 }
 
-// forestContinuum is equations 25 to 27; zs = 1 + z of the source, 1 <= r < zs.
+// forestContinuum is the forest's part of the optical depth in the Lyman
+// continuum; zs = 1 + z of the source, r = waveObs/inoueLimit, 1 <= r < zs.
 func forestContinuum(zs, r float64) float64 {
 	r21 := math.Pow(r, 2.1)
 	switch {
 	case zs < 2.2:
-		return 0.3248 * (math.Pow(r, 1.2) - math.Pow(zs, -0.9)*r21)
+		return 0.325 * (math.Pow(r, 1.2) - math.Pow(zs, -0.9)*r21)
 	case zs < 5.7:
-		far := 2.545e-2 * math.Pow(zs, 1.6) * r21
+		far := 2.55e-2 * math.Pow(zs, 1.6) * r21
 		if r < 2.2 {
-			return far + 0.3248*math.Pow(r, 1.2) - 0.2496*r21
+			return far + 0.325*math.Pow(r, 1.2) - 0.250*r21
 		}
-		return far - 2.545e-2*math.Pow(r, 3.7)
+		return far - 2.55e-2*math.Pow(r, 3.7)
 	}
-	far := 5.221e-4 * math.Pow(zs, 3.4) * r21
+	far := 5.22e-4 * math.Pow(zs, 3.4) * r21
 	switch {
 	case r < 2.2:
-		return far + 0.3248*math.Pow(r, 1.2) - 3.140e-2*r21
+		return far + 0.325*math.Pow(r, 1.2) - 3.14e-2*r21
 	case r < 5.7:
-		return far + 0.2182*r21 - 2.545e-2*math.Pow(r, 3.7)
+		return far + 0.218*r21 - 2.55e-2*math.Pow(r, 3.7)
 	}
-	return far - 5.221e-4*math.Pow(r, 5.5)
+	return far - 5.22e-4*math.Pow(r, 5.5)
 }
 
-// dampedContinuum is equations 28 and 29.
+// dampedContinuum is the damped systems' part.
 func dampedContinuum(zs, r float64) float64 {
 	r03 := math.Pow(r, -0.3)
 	if zs < 3 {
-		return 0.2113*zs*zs - 0.07661*math.Pow(zs, 2.3)*r03 - 0.1347*r*r
+		return 0.211*zs*zs - 0.0766*math.Pow(zs, 2.3)*r03 - 0.135*r*r
 	}
-	far := 4.696e-2*zs*zs*zs - 1.779e-2*math.Pow(zs, 3.3)*r03
+	far := 4.70e-2*zs*zs*zs - 1.78e-2*math.Pow(zs, 3.3)*r03
 	if r < 3 {
-		return 0.6340 + far - 0.1347*r*r - 0.2905*r03
+		return 0.634 + far - 0.135*r*r - 0.291*r03
 	}
-	return far - 2.916e-2*r*r*r
+	return far - 2.92e-2*r*r*r
 }
 
-// madauLines holds the four lines of Madau (1995) and their coefficients.
+// madauLines holds the four lines of Madau (1995) and their coefficients; the
+// wavelengths are printed there to the Angstrom.
 var madauLines = [4]struct{ wave, a float64 }{
-	{1216, 0.0036}, {1026, 0.0017}, {973, 0.0012}, {950, 0.00093},
+	{1215.67, 0.0036}, {1025.72, 0.0017}, {972.537, 0.0012}, {949.743, 0.00093},
 }
 
 // MadauTransmission is the older mean transmission of Madau (1995): four Lyman
-// lines (equation 15) and the approximate continuum (footnote 3). Arguments,
-// limits and NaN as in Transmission, the limit being at 912 Angstrom. It is kept
-// for comparison with published work.
+// lines and the approximate continuum (its footnote 3). Arguments, limits and
+// NaN as in Transmission, the limit being at 912 Angstrom. It is kept for
+// comparison with published work.
 func MadauTransmission(zSource, waveObs float64) float64 {
 	if math.IsNaN(zSource) || !(waveObs > 0) {
 		return math.NaN()
