@@ -1,0 +1,218 @@
+package lines
+
+import (
+	"math"
+
+	"duskline/spectrum"
+)
+
+// formTies gives every line of a blend its ion's offset and width to start
+// from. The ion with the most significant box is the main one. An ion far from
+// it, or of the other class of width, starts from its own box; one close to it
+// from the main ion, because neighbors spoil boxes. A blend in which nothing
+// stands out takes offset and width from the rest of the spectrum.
+func (s *Scratch) formTies(b *blend) (main int) {
+	q := &s.prob
+	q.ties, q.comps = q.ties[:0], q.comps[:0]
+	main = -1
+	for _, ti := range s.member[b.first : b.first+b.count] {
+		t := &s.tracks[ti]
+		k := 0
+		for k < len(q.ties) && q.ties[k].ion != t.line.ion {
+			k++
+		}
+		if k == len(q.ties) {
+			q.ties = append(q.ties, tie{ion: t.line.ion, sres: t.sres, lead: ti})
+		}
+		e := &q.ties[k]
+		e.broad = e.broad || t.broad
+		if math.Abs(t.snr) > math.Abs(e.snr) {
+			e.snr, e.lead = t.snr, ti
+		}
+		q.comps = append(q.comps, component{track: ti, tie: k, lam0: t.lam0})
+	}
+	for k := range q.ties {
+		e := &q.ties[k]
+		t := &s.tracks[e.lead]
+		e.v, e.s = t.v, t.s
+		e.vmax = s.opt.search(e.broad)
+		e.smin = max(0.35*t.pix, 0.7*e.sres)
+		e.smax = math.Hypot(s.opt.widthMax(e.broad), e.sres)
+		e.s = min(max(e.s, e.smin), e.smax)
+		if t.seen() && !b.faint && (main < 0 || math.Abs(e.snr) > math.Abs(q.ties[main].snr)) {
+			main = k
+		}
+	}
+	for k := range q.ties {
+		e := &q.ties[k]
+		switch {
+		case main < 0:
+			s.borrow(e)
+		case k == main:
+			e.own = true
+		case s.tracks[e.lead].seen() && (e.broad != q.ties[main].broad || s.clear(k, main)):
+			e.own = true
+		case e.broad != q.ties[main].broad:
+			s.borrow(e)
+		default:
+			e.v, e.s = q.ties[main].v, q.ties[main].s
+		}
+	}
+	return main
+}
+
+// clear reports whether no line of tie k overlaps one of tie m.
+func (s *Scratch) clear(k, m int) bool {
+	q := &s.prob
+	for i := range q.comps {
+		for j := range q.comps {
+			if q.comps[i].tie == k && q.comps[j].tie == m {
+				d := s.apart(&s.tracks[q.comps[i].track], &s.tracks[q.comps[j].track])
+				if d < overlapWithin*(q.ties[k].s+q.ties[m].s)+s.opt.search(false) {
+					return false
+				}
+			}
+		}
+	}
+	return true
+}
+
+// borrow takes offset and width from the strongest line seen in the spectrum
+// of the same class of width, of the kind in which this one usually appears
+// when there is a choice; else it falls back on zero and Options.WidthGuess.
+func (s *Scratch) borrow(e *tie) {
+	e.settled = true
+	e.v, e.s = 0, math.Hypot(s.opt.WidthGuess, e.sres)
+	if e.broad {
+		e.s = math.Hypot(10*s.opt.WidthGuess, e.sres)
+	}
+	class := 0
+	if e.broad {
+		class = 1
+	}
+	first, second := s.anchor[class][0], s.anchor[class][1]
+	if s.tracks[e.lead].line.Seen == Absorption {
+		first, second = second, first
+	}
+	if first.snr == 0 {
+		first = second
+	}
+	if first.snr > 0 {
+		e.v, e.s = first.v, math.Hypot(first.source, e.sres)
+	}
+	e.s = min(max(e.s, e.smin), e.smax)
+	e.v = min(max(e.v, -e.vmax), e.vmax)
+}
+
+// assignAmplitudes numbers the amplitudes: one for a doublet of fixed ratio,
+// one for each run of lines of an ion that the width does not resolve.
+func (s *Scratch) assignAmplitudes() {
+	q := &s.prob
+	q.n = 0
+	for i := range q.comps {
+		c := &q.comps[i]
+		l := s.tracks[c.track].line
+		c.amp, c.share, c.assumed = -1, 1, false
+		for j := i - 1; j >= 0 && c.amp < 0; j-- {
+			d := &q.comps[j]
+			if d.tie != c.tie {
+				continue
+			}
+			o := s.tracks[d.track].line
+			switch {
+			case l.doublet >= 0 && o.doublet == l.doublet:
+				c.amp, c.share, d.share = d.amp, l.share, o.share
+			case s.apart(&s.tracks[c.track], &s.tracks[d.track]) < mergeSame*q.ties[c.tie].s:
+				c.amp, c.assumed, d.assumed = d.amp, true, true
+			}
+		}
+		if c.amp < 0 {
+			c.amp = q.n
+			q.n++
+		}
+	}
+	for a := range q.n {
+		known := true
+		for i := range q.comps {
+			if q.comps[i].amp == a && q.comps[i].assumed {
+				known = known && s.tracks[q.comps[i].track].line.F > 0
+			}
+		}
+		for i := range q.comps {
+			if c := &q.comps[i]; c.amp == a && c.assumed {
+				c.share = 1
+				if known {
+					c.share = s.tracks[c.track].line.share
+				}
+			}
+		}
+	}
+}
+
+// build lays out windows, pixels and parameters for the present offsets and
+// widths.
+func (s *Scratch) build(main int) {
+	q := &s.prob
+	s.assignAmplitudes()
+	for k := range q.ties {
+		e := &q.ties[k]
+		e.pv, e.ps = -1, -1
+		if e.own {
+			e.pv, e.ps = q.n, q.n+1
+			q.n += 2
+		}
+	}
+	for k := range q.ties {
+		if e := &q.ties[k]; !e.own && !e.settled && main >= 0 {
+			e.pv, e.ps = q.ties[main].pv, q.ties[main].ps
+		}
+	}
+	s.layWindows()
+	q.act = q.act[:0]
+	for i := range q.windows {
+		w := &q.windows[i]
+		w.base = q.n
+		q.n += 2
+		w.act0 = len(q.act)
+		q.act = append(q.act, w.base, w.base+1)
+		for _, kin := range [2]bool{false, true} {
+			for ci := range q.comps {
+				c := &q.comps[ci]
+				e := &q.ties[c.tie]
+				reach := c.lam0 / spectrum.SpeedOfLight * (e.vmax + 2*profileReach*e.s)
+				if c.lam0 < w.mid-w.half-reach || c.lam0 > w.mid+w.half+reach {
+					continue
+				}
+				if !kin {
+					q.act = appendNew(q.act, w.act0, c.amp)
+				} else {
+					q.act = appendNew(appendNew(q.act, w.act0, e.pv), w.act0, e.ps)
+				}
+			}
+			if !kin {
+				w.nAmp = len(q.act) - w.act0 - 2
+			}
+		}
+		w.act1 = len(q.act)
+	}
+	s.lm.reset(q.n)
+	for k := range q.ties {
+		e := &q.ties[k]
+		if e.own {
+			s.lm.p[e.pv], s.lm.lo[e.pv], s.lm.hi[e.pv] = e.v, -e.vmax, e.vmax
+			s.lm.p[e.ps], s.lm.lo[e.ps], s.lm.hi[e.ps] = e.s, e.smin, e.smax
+		}
+	}
+	for i := range q.windows {
+		if w := &q.windows[i]; w.prior == 0 {
+			s.lm.fixed[w.base], s.lm.fixed[w.base+1] = true, true
+		}
+	}
+}
+
+func appendNew(list []int, from, v int) []int {
+	if v < 0 || find(list[from:], v) >= 0 {
+		return list
+	}
+	return append(list, v)
+}

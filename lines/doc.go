@@ -1,0 +1,29 @@
+// Package lines measures spectral lines at a known redshift: equivalent widths
+// by direct sum and by profile fit, fluxes, velocity offsets, widths, and upper
+// limits where nothing is seen.
+//
+// # Definitions
+//
+// The equivalent width is W = 1/(1+z) * integral of (1 - F/Fc) dlambda, in
+// rest-frame Angstrom: positive in absorption, negative in emission. The
+// continuum Fc is the caller's, plus a straight line of its own in every fit
+// window. Flux is the integral of F - Fc over observed wavelength: positive in
+// emission.
+//
+// # The way of one spectrum
+//
+//  1. search.go looks at every line with boxes of many widths and offsets, on
+//     running sums, and keeps the most significant: a start, not an answer.
+//  2. plan.go joins lines into blends: those of one group of the line list and
+//     those within a few widths of one another. Lines of one ion in a blend
+//     share offset and width.
+//  3. solve.go fits each blend: Gaussians averaged over the pixels
+//     (profile.go) plus the straight lines, by Levenberg-Marquardt
+//     (marquardt.go).
+//  4. sum.go sums the pixels of every line, with the fitted neighbors taken
+//     away.
+//  5. Blends in which nothing was seen come last, with the offset and width of
+//     the strongest line of the spectrum, as linear fits.
+//
+// docs/lines.md tells the same to the user of the table of lines.
+package lines

@@ -1,0 +1,225 @@
+package lines
+
+import "math"
+
+// model is a least-squares problem. normal returns chi^2 at p and fills the
+// upper triangle of a, n x n row-major, with half the approximate Hessian
+// J^T W J and b with J^T W (data - model).
+type model interface {
+	normal(p, a, b []float64) float64
+}
+
+// marquardt minimizes chi^2 by the method of Levenberg (1944) and Marquardt
+// (1963, J. SIAM 11, 431), with bounds: a parameter that a step would carry
+// over its bound stops there, and takes no part in steps while the gradient
+// pushes it outward. The zero value is ready; buffers are kept.
+type marquardt struct {
+	n        int
+	p        []float64 // parameters, in and out
+	lo, hi   []float64 // bounds
+	fixed    []bool    // parameters that are held
+	held     []bool    // fixed, without effect, or pressed against a bound
+	trial    []float64
+	a, b     []float64
+	ta, tb   []float64
+	chol     []float64
+	scale    []float64
+	step     []float64
+	cov      []float64 // covariance, full n x n, zero for held ones
+	chi2     float64
+	free     int // number of parameters not held at the end
+	solvable bool
+}
+
+func (m *marquardt) reset(n int) {
+	m.n = n
+	for _, v := range []*[]float64{&m.p, &m.lo, &m.hi, &m.trial, &m.b, &m.tb, &m.scale, &m.step} {
+		*v = resize(*v, n)
+	}
+	for _, v := range []*[]float64{&m.a, &m.ta, &m.chol, &m.cov} {
+		*v = resize(*v, n*n)
+	}
+	for _, v := range []*[]bool{&m.fixed, &m.held} {
+		if cap(*v) < n {
+			*v = make([]bool, 2*n)
+		}
+		*v = (*v)[:n]
+		clear(*v)
+	}
+	for i := range n {
+		m.p[i], m.lo[i], m.hi[i] = 0, math.Inf(-1), math.Inf(1)
+	}
+}
+
+const (
+	maxSteps = 50
+	// A step that promises less than this of chi^2 moves no parameter by more
+	// than 0.01 of its error.
+	smallGain = 1e-4
+)
+
+// minimize runs from p and leaves the solution in p, chi2 and cov. It reports
+// whether the equations could be solved; p is finite in any case.
+func (m *marquardt) minimize(f model) bool {
+	m.chi2 = f.normal(m.p, m.a, m.b)
+	lambda := 0.0
+	m.solvable = true
+	for range maxSteps {
+		gain, ok := m.propose(lambda)
+		if !ok {
+			if lambda = max(10*lambda, 1e-3); lambda > 1e8 {
+				m.solvable = false
+				break
+			}
+			continue
+		}
+		if gain < smallGain {
+			break
+		}
+		chi2 := f.normal(m.trial, m.ta, m.tb)
+		if chi2 <= m.chi2 {
+			better := m.chi2 - chi2
+			m.p, m.trial = m.trial, m.p
+			m.a, m.ta = m.ta, m.a
+			m.b, m.tb = m.tb, m.b
+			m.chi2 = chi2
+			if lambda *= 0.1; lambda < 1e-6 {
+				lambda = 0
+			}
+			if better < smallGain && lambda == 0 {
+				break
+			}
+			continue
+		}
+		if lambda = max(10*lambda, 1e-3); lambda > 1e8 {
+			break
+		}
+	}
+	m.solvable = m.covariance() && m.solvable
+	return m.solvable
+}
+
+// hold marks the parameters that take no part in a step.
+func (m *marquardt) hold() {
+	m.free = 0
+	for i := range m.n {
+		d := m.a[i*m.n+i]
+		m.held[i] = m.fixed[i] || !(d > 0) || math.IsInf(d, 0) ||
+			(m.p[i] <= m.lo[i] && m.b[i] < 0) || (m.p[i] >= m.hi[i] && m.b[i] > 0)
+		if m.held[i] {
+			m.scale[i] = 0
+			continue
+		}
+		m.scale[i] = 1 / math.Sqrt(d)
+		m.free++
+	}
+}
+
+// factor writes the Cholesky factor of the scaled matrix plus lambda on its
+// unit diagonal into chol; held rows are those of the unit matrix.
+func (m *marquardt) factor(lambda float64) bool {
+	n := m.n
+	for i := range n {
+		for j := range i {
+			m.chol[i*n+j] = m.a[j*n+i] * m.scale[i] * m.scale[j]
+		}
+		m.chol[i*n+i] = 1 + lambda
+	}
+	for i := range n {
+		ri := m.chol[i*n : i*n+n]
+		for j := 0; j <= i; j++ {
+			rj := m.chol[j*n : j*n+n]
+			s := ri[j]
+			for k := range j {
+				s -= ri[k] * rj[k]
+			}
+			if i != j {
+				ri[j] = s / rj[j]
+				continue
+			}
+			if !(s > 1e-13) {
+				return false
+			}
+			ri[i] = math.Sqrt(s)
+		}
+	}
+	return true
+}
+
+// solve overwrites x, in scaled units, with the solution of chol chol^T y = x.
+func (m *marquardt) solve(x []float64) {
+	n := m.n
+	for i := range n {
+		s := x[i]
+		for k := range i {
+			s -= m.chol[i*n+k] * x[k]
+		}
+		x[i] = s / m.chol[i*n+i]
+	}
+	for i := n - 1; i >= 0; i-- {
+		s := x[i]
+		for k := i + 1; k < n; k++ {
+			s -= m.chol[k*n+i] * x[k]
+		}
+		x[i] = s / m.chol[i*n+i]
+	}
+}
+
+// propose computes the trial point for a damping and the drop of chi^2 that
+// the quadratic model promises for it.
+func (m *marquardt) propose(lambda float64) (gain float64, ok bool) {
+	m.hold()
+	if !m.factor(lambda) {
+		return 0, false
+	}
+	for i := range m.n {
+		m.step[i] = m.b[i] * m.scale[i]
+	}
+	m.solve(m.step)
+	for i := range m.n {
+		d := m.step[i] * m.scale[i]
+		t := min(max(m.p[i]+d, m.lo[i]), m.hi[i])
+		if m.held[i] || math.IsNaN(t) {
+			t = m.p[i]
+		}
+		m.trial[i] = t
+		gain += math.Abs(t-m.p[i]) * math.Abs(m.b[i])
+	}
+	return gain, true
+}
+
+// covariance inverts the matrix at the solution. Parameters at a bound that
+// the data would push over it are left out: their errors are unknown.
+func (m *marquardt) covariance() bool {
+	clear(m.cov)
+	m.hold()
+	ok := m.factor(0)
+	if !ok && !m.factor(1e-9) {
+		return false
+	}
+	n := m.n
+	for j := range n {
+		if m.held[j] {
+			continue
+		}
+		clear(m.step)
+		m.step[j] = 1
+		m.solve(m.step)
+		for i := range n {
+			if !m.held[i] {
+				m.cov[i*n+j] = m.step[i] * m.scale[i] * m.scale[j]
+			}
+		}
+	}
+	return ok
+}
+
+// resize returns a zeroed slice of length n, reusing v when it is large enough.
+func resize(v []float64, n int) []float64 {
+	if cap(v) < n {
+		v = make([]float64, n, n+n/2)
+	}
+	v = v[:n]
+	clear(v)
+	return v
+}

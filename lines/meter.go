@@ -1,0 +1,260 @@
+package lines
+
+import (
+	"math"
+	"strings"
+
+	"duskline/linelist"
+	"duskline/spectrum"
+)
+
+// Arm is one piece of a spectrum in the form that measuring needs. All slices
+// but Resolution have the length of Wave; ContErr may be nil.
+type Arm struct {
+	Wave []float64 // vacuum, barycentric, Angstrom, strictly increasing
+	Flux []float64 // any unit; not read where Ivar is 0
+	Ivar []float64 // inverse variance of Flux, 0 where a pixel must not be used
+	Cont []float64 // continuum, in the unit of Flux; a pixel where it is not finite is not used
+	// ContErr is its standard error; nil or non-finite counts as 0.
+	ContErr []float64
+	// Resolution is wavelength / FWHM as in spectrum.Segment: empty, one
+	// value, or one per pixel. Values that are not positive count as unknown.
+	Resolution []float64
+}
+
+// The kinds of a Result.
+const (
+	Absorption = "absorption"
+	Emission   = "emission"
+	Limit      = "limit"      // covered and measured, not significant
+	Unmeasured = "unmeasured" // inside the coverage, but Reason says why not
+)
+
+// What Result.Reason can say.
+const (
+	ReasonMasked      = "masked"       // too few good pixels on the line
+	ReasonOffEdge     = "off_edge"     // the line runs over the end of the coverage
+	ReasonNoContinuum = "no_continuum" // continuum missing, negative or not above 3 times its error
+	ReasonBlended     = "blended"      // too close to a line of another ion, which carries the sum of both
+	ReasonNoFit       = "no_fit"       // the pixels do not determine the profile
+	ReasonAtBound     = "at_bound"     // offset or width ended at the limit of its range; the values stand
+)
+
+// Result is one line of the list in one spectrum. Numbers that do not apply
+// are NaN.
+type Result struct {
+	Name     string
+	RestWave float64 // vacuum Angstrom
+	Kind     string
+
+	EWRest, EWRestErr float64 // rest frame, from the profile fit, Angstrom, positive in absorption
+	EWSum, EWSumErr   float64 // rest frame, direct sum over +-SumHalfWidth sigma
+	Flux, FluxErr     float64 // unit of the arm's flux times observed Angstrom, positive in emission
+	// OffsetKms is the center against Options.Z. OffsetErr is NaN when the
+	// offset was taken over from a stronger line. A limit has no offset.
+	OffsetKms, OffsetErr float64
+	// WidthKms is the Gaussian sigma: of the source where the resolution is
+	// known (0 when the line is no broader than the instrument), else as
+	// observed. WidthErr is the step to its upper 1-sigma bound, NaN when the
+	// width was taken over from a stronger line or from Options.
+	WidthKms, WidthErr float64
+	SNR                float64 // |Flux| / FluxErr
+	Continuum          float64 // at the line, with the local straight line
+	// UpperLimit is |EWRest| + 3 EWRestErr of a limit: the true |W| is below
+	// it with a probability of at least 99.7 % for a line of the width given.
+	UpperLimit float64
+
+	Blend  string // names of the lines that overlap this one, joined by "+", itself included; empty when alone
+	Pixels int    // good pixels in the sum
+	Reason string // empty, or one of the Reason constants
+	OnSky  bool   // a band of Options.Sky touches the core of the line
+}
+
+// SumHalfWidth is the half width of the direct sum in observed Gaussian sigma;
+// 3.5 leaves 0.05 % of a Gaussian outside.
+const SumHalfWidth = 3.5
+
+// Options steers a measurement. The zero value of each field stands for its
+// default.
+type Options struct {
+	Z    float64 // redshift
+	ZErr float64 // its standard error; widens the search by three of it
+	// Broad allows the widths and offsets of a quasar to permitted lines; the
+	// forbidden ones and those only seen in absorption keep narrow ranges.
+	Broad bool
+
+	SearchKms  float64 // largest offset: 300; with Broad 3000, 1000 for narrow lines
+	WidthMax   float64 // largest Gaussian sigma of the source, km/s: 1500; 10000 for broad lines
+	WidthGuess float64 // sigma of the source assumed where no line of the spectrum tells, km/s: 100
+	WindowKms  float64 // smallest half width of the fit window: 1200
+	MinGood    float64 // smallest good fraction of a line's pixels: 0.7
+	// ContinuumSlack is how far the local straight line may differ from the
+	// continuum given, as a fraction of it: 0.05. It is the standard deviation
+	// of a Gaussian prior, added in quadrature to ContErr and to 0.3 of the
+	// noise of a pixel. A negative value means that the continuum is right
+	// within ContErr; with ContErr nil it is then held fixed.
+	ContinuumSlack float64
+
+	Sky []Band // wavelengths to be noted in Result.OnSky; see SkyBands
+}
+
+func (o Options) withDefaults() Options {
+	def := func(v *float64, d float64) {
+		if !(*v != 0) || math.IsNaN(*v) {
+			*v = d
+		}
+	}
+	def(&o.WidthGuess, 100)
+	def(&o.WindowKms, 1200)
+	def(&o.MinGood, 0.7)
+	def(&o.ContinuumSlack, 0.05)
+	if !(o.ZErr > 0) {
+		o.ZErr = 0
+	}
+	return o
+}
+
+// search returns the largest offset for a line, km/s.
+func (o *Options) search(broad bool) float64 {
+	v := o.SearchKms
+	if !(v > 0) {
+		switch {
+		case broad:
+			v = 3000
+		case o.Broad:
+			v = 1000
+		default:
+			v = 300
+		}
+	}
+	return min(v+3*spectrum.SpeedOfLight*o.ZErr/(1+o.Z), 5000)
+}
+
+// widthMax returns the largest width of the source for a line, km/s.
+func (o *Options) widthMax(broad bool) float64 {
+	if o.WidthMax > 0 {
+		return o.WidthMax
+	}
+	if broad {
+		return 10000
+	}
+	return 1500
+}
+
+// Meter measures the lines of one list. It is immutable and may be shared.
+type Meter struct {
+	lines []line
+}
+
+// line is a line of the list with what planning needs to know of it.
+type line struct {
+	linelist.Line
+	ion       string // element and stage without the brackets of forbidden lines
+	forbidden bool
+	group     int     // index of the list's group, -1 for none
+	doublet   int     // index into fixedRatios, -1 for none
+	share     float64 // strength within a doublet, or relative to lines of the ion when unresolved
+}
+
+// fixedRatio is a doublet whose flux ratio is fixed by atomic physics because
+// both lines leave the same upper level.
+type fixedRatio struct {
+	ion          string
+	strong, weak float64 // vacuum wavelengths, Angstrom
+	ratio        float64
+}
+
+// The two ratios follow Storey & Zeippen 2000, MNRAS 312, 813 (from memory).
+var fixedRatios = []fixedRatio{
+	{"O III", 5008.240, 4960.295, 2.98},
+	{"N II", 6585.27, 6549.86, 3.05},
+}
+
+// NewMeter returns the meter of a list. It panics when list is nil.
+func NewMeter(list *linelist.List) *Meter {
+	groups := map[string]int{}
+	m := &Meter{}
+	for _, l := range list.Lines() {
+		e := line{Line: l, ion: plainIon(l.Ion), forbidden: strings.HasPrefix(l.Ion, "["), group: -1, doublet: -1, share: 1}
+		if l.Group != "" {
+			g, ok := groups[l.Group]
+			if !ok {
+				g = len(groups)
+				groups[l.Group] = g
+			}
+			e.group = g
+		}
+		if l.F > 0 {
+			// Between the thin limit (ratio of f) and saturation (1).
+			e.share = math.Sqrt(l.F)
+		}
+		for k, r := range fixedRatios {
+			if !e.forbidden || e.ion != r.ion {
+				continue
+			}
+			if math.Abs(l.Wave-r.strong) < 0.3 {
+				e.doublet, e.share = k, r.ratio
+			} else if math.Abs(l.Wave-r.weak) < 0.3 {
+				e.doublet, e.share = k, 1
+			}
+		}
+		m.lines = append(m.lines, e)
+	}
+	return m
+}
+
+// plainIon strips what does not name the ion: brackets and fine-structure stars.
+func plainIon(s string) string {
+	return strings.Trim(s, "[]*")
+}
+
+// Measure appends one Result to dst for every line of the list whose center
+// lies inside the coverage of an arm, in list order, and returns the extended
+// slice. Lines in several arms are fitted in all of them at once.
+//
+// It never fails: bad data ends in Kind unmeasured with a Reason. An arm whose
+// slices differ in length is a caller's bug and panics, as does a redshift of
+// -1 or less. With a scratch that has seen spectra of the same size, and dst of
+// enough capacity, nothing is allocated. A scratch serves one call at a time;
+// nil makes a new one.
+func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch) []Result {
+	if !(opt.Z > -1) || math.IsInf(opt.Z, 0) {
+		panic("lines: redshift must be finite and above -1")
+	}
+	for k := range arms {
+		arms[k].check()
+	}
+	if scratch == nil {
+		scratch = &Scratch{}
+	}
+	s := scratch
+	if s.labels == nil || s.labeled != m {
+		s.labels, s.labeled = map[labelKey]string{}, m
+	}
+	s.meter, s.arms, s.opt = m, arms, opt.withDefaults()
+	s.survey()
+	s.findTracks()
+	s.plan()
+	for _, faint := range []bool{false, true} {
+		for b := range s.blends {
+			if s.blends[b].faint == faint {
+				s.measureBlend(&s.blends[b])
+			}
+		}
+	}
+	for i := range s.tracks {
+		dst = append(dst, s.tracks[i].result)
+	}
+	s.meter, s.arms = nil, nil
+	return dst
+}
+
+func (a *Arm) check() {
+	n := len(a.Wave)
+	if len(a.Flux) != n || len(a.Ivar) != n || len(a.Cont) != n || (a.ContErr != nil && len(a.ContErr) != n) {
+		panic("lines: slices of an arm differ in length")
+	}
+	if k := len(a.Resolution); k > 1 && k != n {
+		panic("lines: resolution must be empty, one value, or one per pixel")
+	}
+}

@@ -1,0 +1,198 @@
+package lines
+
+import (
+	"math"
+	"strings"
+
+	"duskline/spectrum"
+)
+
+const (
+	// Lines nearer than this many times the sum of their sigmas are fitted
+	// together.
+	joinWithin = 2.5
+	// Lines nearer than this many times the sum of their sigmas are reported
+	// as overlapping.
+	overlapWithin = SumHalfWidth
+	// Lines of two ions nearer than this many sigma are measured as one.
+	mergeIons = 0.7
+	// Lines of one ion nearer than this many sigma share one amplitude, with
+	// their ratio assumed.
+	mergeSame = 1.2
+	// ratioDoubt is the standard error of an assumed ratio: it covers thin to
+	// saturated doublets, and both density limits of [O II].
+	ratioDoubt = 0.35
+	// maxJoin bounds how many lines neighborhood alone may bring into a blend.
+	maxJoin = 14
+)
+
+// blend is a set of lines fitted together: member[first:first+count].
+type blend struct {
+	first, count int
+	faint        bool // nothing seen: offset and width come from the rest of the spectrum
+}
+
+// apart returns the distance of two lines at their starting places, km/s.
+func (s *Scratch) apart(a, b *track) float64 {
+	return math.Abs(spectrum.SpeedOfLight * (b.lam0/a.lam0 - 1))
+}
+
+// plan settles lines that cannot be told apart and gathers the blends.
+func (s *Scratch) plan() {
+	s.blends, s.member = s.blends[:0], s.member[:0]
+	s.anchor = [2][2]kinematics{}
+	s.parent = s.parent[:0]
+	for i := range s.tracks {
+		s.parent = append(s.parent, i)
+	}
+	for i := range s.tracks {
+		for j := i + 1; j < len(s.tracks) && s.tracks[i].usable; j++ {
+			if s.tracks[j].usable && s.tracks[i].line.ion != s.tracks[j].line.ion {
+				s.settle(i, j)
+			}
+		}
+	}
+	for i := range s.tracks {
+		for j := i + 1; j < len(s.tracks) && s.tracks[i].usable; j++ {
+			if s.tracks[j].usable {
+				s.join(i, j)
+			}
+		}
+	}
+	for i := range s.tracks {
+		if !s.tracks[i].usable || s.root(i) != i {
+			continue
+		}
+		b := blend{first: len(s.member), faint: true}
+		for j := i; j < len(s.tracks); j++ {
+			if s.tracks[j].usable && s.root(j) == i {
+				s.member = append(s.member, j)
+				b.faint = b.faint && !s.tracks[j].seen()
+			}
+		}
+		b.count = len(s.member) - b.first
+		s.blends = append(s.blends, b)
+	}
+}
+
+// root finds the representative of a set, always its lowest index.
+func (s *Scratch) root(i int) int {
+	for s.parent[i] != i {
+		i = s.parent[i]
+	}
+	return i
+}
+
+// settle measures two lines of different ions as one when they lie too close
+// to be told apart: the line whose ion shows itself better elsewhere in the
+// spectrum, with the right sign, carries the sum.
+func (s *Scratch) settle(i, j int) {
+	a, b := &s.tracks[i], &s.tracks[j]
+	width := s.opt.WidthGuess
+	switch {
+	case a.seen() && b.seen():
+		width = min(a.s, b.s)
+	case a.seen():
+		width = a.s
+	case b.seen():
+		width = b.s
+	default:
+		width = math.Hypot(width, a.sres)
+	}
+	if s.apart(a, b) > mergeIons*width {
+		return
+	}
+	sg := a.snr
+	if math.Abs(b.snr) > math.Abs(sg) {
+		sg = b.snr
+	}
+	carrier, silent := a, b
+	if s.support(b, sg) > s.support(a, sg) {
+		carrier, silent = b, a
+	}
+	silent.usable = false
+	silent.result.Reason = ReasonBlended
+	silent.carrier = carrier.index
+	var key labelKey
+	key.add(min(a.index, b.index))
+	key.add(max(a.index, b.index))
+	silent.result.Blend = s.label(key)
+	if math.Abs(silent.snr) > math.Abs(carrier.snr) {
+		carrier.snr, carrier.v, carrier.s = silent.snr, silent.v, silent.s
+	}
+}
+
+// support says how well a line would account for a feature of the signed S/N
+// sg: the best S/N of that sign among other lines of its ion, at least 0, and
+// less than nothing when the list says that the line is not seen like that.
+func (s *Scratch) support(t *track, sg float64) float64 {
+	if (sg > 0 && t.line.Seen == Absorption) || (sg < 0 && t.line.Seen == Emission) {
+		return -1
+	}
+	best := 0.0
+	for k := range s.tracks {
+		o := &s.tracks[k]
+		if o.line != t.line && o.line.ion == t.line.ion && o.seen() && sign(o.snr) == sign(sg) {
+			best = max(best, math.Abs(o.snr))
+		}
+	}
+	return best
+}
+
+// join puts two lines into one blend if they belong together.
+func (s *Scratch) join(i, j int) {
+	ri, rj := s.root(i), s.root(j)
+	if ri == rj {
+		return
+	}
+	a, b := &s.tracks[i], &s.tracks[j]
+	if a.line.group < 0 || a.line.group != b.line.group {
+		if s.apart(a, b) > joinWithin*(a.s+b.s) || s.size(ri)+s.size(rj) > maxJoin {
+			return
+		}
+	}
+	s.parent[max(ri, rj)] = min(ri, rj)
+}
+
+func (s *Scratch) size(root int) int {
+	n := 0
+	for k := range s.parent {
+		if s.tracks[k].usable && s.root(k) == root {
+			n++
+		}
+	}
+	return n
+}
+
+// labelKey identifies a blend's name: bit k of mask is line first+k of the
+// list.
+type labelKey struct {
+	first int
+	mask  uint64
+}
+
+// label returns the names of the lines in key, joined by "+". Names are kept,
+// so that each is built once; lines more than 63 places on are left out.
+func (s *Scratch) label(key labelKey) string {
+	if name, ok := s.labels[key]; ok {
+		return name
+	}
+	var names []string
+	for k := range 64 {
+		if key.mask&(1<<k) != 0 {
+			names = append(names, s.meter.lines[key.first+k].Name)
+		}
+	}
+	s.labels[key] = strings.Join(names, "+")
+	return s.labels[key]
+}
+
+// add puts a line into the key; lines come in list order.
+func (k *labelKey) add(index int) {
+	if k.mask == 0 {
+		k.first = index
+	}
+	if d := index - k.first; d < 64 {
+		k.mask |= 1 << d
+	}
+}

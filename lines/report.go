@@ -1,0 +1,180 @@
+package lines
+
+import "math"
+
+// report writes the results of the blend that was just fitted.
+func (s *Scratch) report(ok bool) {
+	scale := s.errorScale()
+	for ci := range s.prob.comps {
+		s.reportLine(ci, ok, scale)
+	}
+}
+
+func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
+	q, m := &s.prob, &s.lm
+	c := &q.comps[ci]
+	e := &q.ties[c.tie]
+	t := &s.tracks[c.track]
+	r := &t.result
+	r.Blend = s.overlaps(ci)
+	variance := m.cov[c.amp*m.n+c.amp]
+	if !ok || !(variance > 0) || math.IsInf(variance, 0) {
+		r.Reason = ReasonNoFit
+		return
+	}
+	mu, sigma, _ := q.place(ci, q.windows[0].arm, m.p)
+	r.OnSky = onSky(s.opt.Sky, mu-1.5*sigma, mu+1.5*sigma)
+	flux := c.share * m.p[c.amp]
+	doubt := s.shareDoubt(ci)
+	r.Flux = flux
+	r.FluxErr = math.Hypot(scale*math.Abs(c.share)*math.Sqrt(variance), doubt)
+	r.SNR = math.Abs(r.Flux) / r.FluxErr
+
+	seen := math.Abs(flux) >= seenFrom*scale*math.Abs(c.share)*math.Sqrt(variance)
+	cont, known := s.continuumAt(ci, scale)
+	r.Continuum = cont
+	z1 := 1 + s.opt.Z
+	if known {
+		// The gradient of W = -flux/cont stands in grad: see continuumAt.
+		r.EWRest = -flux / cont / z1
+		for i := range s.grad {
+			s.grad[i] *= flux / (cont * cont) / z1
+		}
+		s.grad[c.amp] -= c.share / cont / z1
+		r.EWRestErr = math.Hypot(scale*math.Sqrt(max(0, m.quadratic(s.grad))), doubt/cont/z1)
+		sum := s.directSum(ci)
+		r.EWSum, r.EWSumErr, r.Pixels = sum.ew/z1, scale*math.Sqrt(sum.variance)/z1, sum.pixels
+	} else {
+		r.Reason = ReasonNoContinuum
+	}
+	switch {
+	case seen && flux > 0:
+		r.Kind = Emission
+	case seen:
+		r.Kind = Absorption
+	case known:
+		r.Kind = Limit
+		r.UpperLimit = math.Abs(r.EWRest) + 3*r.EWRestErr
+	}
+	s.reportKinematics(r, e, seen, scale)
+}
+
+func (s *Scratch) reportKinematics(r *Result, e *tie, seen bool, scale float64) {
+	m := &s.lm
+	r.WidthKms = e.s
+	if e.sres > 0 {
+		r.WidthKms = math.Sqrt(max(0, e.s*e.s-e.sres*e.sres))
+	}
+	if seen {
+		r.OffsetKms = e.v
+	}
+	if !seen || !e.own {
+		return
+	}
+	if v := m.cov[e.pv*m.n+e.pv]; v > 0 {
+		r.OffsetErr = scale * math.Sqrt(v)
+	}
+	if v := m.cov[e.ps*m.n+e.ps]; v > 0 {
+		up := e.s + scale*math.Sqrt(v)
+		r.WidthErr = math.Sqrt(max(0, up*up-e.sres*e.sres)) - r.WidthKms
+	}
+	if r.Reason == "" && (m.held[e.pv] || m.held[e.ps]) && e.s > e.smin {
+		r.Reason = ReasonAtBound
+	}
+}
+
+// shareDoubt returns the error of a line's flux that comes from a share that
+// was assumed.
+func (s *Scratch) shareDoubt(ci int) float64 {
+	q := &s.prob
+	c := &q.comps[ci]
+	if !c.assumed {
+		return 0
+	}
+	total := 0.0
+	for i := range q.comps {
+		if q.comps[i].amp == c.amp {
+			total += q.comps[i].share
+		}
+	}
+	return math.Abs(s.lm.p[c.amp]) * ratioDoubt * c.share * (1 - c.share/total)
+}
+
+// continuumAt returns the continuum under a line, averaged over the arms that
+// see it by the weight that they give to the line. It leaves the derivatives to
+// the parameters in grad. known is false when the continuum does not stand
+// above three of its errors.
+func (s *Scratch) continuumAt(ci int, scale float64) (cont float64, known bool) {
+	q, m := &s.prob, &s.lm
+	s.grad = resize(s.grad, m.n)
+	total := 0.0
+	for i := range q.windows {
+		w := &q.windows[i]
+		info, c, x := s.under(ci, w)
+		if info <= 0 {
+			continue
+		}
+		cont += info * (c + m.p[w.base] + m.p[w.base+1]*x)
+		s.grad[w.base] += info
+		s.grad[w.base+1] += info * x
+		total += info
+	}
+	if total == 0 {
+		return math.NaN(), false
+	}
+	for i := range s.grad {
+		s.grad[i] /= total
+	}
+	cont /= total
+	return cont, cont > 0 && cont > 3*scale*math.Sqrt(max(0, m.quadratic(s.grad)))
+}
+
+// under returns the weight of a line on a window, the continuum given at its
+// center, and the center's place on the straight line.
+func (s *Scratch) under(ci int, w *window) (info, cont, x float64) {
+	q := &s.prob
+	mu, sigma, _ := q.place(ci, w.arm, s.lm.p)
+	if mu < w.mid-w.half || mu > w.mid+w.half {
+		return 0, 0, 0
+	}
+	lo, hi := q.span(w, mu, sigma)
+	for i := lo; i < hi; i++ {
+		if q.w[i] > 0 {
+			g, _, _ := gaussian(q.lam[i], q.width[i], mu, sigma)
+			info += q.w[i] * g * g
+		}
+	}
+	a := &s.arms[w.arm]
+	j := min(max(a.index(mu), 1), len(a.Wave)-1)
+	f := (mu - a.Wave[j-1]) / (a.Wave[j] - a.Wave[j-1])
+	cont = a.Cont[j-1]*(1-f) + a.Cont[j]*f
+	if math.IsNaN(cont) || math.IsInf(cont, 0) {
+		return 0, 0, 0
+	}
+	return info, cont, (mu - w.mid) / w.half
+}
+
+// overlaps names the lines of the blend that overlap a component, itself
+// included, with those it carries; empty when there are none.
+func (s *Scratch) overlaps(ci int) string {
+	q := &s.prob
+	c := &q.comps[ci]
+	own := &s.tracks[c.track]
+	var key labelKey
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		with := i == c.track || t.carrier == own.index
+		for k := range q.comps {
+			if q.comps[k].track == i && !with {
+				with = s.apart(own, t) < overlapWithin*(q.ties[c.tie].s+q.ties[q.comps[k].tie].s)
+			}
+		}
+		if with {
+			key.add(t.index)
+		}
+	}
+	if key.mask&(key.mask-1) == 0 {
+		return ""
+	}
+	return s.label(key)
+}

@@ -1,0 +1,210 @@
+package lines
+
+import "math"
+
+// maxRounds bounds how often a blend is laid out again after a fit.
+const maxRounds = 4
+
+// measureBlend fits one blend and writes the results of its lines. A blend in
+// which the fit finds nothing after all is marked faint and left for later.
+func (s *Scratch) measureBlend(b *blend) {
+	main := s.formTies(b)
+	ok := false
+	for range maxRounds {
+		s.build(main)
+		ok = s.fit()
+		s.readKinematics()
+		if !s.revise(main, ok) {
+			break
+		}
+	}
+	if !b.faint && !s.anySeen(ok) {
+		b.faint = true
+		return
+	}
+	s.report(ok)
+	if !b.faint && ok {
+		s.dropAnchors()
+	}
+}
+
+// fit solves first for the linear parameters alone, then for all.
+func (s *Scratch) fit() bool {
+	q, m := &s.prob, &s.lm
+	free := false
+	for k := range q.ties {
+		if e := &q.ties[k]; e.own {
+			m.fixed[e.pv], m.fixed[e.ps] = true, true
+			free = true
+		}
+	}
+	ok := m.minimize(q)
+	if !free {
+		return ok
+	}
+	for k := range q.ties {
+		if e := &q.ties[k]; e.own {
+			m.fixed[e.pv], m.fixed[e.ps] = false, false
+		}
+	}
+	return m.minimize(q)
+}
+
+func (s *Scratch) readKinematics() {
+	q := &s.prob
+	for k := range q.ties {
+		if e := &q.ties[k]; e.pv >= 0 {
+			e.v, e.s = s.lm.p[e.pv], s.lm.p[e.ps]
+		}
+	}
+}
+
+// tieSNR returns the S/N of the best-determined amplitude of a tie.
+func (s *Scratch) tieSNR(k int) float64 {
+	q, m := &s.prob, &s.lm
+	best := 0.0
+	for i := range q.comps {
+		if q.comps[i].tie != k {
+			continue
+		}
+		a := q.comps[i].amp
+		if v := m.cov[a*m.n+a]; v > 0 {
+			best = max(best, math.Abs(m.p[a])/math.Sqrt(v))
+		}
+	}
+	return best
+}
+
+func (s *Scratch) anySeen(ok bool) bool {
+	if !ok {
+		return false
+	}
+	scale := s.errorScale()
+	for k := range s.prob.ties {
+		if s.tieSNR(k) >= seenFrom*scale {
+			return true
+		}
+	}
+	return false
+}
+
+// revise decides after a fit whether the blend must be laid out again: an ion
+// that proves strong gets offset and width of its own, one that proves weak
+// gives them up, lines turn out resolved or not, or the width has left its
+// window.
+func (s *Scratch) revise(main int, ok bool) bool {
+	q := &s.prob
+	if main < 0 || !ok {
+		return false
+	}
+	again := false
+	for k := range q.ties {
+		e := &q.ties[k]
+		if k == main {
+			continue
+		}
+		snr := s.tieSNR(k)
+		switch {
+		case !e.own && !e.settled && snr >= ownFrom:
+			e.own, e.settled, again = true, true, true
+		case e.own && snr < seenFrom && e.broad == q.ties[main].broad:
+			e.own, e.settled, again = false, false, true
+			e.v, e.s = q.ties[main].v, q.ties[main].s
+		}
+	}
+	for i := range q.comps {
+		if s.outgrown(i) {
+			again = true
+		}
+	}
+	return again || s.regrouped()
+}
+
+// outgrown reports whether the sum window of a component, or most of the
+// window that its width calls for, has left the fit window.
+func (s *Scratch) outgrown(ci int) bool {
+	q := &s.prob
+	for i := range q.windows {
+		w := &q.windows[i]
+		a := &s.arms[w.arm]
+		mu, sigma, _ := q.place(ci, w.arm, s.lm.p)
+		if mu < w.mid-w.half || mu > w.mid+w.half {
+			continue
+		}
+		d := 5 * sigma
+		if (mu-d < w.mid-w.half && w.pix0 > 0) || (mu+d > w.mid+w.half && w.pixLimit < len(a.Wave)) {
+			return true
+		}
+	}
+	return false
+}
+
+// regrouped reports whether the present widths call for other shared
+// amplitudes than the fit had.
+func (s *Scratch) regrouped() bool {
+	q := &s.prob
+	for i := range q.comps {
+		c := &q.comps[i]
+		if i+1 == len(q.comps) || s.tracks[c.track].line.doublet >= 0 {
+			continue
+		}
+		for j := i + 1; j < len(q.comps); j++ {
+			d := &q.comps[j]
+			if d.tie == c.tie {
+				near := s.apart(&s.tracks[c.track], &s.tracks[d.track]) < mergeSame*q.ties[c.tie].s
+				if near && d.amp != c.amp {
+					return true
+				}
+				break
+			}
+		}
+	}
+	return false
+}
+
+// errorScale returns the factor for all errors of the fit: sqrt(chi^2/dof)
+// when chi^2/dof lies above 1 by more than three of its standard deviations
+// sqrt(2/dof), else 1.
+func (s *Scratch) errorScale() float64 {
+	q := &s.prob
+	used := 0
+	for _, w := range q.w {
+		if w > 0 {
+			used++
+		}
+	}
+	dof := float64(used - s.lm.free)
+	if dof < 5 {
+		return 1
+	}
+	if r := s.lm.chi2 / dof; r > 1+3*math.Sqrt(2/dof) {
+		return math.Sqrt(r)
+	}
+	return 1
+}
+
+// dropAnchors lends offset and width of the blend's ions to what comes later.
+func (s *Scratch) dropAnchors() {
+	q := &s.prob
+	scale := s.errorScale()
+	for k := range q.ties {
+		e := &q.ties[k]
+		snr := s.tieSNR(k) / scale
+		if !e.own || snr < anchorFrom || e.v <= -e.vmax || e.v >= e.vmax || e.s >= e.smax {
+			continue
+		}
+		flux := 0.0
+		for i := range q.comps {
+			if q.comps[i].tie == k {
+				flux += q.comps[i].share * s.lm.p[q.comps[i].amp]
+			}
+		}
+		class := 0
+		if e.broad {
+			class = 1
+		}
+		if a := &s.anchor[class][sign(flux)]; snr > a.snr {
+			*a = kinematics{snr, e.v, math.Sqrt(max(0, e.s*e.s-e.sres*e.sres))}
+		}
+	}
+}

@@ -1,0 +1,139 @@
+package lines
+
+import (
+	"math"
+
+	"duskline/spectrum"
+)
+
+// layWindows collects the pixels around the lines of the blend, on every arm.
+// Windows of one arm that touch become one. A window reaches 8 sigma of the
+// line (6 of a broad one), and never less than Options.WindowKms or 12 pixels.
+func (s *Scratch) layWindows() {
+	q := &s.prob
+	q.windows = q.windows[:0]
+	q.narms = len(s.arms)
+	q.dsig = resize(q.dsig, len(q.comps)*q.narms)
+	for ci := range q.comps {
+		c := &q.comps[ci]
+		e := &q.ties[c.tie]
+		t := &s.tracks[c.track]
+		times := 8.0
+		if e.broad {
+			times = 6
+		}
+		half := max(s.opt.WindowKms, times*e.s, 12*t.pix)
+		mu := c.lam0 * (1 + e.v/spectrum.SpeedOfLight)
+		d := c.lam0 * half / spectrum.SpeedOfLight
+		for k := range s.arms {
+			a := &s.arms[k]
+			n := len(a.Wave)
+			if n < 2 || mu < a.Wave[0] || mu > a.Wave[n-1] {
+				continue
+			}
+			if r := a.sigmaKms(a.nearest(mu)); r > 0 && e.sres > 0 {
+				q.dsig[ci*q.narms+k] = r*r - e.sres*e.sres
+			}
+			s.addWindow(k, a.index(mu-d), a.index(mu+d))
+		}
+	}
+	q.lam, q.width, q.y, q.w, q.cont = q.lam[:0], q.width[:0], q.y[:0], q.w[:0], q.cont[:0]
+	for i := range q.windows {
+		s.fillWindow(&q.windows[i])
+	}
+}
+
+func (s *Scratch) addWindow(arm, lo, hi int) {
+	q := &s.prob
+	for i := range q.windows {
+		w := &q.windows[i]
+		if w.arm == arm && lo <= w.pixLimit && hi >= w.pix0 {
+			w.pix0, w.pixLimit = min(w.pix0, lo), max(w.pixLimit, hi)
+			return
+		}
+	}
+	q.windows = append(q.windows, window{arm: arm, pix0: lo, pixLimit: hi})
+}
+
+// fillWindow copies the pixels of a window, without weight where a line
+// outside the blend stands, and sets the prior of its straight line.
+func (s *Scratch) fillWindow(w *window) {
+	q := &s.prob
+	a := &s.arms[w.arm]
+	w.lo = len(q.lam)
+	var cont, contErr, weight, good float64
+	for i := w.pix0; i < w.pixLimit; i++ {
+		lo, hi := pixelEdges(a.Wave, i)
+		q.lam = append(q.lam, 0.5*(lo+hi))
+		q.width = append(q.width, hi-lo)
+		g := a.good(i)
+		y, c := 0.0, a.Cont[i]
+		if g > 0 {
+			y = a.Flux[i] - c
+			cont += math.Abs(c)
+			weight += g
+			good++
+			if a.ContErr != nil {
+				if ce := a.ContErr[i]; ce > 0 && !math.IsInf(ce, 0) {
+					contErr += ce
+				}
+			}
+		} else if math.IsNaN(c) || math.IsInf(c, 0) {
+			c = 0
+		}
+		q.y, q.w, q.cont = append(q.y, y), append(q.w, g), append(q.cont, c)
+	}
+	w.hi = len(q.lam)
+	if good == 0 {
+		w.mid, w.half, w.prior = 0, 1, 0
+		if w.hi > w.lo {
+			w.mid = q.lam[w.lo]
+		}
+		return
+	}
+	w.mid = 0.5 * (q.lam[w.lo] + q.lam[w.hi-1])
+	w.half = max(0.5*(q.lam[w.hi-1]-q.lam[w.lo]), 0.5*q.width[w.lo])
+	w.prior = contErr / good
+	if s.opt.ContinuumSlack > 0 {
+		w.prior = math.Hypot(w.prior, math.Hypot(s.opt.ContinuumSlack*cont/good, 0.3/math.Sqrt(weight/good)))
+	}
+	s.maskOutsiders(w)
+}
+
+// maskOutsiders takes the weight from pixels within 2.5 sigma of a clearly
+// seen line of another blend, unless they are as near to a line of this one.
+func (s *Scratch) maskOutsiders(w *window) {
+	q := &s.prob
+	blend := s.root(q.comps[0].track)
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		if !t.usable || math.Abs(t.snr) < 5 || s.root(i) == blend {
+			continue
+		}
+		mu := t.lam0 * (1 + t.v/spectrum.SpeedOfLight)
+		d := joinWithin * t.s * t.lam0 / spectrum.SpeedOfLight
+		if mu+d < q.lam[w.lo] || mu-d > q.lam[w.hi-1] {
+			continue
+		}
+		for k := w.lo; k < w.hi; k++ {
+			if math.Abs(q.lam[k]-mu) < d && !s.nearOwn(q.lam[k]) {
+				q.w[k] = 0
+			}
+		}
+	}
+}
+
+// nearOwn reports whether a wavelength lies within 2.5 sigma of a line of the
+// blend.
+func (s *Scratch) nearOwn(lam float64) bool {
+	q := &s.prob
+	for i := range q.comps {
+		c := &q.comps[i]
+		e := &q.ties[c.tie]
+		scale := c.lam0 / spectrum.SpeedOfLight
+		if math.Abs(lam-c.lam0-scale*e.v) < joinWithin*scale*e.s {
+			return true
+		}
+	}
+	return false
+}
