@@ -55,29 +55,32 @@ func (b Basis) Value(coef []float64, x float64) float64 {
 	return v[0]*coef[i] + v[1]*coef[i+1] + v[2]*coef[i+2] + v[3]*coef[i+3]
 }
 
+// band is the number of off-diagonals of the normal equations: three for the
+// basis, four for the penalty on fourth differences.
+const band = 4
+
+const stride = band + 1
+
 // Normal holds the banded normal equations A s = y of a weighted least-squares
-// spline, A = B^T W B. The zero value is ready for Reset.
+// spline, A = B^T W B plus penalties. The zero value is ready for Reset.
 type Normal struct {
 	size   int
-	matrix []float64 // upper band, row-major, 4 a row
+	matrix []float64 // upper band, row-major, stride a row
+	work   []float64
 	factor blas64.TriangularBand
-	band   []float64
 }
 
 // Reset empties the equations for a basis of size functions.
 func (n *Normal) Reset(size int) {
 	n.size = size
-	if cap(n.matrix) < 4*size {
-		n.matrix, n.band = make([]float64, 4*size), make([]float64, 4*size)
-	}
-	n.matrix, n.band = n.matrix[:4*size], n.band[:4*size]
+	n.matrix, n.work = grow(n.matrix, stride*size), grow(n.work, stride*size)
 	clear(n.matrix)
 }
 
 // Add adds a point of weight w where the basis has values v from index i on.
 func (n *Normal) Add(i int, v *[4]float64, w float64) {
 	for a := 0; a < 4; a++ {
-		row := n.matrix[4*(i+a):]
+		row := n.matrix[stride*(i+a):]
 		wv := w * v[a]
 		for b := a; b < 4; b++ {
 			row[b-a] += wv * v[b]
@@ -92,33 +95,47 @@ func (n *Normal) Add(i int, v *[4]float64, w float64) {
 func (n *Normal) Ridge(lambda float64) {
 	mean := 0.0
 	for i := 0; i < n.size; i++ {
-		mean += n.matrix[4*i]
+		mean += n.matrix[stride*i]
 	}
 	p := lambda * mean / float64(n.size)
 	for i := 0; i+2 < n.size; i++ {
-		m := n.matrix[4*i:]
-		m[0] += p
-		m[1] -= 2 * p
-		m[2] += p
-		m[4] += 4 * p
-		m[5] -= 2 * p
-		m[8] += p
+		n.difference(i, p, []float64{1, -2, 1})
+	}
+}
+
+var fourth = []float64{1, -4, 6, -4, 1}
+
+// Stiffen adds the penalty precision(i) times the squared fourth difference of
+// the coefficients i to i+4, for all i: a Gaussian prior on the continuum that
+// leaves slow changes free and limits fast ones (Eilers & Marx 1996). The gain
+// of the fourth difference for a wave of L knots is (2 sin(pi/L))^4, 4 at
+// L = 4, 0.34 at L = 8 and 0.02 at L = 16.
+func (n *Normal) Stiffen(precision func(i int) float64) {
+	for i := 0; i+4 < n.size; i++ {
+		n.difference(i, precision(i), fourth)
+	}
+}
+
+func (n *Normal) difference(i int, p float64, d []float64) {
+	for a := range d {
+		row := n.matrix[stride*(i+a):]
+		for b := a; b < len(d); b++ {
+			row[b-a] += p * d[a] * d[b]
+		}
 	}
 }
 
 // Factor computes the Cholesky factor. It reports false when the equations are
 // not positive definite, which happens when too few points carry weight.
 func (n *Normal) Factor() bool {
-	copy(n.band, n.matrix)
-	t, ok := lapack64.Pbtrf(blas64.SymmetricBand{Uplo: blas.Upper, N: n.size, K: 3, Stride: 4, Data: n.band})
+	copy(n.work, n.matrix)
+	t, ok := lapack64.Pbtrf(blas64.SymmetricBand{Uplo: blas.Upper, N: n.size, K: band, Stride: stride, Data: n.work})
 	n.factor = t
 	return ok
 }
 
 // Solve replaces y by the solution s of A s = y. Factor must have succeeded.
-func (n *Normal) Solve(y []float64) {
-	lapack64.Pbtrs(n.factor, blas64.General{Rows: n.size, Cols: 1, Stride: 1, Data: y})
-}
+func (n *Normal) Solve(y []float64) { n.SolveMany(y, 1) }
 
 // SolveMany replaces each column of the row-major matrix y, with cols columns,
 // by the solution for it.

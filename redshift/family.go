@@ -17,7 +17,7 @@ const (
 	maxComponents = 16
 	// reach is how many sigma of a Gaussian are drawn.
 	reach = 4.0
-	ln10 = math.Ln10
+	ln10  = math.Ln10
 )
 
 // Family is a compiled template family. It is immutable.
@@ -45,6 +45,7 @@ type component struct {
 	absorption bool
 	width      float64 // km/s; 0: the family's
 	scale      float64 // on the family's width
+	most       float64 // largest amplitude; 0 for no bound
 	terms      []term
 	edges      []edge
 	heads      []head
@@ -231,4 +232,3 @@ func drawHead(d *drawing, n int, wave0, ratio float64, h head) {
 		d.include(lo, hi)
 	}
 }
-

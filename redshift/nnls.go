@@ -8,11 +8,50 @@ import "math"
 // normal equations (Bro & De Jong 1997). It writes the solution to a and
 // returns the decrease 2 h^T a - a^T G a and the number of positive amplitudes.
 // Components whose diagonal is not positive stay at zero.
-func nnls(a *[maxComponents]float64, g *[maxComponents * maxComponents]float64, h *[maxComponents]float64, m int) (drop float64, active int) {
+//
+// A positive most[i] bounds a[i] from above: amplitudes beyond their bound are
+// fixed there and the others solved again.
+func nnls(a *[maxComponents]float64, g *[maxComponents * maxComponents]float64, h, most *[maxComponents]float64, m int) (drop float64, active int) {
+	var fixed [maxComponents]bool
+	rest := *h
+	for {
+		solveFree(a, g, &rest, &fixed, m)
+		again := false
+		for i := 0; i < m; i++ {
+			if most[i] > 0 && !fixed[i] && a[i] > most[i] {
+				fixed[i], again = true, true
+				a[i] = most[i]
+				for j := 0; j < m; j++ {
+					rest[j] -= g[j*maxComponents+i] * most[i]
+				}
+			}
+		}
+		if !again {
+			break
+		}
+	}
+	for i := 0; i < m; i++ {
+		if a[i] > 0 {
+			active++
+			ga := 0.0
+			for j := 0; j < m; j++ {
+				ga += g[i*maxComponents+j] * a[j]
+			}
+			drop += a[i] * (2*h[i] - ga)
+		}
+	}
+	return drop, active
+}
+
+// solveFree is the active-set iteration over the amplitudes that are not
+// fixed.
+func solveFree(a *[maxComponents]float64, g *[maxComponents * maxComponents]float64, h *[maxComponents]float64, fixed *[maxComponents]bool, m int) {
 	var in, dead [maxComponents]bool
 	for i := 0; i < m; i++ {
-		a[i] = 0
-		dead[i] = !(g[i*maxComponents+i] > 0)
+		dead[i] = fixed[i] || !(g[i*maxComponents+i] > 0)
+		if !fixed[i] {
+			a[i] = 0
+		}
 	}
 	var s [maxComponents]float64
 	for iter := 0; iter < 4*m; iter++ {
@@ -69,18 +108,6 @@ func nnls(a *[maxComponents]float64, g *[maxComponents * maxComponents]float64, 
 			}
 		}
 	}
-	for i := 0; i < m; i++ {
-		if a[i] > 0 {
-			active++
-			drop += a[i] * h[i]
-			ga := 0.0
-			for j := 0; j < m; j++ {
-				ga += g[i*maxComponents+j] * a[j]
-			}
-			drop += a[i] * (h[i] - ga)
-		}
-	}
-	return drop, active
 }
 
 // solveSubset solves G s = h over the variables that are in, by Cholesky. It

@@ -34,16 +34,19 @@ type ComponentRecipe struct {
 	Name string `toml:"name"`
 	// Kind is "emission" (adds to the continuum) or "absorption" (multiplies
 	// it; its shapes are depths).
-	Kind       string       `toml:"kind"`
-	Width      float64      `toml:"width"`       // Gaussian sigma in km/s; the family's when 0
-	WidthScale float64      `toml:"width_scale"` // factor on the family's width; 1 when 0
-	Source     string       `toml:"source"`
-	Lines      []lineRatio  `toml:"lines"`
-	CaseB      *caseBRecipe `toml:"case_b"`
-	Bumps      []bump       `toml:"bumps"`
-	Edges      []edge       `toml:"edges"`
-	Heads      []head       `toml:"heads"`
-	Forest     bool         `toml:"forest"`
+	Kind       string  `toml:"kind"`
+	Width      float64 `toml:"width"`       // Gaussian sigma in km/s; the family's when 0
+	WidthScale float64 `toml:"width_scale"` // factor on the family's width; 1 when 0
+	// Most bounds the amplitude of an absorption component: the largest depth,
+	// as a fraction of the continuum, that nature makes. No bound when 0.
+	Most   float64      `toml:"most"`
+	Source string       `toml:"source"`
+	Lines  []lineRatio  `toml:"lines"`
+	CaseB  *caseBRecipe `toml:"case_b"`
+	Bumps  []bump       `toml:"bumps"`
+	Edges  []edge       `toml:"edges"`
+	Heads  []head       `toml:"heads"`
+	Forest bool         `toml:"forest"`
 }
 
 type lineRatio struct {
@@ -148,7 +151,7 @@ func ParseRecipe(file string, text []byte, list *linelist.List) (*Family, error)
 func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
 	var problems []string
 	bad := func(format string, args ...any) { problems = append(problems, fmt.Sprintf(format, args...)) }
-	c := component{name: r.Name, width: r.Width, scale: r.WidthScale}
+	c := component{name: r.Name, width: r.Width, scale: r.WidthScale, most: r.Most}
 	if c.scale == 0 {
 		c.scale = 1
 	}
@@ -161,6 +164,9 @@ func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
 		c.absorption = true
 	default:
 		bad("kind = %q, want emission or absorption", r.Kind)
+	}
+	if r.Most < 0 || (r.Most > 0 && !c.absorption) {
+		bad("most = %g, want a positive bound, on absorption only", r.Most)
 	}
 	if r.Source == "" {
 		bad("source is missing: say where the ratios come from")

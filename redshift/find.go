@@ -1,0 +1,422 @@
+package redshift
+
+import (
+	"errors"
+	"math"
+	"slices"
+
+	"duskline/continuum"
+	"duskline/spectrum"
+)
+
+// Options steers a Finder. Zero values are not defaults: start from
+// DefaultOptions.
+type Options struct {
+	KnotSpacing float64 // of the continuum spline, dex
+	Floor       float64 // template error, fraction of the local flux
+	Stiffness   float64 // prior on fast waves of the continuum, fraction; 0 for a plain spline
+	Temper      int     // half width in pixels over which misfit lowers the weights; 0 for never
+	ClipSpikes  float64 // sigmas beyond which a pixel does not shape the continuum
+	Nominees    int     // trial redshifts a family and width that go to the joint fit
+	MinPixels   int     // usable pixels below which no redshift is sought
+	SearchFrom  float64 // observed Angstrom; pixels outside do not count when enough are inside
+	SearchTo    float64
+	SkyBands    [][2]float64 // observed wavelengths that weigh zero, Angstrom
+}
+
+// DefaultOptions returns the settings the tool is tuned with.
+//
+// The knot spacing puts 18 interior knots over 3500 to 10500 Angstrom. The
+// masked bands are the [O I] night-sky line and the telluric B and A bands.
+func DefaultOptions() Options {
+	return Options{
+		KnotSpacing: 0.0251,
+		Floor:       0.02,
+		Stiffness:   0.03,
+		Temper:      12,
+		ClipSpikes:  6,
+		Nominees:    14,
+		MinPixels:   200,
+		SearchFrom:  3000,
+		SearchTo:    26000,
+		SkyBands:    [][2]float64{{5565, 5590}, {6860, 6930}, {7590, 7720}},
+	}
+}
+
+// Finder finds redshifts with a fixed set of families. It is immutable and may
+// be shared by workers.
+type Finder struct {
+	families []*Family
+	opt      Options
+	step     float64
+	survive  [ladderSize]float64
+}
+
+// NewFinder returns a finder for spectra on grids of the given step in dex.
+func NewFinder(families []*Family, step float64, opt Options) (*Finder, error) {
+	if len(families) == 0 {
+		return nil, errors.New("no template families")
+	}
+	for _, f := range families {
+		for i := range f.components {
+			if f.components[i].forest {
+				forest()
+			}
+		}
+	}
+	return &Finder{families: families, opt: opt, step: step, survive: survival(opt.KnotSpacing / step)}, nil
+}
+
+// Families returns the families in the order in which they are tried.
+func (f *Finder) Families() []*Family { return f.families }
+
+// Scratch holds the buffers of one worker.
+type Scratch struct {
+	fit     continuum.Fitter
+	x       []float64
+	full    level
+	coarse  level
+	bench   bench
+	scan    scanner
+	shifts  []float64
+	peaks   []peak
+	tmp     []float64
+	smooth  []float64
+	dropLag []float64
+	excess  []float64
+	scaled  []float64 // flux in the units of the levels
+	weight  []float64 // weights before they are tempered
+	basis   continuum.Basis
+}
+
+// NewScratch returns scratch for one worker.
+func (f *Finder) NewScratch() *Scratch { return &Scratch{} }
+
+const (
+	coarseFactor = 4
+	// ridge carries splines over gaps, see continuum.Normal.Ridge.
+	ridge = 1e-9
+	// sameVelocity is the velocity within which two peaks are one answer; broad
+	// lines leave their redshift less certain.
+	sameVelocity      = 1000.0
+	sameVelocityBroad = 3000.0
+)
+
+// Find finds the redshift of g. It never fails: an answer that cannot be had
+// is a Result with Found false and its reason.
+func (f *Finder) Find(g *spectrum.Grid, s *Scratch) Result {
+	var res Result
+	res.Redshift, res.RedshiftErr, res.RivalRedshift = math.NaN(), math.NaN(), math.NaN()
+	res.Gap, res.RStat, res.Chi2Dof, res.SNR = math.NaN(), math.NaN(), math.NaN(), math.NaN()
+	if !f.prepare(g, s, &res) {
+		return res
+	}
+	s.peaks = s.peaks[:0]
+	s.scan.resp.reset(&s.full)
+	for _, fam := range f.families {
+		for _, width := range fam.Widths {
+			f.nominate(s, fam, width)
+		}
+	}
+	f.judge(s)
+	if len(s.peaks) == 0 {
+		res.Reason = "no template family covers the spectrum"
+		return res
+	}
+	f.conclude(g, s, &res)
+	return res
+}
+
+// prepare makes the levels. It reports false, with the reason in res, when the
+// spectrum cannot be fitted.
+func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
+	l := &s.full
+	l.n, l.start, l.step = g.Len(), g.Start, g.Step
+	l.weight, l.resid, l.cont = grow(l.weight, l.n), grow(l.resid, l.n), grow(l.cont, l.n)
+	s.x, s.tmp = grow(s.x, l.n), s.tmp[:0]
+	for i := range s.x {
+		s.x[i] = g.LogWave(i)
+	}
+	for i, w := range g.Ivar {
+		if w > 0 {
+			s.tmp = append(s.tmp, math.Abs(g.Flux[i]))
+		}
+	}
+	res.PixelsUsed = len(s.tmp)
+	if len(s.tmp) < f.opt.MinPixels {
+		res.FewPixels = true
+		res.Reason = "too few usable pixels"
+		return false
+	}
+	slices.Sort(s.tmp)
+	scale := s.tmp[len(s.tmp)/2]
+	if !(scale > 0) {
+		scale = s.tmp[len(s.tmp)-1]
+	}
+	if !(scale > 0) || math.IsInf(scale, 0) {
+		res.Reason = "flux is zero everywhere"
+		return false
+	}
+	s.smooth = grow(s.smooth, l.n)
+	for i, w := range g.Ivar {
+		l.resid[i] = 0
+		s.smooth[i] = 0
+		if w > 0 {
+			l.resid[i], s.smooth[i] = g.Flux[i]/scale, w*scale*scale
+		}
+	}
+	res.SNR = medianSNR(s, l.resid, s.smooth)
+	weightFloor(l.weight, l.resid, s.smooth, f.opt.Floor, 15)
+	maskBands(l.weight, g, f.opt.SkyBands)
+	f.limitRange(l)
+	copt := continuum.Options{Spacing: f.opt.KnotSpacing, ClipLow: f.opt.ClipSpikes, ClipHigh: f.opt.ClipSpikes, Iterations: 4}
+	if err := s.fit.Fit(s.x, l.resid, l.weight, copt); err != nil {
+		res.FewPixels = true
+		res.Reason = err.Error()
+		return false
+	}
+	s.tmp = s.tmp[:0]
+	below := 0
+	for i := range l.cont {
+		l.cont[i] = s.fit.Value(s.x[i])
+		if l.weight[i] > 0 {
+			s.tmp = append(s.tmp, math.Abs(l.cont[i]))
+			if l.cont[i] < 0 {
+				below++
+			}
+		}
+	}
+	if len(s.tmp) == 0 {
+		res.FewPixels = true
+		res.Reason = "too few usable pixels outside the night-sky bands"
+		return false
+	}
+	res.BelowZero = 4*below > len(s.tmp)
+	slices.Sort(s.tmp)
+	least := 0.05 * s.tmp[len(s.tmp)/2]
+	for i, c := range l.cont {
+		l.cont[i] = math.Max(c, least)
+	}
+	basis := s.fit.Basis()
+	if f.opt.Stiffness > 0 {
+		basis.Intervals *= 4
+	}
+	s.coarse.bin(l, coarseFactor)
+	s.basis = basis
+	s.scaled = append(s.scaled[:0], l.resid...)
+	s.weight = append(s.weight[:0], l.weight...)
+	if !l.prepare(basis, f.opt.Stiffness, ridge) || !s.coarse.prepare(basis, f.opt.Stiffness, ridge) {
+		res.FewPixels = true
+		res.Reason = "too few usable pixels for a continuum"
+		return false
+	}
+	return true
+}
+
+// limitRange takes the weight of pixels outside the searched wavelengths, if
+// enough are left inside: in the far ultraviolet the star families have no
+// lines yet, and a family without lines where others have them loses for that
+// alone.
+func (f *Finder) limitRange(l *level) {
+	lo := max(0, int(math.Ceil((math.Log10(f.opt.SearchFrom)-l.start)/l.step)))
+	hi := min(l.n-1, int(math.Floor((math.Log10(f.opt.SearchTo)-l.start)/l.step)))
+	inside := 0
+	for i := lo; i <= hi; i++ {
+		if l.weight[i] > 0 {
+			inside++
+		}
+	}
+	if inside < 2*f.opt.MinPixels {
+		return
+	}
+	for i := range l.weight {
+		if i < lo || i > hi {
+			l.weight[i] = 0
+		}
+	}
+}
+
+// medianSNR returns the median signal-to-noise ratio a pixel.
+func medianSNR(s *Scratch, flux, ivar []float64) float64 {
+	s.tmp = s.tmp[:0]
+	for i, w := range ivar {
+		if w > 0 {
+			s.tmp = append(s.tmp, flux[i]*math.Sqrt(w))
+		}
+	}
+	slices.Sort(s.tmp)
+	return s.tmp[len(s.tmp)/2]
+}
+
+// nominate appends the trial redshifts of one family and width with their
+// joint fits, on binned pixels where all shapes are wide.
+func (f *Finder) nominate(s *Scratch, fam *Family, width float64) {
+	s.shifts = s.shifts[:0]
+	narrow := fam.narrowest(width) / (speedOfLight * ln10 * s.full.step) // pixels
+	l, coarse := &s.full, false
+	if narrow >= 1.5*coarseFactor {
+		l, coarse = &s.coarse, true
+	}
+	kmin, kmax := math.Log10(1+fam.ZMin), math.Log10(1+fam.ZMax)
+	if fam.headed() || kmax-kmin < 60*s.full.step {
+		// A short range, or bands that have no place in the scan: try it whole.
+		d := 4 * s.full.step
+		for k := 0; kmin+float64(k)*d <= kmax; k++ {
+			s.shifts = append(s.shifts, kmin+float64(k)*d)
+		}
+		l, coarse = &s.coarse, true
+	} else {
+		s.shifts = s.scan.nominate(s.shifts, &s.full, fam, width, &f.survive, f.opt.Nominees, max(6, int(3*narrow)))
+	}
+	_ = coarse
+	for _, shift := range s.shifts {
+		p := peak{family: fam, width: width, shift: shift}
+		p.fit = s.bench.evaluate(l, fam, width, shift)
+		s.score(&p)
+		if p.fit.active > 0 {
+			s.peaks = append(s.peaks, p)
+		}
+	}
+}
+
+// judge refines the most promising peaks on the full pixels and sorts by score.
+func (f *Finder) judge(s *Scratch) {
+	byScore := func(a, b peak) int {
+		switch {
+		case a.score < b.score:
+			return -1
+		case a.score > b.score:
+			return 1
+		}
+		return 0
+	}
+	slices.SortStableFunc(s.peaks, byScore)
+	if len(s.peaks) == 0 {
+		return
+	}
+	// Peaks far behind cannot win by refinement; of each family a few are kept
+	// as possible rivals.
+	best := s.peaks[0].score
+	kept := s.peaks[:0]
+	count := map[*Family]int{}
+	for _, p := range s.peaks {
+		if p.score > 0.4*best+30 || count[p.family] >= 8 {
+			continue
+		}
+		dup := false
+		for _, q := range kept {
+			if q.family == p.family && math.Abs(q.shift-p.shift) < 8*s.full.step {
+				dup = true
+				break
+			}
+		}
+		if dup {
+			continue
+		}
+		count[p.family]++
+		kept = append(kept, p)
+	}
+	s.peaks = kept
+	for i := range s.peaks {
+		p := &s.peaks[i]
+		h := s.full.step * math.Max(1, 0.5*p.family.narrowest(p.width)/(speedOfLight*ln10*s.full.step))
+		p.fit = s.bench.evaluate(&s.full, p.family, p.width, p.shift)
+		s.bench.climb(&s.full, p, h, 6)
+		s.score(p)
+	}
+	slices.SortStableFunc(s.peaks, byScore)
+	if f.opt.Temper > 0 && f.temper(s) {
+		for i := range s.peaks {
+			p := &s.peaks[i]
+			p.fit = s.bench.evaluate(&s.full, p.family, p.width, p.shift)
+			s.bench.climb(&s.full, p, 0.5*s.full.step, 2)
+			s.score(p)
+		}
+		slices.SortStableFunc(s.peaks, byScore)
+	}
+}
+
+// temper lowers the weights where no family describes the data: each weight is
+// divided by the mean of w r^2 over its neighborhood, taken from whichever
+// family fits best there, when that exceeds one. The forest, broad absorption
+// or a bad stretch then no longer decides between families by chance
+// agreements, and the gap is in units of what the best models leave. The
+// weights stay the same for all families. It reports whether any changed much.
+func (f *Finder) temper(s *Scratch) bool {
+	l := &s.full
+	half := f.opt.Temper
+	s.tmp, s.excess = grow(s.tmp, l.n), grow(s.excess, l.n)
+	for i := range s.excess {
+		s.excess[i] = math.Inf(1)
+	}
+	seen := map[*Family]bool{}
+	for i := range s.peaks {
+		p := &s.peaks[i]
+		if seen[p.family] {
+			continue
+		}
+		seen[p.family] = true
+		fit := s.bench.evaluate(l, p.family, p.width, p.shift)
+		s.bench.residual(s.tmp, l, len(p.family.components), &fit.amp)
+		sum, count := 0.0, 0
+		add := func(k, sign int) {
+			if k >= 0 && k < l.n && l.weight[k] > 0 {
+				sum += float64(sign) * l.weight[k] * s.tmp[k] * s.tmp[k]
+				count += sign
+			}
+		}
+		for k := 0; k < half; k++ {
+			add(k, 1)
+		}
+		for k := range s.excess {
+			add(k+half, 1)
+			add(k-half-1, -1)
+			if count > 0 {
+				s.excess[k] = math.Min(s.excess[k], sum/float64(count))
+			}
+		}
+	}
+	changed := false
+	for k, e := range s.excess {
+		if e > 1 && l.weight[k] > 0 {
+			changed = changed || e > 1.2
+			l.weight[k] /= e
+		}
+		l.resid[k] = s.scaled[k]
+	}
+	if !changed {
+		copy(l.weight, s.weight)
+	}
+	return l.prepare(s.basis, f.opt.Stiffness, ridge) && changed
+}
+
+// score sets the score of a peak from its joint fit: chi^2 relative to the
+// continuum alone, plus penalties.
+func (s *Scratch) score(p *peak) {
+	p.score = p.family.penalty(s.full.good, s.full.step, p.fit.active) - p.fit.drop
+}
+
+// penalty is the part of a score that does not depend on the data: the number
+// of active amplitudes times ln n (Schwarz 1978) and the logarithm of the
+// number of trial redshifts.
+func (f *Family) penalty(pixels int, step float64, active int) float64 {
+	trials := (math.Log10(1+f.ZMax) - math.Log10(1+f.ZMin)) / step
+	return float64(active)*math.Log(float64(pixels)) + math.Log(math.Max(1, trials))
+}
+
+// narrowest returns the smallest Gaussian width of the family in km/s.
+func (f *Family) narrowest(width float64) float64 {
+	least := math.Inf(1)
+	for i := range f.components {
+		c := &f.components[i]
+		for j := range c.terms {
+			least = math.Min(least, c.sigmaKms(&c.terms[j], width))
+		}
+	}
+	return least
+}
+
+// headed reports whether a component has bands, which the scan cannot gather.
+func (f *Family) headed() bool {
+	return slices.ContainsFunc(f.components, func(c component) bool { return len(c.heads) > 0 })
+}

@@ -1,0 +1,243 @@
+package redshift
+
+import (
+	"math"
+
+	"duskline/spectrum"
+)
+
+// Result is the answer for one spectrum. Numbers that could not be had are
+// NaN.
+type Result struct {
+	Found       bool
+	Class       string
+	Family      string
+	Width       float64 // km/s, Gaussian sigma of the winning lines
+	Redshift    float64
+	RedshiftErr float64 // one sigma
+	Confidence  float64 // first estimate of the probability that the redshift is right
+
+	RivalRedshift float64
+	RivalFamily   string
+	Gap           float64 // score of the best rival minus the best score
+	RStat         float64 // Tonry & Davis (1979)
+	Chi2Dof       float64
+	Drop          float64 // decrease of chi^2 by the templates against continuum alone
+	SNR           float64 // median over the pixels
+	PixelsUsed    int
+
+	LinesSeen    int // lines of the model that stand out by themselves
+	LinesCovered int // expected lines inside the coverage
+	LinesMissing int // expected lines that the model predicts but the data lack
+
+	FewPixels, BelowZero, RangeEnd, Scattered, OnSkyLine bool
+	Reason                                               string
+	Verdict                                              Verdict
+	Lines                                                []LineEvidence
+}
+
+// LineEvidence is what the data say about one line of the winning model.
+type LineEvidence struct {
+	Name   string
+	Wave   float64 // observed, Angstrom
+	SNR    float64 // matched-filter signal-to-noise with the rest of the model taken out
+	Model  float64 // the same as the model predicts
+	Offset float64 // km/s against the redshift, NaN when not significant
+	Err    float64 // km/s
+}
+
+const (
+	seenSNR    = 4.0 // a line that stands out by itself
+	missingSNR = 6.0 // a line the model predicts with this and the data show with less than a third
+)
+
+// conclude fills res from the sorted peaks.
+func (f *Finder) conclude(g *spectrum.Grid, s *Scratch, res *Result) {
+	l := &s.full
+	best := s.peaks[0]
+	same := sameVelocity
+	if best.family.Class == "quasar" {
+		same = sameVelocityBroad
+	}
+	null := math.Log(math.Max(2, float64(l.good))) // continuum alone, one more parameter at least
+	res.Found = true
+	res.Class, res.Family, res.Width = best.family.Class, best.family.Name, best.width
+	res.Redshift, res.Drop = best.z(), best.fit.drop
+	res.Gap = math.Max(0, null-best.score) // without a rival, the distance to nothing at all
+	for i := range s.peaks[1:] {
+		p := &s.peaks[i+1]
+		if math.Abs(p.shift-best.shift)*ln10*speedOfLight > same {
+			res.RivalRedshift, res.RivalFamily = p.z(), p.family.Name
+			res.Gap = math.Min(res.Gap, p.score-best.score)
+			break
+		}
+	}
+	m := len(best.family.components)
+	s.bench.evaluate(l, best.family, best.width, best.shift)
+	s.tmp = grow(s.tmp, l.n)
+	s.bench.residual(s.tmp, l, m, &best.fit.amp)
+	chi2 := 0.0
+	for i, w := range s.weight {
+		chi2 += w * s.tmp[i] * s.tmp[i]
+	}
+	// The stiffened spline has about the freedom of its coarse parent.
+	dof := float64(max(1, l.good-s.fit.Basis().Size()-best.fit.active-1))
+	res.Chi2Dof = chi2 / dof
+	f.evidence(s, &best, res)
+	res.RedshiftErr = f.redshiftError(s, &best)
+	lo, hi := math.Log10(1+best.family.ZMin), math.Log10(1+best.family.ZMax)
+	res.RangeEnd = best.shift-lo < 2*l.step || hi-best.shift < 2*l.step
+	res.RStat = f.rStat(s, &best)
+}
+
+// redshiftError is the one-sigma error from the curvature of the chi^2 drop,
+// with the weights lowered where the model fails, which widens it.
+func (f *Finder) redshiftError(s *Scratch, p *peak) float64 {
+	l := &s.full
+	delta := l.step
+	sigma := math.NaN()
+	for k := 0; k < 4; k++ {
+		a := s.bench.evaluate(l, p.family, p.width, p.shift-delta).drop
+		b := s.bench.evaluate(l, p.family, p.width, p.shift+delta).drop
+		fall := p.fit.drop - 0.5*(a+b)
+		if !(fall > 0) {
+			delta *= 3
+			continue
+		}
+		sigma = delta / math.Sqrt(fall)
+		if fall > 0.3 && fall < 9 {
+			break
+		}
+		delta = math.Max(0.02*l.step, math.Min(60*l.step, sigma))
+	}
+	return (1 + p.z()) * ln10 * sigma
+}
+
+// evidence measures each line of the winning model by itself, from the
+// residual of the joint fit left in s.tmp.
+func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
+	l := &s.full
+	res.Lines = res.Lines[:0]
+	d := &s.bench.draws[maxComponents-1]
+	for c := range p.family.components {
+		comp := &p.family.components[c]
+		if c == maxComponents-1 {
+			break
+		}
+		amp := p.fit.amp[c]
+		for i := range comp.terms {
+			t := &comp.terms[i]
+			sigma := comp.sigmaKms(t, p.width) / (speedOfLight * ln10 * l.step)
+			center := (t.logWave + p.shift - l.start) / l.step
+			if center < 0 || center > float64(l.n-1) {
+				continue
+			}
+			d.reset(l.n)
+			gaussian(d, l.n, center, sigma, 1)
+			var tr, tt, good, all, dr, dd float64
+			for _, r := range d.runs {
+				for k := r.lo; k < r.hi; k++ {
+					v := d.values[k]
+					if comp.absorption {
+						v *= -l.cont[k]
+					}
+					u := (float64(k) - center) / sigma
+					if math.Abs(u) < 2 {
+						all++
+						if l.weight[k] > 0 {
+							good++
+						}
+					}
+					w := l.weight[k]
+					tr += w * v * (s.tmp[k] + amp*t.amp*v)
+					tt += w * v * v
+					// Derivative with respect to the center, per pixel.
+					g := v * u / sigma
+					dr += w * g * s.tmp[k]
+					dd += w * g * g
+				}
+			}
+			if tt <= 0 || good < 0.6*all {
+				continue
+			}
+			e := LineEvidence{Name: t.name, Wave: math.Pow(10, t.logWave+p.shift),
+				SNR: tr / math.Sqrt(tt), Model: amp * t.amp * math.Sqrt(tt), Offset: math.NaN(), Err: math.NaN()}
+			if a := tr / tt; e.SNR > seenSNR && a > 0 && dd > 0 {
+				kms := l.step * ln10 * speedOfLight
+				e.Offset, e.Err = dr/(a*dd)*kms, kms/(a*math.Sqrt(dd))
+			}
+			res.Lines = append(res.Lines, e)
+			if amp > 0 && e.SNR >= seenSNR && e.SNR > 0.3*e.Model {
+				res.LinesSeen++
+			}
+			if amp > 0 && t.name != "" && e.Model > missingSNR && e.SNR < e.Model/3 {
+				res.LinesMissing++
+			}
+		}
+		// A break or band that the data demand counts as one feature.
+		if amp > 0 && comp.dense() && len(comp.terms) == 0 {
+			gg := s.bench.g[c*maxComponents+c]
+			if amp*math.Sqrt(math.Max(0, gg)) > 2*seenSNR {
+				res.LinesSeen++
+			}
+		}
+	}
+	for _, e := range p.family.expected {
+		x := (e.logWave + p.shift - l.start) / l.step
+		if k := int(math.Round(x)); k >= 0 && k < l.n && l.weight[k] > 0 {
+			res.LinesCovered++
+		}
+	}
+	// Lines disagree on the velocity when their offsets scatter more than
+	// their errors and a survey pixel allow.
+	n, chi := 0, 0.0
+	for _, e := range res.Lines {
+		if e.SNR > 6 && !math.IsNaN(e.Offset) && e.Name != "" {
+			n++
+			tol := math.Hypot(e.Err, 0.35*p.width)
+			chi += (e.Offset / tol) * (e.Offset / tol)
+		}
+	}
+	res.Scattered = n >= 2 && chi/float64(n) > 9
+}
+
+// rStat is the r of Tonry & Davis (1979): the height of the correlation peak
+// over sqrt(2) times the rms of the antisymmetric part of the correlation
+// function about it. The correlation is that of the residual with the winning
+// template, with its amplitudes fixed, over shifts of at most 1500 pixels.
+func (f *Finder) rStat(s *Scratch, p *peak) float64 {
+	l := &s.full
+	const most = 1500
+	half := min(most, l.n/2)
+	corr := grow(s.dropLag, 2*half+1)
+	s.dropLag = corr
+	clear(corr)
+	for c := range p.family.components {
+		comp := &p.family.components[c]
+		if p.fit.amp[c] == 0 || len(comp.terms) == 0 {
+			continue
+		}
+		kind := 0
+		if comp.absorption {
+			kind = 1
+		}
+		for i := range comp.terms {
+			t := &comp.terms[i]
+			k := rung(comp.sigmaKms(t, p.width) / (speedOfLight * ln10 * l.step))
+			num, _ := s.scan.resp.get(k, kind)
+			x := int(math.Round((t.logWave + p.shift - l.start) / l.step))
+			s.scan.gather(corr, num, x-half, p.fit.amp[c]*t.amp)
+		}
+	}
+	h := corr[half]
+	sum := 0.0
+	for k := 1; k <= half; k++ {
+		d := corr[half+k] - corr[half-k]
+		sum += d * d
+	}
+	rms := math.Sqrt(sum / (2 * float64(half)))
+	if !(rms > 0) || !(h > 0) {
+		return 0
+	}
+	return h / (math.Sqrt2 * rms)
+}
