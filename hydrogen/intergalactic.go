@@ -24,15 +24,8 @@ func Transmission(zSource, waveObs float64) float64 {
 	}
 	onePlusZ := 1 + zSource
 	tau := 0.0
-	for i := range forestLines {
-		l := &forestLines[i]
-		r := waveObs / l.wave
-		if r >= onePlusZ {
-			break // so do all that follow, which are bluer
-		}
-		if r > 1 {
-			tau += l.forest(r) + l.damped(r)
-		}
+	if waveObs < forestLines[0].wave*onePlusZ {
+		tau = seriesDepth(onePlusZ, waveObs)
 	}
 	if r := math.Max(waveObs/inoueLimit, 1); r < onePlusZ {
 		// The fits with their rounded coefficients dip below zero by 1e-5 at r = 1 + z.
@@ -41,24 +34,53 @@ func Transmission(zSource, waveObs float64) float64 {
 	return math.Exp(-tau)
 }
 
-// forest is the forest's part of the optical depth in one line; r = 1 + z of the
-// absorber.
-func (l *forestLine) forest(r float64) float64 {
-	switch {
-	case r < 2.2:
-		return l.laf1 * math.Pow(r, 1.2)
-	case r < 5.7:
-		return l.laf2 * math.Pow(r, 3.7)
+// scaledForest is forestLines with the wavelengths taken into the coefficients,
+// so that one power of the observed wavelength serves all lines.
+var scaledForest = func() [len(forestLines)]forestLine {
+	scaled := forestLines
+	for i := range scaled {
+		l := &scaled[i]
+		l.laf1 /= math.Pow(l.wave, 1.2)
+		l.laf2 /= math.Pow(l.wave, 3.7)
+		l.laf3 /= math.Pow(l.wave, 5.5)
+		l.dla1 /= math.Pow(l.wave, 2)
+		l.dla2 /= math.Pow(l.wave, 3)
 	}
-	return l.laf3 * math.Pow(r, 5.5)
-}
+	return scaled
+}()
 
-// damped is the damped systems' part.
-func (l *forestLine) damped(r float64) float64 {
-	if r < 3 {
-		return l.dla1 * r * r
+// seriesDepth is the optical depth in the Lyman lines. With r = waveObs/lambda_j
+// = 1 + z of the absorber, 1 < r < onePlusZ, line j adds A1 r^1.2, A2 r^3.7 or
+// A3 r^5.5 (r < 2.2, < 5.7 or more) for the forest and A1 r^2 or A2 r^3 (r < 3 or
+// more) for the damped systems.
+func seriesDepth(onePlusZ, waveObs float64) float64 {
+	w2 := waveObs * waveObs
+	w3 := w2 * waveObs
+	w12, w37, w55 := math.Pow(waveObs, 1.2), math.Pow(waveObs, 3.7), w2*w3*math.Sqrt(waveObs)
+	tau := 0.0
+	for i := range scaledForest {
+		l := &scaledForest[i]
+		if waveObs >= l.wave*onePlusZ {
+			break // so it does for all that follow, which are bluer
+		}
+		if waveObs <= l.wave {
+			continue
+		}
+		switch {
+		case waveObs < 2.2*l.wave:
+			tau += l.laf1 * w12
+		case waveObs < 5.7*l.wave:
+			tau += l.laf2 * w37
+		default:
+			tau += l.laf3 * w55
+		}
+		if waveObs < 3*l.wave {
+			tau += l.dla1 * w2
+		} else {
+			tau += l.dla2 * w3
+		}
 	}
-	return l.dla2 * r * r * r
+	return tau
 }
 
 // forestContinuum is the forest's part of the optical depth in the Lyman
@@ -85,7 +107,7 @@ func forestContinuum(zs, r float64) float64 {
 	return far - 5.22e-4*math.Pow(r, 5.5)
 }
 
-// dampedContinuum is the damped systems' part.
+// dampedContinuum is the damped systems' part of it.
 func dampedContinuum(zs, r float64) float64 {
 	r03 := math.Pow(r, -0.3)
 	if zs < 3 {
