@@ -87,7 +87,8 @@ func (j *Job) examineOpen(in *planInput) {
 	}()
 	f, err := j.Open(in.file(j.Base))
 	if err != nil {
-		in.Trouble = readReason(err, in.Path)
+		bad := readFault(err, in.Path)
+		in.Trouble, in.Internal = bad.reason, bad.internal
 		return
 	}
 	defer f.Close()

@@ -10,14 +10,18 @@ import (
 	"github.com/google/renameio/v2"
 )
 
-// The files of a run folder beside the plan.
+// The catalogs that a person opens.
+const (
+	CatalogFITS = "catalog.fits" // tables OBJECTS and LINES
+	CatalogCSV  = "catalog.csv"  // the object table
+)
+
+// The other files of a run folder beside the plan.
 const (
 	settingsName = "plan.toml"    // effective settings, for people
 	blocksName   = "blocks"       // one folder a finished block
 	unfinished   = ".unfinished-" // begins the name of what is not whole yet
 	logName      = "run.log"      // times and messages, see LogFile
-	catalogFITS  = "catalog.fits" // tables OBJECTS and LINES
-	catalogCSV   = "catalog.csv"  // the object table
 	objectsName  = "objects.parquet"
 	linesName    = "lines.parquet"
 	summaryName  = "summary.json"
@@ -35,10 +39,6 @@ func createUnfinished(folder, what string) (*os.File, error) {
 
 // writeAtomic replaces a file by what write makes, or leaves it as it was.
 func writeAtomic(path string, write func(w io.Writer) error) error {
-	return writePending(path, func(f *renameio.PendingFile) error { return write(f) })
-}
-
-func writePending(path string, write func(f *renameio.PendingFile) error) error {
 	f, err := renameio.NewPendingFile(path, renameio.WithTempDir(filepath.Dir(path)), renameio.WithPermissions(0o666))
 	if err != nil {
 		return fmt.Errorf("%s cannot be written: %w", path, err)

@@ -76,12 +76,12 @@ type Recalled struct {
 	Limit    int64
 }
 
-// Recall reads back the plan of a run folder, so that a command without any
+// Recall reads back the plan of the run folder out below base, so that a command without any
 // PATH can go on with it. The error is an *InputError when there is none.
-func Recall(out string) (Recalled, error) {
-	r, err := openPlan(filepath.Join(out, planName))
+func Recall(base, out string) (Recalled, error) {
+	r, err := openPlan(filepath.Join(locate(base, out), planName))
 	if errors.Is(err, fs.ErrNotExist) {
-		return Recalled{}, inputError("%s holds no run to go on with; give at least one PATH to begin one", out)
+		return Recalled{}, noRun(out)
 	}
 	if err != nil {
 		return Recalled{}, err
@@ -92,6 +92,10 @@ func Recall(out string) (Recalled, error) {
 		return Recalled{}, fmt.Errorf("%s was begun with settings of another version: %w", out, err)
 	}
 	return Recalled{set, r.head.Layouts, r.head.Limit}, nil
+}
+
+func noRun(out string) error {
+	return inputError("%s holds no run to go on with; give at least one PATH to begin one", out)
 }
 
 // Prepare plans a run, or finds the plan of one that was begun and makes sure
@@ -243,7 +247,7 @@ func (r *Run) agree(ctx context.Context, want planHead) error {
 // makePlan lists the inputs and puts the plan into place.
 func (r *Run) makePlan(ctx context.Context, head planHead) error {
 	if len(r.job.Paths) == 0 {
-		return inputError("%s holds no run to go on with; give at least one PATH to begin one", r.job.Out)
+		return noRun(r.job.Out)
 	}
 	_, statErr := os.Stat(r.out)
 	if err := os.MkdirAll(r.out, 0o777); err != nil {

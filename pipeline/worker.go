@@ -51,37 +51,69 @@ type fault struct {
 
 // do works on one object. Whatever is wrong with it becomes a row.
 func (w *objectWorker) do(t task) result {
-	r := result{task: t}
 	s, digest, bad := w.read(t)
 	if bad != nil {
+		r := result{task: t, internal: bad.internal}
 		r.outcome.Object = blankObject()
 		r.outcome.Object.Flags = catalog.Unreadable
 		r.outcome.Object.Reason = bad.reason
-		r.internal = bad.internal
-	} else {
-		s.SourceFile, s.SourceRow = t.in.Path, t.row
-		r.outcome, bad = w.process(s)
-		if bad != nil {
-			r.outcome = Outcome{Object: blankObject()}
-			r.outcome.Object.ObjectID = s.ObjectID
-			r.outcome.Object.RA, r.outcome.Object.Dec = s.RA, s.Dec
-			r.outcome.Object.Reason = bad.reason
-			r.internal = true
-		}
+		r.complete(digest)
+		return r
 	}
+	s.SourceFile, s.SourceRow = t.in.Path, t.row
+	id, ra, dec := s.ObjectID, s.RA, s.Dec
+	r := result{task: t}
+	if r.outcome, bad = w.process(s); bad == nil {
+		if r.outcome.Object.ObjectID == "" {
+			r.outcome.Object.ObjectID = id
+		}
+		r.complete(digest)
+		bad = w.inspect(&r)
+	}
+	if bad != nil {
+		r.internal = true
+		r.outcome = Outcome{Object: blankObject()}
+		o := &r.outcome.Object
+		o.ObjectID, o.RA, o.Dec, o.Reason = id, ra, dec, bad.reason
+		r.complete(digest)
+	}
+	return r
+}
+
+// complete fills in what the engine knows better than the science.
+func (r *result) complete(digest string) {
 	o := &r.outcome.Object
-	o.SourceFile, o.SourceRow = t.in.Path, int64(t.row)
+	o.SourceFile, o.SourceRow = r.in.Path, int64(r.row)
 	if o.ObjectID == "" {
-		o.ObjectID = fallbackID(t.in, t.row)
+		o.ObjectID = fallbackID(r.in, r.row)
 	}
 	if o.InputDigest == "" {
 		o.InputDigest = digest
+	}
+	if !(o.RA >= 0 && o.RA <= 360 && o.Dec >= -90 && o.Dec <= 90) {
+		o.RA, o.Dec = math.NaN(), math.NaN() // headers of surveys hold -999 and the like
 	}
 	o.Reason = strings.Join(strings.Fields(o.Reason), " ")
 	for i := range r.outcome.Lines {
 		r.outcome.Lines[i].ObjectID = o.ObjectID
 	}
-	return r
+}
+
+// inspect makes sure that the rows may be written: one that breaks the rules
+// of the catalog must not sink the block.
+func (w *objectWorker) inspect(r *result) *fault {
+	err := catalog.Check(&r.outcome.Object)
+	for i := range r.outcome.Lines {
+		if err == nil {
+			err = catalog.Check(&r.outcome.Lines[i])
+		}
+	}
+	if err == nil {
+		return nil
+	}
+	w.run.job.Log.Error("an object came out with values that a catalog must not hold",
+		"file", r.in.Path, "row", r.row, "error", err)
+	return &fault{"internal error: " + err.Error(), true}
 }
 
 // read returns the spectrum of a task and the digest of its input, or what is
@@ -108,7 +140,7 @@ func (w *objectWorker) read(t task) (s *spectrum.Spectrum, digest string, bad *f
 		s, err = w.file.Read(t.row)
 	}
 	if err != nil {
-		return nil, digest, &fault{readReason(err, t.in.Path), false}
+		return nil, digest, readFault(err, t.in.Path)
 	}
 	return s, digest, nil
 }
@@ -130,7 +162,7 @@ func (w *objectWorker) open(in *planInput) (bad *fault) {
 	}
 	if w.file, err = w.run.job.Open(path); err != nil {
 		w.file = nil
-		return &fault{readReason(err, in.Path), false}
+		return readFault(err, in.Path)
 	}
 	return nil
 }
@@ -156,13 +188,7 @@ func (w *objectWorker) process(s *spectrum.Spectrum) (out Outcome, bad *fault) {
 	if w.science == nil {
 		w.science = w.run.job.Processor.NewWorker()
 	}
-	out = w.science.Process(s)
-	if err := checkOutcome(&out); err != nil {
-		w.run.job.Log.Error("an object came out with values that a catalog must not hold",
-			"file", s.SourceFile, "row", s.SourceRow, "error", err)
-		return out, &fault{"internal error: " + err.Error(), true}
-	}
-	return out, nil
+	return w.science.Process(s), nil
 }
 
 // report logs a panic with its stack and returns what the row says.
@@ -193,16 +219,16 @@ func internalReason(p any) string {
 	}
 }
 
-// readReason returns why an input could not be read. It names the file as the
-// plan does, wherever the run is repeated.
-func readReason(err error, path string) string {
+// readFault says why an input could not be read. It names the file as the plan
+// does, wherever the run is repeated.
+func readFault(err error, path string) *fault {
 	var re *fitsread.ReadError
-	if errors.As(err, &re) {
-		named := *re
-		named.File = path
-		return named.Error()
+	if !errors.As(err, &re) {
+		return &fault{fmt.Sprintf("%s: %s", path, plain(err)), false}
 	}
-	return fmt.Sprintf("%s: %s", path, plain(err))
+	named := *re
+	named.File = path
+	return &fault{named.Error(), errors.Is(err, fitsread.ErrInternal)}
 }
 
 // fallbackID names an object whose file does not.

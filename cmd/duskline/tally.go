@@ -1,0 +1,80 @@
+package main
+
+import (
+	"fmt"
+	"io"
+	"path/filepath"
+	"strings"
+	"text/tabwriter"
+
+	"duskline/catalog"
+	"duskline/pipeline"
+)
+
+// writeTally prints what a run came to: a line a class, a column a verdict.
+func writeTally(w io.Writer, s *pipeline.Summary) {
+	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', tabwriter.AlignRight)
+	verdicts := catalog.Verdicts()
+	fmt.Fprintf(t, "class\t%s\tall\t\n", strings.Join(verdicts, "\t"))
+	line := func(name string, counts map[string]int64) {
+		var all int64
+		fmt.Fprint(t, name)
+		for _, v := range verdicts {
+			fmt.Fprintf(t, "\t%d", counts[v])
+			all += counts[v]
+		}
+		fmt.Fprintf(t, "\t%d\t\n", all)
+	}
+	for _, class := range catalog.Classes() {
+		line(class, s.Classes[class])
+	}
+	line("all", s.Verdicts)
+	t.Flush()
+	var flags []string
+	for _, name := range catalog.FlagNames() {
+		if n := s.Flags[name]; n > 0 {
+			flags = append(flags, fmt.Sprintf("%s %d", name, n))
+		}
+	}
+	if len(flags) > 0 {
+		fmt.Fprintf(w, "\nflags: %s\n", strings.Join(flags, ", "))
+	}
+}
+
+// writeWhere says where the files are and which rows a person should look at.
+func writeWhere(w io.Writer, out string, s *pipeline.Summary) {
+	fmt.Fprintf(w, "\n%s  objects and lines, for astronomers' tools\n", filepath.Join(out, pipeline.CatalogFITS))
+	fmt.Fprintf(w, "%s   one row an object\n", filepath.Join(out, pipeline.CatalogCSV))
+	fmt.Fprintf(w, "Beside them: objects.parquet and lines.parquet for big tables, summary.json with these counts.\n")
+	for _, advice := range advise(s) {
+		fmt.Fprintf(w, "%s\n", advice)
+	}
+}
+
+// advise names the rows that need a person's look, most urgent first.
+func advise(s *pipeline.Summary) []string {
+	var out []string
+	if s.InternalErrors > 0 {
+		out = append(out, fmt.Sprintf("%s of this program: their reason begins with \"internal error\", and run.log has the details; please report them.",
+			count(s.InternalErrors, "row was spoiled by an error", "rows were spoiled by errors")))
+	}
+	if s.Unreadable > 0 {
+		out = append(out, fmt.Sprintf("%s be read: look for the flag unreadable; the column reason says what to do.",
+			count(s.Unreadable, "spectrum could not", "spectra could not")))
+	}
+	if n := s.Verdicts[catalog.Uncertain]; n > 0 {
+		out = append(out, fmt.Sprintf("Worth a look by a person: %s with verdict uncertain, those flagged tied or lone_line first.",
+			count(n, "row", "rows")))
+	}
+	if n := s.Verdicts[catalog.None] - s.Unreadable - s.InternalErrors; n > 0 {
+		out = append(out, fmt.Sprintf("%s no redshift: the flags and the column reason say why.", count(n, "readable spectrum has", "readable spectra have")))
+	}
+	return out
+}
+
+func count(n int64, one, many string) string {
+	if n == 1 {
+		return "1 " + one
+	}
+	return fmt.Sprintf("%d %s", n, many)
+}
