@@ -27,6 +27,7 @@ const columnsKey = "columns"
 type Parquet[T Row] struct {
 	table[T]
 	out    *parquet.GenericWriter[any]
+	seal   *sealer
 	values parquet.Row
 	text   []byte // of the row, which values point into
 }
@@ -47,10 +48,13 @@ func NewParquet[T Row](w io.Writer, p Provenance) (*Parquet[T], error) {
 		parquet.KeyValueMetadata("table", t.name),
 		parquet.KeyValueMetadata(columnsKey, described),
 	}
+	options = append(options, parquet.KeyValueMetadata(sealKey, sealValue))
 	for _, f := range p {
 		options = append(options, parquet.KeyValueMetadata(f.Name, f.Value))
 	}
-	return &Parquet[T]{table: t, out: parquet.NewGenericWriter[any](w, options...), values: make(parquet.Row, len(t.columns))}, nil
+	seal := newSealer(w)
+	return &Parquet[T]{table: t, out: parquet.NewGenericWriter[any](seal, options...), seal: seal,
+		values: make(parquet.Row, len(t.columns))}, nil
 }
 
 // schema makes the Parquet schema in the order of the columns, which a
@@ -125,7 +129,15 @@ func (w *Parquet[T]) Write(row *T) error {
 
 // Close completes the file. It does not close the underlying file.
 func (w *Parquet[T]) Close() error {
-	if err := w.out.Close(); err != nil {
+	err := w.out.Flush()
+	if err == nil {
+		w.seal.hold()
+		err = w.out.Close()
+	}
+	if err == nil {
+		err = w.seal.finish()
+	}
+	if err != nil {
 		return fmt.Errorf("writing Parquet table %s: %w", w.name, err)
 	}
 	return nil

@@ -14,7 +14,7 @@ import (
 var ErrParquet = errors.New("catalog Parquet")
 
 // ParquetReader reads back what Parquet wrote, a row at a time, holding one
-// batch of rows. Pages carry a CRC, so that damage is an error.
+// batch of rows.
 type ParquetReader[T Row] struct {
 	table[T]
 	file   *parquet.File
@@ -32,11 +32,14 @@ const batchRows = 64
 // maxWords bounds the texts that are kept to be shared by rows.
 const maxWords = 4096
 
-// OpenParquet reads the footer of a table of size bytes and checks that its
-// columns are those of T. Close the reader after use.
-func OpenParquet[T Row](r io.ReaderAt, size int64) (reader *ParquetReader[T], err error) {
+// OpenParquet opens a table of size bytes. It reads the file once to see that
+// no byte differs from what was written, then checks that its columns are
+// those of T. Close the reader after use.
+func OpenParquet[T Row](r io.ReaderAt, size int64) (*ParquetReader[T], error) {
 	t := tableOf[T]()
-	defer recovered(t.name, &err)
+	if err := checkSeal(r, size); err != nil {
+		return nil, fmt.Errorf("%w: table %s: %w", ErrParquet, t.name, err)
+	}
 	file, err := parquet.OpenFile(r, size, parquet.SkipPageIndex(true), parquet.SkipBloomFilters(true))
 	if err != nil {
 		return nil, fmt.Errorf("%w: table %s: %w", ErrParquet, t.name, err)
@@ -48,14 +51,6 @@ func OpenParquet[T Row](r io.ReaderAt, size int64) (reader *ParquetReader[T], er
 		batch: make([]parquet.Row, batchRows), words: map[string]string{}}, nil
 }
 
-// recovered turns a panic of the decoder, which only a damaged file causes,
-// into an error.
-func recovered(name string, err *error) {
-	if p := recover(); p != nil {
-		*err = fmt.Errorf("%w: table %s: damaged: %v", ErrParquet, name, p)
-	}
-}
-
 // NumRows returns the number of rows that the footer states.
 func (r *ParquetReader[T]) NumRows() int64 { return r.file.NumRows() }
 
@@ -63,10 +58,9 @@ func (r *ParquetReader[T]) NumRows() int64 { return r.file.NumRows() }
 // the provenance.
 func (r *ParquetReader[T]) Fact(name string) (string, bool) { return r.file.Lookup(name) }
 
-// Next reads one row; io.EOF after the last. A file with more or fewer rows
-// than its footer states is an error, as is a row that fails Check.
-func (r *ParquetReader[T]) Next(row *T) (err error) {
-	defer recovered(r.name, &err)
+// Next reads one row; io.EOF after the last. A row that fails Check is an
+// error.
+func (r *ParquetReader[T]) Next(row *T) error {
 	for len(r.left) == 0 {
 		if err := r.fill(); err != nil {
 			return err
@@ -75,9 +69,6 @@ func (r *ParquetReader[T]) Next(row *T) (err error) {
 	values := r.left[0]
 	r.left = r.left[1:]
 	r.read++
-	if len(values) != len(r.columns) {
-		return fmt.Errorf("%w: table %s, row %d: %d values for %d columns", ErrParquet, r.name, r.read, len(values), len(r.columns))
-	}
 	for i := range r.columns {
 		if err := r.store(r.columns[i].field(row), values[i]); err != nil {
 			return fmt.Errorf("%w: table %s, row %d, column %s: %w", ErrParquet, r.name, r.read, r.columns[i].Name, err)
@@ -93,9 +84,6 @@ func (r *ParquetReader[T]) Next(row *T) (err error) {
 func (r *ParquetReader[T]) fill() error {
 	if r.rows == nil {
 		if len(r.groups) == 0 {
-			if r.read != r.NumRows() {
-				return fmt.Errorf("%w: table %s: %d rows where the footer states %d", ErrParquet, r.name, r.read, r.NumRows())
-			}
 			return io.EOF
 		}
 		r.rows, r.groups = r.groups[0].Rows(), r.groups[1:]
@@ -160,7 +148,4 @@ func (r *ParquetReader[T]) word(b []byte) string {
 
 // Close releases the buffers of the reader. It does not close the underlying
 // file.
-func (r *ParquetReader[T]) Close() (err error) {
-	defer recovered(r.name, &err)
-	return r.closeGroup()
-}
+func (r *ParquetReader[T]) Close() error { return r.closeGroup() }
