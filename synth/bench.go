@@ -66,8 +66,8 @@ func BenchmarkNight(dir string, n int) error {
 }
 
 // Spectra returns n spectra of 4,600 pixels in memory, barycentric and in
-// vacuum, with their truth. They repeat 64 sources with fresh noise; the same
-// seed gives the same numbers.
+// vacuum, with their truth. They repeat 64 sources with fresh noise and
+// share one slice of wavelengths; the same seed gives the same numbers.
 func Spectra(seed uint64, n int) ([]*spectrum.Spectrum, []Truth) {
 	g := newGallery(seed, n)
 	out := make([]*spectrum.Spectrum, n)

@@ -25,7 +25,8 @@ var brokenFiles = []struct {
 	}},
 	{"cut short", ".fits", func(e *exposure) ([]byte, error) {
 		content, err := tableBytes(e)
-		return content[:len(content)*3/5], err
+		// Within a block, as when a disk was full.
+		return content[:len(content)/2/2880*2880+1000], err
 	}},
 	{"compressed file cut short", ".fits.gz", func(e *exposure) ([]byte, error) {
 		content, err := tableBytes(e)

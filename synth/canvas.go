@@ -26,13 +26,6 @@ func (c *canvas) fill(f func(rest float64) float64) {
 	}
 }
 
-// scale multiplies the flux by f(rest wavelength).
-func (c *canvas) scale(f func(rest float64) float64) {
-	for i := range c.flux {
-		c.flux[i] *= f(c.rest(i))
-	}
-}
-
 // window returns the pixels from lo to hi Angstrom, observed.
 func (c *canvas) window(lo, hi float64) (first, end int) {
 	return sort.SearchFloat64s(c.wave, lo), sort.SearchFloat64s(c.wave, hi)

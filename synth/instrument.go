@@ -49,16 +49,15 @@ type arm struct {
 	name     string
 	wave     []float64 // as the file states it, Angstrom: in air or in vacuum
 	detector []float64 // the same in vacuum
-	lo, hi   float64   // where the throughput falls to half
-	edge     float64   // how fast it does, Angstrom
 	through  []float64 // throughput, one at its best
 	sky      []float64 // brightness of the night sky, about one between its lines
 	clear    []float64 // trace of the bands of the atmosphere, one where there is none
 }
 
-// newArm makes an arm from its wavelengths, taken as air or vacuum.
+// newArm makes an arm from its wavelengths, taken as air or vacuum. The
+// throughput falls to half at lo and hi Angstrom, over about edge Angstrom.
 func newArm(name string, wave []float64, medium spectrum.Medium, lo, hi, edge float64) *arm {
-	a := &arm{name: name, wave: wave, detector: make([]float64, len(wave)), lo: lo, hi: hi, edge: edge,
+	a := &arm{name: name, wave: wave, detector: make([]float64, len(wave)),
 		through: make([]float64, len(wave)), clear: make([]float64, len(wave))}
 	for i, w := range wave {
 		if medium == spectrum.Air {

@@ -27,8 +27,11 @@ type exposure struct {
 	id      string
 	ra, dec float64
 	begin   float64 // Julian date, UTC
-	arms    []*arm
-	data    []pixels
+	// velocity of the observer towards the source in km/s that the wavelengths
+	// still contain: 0 where they are written as barycentric.
+	velocity float64
+	arms     []*arm
+	data     []pixels
 }
 
 const exposureSeconds = 2700
