@@ -16,6 +16,8 @@ func TestConstantsAgreeWithEachOther(t *testing.T) {
 	within(t, "alpha^2 m_e c/(2 h R_inf)", FineStructure*FineStructure*ElectronMass*SpeedOfLight/(2*Planck*RydbergInfinity), 1, 1e-9)
 	within(t, "alpha/(4 pi R_inf a_0)", FineStructure/(4*math.Pi*RydbergInfinity*BohrRadius), 1, 6e-10)
 	within(t, "alpha^2 a_0/r_e", FineStructure*FineStructure*BohrRadius/ElectronRadius, 1, 1e-9)
+	// k in eV/K, CODATA (exact, ten digits; from memory).
+	within(t, "k/e", Boltzmann/ElementaryCharge, 8.617333262e-5, 1e-14)
 	// CODATA 2022 m_e/m_p and R_inf/(1 + m_e/m_p) computed from it.
 	within(t, "m_e/m_p", 1/ProtonElectronRatio, 5.446170214889e-4, 1e-15)
 	within(t, "R_H", RydbergHydrogen, 10967758.340277, 2e-5)

@@ -135,10 +135,24 @@ func TestStarkProfile(t *testing.T) {
 			t.Error("not symmetric")
 		}
 	}
+	// The shift of s = 1, by another road: (3/2) e a_0 F/h with e^2 = r_e m_e c^2
+	// and F = 1.25e-9 esu N^(2/3) (Griem 1964, three digits, from memory) of N =
+	// 2e15 cm^-3; e = 4.80320e-10 esu.
+	p, err := NewStarkProfile(4, 1e15, 1e4)
+	if err != nil {
+		t.Fatal(err)
+	}
+	field := 1.25e-9 * math.Pow(2e15, 2.0/3)
+	shift := 1.5 * 4.80320e-10 * BohrRadius * 100 * field / (Planck * 1e7) // Hz
+	within(t, "shift in the normal field", p.scale/(4862.683*4862.683*1e-8*shift/(SpeedOfLight*100)), 1, 2e-3)
+	// Thermal width: b = 12.85 km/s sqrt(T/10^4 K) for hydrogen (common
+	// practice, no source), four digits.
+	within(t, "thermal width, km/s", p.doppler/4862.683*SpeedOfLight/1e3, 12.85, 0.01)
+
 	// Full width of H beta at half maximum at 1e17 cm^-3: 48 A (Gigosos, Gonzalez
 	// & Cardenoso 2003, from memory). With electrons as static as ions the width
 	// is too large, without them (2^(2/3) smaller) too small.
-	p, err := NewStarkProfile(4, 1e17, 1e4)
+	p, err = NewStarkProfile(4, 1e17, 1e4)
 	if err != nil {
 		t.Fatal(err)
 	}
