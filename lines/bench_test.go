@@ -49,24 +49,41 @@ func surveySpectrum(m *Meter, z, noise float64, shape func(l *line) (sigmaKms, p
 	return a
 }
 
-func galaxyShape(l *line) (float64, float64) {
-	switch l.Seen {
-	case Absorption:
+// galaxyShape and quasarShape are invented strengths of about the right order.
+func galaxyShape(l *line) (sigma, peak float64) {
+	switch {
+	case l.Name == "OIII_5007":
+		return 120, 2.98
+	case l.Name == "NII_6583":
+		return 120, 0.61
+	case l.Name == "NII_6548":
+		return 120, 0.2
+	case l.Seen == Absorption:
 		return 200, -0.3
-	case Emission:
+	case l.Seen == Emission:
 		return 120, 1
+	case l.ion == "H I":
+		return 120, 2 * l.F / 0.2
 	}
-	return 120, 0.7
+	return 120, 0.2
 }
 
-func quasarShape(l *line) (float64, float64) {
-	switch {
-	case l.Seen == Absorption:
-		return 0, 0
-	case l.forbidden:
-		return 250, 0.5
+func quasarShape(l *line) (sigma, peak float64) {
+	switch l.Name {
+	case "Lya":
+		return 2500, 3
+	case "CIV_1548", "CIV_1550", "CIII_1908", "MgII_2796", "MgII_2803":
+		return 2500, 1
+	case "NV_1238", "NV_1242", "SiIV_1393", "SiIV_1402", "SiIII_1892", "Hb", "Hg", "HeI_5876":
+		return 2500, 0.3
+	case "Ha":
+		return 2500, 2
+	case "OIII_5007":
+		return 250, 0.298
+	case "OIII_4959", "OII_3726", "OII_3729", "NeIII_3869":
+		return 250, 0.1
 	}
-	return 2500, 0.8
+	return 0, 0
 }
 
 func benchmark(b *testing.B, z float64, broad bool, noise float64, shape func(*line) (float64, float64)) {

@@ -50,15 +50,47 @@ func (s *Scratch) formTies(b *blend) (main int) {
 			s.borrow(e)
 		case k == main:
 			e.own = true
-		case s.tracks[e.lead].seen() && (e.broad != q.ties[main].broad || s.clear(k, main)):
+		case s.tracks[e.lead].seen() && (!s.akin(k, main) || s.clear(k, main)):
 			e.own = true
-		case e.broad != q.ties[main].broad:
-			s.borrow(e)
 		default:
-			e.v, e.s = q.ties[main].v, q.ties[main].s
+			s.follow(k, main)
 		}
 	}
 	return main
+}
+
+// akin reports whether tie k may take offset and width from tie main: both of
+// the same class of width, and not known to be of different sign.
+func (s *Scratch) akin(k, main int) bool {
+	q := &s.prob
+	e, m := &q.ties[k], &q.ties[main]
+	if e.broad != m.broad {
+		return false
+	}
+	lead := s.tracks[e.lead]
+	if lead.seen() {
+		return sign(e.snr) == sign(m.snr)
+	}
+	switch lead.line.Seen {
+	case Emission:
+		return m.snr > 0
+	case Absorption:
+		return m.snr < 0
+	}
+	return true
+}
+
+// follow gives tie k the offset and width of the main tie, or borrows them
+// when the two are not akin.
+func (s *Scratch) follow(k, main int) {
+	q := &s.prob
+	e := &q.ties[k]
+	e.own = false
+	if !s.akin(k, main) {
+		s.borrow(e)
+		return
+	}
+	e.v, e.s = q.ties[main].v, q.ties[main].s
 }
 
 // clear reports whether no line of tie k overlaps one of tie m.
@@ -81,7 +113,7 @@ func (s *Scratch) clear(k, m int) bool {
 // of the same class of width, of the kind in which this one usually appears
 // when there is a choice; else it falls back on zero and Options.WidthGuess.
 func (s *Scratch) borrow(e *tie) {
-	e.settled = true
+	e.own, e.borrowed = false, true
 	e.v, e.s = 0, math.Hypot(s.opt.WidthGuess, e.sres)
 	if e.broad {
 		e.s = math.Hypot(10*s.opt.WidthGuess, e.sres)
@@ -163,7 +195,7 @@ func (s *Scratch) build(main int) {
 		}
 	}
 	for k := range q.ties {
-		if e := &q.ties[k]; !e.own && !e.settled && main >= 0 {
+		if e := &q.ties[k]; !e.own && !e.borrowed && main >= 0 {
 			e.pv, e.ps = q.ties[main].pv, q.ties[main].ps
 		}
 	}

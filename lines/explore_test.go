@@ -34,13 +34,15 @@ func TestExplore(t *testing.T) {
 					res = m.Measure(res[:0], []Arm{a}, Options{ContinuumSlack: 0.05}, &sc)
 					r := res[0]
 					kinds[r.Kind+r.Reason]++
-					if math.IsNaN(r.EWRest) { continue }
+					if math.IsNaN(r.EWRest) {
+						continue
+					}
 					pf.add((r.EWRest + flux) / r.EWRestErr)
 					ps.add((r.EWSum + flux) / r.EWSumErr)
-					bias.add(r.EWRest/-flux)
+					bias.add(r.EWRest / -flux)
 					if !math.IsNaN(r.OffsetErr) {
-					pv.add((r.OffsetKms - 13) / r.OffsetErr)
-					pw.add((r.WidthKms - sg*step) / r.WidthErr)
+						pv.add((r.OffsetKms - 13) / r.OffsetErr)
+						pw.add((r.WidthKms - sg*step) / r.WidthErr)
 					}
 				}
 				fmt.Printf("sig %4.1f depth %4.1f sn %3g exp %6.1f | fit %6.3f %.3f %.3f | sum %6.3f %.3f | v %.3f %.3f w %.3f %.3f | ratio %.4f %v\n", sg, depth, sn, exp,

@@ -14,21 +14,20 @@ type model interface {
 // over its bound stops there, and takes no part in steps while the gradient
 // pushes it outward. The zero value is ready; buffers are kept.
 type marquardt struct {
-	n        int
-	p        []float64 // parameters, in and out
-	lo, hi   []float64 // bounds
-	fixed    []bool    // parameters that are held
-	held     []bool    // fixed, without effect, or pressed against a bound
-	trial    []float64
-	a, b     []float64
-	ta, tb   []float64
-	chol     []float64
-	scale    []float64
-	step     []float64
-	cov      []float64 // covariance, full n x n, zero for held ones
-	chi2     float64
-	free     int // number of parameters not held at the end
-	solvable bool
+	n      int
+	p      []float64 // parameters, in and out
+	lo, hi []float64 // bounds
+	fixed  []bool    // parameters that are held
+	held   []bool    // fixed, without effect, or pressed against a bound
+	trial  []float64
+	a, b   []float64
+	ta, tb []float64
+	chol   []float64
+	scale  []float64
+	step   []float64
+	cov    []float64 // covariance, full n x n, zero for held ones
+	chi2   float64
+	free   int // number of parameters not held at the end
 }
 
 func (m *marquardt) reset(n int) {
@@ -52,51 +51,71 @@ func (m *marquardt) reset(n int) {
 }
 
 const (
-	maxSteps = 50
-	// A step that promises less than this of chi^2 moves no parameter by more
-	// than 0.01 of its error.
-	smallGain = 1e-4
+	maxSteps = 30
+	// The last step is taken without a look at where it leads when it
+	// promises less than this of chi^2: it moves no parameter by more than
+	// 0.1 of its error, and what it leaves is of second order in that.
+	lastGain = 1e-2
+	// slowGain: after three steps that gained less, along a narrow valley,
+	// the search ends.
+	slowGain = 0.1
+	maxDamp  = 1e8
 )
+
+// linear solves for the parameters that are not fixed, in which the model must
+// be linear, in one step. It reports whether the equations could be solved.
+func (m *marquardt) linear(f model) bool {
+	m.chi2 = f.normal(m.p, m.a, m.b)
+	gain, ok := m.propose(0)
+	if ok {
+		m.p, m.trial = m.trial, m.p
+		m.chi2 -= gain
+	}
+	return ok
+}
 
 // minimize runs from p and leaves the solution in p, chi2 and cov. It reports
 // whether the equations could be solved; p is finite in any case.
 func (m *marquardt) minimize(f model) bool {
 	m.chi2 = f.normal(m.p, m.a, m.b)
 	lambda := 0.0
-	m.solvable = true
+	solved, slow := false, 0
 	for range maxSteps {
 		gain, ok := m.propose(lambda)
 		if !ok {
-			if lambda = max(10*lambda, 1e-3); lambda > 1e8 {
-				m.solvable = false
+			if lambda = max(10*lambda, 1e-3); lambda > maxDamp {
 				break
 			}
 			continue
 		}
-		if gain < smallGain {
+		solved = true
+		if gain < lastGain && lambda < 0.1 {
+			m.p, m.trial = m.trial, m.p
+			m.chi2 -= gain
 			break
 		}
 		chi2 := f.normal(m.trial, m.ta, m.tb)
 		if chi2 <= m.chi2 {
-			better := m.chi2 - chi2
+			if m.chi2-chi2 < slowGain {
+				slow++
+			}
 			m.p, m.trial = m.trial, m.p
 			m.a, m.ta = m.ta, m.a
 			m.b, m.tb = m.tb, m.b
 			m.chi2 = chi2
-			if lambda *= 0.1; lambda < 1e-6 {
+			if lambda *= 0.1; lambda < 1e-4 {
 				lambda = 0
 			}
-			if better < smallGain && lambda == 0 {
+			if slow == 3 {
 				break
 			}
 			continue
 		}
-		if lambda = max(10*lambda, 1e-3); lambda > 1e8 {
+		if lambda = max(10*lambda, 1e-3); lambda > maxDamp {
 			break
 		}
 	}
-	m.solvable = m.covariance() && m.solvable
-	return m.solvable
+	return m.covariance() && solved
 }
 
 // hold marks the parameters that take no part in a step.

@@ -149,11 +149,11 @@ type Meter struct {
 // line is a line of the list with what planning needs to know of it.
 type line struct {
 	linelist.Line
-	ion       string // element and stage without the brackets of forbidden lines
-	forbidden bool
-	group     int     // index of the list's group, -1 for none
-	doublet   int     // index into fixedRatios, -1 for none
-	share     float64 // strength within a doublet, or relative to lines of the ion when unresolved
+	ion     string  // element and stage without the brackets of forbidden lines
+	narrow  bool    // forbidden, or only seen in absorption: never as broad as a quasar's permitted lines
+	group   int     // index of the list's group, -1 for none
+	doublet int     // index into fixedRatios, -1 for none
+	share   float64 // strength within a doublet, or relative to lines of the ion when unresolved
 }
 
 // fixedRatio is a doublet whose flux ratio is fixed by atomic physics because
@@ -175,7 +175,8 @@ func NewMeter(list *linelist.List) *Meter {
 	groups := map[string]int{}
 	m := &Meter{}
 	for _, l := range list.Lines() {
-		e := line{Line: l, ion: plainIon(l.Ion), forbidden: strings.HasPrefix(l.Ion, "["), group: -1, doublet: -1, share: 1}
+		forbidden := strings.HasPrefix(l.Ion, "[")
+		e := line{Line: l, ion: plainIon(l.Ion), narrow: forbidden || l.Seen == Absorption, group: -1, doublet: -1, share: 1}
 		if l.Group != "" {
 			g, ok := groups[l.Group]
 			if !ok {
@@ -189,7 +190,7 @@ func NewMeter(list *linelist.List) *Meter {
 			e.share = math.Sqrt(l.F)
 		}
 		for k, r := range fixedRatios {
-			if !e.forbidden || e.ion != r.ion {
+			if !forbidden || e.ion != r.ion {
 				continue
 			}
 			if math.Abs(l.Wave-r.strong) < 0.3 {
@@ -199,6 +200,16 @@ func NewMeter(list *linelist.List) *Meter {
 			}
 		}
 		m.lines = append(m.lines, e)
+	}
+	// A forbidden line that shares its group with a permitted one of the ion,
+	// such as [C III] with C III], goes with that.
+	for i := range m.lines {
+		for j := range m.lines {
+			a, b := &m.lines[i], &m.lines[j]
+			if a.group >= 0 && a.group == b.group && a.ion == b.ion && !b.narrow {
+				a.narrow = false
+			}
+		}
 	}
 	return m
 }
@@ -232,11 +243,12 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 		s.labels, s.labeled = map[labelKey]string{}, m
 	}
 	s.meter, s.arms, s.opt = m, arms, opt.withDefaults()
+	s.claims = s.claims[:0]
 	s.survey()
 	s.findTracks()
 	s.plan()
 	for _, faint := range []bool{false, true} {
-		for b := range s.blends {
+		for _, b := range s.order {
 			if s.blends[b].faint == faint {
 				s.measureBlend(&s.blends[b])
 			}

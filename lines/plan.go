@@ -29,7 +29,8 @@ const (
 // blend is a set of lines fitted together: member[first:first+count].
 type blend struct {
 	first, count int
-	faint        bool // nothing seen: offset and width come from the rest of the spectrum
+	snr          float64 // of the best box
+	faint        bool    // nothing seen: offset and width come from the rest of the spectrum
 }
 
 // apart returns the distance of two lines at their starting places, km/s.
@@ -47,8 +48,9 @@ func (s *Scratch) plan() {
 	}
 	for i := range s.tracks {
 		for j := i + 1; j < len(s.tracks) && s.tracks[i].usable; j++ {
-			if s.tracks[j].usable && s.tracks[i].line.ion != s.tracks[j].line.ion {
-				s.settle(i, j)
+			a, b := &s.tracks[i], &s.tracks[j]
+			if b.usable && a.line.ion != b.line.ion && a.broad == b.broad {
+				s.settle(a, b)
 			}
 		}
 	}
@@ -68,10 +70,19 @@ func (s *Scratch) plan() {
 			if s.tracks[j].usable && s.root(j) == i {
 				s.member = append(s.member, j)
 				b.faint = b.faint && !s.tracks[j].seen()
+				b.snr = max(b.snr, math.Abs(s.tracks[j].snr))
 			}
 		}
 		b.count = len(s.member) - b.first
 		s.blends = append(s.blends, b)
+	}
+	// Strongest first, so that they can lend offset and width to the others.
+	s.order = s.order[:0]
+	for i := range s.blends {
+		s.order = append(s.order, i)
+		for k := i; k > 0 && s.blends[s.order[k]].snr > s.blends[s.order[k-1]].snr; k-- {
+			s.order[k], s.order[k-1] = s.order[k-1], s.order[k]
+		}
 	}
 }
 
@@ -84,10 +95,10 @@ func (s *Scratch) root(i int) int {
 }
 
 // settle measures two lines of different ions as one when they lie too close
-// to be told apart: the line whose ion shows itself better elsewhere in the
-// spectrum, with the right sign, carries the sum.
-func (s *Scratch) settle(i, j int) {
-	a, b := &s.tracks[i], &s.tracks[j]
+// to be told apart. One carries the sum: never one that the list does not
+// expect with the sign seen; else the clearly stronger one at its own place;
+// else the one whose ion shows itself better elsewhere in the spectrum.
+func (s *Scratch) settle(a, b *track) {
 	width := s.opt.WidthGuess
 	switch {
 	case a.seen() && b.seen():
@@ -107,7 +118,14 @@ func (s *Scratch) settle(i, j int) {
 		sg = b.snr
 	}
 	carrier, silent := a, b
-	if s.support(b, sg) > s.support(a, sg) {
+	sa, sb := s.support(a, sg), s.support(b, sg)
+	ratio := math.Abs(b.snr) / max(math.Abs(a.snr), 1)
+	switch {
+	case min(sa, sb) < 0, ratio > 0.8 && ratio < 1.25, !a.seen() && !b.seen():
+		if sb > sa {
+			carrier, silent = b, a
+		}
+	case ratio > 1:
 		carrier, silent = b, a
 	}
 	silent.usable = false

@@ -4,6 +4,8 @@ import (
 	"math"
 
 	"duskline/spectrum"
+
+	"gonum.org/v1/gonum/floats"
 )
 
 // problem is the least-squares problem of one blend. Pixels of all windows lie
@@ -15,6 +17,7 @@ import (
 type problem struct {
 	lam, width []float64 // center and width of the pixels, Angstrom
 	y, w, cont []float64 // flux minus continuum, weight, continuum
+	count      []int     // pixels of the arm in one of these
 	windows    []window
 	comps      []component
 	dsig       []float64 // instrument's variance against the tie's, per component and arm, (km/s)^2
@@ -22,7 +25,11 @@ type problem struct {
 	ties       []tie
 	n          int
 	act        []int // lists of active parameters of the windows
-	row        []float64
+	cols       []float64
+	spans      []span
+	res        []float64
+	weighted   []float64
+	wcol       []float64
 }
 
 // window is a run of pixels of one arm with a straight line of its own:
@@ -50,21 +57,24 @@ type component struct {
 
 // tie is the offset and the width of one ion in a blend.
 type tie struct {
-	ion     string
-	broad   bool
-	sres    float64 // instrument's sigma to which the width refers, km/s
-	snr     float64 // of the best box among its lines, signed
-	lead    int     // track of that line
-	v, s    float64 // offset and total sigma, km/s
-	own     bool    // has parameters of its own
-	settled bool    // not to be freed again
-	pv, ps  int     // parameters: its own, or the main tie's
-	vmax    float64
-	smin    float64
-	smax    float64
+	ion      string
+	broad    bool
+	sres     float64 // instrument's sigma to which the width refers, km/s
+	snr      float64 // of the best box among its lines, signed
+	lead     int     // track of that line
+	v, s     float64 // offset and total sigma, km/s
+	own      bool    // has parameters of its own
+	settled  bool    // was freed or bound after a fit, not to be changed again
+	borrowed bool    // offset and width come from outside the blend and are held
+	pv, ps   int     // parameters: its own, or the main tie's
+	vmax     float64
+	smin     float64
+	smax     float64
 }
 
-// normal implements model.
+// normal implements model. Columns of the Jacobian are kept with the span of
+// pixels in which they differ from zero, so that a product of two is one dot
+// product over what they share.
 func (q *problem) normal(p, a, b []float64) float64 {
 	n := q.n
 	clear(a)
@@ -73,64 +83,73 @@ func (q *problem) normal(p, a, b []float64) float64 {
 	for wi := range q.windows {
 		win := &q.windows[wi]
 		act := q.act[win.act0:win.act1]
-		m := len(act)
-		size := (win.hi - win.lo) * m
-		if cap(q.row) < size {
-			q.row = make([]float64, 2*size)
+		np := win.hi - win.lo
+		if np == 0 {
+			continue
 		}
-		jac := q.row[:size]
-		clear(jac)
-		for i := win.lo; i < win.hi; i++ {
-			r := jac[(i-win.lo)*m:]
-			r[0], r[1] = 1, (q.lam[i]-win.mid)/win.half
+		q.jacobian(win, p, act)
+		w := q.w[win.lo:win.hi]
+		q.res = append(q.res[:0], q.y[win.lo:win.hi]...)
+		for k := range 2 + win.nAmp {
+			s := q.spans[k]
+			floats.AddScaled(q.res[s.lo:s.hi], -p[act[k]], q.cols[k*np+s.lo:k*np+s.hi])
 		}
-		for ci := range q.comps {
-			q.profile(ci, win, p, jac, act)
-		}
-		for i := win.lo; i < win.hi; i++ {
-			wt := q.w[i]
-			if wt == 0 {
+		q.weighted = resize(q.weighted, np)
+		floats.MulTo(q.weighted, w, q.res)
+		chi2 += floats.Dot(q.weighted, q.res)
+		for k, i := range act {
+			s := q.spans[k]
+			if s.lo >= s.hi {
 				continue
 			}
-			r := jac[(i-win.lo)*m : (i-win.lo)*m+m]
-			// The model is linear in the line and the amplitudes; the
-			// offsets' and widths' entries are derivatives only.
-			res := q.y[i] - p[win.base]*r[0] - p[win.base+1]*r[1]
-			for k := 2; k < 2+win.nAmp; k++ {
-				res -= p[act[k]] * r[k]
-			}
-			chi2 += wt * res * res
-			for k, rk := range r {
-				if rk == 0 {
-					continue
-				}
-				f := wt * rk
-				b[act[k]] += f * res
-				ak := a[act[k]*n:]
-				for l := k; l < m; l++ {
-					ak[act[l]] += f * r[l]
+			col := q.cols[k*np : k*np+np]
+			b[i] += floats.Dot(q.weighted[s.lo:s.hi], col[s.lo:s.hi])
+			q.wcol = resize(q.wcol, np)
+			floats.MulTo(q.wcol[s.lo:s.hi], w[s.lo:s.hi], col[s.lo:s.hi])
+			for l := k; l < len(act); l++ {
+				lo, hi := max(s.lo, q.spans[l].lo), min(s.hi, q.spans[l].hi)
+				if lo < hi {
+					j := act[l]
+					a[min(i, j)*n+max(i, j)] += floats.Dot(q.wcol[lo:hi], q.cols[l*np+lo:l*np+hi])
 				}
 			}
 		}
 		if win.prior > 0 {
 			iv := 1 / (win.prior * win.prior)
-			for k := range 2 {
-				c := p[win.base+k]
-				a[(win.base+k)*n+win.base+k] += iv
-				b[win.base+k] -= iv * c
-				chi2 += iv * c * c
+			for k := win.base; k < win.base+2; k++ {
+				a[k*n+k] += iv
+				b[k] -= iv * p[k]
+				chi2 += iv * p[k] * p[k]
 			}
-		}
-	}
-	// Active lists start with the straight line, so entries may have landed
-	// below the diagonal.
-	for i := range n {
-		for j := i + 1; j < n; j++ {
-			a[i*n+j] += a[j*n+i]
 		}
 	}
 	return chi2
 }
+
+// jacobian fills cols and spans with the derivatives of the model at the
+// pixels of a window to its active parameters, a column each. First come those
+// in which the model is linear and homogeneous, the straight line and the
+// amplitudes: the model is the sum of them times their columns.
+func (q *problem) jacobian(win *window, p []float64, act []int) {
+	np := win.hi - win.lo
+	q.cols = resize(q.cols, np*len(act))
+	q.spans = append(q.spans[:0], span{0, np}, span{0, np})
+	for range act[2:] {
+		q.spans = append(q.spans, span{np, 0})
+	}
+	one, slope := q.cols[:np], q.cols[np:2*np]
+	for i := range one {
+		one[i], slope[i] = 1, (q.lam[win.lo+i]-win.mid)/win.half
+	}
+	for ci := range q.comps {
+		q.profile(ci, win, p, act)
+	}
+}
+
+// span is a range of pixels of a window.
+type span struct{ lo, hi int }
+
+func (s *span) cover(lo, hi int) { s.lo, s.hi = min(s.lo, lo), max(s.hi, hi) }
 
 // place returns center and total sigma of a component on an arm, Angstrom, and
 // the derivative of the latter to the width parameter.
@@ -147,34 +166,45 @@ func (q *problem) place(ci, arm int, p []float64) (mu, sigma, dsigma float64) {
 }
 
 // profile adds one component to the Jacobian of a window.
-func (q *problem) profile(ci int, win *window, p, jac []float64, act []int) {
+func (q *problem) profile(ci int, win *window, p []float64, act []int) {
 	mu, sigma, dsigma := q.place(ci, win.arm, p)
-	lo, hi := q.span(win, mu, sigma)
-	if lo >= hi {
-		return
-	}
+	lo, hi := q.reach(win, mu, sigma)
 	c := &q.comps[ci]
 	t := &q.ties[c.tie]
-	m := len(act)
-	ka, kv, ks := find(act, c.amp), find(act, t.pv), find(act, t.ps)
-	if ka < 0 {
+	ka := find(act, c.amp)
+	if lo >= hi || ka < 0 {
 		return
 	}
-	scale := c.lam0 / spectrum.SpeedOfLight
+	np := win.hi - win.lo
+	amp := q.cols[ka*np : ka*np+np]
+	q.spans[ka].cover(lo-win.lo, hi-win.lo)
+	kv, ks := find(act, t.pv), find(act, t.ps)
+	var colV, colS []float64
+	if kv >= 0 {
+		colV, colS = q.cols[kv*np:kv*np+np], q.cols[ks*np:ks*np+np]
+		q.spans[kv].cover(lo-win.lo, hi-win.lo)
+		q.spans[ks].cover(lo-win.lo, hi-win.lo)
+	}
 	flux := c.share * p[c.amp]
+	scaleV := flux * c.lam0 / spectrum.SpeedOfLight
+	scaleS := flux * dsigma
+	g := newGauss(mu, sigma, q.width[lo])
 	for i := lo; i < hi; i++ {
-		g, dmu, ds := gaussian(q.lam[i], q.width[i], mu, sigma)
-		r := jac[(i-win.lo)*m:]
-		r[ka] += c.share * g
+		if d := q.width[i]; math.Abs(d-g.d) > 0.02*g.d {
+			g = newGauss(mu, sigma, d)
+		}
+		v, dmu, ds := g.at(q.lam[i])
+		j := i - win.lo
+		amp[j] += c.share * v
 		if kv >= 0 {
-			r[kv] += flux * dmu * scale
-			r[ks] += flux * ds * dsigma
+			colV[j] += dmu * scaleV
+			colS[j] += ds * scaleS
 		}
 	}
 }
 
-// span returns the pixels of a window that a profile reaches.
-func (q *problem) span(win *window, mu, sigma float64) (lo, hi int) {
+// reach returns the pixels of a window that a profile touches.
+func (q *problem) reach(win *window, mu, sigma float64) (lo, hi int) {
 	reach := profileReach * sigma
 	lo = win.lo + lowerBound(q.lam[win.lo:win.hi], mu-reach)
 	hi = win.lo + lowerBound(q.lam[win.lo:win.hi], mu+reach)

@@ -28,9 +28,9 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 	doubt := s.shareDoubt(ci)
 	r.Flux = flux
 	r.FluxErr = math.Hypot(scale*math.Abs(c.share)*math.Sqrt(variance), doubt)
-	r.SNR = math.Abs(r.Flux) / r.FluxErr
+	r.SNR = math.Abs(m.p[c.amp]) / (scale * math.Sqrt(variance))
 
-	seen := math.Abs(flux) >= seenFrom*scale*math.Abs(c.share)*math.Sqrt(variance)
+	seen := r.SNR >= seenFrom
 	cont, known := s.continuumAt(ci, scale)
 	r.Continuum = cont
 	z1 := 1 + s.opt.Z
@@ -43,7 +43,7 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 		s.grad[c.amp] -= c.share / cont / z1
 		r.EWRestErr = math.Hypot(scale*math.Sqrt(max(0, m.quadratic(s.grad))), doubt/cont/z1)
 		sum := s.directSum(ci)
-		r.EWSum, r.EWSumErr, r.Pixels = sum.ew/z1, scale*math.Sqrt(sum.variance)/z1, sum.pixels
+		r.EWSum, r.EWSumErr, r.Pixels = sum.ew/z1, math.Hypot(scale*math.Sqrt(sum.variance)/z1, doubt/cont/z1), sum.pixels
 	} else {
 		r.Reason = ReasonNoContinuum
 	}
@@ -137,11 +137,11 @@ func (s *Scratch) under(ci int, w *window) (info, cont, x float64) {
 	if mu < w.mid-w.half || mu > w.mid+w.half {
 		return 0, 0, 0
 	}
-	lo, hi := q.span(w, mu, sigma)
+	lo, hi := q.reach(w, mu, sigma)
 	for i := lo; i < hi; i++ {
 		if q.w[i] > 0 {
-			g, _, _ := gaussian(q.lam[i], q.width[i], mu, sigma)
-			info += q.w[i] * g * g
+			u := (q.lam[i] - mu) / max(sigma, q.width[i])
+			info += q.w[i] * math.Exp(-u*u)
 		}
 	}
 	a := &s.arms[w.arm]

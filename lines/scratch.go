@@ -16,12 +16,15 @@ type Scratch struct {
 	sumW   []float64 // running sum of weight, one longer than the arm
 	sumWR  []float64 // running sum of weight times (flux - continuum)
 	sumN   []float64 // running number of good pixels
+	claims []Band    // around strong lines, in order of wavelength
 	tracks []track
 	parent []int // union-find over tracks
 	blends []blend
+	order  []int // blends, strongest first
 	member []int // track indices of all blends, one after the other
 	anchor [2][2]kinematics
 
+	bins    []int // pixels a bin may have, along a window
 	prob    problem
 	lm      marquardt
 	grad    []float64
@@ -34,6 +37,8 @@ type Scratch struct {
 type track struct {
 	line    *line
 	index   int     // of the line in the list
+	center  int     // pixel of the arm nearest to lam0
+	next    float64 // distance of the nearest line of the group, km/s
 	carrier int     // index of the line that carries this one's flux, -1 for none
 	lam0    float64 // observed wavelength at zero offset
 	arm     int     // the arm that sees it best
@@ -41,6 +46,7 @@ type track struct {
 	sres    float64 // Gaussian sigma of the instrument there, km/s; 0 unknown
 	broad   bool    // allowed broad widths and offsets
 	usable  bool    // takes part in a fit
+	strong  bool    // claims the pixels around it
 	snr     float64 // of the best box, signed: negative in absorption
 	v, s    float64 // offset and total sigma of the best box, or the guess
 	result  Result
@@ -134,7 +140,7 @@ func (a *Arm) nearest(wave float64) int {
 	return i
 }
 
-// survey fills the running sums.
+// survey fills the running sums, without the pixels that claims cover.
 func (s *Scratch) survey() {
 	total := 0
 	s.first = s.first[:0]
@@ -146,8 +152,12 @@ func (s *Scratch) survey() {
 	for k := range s.arms {
 		a, o := &s.arms[k], s.first[k]
 		var w, wr, n float64
-		for i := range a.Wave {
-			if g := a.good(i); g > 0 {
+		claim := 0
+		for i, lam := range a.Wave {
+			for claim < len(s.claims) && s.claims[claim].Hi < lam {
+				claim++
+			}
+			if g := a.good(i); g > 0 && (claim == len(s.claims) || lam < s.claims[claim].Lo) {
 				w += g
 				wr += g * (a.Flux[i] - a.Cont[i])
 				n++

@@ -32,13 +32,96 @@ func (s *Scratch) findTracks() {
 		a := &s.arms[t.arm]
 		c := a.nearest(t.lam0)
 		t.pix, t.sres = a.pixelKms(c), a.sigmaKms(c)
-		t.broad = s.opt.Broad && !l.forbidden && l.Seen != Absorption
+		t.broad = s.opt.Broad && !l.narrow
 		t.result = blank(l)
 		t.s = max(math.Hypot(s.opt.WidthGuess, t.sres), 0.5*t.pix)
-		s.search(&t, c, s.nextInGroup(i))
-		t.usable = s.covered(&t)
+		t.center, t.next = c, s.nextInGroup(i, t.broad)
+		s.search(&t)
 		s.tracks = append(s.tracks, t)
 	}
+	s.refine()
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		t.usable = s.covered(t)
+	}
+}
+
+const (
+	strongFrom  = 8.0  // box S/N from which a line claims its pixels
+	strongShare = 0.25 // the first to claim have this share of the best S/N
+)
+
+// refine looks again for the lines near stronger ones, without the pixels of
+// those: else the wing of one line would be the dip beside it for another. It
+// does so twice, first for the strongest lines of the spectrum.
+func (s *Scratch) refine() {
+	best := 0.0
+	for i := range s.tracks {
+		best = max(best, math.Abs(s.tracks[i].snr))
+	}
+	for _, from := range [2]float64{max(strongFrom, strongShare*best), strongFrom} {
+		fresh := false
+		for i := range s.tracks {
+			if t := &s.tracks[i]; !t.strong && math.Abs(t.snr) >= from && s.dominant(i) {
+				t.strong, fresh = true, true
+			}
+		}
+		if !fresh {
+			continue
+		}
+		s.claimPixels()
+		s.survey()
+		for i := range s.tracks {
+			if t := &s.tracks[i]; !t.strong && s.nearClaim(t) {
+				s.search(t)
+			}
+		}
+	}
+}
+
+// dominant reports whether no line with a better S/N overlaps line i.
+func (s *Scratch) dominant(i int) bool {
+	t := &s.tracks[i]
+	for j := range s.tracks {
+		o := &s.tracks[j]
+		if j == i || (!o.strong && math.Abs(o.snr) <= math.Abs(t.snr)) || !o.seen() {
+			continue
+		}
+		d := spectrum.SpeedOfLight*(o.lam0/t.lam0-1) + o.v - t.v
+		if math.Abs(d) < 1.5*(o.s+t.s) {
+			return false
+		}
+	}
+	return true
+}
+
+// claimPixels lists the ranges of 3 sigma around the strong lines, joined
+// where they touch.
+func (s *Scratch) claimPixels() {
+	s.claims = s.claims[:0]
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		if !t.strong {
+			continue
+		}
+		mu := t.lam0 * (1 + t.v/spectrum.SpeedOfLight)
+		d := 3 * t.s * t.lam0 / spectrum.SpeedOfLight
+		lo, hi := mu-d, mu+d
+		// Wide ones may reach back over several.
+		for len(s.claims) > 0 && lo <= s.claims[len(s.claims)-1].Hi {
+			last := s.claims[len(s.claims)-1]
+			lo, hi = min(lo, last.Lo), max(hi, last.Hi)
+			s.claims = s.claims[:len(s.claims)-1]
+		}
+		s.claims = append(s.claims, Band{lo, hi})
+	}
+}
+
+// nearClaim reports whether a claim lies in the region that the search of a
+// line looks at.
+func (s *Scratch) nearClaim(t *track) bool {
+	d := t.lam0 / spectrum.SpeedOfLight * max(2*s.opt.WindowKms, 6*t.s+math.Abs(t.v))
+	return onSky(s.claims, t.lam0-d, t.lam0+d)
 }
 
 func blank(l *line) Result {
@@ -48,12 +131,16 @@ func blank(l *line) Result {
 }
 
 // nextInGroup returns the distance, km/s, from line i to the nearest other one
-// of its group, infinite when it stands alone.
-func (s *Scratch) nextInGroup(i int) float64 {
+// of its group, for a broad line to the nearest broad one of another ion;
+// infinite when there is none.
+func (s *Scratch) nextInGroup(i int, broad bool) float64 {
 	ls := s.meter.lines
 	d := math.Inf(1)
-	for _, j := range [2]int{i - 1, i + 1} {
-		if j >= 0 && j < len(ls) && ls[i].group >= 0 && ls[j].group == ls[i].group {
+	if ls[i].group < 0 {
+		return d
+	}
+	for j := range ls {
+		if j != i && ls[j].group == ls[i].group && !(broad && (ls[j].narrow || ls[j].ion == ls[i].ion)) {
 			d = min(d, spectrum.SpeedOfLight*math.Abs(ls[j].Wave/ls[i].Wave-1))
 		}
 	}
@@ -63,14 +150,17 @@ func (s *Scratch) nextInGroup(i int) float64 {
 // search slides boxes of 3 sigma, for widths growing by 1.5, around the place
 // of the line and keeps the one whose mean stands out most from its flanks. A
 // box of 2.8 sigma has 94 % of the S/N of a matched Gaussian, so that steps of
-// 1.5 in width lose little.
-func (s *Scratch) search(t *track, c int, next float64) {
+// 1.5 in width lose little. Only the sign counts that the list expects.
+func (s *Scratch) search(t *track) {
+	c := t.center
 	low := max(t.sres, 0.7*t.pix)
 	high := math.Hypot(s.opt.widthMax(t.broad), t.sres)
+	// A box must not swallow the neighbor.
 	if t.broad {
 		low = max(low, 400)
-	} else if next > 2*low {
-		high = min(high, 0.5*next)
+		high = min(high, max(1000, 0.6*t.next))
+	} else {
+		high = min(high, max(low, 0.25*t.next))
 	}
 	limit := s.opt.search(t.broad)
 	last := -1
@@ -98,7 +188,11 @@ func (s *Scratch) search(t *track, c int, next float64) {
 				mean -= (owr - iwr) / fw
 				variance += 1 / fw
 			}
-			if snr := mean / math.Sqrt(variance); math.Abs(snr) > math.Abs(best) {
+			snr := mean / math.Sqrt(variance)
+			if (snr > 0 && t.line.Seen == Absorption) || (snr < 0 && t.line.Seen == Emission) {
+				continue
+			}
+			if math.Abs(snr) > math.Abs(best) {
 				best = snr
 				t.v, t.s = float64(j-c)*t.pix, float64(2*h+1)*t.pix/3
 			}

@@ -10,9 +10,9 @@ const maxRounds = 4
 func (s *Scratch) measureBlend(b *blend) {
 	main := s.formTies(b)
 	ok := false
-	for range maxRounds {
+	for round := range maxRounds {
 		s.build(main)
-		ok = s.fit()
+		ok = s.fit(round)
 		s.readKinematics()
 		if !s.revise(main, ok) {
 			break
@@ -29,25 +29,73 @@ func (s *Scratch) measureBlend(b *blend) {
 }
 
 // fit solves first for the linear parameters alone, then for all.
-func (s *Scratch) fit() bool {
+func (s *Scratch) fit(round int) bool {
 	q, m := &s.prob, &s.lm
-	free := false
+	s.fixKinematics(true)
+	ok := m.linear(q)
+	own := 0
 	for k := range q.ties {
-		if e := &q.ties[k]; e.own {
-			m.fixed[e.pv], m.fixed[e.ps] = true, true
-			free = true
+		if q.ties[k].own {
+			own++
 		}
 	}
-	ok := m.minimize(q)
-	if !free {
-		return ok
+	if own == 0 {
+		return m.covariance() && ok
 	}
-	for k := range q.ties {
-		if e := &q.ties[k]; e.own {
-			m.fixed[e.pv], m.fixed[e.ps] = false, false
-		}
+	if round == 0 {
+		s.tryStarts()
 	}
+	s.fixKinematics(false)
 	return m.minimize(q)
+}
+
+func (s *Scratch) fixKinematics(fixed bool) {
+	q, m := &s.prob, &s.lm
+	for k := range q.ties {
+		if e := &q.ties[k]; e.own {
+			m.fixed[e.pv], m.fixed[e.ps] = fixed, fixed
+		}
+	}
+}
+
+// tryStarts compares, for every ion with a close neighbor, the start that the
+// box gave with zero offset and with two smaller widths, each with the best
+// amplitudes: boxes mistake a neighbor for the line, and a fit that starts
+// there stays there.
+func (s *Scratch) tryStarts() {
+	q, m := &s.prob, &s.lm
+	for k := range q.ties {
+		e := &q.ties[k]
+		if !e.own || !s.crowded(k) {
+			continue
+		}
+		best, v, w := m.chi2, e.v, e.s
+		guess := math.Hypot(s.opt.WidthGuess, e.sres)
+		for _, start := range [4][2]float64{{0, e.s}, {0, guess}, {0, math.Sqrt(guess * e.s)}, {e.v, guess}} {
+			m.p[e.pv], m.p[e.ps] = start[0], min(max(start[1], e.smin), e.smax)
+			x, y := m.p[e.pv], m.p[e.ps]
+			if m.linear(q) && m.chi2 < best {
+				best, v, w = m.chi2, x, y
+			}
+		}
+		m.p[e.pv], m.p[e.ps] = v, w
+		m.linear(q)
+	}
+}
+
+// crowded reports whether a line of tie k has another line of the blend within
+// the reach of its boxes.
+func (s *Scratch) crowded(k int) bool {
+	q := &s.prob
+	for i := range q.comps {
+		for j := range q.comps {
+			if i != j && q.comps[i].tie == k &&
+				s.apart(&s.tracks[q.comps[i].track], &s.tracks[q.comps[j].track]) < 1000 {
+				return true
+			}
+		}
+	}
+	return false
 }
 
 func (s *Scratch) readKinematics() {
@@ -106,10 +154,10 @@ func (s *Scratch) revise(main int, ok bool) bool {
 		snr := s.tieSNR(k)
 		switch {
 		case !e.own && !e.settled && snr >= ownFrom:
-			e.own, e.settled, again = true, true, true
-		case e.own && snr < seenFrom && e.broad == q.ties[main].broad:
-			e.own, e.settled, again = false, false, true
-			e.v, e.s = q.ties[main].v, q.ties[main].s
+			e.own, e.settled, e.borrowed, again = true, true, false, true
+		case e.own && snr < seenFrom:
+			e.settled, again = true, true
+			s.follow(k, main)
 		}
 	}
 	for i := range q.comps {
@@ -121,7 +169,8 @@ func (s *Scratch) revise(main int, ok bool) bool {
 }
 
 // outgrown reports whether the sum window of a component, or most of the
-// window that its width calls for, has left the fit window.
+// window that its width calls for, has left the fit window, or whether its
+// bins have become too wide for it.
 func (s *Scratch) outgrown(ci int) bool {
 	q := &s.prob
 	for i := range q.windows {
@@ -130,6 +179,11 @@ func (s *Scratch) outgrown(ci int) bool {
 		mu, sigma, _ := q.place(ci, w.arm, s.lm.p)
 		if mu < w.mid-w.half || mu > w.mid+w.half {
 			continue
+		}
+		if lo, hi := q.reach(w, mu, sigma); hi > lo {
+			if k := (lo + hi) / 2; q.count[k] > 1 && q.width[k] > sigma/2 {
+				return true
+			}
 		}
 		d := 5 * sigma
 		if (mu-d < w.mid-w.half && w.pix0 > 0) || (mu+d > w.mid+w.half && w.pixLimit < len(a.Wave)) {

@@ -56,7 +56,7 @@ func (s *Scratch) sumWindow(ci int, win *window) sum {
 	q, m := &s.prob, &s.lm
 	mu, sigma, _ := q.place(ci, win.arm, m.p)
 	c := &q.comps[ci]
-	lo, hi := q.span(win, mu, sigma)
+	lo, hi := q.reach(win, mu, sigma)
 	s.grad, s.cross = resize(s.grad, m.n), resize(s.cross, m.n)
 	// Pixels widen the profile; the window follows.
 	if hi > lo {
@@ -84,27 +84,26 @@ func (s *Scratch) sumWindow(ci int, win *window) sum {
 		if math.Abs(q.lam[i]-mu) <= 0.75*q.width[i] {
 			contMu = fc
 		}
-		g, dmu, ds := gaussian(q.lam[i], q.width[i], mu, sigmaOf(q, ci, win, m.p))
-		profile += g * d
-		if q.w[i] == 0 {
-			r.ew -= d * flux * g / fc
-			s.addOwn(ci, win, -d/fc, flux, g, dmu, ds)
-			s.grad[win.base] += d * flux * g / (fc * fc)
-			s.grad[win.base+1] += d * flux * g / (fc * fc) * x
-			continue
+		own, others := s.pixelProfiles(ci, win, i, d/fc, q.w[i] > 0)
+		profile += own * d
+		rel := 1 + flux*own/fc
+		if q.w[i] > 0 {
+			rel = (q.y[i] + q.cont[i] - others) / fc
+			seen += d
+			if d > 0.5*q.width[i] {
+				r.pixels += q.count[i]
+			}
+			f := d / fc
+			noise += f * f / q.w[i]
+			s.cross[win.base] -= f
+			s.cross[win.base+1] -= f * x
+			s.grad[win.base] += d * rel / fc
+			s.grad[win.base+1] += d * rel / fc * x
+		} else {
+			s.grad[win.base] += d * flux * own / (fc * fc)
+			s.grad[win.base+1] += d * flux * own / (fc * fc) * x
 		}
-		seen += d
-		if d > 0.5*q.width[i] {
-			r.pixels++
-		}
-		qi := -d / fc
-		others := s.neighbors(ci, win, i, -qi)
-		rel := (q.y[i] + q.cont[i] - others) / fc
 		r.ew += d * (1 - rel)
-		s.grad[win.base] += d * rel / fc
-		s.grad[win.base+1] += d * rel / fc * x
-		noise += qi * qi / q.w[i]
-		s.crossRow(win, i, x, qi)
 	}
 	r.good = seen / (to - from)
 	// What no pixel covers, and the 0.05 % beyond the window, counts with the
@@ -117,66 +116,50 @@ func (s *Scratch) sumWindow(ci int, win *window) sum {
 	return r
 }
 
-func sigmaOf(q *problem, ci int, win *window, p []float64) float64 {
-	_, sigma, _ := q.place(ci, win.arm, p)
-	return sigma
-}
-
-// addOwn adds factor times the derivative of the component's own profile.
-func (s *Scratch) addOwn(ci int, win *window, factor, flux, g, dmu, ds float64) {
-	q := &s.prob
-	c := &q.comps[ci]
-	t := &q.ties[c.tie]
-	s.grad[c.amp] += factor * c.share * g
-	if t.pv >= 0 {
-		_, _, dsigma := q.place(ci, win.arm, s.lm.p)
-		s.grad[t.pv] += factor * flux * dmu * c.lam0 / spectrum.SpeedOfLight
-		s.grad[t.ps] += factor * flux * ds * dsigma
-	}
-}
-
-// neighbors returns the sum of the other lines' profiles at pixel i and adds
-// factor times its derivatives to the gradient.
-func (s *Scratch) neighbors(ci int, win *window, i int, factor float64) float64 {
-	q := &s.prob
-	total := 0.0
+// pixelProfiles returns the profile of component ci, per unit flux, and the
+// sum of the other lines at pixel i, and adds their derivatives, times f, to
+// the gradient of the sum: those of the neighbors where the pixel is good, that
+// of the line itself where the profile stands in for the pixel. A good pixel
+// adds its row of the Jacobian to the correlation with the parameters.
+func (s *Scratch) pixelProfiles(ci int, win *window, i int, f float64, good bool) (own, others float64) {
+	q, p := &s.prob, s.lm.p
 	for k := range q.comps {
-		if k == ci {
-			continue
-		}
-		mu, sigma, _ := q.place(k, win.arm, s.lm.p)
-		if math.Abs(q.lam[i]-mu) > profileReach*sigma+q.width[i] {
-			continue
-		}
-		g, dmu, ds := gaussian(q.lam[i], q.width[i], mu, sigma)
-		flux := q.comps[k].share * s.lm.p[q.comps[k].amp]
-		total += flux * g
-		s.addOwn(k, win, factor, flux, g, dmu, ds)
-	}
-	return total
-}
-
-// crossRow adds factor times row i of the Jacobian to the correlation of the
-// pixels with the parameters.
-func (s *Scratch) crossRow(win *window, i int, x, factor float64) {
-	q := &s.prob
-	s.cross[win.base] += factor
-	s.cross[win.base+1] += factor * x
-	for k := range q.comps {
-		mu, sigma, dsigma := q.place(k, win.arm, s.lm.p)
+		mu, sigma, dsigma := q.place(k, win.arm, p)
 		if math.Abs(q.lam[i]-mu) > profileReach*sigma+q.width[i] {
 			continue
 		}
 		c := &q.comps[k]
 		t := &q.ties[c.tie]
-		g, dmu, ds := gaussian(q.lam[i], q.width[i], mu, sigma)
-		flux := c.share * s.lm.p[c.amp]
-		s.cross[c.amp] += factor * c.share * g
+		g := newGauss(mu, sigma, q.width[i])
+		v, dmu, ds := g.at(q.lam[i])
+		flux := c.share * p[c.amp]
+		into := 0.0
+		switch {
+		case k == ci:
+			own = v
+			if !good {
+				into = -f
+			}
+		case good:
+			others += flux * v
+			into = f
+		}
+		dmu *= flux * c.lam0 / spectrum.SpeedOfLight
+		ds *= flux * dsigma
+		s.grad[c.amp] += into * c.share * v
 		if t.pv >= 0 {
-			s.cross[t.pv] += factor * flux * dmu * c.lam0 / spectrum.SpeedOfLight
-			s.cross[t.ps] += factor * flux * ds * dsigma
+			s.grad[t.pv] += into * dmu
+			s.grad[t.ps] += into * ds
+		}
+		if good {
+			s.cross[c.amp] -= f * c.share * v
+			if t.pv >= 0 {
+				s.cross[t.pv] -= f * dmu
+				s.cross[t.ps] -= f * ds
+			}
 		}
 	}
+	return own, others
 }
 
 // directSum combines the sums of a component over its windows by inverse
