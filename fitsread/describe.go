@@ -1,0 +1,161 @@
+package fitsread
+
+import (
+	"fmt"
+	"strings"
+)
+
+// Description tells people what is in a file and how it is read.
+type Description struct {
+	File    string
+	Bytes   int64 // unpacked
+	Gzipped bool
+	HDUs    []HDUInfo
+	Layout  string // name of the layout in use
+	Why     string // why it was chosen
+	Spectra int
+	Parts   []PartInfo // where the arrays of the first spectrum stand
+	Skipped []string   // what looks like spectra and is not read, with the reason
+	Medium  string     // of the first spectrum, and why
+	Frame   string     // of the first spectrum, and why
+	First   string     // summary of the first spectrum
+	Assumed []string   // warnings of the first spectrum
+}
+
+// HDUInfo describes one HDU.
+type HDUInfo struct {
+	Index   int
+	Name    string
+	Kind    string
+	Shape   string // such as "4096 x 5" pixels or "8 columns, 4600 rows"
+	Problem string // "" when it can be used
+	Used    bool
+	Columns []ColumnInfo
+}
+
+// ColumnInfo describes one table column.
+type ColumnInfo struct {
+	Name, Format, Unit, UCD, Utype, Role string
+}
+
+// PartInfo says where the arrays of an arm come from; empty for none.
+type PartInfo struct {
+	Name, Wavelength, WaveUnit, Flux, FluxUnit, Weight, WeightKind, Mask, Resolution string
+}
+
+// Describe reports on the file. It reads the first spectrum; where that fails
+// the reason stands in First.
+func (f *File) Describe() (d Description) {
+	d = Description{File: f.path, Bytes: f.src.size, Gzipped: f.src.gzipped, Layout: f.plan.layout,
+		Why: f.plan.why, Spectra: f.Count(), Skipped: f.plan.skipped}
+	used := map[place]bool{}
+	for i := range f.plan.groups[0].arms {
+		a := &f.plan.groups[0].arms[i]
+		p := PartInfo{Name: a.name, Wavelength: a.wave.String(), WaveUnit: a.wave.unit.String(), Flux: a.flux.String(),
+			FluxUnit: a.fluxUnit, Weight: a.weight.String(), Resolution: a.resolution.String()}
+		if !a.wave.unitKnown {
+			p.WaveUnit = "not stated"
+		}
+		if a.weight.isSet() {
+			p.WeightKind = weightName(a.weightRole)
+		}
+		var masks []string
+		for _, m := range a.masks {
+			masks = append(masks, m.at.String())
+			used[m.at] = true
+		}
+		p.Mask = strings.Join(masks, ", ")
+		for _, pl := range []place{a.wave.values, a.wave.start, a.wave.step, a.flux, a.weight, a.resolution} {
+			used[pl] = true
+		}
+		d.Parts = append(d.Parts, p)
+	}
+	for _, h := range f.hdus {
+		d.HDUs = append(d.HDUs, h.info(used))
+	}
+	s, err := f.Read(0)
+	if err != nil {
+		d.First = err.Error()
+		return d
+	}
+	obs, w := &f.plan.groups[0].obs, &f.plan.groups[0].arms[0].wave
+	why := "assumed"
+	switch {
+	case w.mediumKnown:
+		why = w.mediumWhy
+	case obs.mediumKnown:
+		why = obs.mediumWhy
+	}
+	d.Medium = fmt.Sprintf("%s (%s)", s.Medium, why)
+	d.Frame = fmt.Sprintf("%s (%s)", s.Frame, obs.frameWhy)
+	pixels, good := 0, 0
+	for i := range s.Segments {
+		pixels += s.Segments[i].Len()
+		good += s.Segments[i].Good()
+	}
+	d.First = fmt.Sprintf("%s: %d pixels in %d segments, %d good, %s", s.ObjectID, pixels, len(s.Segments), good, coverage(s.Segments))
+	for _, warning := range s.Warnings {
+		d.Assumed = append(d.Assumed, warning.Text)
+	}
+	return d
+}
+
+func (h *hdu) info(used map[place]bool) HDUInfo {
+	info := HDUInfo{Index: h.index, Name: h.name, Kind: h.kind.String()}
+	switch h.kind {
+	case kindTable, kindASCII:
+		info.Shape = fmt.Sprintf("%d columns, %d rows", len(h.columns), h.axes[1])
+	default:
+		sizes := make([]string, len(h.axes))
+		for i, a := range h.axes {
+			sizes[i] = fmt.Sprint(a)
+		}
+		if info.Shape = strings.Join(sizes, " x "); info.Shape == "" {
+			info.Shape = "no data"
+		}
+	}
+	switch {
+	case h.broken != nil:
+		info.Problem = h.broken.Msg
+	case h.missing > 0:
+		info.Problem = "cut short"
+	}
+	inUse := map[*column]bool{}
+	for p := range used {
+		if p.hdu == h {
+			info.Used = true
+			inUse[p.col] = true
+		}
+	}
+	for i := range h.columns {
+		c := &h.columns[i]
+		ci := ColumnInfo{Name: c.name, Format: c.form, Unit: c.unit, UCD: c.ucd, Utype: c.utype}
+		if inUse[c] {
+			ci.Role = "used"
+		}
+		info.Columns = append(info.Columns, ci)
+	}
+	return info
+}
+
+// String names the unit.
+func (u spectralUnit) String() string {
+	base := ""
+	for _, name := range []string{"Angstrom", "nm", "micron", "m", "cm", "mm", "Hz", "kHz", "MHz", "GHz", "THz", "eV", "keV", "J", "erg",
+		"cm-1", "m-1", "m/s", "km/s"} {
+		if v, _ := parseUnit(name); v.quantity == u.quantity && v.factor == u.factor {
+			base = name
+			break
+		}
+	}
+	if base == "" {
+		base = "SI"
+	}
+	switch u.scale {
+	case log10:
+		return "log10(" + base + ")"
+	case ln:
+		return "ln(" + base + ")"
+	}
+	return base
+}

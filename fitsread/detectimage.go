@@ -1,0 +1,282 @@
+package fitsread
+
+import (
+	"fmt"
+	"strings"
+)
+
+// imageSet is the images that share a name but for the word of their role.
+type imageSet struct {
+	prefix string
+	byRole map[role]*hdu
+	word   map[role]string // the word that told the role
+}
+
+// flux, wave and the like in the order in which weights are preferred.
+var weightRoles = []role{roleIvar, roleSigma, roleVariance, roleWeight}
+
+// imageRole takes the role's word off an image's EXTNAME: "B_IVAR" is inverse
+// variance with prefix "B".
+func imageRole(name string) (prefix, word string, r role) {
+	if wr := roleOfName(name); wr.role != roleNone && len(bare(name)) > 1 {
+		return "", name, wr.role
+	}
+	tokens := strings.FieldsFunc(name, func(r rune) bool { return strings.ContainsRune("-_. :", r) })
+	for _, i := range []int{len(tokens) - 1, 0} {
+		if len(tokens) < 2 || len(tokens[i]) < 2 {
+			continue
+		}
+		if wr := roleOfName(tokens[i]); wr.role != roleNone && wr.role < roleStep {
+			rest := append(append([]string{}, tokens[:i]...), tokens[i+1:]...)
+			return strings.Join(rest, "_"), tokens[i], wr.role
+		}
+	}
+	return "", "", roleNone
+}
+
+// imageSets sorts the images by prefix, in file order. A primary image without a
+// name next to named ones is the flux.
+func (f *File) imageSets() []*imageSet {
+	var sets []*imageSet
+	set := func(prefix string) *imageSet {
+		for _, s := range sets {
+			if s.prefix == prefix {
+				return s
+			}
+		}
+		s := &imageSet{prefix: prefix, byRole: map[role]*hdu{}, word: map[role]string{}}
+		sets = append(sets, s)
+		return s
+	}
+	for _, h := range f.hdus {
+		isImage := h.kind == kindImage && h.pixels() > 1 && h.lines() > 0
+		if !isImage && h.kind != kindCompressed {
+			continue
+		}
+		prefix, word, r := imageRole(h.name)
+		if r == roleNone && h.index == 0 && (h.name == "" || strings.EqualFold(h.name, "primary")) {
+			prefix, word, r = "", "", roleFlux
+		}
+		s := set(prefix)
+		if r != roleNone && s.byRole[r] == nil {
+			s.byRole[r], s.word[r] = h, word
+		}
+	}
+	return sets
+}
+
+// findImages reads images that are told by their EXTNAME: FLUX, WAVELENGTH and
+// IVAR, one set or several arms with a common prefix each, an object a line.
+func (f *File) findImages() (*plan, error) {
+	sets := f.imageSets()
+	var shared *imageSet // wavelengths for all sets
+	for _, s := range sets {
+		if s.byRole[roleWave] != nil && (s.prefix == "" || shared == nil && s.byRole[roleFlux] == nil) {
+			shared = s
+		}
+	}
+	var cands []candidate
+	for _, s := range sets {
+		flux := s.byRole[roleFlux]
+		if flux == nil {
+			continue
+		}
+		wave, word := s.byRole[roleWave], s.word[roleWave]
+		if wave == nil && shared != nil {
+			wave, word = shared.byRole[roleWave], shared.word[roleWave]
+		}
+		if wave == nil {
+			continue // left to its spectral axis
+		}
+		for _, h := range []*hdu{flux, wave} {
+			if h.kind == kindCompressed {
+				return nil, compressedFault(h)
+			}
+		}
+		if wave.pixels() != flux.pixels() || wave.lines() != 1 && wave.lines() != flux.lines() {
+			continue
+		}
+		var a arm
+		a.wave = wavePlan{values: place{hdu: wave, line: eachLine}}
+		a.wave.describe(word, wave.header.text("BUNIT"), "", "")
+		if err := f.companions(&a, s, flux); err != nil {
+			return nil, err
+		}
+		base, armName := splitArm(s.prefix)
+		if armName == "" {
+			base, armName = "", s.prefix // a common scheme of names: sets of one file are arms
+		}
+		a.name = armName
+		cands = append(cands, candidate{name: s.prefix, base: base, shape: "images", arm: a, rows: flux.lines()})
+	}
+	if len(cands) == 0 {
+		return nil, nil
+	}
+	p := &plan{why: "images are named as wavelength and flux"}
+	p.groups, p.skipped = arrange(cands)
+	return p, nil
+}
+
+// companions adds weight, mask and resolution images of the same shape as the
+// flux. An image of another shape is not one; a compressed mask is not needed
+// where there is an inverse variance, a compressed weight is.
+func (f *File) companions(a *arm, s *imageSet, flux *hdu) error {
+	a.flux, a.fluxUnit = place{hdu: flux, line: eachLine}, flux.header.text("BUNIT")
+	for _, r := range weightRoles {
+		h := s.byRole[r]
+		if h == nil {
+			continue
+		}
+		if h.kind == kindCompressed {
+			return compressedFault(h)
+		}
+		if h.pixels() == flux.pixels() && h.lines() == flux.lines() {
+			a.weight, a.weightRole = place{hdu: h, line: eachLine}, r
+			break
+		}
+	}
+	for _, r := range []role{roleQuality, roleGood, roleMask} {
+		h := s.byRole[r]
+		if h == nil || a.weightRole == roleIvar && r == roleMask {
+			continue
+		}
+		if h.kind == kindCompressed {
+			return compressedFault(h)
+		}
+		if h.pixels() == flux.pixels() && h.lines() == flux.lines() {
+			a.masks = append(a.masks, f.maskFor(place{hdu: h, line: eachLine}, r))
+		}
+	}
+	for _, r := range []role{rolePower, roleFWHM, roleDisp} {
+		h := s.byRole[r]
+		if h != nil && h.kind == kindImage && h.pixels() == flux.pixels() && (h.lines() == flux.lines() || h.lines() == 1) {
+			a.resolution, a.resRole = place{hdu: h, line: eachLine}, r
+			break
+		}
+		if h != nil && h.kind == kindImage && len(h.axes) == 3 && h.axes[0] == flux.pixels() && h.axes[1] > 1 &&
+			h.axes[1] < 100 && h.axes[2] == flux.lines() {
+			a.kernel, a.resRole = place{hdu: h, line: eachLine}, roleDisp
+			break
+		}
+	}
+	return nil
+}
+
+// findAxis reads the first image whose header describes a spectral axis along
+// its lines.
+func (f *File) findAxis() (*plan, error) {
+	var firstErr error
+	for _, h := range f.hdus {
+		if h.kind != kindImage || h.pixels() < 2 || h.lines() == 0 {
+			continue
+		}
+		if strings.HasPrefix(strings.ToUpper(h.header.text("CTYPE1")), "MULTISPE") {
+			firstErr = fault(ErrNoSpectrum, h.index, "write the orders out with one wavelength array each",
+				"wavelengths given by functions in WAT cards are not supported")
+			continue
+		}
+		ax, ok, err := readAxis(h.header, 1)
+		if err == nil && !ok && h.index > 0 {
+			// Extension images may inherit the axis of the primary header.
+			if ax, ok, err = readAxis(f.hdus[0].header, 1); f.hdus[0].pixels() != 0 {
+				ok = false
+			}
+		}
+		if ok && ax.algorithm == "TAB" {
+			var w wavePlan
+			if w, err = f.tableAxis(h, ax); err == nil {
+				return f.linePlan(h, w, "CTYPE1 names a table of wavelengths", "")
+			}
+			err = fmt.Errorf("the table that CTYPE1 = %s names cannot be used: %w", h.header.text("CTYPE1"), err)
+		}
+		if err != nil {
+			if firstErr == nil {
+				firstErr = fault(ErrBadHeader, h.index, "write a layout that says where the wavelengths are", "%v", err)
+			}
+			continue
+		}
+		if ok {
+			return f.linePlan(h, axisWave(&ax, h), "the header describes a spectral axis", ax.guessed)
+		}
+	}
+	return nil, firstErr
+}
+
+// tableAxis resolves a -TAB axis (Paper III, section 6): PS1_0 names the
+// extension, PS1_1 the column of coordinates. Index vectors are not supported.
+func (f *File) tableAxis(h *hdu, ax axis) (wavePlan, error) {
+	if ix := h.header.text("PS1_2"); ix != "" {
+		return wavePlan{}, fmt.Errorf("it has an index vector, %s", ix)
+	}
+	name, colName := h.header.text("PS1_0"), h.header.text("PS1_1")
+	for _, t := range f.hdus {
+		if t.kind != kindTable || t.broken != nil || !strings.EqualFold(t.name, name) || t.axes[1] != 1 {
+			continue
+		}
+		for i := range t.columns {
+			c := &t.columns[i]
+			if strings.EqualFold(c.name, colName) && c.numeric() && c.isVector() && c.repeat == h.pixels() {
+				w := columnWave(t, c)
+				if !w.unitKnown {
+					w.unit, w.unitKnown = ax.unit, true
+				}
+				ax.algorithm = ""
+				w.medium, w.mediumKnown = ax.medium()
+				w.mediumWhy = "CTYPE"
+				return w, nil
+			}
+		}
+	}
+	return wavePlan{}, fmt.Errorf("there is no single-row table %q with %d values in column %q", name, h.pixels(), colName)
+}
+
+// linePlan reads the lines of an image with known wavelengths: one line, or
+// lines whose meaning the header gives, or an object a line.
+func (f *File) linePlan(h *hdu, w wavePlan, why, guess string) (*plan, error) {
+	p := &plan{why: why}
+	if guess != "" {
+		p.guesses = append(p.guesses, guess)
+	}
+	a := arm{wave: w, flux: place{hdu: h, line: eachLine}, fluxUnit: h.header.text("BUNIT")}
+	lines := h.lines()
+	roles := lineRoles(h)
+	if roles == nil && lines > 1 && lines <= maxGuessLines {
+		var err error
+		if roles, err = f.guessLines(h); err != nil {
+			return nil, err
+		}
+		if roles != nil {
+			p.guesses = append(p.guesses, fmt.Sprintf("the %d lines of the image in HDU %d were told apart by their numbers", lines, h.index))
+		}
+	}
+	if roles == nil {
+		if lines > 1 {
+			p.guesses = append(p.guesses, fmt.Sprintf("each of the %d lines of the image in HDU %d taken for one spectrum", lines, h.index))
+		}
+		for _, s := range f.imageSets() {
+			if s.byRole[roleFlux] == h {
+				if err := f.companions(&a, s, h); err != nil {
+					return nil, err
+				}
+			}
+		}
+		p.groups = []group{{name: h.name, arms: []arm{a}, rows: lines}}
+		return p, nil
+	}
+	haveFlux := false
+	for i, r := range roles {
+		at := place{hdu: h, line: int64(i)}
+		switch {
+		case r == roleFlux && !haveFlux:
+			a.flux, haveFlux = at, true
+		case (r == roleIvar || r == roleSigma || r == roleVariance || r == roleWeight) && !a.weight.isSet():
+			a.weight, a.weightRole = at, r
+		case r == roleMask && len(a.masks) == 0:
+			a.masks = append(a.masks, maskPlan{at: at, role: r})
+		case r == roleWave:
+			a.wave.values, a.wave.axis = at, nil
+		}
+	}
+	p.groups = []group{{name: h.name, arms: []arm{a}, rows: 1}}
+	return p, nil
+}

@@ -1,0 +1,282 @@
+package fitsread
+
+import (
+	"fmt"
+	"math"
+	"strings"
+
+	"duskline/spectrum"
+)
+
+// observation is what the headers say about all spectra of a group.
+type observation struct {
+	frame       spectrum.Frame
+	frameWhy    string
+	frameDoubt  spectrum.Code // "" when the frame is stated without doubt
+	velocity    float64       // of a correction that is stated but not applied, km/s; NaN
+	jd          float64       // mid-exposure, UTC; NaN
+	site        spectrum.Site
+	siteKnown   bool
+	onGround    bool
+	medium      spectrum.Medium
+	mediumKnown bool
+	mediumWhy   string
+	power       float64 // resolving power, 0 when not stated
+}
+
+// observe reads the headers, most specific first.
+func observe(hs []*hdu) observation {
+	o := observation{velocity: math.NaN(), jd: math.NaN()}
+	o.readMedium(hs)
+	o.site, o.siteKnown = readSite(hs)
+	o.jd = midExposure(hs)
+	if v, _, ok := findNumber(hs, "AIRMASS"); ok && v >= 1 {
+		o.onGround = true
+	}
+	o.onGround = o.onGround || o.siteKnown
+	o.readFrame(hs)
+	for _, key := range []string{"SPEC_RES", "SPECRES", "RESPOWER", "SPEC_RP"} {
+		if v, _, ok := findNumber(hs, key); ok && v > 10 && v < 1e7 {
+			o.power = v
+			break
+		}
+	}
+	return o
+}
+
+func findCard(hs []*hdu, key string) (card, bool) {
+	for _, h := range hs {
+		if c, ok := h.header.find(key); ok {
+			return c, true
+		}
+	}
+	return card{}, false
+}
+
+func findNumber(hs []*hdu, key string) (float64, card, bool) {
+	c, ok := findCard(hs, key)
+	if !ok {
+		return 0, c, false
+	}
+	v, ok := parseNumber(c.value())
+	return v, c, ok
+}
+
+// remarks calls f with every line of COMMENT and HISTORY in lower case.
+func remarks(hs []*hdu, f func(string)) {
+	for _, h := range hs {
+		for _, c := range h.header {
+			if c.key == "COMMENT" || c.key == "HISTORY" {
+				f(strings.ToLower(c.rest))
+			}
+		}
+	}
+}
+
+// readMedium looks for a statement on air or vacuum: first cards made for it,
+// then remarks about wavelengths. Remarks that contradict each other state nothing.
+func (o *observation) readMedium(hs []*hdu) {
+	state := func(m spectrum.Medium, why string) { o.medium, o.mediumKnown, o.mediumWhy = m, true, why }
+	for _, h := range hs {
+		if v, ok := h.header.logical("VACUUM"); ok {
+			if v {
+				state(spectrum.Vacuum, "card VACUUM")
+			} else {
+				state(spectrum.Air, "card VACUUM")
+			}
+			return
+		}
+	}
+	for _, key := range []string{"AIRORVAC", "AIR_VAC", "AIRVAC", "VACAIR", "WAVEMED", "WAVE_MED", "MEDIUM", "LAMMED", "WAVETYPE", "WAVE_REF"} {
+		c, ok := findCard(hs, key)
+		if !ok {
+			continue
+		}
+		v := strings.ToLower(c.value())
+		switch {
+		case strings.HasPrefix(v, "vac"):
+			state(spectrum.Vacuum, "card "+key)
+			return
+		case strings.HasPrefix(v, "air"):
+			state(spectrum.Air, "card "+key)
+			return
+		}
+	}
+	air, vacuum := false, false
+	remarks(hs, func(s string) {
+		if !hasAny(s, "wave", "lambda") || strings.Contains(s, "not ") {
+			return
+		}
+		vacuum = vacuum || hasWord(s, "vacuum")
+		air = air || hasWord(s, "in air") || hasWord(s, "air wavelengths") || hasWord(s, "air wavelength")
+	})
+	if air != vacuum {
+		m := spectrum.Vacuum
+		if air {
+			m = spectrum.Air
+		}
+		state(m, "a remark in the header")
+	}
+}
+
+// assumeMedium decides where nothing is stated: vacuum if any wavelength lies
+// below 2000 Angstrom, where nobody uses air wavelengths; air for spectra from
+// the ground (AIRMASS or a site in the header) that are not on a logarithmic grid,
+// since arc lamps are listed in air; vacuum otherwise, as modern surveys have it.
+// Common practice, no source; the warning MediumAssumed travels along.
+func (o *observation) assumeMedium(shortest float64, logGrid bool) spectrum.Medium {
+	if shortest >= 2000 && o.onGround && !logGrid {
+		return spectrum.Air
+	}
+	return spectrum.Vacuum
+}
+
+// correctionCards are the keywords under which programs keep a velocity
+// correction of the wavelengths or whether it was made.
+var correctionCards = []struct {
+	keys  string
+	frame spectrum.Frame
+}{
+	{"HELIO_RV HELIO HELCORR HELIOCOR HELIOVEL V_HELIO VHELIO HELVEL HELIO_V HELICORR HELICOR", spectrum.Heliocentric},
+	{"BARYCORR BARYCOR BARYVEL V_BARY VBARY BARY_RV BARY_V BERV BARYCENT", spectrum.Barycentric},
+}
+
+// readFrame finds the velocity frame: SPECSYS; cards about a heliocentric or
+// barycentric correction; remarks. Otherwise single exposures from the ground,
+// whose header has time and place, count as topocentric and all others as
+// barycentric, both with FrameAssumed.
+func (o *observation) readFrame(hs []*hdu) {
+	if c, ok := findCard(hs, "SPECSYS"); ok && c.value() != "" {
+		if fr, ok := frameNamed(c.value()); ok {
+			o.frame, o.frameWhy = fr, "SPECSYS"
+			if fr == spectrum.RestFrame {
+				o.frameDoubt = spectrum.RestFrameStated
+			}
+			return
+		}
+	}
+	if o.fromCorrections(hs) || o.fromRemarks(hs) {
+		return
+	}
+	o.frameDoubt = spectrum.FrameAssumed
+	if o.onGround && !math.IsNaN(o.jd) {
+		o.frame, o.frameWhy = spectrum.Topocentric, "velocity frame not stated; a single exposure from the ground, taken as topocentric"
+		return
+	}
+	o.frame, o.frameWhy = spectrum.Barycentric, "velocity frame not stated; barycentric assumed"
+}
+
+// frameNamed reads a SPECSYS value; its first letters tell.
+func frameNamed(s string) (spectrum.Frame, bool) {
+	s = strings.ToUpper(strings.TrimSpace(s))
+	for _, f := range []struct {
+		prefix string
+		frame  spectrum.Frame
+	}{{"BARY", spectrum.Barycentric}, {"HELIO", spectrum.Heliocentric}, {"TOPO", spectrum.Topocentric},
+		{"GEOC", spectrum.Geocentric}, {"SOURCE", spectrum.RestFrame}, {"REST", spectrum.RestFrame}, {"LSR", spectrum.OtherFrame},
+		{"GALACT", spectrum.OtherFrame}, {"LOCALG", spectrum.OtherFrame}, {"CMBDIP", spectrum.OtherFrame}} {
+		if strings.HasPrefix(s, f.prefix) {
+			return f.frame, true
+		}
+	}
+	return 0, false
+}
+
+// fromCorrections weighs the cards about corrections: a clear "made" beats a
+// clear "not made" beats a bare number, which most programs leave behind after
+// making the correction.
+func (o *observation) fromCorrections(hs []*hdu) bool {
+	type finding struct {
+		found bool
+		frame spectrum.Frame
+		key   string
+		value float64
+	}
+	var made, unmade, bare finding
+	for _, cc := range correctionCards {
+		for _, key := range strings.Fields(cc.keys) {
+			c, ok := findCard(hs, key)
+			if !ok {
+				continue
+			}
+			is := finding{true, cc.frame, key, math.NaN()}
+			text := strings.ToUpper(c.value())
+			note := strings.ToLower(c.comment())
+			v, isNumber := parseNumber(text)
+			switch {
+			case isNumber && hasAny(note, "not applied", "to be applied", "to apply", "not corrected", "to add", "to be added"):
+				is.value = v
+				unmade = pickFirst(unmade, is, unmade.found)
+			case isNumber && hasAny(note, "added", "applied", "corrected", "subtracted", "removed"):
+				made = pickFirst(made, is, made.found)
+			case isNumber && v != 0:
+				bare = pickFirst(bare, is, bare.found)
+			case text == "T" || hasAny(text, "COMPLETE", "DONE", "APPLIED", "YES", "TRUE"):
+				made = pickFirst(made, is, made.found)
+			case text == "F" || hasAny(text, "OMIT", "PERFORM", "SKIP", "FALSE"):
+				unmade = pickFirst(unmade, is, unmade.found)
+			}
+		}
+	}
+	switch {
+	case made.found:
+		o.frame, o.frameWhy = made.frame, "card "+made.key
+	case unmade.found:
+		o.frame, o.frameWhy, o.velocity = spectrum.Topocentric, "card "+unmade.key+" says the correction was not made", unmade.value
+	case bare.found:
+		o.frame, o.frameDoubt = bare.frame, spectrum.FrameUncertain
+		o.frameWhy = fmt.Sprintf("card %s gives a correction without saying whether it was made; taken as made", bare.key)
+	default:
+		return false
+	}
+	return true
+}
+
+func pickFirst[T any](have, next T, found bool) T {
+	if found {
+		return have
+	}
+	return next
+}
+
+// fromRemarks reads COMMENT and HISTORY for words on the frame, and the cards of
+// programs that shift spectra.
+func (o *observation) fromRemarks(hs []*hdu) bool {
+	rest, helio, bary := false, false, false
+	remarks(hs, func(s string) {
+		if hasAny(s, "rest frame", "rest-frame", "restframe", "adjusted for radial vel", "redshift removed", "deredshifted", "de-redshifted") {
+			rest = true
+		}
+		if hasAny(s, "correct", "convert", "shifted", "applied", "frame", "velocity") && !hasAny(s, "not ", "omit") {
+			helio = helio || strings.Contains(s, "heliocentric")
+			bary = bary || strings.Contains(s, "barycentric")
+		}
+	})
+	switch {
+	case rest:
+		o.frame, o.frameDoubt = spectrum.RestFrame, spectrum.RestFrameStated
+		o.frameWhy = "a remark says that the object's velocity was taken out"
+	case bary:
+		o.frame, o.frameDoubt, o.frameWhy = spectrum.Barycentric, spectrum.FrameUncertain, "only a remark speaks of a barycentric correction"
+	case helio:
+		o.frame, o.frameDoubt, o.frameWhy = spectrum.Heliocentric, spectrum.FrameUncertain, "only a remark speaks of a heliocentric correction"
+	default:
+		return false
+	}
+	return true
+}
+
+// baryVelocity returns the velocity that brings the spectrum to the barycenter,
+// NaN where time or place of the object are missing. Without a site the center of
+// the Earth stands for it, good to 0.47 km/s.
+func (o *observation) baryVelocity(ra, dec float64) float64 {
+	switch {
+	case o.frame != spectrum.Topocentric && o.frame != spectrum.Geocentric:
+		return math.NaN()
+	case math.IsNaN(o.jd) || math.IsNaN(ra) || math.IsNaN(dec):
+		return o.velocity
+	case o.siteKnown && o.frame == spectrum.Topocentric:
+		return spectrum.BarycentricVelocity(o.site, o.jd, ra, dec)
+	}
+	return spectrum.GeocenterVelocity(o.jd, ra, dec)
+}

@@ -1,0 +1,258 @@
+package fitsread
+
+import (
+	"fmt"
+	"sort"
+	"strings"
+)
+
+// findHDU resolves a number or an EXTNAME.
+func findHDU(hdus []*hdu, ref any) *hdu {
+	switch v := ref.(type) {
+	case int64:
+		if v >= 0 && v < int64(len(hdus)) {
+			return hdus[v]
+		}
+	case string:
+		for _, h := range hdus {
+			if strings.EqualFold(h.name, v) {
+				return h
+			}
+		}
+	}
+	return nil
+}
+
+func (h *hdu) column(name string) *column {
+	for i := range h.columns {
+		if h.columns[i].name == name {
+			return &h.columns[i]
+		}
+	}
+	for i := range h.columns {
+		if strings.EqualFold(h.columns[i].name, name) {
+			return &h.columns[i]
+		}
+	}
+	return nil
+}
+
+// matches reports whether a file is of the layout's kind: the HDU, its columns
+// and the cards that [match] names are there. Without [match] it is none of them:
+// the layout is used only when it is forced.
+func (l *Layout) matches(hdus []*hdu) bool {
+	m := &l.doc.Match
+	if m.HDU == nil && len(m.Cards) == 0 {
+		return false
+	}
+	in := []*hdu{hdus[0]}
+	if m.HDU != nil {
+		h := findHDU(hdus, m.HDU)
+		if h == nil {
+			return false
+		}
+		for _, c := range m.Columns {
+			if h.column(c) == nil {
+				return false
+			}
+		}
+		in = append(in, h)
+	}
+	keys := make([]string, 0, len(m.Cards))
+	for k := range m.Cards {
+		keys = append(keys, k)
+	}
+	sort.Strings(keys)
+	for _, k := range keys {
+		c, ok := findCard(in, strings.ToUpper(k))
+		if !ok || m.Cards[k] != "" && c.value() != m.Cards[k] {
+			return false
+		}
+	}
+	return true
+}
+
+// planFor binds a user's layout to the file's HDUs and columns.
+func (f *File) planFor(l *Layout) (*plan, error) {
+	p := &plan{layout: l.Name, why: "its [match] fits the file", digest: l.digest}
+	if f.opts.Force != "" {
+		p.why = "it was asked for"
+	}
+	g := group{name: l.Name, rows: 1}
+	for i := range l.doc.Arm {
+		a, err := f.bindArm(&l.doc.Arm[i])
+		if err != nil {
+			return nil, err
+		}
+		rows := int64(1)
+		if a.flux.perRow() {
+			rows = a.flux.hdu.lines()
+		}
+		if i > 0 && rows != g.rows {
+			return nil, fault(ErrLayout, a.flux.hdu.index, "correct the layout", "arm %q has %d spectra, the arms before it %d", a.name, rows, g.rows)
+		}
+		g.rows = rows
+		g.arms = append(g.arms, a)
+	}
+	if l.doc.Rows == "orders" {
+		g.rows, g.orders = 1, g.rows
+	}
+	p.groups = []group{g}
+	if o := l.doc.Object; o != nil {
+		h := findHDU(f.hdus, o.HDU)
+		if h == nil {
+			return nil, missingHDU("object", o.HDU)
+		}
+		for _, b := range []struct {
+			name string
+			to   *place
+		}{{o.ID, &p.id}, {o.RA, &p.ra}, {o.Dec, &p.dec}} {
+			if b.name == "" {
+				continue
+			}
+			var err error
+			if *b.to, err = numberPlace(h, b.name); err != nil {
+				return nil, err
+			}
+		}
+	}
+	if l.doc.Frame != nil {
+		fr := frameKinds[l.doc.Frame.Velocity]
+		p.frame = &fr
+	}
+	return p, nil
+}
+
+func missingHDU(key string, ref any) *ReadError {
+	return fault(ErrLayout, -1, "correct the layout or leave the file out", "%s.hdu: the file has no HDU %v", key, ref)
+}
+
+// numberPlace finds a column or card of that name.
+func numberPlace(h *hdu, name string) (place, error) {
+	if c := h.column(name); c != nil {
+		return place{hdu: h, col: c}, nil
+	}
+	if _, ok := h.header.find(strings.ToUpper(name)); ok {
+		return place{hdu: h, card: strings.ToUpper(name)}, nil
+	}
+	return place{}, fault(ErrLayout, h.index, "correct the layout or leave the file out", "there is no column or card %q", name)
+}
+
+// arrayPlace finds a column, an image line, or the object's own line.
+func (f *File) arrayPlace(key string, ref any, name string, line int64) (place, error) {
+	h := findHDU(f.hdus, ref)
+	if h == nil {
+		return place{}, missingHDU(key, ref)
+	}
+	const hint = "correct the layout or leave the file out"
+	if h.kind == kindCompressed {
+		return place{}, compressedFault(h)
+	}
+	if name != "" {
+		c := h.column(name)
+		if c == nil || !c.numeric() {
+			return place{}, fault(ErrLayout, h.index, hint, "%s: there is no column of numbers %q", key, name)
+		}
+		return place{hdu: h, col: c}, nil
+	}
+	if h.kind != kindImage || h.pixels() == 0 {
+		return place{}, fault(ErrLayout, h.index, hint, "%s: this HDU is no image, so a column must be named", key)
+	}
+	if line > h.lines() {
+		return place{}, fault(ErrLayout, h.index, hint, "%s: line %d of an image of %d lines", key, line, h.lines())
+	}
+	return place{hdu: h, line: line - 1}, nil // line 0 becomes eachLine
+}
+
+func (f *File) bindArm(d *armDoc) (arm, error) {
+	a := arm{name: d.Name}
+	var err error
+	if a.flux, err = f.arrayPlace("flux", d.Flux.HDU, d.Flux.Column, d.Flux.Line); err != nil {
+		return a, err
+	}
+	switch {
+	case d.Flux.Unit != "":
+		a.fluxUnit = d.Flux.Unit
+	case a.flux.col != nil:
+		a.fluxUnit = a.flux.col.unit
+	default:
+		a.fluxUnit = a.flux.hdu.header.text("BUNIT")
+	}
+	if a.wave, err = f.bindWave(d.Wavelength); err != nil {
+		return a, err
+	}
+	if w := d.Weight; w != nil {
+		a.weightRole = weightKinds[w.Kind]
+		if a.weight, err = f.arrayPlace("weight", w.HDU, w.Column, w.Line); err != nil {
+			return a, err
+		}
+	}
+	if m := d.Mask; m != nil {
+		mp := maskPlan{role: badKinds[m.Bad], bits: m.Bits, stated: true}
+		if mp.at, err = f.arrayPlace("mask", m.HDU, m.Column, m.Line); err != nil {
+			return a, err
+		}
+		a.masks = []maskPlan{mp}
+	}
+	if r := d.Resolution; r != nil {
+		if a.power = r.Power; r.Power == 0 {
+			a.resRole = resKinds[r.Kind]
+			if a.resolution, err = f.arrayPlace("resolution", r.HDU, r.Column, r.Line); err != nil {
+				return a, err
+			}
+		}
+	}
+	return a, nil
+}
+
+func (f *File) bindWave(d *waveDoc) (wavePlan, error) {
+	h := findHDU(f.hdus, d.HDU)
+	if h == nil {
+		return wavePlan{}, missingHDU("wavelength", d.HDU)
+	}
+	var w wavePlan
+	var err error
+	switch {
+	case d.Axis:
+		ax, ok, err := readAxis(h.header, 1)
+		if err == nil && !ok {
+			err = fmt.Errorf("the header describes no spectral axis")
+		}
+		if err != nil {
+			return w, fault(ErrLayout, h.index, "correct the layout or leave the file out", "wavelength: %v", err)
+		}
+		w = axisWave(&ax, h)
+	case d.Start != "":
+		w.unit = unitAngstrom
+		if w.start, err = numberPlace(h, d.Start); err != nil {
+			return w, err
+		}
+		if w.step, err = numberPlace(h, d.Step); err != nil {
+			return w, err
+		}
+	default:
+		if w.values, err = f.arrayPlace("wavelength", d.HDU, d.Column, d.Line); err != nil {
+			return w, err
+		}
+		if c := w.values.col; c != nil {
+			w.describe(c.name, c.unit, c.ucd, c.comment)
+		} else {
+			w.describe("wavelength", h.header.text("BUNIT"), "", "")
+		}
+	}
+	if d.Unit != "" {
+		w.unit, _ = parseUnit(d.Unit)
+		w.unitKnown = true
+	}
+	if d.Scale != "" {
+		w.unit.scale = scaleKinds[d.Scale]
+		w.unitKnown = w.unitKnown || w.unit.scale != linear
+	}
+	if w.axis != nil {
+		w.axis.unit = w.unit
+	}
+	if d.Medium != "" {
+		w.medium, w.mediumKnown, w.mediumWhy = mediumKinds[d.Medium], true, "the layout"
+	}
+	return w, nil
+}

@@ -1,0 +1,198 @@
+package fitsread
+
+import (
+	"math"
+
+	"duskline/spectrum"
+)
+
+// flatRun is the number of pixels in a row that only padding leaves equal, or
+// smooth.
+const flatRun = 5
+
+// blankEnds takes the weight from padding at both ends: runs of five or more
+// pixels of exactly equal flux whose errors are equal too, absent or zero; and,
+// where the spectrum scatters as its errors say, runs that are smooth to a
+// hundredth of their errors (padding that went through a flux calibration).
+func blankEnds(seg *spectrum.Segment, hasErrors bool) {
+	n := len(seg.Flux)
+	flat := func(i, j int) bool {
+		return seg.Flux[i] == seg.Flux[j] &&
+			(!hasErrors || seg.Flux[i] == 0 || seg.Ivar[i] == 0 || seg.Ivar[j] == 0 || seg.Ivar[i] == seg.Ivar[j])
+	}
+	noisy := hasErrors && typicalRatio(seg) > 0.1
+	smooth := func(i int) bool { // pixel i against its neighbors
+		d := 2*seg.Flux[i] - seg.Flux[i-1] - seg.Flux[i+1]
+		return seg.Ivar[i] == 0 || d*d*seg.Ivar[i] < 1e-4
+	}
+	first, last := 1, n-1
+	for first < n && flat(first-1, first) {
+		first++
+	}
+	for last > 0 && flat(last-1, last) {
+		last--
+	}
+	if noisy {
+		k := 1
+		for k+1 < n && smooth(k) {
+			k++
+		}
+		first = max(first, k)
+		k = n - 2
+		for k > 0 && smooth(k) {
+			k--
+		}
+		last = min(last, k+1)
+	}
+	if first >= flatRun {
+		clear(seg.Ivar[:first])
+	}
+	if n-last >= flatRun {
+		clear(seg.Ivar[last:])
+	}
+}
+
+// typicalRatio is the median of |2 f(i) - f(i-1) - f(i+1)| over its error.
+func typicalRatio(seg *spectrum.Segment) float64 {
+	var q []float64
+	for i := 1; i+1 < len(seg.Flux); i++ {
+		if w := seg.Ivar[i]; w > 0 {
+			if r := math.Abs(2*seg.Flux[i]-seg.Flux[i-1]-seg.Flux[i+1]) * math.Sqrt(w); r-r == 0 {
+				q = append(q, r)
+			}
+		}
+	}
+	return medianOf(q)
+}
+
+// applyMask takes the weight from pixels that flags call bad.
+//
+// Flags whose meaning is standard always count: "good" columns and logicals, IVOA
+// Quality, and bits that the header declares to be serious. Other integers with
+// many bits flag much that is harmless; they count only where the errors do not
+// mark bad pixels themselves (marksBad), and not where they would take more than
+// half of the pixels that are left.
+func applyMask(ivar, flags []float64, m maskPlan, marksBad bool) {
+	bad := func(v float64) bool {
+		switch {
+		case v != v:
+			return true // null flag
+		case m.role == roleGood:
+			return v == 0
+		case m.bits != 0:
+			return int64(v)&m.bits != 0
+		}
+		return v != 0
+	}
+	binary := true
+	left, lost := 0, 0
+	for i, v := range flags {
+		if v != 0 && v != 1 && v == v {
+			binary = false
+		}
+		if ivar[i] > 0 {
+			left++
+			if bad(v) {
+				lost++
+			}
+		}
+	}
+	standard := m.stated || m.role == roleGood || m.bits != 0 || m.role == roleQuality && binary || m.isIVOA()
+	if !standard && (marksBad || 2*lost > left) || !m.stated && lost == left {
+		return
+	}
+	for i, v := range flags {
+		if bad(v) {
+			ivar[i] = 0
+		}
+	}
+}
+
+// isIVOA reports a column that is the data model's quality by utype, UCD or name.
+func (m maskPlan) isIVOA() bool {
+	c := m.at.col
+	if c == nil || m.role != roleQuality {
+		return false
+	}
+	r, _ := roleOfUCD(c.utype, c.ucd)
+	return r == roleQuality || bare(c.name) == "quality"
+}
+
+// sigmaToFWHM is 2 sqrt(2 ln 2).
+const sigmaToFWHM = 2.3548200450309493
+
+// resolvingPower turns what the file says about the resolution into R = lambda /
+// FWHM per pixel. Values that are missing take the nearest good one; nil when
+// none is good.
+func resolvingPower(seg *spectrum.Segment, v []float64, a *arm) []float64 {
+	if v == nil {
+		if a.power > 0 {
+			return []float64{a.power}
+		}
+		return nil
+	}
+	n := len(seg.Wave)
+	good := false
+	for i, x := range v {
+		r := x
+		switch a.resRole {
+		case roleFWHM:
+			r = seg.Wave[i] / x
+		case roleDisp:
+			lo, hi := max(i-1, 0), min(i+1, n-1)
+			pixel := (seg.Wave[hi] - seg.Wave[lo]) / float64(hi-lo)
+			r = seg.Wave[i] / (sigmaToFWHM * x * pixel)
+		}
+		if !(x > 0 && r > 1 && r < 1e7) {
+			r = 0
+		}
+		v[i] = r
+		good = good || r > 0
+	}
+	if !good {
+		return nil
+	}
+	last := 0.0
+	for i := range v {
+		if v[i] > 0 {
+			last = v[i]
+		} else {
+			v[i] = last
+		}
+	}
+	for i := n - 1; i >= 0; i-- {
+		if v[i] > 0 {
+			last = v[i]
+		} else {
+			v[i] = last
+		}
+	}
+	return v
+}
+
+// kernelSigma reads an object's plane of line spread functions, a line an offset
+// in pixels, and returns their sigma in pixels, from the second moment of what is
+// positive; NaN where that is no width.
+func (f *File) kernelSigma(p place, row int64) ([]float64, error) {
+	n, offsets := p.hdu.axes[0], p.hdu.axes[1]
+	if p.hdu.axes[2] == 1 {
+		row = 0
+	}
+	v, err := f.imageLine(p.hdu, row*n*offsets, n*offsets)
+	if err != nil {
+		return nil, err
+	}
+	sigma := make([]float64, n)
+	for i := range sigma {
+		var sum, first, second float64
+		for k := range offsets {
+			if w := v[k*n+int64(i)]; w > 0 {
+				x := float64(k)
+				sum, first, second = sum+w, first+w*x, second+w*x*x
+			}
+		}
+		mean := first / sum
+		sigma[i] = math.Sqrt(second/sum - mean*mean)
+	}
+	return sigma, nil
+}

@@ -1,0 +1,167 @@
+package fitsread
+
+import (
+	"math"
+)
+
+// Robust noise of a spectrum after Stoehr et al. 2008 (ADASS XVII, ASP Conf. Ser.
+// 394, 505): sigma = 1.482602/sqrt(6) median |2 f(i) - f(i-2) - f(i+2)|. Pixels
+// two apart are compared because neighbors are often correlated.
+const (
+	madToSigma = 1.482602
+	stoehr     = madToSigma / 2.449489742783178
+)
+
+// scatter returns the noise of flux as a whole; NaN pixels are skipped. It is 0
+// where fewer than five pixels allow no estimate.
+func scatter(flux []float64) float64 {
+	return stoehr * medianOf(differences(nil, flux, nil))
+}
+
+// differences appends |2 f(i) - f(i-2) - f(i+2)| of finite pixels to dst; where
+// ivar is given, only of pixels with weight.
+func differences(dst, flux, ivar []float64) []float64 {
+	for i := 2; i+2 < len(flux); i++ {
+		if ivar != nil && !(ivar[i-2] > 0 && ivar[i] > 0 && ivar[i+2] > 0) {
+			continue
+		}
+		if d := math.Abs(2*flux[i] - flux[i-2] - flux[i+2]); d-d == 0 {
+			dst = append(dst, d)
+		}
+	}
+	return dst
+}
+
+// medianOf reorders v, which has no NaN, and returns its median, the upper one
+// of an even number, 0 for none. It selects (Hoare 1961) rather than sorts.
+func medianOf(v []float64) float64 {
+	if len(v) == 0 {
+		return 0
+	}
+	k := len(v) / 2
+	for lo, hi := 0, len(v)-1; lo < hi; {
+		pivot := v[lo+(hi-lo)/2]
+		i, j := lo, hi
+		for i <= j {
+			for v[i] < pivot {
+				i++
+			}
+			for v[j] > pivot {
+				j--
+			}
+			if i <= j {
+				v[i], v[j] = v[j], v[i]
+				i++
+				j--
+			}
+		}
+		switch {
+		case k <= j:
+			hi = j
+		case k >= i:
+			lo = i
+		default:
+			return v[k]
+		}
+	}
+	return v[k]
+}
+
+func medianPositive(v []float64) float64 {
+	var p []float64
+	for _, x := range v {
+		if x > 0 && !math.IsInf(x, 0) {
+			p = append(p, x)
+		}
+	}
+	return medianOf(p)
+}
+
+// noiseWindow is the number of pixels over which noise is taken as constant:
+// wide enough for the median (5 % error), narrow enough to follow the throughput
+// and the sky of a spectrograph.
+const noiseWindow = 300
+
+// noiseFloor is the least noise relative to the typical flux that an estimate
+// may give: models and smoothed library spectra have none, and infinite weights
+// help nobody.
+const noiseFloor = 1e-3
+
+// estimateIvar fills ivar, where it is positive, with the inverse variance that
+// the local scatter of the flux shows: scatter in windows of 300 pixels,
+// interpolated linearly between their centers, not below 1e-3 of the median
+// absolute flux.
+func estimateIvar(flux, ivar []float64) {
+	n := len(flux)
+	var level []float64
+	for i, v := range flux {
+		if ivar[i] > 0 {
+			level = append(level, math.Abs(v))
+		}
+	}
+	floor := noiseFloor * medianOf(level)
+	windows := max(1, (n+noiseWindow/2)/noiseWindow)
+	sigma := make([]float64, windows)
+	var scratch []float64
+	whole := stoehr * medianOf(differences(nil, flux, ivar))
+	for k := range sigma {
+		lo, hi := k*n/windows, (k+1)*n/windows
+		scratch = differences(scratch[:0], flux[lo:hi], ivar[lo:hi])
+		sigma[k] = whole
+		if len(scratch) >= 20 {
+			sigma[k] = stoehr * medianOf(scratch)
+		}
+		sigma[k] = math.Max(sigma[k], floor)
+	}
+	for i := range ivar {
+		if !(ivar[i] > 0) {
+			continue
+		}
+		x := (float64(i)+0.5)*float64(windows)/float64(n) - 0.5
+		k := min(max(int(math.Floor(x)), 0), max(windows-2, 0))
+		s := sigma[k]
+		if windows > 1 {
+			t := math.Min(math.Max(x-float64(k), 0), 1)
+			s += t * (sigma[k+1] - sigma[k])
+		}
+		ivar[i] = 0
+		if w := 1 / (s * s); s > 0 && !math.IsInf(w, 0) {
+			ivar[i] = w
+		}
+	}
+}
+
+// scatterRatio compares the scatter of the flux with the stated errors: the
+// median of |2 f(i) - f(i-2) - f(i+2)| over its expected error, times 1.4826, is
+// 1 for independent errors that are right. suspect is true below 1/3 and above 3.
+// Where it is above, only pixels below S/N 20 count, since at higher S/N the
+// lines of the object itself scatter more than its noise; 100 pixels must remain.
+func scatterRatio(flux, ivar []float64) (ratio float64, suspect bool) {
+	var all, faint []float64
+	for i := 2; i+2 < len(flux); i++ {
+		a, b, c := ivar[i-2], ivar[i], ivar[i+2]
+		if !(a > 0 && b > 0 && c > 0) {
+			continue
+		}
+		q := math.Abs(2*flux[i]-flux[i-2]-flux[i+2]) / math.Sqrt(4/b+1/a+1/c)
+		if q-q != 0 {
+			continue
+		}
+		all = append(all, q)
+		if flux[i]*flux[i]*b < 20*20 {
+			faint = append(faint, q)
+		}
+	}
+	const least = 100
+	if len(all) < least {
+		return 0, false
+	}
+	if ratio = madToSigma * medianOf(all); ratio < 1.0/3 {
+		return ratio, true
+	}
+	if ratio > 3 && len(faint) >= least {
+		ratio = madToSigma * medianOf(faint)
+		return ratio, ratio > 3
+	}
+	return ratio, false
+}

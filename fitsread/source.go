@@ -1,0 +1,103 @@
+package fitsread
+
+import (
+	"bytes"
+	"compress/gzip"
+	"errors"
+	"io"
+	"io/fs"
+	"os"
+)
+
+// source is the file behind a File: on disk, or unpacked in memory.
+type source struct {
+	io.ReaderAt
+	size    int64
+	file    *os.File // nil when unpacked or given as bytes
+	gzipped bool
+}
+
+const hintCopy = "fetch or copy the file again"
+
+// openSource opens a regular file. Anything else (folder, device, pipe) is
+// refused by its type before it is opened, since opening a pipe would block.
+func openSource(path string, maxUnpacked int64) (*source, error) {
+	info, err := os.Stat(path)
+	if err != nil {
+		return nil, osFault(err)
+	}
+	if !info.Mode().IsRegular() {
+		return nil, fault(ErrNotRegular, -1, "give a FITS file", "%s", describeMode(info.Mode()))
+	}
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, osFault(err)
+	}
+	// The path may have changed hands between Stat and Open.
+	info, err = f.Stat()
+	if err != nil || !info.Mode().IsRegular() {
+		f.Close()
+		return nil, fault(ErrNotRegular, -1, "give a FITS file", "it changed into something else while it was opened")
+	}
+	src := &source{ReaderAt: f, size: info.Size(), file: f}
+	var magic [2]byte
+	if n, _ := f.ReadAt(magic[:], 0); n == 2 && magic[0] == 0x1f && magic[1] == 0x8b {
+		data, err := unpack(f, maxUnpacked)
+		f.Close()
+		if err != nil {
+			return nil, err
+		}
+		return &source{ReaderAt: bytes.NewReader(data), size: int64(len(data)), gzipped: true}, nil
+	}
+	return src, nil
+}
+
+func (s *source) close() error {
+	if s.file == nil {
+		return nil
+	}
+	return s.file.Close()
+}
+
+func osFault(err error) *ReadError {
+	hint, msg := "check the path", err.Error()
+	var pe *fs.PathError
+	if errors.As(err, &pe) {
+		msg = "cannot be opened: " + pe.Err.Error()
+	}
+	if errors.Is(err, fs.ErrPermission) {
+		hint = "give read permission"
+	}
+	return &ReadError{HDU: -1, Row: -1, Msg: msg, Hint: hint, Err: err}
+}
+
+func describeMode(m fs.FileMode) string {
+	switch {
+	case m.IsDir():
+		return "this is a folder, not a file"
+	case m&fs.ModeNamedPipe != 0:
+		return "this is a pipe, not a file"
+	case m&fs.ModeDevice != 0:
+		return "this is a device, not a file"
+	}
+	return "this is not a regular file"
+}
+
+// unpack inflates a gzip stream of at most limit bytes. The size that the
+// stream claims for itself is not believed.
+func unpack(r io.Reader, limit int64) ([]byte, error) {
+	z, err := gzip.NewReader(r)
+	if err != nil {
+		return nil, fault(ErrTruncated, -1, hintCopy, "the gzip stream cannot be read: %v", err)
+	}
+	var buf bytes.Buffer
+	n, err := io.Copy(&buf, io.LimitReader(z, limit+1))
+	switch {
+	case n > limit:
+		return nil, fault(ErrTooLarge, -1, "unpack it with gunzip, or raise the limit",
+			"it unpacks to more than %d bytes", limit)
+	case err != nil:
+		return nil, fault(ErrTruncated, -1, hintCopy, "the gzip stream breaks off after %d bytes: %v", n, err)
+	}
+	return buf.Bytes(), nil
+}
