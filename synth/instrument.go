@@ -165,10 +165,14 @@ func (a *arm) expose(r *rand.Rand, signal, noise []float64, bright float64) pixe
 func (p *pixels) damage(r *rand.Rand) {
 	n := len(p.flux)
 	for range r.IntN(1 + n/700) {
-		i, length := r.IntN(n), 1+r.IntN(3)
-		found := r.Float64() < 0.6
+		// The reduction finds most hits; what it leaves is fainter.
+		i, length, height := r.IntN(n), 1+r.IntN(3), 10+60*r.ExpFloat64()
+		found := r.Float64() < 0.92
+		if !found {
+			length, height = 1+r.IntN(2), 6+12*r.ExpFloat64()
+		}
 		for k := i; k < min(i+length, n); k++ {
-			p.flux[k] += (10 + 60*r.ExpFloat64()) / math.Sqrt(p.ivar[k])
+			p.flux[k] += height / math.Sqrt(p.ivar[k])
 			p.bad[k] = p.bad[k] || found
 		}
 	}
