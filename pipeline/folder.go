@@ -18,7 +18,7 @@ const (
 
 // The other files of a run folder beside the plan.
 const (
-	settingsName = "plan.toml"    // effective settings, for people
+	settingsName = "plan.toml"    // settings that the results depend on, for people
 	blocksName   = "blocks"       // one folder a finished block
 	unfinished   = ".unfinished-" // begins the name of what is not whole yet
 	logName      = "run.log"      // times and messages, see LogFile

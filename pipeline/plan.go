@@ -38,7 +38,7 @@ type planHead struct {
 	BlockSize int               `json:"block_size"`
 	Limit     int64             `json:"limit"`    // largest number of spectra, 0 for all
 	Digests   map[string]string `json:"digests"`  // recipes, line list, layouts, settings
-	Settings  string            `json:"settings"` // effective settings as TOML
+	Settings  string            `json:"settings"` // essential settings as TOML
 	Layouts   []LayoutText      `json:"layouts,omitempty"`
 }
 

@@ -142,7 +142,19 @@ func Prepare(ctx context.Context, job Job) (*Run, error) {
 			return nil, err
 		}
 	}
-	return run, nil
+	return run, run.showSettings()
+}
+
+// showSettings writes the settings of the plan where people find them.
+func (r *Run) showSettings() error {
+	path := filepath.Join(r.out, settingsName)
+	if _, err := os.Stat(path); !errors.Is(err, fs.ErrNotExist) {
+		return err
+	}
+	return writeAtomic(path, func(w io.Writer) error {
+		_, err := io.WriteString(w, r.head.Settings)
+		return err
+	})
 }
 
 // Objects returns the number of spectra in the plan.
@@ -164,7 +176,7 @@ func (j *Job) head() (planHead, error) {
 	}
 	return planHead{Format: planFormat, Version: planVersion, Program: j.Program, Folder: j.Base,
 		BlockSize: j.Settings.Run.BlockSize, Limit: j.Limit, Digests: digests,
-		Layouts: j.Layouts, Settings: string(j.Settings.TOML())}, nil
+		Layouts: j.Layouts, Settings: string(j.Settings.Essential().TOML())}, nil
 }
 
 // workers returns how many objects are worked on at the same time.
@@ -219,7 +231,7 @@ func checkFolder(out, name string) (bool, error) {
 	}
 	for _, e := range entries {
 		// A command that was killed while it planned leaves no more than this.
-		if n := e.Name(); n != settingsName && n != logName && !strings.HasPrefix(n, unfinished) {
+		if n := e.Name(); !strings.HasPrefix(n, unfinished) {
 			return false, inputError("%s holds %s and no run of duskline; give a new or an empty folder as --out", name, n)
 		}
 	}
@@ -278,12 +290,6 @@ func (r *Run) makePlan(ctx context.Context, head planHead) error {
 	}
 	if totals.Objects == 0 {
 		return inputError("no FITS file (*.fits, *.fit, *.fts, also with .gz) in %s; give another PATH", strings.Join(r.job.Paths, ", "))
-	}
-	if err := writeAtomic(filepath.Join(r.out, settingsName), func(w io.Writer) error {
-		_, err := w.Write(r.job.Settings.TOML())
-		return err
-	}); err != nil {
-		return err
 	}
 	return r.linkPlan(ctx, tmp, head)
 }

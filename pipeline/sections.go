@@ -1,5 +1,10 @@
 package pipeline
 
+import (
+	"duskline/continuum"
+	"duskline/redshift"
+)
+
 // Settings is everything that a settings file can say. Each section is a
 // struct; each field is a key with these tags:
 //
@@ -29,16 +34,93 @@ type RunSettings struct {
 }
 
 // GridSettings is section [grid].
-type GridSettings struct{}
+type GridSettings struct {
+	Step    float64 `toml:"step" min:"2e-5" max:"1e-3"`
+	MinWave float64 `toml:"min_wave" min:"100" max:"1e6"`
+	MaxWave float64 `toml:"max_wave" min:"100" max:"1e6"`
+}
+
+func (g GridSettings) check() []Problem {
+	if g.MinWave < g.MaxWave {
+		return nil
+	}
+	return []Problem{{"grid.min_wave", "must be less than grid.max_wave"}}
+}
 
 // ContinuumSettings is section [continuum].
-type ContinuumSettings struct{}
+type ContinuumSettings struct {
+	KnotSpacing float64 `toml:"knot_spacing" min:"0.002" max:"0.5"`
+	ClipLow     float64 `toml:"clip_low" min:"0" max:"100"`
+	ClipHigh    float64 `toml:"clip_high" min:"0" max:"100"`
+	Iterations  int     `toml:"iterations" min:"1" max:"100"`
+	MaskWidths  float64 `toml:"mask_widths" min:"0" max:"10"`
+}
 
 // RedshiftSettings is section [redshift].
-type RedshiftSettings struct{}
+type RedshiftSettings struct {
+	SearchFrom    float64   `toml:"search_from" min:"100" max:"1e6"`
+	SearchTo      float64   `toml:"search_to" min:"100" max:"1e6"`
+	TemplateFloor float64   `toml:"template_floor" min:"0" max:"0.5"`
+	Stiffness     float64   `toml:"stiffness" min:"0" max:"1"`
+	Temper        int       `toml:"temper" min:"0" max:"1000"`
+	Nominees      int       `toml:"nominees" min:"1" max:"200"`
+	MinPixels     int       `toml:"min_pixels" min:"20" max:"100000"`
+	SkyBands      []float64 `toml:"sky_bands" min:"100" max:"1e6"`
+}
+
+func (r RedshiftSettings) check() []Problem {
+	var problems []Problem
+	if r.SearchFrom >= r.SearchTo {
+		problems = append(problems, Problem{"redshift.search_from", "must be less than redshift.search_to"})
+	}
+	if len(r.SkyBands)%2 != 0 {
+		problems = append(problems, Problem{"redshift.sky_bands", "wants pairs of first and last wavelength"})
+	}
+	return problems
+}
 
 // LinesSettings is section [lines].
-type LinesSettings struct{}
+type LinesSettings struct {
+	WindowKms float64 `toml:"window_kms" min:"100" max:"30000"`
+	MinGood   float64 `toml:"min_good" min:"0.1" max:"1"`
+}
 
 // VerdictSettings is section [verdict].
-type VerdictSettings struct{}
+type VerdictSettings struct {
+	SecureConfidence float64 `toml:"secure_confidence" min:"0.5" max:"1"`
+	SecureLines      int     `toml:"secure_lines" min:"0" max:"50"`
+	NoneConfidence   float64 `toml:"none_confidence" min:"0" max:"1"`
+	GapScale         float64 `toml:"gap_scale" min:"0.1" max:"1000"`
+	TiedGap          float64 `toml:"tied_gap" min:"0" max:"1000"`
+	MisfitChi2       float64 `toml:"misfit_chi2" min:"1" max:"1e6"`
+	HopelessChi2     float64 `toml:"hopeless_chi2" min:"1" max:"1e9"`
+	FaintSNR         float64 `toml:"faint_snr" min:"0" max:"100"`
+}
+
+// finderOptions turns the settings into those of package redshift.
+func (s Settings) finderOptions() redshift.Options {
+	opt := redshift.Options{
+		KnotSpacing: s.Continuum.KnotSpacing, Floor: s.Redshift.TemplateFloor, Stiffness: s.Redshift.Stiffness, Temper: s.Redshift.Temper,
+		ClipSpikes: spikeClip, Nominees: s.Redshift.Nominees, MinPixels: s.Redshift.MinPixels,
+		SearchFrom: s.Redshift.SearchFrom, SearchTo: s.Redshift.SearchTo,
+	}
+	for i := 0; i+1 < len(s.Redshift.SkyBands); i += 2 {
+		opt.SkyBands = append(opt.SkyBands, [2]float64{s.Redshift.SkyBands[i], s.Redshift.SkyBands[i+1]})
+	}
+	return opt
+}
+
+// spikeClip is the distance in sigmas from which a pixel does not shape the
+// continuum of the redshift search.
+const spikeClip = 6
+
+func (s Settings) thresholds() redshift.Thresholds {
+	v := s.Verdict
+	return redshift.Thresholds{SecureConfidence: v.SecureConfidence, SecureLines: v.SecureLines, NoneConfidence: v.NoneConfidence,
+		GapScale: v.GapScale, MisfitChi2: v.MisfitChi2, HopelessChi2: v.HopelessChi2, TiedGap: v.TiedGap, FaintSNR: v.FaintSNR}
+}
+
+func (s Settings) continuumOptions() continuum.Options {
+	c := s.Continuum
+	return continuum.Options{Spacing: c.KnotSpacing, ClipLow: c.ClipLow, ClipHigh: c.ClipHigh, Iterations: c.Iterations}
+}

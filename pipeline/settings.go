@@ -73,12 +73,17 @@ func (s Settings) TOML() []byte {
 	return b
 }
 
-// Digest identifies the settings that results depend on: the first 16
-// hexadecimal digits of the SHA-256 of their TOML text, keys marked free left
-// at zero.
-func (s Settings) Digest() string {
+// Essential returns the settings with the keys marked free left at zero: what
+// results depend on.
+func (s Settings) Essential() Settings {
 	clearFree(reflect.ValueOf(&s).Elem())
-	sum := sha256.Sum256(s.TOML())
+	return s
+}
+
+// Digest identifies the settings that results depend on: the first 16
+// hexadecimal digits of the SHA-256 of their TOML text.
+func (s Settings) Digest() string {
+	sum := sha256.Sum256(s.Essential().TOML())
 	return hex.EncodeToString(sum[:8])
 }
 

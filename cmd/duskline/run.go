@@ -84,7 +84,9 @@ func (c *runCmd) job(a *app) (pipeline.Job, error) {
 			job.Limit = planned.Limit
 		}
 	}
-	job.Settings.Run.Workers = c.Workers
+	if c.Workers != 0 {
+		job.Settings.Run.Workers = c.Workers
+	}
 	return job, nil
 }
 
