@@ -30,6 +30,7 @@ type Family struct {
 	ZMax    float64
 	Widths  []float64
 
+	floor      float64 // km/s, least error of a redshift
 	components []component
 	expected   []expectedLine
 }

@@ -72,21 +72,22 @@ func (f *Finder) Families() []*Family { return f.families }
 
 // Scratch holds the buffers of one worker.
 type Scratch struct {
-	fit     continuum.Fitter
-	x       []float64
-	full    level
-	coarse  level
-	bench   bench
-	scan    scanner
-	shifts  []float64
-	peaks   []peak
-	tmp     []float64
-	smooth  []float64
-	dropLag []float64
-	excess  []float64
-	scaled  []float64 // flux in the units of the levels
-	weight  []float64 // weights before they are tempered
-	basis   continuum.Basis
+	fit      continuum.Fitter
+	x        []float64
+	full     level
+	coarse   level
+	bench    bench
+	scan     scanner
+	shifts   []float64
+	peaks    []peak
+	tmp      []float64
+	smooth   []float64
+	dropLag  []float64
+	features []feature
+	excess   []float64
+	scaled   []float64 // flux in the units of the levels
+	weight   []float64 // weights before they are tempered
+	basis    continuum.Basis
 }
 
 // NewScratch returns scratch for one worker.
@@ -300,7 +301,7 @@ func (f *Finder) judge(s *Scratch) {
 	kept := s.peaks[:0]
 	count := map[*Family]int{}
 	for _, p := range s.peaks {
-		if p.score > 0.4*best+30 || count[p.family] >= 8 {
+		if p.score > 0.4*best+30 || count[p.family] >= 14 {
 			continue
 		}
 		dup := false
@@ -336,9 +337,9 @@ func (f *Finder) judge(s *Scratch) {
 	}
 }
 
-// temper lowers the weights where no family describes the data: each weight is
+// temper lowers the weights where no peak describes the data: each weight is
 // divided by the mean of w r^2 over its neighborhood, taken from whichever
-// family fits best there, when that exceeds one. The forest, broad absorption
+// peak fits best there, when that exceeds one. The forest, broad absorption
 // or a bad stretch then no longer decides between families by chance
 // agreements, and the gap is in units of what the best models leave. The
 // weights stay the same for all families. It reports whether any changed much.
@@ -349,13 +350,8 @@ func (f *Finder) temper(s *Scratch) bool {
 	for i := range s.excess {
 		s.excess[i] = math.Inf(1)
 	}
-	seen := map[*Family]bool{}
 	for i := range s.peaks {
 		p := &s.peaks[i]
-		if seen[p.family] {
-			continue
-		}
-		seen[p.family] = true
 		fit := s.bench.evaluate(l, p.family, p.width, p.shift)
 		s.bench.residual(s.tmp, l, len(p.family.components), &fit.amp)
 		sum, count := 0.0, 0

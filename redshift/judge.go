@@ -1,6 +1,9 @@
 package redshift
 
-import "math"
+import (
+	"math"
+	"slices"
+)
 
 // Verdict is the final word on a redshift.
 type Verdict int
@@ -15,18 +18,71 @@ const (
 // String returns "none", "uncertain" or "secure".
 func (v Verdict) String() string { return [...]string{"none", "uncertain", "secure"}[v] }
 
-// Judge sets confidence and verdict of a result. This first confidence comes
-// from the gap alone, in units of the misfit.
-func Judge(r *Result) {
+// Thresholds steers Judge. Start from DefaultThresholds.
+type Thresholds struct {
+	SecureConfidence float64 // least confidence of a secure redshift
+	SecureLines      int     // least number of features that stand out by themselves
+	NoneConfidence   float64 // below this confidence and without a feature the verdict is none
+	GapScale         float64 // the gap over which the chance of a wrong answer falls by e
+	MisfitChi2       float64 // chi^2 per degree of freedom from which a fit is a misfit
+	TiedGap          float64 // gap below which the rival is tied
+	FaintSNR         float64 // signal-to-noise a pixel below which a spectrum without features is faint
+}
+
+// DefaultThresholds returns the settings of the first confidence: a wrong
+// answer is as likely as a right one without a gap, and its chance falls by e
+// for each 4.5 units of score, in units of the misfit. Scale and limits were
+// set by hand on open survey spectra with published redshifts; they are not a
+// calibration.
+func DefaultThresholds() Thresholds {
+	return Thresholds{SecureConfidence: 0.99, SecureLines: 2, NoneConfidence: 0.8, GapScale: 4.5,
+		MisfitChi2: 5, TiedGap: 9, FaintSNR: 1}
+}
+
+// Judge sets Confidence, Verdict and the doubts that follow from thresholds.
+func (t Thresholds) Judge(r *Result) {
+	r.Confidence = 0
 	if !r.Found {
 		r.Verdict = None
+		r.Faint = r.SNR < t.FaintSNR
 		return
 	}
-	r.Confidence = 1 - 0.5*math.Exp(-r.Gap/4.5)
+	r.Confidence = 1 - 0.5*math.Exp(-r.Gap/(t.GapScale*math.Max(1, r.Chi2Dof)))
+	r.Tied = r.Gap < t.TiedGap
+	r.Misfit = r.Chi2Dof > t.MisfitChi2
+	r.Faint = r.LinesSeen == 0 && r.SNR < t.FaintSNR
+	r.LoneLine = r.LinesSeen == 1
+	r.Unseen = r.LinesExpected > 0 && 2*r.LinesCovered < r.LinesExpected
 	switch {
-	case r.Confidence > 0.99 && r.LinesSeen >= 2:
+	case r.Confidence >= t.SecureConfidence && r.LinesSeen >= t.SecureLines && !r.RangeEnd:
 		r.Verdict = Secure
+	case r.LinesSeen == 0 && r.Confidence < t.NoneConfidence:
+		r.Verdict = None
 	default:
 		r.Verdict = Uncertain
 	}
 }
+
+// countFeatures counts the lines that stand out by themselves, lines that
+// overlap within their widths as one.
+func countFeatures(lines []feature) int {
+	slices.SortFunc(lines, func(a, b feature) int {
+		switch {
+		case a.center < b.center:
+			return -1
+		case a.center > b.center:
+			return 1
+		}
+		return 0
+	})
+	n := 0
+	for i, f := range lines {
+		if i == 0 || f.center-lines[i-1].center > f.sigma+lines[i-1].sigma {
+			n++
+		}
+	}
+	return n
+}
+
+// feature is a line that stands out, in pixels.
+type feature struct{ center, sigma float64 }

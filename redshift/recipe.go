@@ -22,6 +22,9 @@ type Recipe struct {
 	Summary  string    `toml:"summary"`
 	Redshift []float64 `toml:"redshift"` // first and last redshift
 	Widths   []float64 `toml:"widths"`   // Gaussian sigma of the lines, km/s; the family is tried with each
+	// Floor is the least one-sigma error of a redshift in km/s: what line
+	// shifts, blends and shapes leave however good the spectrum is.
+	Floor float64 `toml:"floor_kms"`
 	// Expected names the lines that should stand out when the family is right
 	// and the lines are covered.
 	Expected   []string          `toml:"expected"`
@@ -119,10 +122,13 @@ func ParseRecipe(file string, text []byte, list *linelist.List) (*Family, error)
 			bad("widths: %g is outside 10 to 30000 km/s", w)
 		}
 	}
-	if len(r.Components) == 0 || len(r.Components) > maxComponents {
-		bad("%d components, want 1 to %d", len(r.Components), maxComponents)
+	if !(r.Floor >= 0 && r.Floor <= 3000) {
+		bad("floor_kms = %g, want 0 to 3000", r.Floor)
 	}
-	f := &Family{Name: r.Name, Class: r.Class, Summary: r.Summary, Widths: r.Widths}
+	if len(r.Components) == 0 || len(r.Components) >= maxComponents {
+		bad("%d components, want 1 to %d", len(r.Components), maxComponents-1)
+	}
+	f := &Family{Name: r.Name, Class: r.Class, Summary: r.Summary, Widths: r.Widths, floor: r.Floor}
 	if len(r.Redshift) == 2 {
 		f.ZMin, f.ZMax = r.Redshift[0], r.Redshift[1]
 	}

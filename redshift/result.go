@@ -26,20 +26,25 @@ type Result struct {
 	SNR           float64 // median over the pixels
 	PixelsUsed    int
 
-	LinesSeen    int // lines of the model that stand out by themselves
-	LinesCovered int // expected lines inside the coverage
-	LinesMissing int // expected lines that the model predicts but the data lack
+	LinesSeen     int // features of the model that stand out by themselves, blends as one
+	LinesExpected int // lines that should stand out in a member of the family
+	LinesCovered  int // those of them inside the coverage
+	LinesMissing  int // lines that the model predicts strongly and the data lack
 
-	FewPixels, BelowZero, RangeEnd, Scattered, OnSkyLine bool
-	Reason                                               string
-	Verdict                                              Verdict
-	Lines                                                []LineEvidence
+	// Doubts that finding raises, and those that Judge adds.
+	FewPixels, BelowZero, RangeEnd, Scattered bool
+	Faint, Tied, LoneLine, Misfit, Unseen     bool
+
+	Verdict Verdict
+	Reason  string // why nothing was found
+	Lines   []LineEvidence
 }
 
 // LineEvidence is what the data say about one line of the winning model.
 type LineEvidence struct {
 	Name   string
 	Wave   float64 // observed, Angstrom
+	Width  float64 // Gaussian sigma of the template, km/s
 	SNR    float64 // matched-filter signal-to-noise with the rest of the model taken out
 	Model  float64 // the same as the model predicts
 	Offset float64 // km/s against the redshift, NaN when not significant
@@ -47,7 +52,7 @@ type LineEvidence struct {
 }
 
 const (
-	seenSNR    = 4.0 // a line that stands out by itself
+	SeenSNR    = 4.0 // signal-to-noise from which a line stands out by itself
 	missingSNR = 6.0 // a line the model predicts with this and the data show with less than a third
 )
 
@@ -91,7 +96,8 @@ func (f *Finder) conclude(g *spectrum.Grid, s *Scratch, res *Result) {
 }
 
 // redshiftError is the one-sigma error from the curvature of the chi^2 drop,
-// with the weights lowered where the model fails, which widens it.
+// with the weights lowered where the model fails, which widens it, and the
+// family's floor added in quadrature.
 func (f *Finder) redshiftError(s *Scratch, p *peak) float64 {
 	l := &s.full
 	delta := l.step
@@ -110,7 +116,7 @@ func (f *Finder) redshiftError(s *Scratch, p *peak) float64 {
 		}
 		delta = math.Max(0.02*l.step, math.Min(60*l.step, sigma))
 	}
-	return (1 + p.z()) * ln10 * sigma
+	return (1 + p.z()) * math.Hypot(ln10*sigma, p.family.floor/speedOfLight)
 }
 
 // evidence measures each line of the winning model by itself, from the
@@ -119,6 +125,7 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 	l := &s.full
 	res.Lines = res.Lines[:0]
 	d := &s.bench.draws[maxComponents-1]
+	s.features = s.features[:0]
 	for c := range p.family.components {
 		comp := &p.family.components[c]
 		if c == maxComponents-1 {
@@ -160,15 +167,15 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 			if tt <= 0 || good < 0.6*all {
 				continue
 			}
-			e := LineEvidence{Name: t.name, Wave: math.Pow(10, t.logWave+p.shift),
+			e := LineEvidence{Name: t.name, Wave: math.Pow(10, t.logWave+p.shift), Width: comp.sigmaKms(t, p.width),
 				SNR: tr / math.Sqrt(tt), Model: amp * t.amp * math.Sqrt(tt), Offset: math.NaN(), Err: math.NaN()}
-			if a := tr / tt; e.SNR > seenSNR && a > 0 && dd > 0 {
+			if a := tr / tt; e.SNR > SeenSNR && a > 0 && dd > 0 {
 				kms := l.step * ln10 * speedOfLight
 				e.Offset, e.Err = dr/(a*dd)*kms, kms/(a*math.Sqrt(dd))
 			}
 			res.Lines = append(res.Lines, e)
-			if amp > 0 && e.SNR >= seenSNR && e.SNR > 0.3*e.Model {
-				res.LinesSeen++
+			if amp > 0 && e.SNR >= SeenSNR && e.SNR > 0.3*e.Model {
+				s.features = append(s.features, feature{center, sigma})
 			}
 			if amp > 0 && t.name != "" && e.Model > missingSNR && e.SNR < e.Model/3 {
 				res.LinesMissing++
@@ -177,11 +184,13 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 		// A break or band that the data demand counts as one feature.
 		if amp > 0 && comp.dense() && len(comp.terms) == 0 {
 			gg := s.bench.g[c*maxComponents+c]
-			if amp*math.Sqrt(math.Max(0, gg)) > 2*seenSNR {
+			if amp*math.Sqrt(math.Max(0, gg)) > 2*SeenSNR {
 				res.LinesSeen++
 			}
 		}
 	}
+	res.LinesSeen += countFeatures(s.features)
+	res.LinesExpected = len(p.family.expected)
 	for _, e := range p.family.expected {
 		x := (e.logWave + p.shift - l.start) / l.step
 		if k := int(math.Round(x)); k >= 0 && k < l.n && l.weight[k] > 0 {

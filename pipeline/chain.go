@@ -1,0 +1,268 @@
+package pipeline
+
+import (
+	"fmt"
+	"io/fs"
+	"math"
+	"path"
+	"strings"
+
+	"duskline/catalog"
+	"duskline/configs"
+	"duskline/continuum"
+	"duskline/linelist"
+	"duskline/lines"
+	"duskline/redshift"
+	"duskline/spectrum"
+)
+
+// Chain is the science of a run: standard frame, grid, redshift, continuum,
+// lines and verdict, object by object. It is immutable and implements
+// Processor.
+type Chain struct {
+	set        Settings
+	list       *linelist.List
+	finder     *redshift.Finder
+	meter      *lines.Meter
+	thresholds redshift.Thresholds
+	digests    map[string]string
+}
+
+// NewChain builds the chain from the built-in line list and template families.
+func NewChain(set Settings) (*Chain, error) {
+	list, err := linelist.Parse(configs.Lines())
+	if err != nil {
+		return nil, err
+	}
+	c := &Chain{set: set, list: list, meter: lines.NewMeter(list), digests: map[string]string{"lines": list.Digest()}}
+	families, err := loadFamilies(configs.Families(), list, c.digests)
+	if err != nil {
+		return nil, err
+	}
+	c.finder, err = redshift.NewFinder(families, set.Grid.Step, set.finderOptions())
+	if err != nil {
+		return nil, err
+	}
+	c.thresholds = set.thresholds()
+	return c, nil
+}
+
+// loadFamilies reads every recipe of a folder in name order.
+func loadFamilies(folder fs.FS, list *linelist.List, digests map[string]string) ([]*redshift.Family, error) {
+	names, err := fs.Glob(folder, "*.toml")
+	if err != nil {
+		return nil, err
+	}
+	var families []*redshift.Family
+	for _, name := range names {
+		text, err := fs.ReadFile(folder, name)
+		if err != nil {
+			return nil, fmt.Errorf("template family: %w", err)
+		}
+		f, err := redshift.ParseRecipe(name, text, list)
+		if err != nil {
+			return nil, fmt.Errorf("template family: %w", err)
+		}
+		families = append(families, f)
+		digests["family "+strings.TrimSuffix(path.Base(name), ".toml")] = f.Digest
+	}
+	return families, nil
+}
+
+// Digests identifies the line list and every template family.
+func (c *Chain) Digests() map[string]string { return c.digests }
+
+// NewWorker returns a worker with scratch of its own.
+func (c *Chain) NewWorker() Worker { return c.NewBench() }
+
+// NewBench returns the worker as its own type, which also shows what it did.
+func (c *Chain) NewBench() *Bench {
+	return &Bench{
+		chain:   c,
+		gridder: spectrum.Gridder{Step: c.set.Grid.Step, MinWave: c.set.Grid.MinWave, MaxWave: c.set.Grid.MaxWave},
+		scratch: c.finder.NewScratch(),
+	}
+}
+
+// Bench is a worker of a Chain.
+type Bench struct {
+	chain    *Chain
+	gridder  spectrum.Gridder
+	grid     spectrum.Grid
+	scratch  *redshift.Scratch
+	fit      continuum.Fitter
+	measured lines.Scratch
+	x, ivar  []float64
+	arms     []lines.Arm
+	results  []lines.Result
+	haveCont bool
+}
+
+// Process takes one spectrum through the chain.
+func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
+	b.haveCont, b.results = false, b.results[:0]
+	s.ToStandard()
+	if k := b.chain.set.Redshift.SpikeSigmas; k > 0 {
+		s.MaskSpikes(k)
+	}
+	s.RescaleArms(minSharedPixels)
+	b.gridder.Grid(&b.grid, s)
+	res := b.chain.finder.Find(&b.grid, b.scratch)
+	b.chain.thresholds.Judge(&res)
+	obj := b.object(s, &res)
+	if res.Verdict == redshift.None {
+		return Outcome{Object: obj}
+	}
+	b.measure(s, &res)
+	for i := range b.results {
+		if b.results[i].OnSky && supports(&res, b.results[i].Name) {
+			obj.Flags |= catalog.OnSkyLine
+		}
+	}
+	return Outcome{Object: obj, Lines: lineRows(b.results)}
+}
+
+// minSharedPixels is the overlap that arms need before one is scaled to meet
+// the other.
+const minSharedPixels = 10
+
+// supports reports whether a line stands out in the winning model.
+func supports(res *redshift.Result, name string) bool {
+	for _, e := range res.Lines {
+		if e.Name == name && e.Model > 0 && e.SNR >= redshift.SeenSNR {
+			return true
+		}
+	}
+	return false
+}
+
+// measure fits the final continuum with the lines of the found redshift masked
+// and measures the lines on the spectrum's own pixels.
+func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) {
+	g := &b.grid
+	b.x, b.ivar = resized(b.x, g.Len()), resized(b.ivar, g.Len())
+	copy(b.ivar, g.Ivar)
+	for i := range b.x {
+		b.x[i] = g.LogWave(i)
+	}
+	b.maskLines(res)
+	opt := b.chain.set.continuumOptions()
+	if b.fit.Fit(b.x, g.Flux, b.ivar, opt) != nil {
+		// So much was masked that nothing holds the spline: lines and all.
+		copy(b.ivar, g.Ivar)
+		if b.fit.Fit(b.x, g.Flux, b.ivar, opt) != nil {
+			return
+		}
+	}
+	b.fit.Errors()
+	b.haveCont = true
+	if cap(b.arms) < len(s.Segments) {
+		b.arms = append(b.arms[:cap(b.arms)], make([]lines.Arm, len(s.Segments)-cap(b.arms))...)
+	}
+	b.arms = b.arms[:len(s.Segments)]
+	for k := range s.Segments {
+		seg, arm := &s.Segments[k], &b.arms[k]
+		n := seg.Len()
+		arm.Wave, arm.Flux, arm.Ivar, arm.Resolution = seg.Wave, seg.Flux, seg.Ivar, seg.Resolution
+		arm.Cont, arm.ContErr = resized(arm.Cont, n), resized(arm.ContErr, n)
+		basis := b.fit.Basis()
+		for i, w := range seg.Wave {
+			x := math.Log10(w)
+			if x < basis.Low-g.Step || x > basis.High+g.Step {
+				arm.Cont[i], arm.ContErr[i] = math.NaN(), math.NaN()
+				continue
+			}
+			arm.Cont[i], arm.ContErr[i] = b.fit.Value(x), b.fit.Sigma(x)
+		}
+	}
+	b.results = b.chain.meter.Measure(b.results, b.arms, lines.Options{
+		Z: res.Redshift, ZErr: res.RedshiftErr, Broad: res.Class == catalog.Quasar,
+		WidthGuess: math.Min(res.Width, maxWidthGuess), Sky: lines.SkyBands(),
+		WindowKms: b.chain.set.Lines.WindowKms, MinGood: b.chain.set.Lines.MinGood,
+	}, &b.measured)
+}
+
+// maxWidthGuess keeps the width of a line that is not seen, km/s, from that of
+// a quasar's broadest.
+const maxWidthGuess = 1500
+
+// maskLines takes the weight from pixels on lines that the winning model uses.
+func (b *Bench) maskLines(res *redshift.Result) {
+	g := &b.grid
+	for _, e := range res.Lines {
+		if e.Name == "" || e.Model < 1 {
+			continue
+		}
+		half := b.chain.set.Continuum.MaskWidths * math.Min(e.Width, maxMaskKms) / spectrum.SpeedOfLight
+		lo := int(math.Ceil((math.Log10(e.Wave*(1-half)) - g.Start) / g.Step))
+		hi := int(math.Floor((math.Log10(e.Wave*(1+half)) - g.Start) / g.Step))
+		for i := max(0, lo); i <= min(hi, g.Len()-1); i++ {
+			b.ivar[i] = 0
+		}
+	}
+}
+
+// maxMaskKms bounds the Gaussian sigma that a mask is made for: a mask wider
+// than the knot spacing leaves the spline without a hold.
+const maxMaskKms = 3000
+
+// object fills the row of the object table.
+func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Object {
+	o := catalog.Object{
+		ObjectID: s.ObjectID, SourceFile: s.SourceFile, SourceRow: int64(s.SourceRow), RA: s.RA, Dec: s.Dec,
+		Class: catalog.Unknown, Family: res.Family, Redshift: res.Redshift, RedshiftErr: res.RedshiftErr,
+		Confidence: res.Confidence, Verdict: res.Verdict.String(), RivalRedshift: res.RivalRedshift, RivalFamily: res.RivalFamily,
+		Gap: res.Gap, RStat: res.RStat, LinesSeen: int32(res.LinesSeen), SNR: res.SNR, PixelsUsed: int32(res.PixelsUsed),
+		WaveMin: math.NaN(), WaveMax: math.NaN(), Chi2Dof: res.Chi2Dof,
+		VelocityFrame: s.Frame.String(), BaryVelocity: s.BaryVelocity,
+	}
+	if res.Class != "" && res.Verdict != redshift.None {
+		o.Class = res.Class
+	}
+	if n, first, last := b.grid.Good(); n > 0 {
+		o.WaveMin, o.WaveMax = math.Pow(10, b.grid.LogWave(first)), math.Pow(10, b.grid.LogWave(last))
+	}
+	for _, d := range []struct {
+		set  bool
+		flag catalog.Flags
+	}{
+		{res.FewPixels, catalog.FewPixels}, {res.Faint, catalog.Faint}, {res.Tied, catalog.Tied}, {res.RangeEnd, catalog.RangeEnd},
+		{res.LoneLine, catalog.LoneLine}, {res.Misfit, catalog.Misfit}, {res.Unseen, catalog.LinesUnseen},
+		{res.LinesMissing > 0, catalog.LinesMissing}, {res.BelowZero, catalog.BelowZero}, {res.Scattered, catalog.Scattered},
+		{s.Has(spectrum.MediumAssumed) || s.Has(spectrum.FrameAssumed) || s.Has(spectrum.FrameUncertain), catalog.FrameAssumed},
+		{s.Has(spectrum.NoiseEstimated), catalog.NoiseEstimated}, {s.Has(spectrum.WeightsSuspect), catalog.WeightsSuspect},
+	} {
+		if d.set {
+			o.Flags |= d.flag
+		}
+	}
+	var why []string
+	if res.Reason != "" {
+		why = append(why, res.Reason)
+	}
+	for _, w := range s.Warnings {
+		why = append(why, w.Text)
+	}
+	o.Reason = strings.Join(why, "; ")
+	return o
+}
+
+// lineRows copies measured lines into catalog rows.
+func lineRows(results []lines.Result) []catalog.Line {
+	rows := make([]catalog.Line, len(results))
+	for i, r := range results {
+		rows[i] = catalog.Line{
+			Line: r.Name, RestWave: r.RestWave, Kind: r.Kind, EWRest: r.EWRest, EWRestErr: r.EWRestErr, EWSum: r.EWSum, EWSumErr: r.EWSumErr,
+			Flux: r.Flux, FluxErr: r.FluxErr, OffsetKms: r.OffsetKms, OffsetErr: r.OffsetErr, WidthKms: r.WidthKms, WidthErr: r.WidthErr,
+			SNR: r.SNR, Continuum: r.Continuum, UpperLimit: r.UpperLimit, Blend: r.Blend, Pixels: int32(r.Pixels),
+		}
+	}
+	return rows
+}
+
+func resized(s []float64, n int) []float64 {
+	if cap(s) < n {
+		return make([]float64, n)
+	}
+	return s[:n]
+}

@@ -1,0 +1,272 @@
+package pipeline_test
+
+import (
+	"encoding/csv"
+	"math"
+	"os"
+	"path/filepath"
+	"runtime"
+	"sort"
+	"strconv"
+	"strings"
+	"testing"
+
+	"duskline/catalog"
+	"duskline/fitsread"
+	"duskline/pipeline"
+	"duskline/spectrum"
+
+	"golang.org/x/sync/errgroup"
+)
+
+// published is one row of the table of published answers that lies beside a
+// folder of open survey spectra.
+type published struct {
+	file, dataset, class, reliable string
+	z, zErr, snr                   float64
+}
+
+// sharedSpectra returns the folder of open spectra with published answers. The
+// test is skipped where there is none, unless skips are forbidden.
+func sharedSpectra(t *testing.T) string {
+	t.Helper()
+	root := os.Getenv("DUSKLINE_SHARED")
+	if root == "" {
+		root = filepath.Join("..", "..", "shared")
+	}
+	dir := filepath.Join(root, "spectra")
+	if _, err := os.Stat(filepath.Join(dir, "truth.csv")); err != nil {
+		if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
+			t.Fatalf("the folder of published spectra is missing and skips are forbidden: %v", err)
+		}
+		t.Skipf("no folder of published spectra at %s; set DUSKLINE_SHARED to its parent", dir)
+	}
+	return dir
+}
+
+func readPublished(t *testing.T, dir string) []published {
+	t.Helper()
+	f, err := os.Open(filepath.Join(dir, "truth.csv"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer f.Close()
+	rows, err := csv.NewReader(f).ReadAll()
+	if err != nil {
+		t.Fatal(err)
+	}
+	col := map[string]int{}
+	for i, name := range rows[0] {
+		col[name] = i
+	}
+	num := func(s string) float64 {
+		v, err := strconv.ParseFloat(strings.TrimLeft(s, "<>~"), 64)
+		if err != nil {
+			return math.NaN()
+		}
+		return v
+	}
+	var out []published
+	for _, r := range rows[1:] {
+		out = append(out, published{r[col["file"]], r[col["dataset"]], r[col["class"]], r[col["reliable"]],
+			num(r[col["redshift"]]), num(r[col["redshift_err"]]), num(r[col["snr_median"]])})
+	}
+	return out
+}
+
+// processAll runs every spectrum of every file through the chain with default
+// settings and returns, for each file, the most confident row, or the error
+// that reading gave.
+func processAll(t *testing.T, dir string, list []published) ([]catalog.Object, []error) {
+	t.Helper()
+	chain, err := pipeline.NewChain(pipeline.DefaultSettings())
+	if err != nil {
+		t.Fatal(err)
+	}
+	objects, errs := make([]catalog.Object, len(list)), make([]error, len(list))
+	var g errgroup.Group
+	workers := runtime.GOMAXPROCS(0)
+	for w := range workers {
+		g.Go(func() error {
+			worker := chain.NewWorker()
+			for i := w; i < len(list); i += workers {
+				objects[i], errs[i] = best(worker, filepath.Join(dir, list[i].file))
+			}
+			return nil
+		})
+	}
+	if err := g.Wait(); err != nil {
+		t.Fatal(err)
+	}
+	return objects, errs
+}
+
+func best(worker pipeline.Worker, path string) (catalog.Object, error) {
+	f, err := fitsread.Open(path, fitsread.Options{})
+	if err != nil {
+		return catalog.Object{}, err
+	}
+	defer f.Close()
+	top, found := catalog.Object{}, false
+	for i := range f.Count() {
+		s, readErr := f.Read(i)
+		if readErr != nil {
+			err = readErr
+			continue
+		}
+		o := worker.Process(s).Object
+		if !found || o.Confidence > top.Confidence {
+			top, found = o, true
+		}
+	}
+	if found {
+		err = nil
+	}
+	return top, err
+}
+
+// TestPublishedRedshifts holds the whole chain, with no settings at all,
+// against published redshifts of open survey spectra. Right is within 1,000
+// km/s, for quasars 3,000 km/s, of the published value. The bounds are those
+// that the tool promises; the log shows every group, the weak ones too.
+func TestPublishedRedshifts(t *testing.T) {
+	dir := sharedSpectra(t)
+	list := readPublished(t, dir)
+	objects, errs := processAll(t, dir, list)
+
+	type tally struct{ judged, right, secure, secureWrong, class int }
+	groups := map[string]*tally{}
+	at := func(name string) *tally {
+		if groups[name] == nil {
+			groups[name] = &tally{}
+		}
+		return groups[name]
+	}
+	var unread, skySecure, secure, secureWrong, rightBright, rightBrightSecure int
+	var offsets, pulls []float64
+	for i, p := range list {
+		o := objects[i]
+		if errs[i] != nil {
+			unread++
+			t.Logf("not read: %s: %v", p.file, errs[i])
+			continue
+		}
+		isSecure := o.Verdict == catalog.Secure
+		if p.class == "SKY" {
+			if isSecure {
+				skySecure++
+				t.Logf("secure on blank sky: %s %s %.4f", p.file, o.Family, o.Redshift)
+			}
+			continue
+		}
+		if p.reliable != "yes" || math.IsNaN(p.z) {
+			continue
+		}
+		limit := 1000.0
+		if p.class == "QSO" {
+			limit = 3000
+		}
+		v := spectrum.SpeedOfLight * (o.Redshift - p.z) / (1 + p.z)
+		right := math.Abs(v) <= limit
+		names := []string{p.dataset + " " + p.class}
+		if strings.HasPrefix(p.dataset, "sdss_") && p.snr >= 2 {
+			names = append(names, "survey "+p.class)
+		}
+		for _, name := range names {
+			g := at(name)
+			g.judged++
+			if right {
+				g.right++
+				if strings.EqualFold(o.Class, map[string]string{"QSO": "quasar"}[p.class]+map[bool]string{true: "", false: p.class}[p.class == "QSO"]) {
+					g.class++
+				}
+			}
+			if isSecure {
+				g.secure++
+				if !right {
+					g.secureWrong++
+				}
+			}
+		}
+		if isSecure {
+			secure++
+			if !right {
+				secureWrong++
+			}
+		}
+		if right && p.snr >= 3 {
+			rightBright++
+			if isSecure {
+				rightBrightSecure++
+			}
+		}
+		if !right {
+			t.Logf("wrong: %s %s z=%.4f S/N=%.1f: got %s %s %.4f confidence %.3f gap %.1f, rival %s %.4f, %s", p.file, p.class, p.z, p.snr,
+				o.Verdict, o.Family, o.Redshift, o.Confidence, o.Gap, o.RivalFamily, o.RivalRedshift, o.Flags)
+		} else if strings.HasPrefix(p.dataset, "sdss_") && p.class == "GALAXY" {
+			offsets = append(offsets, v)
+			sigma := spectrum.SpeedOfLight * o.RedshiftErr / (1 + p.z)
+			if !math.IsNaN(p.zErr) {
+				sigma = math.Hypot(sigma, spectrum.SpeedOfLight*p.zErr/(1+p.z))
+			}
+			pulls = append(pulls, math.Abs(v)/sigma)
+		}
+	}
+	names := make([]string, 0, len(groups))
+	for name := range groups {
+		names = append(names, name)
+	}
+	sort.Strings(names)
+	for _, name := range names {
+		g := groups[name]
+		t.Logf("%-26s judged %3d right %3d secure %3d secure but wrong %d class right %3d", name, g.judged, g.right, g.secure, g.secureWrong, g.class)
+	}
+
+	check := func(ok bool, format string, args ...any) {
+		t.Helper()
+		if !ok {
+			t.Errorf(format, args...)
+		}
+	}
+	atLeast := func(group string, fraction float64) {
+		t.Helper()
+		g := at(group)
+		check(g.judged > 0 && float64(g.right) >= fraction*float64(g.judged), "%s: %d of %d right, want %.0f %%", group, g.right, g.judged, 100*fraction)
+	}
+	check(len(list)-unread >= 250 || unread*258 <= 8*len(list), "%d of %d files not read", unread, len(list))
+	atLeast("survey GALAXY", 0.98)
+	atLeast("survey QSO", 0.98)
+	atLeast("survey STAR", 0.95)
+	atLeast("lamost_dr1 STAR", 0.90)
+	atLeast("deep2 GALAXY", 0.90)
+	check(skySecure == 0, "%d blank-sky spectra came out secure", skySecure)
+	check(100*secureWrong <= secure, "%d of %d secure redshifts are wrong, want at most 1 %%", secureWrong, secure)
+	check(float64(rightBrightSecure) >= 0.85*float64(rightBright), "%d of %d right redshifts at S/N >= 3 are secure, want 85 %%", rightBrightSecure, rightBright)
+
+	scatter := robustSigma(offsets)
+	within := 0
+	for _, p := range pulls {
+		if p <= 1.5 {
+			within++
+		}
+	}
+	t.Logf("survey galaxies: robust scatter %.1f km/s, %d of %d within 1.5 combined errors; secure %d, wrong %d; right and S/N >= 3: %d, secure %d",
+		scatter, within, len(pulls), secure, secureWrong, rightBright, rightBrightSecure)
+	check(scatter < 60, "scatter of the redshifts of survey galaxies is %.1f km/s, want under 60", scatter)
+	check(float64(within) >= 0.68*float64(len(pulls)), "%d of %d survey galaxies lie within 1.5 combined errors, want 68 %%", within, len(pulls))
+}
+
+// robustSigma is 1.4826 times the median absolute deviation.
+func robustSigma(v []float64) float64 {
+	if len(v) == 0 {
+		return math.NaN()
+	}
+	s := append([]float64(nil), v...)
+	sort.Float64s(s)
+	m := s[len(s)/2]
+	for i := range s {
+		s[i] = math.Abs(s[i] - m)
+	}
+	sort.Float64s(s)
+	return 1.4826 * s[len(s)/2]
+}
