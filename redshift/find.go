@@ -202,10 +202,11 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 	if f.opt.Stiffness > 0 {
 		basis.Intervals *= 4
 	}
-	s.coarse.bin(l, coarseFactor)
 	s.basis = basis
 	s.scaled = append(s.scaled[:0], l.resid...)
 	s.weight = append(s.weight[:0], l.weight...)
+	capDepth(l)
+	s.coarse.bin(l, coarseFactor)
 	if !l.prepare(basis, f.opt.Stiffness, ridge) || !s.coarse.prepare(basis, f.opt.Stiffness, ridge) {
 		res.FewPixels = true
 		res.Reason = "too few usable pixels for a continuum"
@@ -213,6 +214,20 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 	}
 	return true
 }
+
+// capDepth lowers the weight of pixels that lie far below the continuum, so
+// that none counts for more than depthCap sigmas in the first ranking. Else a
+// single damped absorber decides which trial redshifts are looked at again.
+func capDepth(l *level) {
+	for i, w := range l.weight {
+		d := l.cont[i] - l.resid[i]
+		if q := w * d * d; d > 0 && q > depthCap*depthCap {
+			l.weight[i] *= depthCap * depthCap / q
+		}
+	}
+}
+
+const depthCap = 8.0
 
 // limitRange takes the weight of pixels outside the searched wavelengths, if
 // enough are left inside: in the far ultraviolet the star families have no
@@ -342,7 +357,8 @@ func (f *Finder) judge(s *Scratch) {
 // peak fits best there, when that exceeds one. The forest, broad absorption
 // or a bad stretch then no longer decides between families by chance
 // agreements, and the gap is in units of what the best models leave. The
-// weights stay the same for all families. It reports whether any changed much.
+// weights stay the same for all families. It reports false when too little
+// weight is left to fit anything.
 func (f *Finder) temper(s *Scratch) bool {
 	l := &s.full
 	half := f.opt.Temper
@@ -372,18 +388,11 @@ func (f *Finder) temper(s *Scratch) bool {
 			}
 		}
 	}
-	changed := false
 	for k, e := range s.excess {
-		if e > 1 && l.weight[k] > 0 {
-			changed = changed || e > 1.2
-			l.weight[k] /= e
-		}
+		l.weight[k] = s.weight[k] / math.Max(1, e)
 		l.resid[k] = s.scaled[k]
 	}
-	if !changed {
-		copy(l.weight, s.weight)
-	}
-	return l.prepare(s.basis, f.opt.Stiffness, ridge) && changed
+	return l.prepare(s.basis, f.opt.Stiffness, ridge)
 }
 
 // score sets the score of a peak from its joint fit: chi^2 relative to the
