@@ -90,7 +90,7 @@ type Options struct {
 	MinGood    float64 // smallest good fraction of a line's pixels: 0.7
 	// ContinuumSlack is how far the local straight line may differ from the
 	// continuum given, as a fraction of it: 0.05. It is the standard deviation
-	// of a Gaussian prior, added in quadrature to ContErr and to 0.3 of the
+	// of a Gaussian prior, added in quadrature to ContErr and to 0.6 of the
 	// noise of a pixel. A negative value means that the continuum is right
 	// within ContErr; with ContErr nil it is then held fixed.
 	ContinuumSlack float64
@@ -244,6 +244,7 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 	}
 	s.meter, s.arms, s.opt = m, arms, opt.withDefaults()
 	s.claims = s.claims[:0]
+	s.load()
 	s.survey()
 	s.findTracks()
 	s.plan()

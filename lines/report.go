@@ -75,7 +75,9 @@ func (s *Scratch) reportKinematics(r *Result, e *tie, seen bool, scale float64) 
 		r.OffsetErr = scale * math.Sqrt(v)
 	}
 	if v := m.cov[e.ps*m.n+e.ps]; v > 0 {
-		up := e.s + scale*math.Sqrt(v)
+		// An unresolved line is at most as broad as one at the instrument's
+		// width may be within its error.
+		up := max(e.s, e.sres) + scale*math.Sqrt(v)
 		r.WidthErr = math.Sqrt(max(0, up*up-e.sres*e.sres)) - r.WidthKms
 	}
 	if r.Reason == "" && (m.held[e.pv] || m.held[e.ps]) && e.s > e.smin {

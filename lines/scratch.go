@@ -12,7 +12,9 @@ type Scratch struct {
 	arms  []Arm
 	opt   Options
 
-	first  []int     // offset of each arm in the three running sums
+	first  []int     // offset of each arm in the slices below
+	weight []float64 // of every pixel, 0 when it cannot be used
+	resid  []float64 // flux - continuum
 	sumW   []float64 // running sum of weight, one longer than the arm
 	sumWR  []float64 // running sum of weight times (flux - continuum)
 	sumN   []float64 // running number of good pixels
@@ -140,15 +142,31 @@ func (a *Arm) nearest(wave float64) int {
 	return i
 }
 
-// survey fills the running sums, without the pixels that claims cover.
-func (s *Scratch) survey() {
+// load checks every pixel once: weight and residual of those that can be used.
+func (s *Scratch) load() {
 	total := 0
 	s.first = s.first[:0]
 	for k := range s.arms {
 		s.first = append(s.first, total)
 		total += len(s.arms[k].Wave) + 1
 	}
+	s.weight, s.resid = resize(s.weight, total), resize(s.resid, total)
 	s.sumW, s.sumWR, s.sumN = resize(s.sumW, total), resize(s.sumWR, total), resize(s.sumN, total)
+	for k := range s.arms {
+		a, o := &s.arms[k], s.first[k]
+		for i := range a.Wave {
+			if g := a.good(i); g > 0 {
+				s.weight[o+i], s.resid[o+i] = g, a.Flux[i]-a.Cont[i]
+			}
+		}
+	}
+}
+
+// good returns the weight of pixel i of arm k, 0 when it cannot be used.
+func (s *Scratch) good(k, i int) float64 { return s.weight[s.first[k]+i] }
+
+// survey fills the running sums, without the pixels that claims cover.
+func (s *Scratch) survey() {
 	for k := range s.arms {
 		a, o := &s.arms[k], s.first[k]
 		var w, wr, n float64
@@ -157,9 +175,9 @@ func (s *Scratch) survey() {
 			for claim < len(s.claims) && s.claims[claim].Hi < lam {
 				claim++
 			}
-			if g := a.good(i); g > 0 && (claim == len(s.claims) || lam < s.claims[claim].Lo) {
+			if g := s.weight[o+i]; g > 0 && (claim == len(s.claims) || lam < s.claims[claim].Lo) {
 				w += g
-				wr += g * (a.Flux[i] - a.Cont[i])
+				wr += g * s.resid[o+i]
 				n++
 			}
 			s.sumW[o+i+1], s.sumWR[o+i+1], s.sumN[o+i+1] = w, wr, n

@@ -225,7 +225,7 @@ func (s *Scratch) covered(t *track) bool {
 			d := f * t.lam0 * t.s / spectrum.SpeedOfLight
 			width := 0.0
 			for i := max(0, a.index(mu-d)-1); i <= min(n-1, a.index(mu+d)); i++ {
-				if a.good(i) > 0 {
+				if s.good(k, i) > 0 {
 					p, q := pixelEdges(a.Wave, i)
 					width += max(0, min(q, mu+d)-max(p, mu-d))
 				}
