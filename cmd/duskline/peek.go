@@ -1,0 +1,251 @@
+package main
+
+import (
+	"fmt"
+	"io"
+	"math"
+	"strings"
+	"text/tabwriter"
+
+	"duskline/catalog"
+	"duskline/fitsread"
+	"duskline/pipeline"
+	"duskline/spectrum"
+)
+
+type peekCmd struct {
+	Row      int      `default:"0" placeholder:"N" help:"Spectrum in the file, from 0."`
+	Plot     string   `placeholder:"OUT.png" help:"Also draw the spectrum, its continuum and the lines that were found."`
+	Settings string   `placeholder:"FILE" help:"Settings in TOML over the built-in ones."`
+	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML, tried before the built-in rules; may be repeated."`
+	File     string   `arg:"" help:"FITS file, gzipped or not."`
+}
+
+// Help teaches by example.
+func (peekCmd) Help() string {
+	return `Examples:
+  duskline peek spec-0042.fits                     how it is read, and the answer
+  duskline peek --plot spec.png spec-0042.fits     with a picture
+  duskline peek --row 17 plate.fits                one of many spectra in a file
+  duskline peek --layout ours.toml spec-0042.fits  try a layout before a long run
+
+Worth doing once for every kind of file, before a run: what had to be assumed about wavelengths, errors and frame is said here.`
+}
+
+func (c *peekCmd) run(a *app) (int, error) {
+	set, err := readSettings(a, c.Settings)
+	if err != nil {
+		return 0, err
+	}
+	texts, err := readLayouts(a, c.Layout)
+	if err != nil {
+		return 0, err
+	}
+	var opts fitsread.Options
+	for _, l := range texts {
+		layout, err := fitsread.ParseLayout(l.Name, []byte(l.Text))
+		if err != nil {
+			return 0, &pipeline.InputError{Problems: []string{err.Error()}}
+		}
+		opts.Layouts = append(opts.Layouts, layout)
+	}
+	chain, err := pipeline.NewChain(set)
+	if err != nil {
+		return 0, err
+	}
+	f, err := fitsread.Open(a.locate(c.File), opts)
+	if err != nil {
+		return 0, &unreadableError{err}
+	}
+	defer f.Close()
+	writeDescription(a.stdout, c.File, f.Describe())
+	if c.Row < 0 || c.Row >= f.Count() {
+		return 0, &pipeline.InputError{Problems: []string{fmt.Sprintf("%s has %s; give --row from 0 to %d", c.File,
+			count(int64(f.Count()), "spectrum", "spectra"), f.Count()-1)}}
+	}
+	s, err := f.Read(c.Row)
+	if err != nil {
+		return 0, &unreadableError{err}
+	}
+	writeSpectrum(a.stdout, c.Row, s)
+	bench := chain.NewBench()
+	out := bench.Process(s)
+	writeAnswer(a.stdout, &out)
+	if c.Plot == "" {
+		return exitDone, nil
+	}
+	if err := savePicture(a.locate(c.Plot), newPicture(s, &out, bench.View())); err != nil {
+		return 0, err
+	}
+	fmt.Fprintf(a.stdout, "\nThe picture is in %s.\n", c.Plot)
+	return exitDone, nil
+}
+
+// writeDescription prints what is in the file and how it is read.
+func writeDescription(w io.Writer, name string, d fitsread.Description) {
+	packed := ""
+	if d.Gzipped {
+		packed = ", gzipped"
+	}
+	fmt.Fprintf(w, "%s: %d bytes%s, %s\n\n", name, d.Bytes, packed, count(int64(d.Spectra), "spectrum", "spectra"))
+	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
+	for _, h := range d.HDUs {
+		note := ""
+		switch {
+		case h.Problem != "":
+			note = "not usable: " + h.Problem
+		case h.Used:
+			note = "read"
+		}
+		fmt.Fprintf(t, "HDU %d\t%s\t%s\t%s\t%s\n", h.Index, h.Name, h.Kind, h.Shape, note)
+		if !h.Used {
+			continue
+		}
+		for _, c := range h.Columns {
+			fmt.Fprintf(t, "\t  %s\t%s\t%s\t%s\n", c.Name, c.Format, strings.TrimSpace(c.Unit+"  "+c.UCD), c.Role)
+		}
+	}
+	t.Flush()
+	fmt.Fprintln(w)
+	t = tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
+	fmt.Fprintf(t, "layout\t%s: %s\n", d.Layout, d.Why)
+	for _, p := range d.Parts {
+		arm := ""
+		if p.Name != "" {
+			arm = "arm " + p.Name + ": "
+		}
+		fmt.Fprintf(t, "wavelength\t%s%s, %s\n", arm, p.Wavelength, p.WaveUnit)
+		fmt.Fprintf(t, "flux\t%s%s, %s\n", arm, p.Flux, orNot(p.FluxUnit, "unit not stated"))
+		if p.WeightKind == "" {
+			fmt.Fprintf(t, "weight\t%snone in the file\n", arm)
+		} else {
+			fmt.Fprintf(t, "weight\t%s%s, %s\n", arm, p.Weight, p.WeightKind)
+		}
+		for _, extra := range [][2]string{{"mask", p.Mask}, {"resolution", p.Resolution}} {
+			if extra[1] != "" {
+				fmt.Fprintf(t, "%s\t%s%s\n", extra[0], arm, extra[1])
+			}
+		}
+	}
+	fmt.Fprintf(t, "medium\t%s\n", d.Medium)
+	fmt.Fprintf(t, "frame\t%s\n", d.Frame)
+	for _, s := range d.Skipped {
+		fmt.Fprintf(t, "not read\t%s\n", s)
+	}
+	t.Flush()
+}
+
+func orNot(s, otherwise string) string {
+	if s == "" {
+		return otherwise
+	}
+	return s
+}
+
+// writeSpectrum prints what was read of one spectrum.
+func writeSpectrum(w io.Writer, row int, s *spectrum.Spectrum) {
+	fmt.Fprintf(w, "\nspectrum %d: %s", row, s.ObjectID)
+	if !math.IsNaN(s.RA) {
+		fmt.Fprintf(w, ", RA %.5f Dec %+.5f", s.RA, s.Dec)
+	}
+	fmt.Fprintln(w)
+	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
+	for i := range s.Segments {
+		seg := &s.Segments[i]
+		if seg.Len() == 0 {
+			continue
+		}
+		fmt.Fprintf(t, "pixels\t%d from %.1f to %.1f Angstrom (%s), %d of them good\n", seg.Len(), seg.Wave[0], seg.Wave[seg.Len()-1],
+			strings.TrimSpace(s.Medium.String()+" "+seg.Name), seg.Good())
+	}
+	switch {
+	case s.Frame == spectrum.Topocentric || s.Frame == spectrum.Geocentric:
+		if math.IsNaN(s.BaryVelocity) {
+			fmt.Fprintf(t, "correction\tnone: the header lacks time, place or direction\n")
+		} else {
+			fmt.Fprintf(t, "correction\t%+.3f km/s to the barycenter\n", s.BaryVelocity)
+		}
+	case !math.IsNaN(s.BaryVelocity) && s.BaryVelocity != 0:
+		fmt.Fprintf(t, "correction\tnone: %+.3f km/s are in the wavelengths already\n", s.BaryVelocity)
+	}
+	for _, warning := range s.Warnings {
+		fmt.Fprintf(t, "assumed\t%s\n", warning.Text)
+	}
+	t.Flush()
+}
+
+// writeAnswer prints the row that the spectrum makes and its lines.
+func writeAnswer(w io.Writer, out *pipeline.Outcome) {
+	o := &out.Object
+	fmt.Fprintf(w, "\nanswer\n")
+	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
+	fmt.Fprintf(t, "verdict\t%s, confidence %s\n", o.Verdict, number(o.Confidence, 3))
+	fmt.Fprintf(t, "class\t%s\n", withFamily(o.Class, o.Family))
+	fmt.Fprintf(t, "redshift\t%s +- %s\n", number(o.Redshift, 6), number(o.RedshiftErr, 6))
+	if !math.IsNaN(o.RivalRedshift) {
+		fmt.Fprintf(t, "rival\t%s, worse by %s\n", withFamily(number(o.RivalRedshift, 6), o.RivalFamily), number(o.Gap, 1))
+	}
+	fmt.Fprintf(t, "quality\tS/N %s a pixel, %d pixels, chi2/dof %s, r %s, %s\n", number(o.SNR, 1), o.PixelsUsed,
+		number(o.Chi2Dof, 2), number(o.RStat, 1), count(int64(o.LinesSeen), "line seen", "lines seen"))
+	if o.Flags != 0 {
+		fmt.Fprintf(t, "flags\t%s\n", strings.Join(o.Flags.Names(), ", "))
+	}
+	if o.Reason != "" {
+		fmt.Fprintf(t, "reason\t%s\n", o.Reason)
+	}
+	t.Flush()
+	writeLines(w, out)
+}
+
+// writeLines prints the lines that were seen.
+func writeLines(w io.Writer, out *pipeline.Outcome) {
+	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', tabwriter.AlignRight)
+	seen, limits := 0, 0
+	for i := range out.Lines {
+		l := &out.Lines[i]
+		if l.Kind == "limit" {
+			limits++
+		}
+		if l.Kind != "emission" && l.Kind != "absorption" {
+			continue
+		}
+		if seen++; seen == 1 {
+			fmt.Fprintf(t, "line\trest A\tobserved A\tkind\tEW rest A\t+-\tS/N\t\n")
+		}
+		fmt.Fprintf(t, "%s\t%.2f\t%.2f\t%s\t%s\t%s\t%s\t\n", l.Line, l.RestWave, l.RestWave*(1+out.Object.Redshift), l.Kind,
+			number(l.EWRest, 2), number(l.EWRestErr, 2), number(l.SNR, 1))
+	}
+	if seen > 0 {
+		fmt.Fprintln(w)
+	}
+	t.Flush()
+	if limits > 0 {
+		fmt.Fprintf(w, "%s only a limit.\n", count(int64(limits), "more line has", "more lines have"))
+	}
+}
+
+func withFamily(s, family string) string {
+	if family == "" {
+		return s
+	}
+	return s + " (" + family + ")"
+}
+
+// number prints a number or, if it is not known, a dash.
+func number(x float64, decimals int) string {
+	if math.IsNaN(x) {
+		return "-"
+	}
+	return fmt.Sprintf("%.*f", decimals, x)
+}
+
+// title says in one line what a picture shows.
+func title(o *catalog.Object) string {
+	parts := []string{o.ObjectID}
+	if math.IsNaN(o.Redshift) || o.Verdict == catalog.None {
+		parts = append(parts, "no redshift")
+	} else {
+		parts = append(parts, fmt.Sprintf("%s   z = %.5f ± %.5f (%s)", o.Class, o.Redshift, o.RedshiftErr, o.Verdict))
+	}
+	return strings.Join(append(parts, fmt.Sprintf("S/N %s a pixel", number(o.SNR, 1))), "   ")
+}

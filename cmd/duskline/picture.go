@@ -1,0 +1,187 @@
+package main
+
+import (
+	"fmt"
+	"math"
+	"slices"
+
+	"duskline/pipeline"
+	"duskline/spectrum"
+)
+
+// picture is a spectrum made ready for drawing. Pixels without data are NaN.
+type picture struct {
+	title     string
+	fluxLabel string
+	redshift  float64 // NaN when there is none
+	wave      []float64
+	flux      []float64
+	smooth    []float64
+	sigma     []float64
+	continuum []float64
+	marks     []pipeline.Mark
+	low, high float64 // of the flux worth seeing
+}
+
+const (
+	smoothPixels = 2.0 // sigma of the Gaussian that smooths for the eye
+	maxMarks     = 40
+	peakPixels   = 8 // half width of the surroundings of an emission line that must be inside
+)
+
+// newPicture lays out the last object of a bench.
+func newPicture(s *spectrum.Spectrum, out *pipeline.Outcome, v pipeline.View) *picture {
+	n := len(v.LogWave)
+	p := &picture{title: title(&out.Object), redshift: out.Object.Redshift, marks: pipeline.Marks(out),
+		wave: make([]float64, n), flux: make([]float64, n), sigma: make([]float64, n), continuum: make([]float64, n)}
+	if len(p.marks) > maxMarks {
+		strongest := slices.Clone(p.marks)
+		slices.SortStableFunc(strongest, func(a, b pipeline.Mark) int {
+			if a.SNR > b.SNR {
+				return -1
+			}
+			return 1
+		})
+		least := strongest[maxMarks-1].SNR
+		p.marks = slices.DeleteFunc(p.marks, func(m pipeline.Mark) bool { return !(m.SNR >= least) })
+	}
+	for i := range n {
+		p.wave[i] = math.Pow(10, v.LogWave[i])
+		p.flux[i], p.sigma[i], p.continuum[i] = math.NaN(), math.NaN(), math.NaN()
+		if w := v.Ivar[i]; w > 0 {
+			p.flux[i], p.sigma[i] = v.Flux[i], 1/math.Sqrt(w)
+		}
+		if v.Continuum != nil {
+			p.continuum[i] = v.Continuum(v.LogWave[i])
+		}
+	}
+	p.trim()
+	p.smooth = smoothed(p.flux, p.sigma)
+	p.setRange()
+	p.scale(s.FluxUnit)
+	return p
+}
+
+// trim cuts the ends without data.
+func (p *picture) trim() {
+	a, b := 0, len(p.flux)
+	for a < b && math.IsNaN(p.flux[a]) {
+		a++
+	}
+	for b > a && math.IsNaN(p.flux[b-1]) {
+		b--
+	}
+	p.wave, p.flux, p.sigma, p.continuum = p.wave[a:b], p.flux[a:b], p.sigma[a:b], p.continuum[a:b]
+}
+
+// smoothed returns the flux convolved with a Gaussian, weighted with the
+// inverse variance; pixels without data stay without.
+func smoothed(flux, sigma []float64) []float64 {
+	const reach = int(4 * smoothPixels)
+	var kernel [2*reach + 1]float64
+	for k := range kernel {
+		x := float64(k-reach) / smoothPixels
+		kernel[k] = math.Exp(-x * x / 2)
+	}
+	out := make([]float64, len(flux))
+	for i := range flux {
+		var sum, weight float64
+		for k, g := range kernel {
+			j := i + k - reach
+			if j < 0 || j >= len(flux) || math.IsNaN(flux[j]) {
+				continue
+			}
+			w := g / (sigma[j] * sigma[j])
+			sum += w * flux[j]
+			weight += w
+		}
+		out[i] = sum / weight
+		if math.IsNaN(flux[i]) {
+			out[i] = math.NaN()
+		}
+	}
+	return out
+}
+
+// setRange chooses the flux range: nearly all of the smoothed spectrum, without
+// spikes, but with the peaks of the emission lines.
+func (p *picture) setRange() {
+	var known []float64
+	for _, f := range p.smooth {
+		if !math.IsNaN(f) {
+			known = append(known, f)
+		}
+	}
+	if len(known) == 0 {
+		p.low, p.high = 0, 1
+		return
+	}
+	slices.Sort(known)
+	at := func(q float64) float64 { return known[int(q*float64(len(known)-1))] }
+	p.low, p.high = math.Min(0, at(0.003)), at(0.997)
+	for _, m := range p.marks {
+		if !m.Emission {
+			continue
+		}
+		center, _ := slices.BinarySearch(p.wave, m.Wave)
+		for i := max(0, center-peakPixels); i < min(len(p.smooth), center+peakPixels); i++ {
+			if p.smooth[i] > p.high {
+				p.high = p.smooth[i]
+			}
+		}
+	}
+	if !(p.high > p.low) {
+		p.high = p.low + 1
+	}
+	p.high += 0.04 * (p.high - p.low)
+}
+
+// scale takes a power of ten out of fluxes whose numbers would not fit an axis.
+func (p *picture) scale(unit string) {
+	p.fluxLabel = "flux"
+	exponent := math.Floor(math.Log10(math.Max(p.high, -p.low)))
+	factor := 1.0
+	if exponent < -2 || exponent > 3 {
+		factor = math.Pow(10, -exponent)
+		p.fluxLabel = fmt.Sprintf("flux × 1e%+.0f", -exponent)
+	}
+	if unit != "" {
+		p.fluxLabel += "   [" + unit + "]"
+	}
+	for _, values := range [][]float64{p.flux, p.smooth, p.sigma, p.continuum} {
+		for i := range values {
+			values[i] *= factor
+		}
+	}
+	p.low *= factor
+	p.high *= factor
+}
+
+// spread moves wanted positions, which must be in order, as little as possible
+// (least squares) so that neighbors are at least gap apart, and into the range
+// from low to high as far as there is room. It pools neighbors that collide
+// (isotonic regression; Ayer et al. 1955, Ann. Math. Stat. 26, 641).
+func spread(wanted []float64, gap, low, high float64) []float64 {
+	type pool struct {
+		sum   float64
+		count int
+	}
+	var pools []pool
+	for i, x := range wanted {
+		pools = append(pools, pool{x - float64(i)*gap, 1})
+		for k := len(pools) - 1; k > 0 && pools[k-1].sum/float64(pools[k-1].count) > pools[k].sum/float64(pools[k].count); k-- {
+			pools[k-1].sum += pools[k].sum
+			pools[k-1].count += pools[k].count
+			pools = pools[:k]
+		}
+	}
+	var out []float64
+	last := high - float64(len(wanted)-1)*gap
+	for _, p := range pools {
+		for range p.count {
+			x := math.Max(low, math.Min(last, p.sum/float64(p.count)))
+			out = append(out, x+float64(len(out))*gap)
+		}
+	}
+	return out
+}
