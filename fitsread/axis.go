@@ -243,18 +243,19 @@ func derivative(f func(float64) float64, x0 float64, q quantity) float64 {
 	return (16*r2 - r1) / 15
 }
 
-// standardVacuumToAir converts wavelengths in m as axis definitions mean it:
-// Edlen 1953 (J. Opt. Soc. Am. 43, 339), the form that FITS libraries use for
-// AWAV. Spectra whose axis is air are converted by package spectrum instead.
-func standardVacuumToAir(w float64) float64 {
-	s2 := 1e-12 / (w * w) // wavenumber squared, micron^-2
-	return w / (1 + 1e-8*(6432.8+2949810/(146-s2)+25540/(41-s2)))
+// standardAirToVacuum converts wavelengths in m as axis definitions mean it:
+// Edlen 1953 (J. Opt. Soc. Am. 43, 339) at the wavenumber in air, the form that
+// FITS libraries use for AWAV. Spectra whose axis is air are converted by package
+// spectrum instead.
+func standardAirToVacuum(air float64) float64 {
+	s2 := 1e-12 / (air * air) // wavenumber squared, micron^-2
+	return air * (1 + 1e-8*(6432.8+2949810/(146-s2)+25540/(41-s2)))
 }
 
-func standardAirToVacuum(air float64) float64 {
-	w := air
+func standardVacuumToAir(w float64) float64 {
+	air := w
 	for range 6 {
-		w *= air / standardVacuumToAir(w)
+		air *= w / standardAirToVacuum(air)
 	}
-	return w
+	return air
 }

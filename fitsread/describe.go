@@ -53,6 +53,9 @@ func (f *File) Describe() (d Description) {
 		a := &f.plan.groups[0].arms[i]
 		p := PartInfo{Name: a.name, Wavelength: a.wave.String(), WaveUnit: a.wave.unit.String(), Flux: a.flux.String(),
 			FluxUnit: a.fluxUnit, Weight: a.weight.String(), Resolution: a.resolution.String()}
+		if a.kernel.isSet() {
+			p.Resolution = "widths of " + a.kernel.String()
+		}
 		if !a.wave.unitKnown {
 			p.WaveUnit = "not stated"
 		}
@@ -65,7 +68,7 @@ func (f *File) Describe() (d Description) {
 			used[m.at] = true
 		}
 		p.Mask = strings.Join(masks, ", ")
-		for _, pl := range []place{a.wave.values, a.wave.start, a.wave.step, a.flux, a.weight, a.resolution} {
+		for _, pl := range []place{a.wave.values, a.wave.start, a.wave.step, a.flux, a.weight, a.resolution, a.kernel} {
 			used[pl] = true
 		}
 		d.Parts = append(d.Parts, p)

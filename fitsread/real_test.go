@@ -1,0 +1,94 @@
+package fitsread
+
+import (
+	"encoding/csv"
+	"os"
+	"os/exec"
+	"path/filepath"
+	"strings"
+	"testing"
+
+	"duskline/spectrum"
+)
+
+// moduleDir finds the source of a module in the module cache.
+func moduleDir(t testing.TB, module string) string {
+	t.Helper()
+	out, err := exec.Command("go", "list", "-m", "-f", "{{.Dir}}", module).Output()
+	if err != nil {
+		t.Fatalf("go list %s: %v", module, err)
+	}
+	return strings.TrimSpace(string(out))
+}
+
+// sharedSpectra finds the folder of real spectra beside the repository.
+func sharedSpectra(t testing.TB) string {
+	t.Helper()
+	root := os.Getenv("DUSKLINE_SHARED")
+	if root == "" {
+		root = filepath.Join("..", "..", "shared")
+	}
+	dir := filepath.Join(root, "spectra")
+	if _, err := os.Stat(filepath.Join(dir, "truth.csv")); err != nil {
+		missing(t, "the folder of real spectra is not there: "+dir)
+	}
+	return dir
+}
+
+// missing skips a test for want of something outside the repository, or fails it
+// where skipping is forbidden.
+func missing(t testing.TB, why string) {
+	t.Helper()
+	if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
+		t.Fatal(why)
+	}
+	t.Skip(why)
+}
+
+// Every file of ../shared/spectra opens and reads, and its medium is the one
+// that truth.csv (column wavelengths) gives or is flagged as assumed.
+func TestRealSpectra(t *testing.T) {
+	dir := sharedSpectra(t)
+	fh, err := os.Open(filepath.Join(dir, "truth.csv"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer fh.Close()
+	rows, err := csv.NewReader(fh).ReadAll()
+	if err != nil {
+		t.Fatal(err)
+	}
+	medium := -1
+	for i, name := range rows[0] {
+		if name == "wavelengths" {
+			medium = i
+		}
+	}
+	files, spectra := 0, 0
+	for _, row := range rows[1:] {
+		f, err := Open(filepath.Join(dir, row[0]), Options{})
+		if err != nil {
+			t.Errorf("%v", err)
+			continue
+		}
+		files++
+		for i := range f.Count() {
+			s, err := f.Read(i)
+			if err != nil {
+				t.Errorf("%v", err)
+				continue
+			}
+			checkContract(t, s)
+			spectra++
+			stated := strings.HasPrefix(row[medium], s.Medium.String())
+			presumed := row[medium] == "" || strings.Contains(row[medium], "presumed")
+			if !stated && !presumed && !s.Has(spectrum.MediumAssumed) {
+				t.Errorf("%s: %s, not assumed; published: %s", row[0], s.Medium, row[medium])
+			}
+		}
+		f.Close()
+	}
+	if files != 258 || spectra != 270 {
+		t.Errorf("%d files, %d spectra read; 258 and 270 are there", files, spectra)
+	}
+}
