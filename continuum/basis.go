@@ -138,7 +138,34 @@ func (n *Normal) Factor() bool {
 func (n *Normal) Solve(y []float64) { n.SolveMany(y, 1) }
 
 // SolveMany replaces each column of the row-major matrix y, with cols columns,
-// by the solution for it.
+// by the solution for it. It works along rows, all columns at once, which for
+// a handful of columns is several times faster than one band solve a column.
 func (n *Normal) SolveMany(y []float64, cols int) {
-	lapack64.Pbtrs(n.factor, blas64.General{Rows: n.size, Cols: cols, Stride: cols, Data: y})
+	u := n.factor.Data
+	for i := 0; i < n.size; i++ {
+		row := y[i*cols : (i+1)*cols]
+		for k := 1; k <= band && k <= i; k++ {
+			f := u[stride*(i-k)+k]
+			for c, v := range y[(i-k)*cols : (i-k+1)*cols] {
+				row[c] -= f * v
+			}
+		}
+		d := 1 / u[stride*i]
+		for c := range row {
+			row[c] *= d
+		}
+	}
+	for i := n.size - 1; i >= 0; i-- {
+		row := y[i*cols : (i+1)*cols]
+		for k := 1; k <= band && i+k < n.size; k++ {
+			f := u[stride*i+k]
+			for c, v := range y[(i+k)*cols : (i+k+1)*cols] {
+				row[c] -= f * v
+			}
+		}
+		d := 1 / u[stride*i]
+		for c := range row {
+			row[c] *= d
+		}
+	}
 }

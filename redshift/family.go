@@ -51,6 +51,7 @@ type component struct {
 	edges      []edge
 	heads      []head
 	forest     bool
+	dense      *table // edges and heads, drawn once
 }
 
 // term is a Gaussian.
@@ -72,8 +73,8 @@ func (c *component) sigmaKms(t *term, familyWidth float64) float64 {
 	return familyWidth * c.scale
 }
 
-// dense reports whether the component reaches over most of a spectrum.
-func (c *component) dense() bool { return c.forest || len(c.edges) > 0 || len(c.heads) > 0 }
+// wide reports whether the component reaches over most of a spectrum.
+func (c *component) wide() bool { return c.forest || len(c.edges) > 0 || len(c.heads) > 0 }
 
 // run is a half-open range of pixels.
 type run struct{ lo, hi int }
@@ -138,19 +139,11 @@ func (c *component) draw(d *drawing, n int, start, step, shift, familyWidth floa
 		sigma := c.sigmaKms(t, familyWidth) / (speedOfLight * ln10 * step)
 		gaussian(d, n, (t.logWave+shift-start)/step, sigma, sign*t.amp)
 	}
-	if !c.dense() {
-		return
-	}
-	zp1 := math.Pow(10, shift)
-	wave0, ratio := math.Pow(10, start)/zp1, math.Pow(10, step)
-	for _, e := range c.edges {
-		drawEdge(d, n, wave0, ratio, e)
-	}
-	for _, h := range c.heads {
-		drawHead(d, n, wave0, ratio, h)
+	if c.dense != nil {
+		c.dense.draw(d, n, start-shift, step)
 	}
 	if c.forest {
-		forest().draw(d, n, start-shift, step, zp1-1)
+		forest().draw(d, n, start-shift, step, math.Pow(10, shift)-1)
 	}
 }
 
@@ -180,56 +173,5 @@ func gaussian(d *drawing, n int, center, sigma, amp float64) {
 		g *= r
 		r *= step2
 		d.values[i] += g
-	}
-}
-
-// drawEdge adds a logistic step: -height blueward, 0 redward.
-func drawEdge(d *drawing, n int, wave0, ratio float64, e edge) {
-	lo, hi := 0, n
-	wave := wave0
-	for i := 0; i < n; i++ {
-		if wave < e.From {
-			lo = i + 1
-		}
-		q := (wave - e.Wave) / e.Width
-		if q > 12 {
-			hi = i
-			break
-		}
-		if wave >= e.From {
-			d.values[i] -= e.Height / (1 + math.Exp(q))
-		}
-		wave *= ratio
-	}
-	if lo < hi {
-		d.include(lo, hi)
-	}
-}
-
-// drawHead adds a molecular band: a sharp head and an exponential tail.
-func drawHead(d *drawing, n int, wave0, ratio float64, h head) {
-	const blur = 6.0 // Angstrom, softness of the head on its steep side
-	lo, hi := n, 0
-	wave := wave0
-	for i := 0; i < n; i++ {
-		q := wave - h.Wave
-		if h.Blue {
-			q = -q
-		}
-		v := 0.0
-		switch {
-		case q >= 0 && q < 6*h.Tail:
-			v = math.Exp(-q / h.Tail)
-		case q < 0 && q > -3*blur:
-			v = math.Exp(-q * q / (blur * blur))
-		}
-		if v > 0 {
-			d.values[i] -= h.Depth * v
-			lo, hi = min(lo, i), max(hi, i+1)
-		}
-		wave *= ratio
-	}
-	if lo < hi {
-		d.include(lo, hi)
 	}
 }

@@ -97,6 +97,8 @@ const (
 	coarseFactor = 4
 	// ridge carries splines over gaps, see continuum.Normal.Ridge.
 	ridge = 1e-9
+	// finalists are refined once more with the tempered weights.
+	finalists = 12
 	// sameVelocity is the velocity within which two peaks are one answer; broad
 	// lines leave their redshift less certain.
 	sameVelocity      = 1000.0
@@ -337,7 +339,7 @@ func (f *Finder) judge(s *Scratch) {
 		p := &s.peaks[i]
 		h := s.full.step * math.Max(1, 0.5*p.family.narrowest(p.width)/(speedOfLight*ln10*s.full.step))
 		p.fit = s.bench.evaluate(&s.full, p.family, p.width, p.shift)
-		s.bench.climb(&s.full, p, h, 6)
+		s.bench.climb(&s.full, p, h, 4)
 		s.score(p)
 	}
 	slices.SortStableFunc(s.peaks, byScore)
@@ -345,6 +347,11 @@ func (f *Finder) judge(s *Scratch) {
 		for i := range s.peaks {
 			p := &s.peaks[i]
 			p.fit = s.bench.evaluate(&s.full, p.family, p.width, p.shift)
+			s.score(p)
+		}
+		slices.SortStableFunc(s.peaks, byScore)
+		for i := range s.peaks[:min(finalists, len(s.peaks))] {
+			p := &s.peaks[i]
 			s.bench.climb(&s.full, p, 0.5*s.full.step, 2)
 			s.score(p)
 		}
@@ -369,7 +376,7 @@ func (f *Finder) temper(s *Scratch) bool {
 	for i := range s.peaks {
 		p := &s.peaks[i]
 		fit := s.bench.evaluate(l, p.family, p.width, p.shift)
-		s.bench.residual(s.tmp, l, len(p.family.components), &fit.amp)
+		s.bench.residual(s.tmp, l, &fit)
 		sum, count := 0.0, 0
 		add := func(k, sign int) {
 			if k >= 0 && k < l.n && l.weight[k] > 0 {

@@ -17,6 +17,9 @@ type bench struct {
 	project  []float64 // A^-1 B^T W T
 	g        [maxComponents * maxComponents]float64
 	h, most  [maxComponents]float64
+	coef     []float64
+	used     [maxComponents]int // components inside the coverage, by column
+	m        int                // number of them
 }
 
 // evaluate fits spline and components of family f together at
@@ -28,24 +31,31 @@ type bench struct {
 //
 // and r is the residual of the spline alone.
 func (b *bench) evaluate(l *level, f *Family, width, shift float64) fit {
-	m := len(f.components)
 	b.weighted = grow(b.weighted, l.n)
-	b.spline, b.project = grow(b.spline, l.size*m), grow(b.project, l.size*m)
-	clear(b.spline)
+	m := 0
 	for c := range f.components {
 		comp := &f.components[c]
-		comp.draw(&b.draws[c], l.n, l.start, l.step, shift, width)
+		d := &b.draws[c]
+		comp.draw(d, l.n, l.start, l.step, shift, width)
+		if len(d.runs) == 0 {
+			continue
+		}
 		if comp.absorption {
-			v := b.draws[c].values
-			for _, r := range b.draws[c].runs {
-				for i := r.lo; i < r.hi; i++ {
-					v[i] *= l.cont[i]
+			for _, r := range d.runs {
+				v, cont := d.values[r.lo:r.hi], l.cont[r.lo:r.hi]
+				for i := range v {
+					v[i] *= cont[i]
 				}
 			}
 		}
+		b.used[m] = c
+		m++
 	}
-	for c := 0; c < m; c++ {
-		d := &b.draws[c]
+	b.m = m
+	b.spline, b.project = grow(b.spline, l.size*m), grow(b.project, l.size*m)
+	clear(b.spline)
+	for k := 0; k < m; k++ {
+		d := &b.draws[b.used[k]]
 		h, gg := 0.0, 0.0
 		for _, r := range d.runs {
 			for i := r.lo; i < r.hi; i++ {
@@ -57,40 +67,48 @@ func (b *bench) evaluate(l *level, f *Family, width, shift float64) fit {
 				}
 				h += wt * l.resid[i]
 				gg += wt * t
-				j, v := int(l.first[i])*m+c, &l.value[i]
+				j, v := int(l.first[i])*m+k, &l.value[i]
 				b.spline[j] += wt * v[0]
 				b.spline[j+m] += wt * v[1]
 				b.spline[j+2*m] += wt * v[2]
 				b.spline[j+3*m] += wt * v[3]
 			}
 		}
-		b.h[c], b.most[c] = h, f.components[c].most
-		b.g[c*maxComponents+c] = gg
-		for e := c + 1; e < m; e++ {
-			s := overlap(d.runs, b.draws[e].runs, b.weighted, b.draws[e].values)
-			b.g[c*maxComponents+e] = s
-			b.g[e*maxComponents+c] = s
+		b.h[k], b.most[k] = h, f.components[b.used[k]].most
+		b.g[k*maxComponents+k] = gg
+		for e := k + 1; e < m; e++ {
+			other := &b.draws[b.used[e]]
+			b.g[k*maxComponents+e] = overlap(d.runs, other.runs, b.weighted, other.values)
 		}
 	}
 	copy(b.project, b.spline)
 	l.normal.SolveMany(b.project, m)
-	for c := 0; c < m; c++ {
-		before := b.g[c*maxComponents+c]
-		for e := c; e < m; e++ {
-			s := 0.0
-			for j := 0; j < l.size; j++ {
-				s += b.spline[j*m+c] * b.project[j*m+e]
+	for k := 0; k < m; k++ {
+		before := b.g[k*maxComponents+k]
+		row := b.g[k*maxComponents : k*maxComponents+m]
+		for j := 0; j < l.size; j++ {
+			s := b.spline[j*m+k]
+			if s == 0 {
+				continue
 			}
-			b.g[c*maxComponents+e] -= s
-			b.g[e*maxComponents+c] = b.g[c*maxComponents+e]
+			for e, v := range b.project[j*m+k : (j+1)*m] {
+				row[k+e] -= s * v
+			}
 		}
 		// What the spline can describe as well is not evidence.
-		if b.g[c*maxComponents+c] < 1e-4*before {
-			b.g[c*maxComponents+c] = 0
+		if row[k] < 1e-4*before {
+			row[k] = 0
+		}
+		for e := k + 1; e < m; e++ {
+			b.g[e*maxComponents+k] = row[e]
 		}
 	}
 	var out fit
-	out.drop, out.active = nnls(&out.amp, &b.g, &b.h, &b.most, m)
+	var amp [maxComponents]float64
+	out.drop, out.active = nnls(&amp, &b.g, &b.h, &b.most, m)
+	for k := 0; k < m; k++ {
+		out.amp[b.used[k]] = amp[k]
+	}
 	return out
 }
 
@@ -111,35 +129,43 @@ func overlap(p, q []run, a, b []float64) float64 {
 	return s
 }
 
-// residual writes flux minus the joint model of the last evaluate with
-// amplitudes amp to dst, and returns its chi^2. Spline and templates are those
-// of the best fit: the spline absorbs A^-1 B^T W T a.
-func (b *bench) residual(dst []float64, l *level, m int, amp *[maxComponents]float64) float64 {
+// residual writes flux minus the joint model of the last evaluate, whose
+// answer was f, to dst: templates and the spline, which takes up
+// A^-1 B^T W T a of its own fit.
+func (b *bench) residual(dst []float64, l *level, f *fit) {
 	copy(dst, l.resid)
-	for c := 0; c < m; c++ {
-		if amp[c] == 0 {
+	b.coef = grow(b.coef, l.size)
+	clear(b.coef)
+	for k := 0; k < b.m; k++ {
+		a := f.amp[b.used[k]]
+		if a == 0 {
 			continue
 		}
-		d := &b.draws[c]
+		d := &b.draws[b.used[k]]
 		for _, r := range d.runs {
 			for i := r.lo; i < r.hi; i++ {
-				dst[i] -= amp[c] * d.values[i]
+				dst[i] -= a * d.values[i]
 			}
 		}
-	}
-	coef := make([]float64, l.size)
-	for j := range coef {
-		for c := 0; c < m; c++ {
-			coef[j] += b.project[j*m+c] * amp[c]
+		for j := range b.coef {
+			b.coef[j] += b.project[j*b.m+k] * a
 		}
 	}
-	chi2 := 0.0
 	for i := range dst {
-		j, v := int(l.first[i]), &l.value[i]
-		dst[i] += v[0]*coef[j] + v[1]*coef[j+1] + v[2]*coef[j+2] + v[3]*coef[j+3]
-		chi2 += l.weight[i] * dst[i] * dst[i]
+		c, v := b.coef[l.first[i]:], &l.value[i]
+		dst[i] += v[0]*c[0] + v[1]*c[1] + v[2]*c[2] + v[3]*c[3]
 	}
-	return chi2
+}
+
+// norm returns the square norm of component c in the last evaluate, with the
+// spline projected out; 0 if it lies outside the coverage.
+func (b *bench) norm(c int) float64 {
+	for k := 0; k < b.m; k++ {
+		if b.used[k] == c {
+			return b.g[k*maxComponents+k]
+		}
+	}
+	return 0
 }
 
 // peak is a trial redshift with its joint fit.

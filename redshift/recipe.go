@@ -226,6 +226,7 @@ func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
 		c.heads = append(c.heads, h)
 	}
 	c.forest = r.Forest
+	c.dense = newTable(c.edges, c.heads)
 	if len(c.terms)+len(c.edges)+len(c.heads) == 0 && !c.forest {
 		bad("has no lines, case_b, bumps, edges, heads or forest")
 	}

@@ -77,10 +77,9 @@ func (f *Finder) conclude(g *spectrum.Grid, s *Scratch, res *Result) {
 			break
 		}
 	}
-	m := len(best.family.components)
-	s.bench.evaluate(l, best.family, best.width, best.shift)
+	best.fit = s.bench.evaluate(l, best.family, best.width, best.shift)
 	s.tmp = grow(s.tmp, l.n)
-	s.bench.residual(s.tmp, l, m, &best.fit.amp)
+	s.bench.residual(s.tmp, l, &best.fit)
 	chi2 := 0.0
 	for i, w := range s.weight {
 		chi2 += w * s.tmp[i] * s.tmp[i]
@@ -182,9 +181,8 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 			}
 		}
 		// A break or band that the data demand counts as one feature.
-		if amp > 0 && comp.dense() && len(comp.terms) == 0 {
-			gg := s.bench.g[c*maxComponents+c]
-			if amp*math.Sqrt(math.Max(0, gg)) > 2*SeenSNR {
+		if amp > 0 && comp.wide() && len(comp.terms) == 0 {
+			if amp*math.Sqrt(math.Max(0, s.bench.norm(c))) > 2*SeenSNR {
 				res.LinesSeen++
 			}
 		}
