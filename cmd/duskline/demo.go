@@ -6,7 +6,6 @@ import (
 	"io"
 	"os"
 	"path/filepath"
-	"text/tabwriter"
 
 	"duskline/catalog"
 	"duskline/pipeline"
@@ -27,7 +26,7 @@ func (demoCmd) Help() string {
 Examples:
   duskline demo                  in a temporary folder
   duskline demo --out DEMO       keep everything in DEMO
-  duskline peek DEMO/night/p01/lr-20310314-p01-001.fits   then look at single files`
+  duskline peek DEMO/night/p01/lr-20310314-p01-101.fits   then look at single files`
 }
 
 func (c *demoCmd) run(a *app) (int, error) {
@@ -96,18 +95,17 @@ func readCatalog(path string) ([]catalog.Object, error) {
 // writeScore prints the answers against the truth.
 func writeScore(w io.Writer, res synth.Result) {
 	fmt.Fprintf(w, "\nAgainst the truth:\n\n")
-	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', tabwriter.AlignRight)
-	fmt.Fprintf(t, "truth\tspectra\tright\tsecure\tsecure and right\tclass right\t\n")
+	fmt.Fprintf(w, "%-10s%11s%11s%11s%11s%11s\n", "truth", "spectra", "right", "secure", "and right", "class")
 	line := func(n synth.Tally) {
-		fmt.Fprintf(t, "%s\t%d\t%d\t%d\t%d\t%d\t\n", n.Class, n.Objects, n.Right, n.Secure, n.SecureRight, n.ClassRight)
+		fmt.Fprintf(w, "%-10s%11d%11d%11d%11d%11d\n", n.Class, n.Objects, n.Right, n.Secure, n.SecureRight, n.ClassRight)
 	}
 	for _, n := range res.Classes {
 		line(n)
 	}
 	res.Total.Class = "all"
 	line(res.Total)
-	t.Flush()
-	fmt.Fprintf(w, "\nRight: within 1,000 km/s, quasars 3,000; for sky and broken files: not secure.\n")
+	fmt.Fprintf(w, "\nright: redshift within 1,000 km/s of the truth, quasars 3,000; for sky and broken files: not secure\n"+
+		"and right: of the secure ones; class: told right\n")
 	for _, m := range res.Misses {
 		fmt.Fprintf(w, "Secure and wrong: %s row %d, %s at %.4f, found %s at %.4f.\n", m.Truth.File, m.Truth.Row, m.Truth.Kind,
 			m.Truth.Redshift, m.Object.Class, m.Object.Redshift)

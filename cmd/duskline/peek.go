@@ -1,8 +1,10 @@
 package main
 
 import (
+	"errors"
 	"fmt"
 	"io"
+	"io/fs"
 	"math"
 	"strings"
 	"text/tabwriter"
@@ -55,7 +57,7 @@ func (c *peekCmd) run(a *app) (int, error) {
 	}
 	f, err := fitsread.Open(a.locate(c.File), opts)
 	if err != nil {
-		return 0, &unreadableError{err}
+		return 0, c.unreadable(err)
 	}
 	defer f.Close()
 	writeDescription(a.stdout, c.File, f.Describe())
@@ -65,7 +67,7 @@ func (c *peekCmd) run(a *app) (int, error) {
 	}
 	s, err := f.Read(c.Row)
 	if err != nil {
-		return 0, &unreadableError{err}
+		return 0, c.unreadable(err)
 	}
 	writeSpectrum(a.stdout, c.Row, s)
 	bench := chain.NewBench()
@@ -79,6 +81,21 @@ func (c *peekCmd) run(a *app) (int, error) {
 	}
 	fmt.Fprintf(a.stdout, "\nThe picture is in %s.\n", c.Plot)
 	return exitDone, nil
+}
+
+// unreadable names the file as it was given. One that is not there is a wrong
+// command.
+func (c *peekCmd) unreadable(err error) error {
+	var re *fitsread.ReadError
+	if errors.As(err, &re) {
+		named := *re
+		named.File = c.File
+		err = &named
+	}
+	if errors.Is(err, fs.ErrNotExist) {
+		return &pipeline.InputError{Problems: []string{err.Error()}}
+	}
+	return &unreadableError{err}
 }
 
 // writeDescription prints what is in the file and how it is read.

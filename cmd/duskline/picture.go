@@ -26,7 +26,10 @@ type picture struct {
 const (
 	smoothPixels = 2.0 // sigma of the Gaussian that smooths for the eye
 	maxMarks     = 40
-	peakPixels   = 8 // half width of the surroundings of an emission line that must be inside
+	peakPixels   = 8 // half width of the surroundings of an emission line that hold its peak
+	// maxPeak bounds the flux range to this many times that of nearly all
+	// pixels: one line must not flatten all others.
+	maxPeak = 4.0
 )
 
 // newPicture lays out the last object of a bench.
@@ -59,6 +62,7 @@ func newPicture(s *spectrum.Spectrum, out *pipeline.Outcome, v pipeline.View) *p
 	p.smooth = smoothed(p.flux, p.sigma)
 	p.setRange()
 	p.scale(s.FluxUnit)
+	p.noteCutPeaks()
 	return p
 }
 
@@ -104,7 +108,7 @@ func smoothed(flux, sigma []float64) []float64 {
 }
 
 // setRange chooses the flux range: nearly all of the smoothed spectrum, without
-// spikes, but with the peaks of the emission lines.
+// spikes, but with the peaks of the emission lines unless they are far higher.
 func (p *picture) setRange() {
 	var known []float64
 	for _, f := range p.smooth {
@@ -119,21 +123,38 @@ func (p *picture) setRange() {
 	slices.Sort(known)
 	at := func(q float64) float64 { return known[int(q*float64(len(known)-1))] }
 	p.low, p.high = math.Min(0, at(0.003)), at(0.997)
+	top := p.low + maxPeak*(at(0.97)-p.low)
 	for _, m := range p.marks {
-		if !m.Emission {
-			continue
-		}
-		center, _ := slices.BinarySearch(p.wave, m.Wave)
-		for i := max(0, center-peakPixels); i < min(len(p.smooth), center+peakPixels); i++ {
-			if p.smooth[i] > p.high {
-				p.high = p.smooth[i]
-			}
+		if m.Emission {
+			p.high = math.Max(p.high, math.Min(top, p.peak(m.Wave)))
 		}
 	}
 	if !(p.high > p.low) {
 		p.high = p.low + 1
 	}
 	p.high += 0.04 * (p.high - p.low)
+}
+
+// peak returns the largest smoothed flux around a wavelength.
+func (p *picture) peak(wave float64) float64 {
+	center, _ := slices.BinarySearch(p.wave, wave)
+	peak := math.Inf(-1)
+	for i := max(0, center-peakPixels); i < min(len(p.smooth), center+peakPixels); i++ {
+		if p.smooth[i] > peak {
+			peak = p.smooth[i]
+		}
+	}
+	return peak
+}
+
+// noteCutPeaks says at the name of a line how high it is if the range cuts it.
+func (p *picture) noteCutPeaks() {
+	for i := range p.marks {
+		m := &p.marks[i]
+		if peak := p.peak(m.Wave); m.Emission && peak > p.high {
+			m.Label += fmt.Sprintf(", up to %.3g", peak)
+		}
+	}
 }
 
 // scale takes a power of ten out of fluxes whose numbers would not fit an axis.

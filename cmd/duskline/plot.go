@@ -24,8 +24,9 @@ const (
 	pictureHeight = 6 * vg.Inch
 	pictureDPI    = 110
 	captionHeight = 22 // points below the plot
-	labelBand     = 78 // points that the names of lines take, above or below
-	labelGap      = 11 // points between neighboring names
+	labelSize     = 10.5
+	labelGap      = 12 // points between neighboring names
+	leaderLength  = 20 // points that the leaders need in the band of the names
 	tickLength    = 5
 )
 
@@ -72,10 +73,14 @@ func (p *picture) draw(c draw.Canvas) {
 	pl.Y.Min, pl.Y.Max = p.low, p.high
 	pl.X.Tick.Marker, pl.Y.Tick.Marker = evenTicks{9}, evenTicks{6}
 	pl.Add(zeroLine{})
-	pl.Add(trace{p.wave, p.flux, draw.LineStyle{Color: inkPixels, Width: 0.6}})
-	pl.Add(trace{p.wave, p.sigma, draw.LineStyle{Color: inkSigma, Width: 0.8}})
-	pl.Add(trace{p.wave, p.smooth, draw.LineStyle{Color: inkSmooth, Width: 0.9}})
-	pl.Add(trace{p.wave, p.continuum, draw.LineStyle{Color: inkContinuum, Width: 1.4}})
+	for _, curve := range []trace{
+		{p, p.flux, draw.LineStyle{Color: inkPixels, Width: 0.6}},
+		{p, p.sigma, draw.LineStyle{Color: inkSigma, Width: 0.8}},
+		{p, p.smooth, draw.LineStyle{Color: inkSmooth, Width: 0.9}},
+		{p, p.continuum, draw.LineStyle{Color: inkContinuum, Width: 1.4}},
+	} {
+		pl.Add(curve)
+	}
 	names := &lineNames{picture: p, above: p.pick(true), below: p.pick(false)}
 	names.makeRoom(pl)
 	pl.Add(names)
@@ -119,25 +124,29 @@ func (p *picture) caption(c draw.Canvas) {
 	}
 }
 
-// trace is a curve that is interrupted where it is NaN.
+// trace is a curve that is interrupted where it is NaN and cut at the flux
+// range, so that spikes do not run through the names of lines.
 type trace struct {
-	x, y  []float64
-	style draw.LineStyle
+	picture *picture
+	y       []float64
+	style   draw.LineStyle
 }
 
 // Plot implements plot.Plotter.
 func (t trace) Plot(c draw.Canvas, p *plot.Plot) {
 	toX, toY := p.Transforms(&c)
+	inside := c
+	inside.Min.Y, inside.Max.Y = toY(t.picture.low), toY(t.picture.high)
 	var line []vg.Point
-	for i := range t.x {
+	for i, x := range t.picture.wave {
 		if math.IsNaN(t.y[i]) {
-			c.StrokeLines(t.style, c.ClipLinesXY(line)...)
+			c.StrokeLines(t.style, inside.ClipLinesXY(line)...)
 			line = nil
 			continue
 		}
-		line = append(line, vg.Point{X: toX(t.x[i]), Y: toY(t.y[i])})
+		line = append(line, vg.Point{X: toX(x), Y: toY(t.y[i])})
 	}
-	c.StrokeLines(t.style, c.ClipLinesXY(line)...)
+	c.StrokeLines(t.style, inside.ClipLinesXY(line)...)
 }
 
 // zeroLine is a thin line at zero flux.
@@ -159,24 +168,27 @@ type lineNames struct {
 	above, below []pipeline.Mark
 }
 
+// band returns the height that the names of a row take.
+func band(marks []pipeline.Mark) vg.Length {
+	if len(marks) == 0 {
+		return 0
+	}
+	style := labelStyle(labelSize, color.Black)
+	var longest vg.Length
+	for _, m := range marks {
+		longest = max(longest, style.Width(m.Label))
+	}
+	return longest + leaderLength + 6
+}
+
 // makeRoom widens the flux axis so that the names have bands of their own. The
 // height of the plot in points is known well enough for that.
 func (l *lineNames) makeRoom(pl *plot.Plot) {
-	const inner = float64(pictureHeight) - 130
-	bands := 0.0
-	if len(l.above) > 0 {
-		bands += labelBand
-	}
-	if len(l.below) > 0 {
-		bands += labelBand
-	}
-	perPoint := (pl.Y.Max - pl.Y.Min) / (inner - bands)
-	if len(l.above) > 0 {
-		pl.Y.Max += labelBand * perPoint
-	}
-	if len(l.below) > 0 {
-		pl.Y.Min -= labelBand * perPoint
-	}
+	const inner = pictureHeight - 130
+	above, below := band(l.above), band(l.below)
+	perPoint := (pl.Y.Max - pl.Y.Min) / float64(inner-above-below)
+	pl.Y.Max += float64(above) * perPoint
+	pl.Y.Min -= float64(below) * perPoint
 }
 
 // Plot implements plot.Plotter.
@@ -191,11 +203,11 @@ func (l *lineNames) row(c draw.Canvas, p *plot.Plot, marks []pipeline.Mark, abov
 	for i, m := range marks {
 		wanted[i] = float64(toX(m.Wave))
 	}
-	ink, direction, edge := color.Color(inkEmission), vg.Length(1), c.Max.Y-labelBand
+	ink, direction, edge := color.Color(inkEmission), vg.Length(1), c.Max.Y-band(marks)
 	if !above {
-		ink, direction, edge = inkAbsorption, -1, c.Min.Y+labelBand
+		ink, direction, edge = inkAbsorption, -1, c.Min.Y+band(marks)
 	}
-	style := labelStyle(9, ink)
+	style := labelStyle(labelSize, ink)
 	style.Rotation = math.Pi / 2
 	style.YAlign = draw.YCenter
 	style.XAlign = draw.XLeft
@@ -206,8 +218,8 @@ func (l *lineNames) row(c draw.Canvas, p *plot.Plot, marks []pipeline.Mark, abov
 	for i, x := range spread(wanted, labelGap, float64(c.Min.X)+labelGap/2, float64(c.Max.X)-labelGap/2) {
 		at, line := vg.Length(x), vg.Length(wanted[i])
 		from := toY(l.touch(marks[i].Wave, above)) + 5*direction
-		c.StrokeLines(leader, []vg.Point{{X: line, Y: from}, {X: line, Y: edge + 2*direction}, {X: at, Y: edge + 12*direction}})
-		c.FillText(style, vg.Point{X: at, Y: edge + 14*direction}, marks[i].Label)
+		c.StrokeLines(leader, []vg.Point{{X: line, Y: from}, {X: line, Y: edge + 4*direction}, {X: at, Y: edge + (leaderLength-2)*direction}})
+		c.FillText(style, vg.Point{X: at, Y: edge + leaderLength*direction}, marks[i].Label)
 	}
 }
 
@@ -240,7 +252,7 @@ func (r restAxis) Plot(c draw.Canvas, p *plot.Plot) {
 	toX, _ := p.Transforms(&c)
 	line := draw.LineStyle{Color: color.Black, Width: 0.5}
 	c.StrokeLine2(line, c.Min.X, c.Max.Y, c.Max.X, c.Max.Y)
-	style := labelStyle(9, color.Black)
+	style := labelStyle(10, color.Black)
 	style.XAlign, style.YAlign = draw.XCenter, draw.YBottom
 	for _, t := range (evenTicks{9}).Ticks(p.X.Min/r.factor, p.X.Max/r.factor) {
 		x := toX(t.Value * r.factor)
@@ -248,7 +260,7 @@ func (r restAxis) Plot(c draw.Canvas, p *plot.Plot) {
 		c.FillText(style, vg.Point{X: x, Y: c.Max.Y + tickLength + 1}, t.Label)
 	}
 	style.XAlign = draw.XRight
-	c.FillText(style, vg.Point{X: c.Min.X - 6, Y: c.Max.Y + tickLength + 1}, "rest [Å]")
+	c.FillText(style, vg.Point{X: c.Min.X - 18, Y: c.Max.Y + tickLength + 1}, "rest [Å]")
 }
 
 // evenTicks places about n labeled ticks at steps of 1, 2 or 5 times a power of
@@ -267,7 +279,8 @@ func (e evenTicks) Ticks(low, high float64) []plot.Tick {
 	decimals := int(math.Max(0, -math.Floor(math.Log10(step)+1e-9)))
 	var ticks []plot.Tick
 	for i := math.Ceil(low / step); i*step <= high*(1+1e-12); i++ {
-		ticks = append(ticks, plot.Tick{Value: i * step, Label: fmt.Sprintf("%.*f", decimals, i*step)})
+		value := i*step + 0 // no minus before a zero
+		ticks = append(ticks, plot.Tick{Value: value, Label: fmt.Sprintf("%.*f", decimals, value)})
 	}
 	return ticks
 }

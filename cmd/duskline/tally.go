@@ -5,7 +5,6 @@ import (
 	"io"
 	"path/filepath"
 	"strings"
-	"text/tabwriter"
 
 	"duskline/catalog"
 	"duskline/pipeline"
@@ -13,23 +12,25 @@ import (
 
 // writeTally prints what a run came to: a line a class, a column a verdict.
 func writeTally(w io.Writer, s *pipeline.Summary) {
-	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', tabwriter.AlignRight)
 	verdicts := catalog.Verdicts()
-	fmt.Fprintf(t, "class\t%s\tall\t\n", strings.Join(verdicts, "\t"))
+	fmt.Fprintf(w, "%-10s", "class")
+	for _, v := range verdicts {
+		fmt.Fprintf(w, "%11s", v)
+	}
+	fmt.Fprintf(w, "%11s\n", "all")
 	line := func(name string, counts map[string]int64) {
 		var all int64
-		fmt.Fprint(t, name)
+		fmt.Fprintf(w, "%-10s", name)
 		for _, v := range verdicts {
-			fmt.Fprintf(t, "\t%d", counts[v])
+			fmt.Fprintf(w, "%11d", counts[v])
 			all += counts[v]
 		}
-		fmt.Fprintf(t, "\t%d\t\n", all)
+		fmt.Fprintf(w, "%11d\n", all)
 	}
 	for _, class := range catalog.Classes() {
 		line(class, s.Classes[class])
 	}
 	line("all", s.Verdicts)
-	t.Flush()
 	var flags []string
 	for _, name := range catalog.FlagNames() {
 		if n := s.Flags[name]; n > 0 {
