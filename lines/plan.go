@@ -113,13 +113,13 @@ func (s *Scratch) settle(a, b *track) {
 	if s.apart(a, b) > mergeIons*width {
 		return
 	}
-	sg := a.snr
-	if math.Abs(b.snr) > math.Abs(sg) {
-		sg = b.snr
+	sg := a.first
+	if math.Abs(b.first) > math.Abs(sg) {
+		sg = b.first
 	}
 	carrier, silent := a, b
 	sa, sb := s.support(a, sg), s.support(b, sg)
-	ratio := math.Abs(b.snr) / max(math.Abs(a.snr), 1)
+	ratio := math.Abs(b.first) / max(math.Abs(a.first), 1)
 	switch {
 	case min(sa, sb) < 0, ratio > 0.8 && ratio < 1.25, !a.seen() && !b.seen():
 		if sb > sa {

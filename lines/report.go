@@ -17,33 +17,41 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 	t := &s.tracks[c.track]
 	r := &t.result
 	r.Blend = s.overlaps(ci)
-	variance := m.cov[c.amp*m.n+c.amp]
-	if !ok || !(variance > 0) || math.IsInf(variance, 0) {
+	sd := scale * math.Sqrt(m.cov[c.amp*m.n+c.amp])
+	flux, doubt := c.share*m.p[c.amp], s.shareDoubt(ci)
+	fluxErr := math.Hypot(math.Abs(c.share)*sd, doubt)
+	if !ok || !(sd > 0) || !finite(flux, fluxErr) {
 		r.Reason = ReasonNoFit
 		return
 	}
 	mu, sigma, _ := q.place(ci, q.windows[0].arm, m.p)
 	r.OnSky = onSky(s.opt.Sky, mu-1.5*sigma, mu+1.5*sigma)
-	flux := c.share * m.p[c.amp]
-	doubt := s.shareDoubt(ci)
-	r.Flux = flux
-	r.FluxErr = math.Hypot(scale*math.Abs(c.share)*math.Sqrt(variance), doubt)
-	r.SNR = math.Abs(m.p[c.amp]) / (scale * math.Sqrt(variance))
-
+	r.Flux, r.FluxErr, r.SNR = flux, fluxErr, math.Abs(m.p[c.amp])/sd
 	seen := r.SNR >= seenFrom
+
+	z1 := 1 + s.opt.Z
 	cont, known := s.continuumAt(ci, scale)
 	r.Continuum = cont
-	z1 := 1 + s.opt.Z
 	if known {
-		// The gradient of W = -flux/cont stands in grad: see continuumAt.
-		r.EWRest = -flux / cont / z1
+		// The derivatives of the continuum stand in grad; those of W =
+		// -flux/cont follow.
 		for i := range s.grad {
 			s.grad[i] *= flux / (cont * cont) / z1
 		}
 		s.grad[c.amp] -= c.share / cont / z1
-		r.EWRestErr = math.Hypot(scale*math.Sqrt(max(0, m.quadratic(s.grad))), doubt/cont/z1)
+		ew := -flux / cont / z1
+		err := math.Hypot(scale*math.Sqrt(max(0, m.quadratic(s.grad))), doubt/cont/z1)
+		if known = finite(ew, err); known {
+			r.EWRest, r.EWRestErr = ew, err
+		}
+	}
+	if known {
 		sum := s.directSum(ci)
-		r.EWSum, r.EWSumErr, r.Pixels = sum.ew/z1, math.Hypot(scale*math.Sqrt(sum.variance)/z1, doubt/cont/z1), sum.pixels
+		r.Pixels = sum.pixels
+		ew, err := sum.ew/z1, math.Hypot(scale*math.Sqrt(sum.variance)/z1, doubt/cont/z1)
+		if finite(ew, err) {
+			r.EWSum, r.EWSumErr = ew, err
+		}
 	} else {
 		r.Reason = ReasonNoContinuum
 	}
@@ -57,6 +65,15 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 		r.UpperLimit = math.Abs(r.EWRest) + 3*r.EWRestErr
 	}
 	s.reportKinematics(r, e, seen, scale)
+}
+
+func finite(v ...float64) bool {
+	for _, x := range v {
+		if math.IsNaN(x) || math.IsInf(x, 0) {
+			return false
+		}
+	}
+	return true
 }
 
 func (s *Scratch) reportKinematics(r *Result, e *tie, seen bool, scale float64) {

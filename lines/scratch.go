@@ -50,6 +50,7 @@ type track struct {
 	usable  bool    // takes part in a fit
 	strong  bool    // claims the pixels around it
 	snr     float64 // of the best box, signed: negative in absorption
+	first   float64 // snr before stronger lines claimed their pixels
 	v, s    float64 // offset and total sigma of the best box, or the guess
 	result  Result
 }
@@ -60,10 +61,10 @@ type kinematics struct {
 }
 
 const (
-	freeFrom   = 4.0 // box S/N from which a line may find its own offset and width
-	ownFrom    = 7.0 // amplitude S/N from which an ion in a blend leaves the main ion's offset and width
-	seenFrom   = 3.0 // profile S/N from which a line counts as seen
-	anchorFrom = 5.0 // profile S/N from which a line may lend its offset and width
+	freeFrom   = 4.0  // box S/N from which a line may find its own offset and width
+	ownFrom    = 12.0 // amplitude S/N from which an ion in a blend leaves the main ion's offset and width
+	seenFrom   = 3.0  // profile S/N from which a line counts as seen
+	anchorFrom = 5.0  // profile S/N from which a line may lend its offset and width
 )
 
 func sign(x float64) int {

@@ -37,6 +37,7 @@ func (s *Scratch) findTracks() {
 		t.s = max(math.Hypot(s.opt.WidthGuess, t.sres), 0.5*t.pix)
 		t.center, t.next = c, s.nextInGroup(i, t.broad)
 		s.search(&t)
+		t.first = t.snr
 		s.tracks = append(s.tracks, t)
 	}
 	s.refine()

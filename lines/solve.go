@@ -16,7 +16,7 @@ func (s *Scratch) measureBlend(b *blend) {
 		s.build(main)
 		ok = s.fit(round)
 		s.readKinematics()
-		if !s.revise(main, ok) {
+		if round == maxRounds-1 || !s.revise(main, ok) {
 			break
 		}
 	}
