@@ -207,7 +207,7 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 	s.basis = basis
 	s.scaled = append(s.scaled[:0], l.resid...)
 	s.weight = append(s.weight[:0], l.weight...)
-	capDepth(l)
+	capOutliers(l)
 	s.coarse.bin(l, coarseFactor)
 	if !l.prepare(basis, f.opt.Stiffness, ridge) || !s.coarse.prepare(basis, f.opt.Stiffness, ridge) {
 		res.FewPixels = true
@@ -217,19 +217,19 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 	return true
 }
 
-// capDepth lowers the weight of pixels that lie far below the continuum, so
-// that none counts for more than depthCap sigmas in the first ranking. Else a
-// single damped absorber decides which trial redshifts are looked at again.
-func capDepth(l *level) {
+// capOutliers lowers the weight of pixels far from the continuum, so that none
+// counts for more than outlierCap sigmas in the first ranking. Else one damped
+// absorber or cosmic ray decides which trial redshifts are looked at again.
+func capOutliers(l *level) {
 	for i, w := range l.weight {
 		d := l.cont[i] - l.resid[i]
-		if q := w * d * d; d > 0 && q > depthCap*depthCap {
-			l.weight[i] *= depthCap * depthCap / q
+		if q := w * d * d; q > outlierCap*outlierCap {
+			l.weight[i] *= outlierCap * outlierCap / q
 		}
 	}
 }
 
-const depthCap = 8.0
+const outlierCap = 8.0
 
 // limitRange takes the weight of pixels outside the searched wavelengths, if
 // enough are left inside: in the far ultraviolet the star families have no
