@@ -114,10 +114,8 @@ func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 		return Outcome{Object: obj}
 	}
 	b.measure(s, &res)
-	for i := range b.results {
-		if b.results[i].OnSky && supports(&res, b.results[i].Name) {
-			obj.Flags |= catalog.OnSkyLine
-		}
+	if b.leansOnSky(&res) {
+		obj.Flags |= catalog.OnSkyLine
 	}
 	return Outcome{Object: obj, Lines: lineRows(b.results)}
 }
@@ -125,6 +123,22 @@ func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 // minSharedPixels is the overlap that arms need before one is scaled to meet
 // the other.
 const minSharedPixels = 10
+
+// leansOnSky reports whether fewer than two supporting lines are left when
+// those on night-sky lines and telluric bands are set aside, and any are there.
+func (b *Bench) leansOnSky(res *redshift.Result) bool {
+	clean, sky := 0, 0
+	for i := range b.results {
+		switch r := &b.results[i]; {
+		case !supports(res, r.Name):
+		case r.OnSky:
+			sky++
+		default:
+			clean++
+		}
+	}
+	return sky > 0 && clean < 2
+}
 
 // supports reports whether a line stands out in the winning model.
 func supports(res *redshift.Result, name string) bool {

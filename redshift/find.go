@@ -271,22 +271,21 @@ func medianSNR(s *Scratch, flux, ivar []float64) float64 {
 func (f *Finder) nominate(s *Scratch, fam *Family, width float64) {
 	s.shifts = s.shifts[:0]
 	narrow := fam.narrowest(width) / (speedOfLight * ln10 * s.full.step) // pixels
-	l, coarse := &s.full, false
-	if narrow >= 1.5*coarseFactor {
-		l, coarse = &s.coarse, true
+	l := &s.full
+	if fam.headed() || narrow >= 1.5*coarseFactor {
+		l = &s.coarse
 	}
-	kmin, kmax := math.Log10(1+fam.ZMin), math.Log10(1+fam.ZMax)
-	if fam.headed() || kmax-kmin < 60*s.full.step {
-		// A short range, or bands that have no place in the scan: try it whole.
+	if fam.headed() {
+		// Bands have no place in the scan; such families have short ranges, and
+		// the whole of it is tried.
+		first, last := math.Log10(1+fam.ZMin), math.Log10(1+fam.ZMax)
 		d := 4 * s.full.step
-		for k := 0; kmin+float64(k)*d <= kmax; k++ {
-			s.shifts = append(s.shifts, kmin+float64(k)*d)
+		for k := 0; first+float64(k)*d <= last; k++ {
+			s.shifts = append(s.shifts, first+float64(k)*d)
 		}
-		l, coarse = &s.coarse, true
 	} else {
 		s.shifts = s.scan.nominate(s.shifts, &s.full, fam, width, &f.survive, f.opt.Nominees, max(6, int(3*narrow)))
 	}
-	_ = coarse
 	for _, shift := range s.shifts {
 		p := peak{family: fam, width: width, shift: shift}
 		p.fit = s.bench.evaluate(l, fam, width, shift)

@@ -87,6 +87,9 @@ type head struct {
 	Blue  bool    `toml:"blue"` // band degrades to the blue
 }
 
+// headedRange is the longest redshift range of a family with band heads.
+const headedRange = 0.05
+
 var classes = map[string]bool{"galaxy": true, "quasar": true, "star": true, "nebula": true}
 
 // ParseRecipe reads a family recipe and compiles it against the line list.
@@ -148,6 +151,9 @@ func ParseRecipe(file string, text []byte, list *linelist.List) (*Family, error)
 	}
 	if len(errs) > 0 {
 		return nil, errors.Join(errs...)
+	}
+	if f.headed() && f.ZMax-f.ZMin > headedRange {
+		return nil, fmt.Errorf("%s: redshift = %v: a family with band heads is tried as a whole and may span %g at most", file, r.Redshift, headedRange)
 	}
 	sum := sha256.Sum256(text)
 	f.Digest = hex.EncodeToString(sum[:8])
