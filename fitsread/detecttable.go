@@ -140,6 +140,9 @@ func (f *File) tableCandidate(h *hdu, byUCD bool) (*candidate, error) {
 		}
 	}
 	for _, want := range []role{roleQuality, roleGood, roleMask} {
+		if want == roleMask && a.weightRole == roleIvar {
+			continue // never applied beside inverse variances, see applyMask
+		}
 		if c := pick(want, like); c != nil {
 			a.masks = append(a.masks, f.maskFor(place{hdu: h, col: c}, want))
 		}

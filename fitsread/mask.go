@@ -20,7 +20,6 @@ func blankEnds(seg *spectrum.Segment, hasErrors bool) {
 		return seg.Flux[i] == seg.Flux[j] &&
 			(!hasErrors || seg.Flux[i] == 0 || seg.Ivar[i] == 0 || seg.Ivar[j] == 0 || seg.Ivar[i] == seg.Ivar[j])
 	}
-	noisy := hasErrors && typicalRatio(seg) > 0.1
 	smooth := func(i int) bool { // pixel i against its neighbors
 		d := 2*seg.Flux[i] - seg.Flux[i-1] - seg.Flux[i+1]
 		return seg.Ivar[i] == 0 || d*d*seg.Ivar[i] < 1e-4
@@ -32,17 +31,17 @@ func blankEnds(seg *spectrum.Segment, hasErrors bool) {
 	for last > 0 && flat(last-1, last) {
 		last--
 	}
-	if noisy {
-		k := 1
-		for k+1 < n && smooth(k) {
-			k++
+	if hasErrors {
+		i, j := 1, n-2
+		for i+1 < n && smooth(i) {
+			i++
 		}
-		first = max(first, k)
-		k = n - 2
-		for k > 0 && smooth(k) {
-			k--
+		for j > 0 && smooth(j) {
+			j--
 		}
-		last = min(last, k+1)
+		if (i >= flatRun || n-j-1 >= flatRun) && typicalRatio(seg) > 0.1 {
+			first, last = max(first, i), min(last, j+1)
+		}
 	}
 	if first >= flatRun {
 		clear(seg.Ivar[:first])

@@ -137,31 +137,34 @@ func estimateIvar(flux, ivar []float64) {
 // Where it is above, only pixels below S/N 20 count, since at higher S/N the
 // lines of the object itself scatter more than its noise; 100 pixels must remain.
 func scatterRatio(flux, ivar []float64) (ratio float64, suspect bool) {
-	var all, faint []float64
-	for i := 2; i+2 < len(flux); i++ {
-		a, b, c := ivar[i-2], ivar[i], ivar[i+2]
-		if !(a > 0 && b > 0 && c > 0) {
-			continue
-		}
-		q := math.Abs(2*flux[i]-flux[i-2]-flux[i+2]) / math.Sqrt(4/b+1/a+1/c)
-		if q-q != 0 {
-			continue
-		}
-		all = append(all, q)
-		if flux[i]*flux[i]*b < 20*20 {
-			faint = append(faint, q)
-		}
-	}
-	const least = 100
-	if len(all) < least {
+	const least, maxSN = 100, 20
+	q := stated(flux, ivar, math.Inf(1))
+	if len(q) < least {
 		return 0, false
 	}
-	if ratio = madToSigma * medianOf(all); ratio < 1.0/3 {
-		return ratio, true
+	if ratio = madToSigma * medianOf(q); ratio <= 3 {
+		return ratio, ratio < 1.0/3
 	}
-	if ratio > 3 && len(faint) >= least {
-		ratio = madToSigma * medianOf(faint)
-		return ratio, ratio > 3
+	if q = stated(flux, ivar, maxSN*maxSN); len(q) < least {
+		return ratio, false
 	}
-	return ratio, false
+	ratio = madToSigma * medianOf(q)
+	return ratio, ratio > 3
+}
+
+// stated returns |2 f(i) - f(i-2) - f(i+2)| over its stated error for pixels
+// whose squared S/N is below limit.
+func stated(flux, ivar []float64, limit float64) []float64 {
+	out := make([]float64, 0, len(flux))
+	for i := 2; i+2 < len(flux); i++ {
+		a, b, c := ivar[i-2], ivar[i], ivar[i+2]
+		if !(a > 0 && b > 0 && c > 0) || flux[i]*flux[i]*b >= limit {
+			continue
+		}
+		d := math.Abs(2*flux[i] - flux[i-2] - flux[i+2])
+		if q := d / math.Sqrt(4/b+1/a+1/c); q-q == 0 {
+			out = append(out, q)
+		}
+	}
+	return out
 }

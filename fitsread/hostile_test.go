@@ -1,0 +1,310 @@
+package fitsread
+
+import (
+	"errors"
+	"io/fs"
+	"math"
+	"math/rand/v2"
+	"os"
+	"path/filepath"
+	"strings"
+	"syscall"
+	"testing"
+	"time"
+
+	"duskline/spectrum"
+
+	"github.com/google/go-cmp/cmp"
+	"github.com/google/go-cmp/cmp/cmpopts"
+)
+
+// Each hostile file names the failure it must cause.
+func TestHostileFiles(t *testing.T) {
+	good := string(pixelTable(64))
+	swap := func(from, to string) []byte {
+		if !strings.Contains(good, from) {
+			t.Fatalf("the good file has no %q", from)
+		}
+		return []byte(strings.Replace(good, from, to, 1))
+	}
+	card := func(key, value string) []byte { // replaces a card of the table's header
+		i := strings.Index(good[blockLen:], key)
+		if i < 0 {
+			t.Fatalf("the good file has no card %s", key)
+		}
+		i += blockLen
+		c := key + strings.Repeat(" ", 8-len(key)) + "= " + value
+		return []byte(good[:i] + c + strings.Repeat(" ", 80-len(c)) + good[i+80:])
+	}
+	heap := func(n, at uint32) []byte {
+		raw := join(empty(), table("", 40, []tcol{{name: "WAVE", form: "1PE(9)", arrays: make([][]float64, 40)}, {name: "FLUX", form: "1PE(9)", arrays: make([][]float64, 40)}}))
+		i := 2 * blockLen
+		copy(raw[i:], []byte{byte(n >> 24), byte(n >> 16), byte(n >> 8), byte(n), byte(at >> 24), byte(at >> 16), byte(at >> 8), byte(at)})
+		return raw
+	}
+	tests := []struct {
+		name string
+		data []byte
+		kind error
+	}{
+		{"empty", nil, ErrNotFITS},
+		{"text", []byte("wave flux\n4000 1.0\n"), ErrNotFITS},
+		{"binary", []byte{0x89, 'P', 'N', 'G', 0, 0, 0, 1}, ErrNotFITS},
+		{"gzip of nothing", []byte{0x1f, 0x8b}, ErrTruncated},
+		{"no END", []byte(strings.Repeat(" ", 0) + "SIMPLE  =                    T" + strings.Repeat(" ", 5000)), ErrTruncated},
+		{"only a primary header", empty(), ErrNoSpectrum},
+		{"BITPIX 17", swap("BITPIX  =                    8", "BITPIX  =                   17"), ErrBadHeader},
+		{"NAXIS a word", swap("NAXIS   =                    0", "NAXIS   =                 many"), ErrBadHeader},
+		{"NAXIS 999", swap("NAXIS   =                    0", "NAXIS   =                  999"), ErrBadHeader},
+		{"row of 1e11 bytes", card("NAXIS1", "        100000000000"), ErrBadHeader},
+		{"1e18 rows", card("NAXIS2", " 1000000000000000000"), ErrBadHeader},
+		{"negative rows", card("NAXIS2", "                  -5"), ErrBadHeader},
+		{"rows beyond the file", card("NAXIS2", "                9999"), ErrTruncated},
+		{"heap of 1e18 bytes", card("PCOUNT", " 1000000000000000000"), ErrTruncated},
+		{"999 columns", card("TFIELDS", "                 999"), ErrBadHeader},
+		{"1e9 columns", card("TFIELDS", "          1000000000"), ErrBadHeader},
+		{"column wider than the row", card("TFORM2", "'999E    '"), ErrBadHeader},
+		{"column of 0E", card("TFORM2", "'0E      '"), ErrBadHeader},
+		{"lower-case nonsense", card("TFORM2", "'zz      '"), ErrBadHeader},
+		{"descriptor of 4e9 elements", heap(math.MaxUint32, 0), ErrBadHeader},
+		{"descriptor beyond the heap", heap(9, 1<<30), ErrBadHeader},
+		{"image beyond the limit", image(true, 8, []int{1 << 30}, nil, logAxis...), ErrTooLarge},
+		{"image beyond the file", image(true, 8, []int{1 << 20}, nil, logAxis...), ErrTruncated},
+	}
+	for _, tt := range tests {
+		f, err := Open(save(t, tt.data), Options{})
+		if err == nil {
+			_, err = f.Read(0)
+			f.Close()
+		}
+		var re *ReadError
+		if !errors.Is(err, tt.kind) || !errors.As(err, &re) {
+			t.Errorf("%s: %v, want %v", tt.name, err, tt.kind)
+			continue
+		}
+		if re.Hint == "" || !strings.Contains(err.Error(), "lantern.fits") || errors.Is(err, ErrInternal) {
+			t.Errorf("%s: %v", tt.name, err)
+		}
+	}
+}
+
+// Paths that are no files are refused without blocking.
+func TestNotFiles(t *testing.T) {
+	dir := t.TempDir()
+	pipe := filepath.Join(dir, "pipe")
+	if err := syscall.Mkfifo(pipe, 0o644); err != nil {
+		missing(t, "no pipes here: "+err.Error())
+	}
+	link := filepath.Join(dir, "link.fits")
+	if err := os.Symlink(pipe, link); err != nil {
+		t.Fatal(err)
+	}
+	for path, kind := range map[string]error{
+		dir: ErrNotRegular, pipe: ErrNotRegular, link: ErrNotRegular, "/dev/zero": ErrNotRegular,
+		filepath.Join(dir, "none.fits"): fs.ErrNotExist,
+	} {
+		done := make(chan error, 1)
+		go func() {
+			_, err := Open(path, Options{})
+			done <- err
+		}()
+		select {
+		case err := <-done:
+			if !errors.Is(err, kind) {
+				t.Errorf("%s: %v, want %v", path, err, kind)
+			}
+		case <-time.After(10 * time.Second): // far beyond any disk: it hangs
+			t.Fatalf("%s: still opening", path)
+		}
+	}
+	secret := filepath.Join(dir, "secret.fits")
+	if err := os.WriteFile(secret, pixelTable(64), 0); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := os.Open(secret); err == nil {
+		return // run by a user whom permissions do not bind
+	}
+	if _, err := Open(secret, Options{}); !errors.Is(err, fs.ErrPermission) {
+		t.Errorf("no permission: %v", err)
+	}
+}
+
+// Data that say nothing are read as such.
+func TestUselessData(t *testing.T) {
+	n := 64
+	nan := constant(n, math.NaN())
+	for name, col := range map[string]tcol{
+		"all NaN flux":     {name: "FLUX", form: "D", data: nan},
+		"all infinite":     {name: "FLUX", form: "D", data: constant(n, math.Inf(1))},
+		"huge":             {name: "FLUX", form: "D", data: constant(n, math.MaxFloat64)},
+		"all zero":         {name: "FLUX", form: "D", data: constant(n, 0)},
+		"smallest numbers": {name: "FLUX", form: "D", data: constant(n, 5e-324)},
+	} {
+		s := first(t, join(empty(), table("", n, []tcol{{name: "WAVE", form: "D", unit: "nm", data: ramp(n, 400, 1)}, col})))
+		if s.Segments[0].Good() != 0 {
+			t.Errorf("%s: %d good pixels", name, s.Segments[0].Good())
+		}
+	}
+	for name, wave := range map[string][]float64{"NaN": nan, "zero": constant(n, 0), "negative": constant(n, -1), "equal": constant(n, 4000)} {
+		f := open(t, join(empty(), table("", n, []tcol{{name: "WAVE", form: "D", unit: "nm", data: wave}, {name: "FLUX", form: "D", data: noisy(n, 1)}})), Options{})
+		if _, err := f.Read(0); !errors.Is(err, ErrBadData) {
+			t.Errorf("%s wavelengths: %v", name, err)
+		}
+	}
+}
+
+// tryFile opens and reads all of a file. Whatever happens must be spectra that
+// keep the contract or errors that say what to do, and never the last resort.
+func tryFile(t testing.TB, path string) (spectra int, err error) {
+	t.Helper()
+	f, err := Open(path, Options{MaxPixels: 1 << 16, MaxUnpacked: 1 << 22, Layouts: []Layout{example(t)}})
+	if err == nil {
+		defer f.Close()
+		for i := range min(f.Count(), 8) {
+			var s *spectrum.Spectrum
+			if s, err = f.Read(i); err == nil {
+				checkContract(t, s)
+				spectra++
+			}
+			if err != nil {
+				break
+			}
+		}
+		f.Describe()
+	}
+	if err != nil {
+		var re *ReadError
+		if !errors.As(err, &re) || re.File != path || re.Hint == "" || errors.Is(err, ErrInternal) {
+			t.Fatalf("%#v: %v", err, err)
+		}
+	}
+	return spectra, err
+}
+
+// samples are small files of every layout.
+func samples() map[string][]byte {
+	n := 40
+	return map[string][]byte{
+		"pixels": pixelTable(n),
+		"cells": join(empty(), table("", 2, []tcol{{name: "ORDER", form: "I", data: []float64{1, 2}},
+			{name: "WAVE", form: "40D", unit: "nm", data: ramp(2*n, 400, 1)}, {name: "FLUX", form: "40E", data: noisy(2*n, 1)}})),
+		"heap": join(empty(), table("", 2, []tcol{{name: "LOGLAM", form: "1PE(40)", arrays: [][]float64{ramp(n, 3.6, 1e-4), ramp(n, 3.6, 1e-4)}},
+			{name: "FLUX", form: "QE", arrays: [][]float64{noisy(n, 1), noisy(n, 1)}}})),
+		"axis": image(true, -32, []int{n}, noisy(n, 1), logAxis...),
+		"lines": image(true, -32, []int{n, 3}, stack(noisy(n, 1), constant(n, 1), constant(n, 0)),
+			append([]string{kv("ARRAY1", "FLUX"), kv("ARRAY2", "ERROR"), kv("ARRAY3", "MASK")}, logAxis...)...),
+		"arms":    join(empty(), armHDUs("B", n, 2, 4000), armHDUs("R", n, 2, 5000)),
+		"example": exampleFile(),
+		"gzip":    gzipped(pixelTable(n)),
+		"table axis": join(image(true, -32, []int{n}, noisy(n, 1), kv("CTYPE1", "WAVE-TAB"), kv("CRVAL1", 0), kv("CDELT1", 1),
+			kv("PS1_0", "W"), kv("PS1_1", "C")), table("W", 1, []tcol{{name: "C", form: "40D", unit: "nm", data: ramp(n, 500, 1)}})),
+	}
+}
+
+// A file cut anywhere gives an error or what was whole before the cut.
+func TestTruncated(t *testing.T) {
+	r := rand.New(rand.NewPCG(5, 6))
+	path := filepath.Join(t.TempDir(), "cut.fits")
+	for name, data := range samples() {
+		var cuts []int
+		for edge := 0; edge <= len(data); edge += blockLen {
+			cuts = append(cuts, edge-1, edge, edge+1)
+		}
+		for range 60 {
+			cuts = append(cuts, r.IntN(len(data)))
+		}
+		for _, cut := range cuts {
+			if cut < 0 || cut > len(data) {
+				continue
+			}
+			if err := os.WriteFile(path, data[:cut], 0o644); err != nil {
+				t.Fatal(err)
+			}
+			n, err := tryFile(t, path)
+			if cut == len(data) && err != nil {
+				t.Errorf("%s: whole, and yet %v", name, err)
+			}
+			if cut < blockLen-1 && (err == nil || n > 0) {
+				t.Errorf("%s cut at %d: read", name, cut)
+			}
+		}
+	}
+}
+
+// A cut inside the only data is told as such.
+func TestTruncatedKind(t *testing.T) {
+	data := pixelTable(500)
+	_, err := tryFile(t, save(t, data[:3*blockLen]))
+	if !errors.Is(err, ErrTruncated) {
+		t.Errorf("%v", err)
+	}
+	// Missing padding takes nothing.
+	n := 500 * 16
+	if spectra, err := tryFile(t, save(t, data[:2*blockLen+n])); spectra != 1 {
+		t.Errorf("without padding: %v", err)
+	}
+	// Neither does a cut in a later HDU.
+	two := join(data, table("NOTES", 50, []tcol{{name: "X", form: "D", data: ramp(50, 0, 1)}}))
+	if spectra, err := tryFile(t, save(t, two[:len(two)-2000])); spectra != 1 {
+		t.Errorf("later HDU cut: %v", err)
+	}
+}
+
+// Bytes changed at random, mostly in headers.
+func TestMutated(t *testing.T) {
+	r := rand.New(rand.NewPCG(7, 8))
+	path := filepath.Join(t.TempDir(), "mutant.fits")
+	rounds := 150
+	if testing.Short() {
+		rounds = 20
+	}
+	for _, name := range []string{"pixels", "cells", "heap", "axis", "lines", "arms", "example", "table axis"} {
+		data := samples()[name]
+		for range rounds {
+			m := append([]byte{}, data...)
+			for range 1 + r.IntN(4) {
+				i := r.IntN(len(m))
+				switch r.IntN(3) {
+				case 0:
+					m[i] = byte(r.IntN(256))
+				case 1:
+					m[i] = "0123456789-TPQEDK'= "[r.IntN(20)]
+				default:
+					j := i / cardLen * cardLen // another card in this one's place
+					k := r.IntN(len(m)/cardLen) * cardLen
+					copy(m[j:j+cardLen], m[k:k+cardLen])
+				}
+			}
+			if err := os.WriteFile(path, m, 0o644); err != nil {
+				t.Fatal(err)
+			}
+			tryFile(t, path)
+		}
+	}
+}
+
+// FuzzOpen: any bytes give spectra that keep the contract, or errors.
+func FuzzOpen(f *testing.F) {
+	for _, data := range samples() {
+		f.Add(data)
+	}
+	path := filepath.Join(f.TempDir(), "fuzz.fits")
+	f.Fuzz(func(t *testing.T, data []byte) {
+		if err := os.WriteFile(path, data, 0o644); err != nil {
+			t.Fatal(err)
+		}
+		tryFile(t, path)
+	})
+}
+
+// A redshift in the input, in whatever card or table, changes nothing.
+func TestRedshiftIsNotRead(t *testing.T) {
+	n := 64
+	cols := []tcol{{name: "loglam", form: "D", data: ramp(n, 3.6, 1e-4)}, {name: "flux", form: "E", data: noisy(n, 1)}, {name: "ivar", form: "E", data: constant(n, 1)}}
+	results := table("RESULT", 1, []tcol{{name: "Z", form: "E", data: []float64{2.5}}, {name: "CLASS", form: "4A", text: []string{"STAR"}}})
+	plain := first(t, join(empty(), table("COADD", n, cols)))
+	told := first(t, join(empty(kv("Z", 2.5), kv("REDSHIFT", 2.5), kv("ZSOURCE", 2.5), kv("CLASS", "STAR")), table("COADD", n, cols, kv("Z", 2.5)), results))
+	if diff := cmp.Diff(plain, told, cmpopts.EquateNaNs(), cmpopts.IgnoreFields(spectrum.Spectrum{}, "SourceFile")); diff != "" {
+		t.Error(diff)
+	}
+}
