@@ -6,6 +6,7 @@ import (
 	"io"
 	"io/fs"
 	"math"
+	"path/filepath"
 	"strings"
 	"text/tabwriter"
 
@@ -35,6 +36,9 @@ Worth doing once for every kind of file, before a run: what had to be assumed ab
 }
 
 func (c *peekCmd) run(a *app) (int, error) {
+	if c.Plot != "" && !strings.EqualFold(filepath.Ext(c.Plot), ".png") {
+		return 0, &pipeline.InputError{Problems: []string{fmt.Sprintf("the picture %s would be no PNG by its name; give a name that ends in .png", c.Plot)}}
+	}
 	set, err := readSettings(a, c.Settings)
 	if err != nil {
 		return 0, err
@@ -83,8 +87,8 @@ func (c *peekCmd) run(a *app) (int, error) {
 	return exitDone, nil
 }
 
-// unreadable names the file as it was given. One that is not there is a wrong
-// command.
+// unreadable names the file as it was given. One that is not there,
+// or no file, is a wrong command.
 func (c *peekCmd) unreadable(err error) error {
 	var re *fitsread.ReadError
 	if errors.As(err, &re) {
@@ -92,7 +96,7 @@ func (c *peekCmd) unreadable(err error) error {
 		named.File = c.File
 		err = &named
 	}
-	if errors.Is(err, fs.ErrNotExist) {
+	if errors.Is(err, fs.ErrNotExist) || errors.Is(err, fitsread.ErrNotRegular) {
 		return &pipeline.InputError{Problems: []string{err.Error()}}
 	}
 	return &unreadableError{err}

@@ -6,8 +6,6 @@ import (
 	"image/color"
 	"math"
 	"os"
-	"path/filepath"
-	"strings"
 
 	"duskline/pipeline"
 
@@ -41,9 +39,6 @@ var (
 
 // savePicture draws a picture into a PNG file.
 func savePicture(path string, p *picture) error {
-	if ext := strings.ToLower(filepath.Ext(path)); ext != ".png" {
-		return &pipeline.InputError{Problems: []string{fmt.Sprintf("the picture %s would be no PNG by its name; give a name that ends in .png", path)}}
-	}
 	canvas := vgimg.PngCanvas{Canvas: vgimg.NewWith(vgimg.UseWH(pictureWidth, pictureHeight), vgimg.UseDPI(pictureDPI))}
 	p.draw(draw.New(canvas))
 	var png bytes.Buffer
