@@ -27,7 +27,7 @@ var edges = map[string][]string{
 	"linelist":         {"hydrogen"},
 	"fitsread":         {"spectrum"},
 	"continuum":        {"spectrum"},
-	"redshift":         {"spectrum", "hydrogen", "linelist"},
+	"redshift":         {"spectrum", "hydrogen", "linelist", "continuum"},
 	"lines":            {"spectrum", "hydrogen", "linelist"},
 	"catalog":          {"internal/fitsout"},
 	"report":           {"catalog"},

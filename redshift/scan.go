@@ -43,7 +43,6 @@ type responses struct {
 	source   [2][2][]float64 // kind, num/den
 	binned   [2][2][]float64
 	tmp      []float64
-	kernel   []float64
 }
 
 func (r *responses) reset(l *level) {
