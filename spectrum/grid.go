@@ -59,7 +59,9 @@ type Gridder struct {
 //
 // with l_i the overlap with input pixel i of width d_i and weight w_i and
 // L = sum l_i, which conserves the summed information whether pixels get wider
-// or narrower (the covariance of neighbors is folded into the variance).
+// or narrower (the covariance of neighbors is folded into the variance). An
+// input pixel ends half-way to its neighbors, beside a hole as far from its
+// center on that side as on the other.
 // Pixels that are covered by less than half weigh zero. Segments that overlap
 // are joined by their inverse variances.
 func (gr *Gridder) Grid(g *Grid, s *Spectrum) {
@@ -153,18 +155,22 @@ func (gr *Gridder) rebin(g *Grid, seg *Segment) {
 		if seg.Ivar[p] == 0 {
 			continue
 		}
-		// Edges half-way to the neighbors, in grid pixels.
-		var left, right float64
+		// Edges half-way to the neighbors. A neighbor more than twice as far as
+		// the other one stands across a hole: the pixel does not reach into it.
+		below, above := math.Inf(1), math.Inf(1)
 		if p > 0 {
-			left = 0.5 * (seg.Wave[p-1] + seg.Wave[p])
-		} else {
-			left = seg.Wave[0] - 0.5*(seg.Wave[1]-seg.Wave[0])
+			below = seg.Wave[p] - seg.Wave[p-1]
 		}
 		if p < m-1 {
-			right = 0.5 * (seg.Wave[p] + seg.Wave[p+1])
-		} else {
-			right = seg.Wave[m-1] + 0.5*(seg.Wave[m-1]-seg.Wave[m-2])
+			above = seg.Wave[p+1] - seg.Wave[p]
 		}
+		if below > 2*above {
+			below = above
+		}
+		if above > 2*below {
+			above = below
+		}
+		left, right := seg.Wave[p]-0.5*below, seg.Wave[p]+0.5*above
 		if left <= 0 {
 			left = 0.5 * seg.Wave[p]
 		}
