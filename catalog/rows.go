@@ -155,7 +155,7 @@ type Object struct {
 	Gap           float64 // score of the best rival minus the best score
 	RStat         float64 // Tonry & Davis (1979) r
 
-	LinesSeen     int32   // lines that stand out by themselves
+	LinesSeen     int32   // features that stand out by themselves, a blend as one
 	SNR           float64 // median signal-to-noise ratio a pixel
 	PixelsUsed    int32
 	WaveMin       float64 // vacuum Angstrom, barycentric
@@ -164,7 +164,7 @@ type Object struct {
 	VelocityFrame string  // frame of the input wavelengths, such as "barycentric"
 	BaryVelocity  float64 // km/s, observer towards the source
 
-	Reason      string // why there is no answer, for people; else empty
+	Reason      string // why there is no answer, and what had to be assumed
 	InputDigest string // of the bytes that the spectrum was read from
 }
 

@@ -101,7 +101,11 @@ type Bench struct {
 // Process takes one spectrum through the chain.
 func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 	b.haveCont, b.results = false, b.results[:0]
+	observed := s.Frame
 	s.ToStandard()
+	if s.Frame == observed {
+		s.BaryVelocity = math.NaN() // nothing was applied
+	}
 	if k := b.chain.set.Redshift.SpikeSigmas; k > 0 {
 		s.MaskSpikes(k)
 	}
