@@ -198,7 +198,8 @@ func TestLimits(t *testing.T) {
 			}
 		}
 		t.Logf("W = %g: seen %d, limit broken %d of %d, pulls %.3f +- %.3f", w, seen, broken, n, pull.mean(), pull.sd())
-		// Measured 0.5 %: 0.27 % beyond 3 sigma either way, and boxes beyond 4.
+		// Measured 0.36 %: 0.27 % lie beyond 3 sigma either way, the rest are
+		// boxes beyond 4.
 		if w == 0 && float64(seen) > 0.008*n {
 			t.Errorf("%d of %d lines seen in pure noise", seen, n)
 		}

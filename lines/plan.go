@@ -19,8 +19,9 @@ const (
 	// Lines of one ion nearer than this many sigma share one amplitude, with
 	// their ratio assumed.
 	mergeSame = 1.2
-	// ratioDoubt is the standard error of an assumed ratio: it covers thin to
-	// saturated doublets, and both density limits of [O II].
+	// ratioDoubt is the standard error of an assumed ratio. Thin and
+	// saturated doublets, 2 and 1, lie one of it from the root of 2; the density
+	// limits of [O II], 0.35 and 1.5, lie 2.8 and 1.1 of it from the 1 assumed.
 	ratioDoubt = 0.35
 	// maxJoin bounds how many lines neighborhood alone may bring into a blend.
 	maxJoin = 14

@@ -173,7 +173,7 @@ func (s *Scratch) revise(main int, ok bool) bool {
 // standsApart reports whether a tie has a line that lies farther than
 // resolvedFrom of its sigma from all lines of other ions. Without one, offsets
 // and widths of both would be free in one unresolved bump: errors of the
-// equivalent widths then come out too small by a factor of 1.3 to 1.6.
+// equivalent widths then come out too small, in simulation by up to 1.6.
 func (s *Scratch) standsApart(k int) bool {
 	q := &s.prob
 	for i := range q.comps {
