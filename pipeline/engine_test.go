@@ -6,11 +6,13 @@ import (
 	"fmt"
 	"os"
 	"path/filepath"
+	"runtime"
 	"strings"
 	"sync"
 	"testing"
 
 	"duskline/catalog"
+	"duskline/spectrum"
 )
 
 func TestEveryObjectMakesARow(t *testing.T) {
@@ -309,5 +311,55 @@ func TestInputChangedAfterPlanning(t *testing.T) {
 				t.Errorf("a removed file came out as %+v", o)
 			}
 		}
+	}
+}
+
+// endlessFile has as many spectra as it says, made when they are read.
+type endlessFile int
+
+func (f endlessFile) Count() int                   { return int(f) }
+func (f endlessFile) Close() error                 { return nil }
+func (f endlessFile) Digest(i int) (string, error) { return fmt.Sprint(i), nil }
+func (f endlessFile) Read(i int) (*spectrum.Spectrum, error) {
+	return &spectrum.Spectrum{Layout: fmt.Sprint(i), ObjectID: fmt.Sprint(i)}, nil
+}
+
+// heapWatch measures the heap in use after some and after many objects.
+type heapWatch struct {
+	silent
+	at   map[int]bool
+	done int
+	heap []uint64
+}
+
+func (w *heapWatch) Object(*catalog.Object) {
+	if w.done++; w.at[w.done] {
+		runtime.GC()
+		var m runtime.MemStats
+		runtime.ReadMemStats(&m)
+		w.heap = append(w.heap, m.HeapAlloc)
+	}
+}
+
+// TestMemoryDoesNotGrow: what is finished is on disk and nowhere else.
+func TestMemoryDoesNotGrow(t *testing.T) {
+	job := smallJob(t)
+	writeNight(t, job.Base, "many.fits: x\n")
+	job.Paths = []string{"many.fits"}
+	job.Settings.Run.BlockSize = 500
+	job.Open = func(string) (SpectrumFile, error) { return endlessFile(20000), nil }
+	watch := &heapWatch{at: map[int]bool{4000: true, 19000: true}}
+	job.Progress = watch
+	r, err := Prepare(context.Background(), job)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := r.Work(context.Background()); err != nil {
+		t.Fatal(err)
+	}
+	// An Outcome without lines is about 400 bytes: 15,000 of them, if they were
+	// kept, would be 6 MB. Two blocks more or less in flight are 0.4 MB.
+	if grown := int64(watch.heap[1]) - int64(watch.heap[0]); grown > 2<<20 {
+		t.Errorf("15,000 objects made the heap grow by %d bytes", grown)
 	}
 }

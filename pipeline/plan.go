@@ -247,8 +247,7 @@ func (h *planHead) differences(want *planHead) []string {
 	}
 	for _, name := range names {
 		if name != settingsDigest && h.Digests[name] != want.Digests[name] {
-			out = append(out, fmt.Sprintf("the %s changed (digest %s, now %s)", strings.ReplaceAll(name, "_", " "),
-				orNone(h.Digests[name]), orNone(want.Digests[name])))
+			out = append(out, fmt.Sprintf("%s changed (digest %s, now %s)", name, orNone(h.Digests[name]), orNone(want.Digests[name])))
 		}
 	}
 	return out

@@ -301,7 +301,7 @@ func (r *Run) linkPlan(ctx context.Context, tmp *os.File, head planHead) error {
 		return fmt.Errorf("the plan in %s cannot be written: %w", r.job.Out, err)
 	}
 	err := os.Link(tmp.Name(), r.plan)
-	if errors.Is(err, fs.ErrExist) {
+	if _, statErr := os.Stat(r.plan); err != nil && statErr == nil {
 		if r.head, _, _, err = readTotals(r.plan); err != nil {
 			return err
 		}

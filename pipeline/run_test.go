@@ -104,8 +104,8 @@ func TestMismatch(t *testing.T) {
 		"program":   {func(j *Job) { j.Program = "test2" }, "version test and this is test2"},
 		"limit":     {func(j *Job) { j.Limit = 3 }, "--limit is none, not 3"},
 		"setting":   {func(j *Job) { j.Settings.Run.BlockSize = 6 }, "run.block_size (5 and 6)"},
-		"line list": {func(j *Job) { j.Processor = wordScience{"4567"} }, "the line list changed (digest 0123, now 4567)"},
-		"layout":    {func(j *Job) { j.Layouts = []LayoutText{{"x", "y"}} }, "the layouts changed (digest none"},
+		"line list": {func(j *Job) { j.Processor = wordScience{"4567"} }, "line_list changed (digest 0123, now 4567)"},
+		"layout":    {func(j *Job) { j.Layouts = []LayoutText{{"x", "y"}} }, "layouts changed (digest none"},
 		"input gone": {func(j *Job) {
 			j.Paths = []string{"night/a.fits", "night/b.fits"}
 		}, "night/c.fits of its plan is gone"},

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"bytes"
 	"errors"
 	"fmt"
 	"io"
@@ -109,8 +110,13 @@ func writeDescription(w io.Writer, name string, d fitsread.Description) {
 		packed = ", gzipped"
 	}
 	fmt.Fprintf(w, "%s: %d bytes%s, %s\n\n", name, d.Bytes, packed, count(int64(d.Spectra), "spectrum", "spectra"))
-	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
-	for _, h := range d.HDUs {
+	writeTable(w, func(t io.Writer) { writeHDUs(t, d.HDUs) })
+	fmt.Fprintln(w)
+	writeTable(w, func(t io.Writer) { writeLayout(t, d) })
+}
+
+func writeHDUs(t io.Writer, hdus []fitsread.HDUInfo) {
+	for _, h := range hdus {
 		note := ""
 		switch {
 		case h.Problem != "":
@@ -126,9 +132,9 @@ func writeDescription(w io.Writer, name string, d fitsread.Description) {
 			fmt.Fprintf(t, "\t  %s\t%s\t%s\t%s\n", c.Name, c.Format, strings.TrimSpace(c.Unit+"  "+c.UCD), c.Role)
 		}
 	}
-	t.Flush()
-	fmt.Fprintln(w)
-	t = tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
+}
+
+func writeLayout(t io.Writer, d fitsread.Description) {
 	fmt.Fprintf(t, "layout\t%s: %s\n", d.Layout, d.Why)
 	for _, p := range d.Parts {
 		arm := ""
@@ -153,7 +159,17 @@ func writeDescription(w io.Writer, name string, d fitsread.Description) {
 	for _, s := range d.Skipped {
 		fmt.Fprintf(t, "not read\t%s\n", s)
 	}
+}
+
+// writeTable prints a table without the blanks that pad its last column.
+func writeTable(w io.Writer, fill func(t io.Writer)) {
+	var text bytes.Buffer
+	t := tabwriter.NewWriter(&text, 0, 0, 2, ' ', 0)
+	fill(t)
 	t.Flush()
+	for line := range strings.Lines(text.String()) {
+		fmt.Fprintln(w, strings.TrimRight(line, " \n"))
+	}
 }
 
 func orNot(s, otherwise string) string {

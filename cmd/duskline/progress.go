@@ -55,13 +55,15 @@ func (p *progress) newBar(total int64, what string) {
 	}
 	p.bar = progressbar.NewOptions64(total, progressbar.OptionSetWriter(p.term), progressbar.OptionSetDescription(what),
 		progressbar.OptionShowCount(), progressbar.OptionShowIts(), progressbar.OptionSetItsString("spectra"),
-		progressbar.OptionThrottle(100*time.Millisecond), progressbar.OptionSetWidth(30), progressbar.OptionClearOnFinish())
+		progressbar.OptionThrottle(100*time.Millisecond), progressbar.OptionSetWidth(30), progressbar.OptionClearOnFinish(),
+		progressbar.OptionSetSpinnerChangeInterval(0)) // else a goroutine goes on drawing
 }
 
 // close takes the bar off the screen.
 func (p *progress) close() {
 	if p.bar != nil {
 		p.bar.Clear()
+		p.bar.Exit()
 		p.bar = nil
 	}
 }

@@ -68,7 +68,7 @@ func advise(s *pipeline.Summary) []string {
 			count(n, "row", "rows")))
 	}
 	if n := s.Verdicts[catalog.None] - s.Unreadable - s.InternalErrors; n > 0 {
-		out = append(out, fmt.Sprintf("%s no redshift: the flags and the column reason say why.", count(n, "readable spectrum has", "readable spectra have")))
+		out = append(out, fmt.Sprintf("%s no redshift: their flags say why.", count(n, "readable spectrum has", "readable spectra have")))
 	}
 	return out
 }
