@@ -12,7 +12,7 @@ type imageSet struct {
 	word   map[role]string // the word that told the role
 }
 
-// flux, wave and the like in the order in which weights are preferred.
+// weightRoles are in the order in which they are preferred.
 var weightRoles = []role{roleIvar, roleSigma, roleVariance, roleWeight}
 
 // imageRole takes the role's word off an image's EXTNAME: "B_IVAR" is inverse
@@ -137,7 +137,7 @@ func (f *File) companions(a *arm, s *imageSet, flux *hdu) error {
 	}
 	for _, r := range []role{roleQuality, roleGood, roleMask} {
 		h := s.byRole[r]
-		if h == nil || a.weightRole == roleIvar && r == roleMask {
+		if h == nil || a.weightRole == roleIvar && (r == roleMask || h.kind == kindCompressed) {
 			continue
 		}
 		if h.kind == kindCompressed {
@@ -231,16 +231,28 @@ func (f *File) tableAxis(h *hdu, ax axis) (wavePlan, error) {
 }
 
 // linePlan reads the lines of an image with known wavelengths: one line, or
-// lines whose meaning the header gives, or an object a line.
+// lines whose meaning the header gives, or an object a line. In a cube with
+// several lines a plane, an object has a line in every plane, and the planes'
+// meaning is what the header gives; without that the first is the flux.
 func (f *File) linePlan(h *hdu, w wavePlan, why, guess string) (*plan, error) {
 	p := &plan{why: why}
 	if guess != "" {
 		p.guesses = append(p.guesses, guess)
 	}
 	a := arm{wave: w, flux: place{hdu: h, line: eachLine}, fluxUnit: h.header.text("BUNIT")}
-	lines := h.lines()
-	roles := lineRoles(h)
-	if roles == nil && lines > 1 && lines <= maxGuessLines {
+	lines, rows := h.lines(), int64(1)
+	kinds := lines // lines of different meaning
+	if len(h.axes) > 2 && h.axes[1] > 1 {
+		rows, kinds = h.axes[1], lines/h.axes[1]
+	}
+	roles := lineRoles(h, int(kinds))
+	switch {
+	case roles != nil || lines == 1:
+	case rows > 1 && kinds > 1:
+		roles = make([]role, kinds)
+		roles[0] = roleFlux
+		p.guesses = append(p.guesses, fmt.Sprintf("only the first of %d planes of the image in HDU %d was read", kinds, h.index))
+	case rows == 1 && lines <= maxGuessLines:
 		var err error
 		if roles, err = f.guessLines(h); err != nil {
 			return nil, err
@@ -266,6 +278,9 @@ func (f *File) linePlan(h *hdu, w wavePlan, why, guess string) (*plan, error) {
 	haveFlux := false
 	for i, r := range roles {
 		at := place{hdu: h, line: int64(i)}
+		if rows > 1 {
+			at.line, at.base = eachLine, int64(i)*rows
+		}
 		switch {
 		case r == roleFlux && !haveFlux:
 			a.flux, haveFlux = at, true
@@ -277,6 +292,6 @@ func (f *File) linePlan(h *hdu, w wavePlan, why, guess string) (*plan, error) {
 			a.wave.values, a.wave.axis = at, nil
 		}
 	}
-	p.groups = []group{{name: h.name, arms: []arm{a}, rows: 1}}
+	p.groups = []group{{name: h.name, arms: []arm{a}, rows: rows}}
 	return p, nil
 }

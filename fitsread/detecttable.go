@@ -133,7 +133,7 @@ func (f *File) tableCandidate(h *hdu, byUCD bool) (*candidate, error) {
 	}
 	a.flux, a.fluxUnit = place{hdu: h, col: flux}, flux.unit
 	like := func(c *column) bool { return sameShape(c, flux) }
-	for _, want := range []role{roleIvar, roleSigma, roleVariance, roleWeight} {
+	for _, want := range weightRoles {
 		if c := pick(want, like); c != nil {
 			a.weight, a.weightRole = place{hdu: h, col: c}, want
 			break

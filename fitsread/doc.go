@@ -23,6 +23,19 @@
 // spectrum. Of several tables, arms of a common name join, a coadd or an optimal
 // extraction stands for the others, and each further one is a spectrum.
 //
+// # What is assumed
+//
+// An assumption is a warning, never an error. Air or vacuum that nothing states:
+// vacuum where any wavelength lies below 2000 Angstrom; air for spectra from the
+// ground that are not on a logarithmic grid; else vacuum. A velocity frame that
+// nothing states: topocentric for single exposures from the ground with the time
+// in the header, else barycentric; data that say they were corrected are never
+// corrected again. Errors that are not there are estimated from the scatter of the
+// flux (Stoehr et al. 2008); stated ones that are off by more than a factor 3
+// against it raise a warning. Zero, negative or missing errors, padding at the
+// ends and pixels that flags of standard meaning call bad weigh zero; masks of
+// many bits do not count beside inverse variances, which mark bad pixels themselves.
+//
 // # Layout files
 //
 // A layout is TOML. hdu is a number from 0 or an EXTNAME; line counts image

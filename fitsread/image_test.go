@@ -4,9 +4,13 @@ import (
 	"errors"
 	"math"
 	"strings"
+	"sync"
 	"testing"
 
 	"duskline/spectrum"
+
+	"github.com/google/go-cmp/cmp"
+	"github.com/google/go-cmp/cmp/cmpopts"
 )
 
 var logAxis = []string{kv("COEFF0", 3.6), kv("COEFF1", 1e-4)}
@@ -49,6 +53,48 @@ func TestImageLines(t *testing.T) {
 		if s.Has(spectrum.LayoutAssumed) != tt.doubt {
 			t.Errorf("%s: doubts %s", tt.name, codes(s))
 		}
+	}
+}
+
+// A cube of apertures by kinds, as extraction programs write it.
+func TestCube(t *testing.T) {
+	n := 100
+	lines := stack(constant(n, 1), constant(n, 2), constant(n, 3), constant(n, 4), ramp(n, 5, 0.1), ramp(n, 6, 0.1))
+	bands := []string{kv("BANDID1", "raw - background none, weights none"), kv("BANDID2", "sigma - background fit, weights variance"),
+		kv("BANDID3", "spectrum - background fit, weights variance, clean yes")}
+	f := open(t, image(true, -64, []int{n, 2, 3}, lines, append(bands, logAxis...)...), Options{})
+	if f.Count() != 2 {
+		t.Fatalf("%d spectra, want 2 apertures", f.Count())
+	}
+	seg := &read(t, f, 1).Segments[0]
+	near(t, "flux", seg.Flux[0], 6, 1e-15)
+	near(t, "weight", seg.Ivar[0], 1.0/16, 1e-15)
+	f = open(t, image(true, -64, []int{n, 2, 3}, lines, logAxis...), Options{})
+	s := read(t, f, 1)
+	near(t, "first plane", s.Segments[0].Flux[0], 2, 1e-15)
+	if f.Count() != 2 || !s.Has(spectrum.LayoutAssumed) {
+		t.Errorf("without words: %d spectra, %s", f.Count(), codes(s))
+	}
+}
+
+// Several goroutines may read one file; the spectra are those of one.
+func TestConcurrentReads(t *testing.T) {
+	f := open(t, join(empty(), armHDUs("B", 64, 6, 4000), armHDUs("R", 64, 6, 5000)), Options{})
+	want := make([]*spectrum.Spectrum, f.Count())
+	for i := range want {
+		want[i] = read(t, f, i)
+	}
+	got := make([]*spectrum.Spectrum, f.Count())
+	var wg sync.WaitGroup
+	for i := range got {
+		wg.Go(func() {
+			got[i], _ = f.Read(i)
+			f.Digest(i)
+		})
+	}
+	wg.Wait()
+	if diff := cmp.Diff(want, got, cmpopts.EquateNaNs()); diff != "" {
+		t.Error(diff)
 	}
 }
 

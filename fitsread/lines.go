@@ -10,11 +10,10 @@ import (
 // object's flux and errors rather than an object a line.
 const maxGuessLines = 6
 
-// lineRoles reads what the lines of an image mean from cards: one card a line
-// (ARRAY1, ROW2, BANDID3, ...), or one card that lists a word for every line,
-// beginning with the flux. nil when the header does not say.
-func lineRoles(h *hdu) []role {
-	n := int(h.lines())
+// lineRoles reads what the n lines, or planes of lines, of an image mean from
+// cards: one card a line (ARRAY1, ROW2, BANDID3, ...), or one card that lists a
+// word for every line, beginning with the flux. nil when the header does not say.
+func lineRoles(h *hdu, n int) []role {
 	if n < 2 || n > 64 {
 		return nil
 	}
@@ -52,7 +51,7 @@ func lineRoles(h *hdu) []role {
 // roleInWords reads a line's role from a phrase such as "CONTINUUM-SUBTRACTED
 // SPECTRUM": what is derived from the flux is not the flux.
 func roleInWords(s string) role {
-	t := strings.ToLower(s)
+	t, _, _ := strings.Cut(strings.ToLower(s), " - ") // what follows tells how it was made
 	switch {
 	case hasAny(t, "inverse", "ivar", "invvar"):
 		return roleIvar

@@ -6,7 +6,6 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
-	"sort"
 	"testing"
 )
 
@@ -20,8 +19,7 @@ def put(*arrays):
     for a in arrays:
         a = np.asarray(a, dtype='>f8').ravel()
         out.write(struct.pack('>q', a.size)); out.write(a.tobytes())
-kind, path = sys.argv[1:3]
-with np.errstate(all='ignore'), fits.open(path, memmap=False) as h:
+def dump(kind, h):
     if kind == 'loglam':
         d = h[1].data; put(10.0**np.asarray(d['loglam'], 'f8'), d['flux'], d['ivar'])
     elif kind == 'sigma':
@@ -46,6 +44,9 @@ with np.errstate(all='ignore'), fits.open(path, memmap=False) as h:
     elif kind == 'orders':
         for d in sorted(h[1].data, key=lambda r: r['WAVELENGTH'][0]):
             put(d['WAVELENGTH'], d['FLUX'], 1/np.asarray(d['ERROR'], 'f8')**2)
+for kind, path in zip(sys.argv[1::2], sys.argv[2::2]):
+    with np.errstate(all='ignore'), fits.open(path, memmap=False) as h:
+        dump(kind, h)
 `
 
 // Array equality with astropy, one file of each dataset: fluxes bit for bit,
@@ -57,34 +58,38 @@ func TestAgainstAstropy(t *testing.T) {
 	if exec.Command(python, "-c", "import astropy").Run() != nil {
 		missing(t, "python3 with astropy is not there")
 	}
-	for _, tt := range []struct{ pattern, kind string }{
-		{"calspec/alpha*", "sigma"}, {"deep2/*", "horne"}, {"desi_mini/coadd-sv3*", "arms"}, {"dla_highres/UM669*", "axis1"},
-		{"hst_stis/*", "orders"}, {"ism_textbook/m51*", "sigma"}, {"lamost_dr1/*", "lamost"}, {"pickles/*uk_9*", "noerror"},
-		{"sdss_boss_qso/*", "loglam"}, {"sdss_misc/*.gz", "loglam"}, {"sdss_random100/*", "loglam"}, {"sdss_sky/*", "loglam"},
-		{"sdss_spspec/*", "spspec"}, {"vandels/*", "sigma"}, {"xqr30/*", "sigma"},
-	} {
-		paths, _ := filepath.Glob(filepath.Join(dir, tt.pattern))
-		sort.Strings(paths)
+	cases := []struct{ pattern, kind, path string }{
+		{"calspec/alpha*", "sigma", ""}, {"deep2/*", "horne", ""}, {"desi_mini/coadd-sv3*", "arms", ""}, {"dla_highres/UM669*", "axis1", ""},
+		{"hst_stis/*", "orders", ""}, {"ism_textbook/m51*", "sigma", ""}, {"lamost_dr1/*", "lamost", ""}, {"pickles/*uk_9*", "noerror", ""},
+		{"sdss_boss_qso/*", "loglam", ""}, {"sdss_misc/*.gz", "loglam", ""}, {"sdss_random100/*", "loglam", ""}, {"sdss_sky/*", "loglam", ""},
+		{"sdss_spspec/*", "spspec", ""}, {"vandels/*", "sigma", ""}, {"xqr30/*", "sigma", ""},
+	}
+	args := []string{"-c", liveScript}
+	for i, tt := range cases {
+		paths, _ := filepath.Glob(filepath.Join(dir, tt.pattern)) // sorted
 		if len(paths) == 0 {
-			t.Errorf("no file %s", tt.pattern)
-			continue
+			t.Fatalf("no file %s", tt.pattern)
 		}
-		cmd := exec.Command(python, "-c", liveScript, tt.kind, paths[0])
-		cmd.Stderr = os.Stderr
-		raw, err := cmd.Output()
-		if err != nil {
-			t.Fatalf("%s: %v", tt.pattern, err)
+		cases[i].path = paths[0]
+		args = append(args, tt.kind, paths[0])
+	}
+	cmd := exec.Command(python, args...)
+	cmd.Stderr = os.Stderr
+	raw, err := cmd.Output()
+	if err != nil {
+		t.Fatal(err)
+	}
+	next := func() []float64 {
+		n := int(binary.BigEndian.Uint64(raw))
+		v := make([]float64, n)
+		for i := range v {
+			v[i] = math.Float64frombits(binary.BigEndian.Uint64(raw[8+8*i:]))
 		}
-		next := func() []float64 {
-			n := int(binary.BigEndian.Uint64(raw))
-			v := make([]float64, n)
-			for i := range v {
-				v[i] = math.Float64frombits(binary.BigEndian.Uint64(raw[8+8*i:]))
-			}
-			raw = raw[8+8*n:]
-			return v
-		}
-		f, err := Open(paths[0], Options{})
+		raw = raw[8+8*n:]
+		return v
+	}
+	for _, tt := range cases {
+		f, err := Open(tt.path, Options{})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -115,8 +120,8 @@ func TestAgainstAstropy(t *testing.T) {
 				t.Errorf("%s segment %d: %d of %d pixels differ", tt.pattern, k, wrong, len(wave))
 			}
 		}
-		if len(raw) > 0 {
-			t.Errorf("%s: astropy has more segments than %d", tt.pattern, len(s.Segments))
-		}
+	}
+	if len(raw) > 0 {
+		t.Errorf("astropy has %d bytes of segments more", len(raw))
 	}
 }

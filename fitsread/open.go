@@ -61,11 +61,16 @@ func Open(path string, opts Options) (f *File, err error) {
 	if f.src, err = openSource(path, opts.MaxUnpacked); err != nil {
 		return f, err
 	}
-	if f.hdus, err = walk(f.src, f.src.size); err != nil {
-		return f, err
-	}
+	return f, f.load()
+}
+
+// load walks the source and chooses the layout.
+func (f *File) load() (err error) {
 	f.digest = sync.OnceValues(f.hash)
-	return f, f.choose()
+	if f.hdus, err = walk(f.src, f.src.size); err != nil {
+		return err
+	}
+	return f.choose()
 }
 
 // guard gives errors the file's name and, as a last resort, turns a panic that a

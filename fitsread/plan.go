@@ -12,6 +12,7 @@ type place struct {
 	hdu  *hdu
 	col  *column // nil for an image
 	line int64   // image line; eachLine: the object's own
+	base int64   // line of the first object, where line is eachLine
 	card string  // a header card: numbers only
 }
 
@@ -52,7 +53,7 @@ func (f *File) array(p place, row int64) ([]float64, error) {
 	case p.col == nil:
 		line := p.line
 		if line == eachLine {
-			line = row
+			line = p.base + row
 			if p.hdu.lines() == 1 {
 				line = 0
 			}
