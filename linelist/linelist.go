@@ -99,19 +99,9 @@ func Parse(text []byte) (*List, error) {
 	}
 	seen := map[string]bool{}
 	for _, l := range lines {
-		switch {
-		case l.Name == "":
-			errs = append(errs, fmt.Errorf("line list: a line of %q at %g has no name", l.Ion, l.Wave))
-		case seen[l.Name]:
+		errs = append(errs, l.problems()...)
+		if l.Name != "" && seen[l.Name] {
 			errs = append(errs, fmt.Errorf("line list: line %q is listed twice", l.Name))
-		case !(l.Wave > 100 && l.Wave < 1e6):
-			errs = append(errs, fmt.Errorf("line list: line %q: wave = %g, want vacuum Angstrom between 100 and 1e6", l.Name, l.Wave))
-		case l.F < 0 || math.IsNaN(l.F) || l.Gamma < 0 || math.IsNaN(l.Gamma):
-			errs = append(errs, fmt.Errorf("line list: line %q: f and gamma must not be negative", l.Name))
-		case l.Seen != "emission" && l.Seen != "absorption" && l.Seen != "both":
-			errs = append(errs, fmt.Errorf("line list: line %q: seen = %q, want emission, absorption or both", l.Name, l.Seen))
-		case l.Source == "":
-			errs = append(errs, fmt.Errorf("line list: line %q has no source", l.Name))
 		}
 		seen[l.Name] = true
 	}
@@ -129,6 +119,30 @@ func Parse(text []byte) (*List, error) {
 	sum := sha256.Sum256(text)
 	list.digest = hex.EncodeToString(sum[:8])
 	return list, nil
+}
+
+// problems returns everything that is wrong with a line by itself.
+func (l *Line) problems() []error {
+	var errs []error
+	bad := func(format string, args ...any) {
+		errs = append(errs, fmt.Errorf("line list: line %q: %s", l.Name, fmt.Sprintf(format, args...)))
+	}
+	if l.Name == "" {
+		errs = append(errs, fmt.Errorf("line list: a line of %q at %g has no name", l.Ion, l.Wave))
+	}
+	if !(l.Wave > 100 && l.Wave < 1e6) {
+		bad("wave = %g, want vacuum Angstrom between 100 and 1e6", l.Wave)
+	}
+	if !(l.F >= 0 && l.Gamma >= 0) || math.IsInf(l.F, 0) || math.IsInf(l.Gamma, 0) {
+		bad("f = %g, gamma = %g, want finite numbers, not negative", l.F, l.Gamma)
+	}
+	if l.Seen != "emission" && l.Seen != "absorption" && l.Seen != "both" {
+		bad("seen = %q, want emission, absorption or both", l.Seen)
+	}
+	if l.Source == "" {
+		bad("source is missing: say where the numbers come from")
+	}
+	return errs
 }
 
 // Lines returns all lines in order of rest wavelength. The caller must not

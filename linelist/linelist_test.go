@@ -1,0 +1,278 @@
+package linelist_test
+
+import (
+	"encoding/csv"
+	"math"
+	"os"
+	"slices"
+	"strconv"
+	"strings"
+	"testing"
+
+	"duskline/configs"
+	"duskline/hydrogen"
+	"duskline/linelist"
+)
+
+func builtIn(t *testing.T) *linelist.List {
+	t.Helper()
+	list, err := linelist.Parse(configs.Lines())
+	if err != nil {
+		t.Fatal(err)
+	}
+	return list
+}
+
+// The built-in list is in order, has distinct names, and finds every line.
+func TestBuiltInList(t *testing.T) {
+	list := builtIn(t)
+	lines := list.Lines()
+	if len(lines) < 90 {
+		t.Errorf("%d lines, configs/lines.toml has more than 90", len(lines))
+	}
+	for i, l := range lines {
+		if i > 0 && l.Wave < lines[i-1].Wave {
+			t.Errorf("%s stands after %s", l.Name, lines[i-1].Name)
+		}
+		if found, ok := list.Find(l.Name); !ok || found != l {
+			t.Errorf("Find(%q) = %+v, %v", l.Name, found, ok)
+		}
+		if l.Source == "" || l.Ion == "" {
+			t.Errorf("%s: source %q, ion %q", l.Name, l.Source, l.Ion)
+		}
+	}
+	if _, ok := list.Find("Ha "); ok {
+		t.Error("found a line that is not there")
+	}
+}
+
+// Lines that are fitted together belong together: no group is wider than the
+// broadest blend that can be told apart no more, 12,000 km/s (Lyman alpha with
+// N V: 6,700).
+func TestGroupsAreClose(t *testing.T) {
+	first := map[string]linelist.Line{}
+	members := map[string]int{}
+	for _, l := range builtIn(t).Lines() {
+		if l.Group == "" {
+			continue
+		}
+		members[l.Group]++
+		if f, ok := first[l.Group]; !ok {
+			first[l.Group] = l
+		} else if v := 299792.458 * math.Log(l.Wave/f.Wave); v > 12000 {
+			t.Errorf("group %s: %s and %s are %.0f km/s apart", l.Group, f.Name, l.Name, v)
+		}
+	}
+	for group, n := range members {
+		if n < 2 {
+			t.Errorf("group %s has a single line, %s", group, first[group].Name)
+		}
+	}
+}
+
+type published struct {
+	ion, label   string
+	wave, memory float64
+	used         bool
+}
+
+// readWavelengths reads testdata/wavelengths.csv, whose comment and column
+// vac_A_source name the sources.
+func readWavelengths(t *testing.T) []*published {
+	t.Helper()
+	f, err := os.Open("testdata/wavelengths.csv")
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer f.Close()
+	r := csv.NewReader(f)
+	r.Comment = '#'
+	records, err := r.ReadAll()
+	if err != nil {
+		t.Fatal(err)
+	}
+	var rows []*published
+	for _, rec := range records[1:] {
+		p := &published{ion: rec[0], label: rec[1]}
+		if p.wave, err = strconv.ParseFloat(rec[2], 64); err != nil {
+			t.Fatal(err)
+		}
+		if p.memory, err = strconv.ParseFloat(rec[3], 64); err != nil {
+			t.Fatal(err)
+		}
+		rows = append(rows, p)
+	}
+	return rows
+}
+
+// Every line that is not computed agrees with both columns of the table within
+// 5 km/s, the largest disagreement of the table's own columns (O VI 1031, 4.1
+// km/s), and every row of the table is in the list.
+func TestWavelengths(t *testing.T) {
+	const tol = 5.0
+	rows := readWavelengths(t)
+	if len(rows) < 70 {
+		t.Fatalf("only %d rows", len(rows))
+	}
+	kms := func(a, b float64) float64 { return 299792.458 * math.Abs(a/b-1) }
+	for _, l := range builtIn(t).Lines() {
+		if l.Ion == "H I" {
+			continue
+		}
+		var best *published
+		for _, p := range rows {
+			if p.ion == l.Ion && (best == nil || kms(l.Wave, p.wave) < kms(l.Wave, best.wave)) {
+				best = p
+			}
+		}
+		if best == nil {
+			t.Errorf("%s: the table has no line of %s", l.Name, l.Ion)
+			continue
+		}
+		if best.used {
+			t.Errorf("%s: two lines match %s %s", l.Name, best.ion, best.label)
+		}
+		best.used = true
+		if a, b := kms(l.Wave, best.wave), kms(l.Wave, best.memory); a > tol || b > tol {
+			t.Errorf("%s at %.4f is %.1f and %.1f km/s from the table's %.4f and %.4f", l.Name, l.Wave, a, b, best.wave, best.memory)
+		}
+	}
+	for _, p := range rows {
+		if !p.used {
+			t.Errorf("%s %s of the table is not in the list", p.ion, p.label)
+		}
+	}
+}
+
+// Hydrogen is computed: the rows carry what package hydrogen says, exactly.
+func TestHydrogenRows(t *testing.T) {
+	list := builtIn(t)
+	numbers := map[string][2]int{
+		"Lya": {1, 2}, "Lyb": {1, 3}, "Lyg": {1, 4}, "Lyd": {1, 5}, "Lye": {1, 6}, "Ly6": {1, 7}, "Ly7": {1, 8},
+		"Ha": {2, 3}, "Hb": {2, 4}, "Hg": {2, 5}, "Hd": {2, 6}, "H7": {2, 7}, "H8": {2, 8}, "H9": {2, 9}, "H10": {2, 10},
+		"H11": {2, 11}, "H12": {2, 12},
+		"Paa": {3, 4}, "Pab": {3, 5}, "Pag": {3, 6}, "Pad": {3, 7}, "Pa8": {3, 8}, "Pa9": {3, 9},
+	}
+	for _, l := range list.Lines() {
+		if l.Ion != "H I" {
+			continue
+		}
+		n, ok := numbers[l.Name]
+		if !ok {
+			t.Errorf("%s: not a name of this test", l.Name)
+			continue
+		}
+		delete(numbers, l.Name)
+		tr, err := hydrogen.NewTransition(n[0], n[1])
+		if err != nil {
+			t.Fatal(err)
+		}
+		if l.Wave != tr.Wave || l.F != tr.F || l.Gamma != tr.Gamma {
+			t.Errorf("%s: %v, %v, %v, want %v, %v, %v", l.Name, l.Wave, l.F, l.Gamma, tr.Wave, tr.F, tr.Gamma)
+		}
+	}
+	for name := range numbers {
+		t.Errorf("no hydrogen line %s", name)
+	}
+}
+
+func TestDigest(t *testing.T) {
+	text := configs.Lines()
+	a, err := linelist.Parse(text)
+	if err != nil {
+		t.Fatal(err)
+	}
+	b, err := linelist.Parse(slices.Clone(text))
+	if err != nil {
+		t.Fatal(err)
+	}
+	c, err := linelist.Parse(append(slices.Clone(text), "# another comment\n"...))
+	if err != nil {
+		t.Fatal(err)
+	}
+	if a.Digest() != b.Digest() || len(a.Digest()) != 16 {
+		t.Errorf("digests %q and %q of the same text, want 16 equal digits", a.Digest(), b.Digest())
+	}
+	if a.Digest() == c.Digest() {
+		t.Errorf("another text has the same digest %q", c.Digest())
+	}
+	// SHA-256 of the text below by sha256sum (GNU coreutils 9.1), first 16 digits.
+	d, err := linelist.Parse([]byte("hydrogen = [{ name = \"Ha\", lower = 2, upper = 3, seen = \"both\" }]\n"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	if want := "016c18a7ec81f61f"; d.Digest() != want {
+		t.Errorf("digest %q, want %q", d.Digest(), want)
+	}
+}
+
+const goodLine = `
+[[line]]
+name = "X_5000"
+ion = "X I"
+wave = 5000.0
+seen = "both"
+source = "invented"
+`
+
+func TestParseRefuses(t *testing.T) {
+	line := func(old, replacement string) string { return strings.Replace(goodLine, old, replacement, 1) }
+	for _, c := range []struct {
+		name, text string
+		want       []string // all in the error
+	}{
+		{"nothing", "", []string{"no lines"}},
+		{"not TOML", "[[line]\n", []string{"line list"}},
+		{"unknown key", line("seen", "sight"), []string{"unknown keys", "sight"}},
+		{"no name", line(`name = "X_5000"`, ``), []string{"X I", "5000", "no name"}},
+		{"twice", goodLine + goodLine, []string{"X_5000", "twice"}},
+		{"wave in nanometers of X-rays", line("5000.0", "5.0"), []string{"X_5000", "wave = 5", "100 and 1e6"}},
+		{"wave not a number", line("5000.0", "nan"), []string{"X_5000", "wave = NaN"}},
+		{"wave without end", line("5000.0", "inf"), []string{"X_5000", "wave = +Inf"}},
+		{"negative f", line(`seen`, "f = -0.1\nseen"), []string{"X_5000", "not negative"}},
+		{"f not a number", line(`seen`, "f = nan\nseen"), []string{"X_5000", "not negative"}},
+		{"negative gamma", line(`seen`, "gamma = -1.0\nseen"), []string{"X_5000", "not negative"}},
+		{"gamma not a number", line(`seen`, "gamma = nan\nseen"), []string{"X_5000", "not negative"}},
+		{"f without end", line(`seen`, "f = inf\nseen"), []string{"X_5000", "f = +Inf"}},
+		{"unknown seen", line(`"both"`, `"sometimes"`), []string{"X_5000", `seen = "sometimes"`, "emission, absorption or both"}},
+		{"source is missing", line(`source = "invented"`, ``), []string{"X_5000", "source is missing"}},
+		{"hydrogen upside down", `hydrogen = [{ name = "Q", lower = 3, upper = 2, seen = "both" }]`, []string{`"Q"`}},
+		{"hydrogen level zero", `hydrogen = [{ name = "Q", lower = 0, upper = 2, seen = "both" }]`, []string{`"Q"`}},
+		{"a hydrogen name again", `hydrogen = [{ name = "X_5000", lower = 2, upper = 3, seen = "both" }]` + goodLine, []string{"X_5000", "twice"}},
+		{"several at once", line("5000.0", "-1.0") + strings.ReplaceAll(line(`"both"`, `"no"`), "X_5000", "Y") + `
+[[hydrogen]]
+name = "Q"
+lower = 4
+upper = 4
+seen = "both"
+`, []string{"X_5000", "wave = -1", `"Y"`, `seen = "no"`, `"Q"`}},
+	} {
+		list, err := linelist.Parse([]byte(c.text))
+		if err == nil {
+			t.Errorf("%s: accepted %d lines", c.name, len(list.Lines()))
+			continue
+		}
+		for _, want := range c.want {
+			if !strings.Contains(err.Error(), want) {
+				t.Errorf("%s: the error does not say %q:\n%v", c.name, want, err)
+			}
+		}
+	}
+	if _, err := linelist.Parse([]byte(goodLine)); err != nil {
+		t.Errorf("the line that the cases above break: %v", err)
+	}
+}
+
+// A line with two faults is reported with both.
+func TestParseReportsEveryProblemOfALine(t *testing.T) {
+	text := strings.NewReplacer("5000.0", "-1.0", `"both"`, `"no"`, "seen", "f = -1.0\nseen", `"invented"`, `""`).Replace(goodLine)
+	_, err := linelist.Parse([]byte(text))
+	if err == nil {
+		t.Fatal("accepted")
+	}
+	for _, want := range []string{"wave = -1", "not negative", `seen = "no"`, "source is missing"} {
+		if !strings.Contains(err.Error(), want) {
+			t.Errorf("the error does not say %q:\n%v", want, err)
+		}
+	}
+}
