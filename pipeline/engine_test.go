@@ -9,6 +9,7 @@ import (
 	"runtime"
 	"strings"
 	"sync"
+	"sync/atomic"
 	"testing"
 
 	"duskline/catalog"
@@ -361,5 +362,43 @@ func TestMemoryDoesNotGrow(t *testing.T) {
 	// kept, would be 6 MB. Two blocks more or less in flight are 0.4 MB.
 	if grown := int64(watch.heap[1]) - int64(watch.heap[0]); grown > 2<<20 {
 		t.Errorf("15,000 objects made the heap grow by %d bytes", grown)
+	}
+}
+
+// countedFile says when it is closed.
+type countedFile struct {
+	endlessFile
+	open *atomic.Int32
+}
+
+func (f countedFile) Close() error { f.open.Add(-1); return nil }
+
+// TestFileOfManyObjectsIsOpenedOnce for all workers, and closed again.
+func TestFileOfManyObjectsIsOpenedOnce(t *testing.T) {
+	job := smallJob(t)
+	writeNight(t, job.Base, "many/1.fits: x\nmany/2.fits: x\nmany/3.fits: x\n")
+	job.Paths = []string{"many"}
+	job.Settings.Run.BlockSize, job.Settings.Run.Workers = 100, 4
+	var opened, open atomic.Int32
+	job.Open = func(string) (SpectrumFile, error) {
+		opened.Add(1)
+		open.Add(1)
+		return countedFile{300, &open}, nil
+	}
+	r, err := Prepare(context.Background(), job)
+	if err != nil {
+		t.Fatal(err)
+	}
+	opened.Store(0)
+	if err := r.Work(context.Background()); err != nil {
+		t.Fatal(err)
+	}
+	// A file may be closed when all workers happen to be past it but for one
+	// that has still to begin on it; four workers keep that rare.
+	if n := opened.Load(); n < 3 || n > 12 {
+		t.Errorf("3 files were opened %d times for 900 objects", n)
+	}
+	if n := open.Load(); n != 0 {
+		t.Errorf("%d files were left open", n)
 	}
 }

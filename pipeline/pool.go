@@ -32,11 +32,12 @@ func (r *Run) Work(ctx context.Context) error {
 		return r.dispatch(ctx, there, free, tasks)
 	})
 	workers := r.job.workers()
+	files := &shelf{run: r, files: map[*planInput]*shelved{}}
 	pool, _ := errgroup.WithContext(ctx)
 	for range workers {
 		pool.Go(func() error {
-			w := &objectWorker{run: r}
-			defer w.close()
+			w := &objectWorker{run: r, shelf: files}
+			defer w.release()
 			for t := range tasks {
 				res := result{task: t}
 				if t.elsewhere == 0 {

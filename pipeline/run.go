@@ -45,7 +45,8 @@ type LayoutText struct {
 	Text string `json:"text"`
 }
 
-// SpectrumFile is an open input; *fitsread.File is one.
+// SpectrumFile is an open input; *fitsread.File is one. Several goroutines may
+// call its methods, except Close, at the same time.
 type SpectrumFile interface {
 	Count() int
 	Read(i int) (*spectrum.Spectrum, error)

@@ -29,7 +29,7 @@ type Settings struct {
 
 // RunSettings is section [run].
 type RunSettings struct {
-	BlockSize int `toml:"block_size" min:"1" max:"100000"`
+	BlockSize int `toml:"block_size" min:"1" max:"10000"`
 	Workers   int `toml:"workers" min:"0" max:"1024" free:"true"`
 }
 

@@ -4,7 +4,6 @@ import (
 	"errors"
 	"fmt"
 	"math"
-	"os"
 	"path/filepath"
 	"runtime"
 	"runtime/debug"
@@ -33,14 +32,13 @@ type result struct {
 	internal bool // the row reports a defect of the program
 }
 
-// objectWorker turns tasks into results. It keeps the last file open: the
+// objectWorker turns tasks into results. It keeps hold of the last file: the
 // spectra of one file mostly come one after another.
 type objectWorker struct {
 	run     *Run
+	shelf   *shelf
+	held    *shelved
 	science Worker
-	in      *planInput // of file
-	file    SpectrumFile
-	fault   *fault // why in has no file
 }
 
 // fault is why an object has no spectrum.
@@ -122,22 +120,21 @@ func (w *objectWorker) read(t task) (s *spectrum.Spectrum, digest string, bad *f
 	if t.in.Trouble != "" {
 		return nil, "", &fault{t.in.Trouble, t.in.Internal}
 	}
-	if w.in != t.in {
-		w.close()
-		w.in = t.in
-		w.fault = w.open(t.in)
+	if w.held == nil || w.held.in != t.in {
+		w.release()
+		w.held = w.shelf.take(t.in)
 	}
-	if w.fault != nil {
-		return nil, "", w.fault
+	if w.held.fault != nil {
+		return nil, "", w.held.fault
 	}
 	defer func() {
 		if p := recover(); p != nil {
-			s, bad = nil, w.report(t, p)
+			s, bad = nil, w.run.report(t.in.Path, t.row, p)
 		}
 	}()
-	digest, err := w.file.Digest(t.row)
+	digest, err := w.held.file.Digest(t.row)
 	if err == nil {
-		s, err = w.file.Read(t.row)
+		s, err = w.held.file.Read(t.row)
 	}
 	if err != nil {
 		return nil, digest, readFault(err, t.in.Path)
@@ -145,35 +142,11 @@ func (w *objectWorker) read(t task) (s *spectrum.Spectrum, digest string, bad *f
 	return s, digest, nil
 }
 
-// open opens an input that is still as it was planned.
-func (w *objectWorker) open(in *planInput) (bad *fault) {
-	defer func() {
-		if p := recover(); p != nil {
-			bad = w.report(task{in: in}, p)
-		}
-	}()
-	path := in.file(w.run.head.Folder)
-	info, err := os.Stat(path)
-	if err != nil {
-		return &fault{fmt.Sprintf("%s was there when the run was planned and is not now: %s", in.Path, plain(err)), false}
+func (w *objectWorker) release() {
+	if w.held != nil {
+		w.shelf.giveBack(w.held)
+		w.held = nil
 	}
-	if info.Size() != in.Size || info.ModTime().UnixNano() != in.MTime {
-		return &fault{in.Path + " was written to after the run was planned; begin a new run to process it", false}
-	}
-	if w.file, err = w.run.job.Open(path); err != nil {
-		w.file = nil
-		return readFault(err, in.Path)
-	}
-	return nil
-}
-
-func (w *objectWorker) close() {
-	if w.file != nil {
-		if err := w.file.Close(); err != nil {
-			w.run.job.Log.Warn("closing an input failed", "file", w.in.Path, "error", err)
-		}
-	}
-	w.in, w.file, w.fault = nil, nil, nil
 }
 
 // process runs the science on one spectrum. After a panic the worker's scratch
@@ -181,7 +154,7 @@ func (w *objectWorker) close() {
 func (w *objectWorker) process(s *spectrum.Spectrum) (out Outcome, bad *fault) {
 	defer func() {
 		if p := recover(); p != nil {
-			bad = w.report(task{in: w.in, row: s.SourceRow}, p)
+			bad = w.run.report(s.SourceFile, s.SourceRow, p)
 			w.science = nil
 		}
 	}()
@@ -192,9 +165,9 @@ func (w *objectWorker) process(s *spectrum.Spectrum) (out Outcome, bad *fault) {
 }
 
 // report logs a panic with its stack and returns what the row says.
-func (w *objectWorker) report(t task, p any) *fault {
-	w.run.job.Log.Error("an internal error stopped one object; the run goes on",
-		"file", t.in.Path, "row", t.row, "panic", fmt.Sprint(p), "stack", string(debug.Stack()))
+func (r *Run) report(file string, row int, p any) *fault {
+	r.job.Log.Error("an internal error stopped one object; the run goes on",
+		"file", file, "row", row, "panic", fmt.Sprint(p), "stack", string(debug.Stack()))
 	return &fault{internalReason(p), true}
 }
 
