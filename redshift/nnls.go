@@ -5,55 +5,17 @@ import "math"
 // nnls minimizes a^T G a - 2 h^T a over a >= 0 for an m x m positive
 // semi-definite G (row-major, stride maxComponents) by the active-set method of
 // Lawson & Hanson (1974, Solving Least Squares Problems, chapter 23) on the
-// normal equations (Bro & De Jong 1997). It writes the solution to a and
-// returns the decrease 2 h^T a - a^T G a and the number of positive amplitudes.
-// Components whose diagonal is not positive stay at zero.
-//
-// A positive most[i] bounds a[i] from above: amplitudes beyond their bound are
-// fixed there and the others solved again.
+// normal equations (Bro & De Jong 1997). A positive most[i] bounds a[i] from
+// above as well (Stark & Parker 1995, Computational Statistics 10, 129). It
+// writes the solution to a and returns the decrease 2 h^T a - a^T G a and the
+// number of positive amplitudes. Components whose diagonal is not positive stay
+// at zero.
 func nnls(a *[maxComponents]float64, g *[maxComponents * maxComponents]float64, h, most *[maxComponents]float64, m int) (drop float64, active int) {
-	var fixed [maxComponents]bool
-	rest := *h
-	for {
-		solveFree(a, g, &rest, &fixed, m)
-		again := false
-		for i := 0; i < m; i++ {
-			if most[i] > 0 && !fixed[i] && a[i] > most[i] {
-				fixed[i], again = true, true
-				a[i] = most[i]
-				for j := 0; j < m; j++ {
-					rest[j] -= g[j*maxComponents+i] * most[i]
-				}
-			}
-		}
-		if !again {
-			break
-		}
-	}
+	// An amplitude is free (in), at zero or at its bound (full).
+	var in, full, dead [maxComponents]bool
 	for i := 0; i < m; i++ {
-		if a[i] > 0 {
-			active++
-			ga := 0.0
-			for j := 0; j < m; j++ {
-				ga += g[i*maxComponents+j] * a[j]
-			}
-			drop += a[i] * (2*h[i] - ga)
-		}
+		a[i], dead[i] = 0, !(g[i*maxComponents+i] > 0)
 	}
-	return drop, active
-}
-
-// solveFree is the active-set iteration over the amplitudes that are not
-// fixed.
-func solveFree(a *[maxComponents]float64, g *[maxComponents * maxComponents]float64, h *[maxComponents]float64, fixed *[maxComponents]bool, m int) {
-	var in, dead [maxComponents]bool
-	for i := 0; i < m; i++ {
-		dead[i] = fixed[i] || !(g[i*maxComponents+i] > 0)
-		if !fixed[i] {
-			a[i] = 0
-		}
-	}
-	var s [maxComponents]float64
 	for iter := 0; iter < 4*m; iter++ {
 		// The gradient of the variable that gains most, scaled by its norm.
 		best, gain := -1, 1e-9
@@ -61,11 +23,9 @@ func solveFree(a *[maxComponents]float64, g *[maxComponents * maxComponents]floa
 			if in[i] || dead[i] {
 				continue
 			}
-			d := h[i]
-			for j := 0; j < m; j++ {
-				if in[j] {
-					d -= g[i*maxComponents+j] * a[j]
-				}
+			d := gradient(a, g, h, i, m)
+			if full[i] {
+				d = -d
 			}
 			if v := d / math.Sqrt(g[i*maxComponents+i]); v > gain {
 				best, gain = i, v
@@ -74,38 +34,87 @@ func solveFree(a *[maxComponents]float64, g *[maxComponents * maxComponents]floa
 		if best < 0 {
 			break
 		}
-		in[best] = true
-		for {
-			if !solveSubset(&s, g, h, &in, m) {
-				// Collinear with what is in already.
-				in[best], dead[best] = false, true
-				break
-			}
-			t, out := 1.0, -1
-			for i := 0; i < m; i++ {
-				if in[i] && s[i] <= 0 {
-					if q := a[i] / (a[i] - s[i]); q < t || out < 0 {
-						t, out = q, i
-					}
+		was := full[best]
+		in[best], full[best] = true, false
+		if !settle(a, g, h, most, &in, &full, m) || !in[best] && full[best] == was {
+			// Collinear with what is in already, or back at once.
+			in[best], full[best], dead[best] = false, was, true
+		}
+	}
+	for i := 0; i < m; i++ {
+		if a[i] > 0 {
+			active++
+			drop += a[i] * (h[i] + gradient(a, g, h, i, m))
+		}
+	}
+	return drop, active
+}
+
+// gradient is half the derivative of the decrease with respect to a[i].
+func gradient(a *[maxComponents]float64, g *[maxComponents * maxComponents]float64, h *[maxComponents]float64, i, m int) float64 {
+	d := h[i]
+	for j := 0; j < m; j++ {
+		d -= g[i*maxComponents+j] * a[j]
+	}
+	return d
+}
+
+// settle moves the free amplitudes to their least-squares solution. When that
+// lies beyond a bound it goes as far as the first bound, leaves that amplitude
+// there and starts again. It reports false, with a as it was, when the free
+// components are linearly dependent.
+func settle(a *[maxComponents]float64, g *[maxComponents * maxComponents]float64, h, most *[maxComponents]float64, in, full *[maxComponents]bool, m int) bool {
+	var s, rest [maxComponents]float64
+	for {
+		for i := 0; i < m; i++ {
+			rest[i] = h[i]
+			for j := 0; j < m; j++ {
+				if full[j] {
+					rest[i] -= g[i*maxComponents+j] * most[j]
 				}
 			}
-			if out < 0 {
-				for i := 0; i < m; i++ {
-					if in[i] {
-						a[i] = s[i]
-					}
-				}
-				break
+		}
+		if !solveSubset(&s, g, &rest, in, m) {
+			return false
+		}
+		t, out := 1.0, -1
+		for i := 0; i < m; i++ {
+			if !in[i] {
+				continue
 			}
+			bound := 0.0
+			switch {
+			case s[i] <= 0:
+			case most[i] > 0 && s[i] > most[i]:
+				bound = most[i]
+			default:
+				continue
+			}
+			q := 0.0 // at the bound already
+			if a[i] != s[i] {
+				q = (bound - a[i]) / (s[i] - a[i])
+			}
+			if q < t || out < 0 {
+				t, out = q, i
+			}
+		}
+		if out < 0 {
 			for i := 0; i < m; i++ {
 				if in[i] {
-					a[i] += t * (s[i] - a[i])
+					a[i] = s[i]
 				}
 			}
-			a[out], in[out] = 0, false
-			if out == best && t == 0 {
-				dead[best] = true
+			return true
+		}
+		for i := 0; i < m; i++ {
+			if in[i] {
+				a[i] += t * (s[i] - a[i])
 			}
+		}
+		in[out] = false
+		a[out] = 0
+		if s[out] > 0 {
+			a[out], full[out] = most[out], true
 		}
 	}
 }
