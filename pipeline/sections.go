@@ -67,6 +67,8 @@ type RedshiftSettings struct {
 	MinPixels     int       `toml:"min_pixels" min:"20" max:"100000"`
 	SpikeSigmas   float64   `toml:"spike_sigmas" min:"0" max:"1000"`
 	SkyBands      []float64 `toml:"sky_bands" min:"100" max:"1e6"`
+	TelluricBands []float64 `toml:"telluric_bands" min:"100" max:"1e6"`
+	TelluricFloor float64   `toml:"telluric_floor" min:"0" max:"10"`
 }
 
 func (r RedshiftSettings) check() []Problem {
@@ -74,8 +76,13 @@ func (r RedshiftSettings) check() []Problem {
 	if r.SearchFrom >= r.SearchTo {
 		problems = append(problems, Problem{"redshift.search_from", "must be less than redshift.search_to"})
 	}
-	if len(r.SkyBands)%2 != 0 {
-		problems = append(problems, Problem{"redshift.sky_bands", "wants pairs of first and last wavelength"})
+	for _, b := range []struct {
+		key  string
+		list []float64
+	}{{"redshift.sky_bands", r.SkyBands}, {"redshift.telluric_bands", r.TelluricBands}} {
+		if len(b.list)%2 != 0 {
+			problems = append(problems, Problem{b.key, "wants pairs of first and last wavelength"})
+		}
 	}
 	return problems
 }
@@ -102,12 +109,18 @@ func (s Settings) finderOptions() redshift.Options {
 	opt := redshift.Options{
 		KnotSpacing: s.Continuum.KnotSpacing, Floor: s.Redshift.TemplateFloor, Stiffness: s.Redshift.Stiffness, Temper: s.Redshift.Temper,
 		ClipSpikes: spikeClip, Nominees: s.Redshift.Nominees, MinPixels: s.Redshift.MinPixels,
-		SearchFrom: s.Redshift.SearchFrom, SearchTo: s.Redshift.SearchTo,
+		SearchFrom: s.Redshift.SearchFrom, SearchTo: s.Redshift.SearchTo, TelluricFloor: s.Redshift.TelluricFloor,
 	}
-	for i := 0; i+1 < len(s.Redshift.SkyBands); i += 2 {
-		opt.SkyBands = append(opt.SkyBands, [2]float64{s.Redshift.SkyBands[i], s.Redshift.SkyBands[i+1]})
-	}
+	opt.SkyBands, opt.TelluricBands = pairs(s.Redshift.SkyBands), pairs(s.Redshift.TelluricBands)
 	return opt
+}
+
+func pairs(v []float64) [][2]float64 {
+	var out [][2]float64
+	for i := 0; i+1 < len(v); i += 2 {
+		out = append(out, [2]float64{v[i], v[i+1]})
+	}
+	return out
 }
 
 // spikeClip is the distance in sigmas from which a pixel does not shape the

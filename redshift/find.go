@@ -22,24 +22,31 @@ type Options struct {
 	SearchFrom  float64 // observed Angstrom; pixels outside do not count when enough are inside
 	SearchTo    float64
 	SkyBands    [][2]float64 // observed wavelengths that weigh zero, Angstrom
+	// TelluricBands are observed wavelengths where the template error is
+	// TelluricFloor instead: absorption of the air spoils what is subtle there,
+	// not a strong emission line.
+	TelluricBands [][2]float64
+	TelluricFloor float64
 }
 
 // DefaultOptions returns the settings the tool is tuned with.
 //
 // The knot spacing puts 18 interior knots over 3500 to 10500 Angstrom. The
-// masked bands are the [O I] night-sky line and the telluric B and A bands.
+// band without weight is the [O I] night-sky line; the telluric bands are B and A.
 func DefaultOptions() Options {
 	return Options{
-		KnotSpacing: 0.0251,
-		Floor:       0.02,
-		Stiffness:   0.03,
-		Temper:      12,
-		ClipSpikes:  6,
-		Nominees:    14,
-		MinPixels:   200,
-		SearchFrom:  3000,
-		SearchTo:    26000,
-		SkyBands:    [][2]float64{{5565, 5590}, {6860, 6930}, {7590, 7720}},
+		KnotSpacing:   0.0251,
+		Floor:         0.02,
+		Stiffness:     0.03,
+		Temper:        12,
+		ClipSpikes:    6,
+		Nominees:      14,
+		MinPixels:     200,
+		SearchFrom:    3000,
+		SearchTo:      26000,
+		SkyBands:      [][2]float64{{5565, 5590}},
+		TelluricBands: [][2]float64{{6860, 6960}, {7590, 7720}},
+		TelluricFloor: 0.3,
 	}
 }
 
@@ -84,9 +91,12 @@ type Scratch struct {
 	smooth   []float64
 	dropLag  []float64
 	features []feature
+	traces   []trace
+	single   drawing // of one line
 	excess   []float64
 	scaled   []float64 // flux in the units of the levels
 	weight   []float64 // weights before they are tempered
+	floor    []float64 // template error, fraction of the local flux
 	basis    continuum.Basis
 }
 
@@ -169,8 +179,13 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 		}
 	}
 	res.SNR = medianSNR(s, l.resid, s.smooth)
-	weightFloor(l.weight, l.resid, s.smooth, f.opt.Floor, 15)
-	maskBands(l.weight, g, f.opt.SkyBands)
+	s.floor = grow(s.floor, l.n)
+	for i := range s.floor {
+		s.floor[i] = f.opt.Floor
+	}
+	fillBands(s.floor, g, f.opt.TelluricBands, math.Max(f.opt.Floor, f.opt.TelluricFloor))
+	weightFloor(l.weight, l.resid, s.smooth, s.floor, 15)
+	fillBands(l.weight, g, f.opt.SkyBands, 0)
 	f.limitRange(l)
 	copt := continuum.Options{Spacing: f.opt.KnotSpacing, ClipLow: f.opt.ClipSpikes, ClipHigh: f.opt.ClipSpikes, Iterations: 4}
 	if err := s.fit.Fit(s.x, l.resid, l.weight, copt); err != nil {

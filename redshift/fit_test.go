@@ -372,10 +372,10 @@ func TestBin(t *testing.T) {
 // The floor adds a fraction of the mean flux around to the errors.
 func TestWeightFloor(t *testing.T) {
 	r := rand.New(rand.NewPCG(6, 4))
-	const n, half, floor = 200, 15, 0.02
-	flux, ivar, got := make([]float64, n), make([]float64, n), make([]float64, n)
+	const n, half = 200, 15
+	flux, ivar, floor, got := make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
 	for i := range n {
-		flux[i], ivar[i] = 10+r.NormFloat64(), 25*r.Float64()
+		flux[i], ivar[i], floor[i] = 10+r.NormFloat64(), 25*r.Float64(), 0.05*r.Float64()
 		if r.IntN(5) == 0 {
 			flux[i], ivar[i] = 1e9, 0
 		}
@@ -391,7 +391,7 @@ func TestWeightFloor(t *testing.T) {
 		}
 		want := 0.0
 		if ivar[i] > 0 {
-			e := floor * sum / float64(count)
+			e := floor[i] * sum / float64(count)
 			want = 1 / (1/ivar[i] + e*e)
 		}
 		if math.Abs(got[i]-want) > 1e-10*want {

@@ -98,10 +98,10 @@ func (l *level) bin(fine *level, factor int) {
 	}
 }
 
-// weightFloor adds floor times the local flux to the errors in quadrature:
+// weightFloor adds floor[i] times the local flux to the errors in quadrature:
 // templates are not perfect, and without it the brightest spectra are ruled by
 // the smallest faults. The local flux is a running mean over 2*half+1 pixels.
-func weightFloor(dst []float64, flux, ivar []float64, floor float64, half int) {
+func weightFloor(dst []float64, flux, ivar, floor []float64, half int) {
 	n := len(flux)
 	var sum float64
 	count := 0
@@ -119,19 +119,19 @@ func weightFloor(dst []float64, flux, ivar []float64, floor float64, half int) {
 		add(i-half-1, -1)
 		dst[i] = 0
 		if ivar[i] > 0 && count > 0 {
-			e := floor * sum / float64(count)
+			e := floor[i] * sum / float64(count)
 			dst[i] = 1 / (1/ivar[i] + e*e)
 		}
 	}
 }
 
-// maskBands sets the weights of pixels inside observed-frame bands to zero.
-func maskBands(weight []float64, g *spectrum.Grid, bands [][2]float64) {
+// fillBands sets the values of pixels inside observed-frame bands.
+func fillBands(values []float64, g *spectrum.Grid, bands [][2]float64, v float64) {
 	for _, b := range bands {
 		lo := int(math.Ceil((math.Log10(b[0]) - g.Start) / g.Step))
 		hi := int(math.Floor((math.Log10(b[1]) - g.Start) / g.Step))
-		for i := max(0, lo); i <= min(hi, len(weight)-1); i++ {
-			weight[i] = 0
+		for i := max(0, lo); i <= min(hi, len(values)-1); i++ {
+			values[i] = v
 		}
 	}
 }

@@ -2,6 +2,7 @@ package redshift
 
 import (
 	"math"
+	"slices"
 
 	"duskline/spectrum"
 )
@@ -119,75 +120,36 @@ func (f *Finder) redshiftError(s *Scratch, p *peak) float64 {
 }
 
 // evidence measures each line of the winning model by itself, from the
-// residual of the joint fit left in s.tmp.
+// residual of the joint fit left in s.tmp, and counts.
 func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 	l := &s.full
-	res.Lines = res.Lines[:0]
-	d := &s.bench.draws[maxComponents-1]
 	s.features = s.features[:0]
-	for c := range p.family.components {
-		comp := &p.family.components[c]
-		if c == maxComponents-1 {
-			break
+	res.Lines = nil
+	s.traces = p.traces(s.traces[:0])
+	for _, t := range s.traces {
+		sigma := t.kms / (speedOfLight * ln10 * l.step)
+		e, ok := s.weigh(&t, sigma, (t.logWave+p.shift-l.start)/l.step)
+		if !ok {
+			continue
 		}
-		amp := p.fit.amp[c]
-		for i := range comp.terms {
-			t := &comp.terms[i]
-			sigma := comp.sigmaKms(t, p.width) / (speedOfLight * ln10 * l.step)
-			center := (t.logWave + p.shift - l.start) / l.step
-			if center < 0 || center > float64(l.n-1) {
-				continue
-			}
-			d.reset(l.n)
-			gaussian(d, l.n, center, sigma, 1)
-			var tr, tt, good, all, dr, dd float64
-			for _, r := range d.runs {
-				for k := r.lo; k < r.hi; k++ {
-					v := d.values[k]
-					if comp.absorption {
-						v *= -l.cont[k]
-					}
-					u := (float64(k) - center) / sigma
-					if math.Abs(u) < 2 {
-						all++
-						if l.weight[k] > 0 {
-							good++
-						}
-					}
-					w := l.weight[k]
-					tr += w * v * (s.tmp[k] + amp*t.amp*v)
-					tt += w * v * v
-					// Derivative with respect to the center, per pixel.
-					g := v * u / sigma
-					dr += w * g * s.tmp[k]
-					dd += w * g * g
-				}
-			}
-			if tt <= 0 || good < 0.6*all {
-				continue
-			}
-			e := LineEvidence{Name: t.name, Wave: math.Pow(10, t.logWave+p.shift), Width: comp.sigmaKms(t, p.width),
-				SNR: tr / math.Sqrt(tt), Model: amp * t.amp * math.Sqrt(tt), Offset: math.NaN(), Err: math.NaN()}
-			if a := tr / tt; e.SNR > SeenSNR && a > 0 && dd > 0 {
-				kms := l.step * ln10 * speedOfLight
-				e.Offset, e.Err = dr/(a*dd)*kms, kms/(a*math.Sqrt(dd))
-			}
-			res.Lines = append(res.Lines, e)
-			if amp > 0 && e.SNR >= SeenSNR && e.SNR > 0.3*e.Model {
-				s.features = append(s.features, feature{center, sigma})
-			}
-			if amp > 0 && t.name != "" && e.Model > missingSNR && e.SNR < e.Model/3 {
-				res.LinesMissing++
-			}
+		e.Name, e.Width = t.name, t.kms
+		e.Wave = math.Pow(10, t.logWave+p.shift)
+		res.Lines = append(res.Lines, e)
+		if t.amp > 0 && e.SNR >= SeenSNR && e.SNR > 0.3*e.Model {
+			s.features = append(s.features, feature{(t.logWave + p.shift - l.start) / l.step, sigma})
 		}
-		// A break or band that the data demand counts as one feature.
-		if amp > 0 && comp.wide() && len(comp.terms) == 0 {
-			if amp*math.Sqrt(math.Max(0, s.bench.norm(c))) > 2*SeenSNR {
-				res.LinesSeen++
-			}
+		if t.amp > 0 && t.name != "" && e.Model > missingSNR && e.SNR < e.Model/3 {
+			res.LinesMissing++
 		}
 	}
-	res.LinesSeen += countFeatures(s.features)
+	res.LinesSeen = countFeatures(s.features)
+	// A break or band that the data demand counts as one feature.
+	for c := range p.family.components {
+		comp := &p.family.components[c]
+		if a := p.fit.amp[c]; a > 0 && comp.wide() && len(comp.terms) == 0 && a*math.Sqrt(math.Max(0, s.bench.norm(c))) > 2*SeenSNR {
+			res.LinesSeen++
+		}
+	}
 	res.LinesExpected = len(p.family.expected)
 	for _, e := range p.family.expected {
 		x := (e.logWave + p.shift - l.start) / l.step
@@ -195,17 +157,101 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 			res.LinesCovered++
 		}
 	}
-	// Lines disagree on the velocity when their offsets scatter more than
-	// their errors and a survey pixel allow.
-	n, chi := 0, 0.0
-	for _, e := range res.Lines {
-		if e.SNR > 6 && !math.IsNaN(e.Offset) && e.Name != "" {
-			n++
-			tol := math.Hypot(e.Err, 0.35*p.width)
-			chi += (e.Offset / tol) * (e.Offset / tol)
+	res.Scattered = scattered(res.Lines, p.width)
+}
+
+// trace is one line of a model with its amplitude, summed over the components
+// that hold it with the same sign.
+type trace struct {
+	name       string
+	absorption bool
+	logWave    float64
+	kms        float64 // Gaussian sigma
+	amp        float64
+}
+
+// traces appends the lines of the model; a line in several components takes
+// the width of the one that gives it most.
+func (p *peak) traces(dst []trace) []trace {
+	for c := range p.family.components {
+		comp := &p.family.components[c]
+		for i := range comp.terms {
+			t := &comp.terms[i]
+			n := trace{t.name, comp.absorption, t.logWave, comp.sigmaKms(t, p.width), p.fit.amp[c] * t.amp}
+			k := slices.IndexFunc(dst, func(o trace) bool {
+				return o.name != "" && o.name == n.name && o.absorption == n.absorption && o.logWave == n.logWave
+			})
+			if k < 0 {
+				dst = append(dst, n)
+				continue
+			}
+			if n.amp > dst[k].amp {
+				dst[k].kms = n.kms
+			}
+			dst[k].amp += n.amp
 		}
 	}
-	res.Scattered = n >= 2 && chi/float64(n) > 9
+	return dst
+}
+
+// weigh takes one line of the model at a pixel position out of the model and
+// measures what the data have there. It reports false when less than 0.6 of
+// the line's core has weight.
+func (s *Scratch) weigh(t *trace, sigma, center float64) (LineEvidence, bool) {
+	l := &s.full
+	if center < 0 || center > float64(l.n-1) {
+		return LineEvidence{}, false
+	}
+	d := &s.single
+	d.reset(l.n)
+	gaussian(d, l.n, center, sigma, 1)
+	var tr, tt, good, all, dr, dd float64
+	for _, r := range d.runs {
+		for k := r.lo; k < r.hi; k++ {
+			v := d.values[k]
+			if t.absorption {
+				v *= -l.cont[k]
+			}
+			u := (float64(k) - center) / sigma
+			if math.Abs(u) < 2 {
+				all++
+				if l.weight[k] > 0 {
+					good++
+				}
+			}
+			w := l.weight[k]
+			tr += w * v * (s.tmp[k] + t.amp*v)
+			tt += w * v * v
+			// Derivative with respect to the center, per pixel.
+			g := v * u / sigma
+			dr += w * g * s.tmp[k]
+			dd += w * g * g
+		}
+	}
+	if tt <= 0 || good < 0.6*all {
+		return LineEvidence{}, false
+	}
+	e := LineEvidence{SNR: tr / math.Sqrt(tt), Model: t.amp * math.Sqrt(tt), Offset: math.NaN(), Err: math.NaN()}
+	if a := tr / tt; e.SNR > SeenSNR && a > 0 && dd > 0 {
+		kms := l.step * ln10 * speedOfLight
+		e.Offset, e.Err = dr/(a*dd)*kms, kms/(a*math.Sqrt(dd))
+	}
+	return e, true
+}
+
+// scattered reports whether lines disagree on the velocity: their offsets
+// scatter by more than three times what their errors and a third of the
+// template's width allow.
+func scattered(lines []LineEvidence, width float64) bool {
+	n, chi2 := 0, 0.0
+	for _, e := range lines {
+		if e.SNR > 6 && !math.IsNaN(e.Offset) && e.Name != "" {
+			n++
+			q := e.Offset / math.Hypot(e.Err, 0.35*width)
+			chi2 += q * q
+		}
+	}
+	return n >= 2 && chi2 > 9*float64(n)
 }
 
 // rStat is the r of Tonry & Davis (1979): the height of the correlation peak
