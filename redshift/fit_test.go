@@ -375,7 +375,7 @@ func TestWeightFloor(t *testing.T) {
 	const n, half = 200, 15
 	flux, ivar, floor, got := make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
 	for i := range n {
-		flux[i], ivar[i], floor[i] = 10+r.NormFloat64(), 25*r.Float64(), 0.05*r.Float64()
+		flux[i], ivar[i], floor[i] = 10+r.NormFloat64(), 25*r.Float64(), 0.02*float64(1+i%3)
 		if r.IntN(5) == 0 {
 			flux[i], ivar[i] = 1e9, 0
 		}
@@ -400,15 +400,15 @@ func TestWeightFloor(t *testing.T) {
 	}
 }
 
-func TestMaskBands(t *testing.T) {
+func TestFillBands(t *testing.T) {
 	g := blank(5000)
-	weight := append([]float64(nil), g.Ivar...)
-	maskBands(weight, g, [][2]float64{{5565, 5590}, {100, 3601}, {11000, 20000}})
-	for i, w := range weight {
+	values := append([]float64(nil), g.Ivar...)
+	fillBands(values, g, [][2]float64{{5565, 5590}, {100, 3601}, {11000, 20000}}, 0.25)
+	for i, v := range values {
 		x := math.Pow(10, g.LogWave(i))
 		inside := x >= 5565 && x <= 5590 || x <= 3601 || x >= 11000
-		if (w == 0) != inside {
-			t.Errorf("pixel at %.2f Angstrom weighs %g", x, w)
+		if want := map[bool]float64{true: 0.25, false: 1}[inside]; v != want {
+			t.Errorf("pixel at %.2f Angstrom has %g, want %g", x, v, want)
 		}
 	}
 }
