@@ -3,7 +3,8 @@ package continuum
 import (
 	"errors"
 	"math"
-	"slices"
+
+	"duskline/spectrum"
 )
 
 // ErrTooFew is returned when fewer points carry weight than the spline needs.
@@ -107,8 +108,7 @@ func (f *Fitter) Fit(x, flux, ivar []float64, opt Options) error {
 				f.resid = append(f.resid, math.Abs(math.Sqrt(ivar[i])*(flux[i]-f.at(i))))
 			}
 		}
-		slices.Sort(f.resid)
-		f.scatter = math.Max(1, 1.4826*f.resid[len(f.resid)/2])
+		f.scatter = math.Max(1, 1.4826*spectrum.Median(f.resid))
 		if f.rounds >= opt.Iterations || !f.clip(flux, ivar, lo, hi, good, opt) {
 			return nil
 		}

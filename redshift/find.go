@@ -161,10 +161,9 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 		res.Reason = "too few usable pixels"
 		return false
 	}
-	slices.Sort(s.tmp)
-	scale := s.tmp[len(s.tmp)/2]
+	scale := spectrum.Median(s.tmp)
 	if !(scale > 0) {
-		scale = s.tmp[len(s.tmp)-1]
+		scale = slices.Max(s.tmp)
 	}
 	if !(scale > 0) || math.IsInf(scale, 0) {
 		res.Reason = "flux is zero everywhere"
@@ -210,8 +209,7 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 		return false
 	}
 	res.BelowZero = 4*below > len(s.tmp)
-	slices.Sort(s.tmp)
-	least := 0.05 * s.tmp[len(s.tmp)/2]
+	least := 0.05 * spectrum.Median(s.tmp)
 	for i, c := range l.cont {
 		l.cont[i] = math.Max(c, least)
 	}
@@ -277,8 +275,7 @@ func medianSNR(s *Scratch, flux, ivar []float64) float64 {
 			s.tmp = append(s.tmp, flux[i]*math.Sqrt(w))
 		}
 	}
-	slices.Sort(s.tmp)
-	return s.tmp[len(s.tmp)/2]
+	return spectrum.Median(s.tmp)
 }
 
 // nominate appends the trial redshifts of one family and width with their
