@@ -254,15 +254,46 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 			o.Flags |= d.flag
 		}
 	}
-	var why []string
-	if res.Reason != "" {
-		why = append(why, res.Reason)
-	}
+	why := b.doubts(res)
 	for _, w := range s.Warnings {
 		why = append(why, w.Text)
 	}
 	o.Reason = strings.Join(why, "; ")
 	return o
+}
+
+// doubts says in words why a redshift is not secure.
+func (b *Bench) doubts(res *redshift.Result) []string {
+	if res.Reason != "" {
+		return []string{res.Reason}
+	}
+	if res.Verdict == redshift.Secure {
+		return nil
+	}
+	var why []string
+	t := &b.chain.thresholds
+	switch {
+	case res.Faint:
+		why = append(why, "neither continuum nor lines stand above the noise")
+	case res.LinesSeen == 0:
+		why = append(why, "no line stands out by itself")
+	case res.LinesSeen < t.SecureLines:
+		why = append(why, fmt.Sprintf("only %d of %d needed features stand out", res.LinesSeen, t.SecureLines))
+	}
+	if res.Confidence < t.SecureConfidence {
+		switch {
+		case math.IsNaN(res.RivalRedshift):
+			why = append(why, "the templates explain little more than the continuum alone")
+		case res.Misfit:
+			why = append(why, fmt.Sprintf("too badly described to rule out %s at %.4f", res.RivalFamily, res.RivalRedshift))
+		default:
+			why = append(why, fmt.Sprintf("%s at %.4f fits nearly as well", res.RivalFamily, res.RivalRedshift))
+		}
+	}
+	if res.RangeEnd {
+		why = append(why, "the redshift lies at the end of the family's range")
+	}
+	return why
 }
 
 // lineRows copies measured lines into catalog rows.
