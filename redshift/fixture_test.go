@@ -102,6 +102,8 @@ func bareLevel(n int) *level {
 	return l
 }
 
+func pow10(x float64) float64 { return math.Pow(10, x) }
+
 // logWaveAt is log10 of the wavelength at a pixel of a level.
 func logWaveAt(l *level, pixel float64) float64 { return l.start + pixel*l.step }
 

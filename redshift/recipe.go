@@ -90,6 +90,19 @@ type head struct {
 // headedRange is the longest redshift range of a family with band heads.
 const headedRange = 0.05
 
+// maxWidth is the largest Gaussian sigma of a line or bump, km/s.
+const maxWidth = 30000.0
+
+// positive reports whether all numbers are finite and above zero.
+func positive(values ...float64) bool {
+	for _, v := range values {
+		if !(v > 0) || math.IsInf(v, 0) {
+			return false
+		}
+	}
+	return true
+}
+
 var classes = map[string]bool{"galaxy": true, "quasar": true, "star": true, "nebula": true}
 
 // ParseRecipe reads a family recipe and compiles it against the line list.
@@ -121,8 +134,8 @@ func ParseRecipe(file string, text []byte, list *linelist.List) (*Family, error)
 		bad("widths is empty, want at least one Gaussian sigma in km/s")
 	}
 	for _, w := range r.Widths {
-		if !(w >= 10 && w <= 30000) {
-			bad("widths: %g is outside 10 to 30000 km/s", w)
+		if !(w >= 10 && w <= maxWidth) {
+			bad("widths: %g is outside 10 to %g km/s", w, maxWidth)
 		}
 	}
 	if !(r.Floor >= 0 && r.Floor <= 3000) {
@@ -167,8 +180,8 @@ func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
 	if c.scale == 0 {
 		c.scale = 1
 	}
-	if c.scale < 0 || r.Width < 0 {
-		bad("width and width_scale must not be negative")
+	if !(c.scale > 0 && c.scale <= 100) || !(r.Width >= 0 && r.Width <= maxWidth) {
+		bad("width = %g, width_scale = %g, want up to %g km/s and 100, not negative", r.Width, r.WidthScale, maxWidth)
 	}
 	switch r.Kind {
 	case "emission":
@@ -177,7 +190,7 @@ func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
 	default:
 		bad("kind = %q, want emission or absorption", r.Kind)
 	}
-	if r.Most < 0 || (r.Most > 0 && !c.absorption) {
+	if !(r.Most >= 0) || (r.Most > 0 && !c.absorption) {
 		bad("most = %g, want a positive bound, on absorption only", r.Most)
 	}
 	if r.Source == "" {
@@ -189,13 +202,19 @@ func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
 			bad("lines: no line %q in the line list", l.Line)
 			continue
 		}
-		if !(l.Ratio > 0) {
+		if !positive(l.Ratio) {
 			bad("lines: %s: ratio = %g, want a positive number", l.Line, l.Ratio)
+		}
+		if !(math.Abs(l.Shift) <= 10000) {
+			bad("lines: %s: shift = %g, want -10000 to 10000 km/s", l.Line, l.Shift)
 		}
 		shift := math.Log10(1 + l.Shift/speedOfLight)
 		c.terms = append(c.terms, term{name: l.Line, logWave: math.Log10(found.Wave) + shift, amp: l.Ratio})
 	}
 	if b := r.CaseB; b != nil {
+		if len(b.Upper) == 0 {
+			bad("case_b: upper is empty, want upper levels from 3 on")
+		}
 		for _, n := range b.Upper {
 			t, err := hydrogen.NewTransition(2, n)
 			if err != nil {
@@ -203,7 +222,7 @@ func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
 				continue
 			}
 			ratio := hydrogen.CaseB(b.Temperature, b.Density, n)
-			if !(ratio > 0) {
+			if !positive(ratio) {
 				bad("case_b: no ratio for upper level %d", n)
 				continue
 			}
@@ -211,21 +230,21 @@ func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
 		}
 	}
 	for _, b := range r.Bumps {
-		if !(b.Wave > 0 && b.Width > 0 && b.Height > 0) {
-			bad("bumps: wave, width and height must be positive")
+		if !positive(b.Wave, b.Width, b.Height) || b.Width > maxWidth {
+			bad("bumps: wave, width and height must be positive, width up to %g km/s", maxWidth)
 			continue
 		}
 		c.terms = append(c.terms, term{logWave: math.Log10(b.Wave), width: b.Width, amp: b.Height})
 	}
 	for _, e := range r.Edges {
-		if !(e.Wave > 0 && e.Width > 0 && e.Height > 0) {
+		if !positive(e.Wave, e.Width, e.Height) {
 			bad("edges: wave, width and height must be positive")
 			continue
 		}
 		c.edges = append(c.edges, e)
 	}
 	for _, h := range r.Heads {
-		if !(h.Wave > 0 && h.Depth > 0 && h.Tail > 0) {
+		if !positive(h.Wave, h.Depth, h.Tail) {
 			bad("heads: wave, depth and tail must be positive")
 			continue
 		}
