@@ -280,7 +280,7 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 	case res.LinesSeen < t.SecureLines:
 		why = append(why, fmt.Sprintf("only %d of %d needed features stand out", res.LinesSeen, t.SecureLines))
 	}
-	if res.Confidence < t.SecureConfidence {
+	if res.Confidence < t.SecureConfidence && !res.Faint {
 		switch {
 		case math.IsNaN(res.RivalRedshift):
 			why = append(why, "the templates explain little more than the continuum alone")
