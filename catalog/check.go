@@ -37,6 +37,8 @@ func (t *table[T]) verify(row *T) error {
 		c.object(r)
 	case *Line:
 		c.line(r)
+	case *Absorber:
+		c.absorber(r)
 	}
 	return c.err(t.name, textOf(t.columns[0].field(row)))
 }

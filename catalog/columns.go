@@ -8,8 +8,8 @@ import (
 	"unicode/utf8"
 )
 
-// Row is the type of a row: of the object table or of the line table.
-type Row interface{ Object | Line }
+// Row is the type of a row: of the object, the line or the absorber table.
+type Row interface{ Object | Line | Absorber }
 
 // Column says what one column means. One table of them drives every format.
 type Column struct {
@@ -22,7 +22,7 @@ type Column struct {
 }
 
 // column adds to a Column the way to its field: a pointer to string, int32,
-// int64, float64, Flags or flagText.
+// int64, float64, Flags, AbsorberFlags or a view of flags as text.
 type column[T Row] struct {
 	Column
 	field func(*T) any
@@ -47,6 +47,8 @@ func tableOf[T Row]() table[T] {
 		name, columns = "OBJECTS", objectColumns()
 	case Line:
 		name, columns = "LINES", lineColumns()
+	case Absorber:
+		name, columns = "ABSORBERS", absorberColumns()
 	}
 	t := table[T]{name, columns.([]column[T])}
 	row := new(T)
@@ -58,9 +60,9 @@ func tableOf[T Row]() table[T] {
 
 func typeName(field any) string {
 	switch field.(type) {
-	case *string, *flagText:
+	case *string, *flagText, *absorberFlagText:
 		return "text"
-	case *int32, *Flags:
+	case *int32, *Flags, *AbsorberFlags:
 		return "int32"
 	case *int64:
 		return "int64"
@@ -123,6 +125,8 @@ func textOf(field any) string {
 		return CleanText(*p)
 	case *flagText:
 		return Flags(*p).String()
+	case *absorberFlagText:
+		return AbsorberFlags(*p).String()
 	}
 	panic("catalog: not a text field")
 }
@@ -135,6 +139,8 @@ func intOf(field any) int64 {
 	case *int64:
 		return *p
 	case *Flags:
+		return int64(*p)
+	case *AbsorberFlags:
 		return int64(*p)
 	}
 	panic("catalog: not an integer field")
@@ -150,6 +156,10 @@ func setText(field any, s string) error {
 		if want := Flags(*p).String(); s != want {
 			return fmt.Errorf("flag names %q, but the flags are %q", s, want)
 		}
+	case *absorberFlagText:
+		if want := AbsorberFlags(*p).String(); s != want {
+			return fmt.Errorf("flag names %q, but the flags are %q", s, want)
+		}
 	}
 	return nil
 }
@@ -162,6 +172,8 @@ func setInt(field any, v int64) {
 		*p = v
 	case *Flags:
 		*p = Flags(v)
+	case *AbsorberFlags:
+		*p = AbsorberFlags(v)
 	}
 }
 

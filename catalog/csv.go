@@ -147,7 +147,7 @@ func parseField(field any, value string) error {
 		v, err := strconv.ParseInt(value, 10, 64)
 		*p = v
 		return err
-	case *int32, *Flags:
+	case *int32, *Flags, *AbsorberFlags:
 		v, err := strconv.ParseInt(value, 10, 32)
 		setInt(field, v)
 		return err

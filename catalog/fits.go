@@ -8,8 +8,9 @@ import (
 	"duskline/internal/fitsout"
 )
 
-// ErrOrder is returned by FITS for an object after the first line.
-var ErrOrder = errors.New("catalog: all objects must be written before the first line")
+// ErrOrder is returned by FITS for an object after the first line or absorber,
+// and for a line after the first absorber.
+var ErrOrder = errors.New("catalog: objects, lines and absorbers must be written in this order")
 
 // Widths gathers what a FITS table must know before its first row: the widths
 // of its text columns. Show it every row that will be written, in any order,
@@ -17,6 +18,7 @@ var ErrOrder = errors.New("catalog: all objects must be written before the first
 type Widths struct {
 	objects widths[Object]
 	lines   widths[Line]
+	absorb  widths[Absorber]
 }
 
 // AddObject takes account of an object.
@@ -24,6 +26,9 @@ func (w *Widths) AddObject(o *Object) { w.objects.add(o) }
 
 // AddLine takes account of a line.
 func (w *Widths) AddLine(l *Line) { w.lines.add(l) }
+
+// AddAbsorber takes account of an absorber.
+func (w *Widths) AddAbsorber(a *Absorber) { w.absorb.add(a) }
 
 // widths holds the largest size of every text column in bytes.
 type widths[T Row] struct {
@@ -48,7 +53,7 @@ func (w *widths[T]) add(row *T) {
 }
 
 // FITS writes a catalog as one FITS file: an empty primary HDU with the
-// provenance, then the binary tables OBJECTS and LINES. Text is held as ASCII;
+// provenance, then the binary tables OBJECTS, LINES and ABSORBERS. Text is held as ASCII;
 // other characters are written as escapes such as \u00e9. NaN is the null of
 // numbers. Bytes depend on rows, widths and provenance only.
 type FITS struct {
@@ -56,6 +61,7 @@ type FITS struct {
 	widths  *Widths
 	objects *fitsTable[Object]
 	lines   *fitsTable[Line]
+	absorb  *fitsTable[Absorber]
 }
 
 // NewFITS begins a file at the current position of out. The widths must have
@@ -90,6 +96,9 @@ func (f *FITS) WriteObject(o *Object) error {
 
 // WriteLine adds a row to LINES; no object can follow.
 func (f *FITS) WriteLine(l *Line) error {
+	if f.absorb != nil {
+		return ErrOrder
+	}
 	if err := f.beginLines(); err != nil {
 		return err
 	}
@@ -113,13 +122,44 @@ func (f *FITS) beginLines() error {
 	return nil
 }
 
-// Close completes both tables, also where they have no rows, and the file. It
-// does not close the underlying file.
-func (f *FITS) Close() error {
+// WriteAbsorber adds a row to ABSORBERS; no object or line can follow.
+func (f *FITS) WriteAbsorber(a *Absorber) error {
+	if err := f.beginAbsorbers(); err != nil {
+		return err
+	}
+	return f.absorb.write(a)
+}
+
+func (f *FITS) beginAbsorbers() error {
+	if f.absorb != nil {
+		return nil
+	}
 	if err := f.beginLines(); err != nil {
 		return err
 	}
 	if err := f.lines.out.Close(); err != nil {
+		return err
+	}
+	h := &fitsout.Header{}
+	for bit, a := range absorberFlagTable {
+		h.Text(fmt.Sprintf("FLAG%d", bit), a.name, a.says)
+	}
+	h.Comment("The column object_id points to the table OBJECTS. NaN stands for a number that is not known.")
+	absorb, err := newFITSTable(f.out, h, &f.widths.absorb)
+	if err != nil {
+		return err
+	}
+	f.absorb = absorb
+	return nil
+}
+
+// Close completes all tables, also where they have no rows, and the file. It
+// does not close the underlying file.
+func (f *FITS) Close() error {
+	if err := f.beginAbsorbers(); err != nil {
+		return err
+	}
+	if err := f.absorb.out.Close(); err != nil {
 		return err
 	}
 	return f.out.Close()

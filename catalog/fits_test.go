@@ -20,13 +20,16 @@ import (
 var someProvenance = NewProvenance("1.2.3", map[string]string{
 	"settings": "00112233", "recipes": "44556677", "line list": "8899aabb"})
 
-func writeFITS(t interface{ Fatal(...any) }, objects []Object, lines []Line) []byte {
+func writeFITS(t interface{ Fatal(...any) }, objects []Object, lines []Line, absorbers ...Absorber) []byte {
 	var w Widths
 	for i := range objects {
 		w.AddObject(&objects[i])
 	}
 	for i := range lines {
 		w.AddLine(&lines[i])
+	}
+	for i := range absorbers {
+		w.AddAbsorber(&absorbers[i])
 	}
 	var m fitsout.Memory
 	f, err := NewFITS(&m, someProvenance, &w)
@@ -40,6 +43,11 @@ func writeFITS(t interface{ Fatal(...any) }, objects []Object, lines []Line) []b
 	}
 	for i := range lines {
 		if err := f.WriteLine(&lines[i]); err != nil {
+			t.Fatal(err)
+		}
+	}
+	for i := range absorbers {
+		if err := f.WriteAbsorber(&absorbers[i]); err != nil {
 			t.Fatal(err)
 		}
 	}
@@ -58,9 +66,9 @@ func missing(t *testing.T, what string) {
 	t.Skipf("%s is not installed", what)
 }
 
-func saveFITS(t *testing.T, objects []Object, lines []Line) string {
+func saveFITS(t *testing.T, objects []Object, lines []Line, absorbers ...Absorber) string {
 	path := filepath.Join(t.TempDir(), "catalog.fits")
-	if err := os.WriteFile(path, writeFITS(t, objects, lines), 0o644); err != nil {
+	if err := os.WriteFile(path, writeFITS(t, objects, lines, absorbers...), 0o644); err != nil {
 		t.Fatal(err)
 	}
 	return path
@@ -72,7 +80,7 @@ func TestFITSVerify(t *testing.T) {
 		missing(t, "fitsverify")
 	}
 	for name, path := range map[string]string{
-		"rows":    saveFITS(t, someObjects(), someLines()),
+		"rows":    saveFITS(t, someObjects(), someLines(), someAbsorbers()...),
 		"no rows": saveFITS(t, nil, nil),
 	} {
 		// It can hang on some files.
@@ -104,8 +112,8 @@ func TestFITSInAstropy(t *testing.T) {
 	if exec.Command(python, "-c", "import astropy").Run() != nil {
 		missing(t, "python3 with astropy")
 	}
-	objects, lines := someObjects(), someLines()
-	out, err := exec.Command("timeout", "60", python, filepath.Join("testdata", "readback.py"), saveFITS(t, objects, lines)).Output()
+	objects, lines, absorbers := someObjects(), someLines(), someAbsorbers()
+	out, err := exec.Command("timeout", "60", python, filepath.Join("testdata", "readback.py"), saveFITS(t, objects, lines, absorbers...)).Output()
 	if err != nil {
 		var exit *exec.ExitError
 		if errors.As(err, &exit) {
@@ -121,7 +129,7 @@ func TestFITSInAstropy(t *testing.T) {
 		t.Errorf("astropy warns %q and refuses the UCDs or units %q", r.Warnings, r.Refused)
 	}
 	// 1 says that the checksum is there and right.
-	if d := cmp.Diff([][2]int{{1, 1}, {1, 1}, {1, 1}}, r.States); d != "" {
+	if d := cmp.Diff([][2]int{{1, 1}, {1, 1}, {1, 1}, {1, 1}}, r.States); d != "" {
 		t.Errorf("checksum and datasum states:\n%s", d)
 	}
 	for _, f := range someProvenance {
@@ -136,6 +144,7 @@ func TestFITSInAstropy(t *testing.T) {
 	}
 	compareTable(t, r, objects)
 	compareTable(t, r, lines)
+	compareTable(t, r, absorbers)
 }
 
 func compareTable[T Row](t *testing.T, r readback, rows []T) {
@@ -187,6 +196,15 @@ func TestFITSOrderAndWidths(t *testing.T) {
 	}
 	if err := f.WriteObject(&o); !errors.Is(err, ErrOrder) {
 		t.Errorf("object after a line: error %v", err)
+	}
+	if err := f.WriteAbsorber(&Absorber{}); !errors.Is(err, ErrRow) {
+		t.Errorf("absorber without an object: error %v", err)
+	}
+	if err := f.WriteLine(&l); !errors.Is(err, ErrOrder) {
+		t.Errorf("line after an absorber: error %v", err)
+	}
+	if f, err = NewFITS(&fitsout.Memory{}, nil, &w); err != nil {
+		t.Fatal(err)
 	}
 	long := l
 	long.Blend += "+"

@@ -5,8 +5,8 @@ import (
 	"strings"
 )
 
-// MarkdownColumns returns the page docs/columns.md: what the columns of both
-// tables and the flags mean.
+// MarkdownColumns returns the page docs/columns.md: what the columns of
+// all tables and the flags mean.
 func MarkdownColumns() string {
 	var b strings.Builder
 	b.WriteString(`# Columns of the catalog
@@ -15,7 +15,8 @@ Generated from the table in package catalog, which also drives the files; a test
 Version of the columns: ` + FormatVersion + `.
 
 The object table is the HDU OBJECTS of catalog.fits, catalog.csv and objects.parquet. The line table is the HDU
-LINES of catalog.fits and lines.parquet. ` + "`object_id`" + ` joins them.
+LINES of catalog.fits and lines.parquet, the absorber table the HDU ABSORBERS and absorbers.parquet. ` + "`object_id`" + `
+joins them.
 
 A number that is not known is NaN in FITS, null in Parquet and an empty field in CSV. Whole numbers and text are
 always there; text that is not known is empty. CSV holds the decimals given below, FITS and Parquet the full double.
@@ -26,9 +27,14 @@ all other characters are written as escapes such as \u00e9.
 `)
 	markdownTable(&b, "Object table", ObjectColumns())
 	markdownTable(&b, "Line table", LineColumns())
+	markdownTable(&b, "Absorber table", AbsorberColumns())
 	b.WriteString("\n## Flags\n\nBits of `flags`, low bit first. `flag_names` has the names of those that are set, joined by `|`.\n\n" +
 		"| bit | value | name | says |\n|---|---|---|---|\n")
 	for bit, f := range flagTable {
+		fmt.Fprintf(&b, "| %d | %d | `%s` | %s |\n", bit, 1<<bit, f.name, f.says)
+	}
+	b.WriteString("\n## Flags of absorbers\n\nBits of `flags` in the absorber table.\n\n| bit | value | name | says |\n|---|---|---|---|\n")
+	for bit, f := range absorberFlagTable {
 		fmt.Fprintf(&b, "| %d | %d | `%s` | %s |\n", bit, 1<<bit, f.name, f.says)
 	}
 	return b.String()

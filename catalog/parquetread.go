@@ -122,7 +122,7 @@ func (r *ParquetReader[T]) store(field any, v parquet.Value) error {
 			*p = v.Double()
 		}
 		return nil
-	case *int32, *Flags:
+	case *int32, *Flags, *AbsorberFlags:
 		setInt(field, int64(v.Int32()))
 		return nil
 	case *int64:

@@ -32,7 +32,7 @@ with warnings.catch_warnings(record=True) as caught:
                                 "description": h.header["TCOMM%d" % i]})
             tables[h.name] = {"columns": columns, "rows": [[plain(r[c.name]) for c in h.columns] for r in h.data],
                               "flags": [h.header.get("FLAG%d" % b, "") for b in range(32)]}
-    for name in ("OBJECTS", "LINES"):
+    for name in ("OBJECTS", "LINES", "ABSORBERS"):
         t = Table.read(sys.argv[1], hdu=name)
         tables[name]["table_rows"] = len(t)
         tables[name]["table_units"] = {c: str(t[c].unit) for c in t.colnames if t[c].unit is not None}
