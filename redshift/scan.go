@@ -175,9 +175,9 @@ type scanner struct {
 // nominate scans family f at one width over its redshift range and appends up
 // to limit trial shifts, best first, at least apart pixels from each other.
 func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, surv *[ladderSize]float64, limit, apart int) []float64 {
-	kmin := int(math.Floor(math.Log10(1+f.ZMin) / l.step))
-	kmax := int(math.Ceil(math.Log10(1+f.ZMax) / l.step))
-	lags := kmax - kmin + 1
+	kmin := int(math.Ceil(math.Log10(1+f.ZMin) / l.step))
+	kmax := int(math.Floor(math.Log10(1+f.ZMax) / l.step))
+	lags := max(0, kmax-kmin+1)
 	s.num, s.den, s.drop = grow(s.num, lags), grow(s.den, lags), grow(s.drop, lags)
 	clear(s.drop)
 	for c := range f.components {

@@ -85,9 +85,9 @@ func TestNominateAgainstDirectSums(t *testing.T) {
 		var s scanner
 		s.resp.reset(l)
 		found := s.nominate(nil, l, f, 0, everything(), 5, 6)
-		const kmin = -91
-		if len(s.drop) != 183 {
-			t.Fatalf("%d lags, want -91 to 91", len(s.drop))
+		const kmin = -90
+		if len(s.drop) != 181 {
+			t.Fatalf("%d lags, want -90 to 90", len(s.drop))
 		}
 		for i, got := range s.drop {
 			want, room := 0.0, 0.0

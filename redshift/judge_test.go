@@ -1,0 +1,95 @@
+package redshift
+
+import (
+	"math"
+	"testing"
+)
+
+func TestJudge(t *testing.T) {
+	th := DefaultThresholds()
+	good := Result{Found: true, Gap: 100, Chi2Dof: 1, LinesSeen: 5, LinesExpected: 6, LinesCovered: 4, SNR: 5}
+	with := func(change func(r *Result)) Result {
+		r := good
+		change(&r)
+		return r
+	}
+	for _, c := range []struct {
+		name    string
+		r       Result
+		verdict Verdict
+		doubts  func(r *Result) []bool // all must be set
+	}{
+		{"all is well", good, Secure, func(r *Result) []bool {
+			return []bool{!r.Tied, !r.Misfit, !r.Faint, !r.LoneLine, !r.Unseen}
+		}},
+		{"one line", with(func(r *Result) { r.LinesSeen = 1 }), Uncertain, func(r *Result) []bool { return []bool{r.LoneLine} }},
+		{"a small gap", with(func(r *Result) { r.Gap = 8.9 }), Uncertain, func(r *Result) []bool { return []bool{r.Tied} }},
+		{"a gap in a misfit", with(func(r *Result) { r.Chi2Dof = 8; r.Gap = 100 }), Uncertain, func(r *Result) []bool { return []bool{r.Misfit, !r.Tied} }},
+		{"the end of the range", with(func(r *Result) { r.RangeEnd = true }), Uncertain, nil},
+		{"no feature and no gap", with(func(r *Result) { r.LinesSeen = 0; r.Gap = 1; r.SNR = 0.5 }), None, func(r *Result) []bool { return []bool{r.Faint, r.Tied} }},
+		{"no feature and no gap, bright", with(func(r *Result) { r.LinesSeen = 0; r.Gap = 1 }), None, func(r *Result) []bool { return []bool{!r.Faint} }},
+		{"lines out of sight", with(func(r *Result) { r.LinesCovered = 2 }), Secure, func(r *Result) []bool { return []bool{r.Unseen} }},
+		{"nothing expected", with(func(r *Result) { r.LinesExpected, r.LinesCovered = 0, 0 }), Secure, func(r *Result) []bool { return []bool{!r.Unseen} }},
+		{"not found", Result{SNR: math.NaN(), Gap: math.NaN()}, None, func(r *Result) []bool { return []bool{!r.Faint, r.Confidence == 0} }},
+		{"not found and faint", Result{SNR: 0.2, Gap: math.NaN()}, None, func(r *Result) []bool { return []bool{r.Faint} }},
+	} {
+		r := c.r
+		th.Judge(&r)
+		if r.Verdict != c.verdict {
+			t.Errorf("%s: verdict %v, want %v (confidence %.3f)", c.name, r.Verdict, c.verdict, r.Confidence)
+		}
+		if c.doubts == nil {
+			continue
+		}
+		for i, ok := range c.doubts(&r) {
+			if !ok {
+				t.Errorf("%s: doubt %d is not as it should be: %+v", c.name, i, r)
+			}
+		}
+	}
+	if s := []string{None.String(), Uncertain.String(), Secure.String()}; s[0] != "none" || s[1] != "uncertain" || s[2] != "secure" {
+		t.Errorf("verdicts are called %v", s)
+	}
+}
+
+// Confidence is one half without a gap and grows with it; a misfit stretches
+// the gap that is needed.
+func TestConfidenceGrowsWithGap(t *testing.T) {
+	th := DefaultThresholds()
+	confidence := func(gap, chi2 float64) float64 {
+		r := Result{Found: true, Gap: gap, Chi2Dof: chi2}
+		th.Judge(&r)
+		return r.Confidence
+	}
+	if c := confidence(0, 1); c != 0.5 {
+		t.Errorf("confidence %g without a gap", c)
+	}
+	for gap := 1.0; gap < 60; gap++ {
+		if !(confidence(gap, 1) > confidence(gap-1, 1)) {
+			t.Errorf("confidence does not grow at a gap of %g", gap)
+		}
+		if confidence(3*gap, 3) != confidence(gap, 1) || confidence(gap, 0.5) != confidence(gap, 1) {
+			t.Errorf("a gap of %g counts otherwise than its ratio to a misfit above one", gap)
+		}
+	}
+}
+
+func TestCountFeatures(t *testing.T) {
+	for _, c := range []struct {
+		name  string
+		lines []feature
+		want  int
+	}{
+		{"none", nil, 0},
+		{"one", []feature{{100, 2}}, 1},
+		{"the same line twice", []feature{{100, 2}, {100, 5}}, 1},
+		{"apart, out of order", []feature{{300, 2}, {100, 2}, {200, 2}}, 3},
+		{"a blend", []feature{{100, 2}, {103.9, 2}}, 1},
+		{"just apart", []feature{{100, 2}, {104.1, 2}}, 2},
+		{"a chain of blends", []feature{{100, 2}, {103, 2}, {106, 2}}, 1},
+	} {
+		if got := countFeatures(c.lines); got != c.want {
+			t.Errorf("%s: %d, want %d", c.name, got, c.want)
+		}
+	}
+}
