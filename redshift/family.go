@@ -33,6 +33,7 @@ type Family struct {
 	floor      float64 // km/s, least error of a redshift
 	components []component
 	expected   []expectedLine
+	forested   bool // has the forest of Lyman-alpha
 }
 
 type expectedLine struct {
@@ -46,7 +47,7 @@ type component struct {
 	absorption bool
 	width      float64 // km/s; 0: the family's
 	scale      float64 // on the family's width
-	most       float64 // largest amplitude; 0 for no bound
+	most       float64 // largest amplitude, see ComponentRecipe.Most; 0 for no bound
 	terms      []term
 	edges      []edge
 	heads      []head

@@ -32,7 +32,7 @@ type Options struct {
 // DefaultOptions returns the settings the tool is tuned with.
 //
 // The knot spacing puts 18 interior knots over 3500 to 10500 Angstrom. The
-// band without weight is the [O I] night-sky line; the telluric bands are B and A.
+// band without weight is the [O I] night-sky line; the telluric bands are B, A and two of water.
 func DefaultOptions() Options {
 	return Options{
 		KnotSpacing:   0.0251,
@@ -45,7 +45,7 @@ func DefaultOptions() Options {
 		SearchFrom:    3000,
 		SearchTo:      26000,
 		SkyBands:      [][2]float64{{5565, 5590}},
-		TelluricBands: [][2]float64{{6860, 6960}, {7590, 7720}},
+		TelluricBands: [][2]float64{{6860, 6960}, {7590, 7720}, {13450, 14400}, {18000, 19500}},
 		TelluricFloor: 0.3,
 	}
 }
@@ -65,10 +65,8 @@ func NewFinder(families []*Family, step float64, opt Options) (*Finder, error) {
 		return nil, errors.New("no template families")
 	}
 	for _, f := range families {
-		for i := range f.components {
-			if f.components[i].forest {
-				forest()
-			}
+		if f.forested {
+			forest() // built here, not in the first spectrum
 		}
 	}
 	return &Finder{families: families, opt: opt, step: step, survive: survival(opt.KnotSpacing / step)}, nil
@@ -79,25 +77,26 @@ func (f *Finder) Families() []*Family { return f.families }
 
 // Scratch holds the buffers of one worker.
 type Scratch struct {
-	fit      continuum.Fitter
-	x        []float64
-	full     level
-	coarse   level
-	bench    bench
-	scan     scanner
-	shifts   []float64
-	peaks    []peak
-	tmp      []float64
-	smooth   []float64
-	dropLag  []float64
-	features []feature
-	traces   []trace
-	single   drawing // of one line
-	excess   []float64
-	scaled   []float64 // flux in the units of the levels
-	weight   []float64 // weights before they are tempered
-	floor    []float64 // template error, fraction of the local flux
-	basis    continuum.Basis
+	fit         continuum.Fitter
+	x           []float64
+	full        level
+	coarse      level
+	bench       bench
+	scan        scanner
+	shifts      []float64
+	peaks       []peak
+	tmp         []float64
+	smooth      []float64
+	dropLag     []float64
+	features    []feature
+	traces      []trace
+	single      drawing // of one line
+	excess      []float64
+	scaled      []float64 // flux in the units of the levels
+	weight      []float64 // weights before they are tempered
+	independent float64   // pixels with weight that are independent
+	floor       []float64 // template error, fraction of the local flux
+	basis       continuum.Basis
 }
 
 // NewScratch returns scratch for one worker.
@@ -216,6 +215,16 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 	basis := s.fit.Basis()
 	if f.opt.Stiffness > 0 {
 		basis.Intervals *= 4
+	}
+	// Of the pixels left by the bands as many are independent as of all.
+	s.independent = 0
+	for _, w := range l.weight {
+		if w > 0 {
+			s.independent++
+		}
+	}
+	if res.PixelsUsed > 0 && g.Independent > 0 {
+		s.independent *= math.Min(1, g.Independent/float64(res.PixelsUsed))
 	}
 	s.basis = basis
 	s.scaled = append(s.scaled[:0], l.resid...)
@@ -370,13 +379,14 @@ func (f *Finder) judge(s *Scratch) {
 	}
 }
 
-// temper lowers the weights where no peak describes the data: each weight is
-// divided by the mean of w r^2 over its neighborhood, taken from whichever
-// peak fits best there, when that exceeds one. The forest, broad absorption
-// or a bad stretch then no longer decides between families by chance
-// agreements, and the gap is in units of what the best models leave. The
-// weights stay the same for all families. It reports false when too little
-// weight is left to fit anything.
+// temper brings the weights to what the data show. Where no peak describes
+// them, each weight is divided by the excess: the mean of w r^2 over its
+// neighborhood, from whichever peak fits best there, over what noise would
+// give. The forest, broad absorption or a bad stretch then no longer decides
+// between families by chance agreements, and the gap is in units of what the
+// best models leave. Errors that are stated too large all over are scaled down
+// by what the best peak leaves. The weights stay the same for all families. It
+// reports false when too little weight is left to fit anything.
 func (f *Finder) temper(s *Scratch) bool {
 	l := &s.full
 	half := f.opt.Temper
@@ -384,11 +394,12 @@ func (f *Finder) temper(s *Scratch) bool {
 	for i := range s.excess {
 		s.excess[i] = math.Inf(1)
 	}
+	least := math.Inf(1)
 	for i := range s.peaks {
 		p := &s.peaks[i]
 		fit := s.bench.evaluate(l, p.family, p.width, p.shift)
 		s.bench.residual(s.tmp, l, &fit)
-		sum, count := 0.0, 0
+		sum, count, chi2 := 0.0, 0, 0.0
 		add := func(k, sign int) {
 			if k >= 0 && k < l.n && l.weight[k] > 0 {
 				sum += float64(sign) * l.weight[k] * s.tmp[k] * s.tmp[k]
@@ -404,14 +415,23 @@ func (f *Finder) temper(s *Scratch) bool {
 			if count > 0 {
 				s.excess[k] = math.Min(s.excess[k], sum/float64(count))
 			}
+			chi2 += l.weight[k] * s.tmp[k] * s.tmp[k]
 		}
+		least = math.Min(least, chi2)
 	}
+	// What w r^2 is expected to be: less than 1 where pixels are narrower than
+	// the input's, and less again where the stated errors are too large.
+	expect := s.independent / float64(l.good)
+	scale := math.Max(leastScale, math.Min(1, least/s.independent))
 	for k, e := range s.excess {
-		l.weight[k] = s.weight[k] / math.Max(1, e)
+		l.weight[k] = s.weight[k] / (scale * math.Max(1, e/(scale*expect)))
 		l.resid[k] = s.scaled[k]
 	}
 	return l.prepare(s.basis, f.opt.Stiffness, ridge)
 }
+
+// leastScale bounds by how much stated variances may be scaled down.
+const leastScale = 0.2
 
 // score sets the score of a peak from its joint fit: chi^2 relative to the
 // continuum alone, plus penalties.

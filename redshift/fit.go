@@ -32,26 +32,8 @@ type bench struct {
 // and r is the residual of the spline alone.
 func (b *bench) evaluate(l *level, f *Family, width, shift float64) fit {
 	b.weighted = grow(b.weighted, l.n)
-	m := 0
-	for c := range f.components {
-		comp := &f.components[c]
-		d := &b.draws[c]
-		comp.draw(d, l.n, l.start, l.step, shift, width)
-		if len(d.runs) == 0 {
-			continue
-		}
-		if comp.absorption {
-			for _, r := range d.runs {
-				v, cont := d.values[r.lo:r.hi], l.cont[r.lo:r.hi]
-				for i := range v {
-					v[i] *= cont[i]
-				}
-			}
-		}
-		b.used[m] = c
-		m++
-	}
-	b.m = m
+	b.draw(l, f, width, shift)
+	m := b.m
 	b.spline, b.project = grow(b.spline, l.size*m), grow(b.project, l.size*m)
 	clear(b.spline)
 	for k := 0; k < m; k++ {
@@ -74,7 +56,7 @@ func (b *bench) evaluate(l *level, f *Family, width, shift float64) fit {
 				b.spline[j+3*m] += wt * v[3]
 			}
 		}
-		b.h[k], b.most[k] = h, f.components[b.used[k]].most
+		b.h[k] = h
 		b.g[k*maxComponents+k] = gg
 		for e := k + 1; e < m; e++ {
 			other := &b.draws[b.used[e]]
@@ -110,6 +92,59 @@ func (b *bench) evaluate(l *level, f *Family, width, shift float64) fit {
 		out.amp[b.used[k]] = amp[k]
 	}
 	return out
+}
+
+// draw draws the components of f that reach into the level, absorption times
+// the continuum, and sets the bounds of their amplitudes. The forest takes its
+// share of the continuum redward of Lyman-alpha: what is left blueward at high
+// redshift is no continuum to take a share of.
+func (b *bench) draw(l *level, f *Family, width, shift float64) {
+	b.m = 0
+	for c := range f.components {
+		comp := &f.components[c]
+		d := &b.draws[c]
+		comp.draw(d, l.n, l.start, l.step, shift, width)
+		if len(d.runs) == 0 {
+			continue
+		}
+		for _, r := range d.runs {
+			v := d.values[r.lo:r.hi]
+			switch {
+			case comp.forest:
+				red := l.cont[l.pixel(forestAnchor+shift)]
+				for i := range v {
+					v[i] *= red
+				}
+			case comp.absorption:
+				for i, c := range l.cont[r.lo:r.hi] {
+					v[i] *= c
+				}
+			}
+		}
+		b.used[b.m], b.most[b.m] = c, comp.bound(l, shift)
+		b.m++
+	}
+}
+
+// bound is the largest amplitude of a component: its own for absorption; for
+// emission as many times the continuum at the strongest line inside the
+// coverage, or nearest to it.
+func (c *component) bound(l *level, shift float64) float64 {
+	if c.absorption || c.most == 0 {
+		return c.most
+	}
+	best, at, covered := 0.0, 0, false
+	for i := range c.terms {
+		t := &c.terms[i]
+		in := l.covers(t.logWave + shift)
+		if in && !covered || in == covered && t.amp > best {
+			best, at, covered = t.amp, l.pixel(t.logWave+shift), in
+		}
+	}
+	if best == 0 {
+		return 0
+	}
+	return c.most * l.cont[at] / best
 }
 
 // overlap sums a*b over the pixels that two sorted lists of runs share.

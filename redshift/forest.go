@@ -21,6 +21,10 @@ const (
 	forestDz    = 0.1
 	forestZMax  = 8.0
 	forestEdge  = 1215.67
+	// forestAnchor is log10 of the rest wavelength, 1310 Angstrom, where the
+	// continuum is taken that the forest absorbs: between Lyman-alpha with N V
+	// and the blend of Si IV.
+	forestAnchor = 3.1173
 )
 
 // forest builds the table at its first use.

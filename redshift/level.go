@@ -76,6 +76,17 @@ func (l *level) prepare(basis continuum.Basis, stiffness, ridge float64) bool {
 	return true
 }
 
+// pixel returns the pixel of a log10 wavelength, the nearest one outside.
+func (l *level) pixel(logWave float64) int {
+	return max(0, min(l.n-1, int(math.Round((logWave-l.start)/l.step))))
+}
+
+// covers reports whether a log10 wavelength lies on the level.
+func (l *level) covers(logWave float64) bool {
+	x := math.Round((logWave - l.start) / l.step)
+	return x >= 0 && x < float64(l.n)
+}
+
 // bin fills l from a finer level by summing factor pixels at a time, before
 // the finer one is prepared (its resid is still the flux).
 func (l *level) bin(fine *level, factor int) {

@@ -40,8 +40,9 @@ type ComponentRecipe struct {
 	Kind       string  `toml:"kind"`
 	Width      float64 `toml:"width"`       // Gaussian sigma in km/s; the family's when 0
 	WidthScale float64 `toml:"width_scale"` // factor on the family's width; 1 when 0
-	// Most bounds the amplitude of an absorption component: the largest depth,
-	// as a fraction of the continuum, that nature makes. No bound when 0.
+	// Most bounds what nature makes: for absorption the largest depth as a
+	// fraction of the continuum, for emission the largest peak of the strongest
+	// line inside the coverage over the continuum there. No bound when 0.
 	Most   float64      `toml:"most"`
 	Source string       `toml:"source"`
 	Lines  []lineRatio  `toml:"lines"`
@@ -161,6 +162,7 @@ func ParseRecipe(file string, text []byte, list *linelist.List) (*Family, error)
 			bad("component %q: %s", r.Components[i].Name, p)
 		}
 		f.components = append(f.components, c)
+		f.forested = f.forested || c.forest
 	}
 	if len(errs) > 0 {
 		return nil, errors.Join(errs...)
@@ -190,8 +192,8 @@ func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
 	default:
 		bad("kind = %q, want emission or absorption", r.Kind)
 	}
-	if !(r.Most >= 0) || (r.Most > 0 && !c.absorption) {
-		bad("most = %g, want a positive bound, on absorption only", r.Most)
+	if !(r.Most >= 0) {
+		bad("most = %g, want a positive bound, or 0 for none", r.Most)
 	}
 	if r.Source == "" {
 		bad("source is missing: say where the ratios come from")

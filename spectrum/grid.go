@@ -13,6 +13,9 @@ type Grid struct {
 	Step  float64 // dex a pixel
 	Flux  []float64
 	Ivar  []float64
+	// Independent is the number of pixels with data that are independent:
+	// rebinning to narrower pixels makes more pixels, not more data.
+	Independent float64
 }
 
 // Len returns the number of pixels.
@@ -45,7 +48,8 @@ type Gridder struct {
 	// MinWave and MaxWave bound the grid in Angstrom.
 	MinWave, MaxWave float64
 
-	length, info, flux []float64 // sums of one segment
+	length, info, flux, count []float64 // sums of one segment
+	share                     []float64 // input pixels in each grid pixel
 }
 
 // Grid writes s onto g, reusing the slices of g.
@@ -74,7 +78,7 @@ func (gr *Gridder) Grid(g *Grid, s *Spectrum) {
 			hi = math.Max(hi, math.Log10(seg.Wave[j-1]))
 		}
 	}
-	g.Step = gr.Step
+	g.Step, g.Independent = gr.Step, 0
 	if !(hi > lo) {
 		g.Start, g.Flux, g.Ivar = 0, g.Flux[:0], g.Ivar[:0]
 		return
@@ -91,16 +95,20 @@ func (gr *Gridder) Grid(g *Grid, s *Spectrum) {
 			if seg.Ivar[p] > 0 {
 				q := int(math.Round((math.Log10(seg.Wave[p]) - lo) / gr.Step))
 				g.Flux[q], g.Ivar[q] = seg.Flux[p], seg.Ivar[p]
+				g.Independent++
 			}
 		}
 		return
 	}
+	gr.share = resize(gr.share, n)
+	clear(gr.share)
 	for k := range s.Segments {
 		gr.rebin(g, &s.Segments[k])
 	}
 	for i, w := range g.Ivar {
 		if w > 0 {
 			g.Flux[i] /= w
+			g.Independent += math.Min(1, gr.share[i])
 		}
 	}
 }
@@ -143,6 +151,8 @@ func (gr *Gridder) keepsPixels(seg *Segment) bool {
 func (gr *Gridder) rebin(g *Grid, seg *Segment) {
 	n := g.Len()
 	gr.length, gr.info, gr.flux = resize(gr.length, n), resize(gr.info, n), resize(gr.flux, n)
+	gr.count = resize(gr.count, n)
+	clear(gr.count)
 	clear(gr.length)
 	clear(gr.info)
 	clear(gr.flux)
@@ -184,6 +194,7 @@ func (gr *Gridder) rebin(g *Grid, seg *Segment) {
 				continue
 			}
 			gr.length[q] += l
+			gr.count[q] += l / d
 			gr.flux[q] += l * seg.Flux[p]
 			gr.info[q] += l * d / seg.Ivar[p]
 		}
@@ -193,6 +204,7 @@ func (gr *Gridder) rebin(g *Grid, seg *Segment) {
 			continue
 		}
 		w := l * l / gr.info[q]
+		gr.share[q] += gr.count[q]
 		g.Flux[q] += w * gr.flux[q] / l
 		g.Ivar[q] += w
 	}
