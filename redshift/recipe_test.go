@@ -168,7 +168,6 @@ func TestParseRecipeRefuses(t *testing.T) {
 		{"head without end", "tail = 100.0", "tail = inf", []string{shade, "heads"}},
 		{"negative most", "most = 0.5", "most = -0.5", []string{shade, "most = -0.5"}},
 		{"most not a number", "most = 0.5", "most = nan", []string{shade, "most = NaN"}},
-		{"most on emission", "width_scale = 2.0", "most = 1.0", []string{glow, "most = 1", "absorption"}},
 		{"upper level below the lower", "upper = [4]", "upper = [2]", []string{glow, "case_b"}},
 		{"upper level without a ratio", "upper = [4]", "upper = [400]", []string{glow, "case_b"}},
 		{"case_b without upper levels", "upper = [4]", "upper = []", []string{glow, "case_b"}},
