@@ -20,6 +20,8 @@ type axis struct {
 	unitKnown bool
 	rest      float64 // rest wavelength in vacuum, m; NaN when not given
 	guessed   string  // what had to be guessed, "" for nothing
+	number    int     // of the axis in the header, from 1
+	alt       string  // letter of the alternate description, "" for the primary one
 }
 
 var axisCodes = map[string]quantity{
@@ -28,11 +30,31 @@ var axisCodes = map[string]quantity{
 	"FELO": opticalSpeed,
 }
 
-// readAxis reads the spectral axis on image axis n (from 1) of a header.
-// ok is false when the cards describe none.
+// readAxis reads the spectral axis on image axis n (from 1) of a header: the
+// primary description, or the first alternate one (CTYPEna and so on, FITS
+// standard 4.0, section 8.2.1) that names a spectral coordinate where the primary
+// one does not. ok is false when the cards describe none.
 func readAxis(h header, n int) (a axis, ok bool, err error) {
-	key := func(stem string) string { return fmt.Sprintf("%s%d", stem, n) }
-	a = axis{pixel: 1, rest: math.NaN(), unit: unitAngstrom}
+	a, ok, err = readAxisCards(h, n, "")
+	if ok && err == nil && a.code != "" {
+		return a, ok, err
+	}
+	stem := fmt.Sprintf("CTYPE%d", n)
+	for i := range h {
+		alt, found := strings.CutPrefix(h[i].key, stem)
+		if !found || len(alt) != 1 || alt[0] < 'A' || alt[0] > 'Z' {
+			continue
+		}
+		if b, okAlt, errAlt := readAxisCards(h, n, alt); okAlt && errAlt == nil && b.code != "" {
+			return b, true, nil
+		}
+	}
+	return a, ok, err
+}
+
+func readAxisCards(h header, n int, alt string) (a axis, ok bool, err error) {
+	key := func(stem string) string { return fmt.Sprintf("%s%d%s", stem, n, alt) }
+	a = axis{pixel: 1, rest: math.NaN(), unit: unitAngstrom, number: n, alt: alt}
 	ctype := strings.ToUpper(h.text(key("CTYPE")))
 	a.code, a.algorithm = splitType(ctype)
 	if unit, known := parseUnit(h.text(key("CUNIT"))); known {
@@ -52,14 +74,14 @@ func readAxis(h header, n int) (a axis, ok bool, err error) {
 	} else if _, standard := axisCodes[a.code]; !standard {
 		a.pixel = 1
 	}
-	if w, ok := h.number("RESTWAV"); ok && w > 0 {
+	if w, ok := h.number("RESTWAV" + alt); ok && w > 0 {
 		a.rest = w
-	} else if nu, ok := h.number("RESTFRQ"); ok && nu > 0 {
+	} else if nu, ok := h.number("RESTFRQ" + alt); ok && nu > 0 {
 		a.rest = lightSpeed / nu
 	} else if nu, ok := h.number("RESTFREQ"); ok && nu > 0 {
 		a.rest = lightSpeed / nu
 	}
-	if c0, ok0 := h.number("COEFF0"); ok0 && a.code == "" {
+	if c0, ok0 := h.number("COEFF0"); ok0 && a.code == "" && alt == "" {
 		if c1, ok1 := h.number("COEFF1"); ok1 && c1 != 0 {
 			a.value, a.step, a.pixel = c0, c1, 1
 			a.unit, a.unitKnown = spectralUnit{wavelength, angstrom, log10}, true
@@ -68,9 +90,9 @@ func readAxis(h header, n int) (a axis, ok bool, err error) {
 	}
 	var okValue, okStep bool
 	a.value, okValue = h.number(key("CRVAL"))
-	if a.step, okStep = h.number(fmt.Sprintf("CD%d_%d", n, n)); !okStep || a.step == 0 {
+	if a.step, okStep = h.number(fmt.Sprintf("CD%d_%d%s", n, n, alt)); !okStep || a.step == 0 {
 		a.step, okStep = h.number(key("CDELT"))
-		if pc, ok := h.number(fmt.Sprintf("PC%d_%d", n, n)); ok {
+		if pc, ok := h.number(fmt.Sprintf("PC%d_%d%s", n, n, alt)); ok {
 			a.step *= pc
 		}
 	}
@@ -155,7 +177,7 @@ func (a *axis) check() error {
 	switch {
 	case a.needsRest() && !(a.rest > 0):
 		return fmt.Errorf("CTYPE %s needs RESTWAV or RESTFRQ, which the header lacks", a.code)
-	case a.algorithm == "" || a.algorithm == "LOG":
+	case a.algorithm == "" || a.algorithm == "LOG" || a.algorithm == "TAB":
 		return nil
 	case len(a.algorithm) == 3 && a.algorithm[1] == '2' && strings.IndexByte("FWVA", a.algorithm[0]) >= 0:
 		if a.algorithm[0] == 'V' && !(a.rest > 0) {

@@ -114,7 +114,10 @@ func (f *File) arrays(a *arm, row int64) (rawArrays, error) {
 		at place
 		to *[]float64
 	}
-	wants := []want{{a.wave.values, &arr.wave}, {a.flux, &arr.flux}, {a.weight, &arr.weight}, {a.resolution, &arr.resolution}}
+	wants := []want{{a.flux, &arr.flux}, {a.weight, &arr.weight}, {a.resolution, &arr.resolution}}
+	if a.wave.fixed == nil {
+		wants = append(wants, want{a.wave.values, &arr.wave})
+	}
 	for k := range a.masks {
 		wants = append(wants, want{a.masks[k].at, &arr.masks[k]})
 	}
@@ -151,6 +154,8 @@ func (f *File) wavelengths(s *spectrum.Spectrum, a *arm, row int64, v []float64,
 	w := &a.wave
 	unit, rest := w.unit, math.NaN()
 	switch {
+	case w.fixed != nil:
+		v = append([]float64(nil), w.fixed...)
 	case w.axis != nil:
 		var inMeters bool
 		v, inMeters = w.axis.wavelengths(n)

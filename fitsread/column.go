@@ -25,6 +25,7 @@ type column struct {
 	scale   float64
 	zero    float64
 	bad     bool // TFORM or TBCOL not understood
+	flags   bool // the bits of the cell are flags of one pixel, not one bit a pixel
 }
 
 // elementSize holds the bytes of one element of each numeric TFORM letter.
@@ -32,11 +33,24 @@ var elementSize = map[byte]int64{'L': 1, 'B': 1, 'I': 2, 'J': 4, 'K': 8, 'E': 4,
 
 // numeric reports whether the cells hold real numbers or logicals.
 func (c *column) numeric() bool {
-	return !c.bad && c.repeat > 0 && strings.IndexByte("LBIJKED", c.code) >= 0
+	return !c.bad && c.repeat > 0 && strings.IndexByte("LBIJKEDX", c.code) >= 0
+}
+
+// asFlags returns a column of bits as one whole number a cell, its first bit the
+// lowest, for tables with a row a pixel. Other columns stay as they are.
+func (c *column) asFlags(perPixel bool) *column {
+	if c.code != 'X' || c.heap != 0 || !perPixel || c.repeat > 63 {
+		return c
+	}
+	one := *c
+	one.flags = true
+	return &one
 }
 
 // isVector reports whether a cell holds an array.
-func (c *column) isVector() bool { return c.heap != 0 || c.repeat > 1 && c.code != 'A' }
+func (c *column) isVector() bool {
+	return c.heap != 0 || c.repeat > 1 && c.code != 'A' && !c.flags
+}
 
 // readColumns fills h.columns from the header in one pass and checks that they
 // tile the row.
@@ -126,7 +140,7 @@ func (c *column) readForm() bool {
 	c.code = f[i]
 	switch c.code {
 	case 'P', 'Q':
-		if c.repeat > 1 || i+1 == len(f) || elementSize[f[i+1]] == 0 {
+		if c.repeat > 1 || i+1 == len(f) || elementSize[f[i+1]] == 0 && f[i+1] != 'X' {
 			return false
 		}
 		c.heap, c.code = c.code, f[i+1]
@@ -185,6 +199,9 @@ func (c *column) decode(dst []float64, cell []byte) {
 			dst[i] = logical(cell[i])
 		}
 		return
+	case 'X':
+		c.bits(dst, cell)
+		return
 	default:
 		null, hasNull := c.nullValue()
 		for i := range dst {
@@ -196,11 +213,32 @@ func (c *column) decode(dst []float64, cell []byte) {
 			dst[i] = float64(v)
 		}
 	}
+	c.rescale(dst)
+}
+
+// rescale applies TSCAL and TZERO, or BSCALE and BZERO.
+func (c *column) rescale(v []float64) {
 	if c.scale != 1 || c.zero != 0 {
-		for i := range dst {
-			dst[i] = dst[i]*c.scale + c.zero
+		for i := range v {
+			v[i] = v[i]*c.scale + c.zero
 		}
 	}
+}
+
+// bits decodes a cell of bits, the high bit of the first byte first.
+func (c *column) bits(dst []float64, cell []byte) {
+	bit := func(i int) byte { return cell[i/8] >> (7 - i%8) & 1 }
+	if !c.flags {
+		for i := range dst {
+			dst[i] = float64(bit(i))
+		}
+		return
+	}
+	var v uint64
+	for i := range int(c.repeat) {
+		v |= uint64(bit(i)) << i
+	}
+	dst[0] = float64(v)
 }
 
 func logical(b byte) float64 {

@@ -104,9 +104,19 @@ func (f *File) cellBytes(h *hdu, c *column, row int64) ([]byte, int64, error) {
 	if err := f.checkPixels(h, c.repeat); err != nil {
 		return nil, 0, err
 	}
+	if c.heap != 0 {
+		return f.heapBytes(h, c, row, h.axes[0], h.axes[1])
+	}
 	raw, err := f.readBytes(h, row*h.axes[0]+c.offset, c.width)
-	if err != nil || c.heap == 0 {
-		return raw, c.repeat, err
+	return raw, c.repeat, err
+}
+
+// heapBytes returns the bytes of an array on the heap and its number of elements,
+// in a table of rows of rowLen bytes.
+func (f *File) heapBytes(h *hdu, c *column, row, rowLen, rows int64) ([]byte, int64, error) {
+	raw, err := f.readBytes(h, row*rowLen+c.offset, c.width)
+	if err != nil {
+		return nil, 0, err
 	}
 	var n, at uint64
 	switch {
@@ -123,16 +133,23 @@ func (f *File) cellBytes(h *hdu, c *column, row int64) ([]byte, int64, error) {
 	if err := f.checkPixels(h, int64(n)); err != nil {
 		return nil, 0, err
 	}
-	heap := h.axes[0] * h.axes[1]
+	heap := rowLen * rows
 	if v, ok := h.header.integer("THEAP"); ok && v >= heap {
 		heap = v
 	}
 	if heap > math.MaxInt64/2 {
 		return nil, 0, fault(ErrBadHeader, h.index, hintCopy, "THEAP lies outside the data")
 	}
-	raw, err = f.readBytes(h, heap+int64(at), int64(n)*elementSize[c.code])
+	size := int64(n) * elementSize[c.code]
+	if c.code == 'X' {
+		size = int64(n+7) / 8
+	}
+	raw, err = f.readBytes(h, heap+int64(at), size)
 	return raw, int64(n), err
 }
+
+// imageCode has the TFORM letter of the pixels of every BITPIX.
+var imageCode = map[int]byte{8: 'B', 16: 'I', 32: 'J', 64: 'K', -32: 'E', -64: 'D'}
 
 // imageLine reads n pixels of an image from pixel first on, with BSCALE, BZERO
 // and BLANK applied. All of an image at once goes through fitsio.
@@ -140,6 +157,22 @@ func (f *File) imageLine(h *hdu, first, n int64) ([]float64, error) {
 	if err := f.checkPixels(h, n); err != nil {
 		return nil, err
 	}
+	if h.turned {
+		return f.turnedLines(h, first, n)
+	}
+	c := column{scale: 1, code: imageCode[h.bitpix]}
+	if v, ok := h.header.number("BSCALE"); ok && v != 0 {
+		c.scale = v
+	}
+	if v, ok := h.header.number("BZERO"); ok {
+		c.zero = v
+	}
+	if h.tiles != nil {
+		out, err := f.tilePixels(h, first, n)
+		c.rescale(out)
+		return out, err
+	}
+	c.null = h.header.text("BLANK")
 	size := int64(abs(h.bitpix)) / 8
 	if err := h.need(first*size, n*size); err != nil {
 		return nil, err
@@ -154,17 +187,24 @@ func (f *File) imageLine(h *hdu, first, n int64) ([]float64, error) {
 	if err != nil {
 		return nil, err
 	}
-	c := column{scale: 1}
-	c.code = map[int]byte{8: 'B', 16: 'I', 32: 'J', 64: 'K', -32: 'E', -64: 'D'}[h.bitpix]
-	if v, ok := h.header.number("BSCALE"); ok && v != 0 {
-		c.scale = v
-	}
-	if v, ok := h.header.number("BZERO"); ok {
-		c.zero = v
-	}
-	c.null = h.header.text("BLANK")
 	out := make([]float64, n)
 	c.decode(out, raw)
+	return out, nil
+}
+
+// turnedLines reads whole lines of an image whose lines run along its second axis.
+func (f *File) turnedLines(h *hdu, first, n int64) ([]float64, error) {
+	straight := *h
+	straight.turned = false
+	v, err := f.imageLine(&straight, 0, h.pixels()*h.lines())
+	if err != nil {
+		return nil, err
+	}
+	out := make([]float64, n)
+	for i := range out {
+		line, x := (first+int64(i))/h.pixels(), (first+int64(i))%h.pixels()
+		out[i] = v[x*h.lines()+line]
+	}
 	return out, nil
 }
 

@@ -116,6 +116,9 @@ func (h *hdu) info(used map[place]bool) HDUInfo {
 		if info.Shape = strings.Join(sizes, " x "); info.Shape == "" {
 			info.Shape = "no data"
 		}
+		if h.tiles != nil {
+			info.Shape += ", compressed by " + h.tiles.method
+		}
 	}
 	switch {
 	case h.broken != nil:
@@ -123,17 +126,19 @@ func (h *hdu) info(used map[place]bool) HDUInfo {
 	case h.missing > 0:
 		info.Problem = "cut short"
 	}
-	inUse := map[*column]bool{}
+	inUse := map[int]bool{}
 	for p := range used {
 		if p.hdu == h {
 			info.Used = true
-			inUse[p.col] = true
+			if p.col != nil {
+				inUse[p.col.number] = true
+			}
 		}
 	}
 	for i := range h.columns {
 		c := &h.columns[i]
 		ci := ColumnInfo{Name: c.name, Format: c.form, Unit: c.unit, UCD: c.ucd, Utype: c.utype}
-		if inUse[c] {
+		if inUse[c.number] {
 			ci.Role = "used"
 		}
 		info.Columns = append(info.Columns, ci)

@@ -83,7 +83,7 @@ func (f *File) nothingFound() error {
 			return h.broken
 		case h.missing > 0:
 			return fault(ErrTruncated, h.index, hintCopy, "the file ends inside this HDU, and no spectrum comes before it")
-		case h.kind == kindCompressed:
+		case h.kind == kindCompressed, h.kind == kindPacked:
 			return compressedFault(h)
 		}
 	}
@@ -92,8 +92,11 @@ func (f *File) nothingFound() error {
 }
 
 func compressedFault(h *hdu) *ReadError {
-	return fault(ErrCompressed, h.index, "unpack it first with: funpack -O unpacked.fits FILE",
-		"the image %q is tile-compressed", h.name)
+	if h.kind == kindPacked {
+		return fault(ErrCompressed, h.index, unpackHint, "the table %q is compressed in tiles", h.name)
+	}
+	return fault(ErrCompressed, h.index, unpackHint, "the image %q is compressed by the method %s, which is not read here",
+		h.name, h.header.text("ZCMPTYPE"))
 }
 
 // settle checks the plan's columns with the decoder and finds out what headers
@@ -103,7 +106,7 @@ func (f *File) settle() error {
 	used := map[*hdu][]*column{}
 	var order []*hdu
 	note := func(pl place) {
-		if pl.hdu == nil || pl.col == nil || pl.hdu.kind != kindTable || !pl.col.numeric() || pl.col.repeat == 0 {
+		if pl.hdu == nil || pl.col == nil || pl.hdu.kind != kindTable || !pl.col.numeric() || pl.col.code == 'X' {
 			return
 		}
 		for _, c := range used[pl.hdu] {

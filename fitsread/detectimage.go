@@ -2,6 +2,7 @@ package fitsread
 
 import (
 	"fmt"
+	"slices"
 	"strings"
 )
 
@@ -122,6 +123,11 @@ func (f *File) findImages() (*plan, error) {
 // where there is an inverse variance, a compressed weight is.
 func (f *File) companions(a *arm, s *imageSet, flux *hdu) error {
 	a.flux, a.fluxUnit = place{hdu: flux, line: eachLine}, flux.header.text("BUNIT")
+	for _, h := range s.byRole {
+		if h.kind == kindImage && slices.Equal(h.axes, flux.axes) {
+			h.turned = flux.turned
+		}
+	}
 	for _, r := range weightRoles {
 		h := s.byRole[r]
 		if h == nil {
@@ -163,71 +169,83 @@ func (f *File) companions(a *arm, s *imageSet, flux *hdu) error {
 }
 
 // findAxis reads the first image whose header describes a spectral axis along
-// its lines.
+// its lines, or along its columns.
 func (f *File) findAxis() (*plan, error) {
 	var firstErr error
+	note := func(err error) {
+		if firstErr == nil {
+			firstErr = err
+		}
+	}
 	for _, h := range f.hdus {
 		if h.kind != kindImage || h.pixels() < 2 || h.lines() == 0 {
 			continue
 		}
 		if strings.HasPrefix(strings.ToUpper(h.header.text("CTYPE1")), "MULTISPE") {
-			firstErr = fault(ErrNoSpectrum, h.index, "write the orders out with one wavelength array each",
-				"wavelengths given by functions in WAT cards are not supported")
+			note(fault(ErrNoSpectrum, h.index, "write the orders out with one wavelength array each",
+				"wavelengths given by functions in WAT cards are not supported"))
 			continue
 		}
-		ax, ok, err := readAxis(h.header, 1)
-		if err == nil && !ok && h.index > 0 {
-			// Extension images may inherit the axis of the primary header.
-			if ax, ok, err = readAxis(f.hdus[0].header, 1); f.hdus[0].pixels() != 0 {
-				ok = false
-			}
-		}
-		if ok && ax.algorithm == "TAB" {
+		ax, ok, err := f.imageAxis(h)
+		if err == nil && ok && ax.algorithm == "TAB" {
 			var w wavePlan
 			if w, err = f.tableAxis(h, ax); err == nil {
-				return f.linePlan(h, w, "CTYPE1 names a table of wavelengths", "")
+				return f.linePlan(h, w, fmt.Sprintf("CTYPE%d%s names a table of wavelengths", ax.number, ax.alt), "")
 			}
-			err = fmt.Errorf("the table that CTYPE1 = %s names cannot be used: %w", h.header.text("CTYPE1"), err)
+			err = fmt.Errorf("the table that CTYPE%d%s names cannot be used: %w", ax.number, ax.alt, err)
 		}
 		if err != nil {
-			if firstErr == nil {
-				firstErr = fault(ErrBadHeader, h.index, "write a layout that says where the wavelengths are", "%v", err)
-			}
+			note(fault(ErrBadHeader, h.index, "write a layout that says where the wavelengths are", "%v", err))
 			continue
 		}
 		if ok {
 			return f.linePlan(h, axisWave(&ax, h), "the header describes a spectral axis", ax.guessed)
 		}
+		if n := cubeAxis(h); n > 0 {
+			note(fault(ErrNoSpectrum, h.index, "extract the spectra of the objects first", "axis %d of the image is a spectral one: this is a cube", n))
+		}
 	}
 	return nil, firstErr
 }
 
-// tableAxis resolves a -TAB axis (Paper III, section 6): PS1_0 names the
-// extension, PS1_1 the column of coordinates. Index vectors are not supported.
-func (f *File) tableAxis(h *hdu, ax axis) (wavePlan, error) {
-	if ix := h.header.text("PS1_2"); ix != "" {
-		return wavePlan{}, fmt.Errorf("it has an index vector, %s", ix)
+// imageAxis reads the spectral axis of an image's lines. An image of two axes
+// whose second one is spectral is turned. Extensions inherit what the primary
+// header says where that has no data.
+func (f *File) imageAxis(h *hdu) (axis, bool, error) {
+	headers := []header{h.header}
+	if h.index > 0 && len(f.hdus[0].axes) == 0 {
+		headers = append(headers, f.hdus[0].header)
 	}
-	name, colName := h.header.text("PS1_0"), h.header.text("PS1_1")
-	for _, t := range f.hdus {
-		if t.kind != kindTable || t.broken != nil || !strings.EqualFold(t.name, name) || t.axes[1] != 1 {
-			continue
+	var firstErr error
+	for _, hd := range headers {
+		ax, ok, err := readAxis(hd, h.first)
+		if ok && err == nil && ax.code != "" {
+			return ax, true, nil
 		}
-		for i := range t.columns {
-			c := &t.columns[i]
-			if strings.EqualFold(c.name, colName) && c.numeric() && c.isVector() && c.repeat == h.pixels() {
-				w := columnWave(t, c)
-				if !w.unitKnown {
-					w.unit, w.unitKnown = ax.unit, true
-				}
-				ax.algorithm = ""
-				w.medium, w.mediumKnown = ax.medium()
-				w.mediumWhy = "CTYPE"
-				return w, nil
+		if len(h.axes) == 2 && h.axes[1] > 1 {
+			if second, ok2, err := readAxis(hd, h.first+1); ok2 && err == nil && second.code != "" {
+				h.turned = true
+				return second, true, nil
 			}
 		}
+		if ok && err == nil {
+			return ax, true, nil
+		}
+		if firstErr == nil {
+			firstErr = err
+		}
 	}
-	return wavePlan{}, fmt.Errorf("there is no single-row table %q with %d values in column %q", name, h.pixels(), colName)
+	return axis{}, false, firstErr
+}
+
+// cubeAxis returns the number of a spectral axis beyond the second, 0 for none.
+func cubeAxis(h *hdu) int {
+	for n := h.first + 2; n < h.first+len(h.axes); n++ {
+		if ax, ok, _ := readAxis(h.header, n); ok && ax.code != "" {
+			return n
+		}
+	}
+	return 0
 }
 
 // linePlan reads the lines of an image with known wavelengths: one line, or

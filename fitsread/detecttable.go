@@ -143,8 +143,9 @@ func (f *File) tableCandidate(h *hdu, byUCD bool) (*candidate, error) {
 		if want == roleMask && a.weightRole == roleIvar {
 			continue // never applied beside inverse variances, see applyMask
 		}
-		if c := pick(want, like); c != nil {
-			a.masks = append(a.masks, f.maskFor(place{hdu: h, col: c}, want))
+		isMask := func(c *column) bool { return like(c.asFlags(!flux.isVector())) }
+		if c := pick(want, isMask); c != nil {
+			a.masks = append(a.masks, f.maskFor(place{hdu: h, col: c.asFlags(!flux.isVector())}, want))
 		}
 	}
 	for _, want := range []role{roleDisp, roleFWHM, rolePower} {
@@ -238,7 +239,7 @@ func (f *File) waveElsewhere(h *hdu, n int64) (wavePlan, bool) {
 			return w, true
 		}
 	}
-	if a, ok, err := readAxis(h.header, 1); ok && err == nil {
+	if a, ok, err := readAxis(h.header, 1); ok && err == nil && a.algorithm != "TAB" {
 		return axisWave(&a, h), true
 	}
 	return wavePlan{}, false

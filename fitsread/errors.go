@@ -13,7 +13,7 @@ var (
 	ErrTruncated  = errors.New("file is cut short")
 	ErrBadHeader  = errors.New("header contradicts itself or the file")
 	ErrTooLarge   = errors.New("larger than the limit")
-	ErrCompressed = errors.New("tile-compressed image")
+	ErrCompressed = errors.New("compressed in tiles by a method that is not read")
 	ErrNoSpectrum = errors.New("no spectrum found")
 	ErrLayout     = errors.New("layout does not fit the file")
 	ErrBadData    = errors.New("data cannot be used")

@@ -145,7 +145,7 @@ func (f *File) arrayPlace(key string, ref any, name string, line int64) (place, 
 		return place{}, missingHDU(key, ref)
 	}
 	const hint = "correct the layout or leave the file out"
-	if h.kind == kindCompressed {
+	if h.kind == kindCompressed || h.kind == kindPacked {
 		return place{}, compressedFault(h)
 	}
 	if name != "" {
@@ -192,6 +192,9 @@ func (f *File) bindArm(d *armDoc) (arm, error) {
 		if mp.at, err = f.arrayPlace("mask", m.HDU, m.Column, m.Line); err != nil {
 			return a, err
 		}
+		if mp.at.col != nil {
+			mp.at.col = mp.at.col.asFlags(a.flux.col != nil && !a.flux.col.isVector())
+		}
 		a.masks = []maskPlan{mp}
 	}
 	if r := d.Resolution; r != nil {
@@ -214,12 +217,18 @@ func (f *File) bindWave(d *waveDoc) (wavePlan, error) {
 	var err error
 	switch {
 	case d.Axis:
-		ax, ok, err := readAxis(h.header, 1)
+		ax, ok, err := f.imageAxis(h)
 		if err == nil && !ok {
 			err = fmt.Errorf("the header describes no spectral axis")
 		}
 		if err != nil {
 			return w, fault(ErrLayout, h.index, "correct the layout or leave the file out", "wavelength: %v", err)
+		}
+		if ax.algorithm == "TAB" {
+			if w, err = f.tableAxis(h, ax); err != nil {
+				return w, fault(ErrLayout, h.index, "correct the layout or leave the file out", "wavelength: the table of the axis cannot be used: %v", err)
+			}
+			break
 		}
 		w = axisWave(&ax, h)
 	case d.Start != "":

@@ -117,9 +117,10 @@ func (f *File) word(p place, row int64) string {
 
 // wavePlan says how to get the wavelengths of an arm.
 type wavePlan struct {
-	values      place // an array, or
-	start, step place // numbers beside a vector, or
-	axis        *axis // header cards
+	values      place     // an array, or
+	start, step place     // numbers beside a vector, or
+	axis        *axis     // header cards, or
+	fixed       []float64 // worked out from a table when the file was opened
 	axisHDU     *hdu
 	unit        spectralUnit
 	unitKnown   bool
@@ -134,6 +135,8 @@ func (w wavePlan) String() string {
 	switch {
 	case w.axis != nil:
 		return fmt.Sprintf("axis cards of HDU %d", w.axisHDU.index)
+	case w.fixed != nil:
+		return "table of an axis: " + w.values.String()
 	case w.start.isSet():
 		return fmt.Sprintf("start and step: %s, %s", w.start, w.step)
 	}

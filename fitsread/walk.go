@@ -12,12 +12,13 @@ const (
 	kindImage kind = iota
 	kindTable
 	kindASCII
-	kindCompressed
+	kindCompressed // image in tiles whose method is not known here
+	kindPacked     // table in tiles
 	kindOther
 )
 
 func (k kind) String() string {
-	return [...]string{"image", "table", "text table", "compressed image", "other"}[k]
+	return [...]string{"image", "table", "text table", "compressed image", "compressed table", "other"}[k]
 }
 
 // hdu is one header-data unit whose sizes were checked against the file.
@@ -27,18 +28,24 @@ type hdu struct {
 	name    string // EXTNAME
 	header  header
 	bitpix  int
-	axes    []int64 // NAXISn
+	axes    []int64 // NAXISn; of images without leading and trailing axes of one pixel
+	first   int     // number of the axis in the header that axes[0] is, from 1
+	turned  bool    // the image's lines run along its second axis
 	offset  int64   // of the data
 	length  int64   // of the data without padding, as the header claims
 	missing int64   // bytes of the data that the file does not have
 	columns []column
 	broken  *ReadError // why a table must not be used, nil when it may
+	tiles   *tiles     // of a compressed image, nil for others
 }
 
 // pixels returns the number of pixels of an image line, 0 for no image.
 func (h *hdu) pixels() int64 {
-	if h.kind != kindImage || len(h.axes) == 0 {
+	switch {
+	case h.kind != kindImage || len(h.axes) == 0:
 		return 0
+	case h.turned:
+		return h.axes[1]
 	}
 	return h.axes[0]
 }
@@ -51,11 +58,39 @@ func (h *hdu) lines() int64 {
 	case h.kind != kindImage || len(h.axes) == 0:
 		return 0
 	}
+	if h.turned {
+		return h.axes[0]
+	}
 	n := int64(1)
 	for _, a := range h.axes[1:] {
 		n *= a
 	}
 	return n
+}
+
+// dropThinAxes takes away axes of one pixel at both ends: a spectrum is often
+// written along the third axis of a cube of 1 x 1 x n pixels.
+func (h *hdu) dropThinAxes() {
+	h.first = 1
+	if h.kind != kindImage {
+		return
+	}
+	long := 0
+	for _, a := range h.axes {
+		if a != 1 {
+			long++
+		}
+	}
+	if long == 0 {
+		return
+	}
+	for len(h.axes) > 1 && h.axes[0] == 1 && long == 1 {
+		h.axes = h.axes[1:]
+		h.first++
+	}
+	for len(h.axes) > 1 && h.axes[len(h.axes)-1] == 1 {
+		h.axes = h.axes[:len(h.axes)-1]
+	}
 }
 
 // Bounds on headers. No survey comes near them; a file that lies does.
@@ -209,9 +244,13 @@ func (h *hdu) structure() *ReadError {
 	if h.length, ok = dataLength(h.axes, int64(abs(h.bitpix))/8, pcount, gcount, groups); !ok {
 		return fault(ErrBadHeader, h.index, hintCopy, "NAXISn and PCOUNT claim more bytes than a file can have")
 	}
-	if h.kind == kindTable || h.kind == kindASCII {
+	switch h.kind {
+	case kindTable, kindASCII:
 		h.readColumns()
+	case kindCompressed:
+		h.readTiles()
 	}
+	h.dropThinAxes()
 	return nil
 }
 
@@ -227,7 +266,11 @@ func (h *hdu) classify() kind {
 	case "IMAGE", "IUEIMAGE":
 		return kindImage
 	case "BINTABLE", "A3DTABLE":
-		if z, _ := h.header.logical("ZIMAGE"); z {
+		z, _ := h.header.logical("ZIMAGE")
+		if zt, _ := h.header.logical("ZTABLE"); table && zt {
+			return kindPacked
+		}
+		if table && z {
 			return kindCompressed
 		}
 		if table {
