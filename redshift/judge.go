@@ -21,7 +21,7 @@ func (v Verdict) String() string { return [...]string{"none", "uncertain", "secu
 // Thresholds steers Judge. Start from DefaultThresholds.
 type Thresholds struct {
 	SecureConfidence float64 // least confidence of a secure redshift
-	SecureLines      int     // least number of features that stand out by themselves
+	SecureLines      int     // least number of features that stand out by themselves, less those that are missing
 	NoneConfidence   float64 // below this confidence and without a feature the verdict is none
 	GapScale         float64 // the gap over which the chance of a wrong answer falls by e
 	MisfitChi2       float64 // chi^2 per degree of freedom from which a fit is a misfit
@@ -54,7 +54,7 @@ func (t Thresholds) Judge(r *Result) {
 	r.LoneLine = r.LinesSeen == 1
 	r.Unseen = r.LinesExpected > 0 && 2*r.LinesCovered < r.LinesExpected
 	switch {
-	case r.Confidence >= t.SecureConfidence && r.LinesSeen >= t.SecureLines && !r.RangeEnd:
+	case r.Confidence >= t.SecureConfidence && r.LinesSeen-r.LinesMissing >= t.SecureLines && !r.RangeEnd:
 		r.Verdict = Secure
 	case r.LinesSeen == 0 && r.Confidence < t.NoneConfidence:
 		r.Verdict = None
