@@ -142,6 +142,11 @@ func (f *File) settle() error {
 			g.headers = append(g.headers, f.hdus[0])
 		}
 		g.obs = observe(g.headers)
+		if ax := g.arms[0].wave.axis; ax != nil && ax.alt != "" {
+			if c, ok := findCard(g.headers, "SPECSYS"+ax.alt); ok {
+				g.obs.systemStated(c)
+			}
+		}
 		if p.frame != nil {
 			g.obs.frame, g.obs.frameDoubt, g.obs.frameWhy = *p.frame, "", "layout "+p.layout
 			if *p.frame == spectrum.RestFrame {

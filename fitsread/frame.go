@@ -14,6 +14,7 @@ type observation struct {
 	frameWhy    string
 	frameDoubt  spectrum.Code // "" when the frame is stated without doubt
 	velocity    float64       // of a correction that is stated but not applied, km/s; NaN
+	standard    string        // SPECSYS of a standard of rest beyond the solar system
 	jd          float64       // mid-exposure, UTC; NaN
 	site        spectrum.Site
 	siteKnown   bool
@@ -147,11 +148,7 @@ var correctionCards = []struct {
 // barycentric, both with FrameAssumed.
 func (o *observation) readFrame(hs []*hdu) {
 	if c, ok := findCard(hs, "SPECSYS"); ok && c.value() != "" {
-		if fr, ok := frameNamed(c.value()); ok {
-			o.frame, o.frameWhy = fr, "SPECSYS"
-			if fr == spectrum.RestFrame {
-				o.frameDoubt = spectrum.RestFrameStated
-			}
+		if o.systemStated(c) {
 			return
 		}
 	}
@@ -164,6 +161,22 @@ func (o *observation) readFrame(hs []*hdu) {
 		return
 	}
 	o.frame, o.frameWhy = spectrum.Barycentric, "velocity frame not stated; barycentric assumed"
+}
+
+// systemStated takes the frame from a SPECSYS card.
+func (o *observation) systemStated(c card) bool {
+	fr, ok := frameNamed(c.value())
+	if !ok {
+		return false
+	}
+	o.frame, o.frameWhy, o.frameDoubt = fr, c.key, ""
+	switch fr {
+	case spectrum.RestFrame:
+		o.frameDoubt = spectrum.RestFrameStated
+	case spectrum.OtherFrame:
+		o.standard = strings.ToUpper(strings.TrimSpace(c.value()))
+	}
+	return true
 }
 
 // frameNamed reads a SPECSYS value; its first letters tell.
@@ -271,6 +284,8 @@ func (o *observation) fromRemarks(hs []*hdu) bool {
 // the Earth stands for it, good to 0.47 km/s.
 func (o *observation) baryVelocity(ra, dec float64) float64 {
 	switch {
+	case o.frame == spectrum.OtherFrame:
+		return spectrum.RestStandardVelocity(o.standard, ra, dec)
 	case o.frame != spectrum.Topocentric && o.frame != spectrum.Geocentric:
 		return math.NaN()
 	case math.IsNaN(o.jd) || math.IsNaN(ra) || math.IsNaN(dec):

@@ -168,14 +168,42 @@ func TestMidExposure(t *testing.T) {
 		"start and end":   {kv("MJD-OBS", nine-2400000.5-0.02), kv("MJD-END", nine-2400000.5+0.02)},
 		"the middle":      {kv("DATE-AVG", "2031-03-14T09:00:00"), kv("MJD-OBS", 50000.3)},
 		"number in words": {kv("MJD-OBS", "62939.354166666667"), kv("EXPTIME", 3600)},
+		"dates of both":   {kv("DATE-BEG", "2031-03-14T08:30:00"), kv("DATE-END", "2031-03-14T09:30:00")},
+		// TAI-UTC is 37 s since 2017, TT-TAI 32.184 s (IERS Bulletin C; definition).
+		"atomic time":      {kv("TIMESYS", "TAI"), kv("DATE-AVG", "2031-03-14T09:00:37")},
+		"dynamical time":   {kv("TIMESYS", "TDB"), kv("DATE-AVG", "2031-03-14T09:01:09.184")},
+		"terrestrial time": {kv("TIMESYS", "TT"), kv("DATE-OBS", "2031-03-14T08:31:09.184"), kv("EXPTIME", 3600)},
 	} {
 		h := parseHeader(string(block(cards...)))
 		if got := midExposure([]*hdu{{header: h}}); math.Abs(got-nine) > 1e-6 {
 			t.Errorf("%s: %.6f, want %.6f", name, got, nine)
 		}
 	}
-	h := parseHeader(string(block(kv("DATE-OBS", "2031-03-14"), kv("MJD", 62939))))
-	if got := midExposure([]*hdu{{header: h}}); !math.IsNaN(got) {
-		t.Errorf("a date without time gives %g", got)
+	for name, cards := range map[string][]string{
+		"a date without time": {kv("DATE-OBS", "2031-03-14"), kv("MJD", 62939)},
+		"several nights":      {kv("MJD-OBS", nine-2400000.5), kv("MJD-END", nine-2400000.5+4), kv("EXPTIME", 3600)},
+		"a local clock":       {kv("DATE-AVG", "2031-03-14T09:00:00"), kv("TIMESYS", "LOCAL")},
+	} {
+		h := parseHeader(string(block(cards...)))
+		if got := midExposure([]*hdu{{header: h}}); !math.IsNaN(got) {
+			t.Errorf("%s gives %g", name, got)
+		}
+	}
+}
+
+// Another standard of rest is corrected by the Sun's motion, and the card of an
+// alternate axis that is in use counts before the primary one.
+func TestStandardOfRest(t *testing.T) {
+	n := 64
+	cards := append([]string{kv("SPECSYS", "LSRK"), kv("RA", 83.6), kv("DEC", 22.0)}, logAxis...)
+	s := first(t, image(true, -32, []int{n}, noisy(n, 1), cards...))
+	// astropy 5.2.1, LSRK: 12.1797 km/s for this direction, see package spectrum.
+	if s.Frame != spectrum.OtherFrame || math.Abs(s.BaryVelocity-12.1797) > 2e-3 {
+		t.Errorf("%v, %.4f km/s", s.Frame, s.BaryVelocity)
+	}
+	s = first(t, image(true, -32, []int{n}, noisy(n, 1), kv("CTYPE1", "PIXEL"), kv("CRVAL1", 1), kv("CDELT1", 1), kv("SPECSYS", "TOPOCENT"),
+		kv("CTYPE1B", "AWAV"), kv("CUNIT1B", "nm"), kv("CRVAL1B", 500), kv("CDELT1B", 0.1), kv("CRPIX1B", 1), kv("SPECSYSB", "BARYCENT")))
+	if s.Frame != spectrum.Barycentric || s.Medium != spectrum.Air || s.Segments[0].Wave[1] != 5001 {
+		t.Errorf("%v, %v, %v", s.Frame, s.Medium, s.Segments[0].Wave[1])
 	}
 }

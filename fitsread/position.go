@@ -190,48 +190,78 @@ const firstJD, lastJD = 2433282.5, 2488069.5
 
 // midExposure returns the Julian date (UTC) of the middle of the exposure, NaN
 // when the header has none: cards for the middle, else start and end, else start
-// and exposure time.
+// and exposure time, else the start alone. Of spectra added up over more than a
+// day no single time is the right one: NaN. Times are in the scale that TIMESYS
+// names, UTC without it; those in a local scale are not used.
 func midExposure(hs []*hdu) float64 {
-	valid := func(jd float64) bool { return jd > firstJD && jd < lastJD }
+	scale := ""
+	if c, ok := findCard(hs, "TIMESYS"); ok {
+		scale = c.value()
+	}
+	jd, ok := spectrum.UTC(scale, middleTime(hs))
+	if !ok {
+		return math.NaN()
+	}
+	return jd
+}
+
+func validJD(jd float64) bool { return jd > firstJD && jd < lastJD }
+
+// middleTime is midExposure in the time scale of the header.
+func middleTime(hs []*hdu) float64 {
 	for _, key := range []string{"MJD-AVG", "MJD-MID", "MJDMID", "TMID"} {
-		if v, _, ok := findNumber(hs, key); ok && valid(spectrum.MJDToJD(v)) {
+		if v, _, ok := findNumber(hs, key); ok && validJD(spectrum.MJDToJD(v)) {
 			return spectrum.MJDToJD(v)
 		}
 	}
 	for _, key := range []string{"DATE-AVG", "DATE-MID"} {
-		if jd, ok := dateTime(hs, key); ok {
+		if jd, ok := dateTime(hs, key); ok && validJD(jd) {
 			return jd
 		}
 	}
-	start := math.NaN()
-	for _, key := range []string{"MJD-OBS", "MJD-BEG", "MJDSTART", "EXPSTART", "TSTART"} {
-		v, _, ok := findNumber(hs, key)
-		if ok && v != math.Trunc(v) && valid(spectrum.MJDToJD(v)) {
-			start = spectrum.MJDToJD(v)
-			break
-		}
-	}
-	for _, key := range []string{"DATE-BEG", "DATE-OBS", "UT-DATE", "DATE_OBS"} {
-		if jd, ok := dateTime(hs, key); ok && math.IsNaN(start) && valid(jd) {
-			start = jd
-		}
-	}
+	start := startTime(hs)
 	if math.IsNaN(start) {
 		return start
 	}
-	for _, key := range []string{"MJD-END", "EXPEND", "TSTOP"} {
-		if v, _, ok := findNumber(hs, key); ok {
-			if end := spectrum.MJDToJD(v); end >= start && end < start+1 {
-				return (start + end) / 2
-			}
+	if end := endTime(hs); end >= start {
+		if end > start+1 {
+			return math.NaN()
 		}
+		return (start + end) / 2
 	}
-	for _, key := range []string{"EXPTIME", "EXPOSURE", "TEXPTIME", "ITIME"} {
+	for _, key := range []string{"EXPTIME", "EXPOSURE", "TEXPTIME", "ITIME", "XPOSURE", "TELAPSE"} {
 		if v, _, ok := findNumber(hs, key); ok && v > 0 && v < 86400 {
 			return start + v/2/86400
 		}
 	}
 	return start
+}
+
+func startTime(hs []*hdu) float64 {
+	for _, key := range []string{"MJD-OBS", "MJD-BEG", "MJDSTART", "EXPSTART", "TSTART"} {
+		v, _, ok := findNumber(hs, key)
+		if ok && v != math.Trunc(v) && validJD(spectrum.MJDToJD(v)) {
+			return spectrum.MJDToJD(v)
+		}
+	}
+	for _, key := range []string{"DATE-BEG", "DATE-OBS", "UT-DATE", "DATE_OBS"} {
+		if jd, ok := dateTime(hs, key); ok && validJD(jd) {
+			return jd
+		}
+	}
+	return math.NaN()
+}
+
+func endTime(hs []*hdu) float64 {
+	for _, key := range []string{"MJD-END", "EXPEND", "TSTOP"} {
+		if v, _, ok := findNumber(hs, key); ok && validJD(spectrum.MJDToJD(v)) {
+			return spectrum.MJDToJD(v)
+		}
+	}
+	if jd, ok := dateTime(hs, "DATE-END"); ok && validJD(jd) {
+		return jd
+	}
+	return math.NaN()
 }
 
 // dateTime reads a date card that carries the time of day or has it beside it.

@@ -380,6 +380,39 @@ func TestGridAnyInput(t *testing.T) {
 	})
 }
 
+// Independent counts data, not pixels: wide input pixels cut into several count
+// once, narrow ones that are averaged make one, two arms make no more pixels
+// than there are.
+func TestGridCountsIndependentPixels(t *testing.T) {
+	arm := func(width float64, n int) Segment {
+		at := counting(n)
+		for i := range at {
+			at[i] *= width
+		}
+		return Segment{Wave: logWaves(3.7, testStep, at), Flux: filled(n, 1), Ivar: filled(n, 1)}
+	}
+	masked := arm(1, 300)
+	clear(masked.Ivar[100:140])
+	for _, c := range []struct {
+		name string
+		segs []Segment
+		want float64
+	}{
+		{"own pixels", []Segment{arm(1, 300)}, 300},
+		{"own pixels, some without weight", []Segment{masked}, 260},
+		{"pixels three times as wide", []Segment{arm(3, 300)}, 300},
+		{"pixels of four tenths", []Segment{arm(0.4, 300)}, 121},
+		{"two arms on the same pixels", []Segment{arm(1, 300), arm(1, 300)}, 300},
+		{"two arms of wide pixels", []Segment{arm(4, 100), arm(4, 100)}, 200},
+		{"nothing", nil, 0},
+	} {
+		// Half a pixel at each end may be cut off or left empty.
+		if g := gridOf(newGridder(), c.segs...); math.Abs(g.Independent-c.want) > 1.5 {
+			t.Errorf("%s: %.2f of %d pixels are independent, want %g", c.name, g.Independent, g.Len(), c.want)
+		}
+	}
+}
+
 func TestGoodCountsPixels(t *testing.T) {
 	g := Grid{Flux: make([]float64, 6), Ivar: []float64{0, 1, 0, 2, 0, 0}}
 	if n, first, last := g.Good(); n != 2 || first != 1 || last != 3 {

@@ -42,7 +42,7 @@ const (
 	Geocentric                // SPECSYS GEOCENTR
 	Topocentric               // SPECSYS TOPOCENT, as observed
 	RestFrame                 // SPECSYS SOURCE: the source's redshift was taken out
-	OtherFrame                // LSRK, LSRD, GALACTOC, ...: kept as given
+	OtherFrame                // SPECSYS LSRK, LSRD, GALACTOC, LOCALGRP, CMBDIPOL
 )
 
 // String returns the lower-case name of the frame.
@@ -161,7 +161,7 @@ type Spectrum struct {
 	// BaryVelocity is the velocity of the observer towards the source in km/s
 	// that the header implies (1+z_bary = (1+z_obs)(1+v/c)); NaN when the
 	// header has not what it needs. It is applied by ToStandard, once, only
-	// when Frame is Topocentric or Geocentric.
+	// when Frame is Topocentric, Geocentric or OtherFrame.
 	BaryVelocity float64
 	// FluxUnit is the file's own unit string, may be empty.
 	FluxUnit string

@@ -32,7 +32,8 @@ func TestToStandard(t *testing.T) {
 		{"air, barycentric", Air, Barycentric, nan, 0, Barycentric, ""},
 		{"heliocentric kept", Vacuum, Heliocentric, 25, 0, Heliocentric, ""},
 		{"rest frame kept", Air, RestFrame, 25, 0, RestFrame, ""},
-		{"other frame kept", Vacuum, OtherFrame, 25, 0, OtherFrame, ""},
+		{"other standard of rest", Vacuum, OtherFrame, -200, -200, Barycentric, ""},
+		{"other standard without velocity", Vacuum, OtherFrame, nan, 0, OtherFrame, FrameUncertain},
 		{"no velocity", Air, Topocentric, nan, 0, Topocentric, FrameAssumed},
 		{"absurd velocity", Vacuum, Topocentric, 3000, 0, Topocentric, FrameUncertain},
 	} {

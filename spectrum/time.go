@@ -138,3 +138,31 @@ func terrestrialTime(jdUTC float64) float64 {
 	}
 	return jdUTC + (taiMinusUTC+32.184)/86400
 }
+
+// UTC returns the Julian date in UTC of one in another time scale, named as TIMESYS
+// of FITS headers does (FITS standard 4.0, table 30): UTC, GMT, UT1 and UT as
+// they are; TAI, IAT and GPS by the leap seconds; TT, TDT, ET, TDB, TCG and TCB by
+// 32.184 s more. TDB is within 2 ms of TT, TCG and TCB within half a minute this
+// century, in which a barycentric velocity changes by at most 1 m/s. ok is false
+// for LOCAL and names that are not known, whose date comes back unchanged.
+func UTC(scale string, jd float64) (utc float64, ok bool) {
+	var beyondTAI float64 // seconds
+	switch strings.ToUpper(strings.TrimSpace(scale)) {
+	case "", "UTC", "GMT", "UT", "UT1", "UT()":
+		return jd, true
+	case "TAI", "IAT":
+	case "GPS":
+		beyondTAI = -19
+	case "TT", "TDT", "ET", "TDB", "TCG", "TCB":
+		beyondTAI = 32.184
+	default:
+		return jd, false
+	}
+	tai := jd - beyondTAI/86400
+	// The leap seconds are those of the date in UTC: two rounds settle it.
+	utc = tai
+	for range 2 {
+		utc = tai - (terrestrialTime(utc) - utc) + 32.184/86400
+	}
+	return utc, true
+}
