@@ -52,7 +52,9 @@ type component struct {
 	edges      []edge
 	heads      []head
 	forest     bool
-	dense      *table // edges and heads, drawn once
+	dense      *table     // edges and heads, drawn once
+	stack      *Composite // dense rest-frame spectrum, nil for none
+	source     string     // of its ratios
 }
 
 // term is a Gaussian.
@@ -75,7 +77,9 @@ func (c *component) sigmaKms(t *term, familyWidth float64) float64 {
 }
 
 // wide reports whether the component reaches over most of a spectrum.
-func (c *component) wide() bool { return c.forest || len(c.edges) > 0 || len(c.heads) > 0 }
+func (c *component) wide() bool {
+	return c.forest || c.stack != nil || len(c.edges) > 0 || len(c.heads) > 0
+}
 
 // run is a half-open range of pixels.
 type run struct{ lo, hi int }
@@ -142,6 +146,9 @@ func (c *component) draw(d *drawing, n int, start, step, shift, familyWidth floa
 	}
 	if c.dense != nil {
 		c.dense.draw(d, n, start-shift, step)
+	}
+	if c.stack != nil {
+		c.stack.shape.draw(d, n, start-shift, step)
 	}
 	if c.forest {
 		forest().draw(d, n, start-shift, step, math.Pow(10, shift)-1)

@@ -125,6 +125,7 @@ func (f *Finder) Find(g *spectrum.Grid, s *Scratch) Result {
 	}
 	s.peaks = s.peaks[:0]
 	s.scan.resp.reset(&s.full)
+	s.scan.dense.reset()
 	for _, fam := range f.families {
 		for _, width := range fam.Widths {
 			f.nominate(s, fam, width)
@@ -452,6 +453,9 @@ func (f *Family) narrowest(width float64) float64 {
 	least := math.Inf(1)
 	for i := range f.components {
 		c := &f.components[i]
+		if c.stack != nil {
+			least = math.Min(least, c.sigmaKms(&term{}, width))
+		}
 		for j := range c.terms {
 			least = math.Min(least, c.sigmaKms(&c.terms[j], width))
 		}

@@ -1,17 +1,12 @@
 package redshift
 
 import (
-	"bytes"
-	"crypto/sha256"
-	"encoding/hex"
 	"errors"
 	"fmt"
 	"math"
 
 	"duskline/hydrogen"
 	"duskline/linelist"
-
-	"github.com/pelletier/go-toml/v2"
 )
 
 // Recipe is the TOML form of a template family: what it is made of, where each
@@ -51,6 +46,10 @@ type ComponentRecipe struct {
 	Edges  []edge       `toml:"edges"`
 	Heads  []head       `toml:"heads"`
 	Forest bool         `toml:"forest"`
+	// Stack is the path of a dense rest-frame spectrum divided by its
+	// continuum, relative to the recipe. It multiplies the continuum, with both
+	// signs, so that its kind is "absorption".
+	Stack string `toml:"stack"`
 }
 
 type lineRatio struct {
@@ -109,16 +108,19 @@ var classes = map[string]bool{"galaxy": true, "quasar": true, "star": true, "neb
 // ParseRecipe reads a family recipe and compiles it against the line list.
 // Every problem found is reported, each with the file and key it stands in.
 func ParseRecipe(file string, text []byte, list *linelist.List) (*Family, error) {
-	var r Recipe
-	dec := toml.NewDecoder(bytes.NewReader(text)).DisallowUnknownFields()
-	if err := dec.Decode(&r); err != nil {
-		var strict *toml.StrictMissingError
-		if errors.As(err, &strict) {
-			return nil, fmt.Errorf("%s: unknown keys:\n%s", file, strict.String())
-		}
-		return nil, fmt.Errorf("%s: %w", file, err)
+	return ParseRecipeWith(file, text, list, nil)
+}
+
+// Stacks gives the composite that a recipe names by its path.
+type Stacks func(path string) (*Composite, error)
+
+// ParseRecipeWith is ParseRecipe for recipes that may have dense components.
+// Their digests are part of the family's.
+func ParseRecipeWith(file string, text []byte, list *linelist.List, stacks Stacks) (*Family, error) {
+	r, errs := decodeRecipe(file, text)
+	if r == nil {
+		return nil, errors.Join(errs...)
 	}
-	var errs []error
 	bad := func(format string, args ...any) {
 		errs = append(errs, fmt.Errorf("%s: %s", file, fmt.Sprintf(format, args...)))
 	}
@@ -157,7 +159,7 @@ func ParseRecipe(file string, text []byte, list *linelist.List) (*Family, error)
 		}
 	}
 	for i := range r.Components {
-		c, problems := compile(&r.Components[i], list)
+		c, problems := compile(&r.Components[i], list, stacks)
 		for _, p := range problems {
 			bad("component %q: %s", r.Components[i].Name, p)
 		}
@@ -170,15 +172,14 @@ func ParseRecipe(file string, text []byte, list *linelist.List) (*Family, error)
 	if f.headed() && f.ZMax-f.ZMin > headedRange {
 		return nil, fmt.Errorf("%s: redshift = %v: a family with band heads is tried as a whole and may span %g at most", file, r.Redshift, headedRange)
 	}
-	sum := sha256.Sum256(text)
-	f.Digest = hex.EncodeToString(sum[:8])
+	f.Digest = digest(text, f.components)
 	return f, nil
 }
 
-func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
+func compile(r *ComponentRecipe, list *linelist.List, stacks Stacks) (component, []string) {
 	var problems []string
 	bad := func(format string, args ...any) { problems = append(problems, fmt.Sprintf(format, args...)) }
-	c := component{name: r.Name, width: r.Width, scale: r.WidthScale, most: r.Most}
+	c := component{name: r.Name, source: r.Source, width: r.Width, scale: r.WidthScale, most: r.Most}
 	if c.scale == 0 {
 		c.scale = 1
 	}
@@ -254,8 +255,21 @@ func compile(r *ComponentRecipe, list *linelist.List) (component, []string) {
 	}
 	c.forest = r.Forest
 	c.dense = newTable(c.edges, c.heads)
-	if len(c.terms)+len(c.edges)+len(c.heads) == 0 && !c.forest {
-		bad("has no lines, case_b, bumps, edges, heads or forest")
+	if r.Stack != "" {
+		var err error
+		switch {
+		case stacks == nil:
+			bad("stack = %q: only a recipe in a folder can have one", r.Stack)
+		case !c.absorption:
+			bad("stack = %q multiplies the continuum: kind must be absorption", r.Stack)
+		default:
+			if c.stack, err = stacks(r.Stack); err != nil {
+				bad("stack = %q: %v", r.Stack, err)
+			}
+		}
+	}
+	if len(c.terms)+len(c.edges)+len(c.heads) == 0 && !c.forest && r.Stack == "" {
+		bad("has no lines, case_b, bumps, edges, heads, forest or stack")
 	}
 	if !c.absorption && len(c.edges)+len(c.heads) > 0 {
 		bad("edges and heads are depths: kind must be absorption")

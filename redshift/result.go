@@ -142,11 +142,16 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 			res.LinesMissing++
 		}
 	}
+	for c := range p.family.components {
+		if comp := &p.family.components[c]; comp.stack != nil && p.fit.amp[c] > 0 {
+			s.denseFeatures(comp, p.fit.amp[c], p.shift)
+		}
+	}
 	res.LinesSeen = countFeatures(s.features)
 	// A break or band that the data demand counts as one feature.
 	for c := range p.family.components {
 		comp := &p.family.components[c]
-		if a := p.fit.amp[c]; a > 0 && comp.wide() && len(comp.terms) == 0 && a*math.Sqrt(math.Max(0, s.bench.norm(c))) > 2*SeenSNR {
+		if a := p.fit.amp[c]; a > 0 && comp.wide() && comp.stack == nil && len(comp.terms) == 0 && a*math.Sqrt(math.Max(0, s.bench.norm(c))) > 2*SeenSNR {
 			res.LinesSeen++
 		}
 	}

@@ -170,6 +170,7 @@ type scanner struct {
 	num, den []float64
 	drop     []float64
 	order    []int
+	dense    denseScan
 }
 
 // nominate scans family f at one width over its redshift range and appends up
@@ -182,6 +183,10 @@ func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, su
 	clear(s.drop)
 	for c := range f.components {
 		comp := &f.components[c]
+		if comp.stack != nil {
+			s.dense.correlate(s.num, s.den, l, comp.stack, kmin)
+			s.addDrops()
+		}
 		if len(comp.terms) == 0 {
 			continue
 		}
@@ -211,11 +216,7 @@ func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, su
 				s.gather(s.den, den, int(math.Round(p+0.5*d))+kmin, 2*t.amp*u.amp*x*surv[k])
 			}
 		}
-		for i, v := range s.num {
-			if v > 0 && s.den[i] > 0 {
-				s.drop[i] += v * v / s.den[i]
-			}
-		}
+		s.addDrops()
 	}
 	s.order = s.order[:0]
 	for i, v := range s.drop {
@@ -247,6 +248,15 @@ func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, su
 		}
 	}
 	return dst
+}
+
+// addDrops adds what the component at hand takes off chi^2 at each lag.
+func (s *scanner) addDrops() {
+	for i, v := range s.num {
+		if v > 0 && s.den[i] > 0 {
+			s.drop[i] += v * v / s.den[i]
+		}
+	}
 }
 
 // gather adds amp*resp[p+j] to dst[j] for all j where p+j is inside resp.
