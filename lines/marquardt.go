@@ -26,6 +26,7 @@ type marquardt struct {
 	scale  []float64
 	step   []float64
 	cov    []float64 // covariance, full n x n, zero for held ones
+	narrow []float64 // covariance of the linearized fit, where cov is wider
 	chi2   float64
 	free   int // number of parameters not held at the end
 }

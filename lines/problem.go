@@ -68,6 +68,7 @@ type tie struct {
 	borrowed bool    // offset and width come from outside the blend and are held
 	pv, ps   int     // parameters: its own, or the main tie's
 	vmax     float64
+	vprior   float64 // standard error of the offset known beforehand, 0: none
 	smin     float64
 	smax     float64
 }
@@ -121,6 +122,14 @@ func (q *problem) normal(p, a, b []float64) float64 {
 				b[k] -= iv * p[k]
 				chi2 += iv * p[k] * p[k]
 			}
+		}
+	}
+	for k := range q.ties {
+		if e := &q.ties[k]; e.own && e.vprior > 0 {
+			iv := 1 / (e.vprior * e.vprior)
+			a[e.pv*n+e.pv] += iv
+			b[e.pv] -= iv * p[e.pv]
+			chi2 += iv * p[e.pv] * p[e.pv]
 		}
 	}
 	return chi2

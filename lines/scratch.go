@@ -29,6 +29,7 @@ type Scratch struct {
 	bins    []int // pixels a bin may have, along a window
 	prob    problem
 	lm      marquardt
+	avg     average
 	grad    []float64
 	cross   []float64
 	labels  map[labelKey]string

@@ -24,6 +24,10 @@ func (s *Scratch) measureBlend(b *blend) {
 		b.faint = true
 		return
 	}
+	s.lm.narrow = append(s.lm.narrow[:0], s.lm.cov...)
+	if ok && !b.faint {
+		s.marginalize()
+	}
 	s.report(ok)
 	if !b.faint && ok {
 		s.dropAnchors()
@@ -48,7 +52,39 @@ func (s *Scratch) fit(round int) bool {
 		s.tryStarts()
 	}
 	s.fixKinematics(false)
-	return m.minimize(q)
+	if !s.boundCrowded() {
+		return m.minimize(q)
+	}
+	m.minimize(q)
+	for i := range q.comps {
+		a := q.comps[i].amp
+		m.lo[a], m.hi[a] = math.Inf(-1), math.Inf(1)
+	}
+	return m.covariance()
+}
+
+// boundCrowded forbids the amplitudes of crowded lines that share an offset to
+// be of the sign that the strongest of them has not, and reports whether there
+// are any. Without it two large ones of opposite sign may stand for one line.
+func (s *Scratch) boundCrowded() bool {
+	q, m := &s.prob, &s.lm
+	any := false
+	for k := range q.ties {
+		e := &q.ties[k]
+		if e.vprior = 0; !e.own || !s.findTight(k) {
+			continue
+		}
+		any = true
+		e.vprior = e.vmax / 3
+		for _, a := range s.avg.tight {
+			if e.snr < 0 {
+				m.hi[a] = 0
+			} else {
+				m.lo[a] = 0
+			}
+		}
+	}
+	return any
 }
 
 func (s *Scratch) fixKinematics(fixed bool) {
@@ -150,6 +186,9 @@ func (s *Scratch) revise(main int, ok bool) bool {
 	again := false
 	for k := range q.ties {
 		e := &q.ties[k]
+		if e.own && e.vprior == 0 && s.findTight(k) {
+			again = true
+		}
 		if k == main {
 			continue
 		}

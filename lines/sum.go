@@ -21,14 +21,15 @@ func (m *marquardt) quadratic(g []float64) float64 {
 	return v
 }
 
-// bilinear returns g^T C h.
+// bilinear returns g^T C h with the covariance of the linearized fit, which
+// alone tells how parameters follow the pixels.
 func (m *marquardt) bilinear(g, h []float64) float64 {
 	v := 0.0
 	for i, gi := range g {
 		if gi == 0 {
 			continue
 		}
-		row := m.cov[i*m.n : i*m.n+m.n]
+		row := m.narrow[i*m.n : i*m.n+m.n]
 		for j, hj := range h {
 			v += gi * hj * row[j]
 		}

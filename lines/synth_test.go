@@ -76,6 +76,9 @@ func noisy(dst *Arm, clean Arm, rng *rand.Rand) {
 type moments struct{ n, sum, sq, inside float64 }
 
 func (m *moments) add(x float64) {
+	if math.IsNaN(x) {
+		return // not measured
+	}
 	m.n++
 	m.sum += x
 	m.sq += x * x
