@@ -47,6 +47,17 @@ func (c *column) asFlags(perPixel bool) *column {
 	return &one
 }
 
+// values returns how many numbers a cell holds; 0 where only the heap knows.
+func (c *column) values() int64 {
+	switch {
+	case c.heap != 0:
+		return 0
+	case c.flags:
+		return 1
+	}
+	return c.repeat
+}
+
 // isVector reports whether a cell holds an array.
 func (c *column) isVector() bool {
 	return c.heap != 0 || c.repeat > 1 && c.code != 'A' && !c.flags
@@ -204,6 +215,7 @@ func (c *column) decode(dst []float64, cell []byte) {
 		return
 	default:
 		null, hasNull := c.nullValue()
+		unsigned := c.code == 'K' && c.zero == 1<<63 && c.scale == 1 // exact, where adding 2^63 to a float64 is not
 		for i := range dst {
 			v := c.integer(cell, i)
 			if hasNull && v == null {
@@ -211,6 +223,12 @@ func (c *column) decode(dst []float64, cell []byte) {
 				continue
 			}
 			dst[i] = float64(v)
+			if unsigned {
+				dst[i] = float64(uint64(v) ^ 1<<63)
+			}
+		}
+		if unsigned {
+			return
 		}
 	}
 	c.rescale(dst)

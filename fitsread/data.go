@@ -108,7 +108,7 @@ func (f *File) cellBytes(h *hdu, c *column, row int64) ([]byte, int64, error) {
 		return f.heapBytes(h, c, row, h.axes[0], h.axes[1])
 	}
 	raw, err := f.readBytes(h, row*h.axes[0]+c.offset, c.width)
-	return raw, c.repeat, err
+	return raw, c.values(), err
 }
 
 // heapBytes returns the bytes of an array on the heap and its number of elements,

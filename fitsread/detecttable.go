@@ -181,7 +181,7 @@ func sameShape(a, b *column) bool {
 	if a.heap != 0 || b.heap != 0 {
 		return a.isVector() && b.isVector()
 	}
-	return a.repeat == b.repeat
+	return a.values() == b.values()
 }
 
 // shape names the columns of a table.

@@ -178,7 +178,7 @@ func unplio(out []float64, raw []byte) error {
 		return errShortTile
 	}
 	clear(out)
-	x, value := 0, 0
+	x, value := 0, 1 // the value begins at 1
 	fill := func(n, v int) {
 		for ; n > 0 && x < len(out); n-- {
 			out[x] = float64(v)

@@ -331,8 +331,11 @@ func (f *File) dequantize(h *hdu, v []float64, number int64) error {
 		hasBlank = hasBlank || s.c == t.blankCol
 	}
 	random := ditherSequence()
-	start := int((number + t.seed - 1) % ditherLen)
-	next := int(random[start] * 500)
+	start, next := 0, 0
+	if t.dither > 0 {
+		start = int((number + t.seed - 1) % ditherLen)
+		next = int(random[start] * 500)
+	}
 	for i, q := range v {
 		r := 0.5
 		if t.dither > 0 {
