@@ -2,9 +2,7 @@ package pipeline
 
 import (
 	"fmt"
-	"io/fs"
 	"math"
-	"path"
 	"strings"
 
 	"duskline/catalog"
@@ -28,16 +26,22 @@ type Chain struct {
 	digests    map[string]string
 }
 
-// NewChain builds the chain from the built-in line list and template families.
-func NewChain(set Settings) (*Chain, error) {
+// NewChain builds the chain from the built-in line list and the built-in template
+// families, with the recipes of a user over them (see Templates).
+func NewChain(set Settings, recipes ...RecipeText) (*Chain, error) {
 	list, err := linelist.Parse(configs.Lines())
 	if err != nil {
 		return nil, err
 	}
 	c := &Chain{set: set, list: list, meter: lines.NewMeter(list), digests: map[string]string{"lines": list.Digest()}}
-	families, err := loadFamilies(configs.Families(), list, c.digests)
+	tried, err := templates(list, recipes)
 	if err != nil {
 		return nil, err
+	}
+	var families []*redshift.Family
+	for _, t := range tried {
+		families = append(families, t.Family)
+		c.digests["family "+t.Family.Name] = t.Digest
 	}
 	c.finder, err = redshift.NewFinder(families, set.Grid.Step, set.finderOptions())
 	if err != nil {
@@ -45,28 +49,6 @@ func NewChain(set Settings) (*Chain, error) {
 	}
 	c.thresholds = set.thresholds()
 	return c, nil
-}
-
-// loadFamilies reads every recipe of a folder in name order.
-func loadFamilies(folder fs.FS, list *linelist.List, digests map[string]string) ([]*redshift.Family, error) {
-	names, err := fs.Glob(folder, "*.toml")
-	if err != nil {
-		return nil, err
-	}
-	var families []*redshift.Family
-	for _, name := range names {
-		text, err := fs.ReadFile(folder, name)
-		if err != nil {
-			return nil, fmt.Errorf("template family: %w", err)
-		}
-		f, err := redshift.ParseRecipe(name, text, list)
-		if err != nil {
-			return nil, fmt.Errorf("template family: %w", err)
-		}
-		families = append(families, f)
-		digests["family "+strings.TrimSuffix(path.Base(name), ".toml")] = f.Digest
-	}
-	return families, nil
 }
 
 // Digests identifies the line list and every template family.

@@ -40,6 +40,7 @@ type planHead struct {
 	Digests   map[string]string `json:"digests"`  // recipes, line list, layouts, settings
 	Settings  string            `json:"settings"` // essential settings as TOML
 	Layouts   []LayoutText      `json:"layouts,omitempty"`
+	Recipes   []RecipeText      `json:"recipes,omitempty"`
 }
 
 // planInput is one input file of a plan.

@@ -27,6 +27,7 @@ type Job struct {
 
 	Settings  Settings
 	Layouts   []LayoutText // tried before the built-in rules for reading
+	Recipes   []RecipeText // of which Processor was made, kept in the plan
 	Limit     int64        // largest number of spectra, 0 for all
 	Program   string       // version of the program, part of the plan
 	Processor Processor
@@ -74,6 +75,7 @@ const (
 type Recalled struct {
 	Settings Settings
 	Layouts  []LayoutText
+	Recipes  []RecipeText
 	Limit    int64
 }
 
@@ -92,7 +94,7 @@ func Recall(base, out string) (Recalled, error) {
 	if err != nil {
 		return Recalled{}, fmt.Errorf("%s was begun with settings of another version: %w", out, err)
 	}
-	return Recalled{set, r.head.Layouts, r.head.Limit}, nil
+	return Recalled{set, r.head.Layouts, r.head.Recipes, r.head.Limit}, nil
 }
 
 func noRun(out string) error {
@@ -177,7 +179,7 @@ func (j *Job) head() (planHead, error) {
 	}
 	return planHead{Format: planFormat, Version: planVersion, Program: j.Program, Folder: j.Base,
 		BlockSize: j.Settings.Run.BlockSize, Limit: j.Limit, Digests: digests,
-		Layouts: j.Layouts, Settings: string(j.Settings.Essential().TOML())}, nil
+		Layouts: j.Layouts, Recipes: j.Recipes, Settings: string(j.Settings.Essential().TOML())}, nil
 }
 
 // workers returns how many objects are worked on at the same time.

@@ -16,6 +16,7 @@ type demoCmd struct {
 	Out     string `placeholder:"DIR" help:"New or empty folder for the night and the run; by default a temporary one."`
 	Objects int    `default:"320" placeholder:"N" help:"Spectra of the night, beside a few broken files."`
 	Seed    uint64 `default:"1" placeholder:"S" help:"Another seed gives another night."`
+	Recipes string `placeholder:"DIR" help:"Folder of template recipes over the built-in ones."`
 	logFlags
 }
 
@@ -32,6 +33,13 @@ Examples:
 func (c *demoCmd) run(a *app) (int, error) {
 	if c.Objects < 1 {
 		return 0, &pipeline.InputError{Problems: []string{fmt.Sprintf("--objects %d is not allowed; give at least 1", c.Objects)}}
+	}
+	recipes, err := readRecipes(a, c.Recipes)
+	if err != nil {
+		return 0, err
+	}
+	if _, err := pipeline.Templates(recipes); err != nil {
+		return 0, err // before a night is written
 	}
 	out := c.Out
 	if out == "" {
@@ -52,7 +60,7 @@ func (c *demoCmd) run(a *app) (int, error) {
 		fmt.Fprintf(a.stdout, "A synthetic night of %d spectra is in %s; its truth is in %s there.\n\n", len(truth), night, synth.TruthFile)
 	}
 	job := pipeline.Job{Out: filepath.Join(out, "run"), Base: a.folder, Paths: []string{night},
-		Settings: pipeline.DefaultSettings(), Program: version()}
+		Settings: pipeline.DefaultSettings(), Recipes: recipes, Program: version()}
 	summary, err := a.process(job, c.logFlags)
 	if err != nil {
 		return 0, err

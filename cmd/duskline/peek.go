@@ -22,6 +22,7 @@ type peekCmd struct {
 	Plot     string   `placeholder:"OUT.png" help:"Also draw the spectrum, its continuum and the lines that were found."`
 	Settings string   `placeholder:"FILE" help:"Settings in TOML over the built-in ones."`
 	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML, tried before the built-in rules; may be repeated."`
+	Recipes  string   `placeholder:"DIR" help:"Folder of template recipes over the built-in ones."`
 	File     string   `arg:"" help:"FITS file, gzipped or not."`
 }
 
@@ -56,7 +57,11 @@ func (c *peekCmd) run(a *app) (int, error) {
 		}
 		opts.Layouts = append(opts.Layouts, layout)
 	}
-	chain, err := pipeline.NewChain(set)
+	recipes, err := readRecipes(a, c.Recipes)
+	if err != nil {
+		return 0, err
+	}
+	chain, err := pipeline.NewChain(set, recipes...)
 	if err != nil {
 		return 0, err
 	}

@@ -14,6 +14,7 @@ type runCmd struct {
 	Out      string   `required:"" placeholder:"RUN" help:"Folder for the run: new, empty, or that of a run to go on with."`
 	Settings string   `placeholder:"FILE" help:"Settings in TOML over the built-in ones."`
 	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML: how to read files that do not speak for themselves; may be repeated."`
+	Recipes  string   `placeholder:"DIR" help:"Folder of template recipes (*.toml) that add to the built-in families or replace them."`
 	Workers  int      `placeholder:"N" help:"Spectra worked on at the same time; by default one a processor. Changes no result."`
 	Limit    int64    `placeholder:"N" help:"Process the first N spectra only."`
 	logFlags
@@ -69,6 +70,9 @@ func (c *runCmd) job(a *app) (pipeline.Job, error) {
 	if job.Layouts, err = readLayouts(a, c.Layout); err != nil {
 		return job, err
 	}
+	if job.Recipes, err = readRecipes(a, c.Recipes); err != nil {
+		return job, err
+	}
 	if len(c.Path) == 0 {
 		planned, err := pipeline.Recall(a.folder, c.Out)
 		if err != nil {
@@ -79,6 +83,9 @@ func (c *runCmd) job(a *app) (pipeline.Job, error) {
 		}
 		if len(c.Layout) == 0 {
 			job.Layouts = planned.Layouts
+		}
+		if c.Recipes == "" {
+			job.Recipes = planned.Recipes
 		}
 		if c.Limit == 0 {
 			job.Limit = planned.Limit
@@ -127,6 +134,14 @@ func readLayouts(a *app, names []string) ([]pipeline.LayoutText, error) {
 	return out, nil
 }
 
+// readRecipes reads a folder of recipes; without a name there are none.
+func readRecipes(a *app, name string) ([]pipeline.RecipeText, error) {
+	if name == "" {
+		return nil, nil
+	}
+	return pipeline.ReadRecipes(a.locate(name), name)
+}
+
 func readText(a *app, name, what string) ([]byte, error) {
 	text, err := os.ReadFile(a.locate(name))
 	if err != nil {
@@ -147,7 +162,7 @@ func (a *app) process(job pipeline.Job, flags logFlags) (*pipeline.Summary, erro
 	job.Log, job.Progress = log, progress
 
 	var err error
-	if job.Processor, err = pipeline.NewChain(job.Settings); err != nil {
+	if job.Processor, err = pipeline.NewChain(job.Settings, job.Recipes...); err != nil {
 		return nil, err
 	}
 	r, err := pipeline.Prepare(a.ctx, job)
