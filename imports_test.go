@@ -23,6 +23,7 @@ var edges = map[string][]string{
 	"spectrum":         {},
 	"hydrogen":         {},
 	"configs":          {},
+	"manifest":         {},
 	"internal/fitsout": {},
 	"linelist":         {"hydrogen"},
 	"fitsread":         {"spectrum"},
@@ -33,7 +34,7 @@ var edges = map[string][]string{
 	"report":           {"catalog"},
 	"synth":            {"spectrum", "hydrogen", "linelist", "catalog", "internal/fitsout"},
 	"pipeline": {"spectrum", "hydrogen", "linelist", "configs", "fitsread", "continuum", "redshift", "lines",
-		"catalog", "synth", "internal/fitsout"},
+		"catalog", "synth", "internal/fitsout", "manifest"},
 	"cmd/duskline": {"pipeline", "catalog", "report", "synth", "configs", "fitsread", "spectrum"},
 }
 

@@ -166,6 +166,9 @@ type Spectrum struct {
 	// FluxUnit is the file's own unit string, may be empty.
 	FluxUnit string
 
+	// Limits restricts the search for the redshift; nil for none.
+	Limits *Limits
+
 	Layout   string // name of the layout that was used to read it
 	Warnings []Warning
 }
