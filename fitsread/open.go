@@ -92,16 +92,51 @@ func (f *File) Count() int { return int(f.plan.count()) }
 // spectrum without a single good pixel is returned as such. Errors are *ReadError.
 //
 // Panics if i is not below Count.
-func (f *File) Read(i int) (s *spectrum.Spectrum, err error) {
+func (f *File) Read(i int) (*spectrum.Spectrum, error) { return f.ReadAs(i, Nobody()) }
+
+// Identity is the name and the position of an object: degrees, NaN where not known.
+type Identity struct {
+	ObjectID string
+	RA, Dec  float64
+}
+
+// Nobody is an identity of which nothing is known.
+func Nobody() Identity { return Identity{RA: math.NaN(), Dec: math.NaN()} }
+
+// Identity returns the name and position of spectrum i as the file has them,
+// without reading the spectrum.
+//
+// Panics if i is not below Count.
+func (f *File) Identity(i int) Identity {
+	g, row := f.locate(i)
+	who := Identity{ObjectID: f.identify(g, int64(i), row)}
+	who.RA, who.Dec = f.position(g, row)
+	return who
+}
+
+func (f *File) locate(i int) (*group, int64) {
 	if i < 0 || i >= f.Count() {
 		panic(fmt.Sprintf("fitsread: spectrum %d of %d", i, f.Count()))
 	}
+	return f.plan.locate(int64(i))
+}
+
+// ReadAs is Read for an object of whom more is known than the file says: what who
+// has goes before the name and position of the file, also where wavelengths are
+// to be corrected for the motion of the Earth.
+func (f *File) ReadAs(i int, who Identity) (s *spectrum.Spectrum, err error) {
+	g, row := f.locate(i)
 	defer f.guard(&err)
-	g, row := f.plan.locate(int64(i))
 	s = &spectrum.Spectrum{SourceFile: f.path, SourceRow: i, Layout: f.plan.layout,
 		FluxUnit: g.arms[0].fluxUnit, BaryVelocity: math.NaN()}
 	s.ObjectID = f.identify(g, int64(i), row)
 	s.RA, s.Dec = f.position(g, row)
+	if who.ObjectID != "" {
+		s.ObjectID = who.ObjectID
+	}
+	if !math.IsNaN(who.RA) && !math.IsNaN(who.Dec) {
+		s.RA, s.Dec = who.RA, who.Dec
+	}
 	for _, note := range f.plan.guesses {
 		s.Warn(spectrum.LayoutAssumed, "%s", note)
 	}
