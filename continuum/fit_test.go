@@ -220,6 +220,30 @@ func TestFitClipsSpikes(t *testing.T) {
 	}
 }
 
+// Each side has its own limit, and zero never clips.
+func TestFitClipsEachSide(t *testing.T) {
+	const n = 600
+	x, flux := axis(n), make([]float64, n)
+	for i := range flux {
+		flux[i] = 0.5 * math.Sin(float64(i*i)) // a scatter below one
+		switch i % 50 {
+		case 10:
+			flux[i] = 8
+		case 35:
+			flux[i] = -8
+		}
+	}
+	for _, c := range []struct {
+		low, high float64
+		want      int
+	}{{6, 6, 24}, {6, 0, 12}, {0, 6, 12}, {0, 0, 0}, {6, 10, 12}, {10, 6, 12}, {10, 10, 0}} {
+		f := fitted(t, x, flux, constant(n, 1), Options{Spacing: 0.2, ClipLow: c.low, ClipHigh: c.high, Iterations: 5})
+		if f.Clipped() != c.want {
+			t.Errorf("limits %g below and %g above: %d points left out, want %d", c.low, c.high, f.Clipped(), c.want)
+		}
+	}
+}
+
 // Clipping below follows the upper envelope: absorption lines over a tenth of
 // the range do not pull the continuum down.
 func TestFitAsymmetricClip(t *testing.T) {

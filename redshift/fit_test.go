@@ -329,12 +329,22 @@ func TestClimb(t *testing.T) {
 	if got := p.shift / testStep; math.Abs(got-3.37) > 0.01 {
 		t.Errorf("climbed to %.5f pixels, want 3.37", got)
 	}
-	f.ZMax = math.Pow(10, 2.5*testStep) - 1
-	p = peak{family: f, shift: 0}
-	p.fit = b.evaluate(l, f, 0, 0)
-	b.climb(l, &p, testStep, 8)
-	if p.shift > 2.5*testStep {
-		t.Errorf("climbed to %.3f pixels, out of a range that ends at 2.5", p.shift/testStep)
+	// Neither a step nor the vertex may leave the range.
+	for _, end := range []float64{2.5, 3.1} {
+		f.ZMin, f.ZMax = -0.01, math.Pow(10, end*testStep)-1
+		p = peak{family: f, shift: 0}
+		p.fit = b.evaluate(l, f, 0, 0)
+		b.climb(l, &p, testStep, 8)
+		if p.shift > end*testStep {
+			t.Errorf("climbed to %.3f pixels, out of a range that ends at %g", p.shift/testStep, end)
+		}
+		f.ZMin, f.ZMax = math.Pow(10, (6.7-end)*testStep)-1, 0.01
+		p = peak{family: f, shift: 7 * testStep}
+		p.fit = b.evaluate(l, f, 0, p.shift)
+		b.climb(l, &p, testStep, 8)
+		if p.shift < (6.7-end)*testStep {
+			t.Errorf("climbed to %.3f pixels, out of a range that begins at %g", p.shift/testStep, 6.7-end)
+		}
 	}
 }
 

@@ -23,6 +23,8 @@ func TestJudge(t *testing.T) {
 			return []bool{!r.Tied, !r.Misfit, !r.Faint, !r.LoneLine, !r.Unseen}
 		}},
 		{"one line", with(func(r *Result) { r.LinesSeen = 1 }), Uncertain, func(r *Result) []bool { return []bool{r.LoneLine} }},
+		{"lines seen, but as many missing", with(func(r *Result) { r.LinesMissing = 4 }), Uncertain, nil},
+		{"lines seen, some missing", with(func(r *Result) { r.LinesMissing = 3 }), Secure, nil},
 		{"a small gap", with(func(r *Result) { r.Gap = 8.9 }), Uncertain, func(r *Result) []bool { return []bool{r.Tied} }},
 		{"a gap in a misfit", with(func(r *Result) { r.Chi2Dof = 8; r.Gap = 100 }), Uncertain, func(r *Result) []bool { return []bool{r.Misfit, !r.Tied} }},
 		{"the end of the range", with(func(r *Result) { r.RangeEnd = true }), Uncertain, nil},

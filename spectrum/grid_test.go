@@ -214,6 +214,45 @@ func TestRebinKeepsPositions(t *testing.T) {
 	}
 }
 
+// Where pixels are missing, a grid pixel weighs the density times the length
+// that is covered, or nothing when that is less than half of it.
+func TestRebinPartlyCoveredPixels(t *testing.T) {
+	rapid.Check(t, func(t *rapid.T) {
+		wave, width := uneven(t)
+		n := len(wave)
+		const density = 3.0
+		ivar := make([]float64, n)
+		for i := range ivar {
+			if i == 0 || i == n-1 || rapid.IntRange(0, 3).Draw(t, "bad") > 0 {
+				ivar[i] = density * width[i]
+			}
+		}
+		g := gridOf(newGridder(), Segment{Wave: wave, Flux: filled(n, 1), Ivar: ivar})
+		covered := make([]float64, g.Len())
+		left := (math.Log10(wave[0]-0.5*(wave[1]-wave[0])) - g.Start) / testStep
+		for i, d := range width {
+			for q := range covered {
+				if l := math.Min(left+d, float64(q)+0.5) - math.Max(left, float64(q)-0.5); l > 0 && ivar[i] > 0 {
+					covered[q] += l
+				}
+			}
+			left += d
+		}
+		for q, l := range covered {
+			want := density * l
+			if math.Abs(l-0.5) < 1e-6 {
+				continue // on the limit by rounding
+			}
+			if l < 0.5 {
+				want = 0
+			}
+			if math.Abs(g.Ivar[q]-want) > 1e-8 {
+				t.Fatalf("pixel %d, covered by %.4f, weighs %g, want %g", q, l, g.Ivar[q], want)
+			}
+		}
+	})
+}
+
 func TestRebinLeavesMaskedPixelsOut(t *testing.T) {
 	n := 400
 	wave, flux, ivar := make([]float64, n), filled(n, 2), filled(n, 1)

@@ -82,6 +82,8 @@ func TestMaskSpikesLeavesAlone(t *testing.T) {
 		{"a negative spike", func(seg *Segment) { seg.Flux[10] -= 1000 }},
 		{"a spike below the limit", func(seg *Segment) { seg.Flux[10] += 7.9 }},
 		{"a hit of two pixels", func(seg *Segment) { seg.Flux[10] += 1000; seg.Flux[11] += 900 }},
+		{"a rise of the neighbor by more than a quarter", func(seg *Segment) { seg.Flux[10] += 100; seg.Flux[9] += 21 }},
+		{"a rise of the other neighbor", func(seg *Segment) { seg.Flux[10] += 100; seg.Flux[11] += 21 }},
 		{"a step", func(seg *Segment) {
 			for i := 10; i < len(seg.Flux); i++ {
 				seg.Flux[i] += 1000
@@ -110,7 +112,8 @@ func TestMaskSpikesLeavesAlone(t *testing.T) {
 // Every arm is judged by its own errors.
 func TestMaskSpikesOnSeveralArms(t *testing.T) {
 	a, b := spiked(30, 1, 0, 1), spiked(30, 1, 0, 4)
-	a.Flux[10] += 9
+	a.Flux[10] += 100
+	a.Flux[11] += 19  // less than a quarter of 81
 	b.Flux[12] += 4.5 // nine of its sigmas
 	b.Flux[20] += 20
 	s := &Spectrum{Segments: []Segment{a, b}}
