@@ -83,16 +83,7 @@ type Bench struct {
 // Process takes one spectrum through the chain.
 func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 	b.haveCont, b.results = false, b.results[:0]
-	observed := s.Frame
-	s.ToStandard()
-	if s.Frame == observed {
-		s.BaryVelocity = math.NaN() // nothing was applied
-	}
-	if k := b.chain.set.Redshift.SpikeSigmas; k > 0 {
-		s.MaskSpikes(k)
-	}
-	s.RescaleArms(minSharedPixels)
-	b.gridder.Grid(&b.grid, s)
+	b.lay(s)
 	res := b.chain.finder.Find(&b.grid, b.scratch)
 	b.chain.thresholds.Judge(&res)
 	obj := b.object(s, &res)
@@ -104,6 +95,20 @@ func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 		obj.Flags |= catalog.OnSkyLine
 	}
 	return Outcome{Object: obj, Lines: lineRows(b.results)}
+}
+
+// lay brings a spectrum to the standard frame and onto the grid.
+func (b *Bench) lay(s *spectrum.Spectrum) {
+	observed := s.Frame
+	s.ToStandard()
+	if s.Frame == observed {
+		s.BaryVelocity = math.NaN() // nothing was applied
+	}
+	if k := b.chain.set.Redshift.SpikeSigmas; k > 0 {
+		s.MaskSpikes(k)
+	}
+	s.RescaleArms(minSharedPixels)
+	b.gridder.Grid(&b.grid, s)
 }
 
 // minSharedPixels is the overlap that arms need before one is scaled to meet
@@ -271,6 +276,9 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 		default:
 			why = append(why, fmt.Sprintf("%s at %.4f fits nearly as well", res.RivalFamily, res.RivalRedshift))
 		}
+	}
+	if res.Chi2Dof >= t.HopelessChi2 {
+		why = append(why, fmt.Sprintf("no family describes the spectrum: chi2/dof is %.0f", res.Chi2Dof))
 	}
 	if res.RangeEnd {
 		why = append(why, "the redshift lies at the end of the family's range")

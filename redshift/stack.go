@@ -176,3 +176,25 @@ func (s *Scratch) denseFeatures(c *component, amp, shift float64) {
 		}
 	}
 }
+
+// Normalize writes g divided by the continuum that the search for a redshift
+// multiplies absorption with, and the weights of the search on that scale: the
+// template error is in them, and night-sky bands weigh nothing. Where the
+// continuum is not above zero by 0.05 of its median the weight is zero. It
+// reports false when the spectrum cannot be fitted.
+func (f *Finder) Normalize(dst, g *spectrum.Grid, s *Scratch) bool {
+	var res Result
+	if !f.prepare(g, s, &res) {
+		return false
+	}
+	l := &s.full
+	dst.Start, dst.Step = g.Start, g.Step
+	dst.Flux, dst.Ivar = grow(dst.Flux, l.n), grow(dst.Ivar, l.n)
+	for i, c := range l.cont {
+		dst.Flux[i], dst.Ivar[i] = 0, 0
+		if s.weight[i] > 0 && s.fit.Value(s.x[i]) >= c {
+			dst.Flux[i], dst.Ivar[i] = s.scaled[i]/c, s.weight[i]*c*c
+		}
+	}
+	return true
+}

@@ -33,10 +33,11 @@ type app struct {
 
 // grammar is the command line.
 type grammar struct {
-	Run     runCmd     `cmd:"" help:"Process spectra into a catalog; the same command goes on after an interruption."`
-	Demo    demoCmd    `cmd:"" help:"Make a synthetic night of known truth, process it and count what came out right."`
-	Peek    peekCmd    `cmd:"" help:"Show how one file is read, what was assumed, and the answer."`
-	Version versionCmd `cmd:"" help:"Print version and digests of what is built in."`
+	Run       runCmd       `cmd:"" help:"Process spectra into a catalog; the same command goes on after an interruption."`
+	Demo      demoCmd      `cmd:"" help:"Make a synthetic night of known truth, process it and count what came out right."`
+	Peek      peekCmd      `cmd:"" help:"Show how one file is read, what was assumed, and the answer."`
+	Templates templatesCmd `cmd:"" help:"List, show, check and stack the template families that redshifts are found with."`
+	Version   versionCmd   `cmd:"" help:"Print version and digests of what is built in."`
 }
 
 const description = `Redshifts and equivalent widths of a night's one-dimensional FITS spectra.
