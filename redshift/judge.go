@@ -25,6 +25,7 @@ type Thresholds struct {
 	NoneConfidence   float64 // below this confidence and without a feature the verdict is none
 	GapScale         float64 // the gap over which the chance of a wrong answer falls by e
 	MisfitChi2       float64 // chi^2 per degree of freedom from which a fit is a misfit
+	HopelessChi2     float64 // and from which it is never secure
 	TiedGap          float64 // gap below which the rival is tied
 	FaintSNR         float64 // signal-to-noise a pixel below which a spectrum without features is faint
 }
@@ -35,8 +36,8 @@ type Thresholds struct {
 // set by hand on open survey spectra with published redshifts; they are not a
 // calibration.
 func DefaultThresholds() Thresholds {
-	return Thresholds{SecureConfidence: 0.99, SecureLines: 2, NoneConfidence: 0.8, GapScale: 4.5,
-		MisfitChi2: 5, TiedGap: 9, FaintSNR: 1}
+	return Thresholds{SecureConfidence: 0.995, SecureLines: 2, NoneConfidence: 0.8, GapScale: 4.5,
+		MisfitChi2: 5, HopelessChi2: 30, TiedGap: 9, FaintSNR: 1}
 }
 
 // Judge sets Confidence, Verdict and the doubts that follow from thresholds.
@@ -54,7 +55,8 @@ func (t Thresholds) Judge(r *Result) {
 	r.LoneLine = r.LinesSeen == 1
 	r.Unseen = r.LinesExpected > 0 && 2*r.LinesCovered < r.LinesExpected
 	switch {
-	case r.Confidence >= t.SecureConfidence && r.LinesSeen-r.LinesMissing >= t.SecureLines && !r.RangeEnd:
+	case r.Confidence >= t.SecureConfidence && r.LinesSeen-r.LinesMissing >= t.SecureLines &&
+		r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd:
 		r.Verdict = Secure
 	case r.LinesSeen == 0 && r.Confidence < t.NoneConfidence:
 		r.Verdict = None
