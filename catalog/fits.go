@@ -1,6 +1,7 @@
 package catalog
 
 import (
+	"encoding/json"
 	"errors"
 	"fmt"
 	"io"
@@ -30,6 +31,46 @@ func (w *Widths) AddLine(l *Line) { w.lines.add(l) }
 // AddAbsorber takes account of an absorber.
 func (w *Widths) AddAbsorber(a *Absorber) { w.absorb.add(a) }
 
+// Merge takes account of every row that o has seen.
+func (w *Widths) Merge(o *Widths) {
+	w.objects.merge(o.objects.size)
+	w.lines.merge(o.lines.size)
+	w.absorb.merge(o.absorb.size)
+}
+
+// LengthenIDs makes room for n more bytes in every object_id.
+func (w *Widths) LengthenIDs(n int) {
+	for _, size := range [][]int{w.objects.size, w.lines.size, w.absorb.size} {
+		if size != nil {
+			size[0] += n
+		}
+	}
+}
+
+// widthsJSON is the form of Widths in JSON: bytes of every column of a table,
+// null where no row was seen.
+type widthsJSON struct {
+	Objects   []int `json:"objects"`
+	Lines     []int `json:"lines"`
+	Absorbers []int `json:"absorbers"`
+}
+
+// MarshalJSON writes the sizes of all columns, in their order.
+func (w *Widths) MarshalJSON() ([]byte, error) {
+	return json.Marshal(widthsJSON{w.objects.size, w.lines.size, w.absorb.size})
+}
+
+// UnmarshalJSON replaces w by what MarshalJSON wrote. Sizes of other columns
+// than today's are an error.
+func (w *Widths) UnmarshalJSON(text []byte) error {
+	var sizes widthsJSON
+	if err := json.Unmarshal(text, &sizes); err != nil {
+		return err
+	}
+	*w = Widths{}
+	return errors.Join(w.objects.set(sizes.Objects), w.lines.set(sizes.Lines), w.absorb.set(sizes.Absorbers))
+}
+
 // widths holds the largest size of every text column in bytes.
 type widths[T Row] struct {
 	table[T]
@@ -50,6 +91,28 @@ func (w *widths[T]) add(row *T) {
 			w.size[i] = max(w.size[i], len(fitsout.ASCII(textOf(w.columns[i].field(row)))))
 		}
 	}
+}
+
+func (w *widths[T]) merge(size []int) {
+	if size == nil {
+		return
+	}
+	w.prepare()
+	for i, n := range size {
+		w.size[i] = max(w.size[i], n)
+	}
+}
+
+func (w *widths[T]) set(size []int) error {
+	if size == nil {
+		return nil
+	}
+	w.prepare()
+	if len(size) != len(w.size) {
+		return fmt.Errorf("widths of %d columns for table %s, which has %d", len(size), w.name, len(w.size))
+	}
+	copy(w.size, size)
+	return nil
 }
 
 // FITS writes a catalog as one FITS file: an empty primary HDU with the

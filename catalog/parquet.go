@@ -50,6 +50,9 @@ func NewParquet[T Row](w io.Writer, p Provenance) (*Parquet[T], error) {
 	}
 	options = append(options, parquet.KeyValueMetadata(sealKey, sealValue))
 	for _, f := range p {
+		if f.Name == "" {
+			continue
+		}
 		options = append(options, parquet.KeyValueMetadata(f.Name, f.Value))
 	}
 	seal := newSealer(w)

@@ -1,11 +1,9 @@
 package pipeline
 
 import (
-	"context"
 	"crypto/rand"
 	"crypto/sha256"
 	"encoding/hex"
-	"encoding/json"
 	"errors"
 	"fmt"
 	"io"
@@ -22,26 +20,8 @@ type block struct {
 	outcomes []Outcome // in order of the plan
 	left     int       // objects not done yet
 	internal int       // objects spoiled by an internal error
+	taken    int       // objects taken over from an earlier run
 }
-
-// blockNote is the file block.json of a finished block: what it belongs to and
-// what its files must be.
-type blockNote struct {
-	Plan     string `json:"plan"` // digest of the plan
-	Block    int    `json:"block"`
-	Objects  int    `json:"objects"`
-	Internal int    `json:"internal_errors"`
-	// LineCounts has the number of rows of the line table for each object.
-	LineCounts []int               `json:"line_counts"`
-	Files      map[string]fileNote `json:"files"`
-}
-
-type fileNote struct {
-	Size   int64  `json:"size"`
-	SHA256 string `json:"sha256"`
-}
-
-const noteName = "block.json"
 
 // blocks returns how many blocks the plan is cut into.
 func (r *Run) blocks() int {
@@ -59,10 +39,6 @@ func (r *Run) blockFolder(number int) string {
 	return filepath.Join(r.out, blocksName, fmt.Sprintf("%06d", number))
 }
 
-func (r *Run) provenance() catalog.Provenance {
-	return catalog.NewProvenance(r.head.Program, r.head.Digests)
-}
-
 // writeBlock writes a block under a temporary name and renames it into place.
 // If another process put the same block there first, that one stays: they are
 // equal.
@@ -77,7 +53,7 @@ func (r *Run) writeBlock(b *block) error {
 
 func (r *Run) tryBlock(b *block) error {
 	all := filepath.Join(r.out, blocksName)
-	if err := os.MkdirAll(all, 0o777); err != nil {
+	if err := r.makeBlocks(all); err != nil {
 		return err
 	}
 	tmp := filepath.Join(all, fmt.Sprintf("%s%06d-%s", unfinished, b.number, rand.Text()))
@@ -103,39 +79,33 @@ func (r *Run) tryBlock(b *block) error {
 	return syncFolder(all)
 }
 
+// makeBlocks makes the folder of blocks, and its name last.
+func (r *Run) makeBlocks(all string) error {
+	if _, err := os.Stat(all); err == nil {
+		return nil
+	}
+	if err := os.MkdirAll(all, 0o777); err != nil {
+		return err
+	}
+	return syncFolder(r.out)
+}
+
 // fillBlock writes the files of a block and makes them last.
 func (r *Run) fillBlock(folder string, b *block) error {
-	note := blockNote{Plan: r.id, Block: b.number, Objects: len(b.outcomes), Internal: b.internal, Files: map[string]fileNote{}}
-	var err error
-	if note.Files[objectsName], err = writeTable(filepath.Join(folder, objectsName), r.provenance(), func(write func(*catalog.Object) error) error {
-		for i := range b.outcomes {
-			if err := write(&b.outcomes[i].Object); err != nil {
-				return err
-			}
-			note.LineCounts = append(note.LineCounts, len(b.outcomes[i].Lines))
-		}
-		return nil
-	}); err != nil {
+	note := newBlockNote(r, b)
+	if err := errors.Join(
+		writeTable(note, r, folder, objectsName, b, func(o *Outcome) []catalog.Object { return []catalog.Object{o.Object} }),
+		writeTable(note, r, folder, linesName, b, func(o *Outcome) []catalog.Line { return o.Lines }),
+		writeTable(note, r, folder, absorbersName, b, func(o *Outcome) []catalog.Absorber { return o.Absorbers }),
+	); err != nil {
 		return err
 	}
-	if note.Files[linesName], err = writeTable(filepath.Join(folder, linesName), r.provenance(), func(write func(*catalog.Line) error) error {
-		for i := range b.outcomes {
-			for k := range b.outcomes[i].Lines {
-				if err := write(&b.outcomes[i].Lines[k]); err != nil {
-					return err
-				}
-			}
-		}
-		return nil
-	}); err != nil {
-		return err
-	}
-	text, err := json.Marshal(note)
+	text, err := note.text()
 	if err != nil {
 		return err
 	}
 	if _, err := writeSynced(filepath.Join(folder, noteName), func(w io.Writer) error {
-		_, err := w.Write(append(text, '\n'))
+		_, err := w.Write(text)
 		return err
 	}); err != nil {
 		return err
@@ -143,17 +113,25 @@ func (r *Run) fillBlock(folder string, b *block) error {
 	return syncFolder(folder)
 }
 
-func writeTable[T catalog.Row](path string, p catalog.Provenance, rows func(write func(*T) error) error) (fileNote, error) {
-	return writeSynced(path, func(w io.Writer) error {
-		out, err := catalog.NewParquet[T](w, p)
+// writeTable writes one table of a block and notes what the file must be.
+func writeTable[T catalog.Row](note *blockNote, r *Run, folder, name string, b *block, rows func(*Outcome) []T) error {
+	var err error
+	note.Files[name], err = writeSynced(filepath.Join(folder, name), func(w io.Writer) error {
+		out, err := catalog.NewParquet[T](w, r.provenance(""))
 		if err != nil {
 			return err
 		}
-		if err := rows(out.Write); err != nil {
-			return err
+		for i := range b.outcomes {
+			all := rows(&b.outcomes[i])
+			for k := range all {
+				if err := out.Write(&all[k]); err != nil {
+					return err
+				}
+			}
 		}
 		return out.Close()
 	})
+	return err
 }
 
 // writeSynced writes a new file, makes it last, and returns its size and
@@ -190,41 +168,15 @@ func discard(folder string) error {
 	return os.RemoveAll(aside)
 }
 
-// readNote reads and checks block.json. The error wraps fs.ErrNotExist if the
-// block is not there and ErrDamaged if it is not as it must be.
-func (r *Run) readNote(number int) (*blockNote, error) {
-	folder := r.blockFolder(number)
-	if _, err := os.Stat(folder); err != nil {
-		return nil, err
-	}
-	damaged := func(format string, args ...any) error {
-		return fmt.Errorf("block %d of %s is %w: %s", number, r.job.Out, ErrDamaged, fmt.Sprintf(format, args...))
-	}
-	text, err := os.ReadFile(filepath.Join(folder, noteName))
-	if err != nil {
-		return nil, damaged("%s", plain(err))
-	}
-	note := &blockNote{}
-	if err := json.Unmarshal(text, note); err != nil {
-		return nil, damaged("%s: %s", noteName, err)
-	}
-	switch {
-	case note.Plan != r.id || note.Block != number:
-		return nil, damaged("it belongs to block %d of another plan", note.Block)
-	case note.Objects != r.blockLen(number) || len(note.LineCounts) != note.Objects:
-		return nil, damaged("it has %d objects, want %d", note.Objects, r.blockLen(number))
-	}
-	return note, nil
-}
-
 // checkBlock returns nil if a block is there and its files are as they were
-// written.
+// written. The error wraps fs.ErrNotExist if the block is not there and
+// ErrDamaged if it is not as it must be.
 func (r *Run) checkBlock(number int) error {
 	note, err := r.readNote(number)
 	if err != nil {
 		return err
 	}
-	for _, name := range []string{objectsName, linesName} {
+	for _, name := range tableNames {
 		got, err := noteOf(filepath.Join(r.blockFolder(number), name))
 		if err != nil {
 			return fmt.Errorf("block %d of %s is %w: %s: %s", number, r.job.Out, ErrDamaged, name, plain(err))
@@ -245,31 +197,4 @@ func noteOf(path string) (fileNote, error) {
 	sum := sha256.New()
 	n, err := io.Copy(sum, f)
 	return fileNote{n, hex.EncodeToString(sum.Sum(nil))}, err
-}
-
-// finishedBlocks looks for the blocks that are there. Damaged ones are removed,
-// to be done again.
-func (r *Run) finishedBlocks(ctx context.Context) (map[int]bool, error) {
-	there := map[int]bool{}
-	var objects int64
-	for number := range r.blocks() {
-		if err := ctx.Err(); err != nil {
-			return nil, err
-		}
-		err := r.checkBlock(number)
-		switch {
-		case err == nil:
-			there[number] = true
-			objects += int64(r.blockLen(number))
-		case errors.Is(err, ErrDamaged):
-			r.job.Log.Warn("a block is done again", "reason", err)
-			if err := discard(r.blockFolder(number)); err != nil {
-				return nil, fmt.Errorf("a damaged block cannot be removed: %w; remove it and repeat the command", err)
-			}
-		case !errors.Is(err, fs.ErrNotExist):
-			return nil, err
-		}
-	}
-	r.job.Progress.Working(r.totals.Objects, objects)
-	return there, nil
 }

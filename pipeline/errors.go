@@ -34,3 +34,22 @@ func (e *MismatchError) Error() string {
 // ErrDamaged is wrapped by errors about a file of the run folder that is not
 // as it was written.
 var ErrDamaged = errors.New("damaged")
+
+// MissingError says which blocks of a run are not there, or not as they were
+// written.
+type MissingError struct {
+	Out    string
+	Blocks []int // in order
+	Of     int   // blocks of the run
+}
+
+// Error names the blocks and the ways out.
+func (e *MissingError) Error() string {
+	what := "block"
+	if len(e.Blocks) > 1 {
+		what = "blocks"
+	}
+	return fmt.Sprintf("%d of the %d blocks of %s are missing: %s %s. "+
+		"Do them with duskline run --out %s, or write catalogs without them with duskline gather --accept-missing %s.",
+		len(e.Blocks), e.Of, e.Out, what, ranges(e.Blocks), e.Out, e.Out)
+}

@@ -18,18 +18,28 @@ const (
 
 // The other files of a run folder beside the plan.
 const (
-	settingsName = "plan.toml"    // settings that the results depend on, for people
-	blocksName   = "blocks"       // one folder a finished block
-	unfinished   = ".unfinished-" // begins the name of what is not whole yet
-	logName      = "run.log"      // times and messages, see LogFile
-	objectsName  = "objects.parquet"
-	linesName    = "lines.parquet"
-	summaryName  = "summary.json"
+	settingsName  = "plan.toml"    // settings that the results depend on, for people
+	blocksName    = "blocks"       // one folder a finished block
+	unfinished    = ".unfinished-" // begins the name of what is not whole yet
+	objectsName   = "objects.parquet"
+	linesName     = "lines.parquet"
+	absorbersName = "absorbers.parquet"
+	summaryName   = "summary.json"
 )
 
-// LogFile returns the path of the log of a run. It is kept out of the other
-// files because times are in it: their bytes depend on the inputs alone.
-func (r *Run) LogFile() string { return filepath.Join(r.out, logName) }
+// tableNames are the files of a block beside its note.
+var tableNames = [...]string{objectsName, linesName, absorbersName}
+
+// LogFile returns the path of the log of a run, of its own for a shard: not
+// every file system lets several machines append to one. It is kept out of the
+// other files because times are in it: their bytes depend on the inputs alone.
+func (r *Run) LogFile() string {
+	name := "run.log"
+	if s := r.job.Shard; !s.Whole() {
+		name = fmt.Sprintf("run.%dof%d.log", s.Index, s.Count)
+	}
+	return filepath.Join(r.out, name)
+}
 
 // createUnfinished makes a file that is renamed or linked when it is whole.
 func createUnfinished(folder, what string) (*os.File, error) {

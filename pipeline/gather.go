@@ -3,147 +3,264 @@ package pipeline
 import (
 	"context"
 	"crypto/sha256"
-	"encoding/binary"
+	"encoding/hex"
 	"errors"
 	"fmt"
 	"io"
 	"os"
 	"path/filepath"
-	"strconv"
 	"strings"
 
 	"duskline/catalog"
-
-	"github.com/google/renameio/v2"
 )
 
-// Gather joins the blocks, in order, into the catalogs and counts them. All
-// blocks must be there. The catalogs replace older ones when all of them are
-// whole. Equal plans give equal bytes.
+// Gather joins the blocks, in order, into the catalogs and counts them. The
+// catalogs replace older ones when all of them are whole; where those are of
+// the same blocks already nothing is written. Equal plans give equal bytes. The
+// error is a *MissingError if a block is not there or damaged.
 //
 // Objects whose object_id came before get a number after it, such as "x#2", so
-// that object_id is a key; their lines follow.
-func (r *Run) Gather(ctx context.Context) (*Summary, error) {
+// that object_id is a key; their lines and absorbers follow.
+func (r *Run) Gather(ctx context.Context) (*Summary, error) { return r.gather(ctx, false) }
+
+// GatherPresent does as Gather without the blocks that are missing. Catalogs
+// and summary say what is not in them.
+func (r *Run) GatherPresent(ctx context.Context) (*Summary, error) { return r.gather(ctx, true) }
+
+func (r *Run) gather(ctx context.Context, accept bool) (*Summary, error) {
 	r.job.Progress.Gathering()
-	summary := newSummary(r.head, r.totals)
-	var widths catalog.Widths
-	if err := r.measure(ctx, summary, &widths); err != nil {
-		return nil, err
-	}
-	out, err := r.openCatalogs(&widths)
+	whole, err := r.wholeBlocks(ctx)
 	if err != nil {
 		return nil, err
 	}
-	defer out.cleanup()
-	if err := r.eachObject(ctx, out.object); err != nil {
-		return nil, err
+	g := &gathering{Run: r, summary: newSummary(r)}
+	for number, ok := range whole {
+		if ok {
+			g.blocks = append(g.blocks, number)
+		} else {
+			g.summary.MissingBlocks = append(g.summary.MissingBlocks, number)
+			g.summary.MissingObjects += int64(r.blockLen(number))
+		}
 	}
-	if err := r.eachLine(ctx, out.line); err != nil {
-		return nil, err
+	missing := g.summary.MissingBlocks
+	if len(missing) > 0 && !accept {
+		return nil, &MissingError{Out: r.job.Out, Blocks: missing, Of: r.blocks()}
 	}
-	if err := out.finish(); err != nil {
-		return nil, err
+	g.summary.Complete = len(missing) == 0
+	r.sweep(g.summary.Complete)
+	if err := g.all(ctx); err != nil {
+		if ctx.Err() != nil {
+			return nil, ctx.Err()
+		}
+		return nil, fmt.Errorf("the catalogs of %s cannot be written: %w; make room or mend the folder, then repeat the command to go on", r.job.Out, err)
 	}
-	text, err := summary.json()
-	if err != nil {
-		return nil, err
-	}
-	if err := writeAtomic(filepath.Join(r.out, summaryName), func(w io.Writer) error {
-		_, err := w.Write(text)
-		return err
-	}); err != nil {
-		return nil, err
-	}
-	return summary, r.sweep()
+	return g.summary, nil
 }
 
-// measure is the first pass: it checks every block, counts, and finds the
-// widths of the FITS columns.
-func (r *Run) measure(ctx context.Context, summary *Summary, widths *catalog.Widths) error {
-	for number := range r.blocks() {
-		if err := ctx.Err(); err != nil {
-			return err
+// wholeBlocks tells for every block whether it is there and as it was written.
+func (r *Run) wholeBlocks(ctx context.Context) ([]bool, error) {
+	if r.allWhole {
+		whole := make([]bool, r.blocks())
+		for i := range whole {
+			whole[i] = true
 		}
-		if err := r.checkBlock(number); err != nil {
-			return fmt.Errorf("the catalogs cannot be written: %w; repeat the command to do the block again", err)
-		}
-		note, err := r.readNote(number)
-		if err != nil {
-			return err
-		}
-		summary.InternalErrors += int64(note.Internal)
+		return whole, nil
 	}
-	if err := r.eachObject(ctx, func(o *catalog.Object, repeated bool) error {
-		summary.add(o)
-		if repeated {
-			summary.RepeatedIDs++
-		}
-		widths.AddObject(o)
-		return nil
-	}); err != nil {
+	whole, damaged, err := r.verify(ctx, Shard{})
+	for _, d := range damaged {
+		r.job.Log.Warn("a block cannot be used", "block", d.block, "reason", d.err)
+	}
+	return whole, err
+}
+
+// gathering is one Gather at work.
+type gathering struct {
+	*Run
+	blocks  []int // present ones
+	summary *Summary
+	widths  catalog.Widths
+	names   *names
+}
+
+func (g *gathering) all(ctx context.Context) error {
+	shop, err := openWorkshop(g.out)
+	if err != nil {
 		return err
 	}
-	return r.eachLine(ctx, func(l *catalog.Line) error {
-		summary.Lines++
-		widths.AddLine(l)
+	defer shop.close()
+	if g.names, err = newNames(shop.path, g.totals.Objects); err != nil {
+		return err
+	}
+	defer g.names.close()
+	if err := g.survey(ctx); err != nil {
+		return err
+	}
+	if old := g.inPlace(); old != nil {
+		g.summary = old
 		return nil
+	}
+	out, err := shop.openCatalogs(g.provenance(g.missingText()), &g.widths)
+	defer out.close()
+	if err != nil {
+		return err
+	}
+	if err := fanOut(ctx, g.eachObjects(ctx), out.fits.WriteObject, out.csv.Write, out.objects.Write); err != nil {
+		return err
+	}
+	if err := fanOut(ctx, eachOwned(ctx, g, linesName, func(n *blockNote) []int { return n.LineCounts },
+		func(l *catalog.Line) *string { return &l.ObjectID }), out.fits.WriteLine, out.lines.Write); err != nil {
+		return err
+	}
+	if err := fanOut(ctx, eachOwned(ctx, g, absorbersName, func(n *blockNote) []int { return n.AbsorberCounts },
+		func(a *catalog.Absorber) *string { return &a.ObjectID }), out.fits.WriteAbsorber, out.absorbers.Write); err != nil {
+		return err
+	}
+	if g.summary.Files, err = out.finish(g.out); err != nil {
+		return err
+	}
+	text, err := g.summary.json()
+	if err != nil {
+		return err
+	}
+	return writeAtomic(filepath.Join(g.out, summaryName), func(w io.Writer) error {
+		_, err := w.Write(text)
+		return err
 	})
 }
 
-// eachObject visits the objects of all blocks in order, with unique IDs.
-func (r *Run) eachObject(ctx context.Context, visit func(o *catalog.Object, repeated bool) error) error {
-	ids := idGiver{}
-	for number := range r.blocks() {
-		if err := ctx.Err(); err != nil {
-			return err
-		}
-		if err := readTable(filepath.Join(r.blockFolder(number), objectsName), func(o *catalog.Object) error {
-			var repeated bool
-			o.ObjectID, repeated = ids.unique(o.ObjectID)
-			return visit(o, repeated)
-		}); err != nil {
-			return err
-		}
+func (g *gathering) missingText() string {
+	if g.summary.Complete {
+		return ""
 	}
-	return nil
+	return fmt.Sprintf("%d of %d objects, blocks %s", g.summary.MissingObjects, g.summary.Planned, ranges(g.summary.MissingBlocks))
 }
 
-// eachLine visits the lines of all blocks in order, with the IDs that
-// eachObject gives.
-func (r *Run) eachLine(ctx context.Context, visit func(*catalog.Line) error) error {
-	ids := idGiver{}
-	for number := range r.blocks() {
+// survey is the first pass: it counts, finds repeated IDs and the widths of
+// the FITS columns, all from the notes of the blocks.
+func (g *gathering) survey(ctx context.Context) error {
+	sum := sha256.New()
+	for _, number := range g.blocks {
 		if err := ctx.Err(); err != nil {
 			return err
 		}
-		note, err := r.readNote(number)
+		note, digest, err := g.readNoteSum(number)
 		if err != nil {
 			return err
 		}
-		owners := make([]string, 0, note.Objects)
-		if err := readTable(filepath.Join(r.blockFolder(number), objectsName), func(o *catalog.Object) error {
-			id, _ := ids.unique(o.ObjectID)
-			owners = append(owners, id)
-			return nil
-		}); err != nil {
-			return err
-		}
-		object, left := -1, 0
-		if err := readTable(filepath.Join(r.blockFolder(number), linesName), func(l *catalog.Line) error {
-			for left == 0 {
-				if object++; object == len(owners) {
-					return fmt.Errorf("block %d of %s is %w: it has more lines than it counts", number, r.job.Out, ErrDamaged)
-				}
-				left = note.LineCounts[object]
+		fmt.Fprintf(sum, "%d %s\n", number, digest)
+		g.summary.addAll(note.Counts)
+		g.summary.InternalErrors += int64(note.Internal)
+		g.widths.Merge(note.Widths)
+		for _, id := range note.IDs {
+			if err := g.names.add(id); err != nil {
+				return err
 			}
-			left--
-			l.ObjectID = owners[object]
-			return visit(l)
-		}); err != nil {
-			return err
 		}
 	}
+	if err := g.names.settle(); err != nil {
+		return err
+	}
+	g.summary.RepeatedIDs = g.names.Repeated
+	g.widths.LengthenIDs(g.names.extra())
+	g.summary.Blocks = hex.EncodeToString(sum.Sum(nil)[:8])
 	return nil
+}
+
+// inPlace returns the summary of catalogs that are of the same blocks and
+// still there; nil if they have to be written.
+func (g *gathering) inPlace() *Summary {
+	old, err := ReadSummary(filepath.Join(g.out, summaryName))
+	if err != nil || old.Run != g.id || old.Complete != g.summary.Complete || old.Blocks != g.summary.Blocks {
+		return nil
+	}
+	for _, name := range catalogNames {
+		info, err := os.Stat(filepath.Join(g.out, name))
+		if err != nil || info.Size() != old.Files[name] {
+			return nil
+		}
+	}
+	return old
+}
+
+// eachObjects yields the objects of every block with unique IDs.
+func (g *gathering) eachObjects(ctx context.Context) func(yield func([]catalog.Object) error) error {
+	return func(yield func([]catalog.Object) error) error {
+		ids, err := g.names.cursor()
+		if err != nil {
+			return err
+		}
+		for _, number := range g.blocks {
+			if err := ctx.Err(); err != nil {
+				return err
+			}
+			var batch []catalog.Object
+			if err := readTable(filepath.Join(g.blockFolder(number), objectsName), func(o *catalog.Object) error {
+				batch = append(batch, *o)
+				o = &batch[len(batch)-1]
+				o.ObjectID, err = ids.unique(o.ObjectID)
+				return err
+			}); err != nil {
+				return err
+			}
+			if err := yield(batch); err != nil {
+				return err
+			}
+		}
+		return nil
+	}
+}
+
+// rowsABatch bounds the memory of rows on their way to the writers.
+const rowsABatch = 4096
+
+// eachOwned yields the rows of every block that belong to objects, with the IDs
+// that eachObjects gives these.
+func eachOwned[T catalog.Row](ctx context.Context, g *gathering, file string, counts func(*blockNote) []int,
+	owner func(*T) *string) func(yield func([]T) error) error {
+	return func(yield func([]T) error) error {
+		ids, err := g.names.cursor()
+		if err != nil {
+			return err
+		}
+		for _, number := range g.blocks {
+			if err := ctx.Err(); err != nil {
+				return err
+			}
+			note, err := g.readNote(number)
+			if err != nil {
+				return err
+			}
+			for i := range note.IDs {
+				if note.IDs[i], err = ids.unique(note.IDs[i]); err != nil {
+					return err
+				}
+			}
+			object, left := -1, 0
+			var batch []T
+			if err := readTable(filepath.Join(g.blockFolder(number), file), func(row *T) error {
+				for left == 0 {
+					if object++; object == len(note.IDs) {
+						return fmt.Errorf("block %d is %w: %s has more rows than it counts", number, ErrDamaged, file)
+					}
+					left = counts(note)[object]
+				}
+				left--
+				*owner(row) = note.IDs[object]
+				if batch = append(batch, *row); len(batch) < rowsABatch {
+					return nil
+				}
+				full := batch
+				batch = make([]T, 0, rowsABatch)
+				return yield(full)
+			}); err != nil {
+				return err
+			}
+			if err := yield(batch); err != nil {
+				return err
+			}
+		}
+		return nil
+	}
 }
 
 // readTable visits the rows of one Parquet file.
@@ -175,134 +292,25 @@ func readTable[T catalog.Row](path string, visit func(*T) error) error {
 	}
 }
 
-// idGiver tells repeated IDs apart. It holds hashes: a survey has millions of
-// IDs, and two that share a hash are only told apart needlessly.
-type idGiver map[uint64]int32
-
-func (g idGiver) unique(id string) (string, bool) {
-	key := hashID(id)
-	g[key]++
-	if g[key] == 1 {
-		return id, false
-	}
-	for {
-		numbered := id + "#" + strconv.Itoa(int(g[key]))
-		if other := hashID(numbered); g[other] == 0 {
-			g[other] = 1
-			return numbered, true
-		}
-		g[key]++
-	}
+// provenance says what the rows of a catalog depend on.
+func (r *Run) provenance(missing string) catalog.Provenance {
+	return catalog.NewProvenance(catalog.Origin{Program: r.head.Program, Build: r.head.Build, Run: r.id,
+		Settings: r.head.Settings, Keys: settingLines(r.head.Settings), Digests: r.head.Digests, Missing: missing})
 }
 
-func hashID(id string) uint64 {
-	sum := sha256.Sum256([]byte(id))
-	return binary.LittleEndian.Uint64(sum[:])
-}
-
-// catalogs are the files that Gather writes, none of them in place yet.
-type catalogs struct {
-	pending []*renameio.PendingFile
-	closers []io.Closer // of the writers, in order of pending
-
-	fits    *catalog.FITS
-	csv     *catalog.CSV[catalog.Object]
-	objects *catalog.Parquet[catalog.Object]
-	lines   *catalog.Parquet[catalog.Line]
-}
-
-func (r *Run) openCatalogs(widths *catalog.Widths) (*catalogs, error) {
-	c := &catalogs{}
-	open := func(name string, begin func(f *renameio.PendingFile) (io.Closer, error)) error {
-		path := filepath.Join(r.out, name)
-		f, err := renameio.NewPendingFile(path, renameio.WithTempDir(r.out), renameio.WithPermissions(0o666))
-		if err != nil {
-			return fmt.Errorf("%s cannot be written: %w", path, err)
-		}
-		c.pending = append(c.pending, f)
-		w, err := begin(f)
-		c.closers = append(c.closers, w)
-		return err
-	}
-	p := r.provenance()
-	err := errors.Join(
-		open(CatalogFITS, func(f *renameio.PendingFile) (w io.Closer, err error) {
-			c.fits, err = catalog.NewFITS(f, p, widths)
-			return c.fits, err
-		}),
-		open(CatalogCSV, func(f *renameio.PendingFile) (w io.Closer, err error) {
-			c.csv, err = catalog.NewCSV[catalog.Object](f)
-			return c.csv, err
-		}),
-		open(objectsName, func(f *renameio.PendingFile) (w io.Closer, err error) {
-			c.objects, err = catalog.NewParquet[catalog.Object](f, p)
-			return c.objects, err
-		}),
-		open(linesName, func(f *renameio.PendingFile) (w io.Closer, err error) {
-			c.lines, err = catalog.NewParquet[catalog.Line](f, p)
-			return c.lines, err
-		}))
-	if err != nil {
-		c.cleanup()
-		return nil, err
-	}
-	return c, nil
-}
-
-func (c *catalogs) object(o *catalog.Object, _ bool) error {
-	if err := c.fits.WriteObject(o); err != nil {
-		return err
-	}
-	if err := c.csv.Write(o); err != nil {
-		return err
-	}
-	return c.objects.Write(o)
-}
-
-func (c *catalogs) line(l *catalog.Line) error {
-	if err := c.fits.WriteLine(l); err != nil {
-		return err
-	}
-	return c.lines.Write(l)
-}
-
-// finish completes all files before the first of them is put into place.
-func (c *catalogs) finish() error {
-	for i, w := range c.closers {
-		if err := w.Close(); err != nil {
-			return fmt.Errorf("%s cannot be completed: %w; make room and repeat the command", c.pending[i].Name(), err)
+// settingLines turns the text of settings into lines "section.key = value".
+func settingLines(text string) []string {
+	var out []string
+	section := ""
+	for line := range strings.Lines(text) {
+		line = strings.TrimSpace(line)
+		switch {
+		case line == "":
+		case strings.HasPrefix(line, "["):
+			section = strings.Trim(line, "[]")
+		default:
+			out = append(out, section+"."+line)
 		}
 	}
-	for _, f := range c.pending {
-		if err := f.CloseAtomicallyReplace(); err != nil {
-			return fmt.Errorf("%s cannot be put into place: %w", f.Name(), err)
-		}
-	}
-	return nil
-}
-
-// cleanup removes what is not in place.
-func (c *catalogs) cleanup() {
-	for _, f := range c.pending {
-		f.Cleanup()
-	}
-}
-
-// sweep removes what killed commands left unfinished. A command still at work
-// on the same run finds its block finished and goes on.
-func (r *Run) sweep() error {
-	for _, folder := range []string{r.out, filepath.Join(r.out, blocksName)} {
-		entries, err := os.ReadDir(folder)
-		if err != nil {
-			return err
-		}
-		for _, e := range entries {
-			if strings.HasPrefix(e.Name(), unfinished) {
-				if err := os.RemoveAll(filepath.Join(folder, e.Name())); err != nil {
-					return err
-				}
-			}
-		}
-	}
-	return nil
+	return out
 }

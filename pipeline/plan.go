@@ -34,6 +34,7 @@ type planHead struct {
 	Format    string            `json:"format"`
 	Version   int               `json:"format_version"`
 	Program   string            `json:"program"`
+	Build     string            `json:"build,omitempty"`
 	Folder    string            `json:"folder"` // relative inputs start here
 	BlockSize int               `json:"block_size"`
 	Limit     int64             `json:"limit"`    // largest number of spectra, 0 for all
@@ -227,6 +228,9 @@ func (h *planHead) differences(want *planHead) []string {
 	var out []string
 	if h.Program != want.Program {
 		out = append(out, fmt.Sprintf("it was begun by version %s and this is %s", h.Program, want.Program))
+	}
+	if h.Program == want.Program && h.Build != want.Build {
+		out = append(out, fmt.Sprintf("it was begun by another build of this version (%s) and this is %s", orNone(h.Build), orNone(want.Build)))
 	}
 	if h.Limit != want.Limit {
 		out = append(out, fmt.Sprintf("its --limit is %s, not %s", limitText(h.Limit), limitText(want.Limit)))

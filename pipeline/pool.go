@@ -5,6 +5,8 @@ import (
 	"errors"
 	"io"
 
+	"duskline/catalog"
+
 	"golang.org/x/sync/errgroup"
 )
 
@@ -12,7 +14,7 @@ import (
 // one whose last slow object is still awaited, one that is being written.
 const blocksInFlight = 3
 
-// Work does the blocks that are not there yet. Workers take single objects, so
+// Work does the blocks of the shard that are not there yet. Workers take single objects, so
 // that one block keeps all of them busy; a block is written when its last
 // object is done, whatever order they came in. When ctx is canceled the blocks
 // in flight are dropped and the error is ctx's.
@@ -65,16 +67,19 @@ func (r *Run) Work(ctx context.Context) error {
 			if err := r.writeBlock(b); err != nil {
 				return err
 			}
+			r.job.Log.Debug("block written", "block", b.number, "spectra", len(b.outcomes), "taken_over", b.taken, "internal_errors", b.internal)
 			<-free
 		}
 		return nil
 	})
-	return g.Wait()
+	err = g.Wait()
+	r.allWhole = err == nil && r.job.Shard.Whole()
+	return err
 }
 
 // dispatch cuts the plan into blocks and sends the objects of those that are
 // not there.
-func (r *Run) dispatch(ctx context.Context, there map[int]bool, free chan struct{}, tasks chan<- task) error {
+func (r *Run) dispatch(ctx context.Context, there []bool, free chan struct{}, tasks chan<- task) error {
 	plan, err := openPlan(r.plan)
 	if err != nil {
 		return err
@@ -114,8 +119,8 @@ func (r *Run) dispatch(ctx context.Context, there map[int]bool, free chan struct
 // beginBlock returns an empty block once there is room for one. It returns nil
 // if the block is there already, and how many objects that saves if another
 // process did it meanwhile.
-func (r *Run) beginBlock(ctx context.Context, number int, there map[int]bool, free chan struct{}) (*block, int, error) {
-	if there[number] {
+func (r *Run) beginBlock(ctx context.Context, number int, there []bool, free chan struct{}) (*block, int, error) {
+	if there[number] || !r.job.Shard.has(number) {
 		return nil, 0, ctx.Err()
 	}
 	select {
@@ -143,6 +148,13 @@ func (r *Run) collect(ctx context.Context, results <-chan result, full chan<- *b
 		b.outcomes[res.place] = res.outcome
 		if res.internal {
 			b.internal++
+		}
+		if res.taken {
+			b.taken++
+			r.taken++
+		}
+		if o := &res.outcome.Object; o.Flags.Has(catalog.Unreadable) {
+			r.job.Log.Debug("spectrum unreadable", "block", b.number, "object", o.ObjectID, "file", o.SourceFile, "row", o.SourceRow, "reason", o.Reason)
 		}
 		r.job.Progress.Object(&res.outcome.Object)
 		if b.left--; b.left > 0 {

@@ -7,8 +7,9 @@ import (
 
 // Outcome is all that one object adds to the catalog.
 type Outcome struct {
-	Object catalog.Object
-	Lines  []catalog.Line
+	Object    catalog.Object
+	Lines     []catalog.Line
+	Absorbers []catalog.Absorber
 }
 
 // Worker holds one worker's scratch. It is used by one goroutine at a time.
@@ -19,7 +20,8 @@ type Worker interface {
 	// not share memory with the worker.
 	//
 	// The engine fills ObjectID, SourceFile, SourceRow, and InputDigest where
-	// they are left empty, and the object_id of every line.
+	// they are left empty, and the object_id of every line and
+	// absorber.
 	Process(s *spectrum.Spectrum) Outcome
 }
 

@@ -30,6 +30,8 @@ type Job struct {
 	Recipes   []RecipeText // of which Processor was made, kept in the plan
 	Limit     int64        // largest number of spectra, 0 for all
 	Program   string       // version of the program, part of the plan
+	Build     string       // which binary of that version, part of the plan
+	Shard     Shard        // the part that Work does; the zero value is all
 	Processor Processor
 
 	Progress Progress     // may be nil
@@ -63,6 +65,9 @@ type Run struct {
 	head   planHead
 	totals planEnd
 	id     string // digest of the plan
+
+	allWhole bool  // every block was seen whole by Work
+	taken    int64 // objects taken over from an earlier run
 }
 
 // The names in the digests of a plan that are not the processor's.
@@ -128,6 +133,7 @@ func Prepare(ctx context.Context, job Job) (*Run, error) {
 	if err != nil {
 		return nil, err
 	}
+	want.Build = job.Build
 	there, err := checkFolder(out, job.Out)
 	if err != nil {
 		return nil, err
@@ -140,6 +146,7 @@ func Prepare(ctx context.Context, job Job) (*Run, error) {
 	if run.head, run.totals, run.id, err = readTotals(run.plan); err != nil {
 		return nil, err
 	}
+	run.job.Log = job.Log.With("run", run.id)
 	if there {
 		if err := run.agree(ctx, want); err != nil {
 			return nil, err
@@ -159,6 +166,41 @@ func (r *Run) showSettings() error {
 		return err
 	})
 }
+
+// Recorded opens a run folder for Gather alone: the program must be the one
+// that began the run. The error is an *InputError or a *MismatchError when the
+// command has to be changed.
+func Recorded(job Job) (*Run, error) {
+	if job.Progress == nil {
+		job.Progress = silent{}
+	}
+	if job.Log == nil {
+		job.Log = slog.New(slog.DiscardHandler)
+	}
+	run := &Run{job: job, out: locate(job.Base, job.Out)}
+	run.plan = filepath.Join(run.out, planName)
+	var err error
+	run.head, run.totals, run.id, err = readTotals(run.plan)
+	if errors.Is(err, fs.ErrNotExist) {
+		return nil, inputError("%s holds no run; give the folder of one", job.Out)
+	}
+	if err != nil {
+		return nil, err
+	}
+	run.job.Log = job.Log.With("run", run.id)
+	asNow := run.head
+	asNow.Program, asNow.Build = job.Program, job.Build
+	if diffs := run.head.differences(&asNow); len(diffs) > 0 {
+		return nil, &MismatchError{job.Out, diffs}
+	}
+	return run, nil
+}
+
+// ID returns the digest of the plan, which names the run.
+func (r *Run) ID() string { return r.id }
+
+// Blocks returns how many blocks the run has.
+func (r *Run) Blocks() int { return r.blocks() }
 
 // Objects returns the number of spectra in the plan.
 func (r *Run) Objects() int64 { return r.totals.Objects }

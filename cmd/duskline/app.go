@@ -34,6 +34,7 @@ type app struct {
 // grammar is the command line.
 type grammar struct {
 	Run       runCmd       `cmd:"" help:"Process spectra into a catalog; the same command goes on after an interruption."`
+	Gather    gatherCmd    `cmd:"" help:"Join the blocks of a run that was shared among machines into its catalogs."`
 	Demo      demoCmd      `cmd:"" help:"Make a synthetic night of known truth, process it and count what came out right."`
 	Peek      peekCmd      `cmd:"" help:"Show how one file is read, what was assumed, and the answer."`
 	Templates templatesCmd `cmd:"" help:"List, show, check and stack the template families that redshifts are found with."`

@@ -60,7 +60,7 @@ func (c *demoCmd) run(a *app) (int, error) {
 		fmt.Fprintf(a.stdout, "A synthetic night of %d spectra is in %s; its truth is in %s there.\n\n", len(truth), night, synth.TruthFile)
 	}
 	job := pipeline.Job{Out: filepath.Join(out, "run"), Base: a.folder, Paths: []string{night},
-		Settings: pipeline.DefaultSettings(), Recipes: recipes, Program: version()}
+		Settings: pipeline.DefaultSettings(), Recipes: recipes, Program: version(), Build: build()}
 	summary, err := a.process(job, c.logFlags)
 	if err != nil {
 		return 0, err

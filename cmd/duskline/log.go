@@ -46,7 +46,7 @@ func (l *runLog) Close() error {
 	return l.file.Close()
 }
 
-// newLogger logs everything to the run's log and, by the flags, to the screen.
+// newLogger logs everything, also every block, to the run's log and, by the flags, to the screen.
 // Under a bar only warnings reach the screen, each on a line of its own.
 func (f logFlags) newLogger(screen io.Writer, bar bool, file io.Writer) *slog.Logger {
 	opts := &slog.HandlerOptions{Level: slog.LevelInfo}
@@ -60,7 +60,7 @@ func (f logFlags) newLogger(screen io.Writer, bar bool, file io.Writer) *slog.Lo
 	if f.LogFormat == "json" {
 		onScreen = slog.NewJSONHandler(screen, opts)
 	}
-	return slog.New(slog.NewMultiHandler(onScreen, slog.NewJSONHandler(file, nil)))
+	return slog.New(slog.NewMultiHandler(onScreen, slog.NewJSONHandler(file, &slog.HandlerOptions{Level: slog.LevelDebug})))
 }
 
 // lineClearer wipes a bar off the line before it writes.

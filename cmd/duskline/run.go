@@ -5,7 +5,6 @@ import (
 	"os"
 	"path/filepath"
 	"strings"
-	"time"
 
 	"duskline/pipeline"
 )
@@ -17,6 +16,8 @@ type runCmd struct {
 	Recipes  string   `placeholder:"DIR" help:"Folder of template recipes (*.toml) that add to the built-in families or replace them."`
 	Workers  int      `placeholder:"N" help:"Spectra worked on at the same time; by default one a processor. Changes no result."`
 	Limit    int64    `placeholder:"N" help:"Process the first N spectra only."`
+	PlanOnly bool     `help:"Plan the run and do nothing else."`
+	Shard    string   `placeholder:"I/N" env:"DUSKLINE_SHARD" help:"Do part I of N, I from 0 to N-1, and write no catalogs; array takes I and N from the environment of a job array."`
 	logFlags
 	Path []string `arg:"" optional:"" help:"FITS files, folders (searched through), quoted patterns, or @list.txt with a path a line."`
 }
@@ -29,6 +30,9 @@ func (runCmd) Help() string {
   duskline run --out RUN @tonight.txt              a list, one path a line
   duskline run --out TRY --limit 100 night/        the first hundred, as a trial
   duskline run --out RUN                           go on after an interruption
+  duskline run --out RUN --plan-only night/        plan, then share the work:
+  duskline run --out RUN --shard 3/8               part 3 of 0 to 7, on any machine that sees RUN
+  duskline gather RUN                              join what the shards did
 
 The run folder then holds catalog.fits, catalog.csv, objects.parquet, lines.parquet and summary.json. Blocks of spectra that are finished are kept whatever happens: the same command goes on from there, and comes to the same bytes as if nothing had happened. An input that cannot be read becomes a row that says why.`
 }
@@ -38,6 +42,9 @@ func (c *runCmd) run(a *app) (int, error) {
 	if err != nil {
 		return 0, err
 	}
+	if c.PlanOnly {
+		return exitDone, a.planOnly(job, c.logFlags)
+	}
 	summary, err := a.process(job, c.logFlags)
 	if err != nil {
 		return 0, err
@@ -45,9 +52,12 @@ func (c *runCmd) run(a *app) (int, error) {
 	return outcomeCode(summary), nil
 }
 
-// outcomeCode is the exit code of a run that came to its end.
+// outcomeCode is the exit code of a run that came to its end, or of a shard
+// that has no summary.
 func outcomeCode(s *pipeline.Summary) int {
 	switch {
+	case s == nil: // a shard: what came out is the matter of gather
+		return exitDone
 	case s.InternalErrors > 0:
 		return exitFailed
 	case s.Unreadable > 0:
@@ -59,11 +69,14 @@ func outcomeCode(s *pipeline.Summary) int {
 // job turns the flags into a job. Without any PATH, what is not given is taken
 // from the run that is to go on.
 func (c *runCmd) job(a *app) (pipeline.Job, error) {
-	job := pipeline.Job{Out: c.Out, Base: a.folder, Paths: c.Path, Limit: c.Limit, Program: version()}
+	job := pipeline.Job{Out: c.Out, Base: a.folder, Paths: c.Path, Limit: c.Limit, Program: version(), Build: build()}
 	if c.Limit < 0 {
 		return job, &pipeline.InputError{Problems: []string{fmt.Sprintf("--limit %d is not allowed; give the number of spectra to process, at least 1", c.Limit)}}
 	}
 	var err error
+	if job.Shard, err = shardOf(c.Shard, a.getenv); err != nil {
+		return job, err
+	}
 	if job.Settings, err = readSettings(a, c.Settings); err != nil {
 		return job, err
 	}
@@ -148,47 +161,4 @@ func readText(a *app, name, what string) ([]byte, error) {
 		return nil, &pipeline.InputError{Problems: []string{fmt.Sprintf("the %s file cannot be read: %s", what, err)}}
 	}
 	return text, nil
-}
-
-// process does a job from plan to catalogs and says what came out.
-func (a *app) process(job pipeline.Job, flags logFlags) (*pipeline.Summary, error) {
-	began := time.Now()
-	bar := isTerminal(a.stderr) && !flags.Quiet && flags.LogFormat == "text"
-	file := &runLog{}
-	defer file.Close()
-	log := flags.newLogger(a.stderr, bar, file)
-	progress := newProgress(a.stderr, bar, log)
-	defer progress.close()
-	job.Log, job.Progress = log, progress
-
-	var err error
-	if job.Processor, err = pipeline.NewChain(job.Settings, job.Recipes...); err != nil {
-		return nil, err
-	}
-	r, err := pipeline.Prepare(a.ctx, job)
-	if err != nil {
-		return nil, err
-	}
-	if err := file.open(r.LogFile()); err != nil {
-		return nil, err
-	}
-	log.Info("run begins", "out", job.Out, "program", job.Program, "spectra", r.Objects())
-	if err := r.Work(a.ctx); err != nil {
-		log.Warn("run ends early", "error", err)
-		return nil, err
-	}
-	summary, err := r.Gather(a.ctx)
-	if err != nil {
-		log.Warn("run ends early", "error", err)
-		return nil, err
-	}
-	progress.close()
-	log.Info("run ends", "secure", summary.Verdicts["secure"], "uncertain", summary.Verdicts["uncertain"],
-		"none", summary.Verdicts["none"], "unreadable", summary.Unreadable, "internal_errors", summary.InternalErrors,
-		"seconds", time.Since(began).Round(time.Millisecond).Seconds())
-	if !flags.Quiet {
-		writeTally(a.stdout, summary)
-		writeWhere(a.stdout, job.Out, summary)
-	}
-	return summary, nil
 }

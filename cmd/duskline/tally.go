@@ -46,7 +46,7 @@ func writeTally(w io.Writer, s *pipeline.Summary) {
 func writeWhere(w io.Writer, out string, s *pipeline.Summary) {
 	fmt.Fprintf(w, "\n%s  objects and lines, for astronomers' tools\n", filepath.Join(out, pipeline.CatalogFITS))
 	fmt.Fprintf(w, "%s   one row an object\n", filepath.Join(out, pipeline.CatalogCSV))
-	fmt.Fprintf(w, "Beside them: objects.parquet and lines.parquet for big tables, summary.json with these counts.\n")
+	fmt.Fprintf(w, "Beside them: objects.parquet, lines.parquet and absorbers.parquet for big tables, summary.json with these counts.\n")
 	for _, advice := range advise(s) {
 		fmt.Fprintf(w, "%s\n", advice)
 	}
@@ -55,6 +55,9 @@ func writeWhere(w io.Writer, out string, s *pipeline.Summary) {
 // advise names the rows that need a person's look, most urgent first.
 func advise(s *pipeline.Summary) []string {
 	var out []string
+	if !s.Complete {
+		out = append(out, fmt.Sprintf("NOT WHOLE: %d of %d spectra are missing, see missing_blocks in summary.json.", s.MissingObjects, s.Planned))
+	}
 	if s.InternalErrors > 0 {
 		out = append(out, fmt.Sprintf("%s of this program: their reason begins with \"internal error\", and run.log has the details; please report them.",
 			count(s.InternalErrors, "row was spoiled by an error", "rows were spoiled by errors")))

@@ -1,14 +1,18 @@
 package main
 
 import (
+	"crypto/sha256"
 	"encoding/json"
 	"fmt"
+	"io"
 	"maps"
+	"os"
 	"runtime"
 	"runtime/debug"
 	"slices"
 	"strings"
 
+	"duskline/catalog"
 	"duskline/pipeline"
 )
 
@@ -46,6 +50,26 @@ func revision() string {
 	return rev + changed
 }
 
+// build names the binary: what it was built with and for, and the digest of
+// its bytes. Two builds of one version may differ in the last digits of a
+// result. It is empty where the binary cannot be read.
+func build() string {
+	path, err := os.Executable()
+	if err != nil {
+		return ""
+	}
+	f, err := os.Open(path)
+	if err != nil {
+		return ""
+	}
+	defer f.Close()
+	sum := sha256.New()
+	if _, err := io.Copy(sum, f); err != nil {
+		return ""
+	}
+	return fmt.Sprintf("%s %s/%s %x", runtime.Version(), runtime.GOOS, runtime.GOARCH, sum.Sum(nil)[:8])
+}
+
 type versionCmd struct {
 	JSON bool `name:"json" help:"Print JSON."`
 }
@@ -66,9 +90,10 @@ func (c *versionCmd) run(a *app) (int, error) {
 	if c.JSON {
 		enc := json.NewEncoder(a.stdout)
 		enc.SetIndent("", "  ")
-		return exitDone, enc.Encode(map[string]any{"program": "duskline", "version": version(), "go": runtime.Version(), "digests": digests})
+		return exitDone, enc.Encode(map[string]any{"program": "duskline", "version": version(), "release": release, "revision": revision(), "build": build(),
+			"go": runtime.Version(), "system": runtime.GOOS + "/" + runtime.GOARCH, "catalog_format": catalog.FormatVersion, "digests": digests})
 	}
-	fmt.Fprintf(a.stdout, "duskline %s, built with %s\n", version(), runtime.Version())
+	fmt.Fprintf(a.stdout, "duskline %s, build %s\n", version(), build())
 	for _, name := range slices.Sorted(maps.Keys(digests)) {
 		fmt.Fprintf(a.stdout, "%-10s %s\n", strings.ReplaceAll(name, "_", " "), digests[name])
 	}
