@@ -84,9 +84,12 @@ type Bench struct {
 func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 	b.haveCont, b.results = false, b.results[:0]
 	b.lay(s)
-	res := b.chain.finder.Find(&b.grid, b.scratch)
+	res, beyond := b.find(s)
 	b.chain.thresholds.Judge(&res)
 	obj := b.object(s, &res)
+	if beyond != "" {
+		obj.Reason = strings.TrimPrefix(obj.Reason+"; "+beyond, "; ")
+	}
 	if res.Verdict == redshift.None {
 		return Outcome{Object: obj}
 	}

@@ -78,6 +78,7 @@ func (j *Job) examineOpen(in *planInput) {
 	in.fillStat(j.Base)
 	in.Rows = 1
 	if in.Trouble != "" {
+		j.Manifest.siftUnopened(in, in.file(j.Base))
 		return
 	}
 	defer func() {
@@ -89,10 +90,12 @@ func (j *Job) examineOpen(in *planInput) {
 	if err != nil {
 		bad := readFault(err, in.Path)
 		in.Trouble, in.Internal = bad.reason, bad.internal
+		j.Manifest.siftUnopened(in, in.file(j.Base))
 		return
 	}
 	defer f.Close()
 	if in.Rows = int64(f.Count()); in.Rows < 1 {
 		in.Rows, in.Trouble = 1, fmt.Sprintf("%s: no spectrum was found in it", in.Path)
 	}
+	j.Manifest.sift(in, in.file(j.Base), f)
 }

@@ -42,6 +42,7 @@ type planHead struct {
 	Settings  string            `json:"settings"` // essential settings as TOML
 	Layouts   []LayoutText      `json:"layouts,omitempty"`
 	Recipes   []RecipeText      `json:"recipes,omitempty"`
+	Manifest  string            `json:"manifest,omitempty"` // name of its copy in the run folder
 }
 
 // planInput is one input file of a plan.
@@ -53,6 +54,11 @@ type planInput struct {
 	Size    int64  `json:"size"`               // bytes
 	MTime   int64  `json:"mtime_ns,omitempty"` // modification time, ns since 1970
 	Trouble string `json:"trouble,omitempty"`  // why it could not be opened
+	// Skip are rows that the manifest leaves out, not counted in Rows. Excluded is
+	// true for an input of which nothing is left.
+	Skip     []int64 `json:"skip,omitempty"`
+	Excluded bool    `json:"excluded,omitempty"`
+	entries  []int   // of the manifest that name it
 	// Internal is true when the trouble is a defect of the program.
 	Internal bool `json:"internal,omitempty"`
 }
@@ -100,7 +106,7 @@ func writePlan(w io.Writer, head planHead, inputs func(take func(planInput) (eno
 		if left := head.Limit - end.Objects; head.Limit > 0 && in.Rows > left {
 			in.Rows = left
 		}
-		if in.Rows > 0 {
+		if in.Rows > 0 || in.Excluded {
 			end.Inputs++
 			end.Objects += in.Rows
 			if err := enc.Encode(in); err != nil {

@@ -96,7 +96,7 @@ func (r *Run) dispatch(ctx context.Context, there []bool, free chan struct{}, ta
 		if err != nil {
 			return err
 		}
-		for row := range in.Rows {
+		for row := range in.taken() {
 			t := task{place: int(object % size), in: &in, row: int(row)}
 			if t.place == 0 {
 				if b, t.elsewhere, err = r.beginBlock(ctx, int(object/size), there, free); err != nil {

@@ -28,6 +28,7 @@ type Job struct {
 	Settings  Settings
 	Layouts   []LayoutText // tried before the built-in rules for reading
 	Recipes   []RecipeText // of which Processor was made, kept in the plan
+	Manifest  *Manifest    // what is known about the objects, may be nil
 	Limit     int64        // largest number of spectra, 0 for all
 	Program   string       // version of the program, part of the plan
 	Build     string       // which binary of that version, part of the plan
@@ -81,6 +82,7 @@ type Recalled struct {
 	Settings Settings
 	Layouts  []LayoutText
 	Recipes  []RecipeText
+	Manifest string // path of the copy in the run folder, empty for none
 	Limit    int64
 }
 
@@ -99,7 +101,11 @@ func Recall(base, out string) (Recalled, error) {
 	if err != nil {
 		return Recalled{}, fmt.Errorf("%s was begun with settings of another version: %w", out, err)
 	}
-	return Recalled{set, r.head.Layouts, r.head.Recipes, r.head.Limit}, nil
+	recalled := Recalled{Settings: set, Layouts: r.head.Layouts, Recipes: r.head.Recipes, Limit: r.head.Limit}
+	if r.head.Manifest != "" {
+		recalled.Manifest = filepath.Join(locate(base, out), r.head.Manifest)
+	}
+	return recalled, nil
 }
 
 func noRun(out string) error {
@@ -150,6 +156,11 @@ func Prepare(ctx context.Context, job Job) (*Run, error) {
 	if there {
 		if err := run.agree(ctx, want); err != nil {
 			return nil, err
+		}
+	}
+	if job.Manifest != nil {
+		if err := job.Manifest.keep(out); err != nil {
+			return nil, fmt.Errorf("the manifest cannot be copied into %s: %w", job.Out, err)
 		}
 	}
 	return run, run.showSettings()
@@ -219,8 +230,12 @@ func (j *Job) head() (planHead, error) {
 		}
 		digests[layoutsDigest] = hex.EncodeToString(sum.Sum(nil)[:8])
 	}
+	kept := ""
+	if j.Manifest != nil {
+		digests[manifestDigest], kept = j.Manifest.digest(), j.Manifest.copy
+	}
 	return planHead{Format: planFormat, Version: planVersion, Program: j.Program, Folder: j.Base,
-		BlockSize: j.Settings.Run.BlockSize, Limit: j.Limit, Digests: digests,
+		BlockSize: j.Settings.Run.BlockSize, Limit: j.Limit, Digests: digests, Manifest: kept,
 		Layouts: j.Layouts, Recipes: j.Recipes, Settings: string(j.Settings.Essential().TOML())}, nil
 }
 
@@ -321,11 +336,15 @@ func (r *Run) makePlan(ctx context.Context, head planHead) error {
 			os.Remove(r.out) // succeeds only if nothing came of it
 		}
 	}()
+	used := map[int]bool{} // entries of the manifest
 	totals, err := writePlan(tmp, head, func(take func(planInput) (bool, error)) error {
 		var seen planEnd
 		return r.job.listInputs(ctx, (*Job).examineOpen, func(in planInput) (bool, error) {
 			seen.Inputs++
 			seen.Objects += in.Rows
+			for _, i := range in.entries {
+				used[i] = true
+			}
 			r.job.Progress.Planning(seen.Inputs, seen.Objects)
 			return take(in)
 		})
@@ -336,6 +355,7 @@ func (r *Run) makePlan(ctx context.Context, head planHead) error {
 	if totals.Objects == 0 {
 		return inputError("no FITS file (*.fits, *.fit, *.fts, also with .gz) in %s; give another PATH", strings.Join(r.job.Paths, ", "))
 	}
+	r.warnManifest(used)
 	return r.linkPlan(ctx, tmp, head)
 }
 

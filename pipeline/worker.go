@@ -30,7 +30,6 @@ type result struct {
 	task
 	outcome  Outcome
 	internal bool // the row reports a defect of the program
-	taken    bool // the row was taken over from an earlier run
 }
 
 // objectWorker turns tasks into results. It keeps hold of the last file: the
@@ -53,7 +52,7 @@ func (w *objectWorker) do(t task) result {
 	s, digest, bad := w.read(t)
 	if bad != nil {
 		r := result{task: t, internal: bad.internal}
-		r.outcome.Object = blankObject()
+		r.outcome.Object = w.run.unreadObject(t.in, t.row)
 		r.outcome.Object.Flags = catalog.Unreadable
 		r.outcome.Object.Reason = bad.reason
 		r.complete(digest)
@@ -96,9 +95,6 @@ func (r *result) complete(digest string) {
 	for i := range r.outcome.Lines {
 		r.outcome.Lines[i].ObjectID = o.ObjectID
 	}
-	for i := range r.outcome.Absorbers {
-		r.outcome.Absorbers[i].ObjectID = o.ObjectID
-	}
 }
 
 // inspect makes sure that the rows may be written: one that breaks the rules
@@ -110,16 +106,11 @@ func (w *objectWorker) inspect(r *result) *fault {
 			err = catalog.Check(&r.outcome.Lines[i])
 		}
 	}
-	for i := range r.outcome.Absorbers {
-		if err == nil {
-			err = catalog.Check(&r.outcome.Absorbers[i])
-		}
-	}
 	if err == nil {
 		return nil
 	}
 	w.run.job.Log.Error("an object came out with values that a catalog must not hold",
-		"block", r.block.number, "object", r.outcome.Object.ObjectID, "file", r.in.Path, "row", r.row, "error", err)
+		"file", r.in.Path, "row", r.row, "error", err)
 	return &fault{"internal error: " + err.Error(), true}
 }
 
@@ -141,10 +132,7 @@ func (w *objectWorker) read(t task) (s *spectrum.Spectrum, digest string, bad *f
 			s, bad = nil, w.run.report(t.in.Path, t.row, p)
 		}
 	}()
-	digest, err := w.held.file.Digest(t.row)
-	if err == nil {
-		s, err = w.held.file.Read(t.row)
-	}
+	s, digest, err := w.run.readObject(t.in, w.held.file, t.row)
 	if err != nil {
 		return nil, digest, readFault(err, t.in.Path)
 	}

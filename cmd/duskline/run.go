@@ -14,6 +14,7 @@ type runCmd struct {
 	Settings string   `placeholder:"FILE" help:"Settings in TOML over the built-in ones."`
 	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML: how to read files that do not speak for themselves; may be repeated."`
 	Recipes  string   `placeholder:"DIR" help:"Folder of template recipes (*.toml) that add to the built-in families or replace them."`
+	Manifest string   `placeholder:"FILE" help:"Table, CSV or FITS, of what is known about the objects: names, positions, limits, what to leave out."`
 	Workers  int      `placeholder:"N" help:"Spectra worked on at the same time; by default one a processor. Changes no result."`
 	Limit    int64    `placeholder:"N" help:"Process the first N spectra only."`
 	PlanOnly bool     `help:"Plan the run and do nothing else."`
@@ -86,6 +87,11 @@ func (c *runCmd) job(a *app) (pipeline.Job, error) {
 	if job.Recipes, err = readRecipes(a, c.Recipes); err != nil {
 		return job, err
 	}
+	if c.Manifest != "" {
+		if job.Manifest, err = pipeline.ReadManifest(a.locate(c.Manifest), c.Manifest); err != nil {
+			return job, err
+		}
+	}
 	if len(c.Path) == 0 {
 		planned, err := pipeline.Recall(a.folder, c.Out)
 		if err != nil {
@@ -99,6 +105,11 @@ func (c *runCmd) job(a *app) (pipeline.Job, error) {
 		}
 		if c.Recipes == "" {
 			job.Recipes = planned.Recipes
+		}
+		if c.Manifest == "" && planned.Manifest != "" {
+			if job.Manifest, err = pipeline.ReadManifest(planned.Manifest, planned.Manifest); err != nil {
+				return job, err
+			}
 		}
 		if c.Limit == 0 {
 			job.Limit = planned.Limit

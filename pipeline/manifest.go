@@ -1,0 +1,251 @@
+package pipeline
+
+import (
+	"bytes"
+	"cmp"
+	"crypto/sha256"
+	"encoding/hex"
+	"errors"
+	"fmt"
+	"io"
+	"io/fs"
+	"iter"
+	"math"
+	"os"
+	"path/filepath"
+
+	"duskline/catalog"
+	"duskline/fitsread"
+	"duskline/manifest"
+	"duskline/spectrum"
+)
+
+// Manifest is a table of what the user knows about the objects of a run: see
+// package manifest.
+type Manifest struct {
+	table *manifest.Manifest
+	text  []byte
+	copy  string // name of its copy in the run folder
+	named string // as the user called it
+}
+
+// manifestDigest is the name of the manifest in the digests of a plan.
+const manifestDigest = "manifest"
+
+// ReadManifest reads a manifest, a table in CSV or FITS; name is what the user
+// called it. The error is an *InputError with every problem.
+func ReadManifest(path, name string) (*Manifest, error) {
+	text, err := os.ReadFile(path)
+	if err != nil {
+		return nil, inputError("the manifest %s cannot be read: %s", name, plain(err))
+	}
+	m := &Manifest{text: text, copy: "manifest.csv", named: name}
+	if bytes.HasPrefix(text, []byte("SIMPLE  =")) || bytes.HasPrefix(text, []byte("\x1f\x8b")) {
+		m.copy = "manifest.fits"
+		columns, rows, err := fitsread.ReadTable(path)
+		if err != nil {
+			return nil, inputError("the manifest cannot be used: %s", readFault(err, name).reason)
+		}
+		m.table, err = manifest.FromTable(name, columns, rows)
+		if err != nil {
+			return nil, manifestProblems(err)
+		}
+		return m, nil
+	}
+	if m.table, err = manifest.ReadCSV(name, bytes.NewReader(text)); err != nil {
+		return nil, manifestProblems(err)
+	}
+	return m, nil
+}
+
+func manifestProblems(err error) error {
+	var problems *manifest.Error
+	if errors.As(err, &problems) {
+		return &InputError{problems.Problems}
+	}
+	return &InputError{[]string{err.Error()}}
+}
+
+func (m *Manifest) digest() string {
+	sum := sha256.Sum256(m.text)
+	return hex.EncodeToString(sum[:8])
+}
+
+// keep puts a copy of the manifest into the run folder, for commands that go on
+// with the run.
+func (m *Manifest) keep(folder string) error {
+	path := filepath.Join(folder, m.copy)
+	if _, err := os.Stat(path); !errors.Is(err, fs.ErrNotExist) {
+		return err
+	}
+	return writeAtomic(path, func(w io.Writer) error {
+		_, err := w.Write(m.text)
+		return err
+	})
+}
+
+// find returns the entry for an object, nil for none or without manifest.
+func (m *Manifest) find(path string, row int, id string) *manifest.Entry {
+	if m == nil {
+		return nil
+	}
+	if i := m.table.Find(path, row, id); i >= 0 {
+		return &m.table.Entries[i]
+	}
+	return nil
+}
+
+// identifier is a SpectrumFile that tells names and takes others; *fitsread.File
+// is one.
+type identifier interface {
+	Identity(i int) fitsread.Identity
+	ReadAs(i int, who fitsread.Identity) (*spectrum.Spectrum, error)
+}
+
+// sift notes which spectra of an opened input the manifest leaves out, and which
+// of its entries name something. path is the whole path of the input.
+func (m *Manifest) sift(in *planInput, path string, f SpectrumFile) {
+	if m == nil {
+		return
+	}
+	names, _ := f.(identifier)
+	for row := range in.Rows {
+		id := ""
+		if names != nil && m.table.ByName() {
+			id = names.Identity(int(row)).ObjectID
+		}
+		i := m.table.Find(path, int(row), id)
+		if i < 0 {
+			continue
+		}
+		if n := len(in.entries); n == 0 || in.entries[n-1] != i {
+			in.entries = append(in.entries, i)
+		}
+		if m.table.Entries[i].Exclude {
+			in.Skip = append(in.Skip, row)
+		}
+	}
+	in.leaveOut()
+}
+
+// siftUnopened is sift for an input that cannot be opened, a single row.
+func (m *Manifest) siftUnopened(in *planInput, path string) {
+	if m == nil {
+		return
+	}
+	if i := m.table.Find(path, 0, ""); i >= 0 {
+		in.entries = []int{i}
+		if m.table.Entries[i].Exclude {
+			in.Skip = []int64{0}
+			in.leaveOut()
+		}
+	}
+}
+
+func (in *planInput) leaveOut() {
+	in.Rows -= int64(len(in.Skip))
+	if in.Rows == 0 {
+		in.Skip, in.Excluded = nil, true
+	}
+}
+
+// taken yields the rows of an input that belong to the plan, in order.
+func (in *planInput) taken() iter.Seq[int64] {
+	return func(yield func(int64) bool) {
+		skip, row := in.Skip, int64(0)
+		for range in.Rows {
+			for len(skip) > 0 && skip[0] == row {
+				skip, row = skip[1:], row+1
+			}
+			if !yield(row) {
+				return
+			}
+			row++
+		}
+	}
+}
+
+// unused tells which entries of the manifest named no input.
+func (m *Manifest) unused(used map[int]bool) (number int, first string) {
+	for i := range m.table.Entries {
+		if e := &m.table.Entries[i]; !used[i] {
+			if number++; number == 1 {
+				first = fmt.Sprintf("%s (line %d)", cmp.Or(e.File, e.ObjectID), e.Line)
+			}
+		}
+	}
+	return number, first
+}
+
+// warnManifest says what of the manifest has no effect.
+func (r *Run) warnManifest(used map[int]bool) {
+	m := r.job.Manifest
+	if m == nil {
+		return
+	}
+	if n, first := m.unused(used); n > 0 {
+		r.job.Log.Warn("entries of the manifest name nothing among the inputs", "manifest", m.named, "entries", n, "first", first)
+	}
+	if len(m.table.Ignored) > 0 {
+		r.job.Log.Warn("columns of the manifest mean nothing here and are passed over", "manifest", m.named, "columns", m.table.Ignored)
+	}
+}
+
+// readObject reads a spectrum with what the manifest knows about it, which also
+// goes into the digest of its input.
+func (r *Run) readObject(in *planInput, f SpectrumFile, row int) (s *spectrum.Spectrum, digest string, err error) {
+	if digest, err = f.Digest(row); err != nil {
+		return nil, digest, err
+	}
+	m := r.job.Manifest
+	names, ok := f.(identifier)
+	if m == nil || !ok {
+		s, err = f.Read(row)
+		return s, digest, err
+	}
+	id := ""
+	if m.table.ByName() {
+		id = names.Identity(row).ObjectID
+	}
+	e := m.find(in.file(r.head.Folder), row, id)
+	if e == nil {
+		s, err = f.Read(row)
+		return s, digest, err
+	}
+	sum := sha256.Sum256([]byte(digest + " " + e.Key()))
+	digest = hex.EncodeToString(sum[:8])
+	if s, err = names.ReadAs(row, fitsread.Identity{ObjectID: e.ObjectID, RA: e.RA, Dec: e.Dec}); err != nil {
+		return nil, digest, err
+	}
+	if e.Restricts() {
+		s.Limits = &spectrum.Limits{Class: e.ExpectedClass, ZMin: e.RedshiftMin, ZMax: e.RedshiftMax}
+	}
+	return s, digest, nil
+}
+
+// unreadObject is the row of an object that could not be read: what the manifest
+// knows about it.
+func (r *Run) unreadObject(in *planInput, row int) catalog.Object {
+	o := blankObject()
+	if e := r.job.Manifest.find(in.file(r.head.Folder), row, ""); e != nil {
+		o.ObjectID, o.RA, o.Dec = e.ObjectID, e.RA, e.Dec
+	}
+	return o
+}
+
+// limitsText writes limits for people.
+func limitsText(l *spectrum.Limits) string {
+	text := "any redshift"
+	switch {
+	case !math.IsNaN(l.ZMin) && !math.IsNaN(l.ZMax):
+		text = fmt.Sprintf("redshift %g to %g", l.ZMin, l.ZMax)
+	case !math.IsNaN(l.ZMin):
+		text = fmt.Sprintf("redshift from %g", l.ZMin)
+	case !math.IsNaN(l.ZMax):
+		text = fmt.Sprintf("redshift up to %g", l.ZMax)
+	}
+	if l.Class != "" {
+		text = l.Class + ", " + text
+	}
+	return text
+}
