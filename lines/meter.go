@@ -153,6 +153,7 @@ type line struct {
 	narrow  bool    // forbidden, or only seen in absorption: never as broad as a quasar's permitted lines
 	group   int     // index of the list's group, -1 for none
 	doublet int     // index into fixedRatios, -1 for none
+	wings   string  // name of the broader component, where there are two
 	share   float64 // strength within a doublet, or relative to lines of the ion when unresolved
 }
 
@@ -176,7 +177,7 @@ func NewMeter(list *linelist.List) *Meter {
 	m := &Meter{}
 	for _, l := range list.Lines() {
 		forbidden := strings.HasPrefix(l.Ion, "[")
-		e := line{Line: l, ion: plainIon(l.Ion), narrow: forbidden || l.Seen == Absorption, group: -1, doublet: -1, share: 1}
+		e := line{Line: l, ion: plainIon(l.Ion), narrow: forbidden || l.Seen == Absorption, group: -1, doublet: -1, share: 1, wings: l.Name + "_broad"}
 		if l.Group != "" {
 			g, ok := groups[l.Group]
 			if !ok {
@@ -256,7 +257,10 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 		}
 	}
 	for i := range s.tracks {
-		dst = append(dst, s.tracks[i].result)
+		t := &s.tracks[i]
+		if dst = append(dst, t.result); t.second.Name != "" {
+			dst = append(dst, t.second)
+		}
 	}
 	s.meter, s.arms = nil, nil
 	return dst

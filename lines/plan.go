@@ -184,10 +184,11 @@ func (s *Scratch) size(root int) int {
 }
 
 // labelKey identifies a blend's name: bit k of mask is line first+k of the
-// list.
+// list, bit k of wings its broader component.
 type labelKey struct {
 	first int
 	mask  uint64
+	wings uint64 // the same for broader components
 }
 
 // label returns the names of the lines in key, joined by "+". Names are kept,
@@ -201,6 +202,9 @@ func (s *Scratch) label(key labelKey) string {
 		if key.mask&(1<<k) != 0 {
 			names = append(names, s.meter.lines[key.first+k].Name)
 		}
+		if key.wings&(1<<k) != 0 {
+			names = append(names, s.meter.lines[key.first+k].wings)
+		}
 	}
 	s.labels[key] = strings.Join(names, "+")
 	return s.labels[key]
@@ -213,5 +217,12 @@ func (k *labelKey) add(index int) {
 	}
 	if d := index - k.first; d < 64 {
 		k.mask |= 1 << d
+	}
+}
+
+// addWings puts the broader component of a line that was added into the key.
+func (k *labelKey) addWings(index int) {
+	if d := index - k.first; d < 64 {
+		k.wings |= 1 << d
 	}
 }

@@ -50,6 +50,7 @@ type component struct {
 	track   int
 	tie     int
 	amp     int     // parameter
+	part    int     // 1: the broader of two components of the line
 	share   float64 // flux = share * p[amp]
 	assumed bool    // the share is a guess, not physics
 	lam0    float64

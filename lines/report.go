@@ -16,6 +16,11 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 	e := &q.ties[c.tie]
 	t := &s.tracks[c.track]
 	r := &t.result
+	if c.part == 1 {
+		t.second = blank(t.line)
+		r = &t.second
+		r.Name = t.line.wings
+	}
 	r.Blend = s.overlaps(ci)
 	sd := scale * math.Sqrt(m.cov[c.amp*m.n+c.amp])
 	flux, doubt := c.share*m.p[c.amp], s.shareDoubt(ci)
@@ -190,9 +195,14 @@ func (s *Scratch) overlaps(ci int) string {
 		}
 		if with {
 			key.add(t.index)
+			for k := range q.comps {
+				if q.comps[k].track == i && q.comps[k].part == 1 {
+					key.addWings(t.index)
+				}
+			}
 		}
 	}
-	if key.mask&(key.mask-1) == 0 {
+	if key.wings == 0 && key.mask&(key.mask-1) == 0 {
 		return ""
 	}
 	return s.label(key)

@@ -30,6 +30,8 @@ type Scratch struct {
 	prob    problem
 	lm      marquardt
 	avg     average
+	left    []float64 // residuals of a blend
+	copy    []float64 // profiles of a second component
 	grad    []float64
 	cross   []float64
 	labels  map[labelKey]string
@@ -54,6 +56,7 @@ type track struct {
 	first   float64 // snr before stronger lines claimed their pixels
 	v, s    float64 // offset and total sigma of the best box, or the guess
 	result  Result
+	second  Result // of the broader component, Name empty where there is none
 }
 
 // kinematics is an offset with the width of the source.

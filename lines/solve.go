@@ -24,9 +24,13 @@ func (s *Scratch) measureBlend(b *blend) {
 		b.faint = true
 		return
 	}
+	if ok && !b.faint {
+		s.split(main)
+	}
 	s.lm.narrow = append(s.lm.narrow[:0], s.lm.cov...)
 	if ok && !b.faint {
 		s.marginalize()
+		s.allowStellar()
 	}
 	s.report(ok)
 	if !b.faint && ok {
