@@ -31,7 +31,7 @@ func synthetic(seed uint64, n int) ([]*spectrum.Grid, []synth.Truth) {
 func velocity(z, truth float64) float64 { return speedOfLight * math.Abs(z-truth) / (1 + truth) }
 
 // Synthetic spectra made by other code. Over 26 x 64 others (seeds 100 to 125)
-// 903 of 925 redshifts at S/N >= 3 were right, 97.6 %, and 1 of 1165 secure
+// 906 of 925 redshifts at S/N >= 3 were right, 97.9 %, and 1 of 1151 secure
 // ones wrong.
 func TestFindSynthetic(t *testing.T) {
 	f := newTestFinder(t, builtInFamilies(t))
@@ -67,8 +67,8 @@ func TestFindSynthetic(t *testing.T) {
 		}
 	}
 	t.Logf("right %d of %d at S/N >= 3, secure %d, of them wrong %d", right, bright, secure, secureWrong)
-	// Three standard deviations of a binomial below 97.6 %.
-	const p = 0.976
+	// Three standard deviations of a binomial below 97.9 %.
+	const p = 0.979
 	n := float64(bright)
 	if least := n*p - 3*math.Sqrt(n*p*(1-p)); bright < 100 || float64(right) < least {
 		t.Errorf("%d of %d right at S/N >= 3, want at least %.0f", right, bright, least)
