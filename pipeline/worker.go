@@ -30,6 +30,7 @@ type result struct {
 	task
 	outcome  Outcome
 	internal bool // the row reports a defect of the program
+	taken    bool // the row was taken over from an earlier run
 }
 
 // objectWorker turns tasks into results. It keeps hold of the last file: the
@@ -95,6 +96,9 @@ func (r *result) complete(digest string) {
 	for i := range r.outcome.Lines {
 		r.outcome.Lines[i].ObjectID = o.ObjectID
 	}
+	for i := range r.outcome.Absorbers {
+		r.outcome.Absorbers[i].ObjectID = o.ObjectID
+	}
 }
 
 // inspect makes sure that the rows may be written: one that breaks the rules
@@ -106,11 +110,16 @@ func (w *objectWorker) inspect(r *result) *fault {
 			err = catalog.Check(&r.outcome.Lines[i])
 		}
 	}
+	for i := range r.outcome.Absorbers {
+		if err == nil {
+			err = catalog.Check(&r.outcome.Absorbers[i])
+		}
+	}
 	if err == nil {
 		return nil
 	}
 	w.run.job.Log.Error("an object came out with values that a catalog must not hold",
-		"file", r.in.Path, "row", r.row, "error", err)
+		"block", r.block.number, "object", r.outcome.Object.ObjectID, "file", r.in.Path, "row", r.row, "error", err)
 	return &fault{"internal error: " + err.Error(), true}
 }
 
