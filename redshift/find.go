@@ -387,7 +387,8 @@ func (f *Finder) judge(s *Scratch) {
 // between families by chance agreements, and the gap is in units of what the
 // best models leave. Errors that are stated too large all over are scaled down
 // by what the best peak leaves. The weights stay the same for all families. It
-// reports false when too little weight is left to fit anything.
+// reports false, with the weights as they were at first, when too little
+// weight would be left to fit anything.
 func (f *Finder) temper(s *Scratch) bool {
 	l := &s.full
 	half := f.opt.Temper
@@ -428,7 +429,13 @@ func (f *Finder) temper(s *Scratch) bool {
 		l.weight[k] = s.weight[k] / (scale * math.Max(1, e/(scale*expect)))
 		l.resid[k] = s.scaled[k]
 	}
-	return l.prepare(s.basis, f.opt.Stiffness, ridge)
+	if l.prepare(s.basis, f.opt.Stiffness, ridge) {
+		return true
+	}
+	copy(l.weight, s.weight)
+	copy(l.resid, s.scaled)
+	l.prepare(s.basis, f.opt.Stiffness, ridge) // as it was
+	return false
 }
 
 // leastScale bounds by how much stated variances may be scaled down.

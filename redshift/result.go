@@ -260,8 +260,8 @@ func scattered(lines []LineEvidence, width float64) bool {
 }
 
 // rStat is the r of Tonry & Davis (1979): the height of the correlation peak
-// over sqrt(2) times the rms of the antisymmetric part of the correlation
-// function about it. The correlation is that of the residual with the winning
+// over sqrt(2) sigma_a, sigma_a^2 = sum over shifts n of (c(n) - c(-n))^2 / 2N
+// about the peak. The correlation is that of the residual with the winning
 // template, with its amplitudes fixed, over shifts of at most 1500 pixels.
 func (f *Finder) rStat(s *Scratch, p *peak) float64 {
 	l := &s.full

@@ -81,9 +81,9 @@ func TestMaskSpikesLeavesAlone(t *testing.T) {
 	}{
 		{"a negative spike", func(seg *Segment) { seg.Flux[10] -= 1000 }},
 		{"a spike below the limit", func(seg *Segment) { seg.Flux[10] += 7.9 }},
-		{"a hit of two pixels", func(seg *Segment) { seg.Flux[10] += 1000; seg.Flux[11] += 900 }},
-		{"a rise of the neighbor by more than a quarter", func(seg *Segment) { seg.Flux[10] += 100; seg.Flux[9] += 21 }},
-		{"a rise of the other neighbor", func(seg *Segment) { seg.Flux[10] += 100; seg.Flux[11] += 21 }},
+		{"three pixels", func(seg *Segment) { seg.Flux[9] += 900; seg.Flux[10] += 1000; seg.Flux[11] += 900 }},
+		{"a rise of both neighbors by more than a quarter", func(seg *Segment) { seg.Flux[10] += 100; seg.Flux[9] += 30; seg.Flux[11] += 30 }},
+		{"two pixels whose neighbor rises", func(seg *Segment) { seg.Flux[10] += 100; seg.Flux[11] += 90; seg.Flux[12] += 20 }},
 		{"a step", func(seg *Segment) {
 			for i := 10; i < len(seg.Flux); i++ {
 				seg.Flux[i] += 1000
@@ -104,6 +104,23 @@ func TestMaskSpikesLeavesAlone(t *testing.T) {
 		for i, w := range s.Segments[0].Ivar {
 			if w != before[i] {
 				t.Errorf("%s: weight of pixel %d changed", c.name, i)
+			}
+		}
+	}
+}
+
+func TestMaskSpikesTakesTwoPixels(t *testing.T) {
+	for _, second := range []float64{1000, 900, 200, 21} {
+		seg := spiked(30, 1, 0, 1)
+		seg.Flux[10] += 1000
+		seg.Flux[11] += second
+		s := &Spectrum{Segments: []Segment{seg}}
+		if taken := s.MaskSpikes(8); taken == 0 || s.Segments[0].Ivar[10] != 0 {
+			t.Errorf("a hit of 1000 and %g: %d pixels taken", second, taken)
+		}
+		for i, w := range s.Segments[0].Ivar {
+			if i != 10 && i != 11 && w == 0 {
+				t.Errorf("a hit of 1000 and %g: pixel %d was taken", second, i)
 			}
 		}
 	}
