@@ -30,10 +30,11 @@ var edges = map[string][]string{
 	"continuum":        {"spectrum"},
 	"redshift":         {"spectrum", "hydrogen", "linelist", "continuum"},
 	"lines":            {"spectrum", "hydrogen", "linelist"},
+	"absorbers":        {"spectrum", "hydrogen", "linelist"},
 	"catalog":          {"internal/fitsout"},
 	"report":           {"catalog"},
 	"synth":            {"spectrum", "hydrogen", "linelist", "catalog", "internal/fitsout"},
-	"pipeline": {"spectrum", "hydrogen", "linelist", "configs", "fitsread", "continuum", "redshift", "lines",
+	"pipeline": {"spectrum", "hydrogen", "linelist", "configs", "fitsread", "continuum", "redshift", "lines", "absorbers",
 		"catalog", "synth", "internal/fitsout", "manifest"},
 	"cmd/duskline": {"pipeline", "catalog", "report", "synth", "configs", "fitsread", "spectrum"},
 }
