@@ -87,7 +87,8 @@ func (s *denseScan) kernel(c *Composite) *kernel {
 		// The nodes of the table that fall on each bin.
 		count := make([]int, bins)
 		for i := c.high.from; i < c.high.to; i++ {
-			if b := int(float64(i-c.high.from) * tableStep / s.step); b < bins {
+			// A hair more, for a node on the border of two bins.
+			if b := int(float64(i-c.high.from)*(tableStep/s.step) + 1e-6); b < bins {
 				s.real[b] += of(c.high.values[i])
 				count[b]++
 			}
@@ -108,10 +109,10 @@ func (s *denseScan) kernel(c *Composite) *kernel {
 	return k
 }
 
-// correlate writes num and den of a composite for the shifts (first+j) steps of
-// the level, j below the length of the two, by linear interpolation between
-// bins. Shifts at which the spectrum and the composite do not overlap get zero.
-func (s *denseScan) correlate(num, den []float64, l *level, c *Composite, first int) {
+// correlate writes num and den of a composite for the shifts first + j steps of
+// the level in log10(1+z), j below the length of the two, by linear
+// interpolation between bins. Shifts at which the spectrum and the composite do not overlap get zero.
+func (s *denseScan) correlate(num, den []float64, l *level, c *Composite, first float64) {
 	if !s.ready {
 		s.load(l)
 	}
@@ -125,7 +126,7 @@ func (s *denseScan) correlate(num, den []float64, l *level, c *Composite, first 
 	}
 	least *= 1e-9 // rounding of the transforms
 	for j := range num {
-		p := (float64(first+j)*l.step - (s.start - k.start)) / s.step
+		p := (first + float64(j)*l.step - (s.start - k.start)) / s.step
 		q := math.Floor(p)
 		u := p - q
 		a := ((int(q) % s.length) + s.length) % s.length

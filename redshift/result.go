@@ -272,8 +272,16 @@ func (f *Finder) rStat(s *Scratch, p *peak) float64 {
 	clear(corr)
 	for c := range p.family.components {
 		comp := &p.family.components[c]
-		if p.fit.amp[c] == 0 || len(comp.terms) == 0 {
+		if p.fit.amp[c] == 0 {
 			continue
+		}
+		if comp.stack != nil {
+			num, den := grow(s.scan.num, len(corr)), grow(s.scan.den, len(corr))
+			s.scan.num, s.scan.den = num, den
+			s.scan.dense.correlate(num, den, l, comp.stack, p.shift-float64(half)*l.step)
+			for k, v := range num {
+				corr[k] += p.fit.amp[c] * v
+			}
 		}
 		kind := 0
 		if comp.absorption {

@@ -184,7 +184,7 @@ func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, su
 	for c := range f.components {
 		comp := &f.components[c]
 		if comp.stack != nil {
-			s.dense.correlate(s.num, s.den, l, comp.stack, kmin)
+			s.dense.correlate(s.num, s.den, l, comp.stack, float64(kmin)*l.step)
 			s.addDrops()
 		}
 		if len(comp.terms) == 0 {
