@@ -72,6 +72,11 @@ func (f *File) segment(s *spectrum.Spectrum, a *arm, row int64) (spectrum.Segmen
 			return seg, err
 		}
 	}
+	if a.powerWave.isSet() {
+		if resolution, err = f.ownResolution(a, row, wave); err != nil {
+			return seg, err
+		}
+	}
 	if len(resolution) != len(seg.Flux) {
 		resolution = nil
 	}
@@ -114,7 +119,10 @@ func (f *File) arrays(a *arm, row int64) (rawArrays, error) {
 		at place
 		to *[]float64
 	}
-	wants := []want{{a.flux, &arr.flux}, {a.weight, &arr.weight}, {a.resolution, &arr.resolution}}
+	wants := []want{{a.flux, &arr.flux}, {a.weight, &arr.weight}}
+	if !a.powerWave.isSet() {
+		wants = append(wants, want{a.resolution, &arr.resolution})
+	}
 	if a.wave.fixed == nil {
 		wants = append(wants, want{a.wave.values, &arr.wave})
 	}

@@ -149,8 +149,8 @@ func (h *hdu) info(used map[place]bool) HDUInfo {
 // String names the unit.
 func (u spectralUnit) String() string {
 	base := ""
-	for _, name := range []string{"Angstrom", "nm", "micron", "m", "cm", "mm", "Hz", "kHz", "MHz", "GHz", "THz", "eV", "keV", "J", "erg",
-		"cm-1", "m-1", "m/s", "km/s"} {
+	for _, name := range []string{"Angstrom", "nm", "micron", "m", "cm", "mm", "pm", "Hz", "kHz", "MHz", "GHz", "THz", "eV", "keV", "MeV", "J", "erg",
+		"cm-1", "m-1", "um-1", "m/s", "km/s"} {
 		if v, _ := parseUnit(name); v.quantity == u.quantity && v.factor == u.factor {
 			base = name
 			break

@@ -34,15 +34,20 @@ const minTableRows = 32
 // choose settles how the file is read: the forced layout, the user's layouts in
 // their order, the built-in ones in order of trust.
 func (f *File) choose() error {
+	var unfit error // why a layout that is for any file does not fit this one
 	for i := range f.opts.Layouts {
 		l := &f.opts.Layouts[i]
-		if f.opts.Force != "" && f.opts.Force != l.Name {
-			continue
-		}
-		if f.opts.Force == "" && !l.matches(f.hdus) {
+		forced := f.opts.Force == l.Name
+		if f.opts.Force != "" && !forced || !forced && l.hasMatch() && !l.matches(f.hdus) {
 			continue
 		}
 		p, err := f.planFor(l)
+		if err != nil && !forced && !l.hasMatch() {
+			if unfit == nil {
+				unfit = err
+			}
+			continue
+		}
 		if err != nil {
 			return err
 		}
@@ -69,6 +74,8 @@ func (f *File) choose() error {
 	switch {
 	case !known:
 		return fault(ErrLayout, -1, "name one of the settings' layouts or a built-in one", "there is no layout %q", f.opts.Force)
+	case unfit != nil:
+		return unfit
 	case firstErr != nil:
 		return firstErr
 	}
@@ -122,7 +129,7 @@ func (f *File) settle() error {
 	for gi := range p.groups {
 		for ai := range p.groups[gi].arms {
 			a := &p.groups[gi].arms[ai]
-			for _, pl := range []place{a.wave.values, a.flux, a.weight, a.resolution} {
+			for _, pl := range []place{a.wave.values, a.flux, a.weight, a.resolution, a.powerWave} {
 				note(pl)
 			}
 			for _, m := range a.masks {

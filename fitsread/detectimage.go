@@ -297,7 +297,7 @@ func (f *File) linePlan(h *hdu, w wavePlan, why, guess string) (*plan, error) {
 	for i, r := range roles {
 		at := place{hdu: h, line: int64(i)}
 		if rows > 1 {
-			at.line, at.base = eachLine, int64(i)*rows
+			at.line, at.base, at.lines = eachLine, int64(i)*rows, rows
 		}
 		switch {
 		case r == roleFlux && !haveFlux:

@@ -6,6 +6,7 @@ import (
 	"encoding/hex"
 	"errors"
 	"fmt"
+	"reflect"
 	"sort"
 	"strings"
 
@@ -33,6 +34,7 @@ type layoutDoc struct {
 	Flux        *fluxDoc   `toml:"flux"`
 	Weight      *weightDoc `toml:"weight"`
 	Mask        *maskDoc   `toml:"mask"`
+	Masks       []maskDoc  `toml:"masks"`
 	Resolution  *resDoc    `toml:"resolution"`
 	Frame       *frameDoc  `toml:"frame"`
 	Object      *objectDoc `toml:"object"`
@@ -51,13 +53,20 @@ type armDoc struct {
 	Flux       *fluxDoc   `toml:"flux"`
 	Weight     *weightDoc `toml:"weight"`
 	Mask       *maskDoc   `toml:"mask"`
+	Masks      []maskDoc  `toml:"masks"`
 	Resolution *resDoc    `toml:"resolution"`
 }
 
-type waveDoc struct {
+// placeDoc says where an array stands.
+type placeDoc struct {
 	HDU    any    `toml:"hdu"`
 	Column string `toml:"column"`
 	Line   int64  `toml:"line"`
+	Plane  int64  `toml:"plane"`
+}
+
+type waveDoc struct {
+	placeDoc
 	Axis   bool   `toml:"axis"`
 	Start  string `toml:"start"`
 	Step   string `toml:"step"`
@@ -67,33 +76,28 @@ type waveDoc struct {
 }
 
 type fluxDoc struct {
-	HDU    any    `toml:"hdu"`
-	Column string `toml:"column"`
-	Line   int64  `toml:"line"`
+	placeDoc
 	Unit   string `toml:"unit"`
+	Points string `toml:"points"`
 }
 
 type weightDoc struct {
-	HDU    any    `toml:"hdu"`
-	Column string `toml:"column"`
-	Line   int64  `toml:"line"`
-	Kind   string `toml:"kind"`
+	placeDoc
+	Kind string `toml:"kind"`
 }
 
 type maskDoc struct {
-	HDU    any    `toml:"hdu"`
-	Column string `toml:"column"`
-	Line   int64  `toml:"line"`
-	Bad    string `toml:"bad"`
-	Bits   int64  `toml:"bits"`
+	placeDoc
+	Bad  string `toml:"bad"`
+	Bits int64  `toml:"bits"`
 }
 
 type resDoc struct {
-	HDU    any     `toml:"hdu"`
-	Column string  `toml:"column"`
-	Line   int64   `toml:"line"`
-	Kind   string  `toml:"kind"`
-	Power  float64 `toml:"power"`
+	placeDoc
+	Kind       string       `toml:"kind"`
+	Power      float64      `toml:"power"`
+	Table      [][2]float64 `toml:"table"`
+	Wavelength string       `toml:"wavelength"`
 }
 
 type frameDoc struct {
@@ -109,7 +113,7 @@ type objectDoc struct {
 
 var (
 	weightKinds = map[string]role{"sigma": roleSigma, "variance": roleVariance, "inverse_variance": roleIvar}
-	resKinds    = map[string]role{"power": rolePower, "fwhm": roleFWHM, "pixels": roleDisp}
+	resKinds    = map[string]role{"power": rolePower, "fwhm": roleFWHM, "pixels": roleDisp, "kernel": roleKernel}
 	badKinds    = map[string]role{"nonzero": roleQuality, "zero": roleGood}
 	scaleKinds  = map[string]scale{"linear": linear, "log10": log10, "ln": ln}
 	mediumKinds = map[string]spectrum.Medium{"air": spectrum.Air, "vacuum": spectrum.Vacuum}
@@ -149,10 +153,10 @@ func ParseLayout(name string, text []byte) (Layout, error) {
 	if doc.Match.HDU != nil {
 		checkHDU(bad, "match", doc.Match.HDU)
 	}
-	one := armDoc{Wavelength: doc.Wavelength, Flux: doc.Flux, Weight: doc.Weight, Mask: doc.Mask, Resolution: doc.Resolution}
+	one := armDoc{Wavelength: doc.Wavelength, Flux: doc.Flux, Weight: doc.Weight, Mask: doc.Mask, Masks: doc.Masks, Resolution: doc.Resolution}
 	if len(doc.Arm) == 0 {
 		doc.Arm = []armDoc{one}
-	} else if one != (armDoc{}) {
+	} else if !reflect.DeepEqual(one, armDoc{}) {
 		bad("wavelength, flux, weight, mask and resolution stand either at the top or in every arm")
 	}
 	for i := range doc.Arm {
@@ -202,13 +206,19 @@ func checkHDU(bad complain, key string, hdu any) {
 	bad("%s.hdu = %v, want a number from 0 or an EXTNAME", key, hdu)
 }
 
-func checkPlace(bad complain, key string, hdu any, column string, line int64) {
-	checkHDU(bad, key, hdu)
-	if column != "" && line != 0 {
-		bad("%s: column belongs to a table and line to an image; give one", key)
+func (d *placeDoc) check(bad complain, key string) {
+	checkHDU(bad, key, d.HDU)
+	if d.Column != "" && (d.Line != 0 || d.Plane != 0) {
+		bad("%s: column belongs to a table, line and plane to an image", key)
 	}
-	if line < 0 {
-		bad("%s.line = %d, want a number from 1, or nothing for the object's own line", key, line)
+	if d.Line != 0 && d.Plane != 0 {
+		bad("%s: give line or plane", key)
+	}
+	if d.Line < 0 {
+		bad("%s.line = %d, want a number from 1, or nothing for the object's own line", key, d.Line)
+	}
+	if d.Plane < 0 {
+		bad("%s.plane = %d, want a number from 1", key, d.Plane)
 	}
 }
 
@@ -218,7 +228,7 @@ func (a *armDoc) check(bad complain, i int) {
 		return
 	}
 	w := a.Wavelength
-	checkPlace(bad, "wavelength", w.HDU, w.Column, w.Line)
+	w.check(bad, "wavelength")
 	ways := 0
 	for _, way := range []bool{w.Column != "", w.Line != 0, w.Axis, w.Start != "" || w.Step != ""} {
 		if way {
@@ -242,21 +252,52 @@ func (a *armDoc) check(bad complain, i int) {
 	if w.Medium != "" {
 		oneOf(bad, "wavelength.medium", w.Medium, mediumKinds)
 	}
-	checkPlace(bad, "flux", a.Flux.HDU, a.Flux.Column, a.Flux.Line)
+	a.Flux.check(bad, "flux")
 	if a.Weight != nil {
-		checkPlace(bad, "weight", a.Weight.HDU, a.Weight.Column, a.Weight.Line)
+		a.Weight.check(bad, "weight")
 		oneOf(bad, "weight.kind", a.Weight.Kind, weightKinds)
 	}
-	if a.Mask != nil {
-		checkPlace(bad, "mask", a.Mask.HDU, a.Mask.Column, a.Mask.Line)
-		oneOf(bad, "mask.bad", a.Mask.Bad, badKinds)
+	for _, m := range a.masks() {
+		m.check(bad, "mask")
+		oneOf(bad, "mask.bad", m.Bad, badKinds)
 	}
-	if r := a.Resolution; r != nil {
-		if r.Power == 0 {
-			checkPlace(bad, "resolution", r.HDU, r.Column, r.Line)
-			oneOf(bad, "resolution.kind", r.Kind, resKinds)
-		} else if !(r.Power > 1) {
-			bad("resolution.power = %g, want a resolving power above 1", r.Power)
+	if a.Resolution != nil {
+		a.Resolution.checkAll(bad)
+	}
+}
+
+// masks returns [mask] and [[masks]] as one list.
+func (a *armDoc) masks() []maskDoc {
+	if a.Mask == nil {
+		return a.Masks
+	}
+	return append([]maskDoc{*a.Mask}, a.Masks...)
+}
+
+func (r *resDoc) checkAll(bad complain) {
+	ways := 0
+	for _, way := range []bool{r.Power != 0, len(r.Table) > 0, r.HDU != nil} {
+		if way {
+			ways++
+		}
+	}
+	if ways != 1 {
+		bad("resolution: give one of power, table, or hdu with kind")
+		return
+	}
+	switch {
+	case r.HDU != nil:
+		r.check(bad, "resolution")
+		oneOf(bad, "resolution.kind", r.Kind, resKinds)
+		if r.Wavelength != "" && (r.Column == "" || resKinds[r.Kind] == roleDisp) {
+			bad("resolution.wavelength goes with a column of power or fwhm")
+		}
+	case r.Power != 0 && !(r.Power > 1):
+		bad("resolution.power = %g, want a resolving power above 1", r.Power)
+	}
+	for i, p := range r.Table {
+		if !(p[0] > 0 && p[1] > 1) || i > 0 && p[0] <= r.Table[i-1][0] {
+			bad("resolution.table: pair %d, [%g, %g]: want wavelengths in Angstrom that increase and resolving powers above 1", i+1, p[0], p[1])
 		}
 	}
 }

@@ -23,7 +23,20 @@ func findHDU(hdus []*hdu, ref any) *hdu {
 	return nil
 }
 
+// column finds a column: by name, the case counting first; "#3" is the third one;
+// "utype:Data.FluxAxis.Value" and "ucd:em.wl" go by the ends of TUTYPn and the
+// beginnings of TUCDn.
 func (h *hdu) column(name string) *column {
+	kind, what, tagged := strings.Cut(strings.ToLower(name), ":")
+	for i := range h.columns {
+		c := &h.columns[i]
+		switch {
+		case tagged && kind == "utype" && (c.utype == what || strings.HasSuffix(c.utype, "."+what) || strings.HasSuffix(c.utype, ":"+what)),
+			tagged && kind == "ucd" && (c.ucd == what || strings.HasPrefix(c.ucd, what+";")),
+			name == fmt.Sprintf("#%d", c.number):
+			return c
+		}
+	}
 	for i := range h.columns {
 		if h.columns[i].name == name {
 			return &h.columns[i]
@@ -37,14 +50,14 @@ func (h *hdu) column(name string) *column {
 	return nil
 }
 
+// hasMatch reports whether the layout says which files it is for. One that does
+// not is for any file that has its HDUs, columns and cards.
+func (l *Layout) hasMatch() bool { return l.doc.Match.HDU != nil || len(l.doc.Match.Cards) > 0 }
+
 // matches reports whether a file is of the layout's kind: the HDU, its columns
-// and the cards that [match] names are there. Without [match] it is none of them:
-// the layout is used only when it is forced.
+// and the cards that [match] names are there.
 func (l *Layout) matches(hdus []*hdu) bool {
 	m := &l.doc.Match
-	if m.HDU == nil && len(m.Cards) == 0 {
-		return false
-	}
 	in := []*hdu{hdus[0]}
 	if m.HDU != nil {
 		h := findHDU(hdus, m.HDU)
@@ -75,6 +88,9 @@ func (l *Layout) matches(hdus []*hdu) bool {
 // planFor binds a user's layout to the file's HDUs and columns.
 func (f *File) planFor(l *Layout) (*plan, error) {
 	p := &plan{layout: l.Name, why: "its [match] fits the file", digest: l.digest}
+	if !l.hasMatch() {
+		p.why = "it fits the file"
+	}
 	if f.opts.Force != "" {
 		p.why = "it was asked for"
 	}
@@ -86,7 +102,9 @@ func (f *File) planFor(l *Layout) (*plan, error) {
 		}
 		rows := int64(1)
 		if a.flux.perRow() {
-			rows = a.flux.hdu.lines()
+			if rows = a.flux.hdu.lines(); a.flux.lines > 0 {
+				rows = a.flux.lines
+			}
 		}
 		if i > 0 && rows != g.rows {
 			return nil, fault(ErrLayout, a.flux.hdu.index, "correct the layout", "arm %q has %d spectra, the arms before it %d", a.name, rows, g.rows)
@@ -139,10 +157,11 @@ func numberPlace(h *hdu, name string) (place, error) {
 }
 
 // arrayPlace finds a column, an image line, or the object's own line.
-func (f *File) arrayPlace(key string, ref any, name string, line int64) (place, error) {
-	h := findHDU(f.hdus, ref)
+func (f *File) arrayPlace(key string, d placeDoc) (place, error) {
+	name, line := d.Column, d.Line
+	h := findHDU(f.hdus, d.HDU)
 	if h == nil {
-		return place{}, missingHDU(key, ref)
+		return place{}, missingHDU(key, d.HDU)
 	}
 	const hint = "correct the layout or leave the file out"
 	if h.kind == kindCompressed || h.kind == kindPacked {
@@ -161,13 +180,23 @@ func (f *File) arrayPlace(key string, ref any, name string, line int64) (place, 
 	if line > h.lines() {
 		return place{}, fault(ErrLayout, h.index, hint, "%s: line %d of an image of %d lines", key, line, h.lines())
 	}
+	if d.Plane > 0 {
+		rows := int64(1)
+		if len(h.axes) > 1 {
+			rows = h.axes[1]
+		}
+		if d.Plane > h.lines()/max(rows, 1) {
+			return place{}, fault(ErrLayout, h.index, hint, "%s: plane %d of an image of %d planes", key, d.Plane, h.lines()/max(rows, 1))
+		}
+		return place{hdu: h, line: eachLine, base: (d.Plane - 1) * rows, lines: rows}, nil
+	}
 	return place{hdu: h, line: line - 1}, nil // line 0 becomes eachLine
 }
 
 func (f *File) bindArm(d *armDoc) (arm, error) {
 	a := arm{name: d.Name}
 	var err error
-	if a.flux, err = f.arrayPlace("flux", d.Flux.HDU, d.Flux.Column, d.Flux.Line); err != nil {
+	if a.flux, err = f.arrayPlace("flux", d.Flux.placeDoc); err != nil {
 		return a, err
 	}
 	switch {
@@ -183,29 +212,52 @@ func (f *File) bindArm(d *armDoc) (arm, error) {
 	}
 	if w := d.Weight; w != nil {
 		a.weightRole = weightKinds[w.Kind]
-		if a.weight, err = f.arrayPlace("weight", w.HDU, w.Column, w.Line); err != nil {
+		if a.weight, err = f.arrayPlace("weight", w.placeDoc); err != nil {
 			return a, err
 		}
 	}
-	if m := d.Mask; m != nil {
+	for _, m := range d.masks() {
 		mp := maskPlan{role: badKinds[m.Bad], bits: m.Bits, stated: true}
-		if mp.at, err = f.arrayPlace("mask", m.HDU, m.Column, m.Line); err != nil {
+		if mp.at, err = f.arrayPlace("mask", m.placeDoc); err != nil {
 			return a, err
 		}
 		if mp.at.col != nil {
 			mp.at.col = mp.at.col.asFlags(a.flux.col != nil && !a.flux.col.isVector())
 		}
-		a.masks = []maskPlan{mp}
+		a.masks = append(a.masks, mp)
 	}
-	if r := d.Resolution; r != nil {
-		if a.power = r.Power; r.Power == 0 {
-			a.resRole = resKinds[r.Kind]
-			if a.resolution, err = f.arrayPlace("resolution", r.HDU, r.Column, r.Line); err != nil {
-				return a, err
-			}
+	if d.Flux.Points != "" {
+		if a.points, err = numberPlace(a.flux.hdu, d.Flux.Points); err != nil {
+			return a, err
 		}
 	}
-	return a, nil
+	if d.Resolution != nil {
+		err = f.bindResolution(&a, d.Resolution)
+	}
+	return a, err
+}
+
+func (f *File) bindResolution(a *arm, r *resDoc) error {
+	a.power, a.powers = r.Power, r.Table
+	if r.HDU == nil {
+		return nil
+	}
+	at, err := f.arrayPlace("resolution", r.placeDoc)
+	if err != nil {
+		return err
+	}
+	if a.resRole = resKinds[r.Kind]; a.resRole == roleKernel {
+		if len(at.hdu.axes) != 3 || at.hdu.tiles == nil && at.col != nil {
+			return fault(ErrLayout, at.hdu.index, "correct the layout or leave the file out", "resolution: kernels are an image of pixels, offsets and objects")
+		}
+		a.kernel, a.resRole = at, roleDisp
+		return nil
+	}
+	a.resolution = at
+	if r.Wavelength != "" {
+		a.powerWave, err = f.arrayPlace("resolution", placeDoc{HDU: r.HDU, Column: r.Wavelength})
+	}
+	return err
 }
 
 func (f *File) bindWave(d *waveDoc) (wavePlan, error) {
@@ -240,7 +292,7 @@ func (f *File) bindWave(d *waveDoc) (wavePlan, error) {
 			return w, err
 		}
 	default:
-		if w.values, err = f.arrayPlace("wavelength", d.HDU, d.Column, d.Line); err != nil {
+		if w.values, err = f.arrayPlace("wavelength", d.placeDoc); err != nil {
 			return w, err
 		}
 		if c := w.values.col; c != nil {

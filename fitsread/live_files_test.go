@@ -77,6 +77,7 @@ func compareFile(t *testing.T, a *answers, path string) {
 		if f.Count() != spectra {
 			t.Errorf("%d spectra, want %d (layout %s)", f.Count(), spectra, f.plan.layout)
 		}
+		checkDraft(t, path, Options{})
 	}
 	for i := range spectra {
 		segments := a.count()

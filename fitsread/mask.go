@@ -2,6 +2,7 @@ package fitsread
 
 import (
 	"math"
+	"sort"
 
 	"duskline/spectrum"
 )
@@ -72,17 +73,30 @@ func typicalRatio(seg *spectrum.Segment) float64 {
 // mark bad pixels themselves (marksBad), and not where they would take more than
 // half of the pixels that are left.
 func applyMask(ivar, flags []float64, m maskPlan, marksBad bool) {
-	bad := func(v float64) bool {
-		switch {
-		case v != v:
-			return true // null flag
-		case m.role == roleGood:
-			return v == 0
-		case m.bits != 0:
-			return int64(v)&m.bits != 0
-		}
-		return v != 0
+	if !m.counts(ivar, flags, marksBad) {
+		return
 	}
+	for i, v := range flags {
+		if m.isBad(v) {
+			ivar[i] = 0
+		}
+	}
+}
+
+func (m maskPlan) isBad(v float64) bool {
+	switch {
+	case v != v:
+		return true // null flag
+	case m.role == roleGood:
+		return v == 0
+	case m.bits != 0:
+		return int64(v)&m.bits != 0
+	}
+	return v != 0
+}
+
+// counts reports whether a mask is to be applied.
+func (m maskPlan) counts(ivar, flags []float64, marksBad bool) bool {
 	binary := true
 	left, lost := 0, 0
 	for i, v := range flags {
@@ -91,20 +105,13 @@ func applyMask(ivar, flags []float64, m maskPlan, marksBad bool) {
 		}
 		if ivar[i] > 0 {
 			left++
-			if bad(v) {
+			if m.isBad(v) {
 				lost++
 			}
 		}
 	}
 	standard := m.stated || m.role == roleGood || m.bits != 0 || m.role == roleQuality && binary || m.isIVOA()
-	if !standard && (marksBad || 2*lost > left) || !m.stated && lost == left {
-		return
-	}
-	for i, v := range flags {
-		if bad(v) {
-			ivar[i] = 0
-		}
-	}
+	return (standard || !marksBad && 2*lost <= left) && (m.stated || lost < left)
 }
 
 // isIVOA reports a column that is the data model's quality by utype, UCD or name.
@@ -124,13 +131,20 @@ const sigmaToFWHM = 2.3548200450309493
 // FWHM per pixel. Values that are missing take the nearest good one; nil when
 // none is good.
 func resolvingPower(seg *spectrum.Segment, v []float64, a *arm) []float64 {
-	if v == nil {
-		if a.power > 0 {
-			return []float64{a.power}
-		}
-		return nil
-	}
 	n := len(seg.Wave)
+	if v == nil {
+		switch {
+		case a.power > 0:
+			return []float64{a.power}
+		case len(a.powers) == 0:
+			return nil
+		}
+		v = make([]float64, n)
+		for i, w := range seg.Wave {
+			v[i] = between(a.powers, w)
+		}
+		return v
+	}
 	good := false
 	for i, x := range v {
 		r := x
@@ -167,6 +181,50 @@ func resolvingPower(seg *spectrum.Segment, v []float64, a *arm) []float64 {
 		}
 	}
 	return v
+}
+
+// between interpolates linearly in pairs of increasing first number; beyond the
+// ends the last value holds.
+func between(pairs [][2]float64, x float64) float64 {
+	k := sort.Search(len(pairs), func(i int) bool { return pairs[i][0] >= x })
+	switch k {
+	case 0:
+		return pairs[0][1]
+	case len(pairs):
+		return pairs[k-1][1]
+	}
+	a, b := pairs[k-1], pairs[k]
+	return a[1] + (x-a[0])/(b[0]-a[0])*(b[1]-a[1])
+}
+
+// ownResolution reads a resolution that has wavelengths of its own and returns it
+// for the wavelengths of the segment, NaN where it says nothing.
+func (f *File) ownResolution(a *arm, row int64, wave []float64) ([]float64, error) {
+	x, err := f.array(a.powerWave, row)
+	if err != nil {
+		return nil, err
+	}
+	v, err := f.array(a.resolution, row)
+	if err != nil {
+		return nil, err
+	}
+	w := columnWave(a.powerWave.hdu, a.powerWave.col)
+	w.unit.toAngstrom(x, math.NaN())
+	var pairs [][2]float64
+	for i := range min(len(x), len(v)) {
+		if x[i] > 0 && v[i] > 0 && !math.IsInf(x[i], 0) && !math.IsInf(v[i], 0) {
+			pairs = append(pairs, [2]float64{x[i], v[i]})
+		}
+	}
+	sort.Slice(pairs, func(i, j int) bool { return pairs[i][0] < pairs[j][0] })
+	if len(pairs) == 0 {
+		return nil, nil
+	}
+	out := make([]float64, len(wave))
+	for i, w := range wave {
+		out[i] = between(pairs, w)
+	}
+	return out, nil
 }
 
 // kernelSigma reads an object's plane of line spread functions, a line an offset

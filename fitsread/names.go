@@ -23,6 +23,7 @@ const (
 	rolePower   // resolving power
 	roleFWHM    // width of the resolution element, Angstrom
 	roleDisp    // its sigma in pixels
+	roleKernel  // line spread functions, a plane an object
 	roleStep    // scalar: step beside a starting value
 	rolePoints  // scalar: number of pixels in use
 	roleOrder   // scalar: echelle order

@@ -9,11 +9,12 @@ import (
 
 // place says where an array or a number stands in the file.
 type place struct {
-	hdu  *hdu
-	col  *column // nil for an image
-	line int64   // image line; eachLine: the object's own
-	base int64   // line of the first object, where line is eachLine
-	card string  // a header card: numbers only
+	hdu   *hdu
+	col   *column // nil for an image
+	line  int64   // image line; eachLine: the object's own
+	base  int64   // line of the first object, where line is eachLine
+	lines int64   // lines of objects, where there are several planes of them; 0 for all
+	card  string  // a header card: numbers only
 }
 
 const eachLine = -1
@@ -32,6 +33,8 @@ func (p place) String() string {
 		return fmt.Sprintf("column %s of HDU %d", p.col.name, p.hdu.index)
 	case p.hdu.lines() == 1:
 		return fmt.Sprintf("image in HDU %d", p.hdu.index)
+	case p.line == eachLine && p.lines > 0:
+		return fmt.Sprintf("plane %d of the image in HDU %d", p.base/p.lines+1, p.hdu.index)
 	case p.line == eachLine:
 		return fmt.Sprintf("lines of the image in HDU %d", p.hdu.index)
 	}
@@ -43,7 +46,7 @@ func (p place) perRow() bool {
 	if p.col != nil {
 		return p.col.isVector()
 	}
-	return p.line == eachLine && p.hdu.lines() > 1
+	return p.line == eachLine && p.hdu.lines() > 1 && p.lines != 1
 }
 
 // array reads the values for one row: a vector cell, an image line, or the
@@ -153,9 +156,11 @@ type arm struct {
 	weightRole role // roleSigma, roleVariance, roleIvar or roleWeight
 	masks      []maskPlan
 	resolution place
-	resRole    role    // rolePower, roleFWHM or roleDisp
-	kernel     place   // image of line spread functions, a plane an object
-	power      float64 // one resolving power for all pixels
+	resRole    role         // rolePower, roleFWHM or roleDisp
+	kernel     place        // image of line spread functions, a plane an object
+	power      float64      // one resolving power for all pixels
+	powers     [][2]float64 // wavelengths in Angstrom and resolving powers to interpolate
+	powerWave  place        // wavelengths of resolution where it has its own
 	points     place
 }
 
