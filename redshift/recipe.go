@@ -268,7 +268,7 @@ func compile(r *ComponentRecipe, list *linelist.List, stacks Stacks) (component,
 			}
 		}
 	}
-	if len(c.terms)+len(c.edges)+len(c.heads) == 0 && !c.forest && r.Stack == "" {
+	if len(r.Lines)+len(r.Bumps)+len(r.Edges)+len(r.Heads) == 0 && r.CaseB == nil && !r.Forest && r.Stack == "" {
 		bad("has no lines, case_b, bumps, edges, heads, forest or stack")
 	}
 	if !c.absorption && len(c.edges)+len(c.heads) > 0 {
