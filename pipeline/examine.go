@@ -25,7 +25,13 @@ func (j *Job) listInputs(ctx context.Context, examine func(*Job, *planInput), ta
 	g.Go(func() error {
 		defer close(order)
 		defer close(work)
-		return findInputs(ctx, j.Base, locate(j.Base, j.Out), j.Paths, func(c candidate) error {
+		find := func(yield func(candidate) error) error {
+			if len(j.Paths) == 0 && j.Like != "" {
+				return j.listEarlier(yield)
+			}
+			return findInputs(ctx, j.Base, locate(j.Base, j.Out), j.Paths, yield)
+		}
+		return find(func(c candidate) error {
 			s := &slot{newPlanInput(c), make(chan struct{})}
 			for _, ch := range []chan<- *slot{order, work} {
 				select {

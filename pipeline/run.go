@@ -25,14 +25,18 @@ type Job struct {
 	Base  string   // absolute folder that relative paths start from
 	Paths []string // files, folders, patterns, @lists; none to go on with the plan of Out
 
-	Settings  Settings
-	Layouts   []LayoutText // tried before the built-in rules for reading
-	Recipes   []RecipeText // of which Processor was made, kept in the plan
-	Manifest  *Manifest    // what is known about the objects, may be nil
-	Limit     int64        // largest number of spectra, 0 for all
-	Program   string       // version of the program, part of the plan
-	Build     string       // which binary of that version, part of the plan
-	Shard     Shard        // the part that Work does; the zero value is all
+	Settings Settings
+	Layouts  []LayoutText // tried before the built-in rules for reading
+	Recipes  []RecipeText // of which Processor was made, kept in the plan
+	Manifest *Manifest    // what is known about the objects, may be nil
+	Limit    int64        // largest number of spectra, 0 for all
+	Program  string       // version of the program, part of the plan
+	Build    string       // which binary of that version, part of the plan
+	// Like is the folder of an earlier run: its inputs are taken where Paths has
+	// none, and its rows where nothing that they depend on has changed. It
+	// changes no byte of what comes out.
+	Like      string
+	Shard     Shard // the part that Work does; the zero value is all
 	Processor Processor
 
 	Progress Progress     // may be nil
@@ -67,8 +71,9 @@ type Run struct {
 	totals planEnd
 	id     string // digest of the plan
 
-	allWhole bool  // every block was seen whole by Work
-	taken    int64 // objects taken over from an earlier run
+	allWhole bool     // every block was seen whole by Work
+	earlier  *earlier // nil without Job.Like
+	taken    int64    // objects taken over from it
 }
 
 // The names in the digests of a plan that are not the processor's.
@@ -84,6 +89,7 @@ type Recalled struct {
 	Recipes  []RecipeText
 	Manifest string // path of the copy in the run folder, empty for none
 	Limit    int64
+	Folder   string // that relative inputs start from
 }
 
 // Recall reads back the plan of the run folder out below base, so that a command without any
@@ -101,7 +107,8 @@ func Recall(base, out string) (Recalled, error) {
 	if err != nil {
 		return Recalled{}, fmt.Errorf("%s was begun with settings of another version: %w", out, err)
 	}
-	recalled := Recalled{Settings: set, Layouts: r.head.Layouts, Recipes: r.head.Recipes, Limit: r.head.Limit}
+	recalled := Recalled{Settings: set, Layouts: r.head.Layouts, Recipes: r.head.Recipes, Limit: r.head.Limit,
+		Folder: r.head.Folder}
 	if r.head.Manifest != "" {
 		recalled.Manifest = filepath.Join(locate(base, out), r.head.Manifest)
 	}
@@ -163,6 +170,11 @@ func Prepare(ctx context.Context, job Job) (*Run, error) {
 			return nil, fmt.Errorf("the manifest cannot be copied into %s: %w", job.Out, err)
 		}
 	}
+	if job.Like != "" {
+		if run.earlier, err = openEarlier(&run.job, &run.head); err != nil {
+			return nil, err
+		}
+	}
 	return run, run.showSettings()
 }
 
@@ -206,6 +218,9 @@ func Recorded(job Job) (*Run, error) {
 	}
 	return run, nil
 }
+
+// Taken returns how many objects Work took over from the earlier run.
+func (r *Run) Taken() int64 { return r.taken }
 
 // ID returns the digest of the plan, which names the run.
 func (r *Run) ID() string { return r.id }
@@ -318,7 +333,7 @@ func (r *Run) agree(ctx context.Context, want planHead) error {
 
 // makePlan lists the inputs and puts the plan into place.
 func (r *Run) makePlan(ctx context.Context, head planHead) error {
-	if len(r.job.Paths) == 0 {
+	if len(r.job.Paths) == 0 && r.job.Like == "" {
 		return noRun(r.job.Out)
 	}
 	_, statErr := os.Stat(r.out)

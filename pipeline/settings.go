@@ -53,7 +53,13 @@ func DefaultSettings() Settings {
 // or outside its range, and a broken rule across keys are all reported
 // together in a *SettingsError.
 func ParseSettings(text []byte) (Settings, error) {
-	set := DefaultSettings()
+	return DefaultSettings().Over(text)
+}
+
+// Over reads a settings file over s: keys that the text does not name stay as
+// they are. Problems are reported as by ParseSettings.
+func (s Settings) Over(text []byte) (Settings, error) {
+	set := s
 	if err := decodeSettings(text, &set); err != nil {
 		return Settings{}, err
 	}

@@ -62,6 +62,10 @@ func (w *objectWorker) do(t task) result {
 	s.SourceFile, s.SourceRow = t.in.Path, t.row
 	id, ra, dec := s.ObjectID, s.RA, s.Dec
 	r := result{task: t}
+	if out, same := w.run.earlier.outcome(t.in, w.run.head.Folder, t.row, digest); same {
+		r.outcome, r.taken = out, true
+		return r
+	}
 	if r.outcome, bad = w.process(s); bad == nil {
 		if r.outcome.Object.ObjectID == "" {
 			r.outcome.Object.ObjectID = id
@@ -120,7 +124,7 @@ func (w *objectWorker) inspect(r *result) *fault {
 	}
 	w.run.job.Log.Error("an object came out with values that a catalog must not hold",
 		"block", r.block.number, "object", r.outcome.Object.ObjectID, "file", r.in.Path, "row", r.row, "error", err)
-	return &fault{"internal error: " + err.Error(), true}
+	return &fault{internalPrefix + err.Error(), true}
 }
 
 // read returns the spectrum of a task and the digest of its input, or what is
@@ -177,6 +181,9 @@ func (r *Run) report(file string, row int, p any) *fault {
 	return &fault{internalReason(p), true}
 }
 
+// internalPrefix begins the reason of a row that a defect of the program spoiled.
+const internalPrefix = "internal error: "
+
 // internalReason describes a recovered panic by its value and the place of
 // its cause, without anything that changes from run to run. It is called by
 // the deferred function that recovered.
@@ -193,7 +200,7 @@ func internalReason(p any) string {
 			where = fmt.Sprintf(" (%s:%d)", filepath.Base(f.File), f.Line)
 		}
 		if where != "" || !more {
-			return fmt.Sprintf("internal error: %v%s", p, where)
+			return fmt.Sprintf("%s%v%s", internalPrefix, p, where)
 		}
 	}
 }

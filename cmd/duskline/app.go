@@ -29,6 +29,14 @@ type app struct {
 	stdout, stderr io.Writer
 	getenv         func(string) string
 	folder         string // working folder
+	// science makes what measures one spectrum.
+	science func(pipeline.Settings, []pipeline.RecipeText) (pipeline.Processor, error)
+}
+
+// theChain is the science of the program; tests of the engine have one that is
+// fast.
+func theChain(set pipeline.Settings, recipes []pipeline.RecipeText) (pipeline.Processor, error) {
+	return pipeline.NewChain(set, recipes...)
 }
 
 // grammar is the command line.
@@ -62,7 +70,13 @@ type early int
 
 // run is the whole program: it takes everything from outside as arguments and
 // returns the exit code.
-func run(ctx context.Context, args []string, _ io.Reader, stdout, stderr io.Writer, getenv func(string) string) (code int) {
+func run(ctx context.Context, args []string, _ io.Reader, stdout, stderr io.Writer, getenv func(string) string) int {
+	return runApp(&app{ctx: ctx, stdout: stdout, stderr: stderr, getenv: getenv, science: theChain}, args)
+}
+
+// runApp is run with a science to choose.
+func runApp(a *app, args []string) (code int) {
+	stdout, stderr := a.stdout, a.stderr
 	defer func() {
 		if p := recover(); p != nil {
 			e, ok := p.(early)
@@ -89,7 +103,7 @@ func run(ctx context.Context, args []string, _ io.Reader, stdout, stderr io.Writ
 		complain(stderr, fmt.Errorf("the working folder cannot be found: %w", err))
 		return exitFailed
 	}
-	a := &app{ctx: ctx, stdout: stdout, stderr: stderr, getenv: getenv, folder: folder}
+	a.folder = folder
 	cmd, ok := parsed.Selected().Target.Addr().Interface().(command)
 	if !ok {
 		panic("command without run: " + parsed.Command())

@@ -41,7 +41,7 @@ func (c *peekCmd) run(a *app) (int, error) {
 	if c.Plot != "" && !strings.EqualFold(filepath.Ext(c.Plot), ".png") {
 		return 0, &pipeline.InputError{Problems: []string{fmt.Sprintf("the picture %s would be no PNG by its name; give a name that ends in .png", c.Plot)}}
 	}
-	set, err := readSettings(a, c.Settings)
+	set, err := readSettings(a, c.Settings, pipeline.DefaultSettings())
 	if err != nil {
 		return 0, err
 	}

@@ -32,7 +32,7 @@ func (a *app) begin(job *pipeline.Job, flags logFlags) *session {
 // prepare plans the run or finds its plan, and begins to keep its log.
 func (s *session) prepare(job pipeline.Job) (*pipeline.Run, error) {
 	var err error
-	if job.Processor, err = pipeline.NewChain(job.Settings, job.Recipes...); err != nil {
+	if job.Processor, err = s.science(job.Settings, job.Recipes); err != nil {
 		return nil, err
 	}
 	r, err := pipeline.Prepare(s.ctx, job)
@@ -70,6 +70,13 @@ func (a *app) process(job pipeline.Job, flags logFlags) (*pipeline.Summary, erro
 	}
 	if err := r.Work(a.ctx); err != nil {
 		return nil, s.failed(err)
+	}
+	if job.Like != "" {
+		s.log.Info("taken over", "like", job.Like, "spectra", r.Taken(), "computed", s.progress.done-r.Taken())
+		if !flags.Quiet {
+			s.progress.close()
+			fmt.Fprintf(a.stdout, "%d spectra were taken over from %s, %d computed.\n\n", r.Taken(), job.Like, s.progress.done-r.Taken())
+		}
 	}
 	if !job.Shard.Whole() {
 		s.progress.close()

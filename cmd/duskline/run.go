@@ -12,11 +12,13 @@ import (
 type runCmd struct {
 	Out      string   `required:"" placeholder:"RUN" help:"Folder for the run: new, empty, or that of a run to go on with."`
 	Settings string   `placeholder:"FILE" help:"Settings in TOML over the built-in ones."`
+	Set      []string `placeholder:"KEY=VALUE" sep:"none" help:"One setting, such as redshift.stiffness=0.05, over the others; may be repeated."`
 	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML: how to read files that do not speak for themselves; may be repeated."`
 	Recipes  string   `placeholder:"DIR" help:"Folder of template recipes (*.toml) that add to the built-in families or replace them."`
 	Manifest string   `placeholder:"FILE" help:"Table, CSV or FITS, of what is known about the objects: names, positions, limits, what to leave out."`
 	Workers  int      `placeholder:"N" help:"Spectra worked on at the same time; by default one a processor. Changes no result."`
 	Limit    int64    `placeholder:"N" help:"Process the first N spectra only."`
+	Like     string   `placeholder:"OLDRUN" help:"Repeat an earlier run, with the changes that other flags name; rows that nothing changed for are taken over."`
 	PlanOnly bool     `help:"Plan the run and do nothing else."`
 	Shard    string   `placeholder:"I/N" env:"DUSKLINE_SHARD" help:"Do part I of N, I from 0 to N-1, and write no catalogs; array takes I and N from the environment of a job array."`
 	logFlags
@@ -34,6 +36,8 @@ func (runCmd) Help() string {
   duskline run --out RUN --plan-only night/        plan, then share the work:
   duskline run --out RUN --shard 3/8               part 3 of 0 to 7, on any machine that sees RUN
   duskline gather RUN                              join what the shards did
+  duskline run --like RUN --out NEW --recipes my/  the same inputs and settings with other templates
+  duskline run --like RUN --out NEW --set lines.window_kms=1500
 
 The run folder then holds catalog.fits, catalog.csv, objects.parquet, lines.parquet and summary.json. Blocks of spectra that are finished are kept whatever happens: the same command goes on from there, and comes to the same bytes as if nothing had happened. An input that cannot be read becomes a row that says why.`
 }
@@ -67,78 +71,20 @@ func outcomeCode(s *pipeline.Summary) int {
 	return exitDone
 }
 
-// job turns the flags into a job. Without any PATH, what is not given is taken
-// from the run that is to go on.
-func (c *runCmd) job(a *app) (pipeline.Job, error) {
-	job := pipeline.Job{Out: c.Out, Base: a.folder, Paths: c.Path, Limit: c.Limit, Program: version(), Build: build()}
-	if c.Limit < 0 {
-		return job, &pipeline.InputError{Problems: []string{fmt.Sprintf("--limit %d is not allowed; give the number of spectra to process, at least 1", c.Limit)}}
-	}
-	var err error
-	if job.Shard, err = shardOf(c.Shard, a.getenv); err != nil {
-		return job, err
-	}
-	if job.Settings, err = readSettings(a, c.Settings); err != nil {
-		return job, err
-	}
-	if job.Layouts, err = readLayouts(a, c.Layout); err != nil {
-		return job, err
-	}
-	if job.Recipes, err = readRecipes(a, c.Recipes); err != nil {
-		return job, err
-	}
-	if c.Manifest != "" {
-		if job.Manifest, err = pipeline.ReadManifest(a.locate(c.Manifest), c.Manifest); err != nil {
-			return job, err
-		}
-	}
-	if len(c.Path) == 0 {
-		planned, err := pipeline.Recall(a.folder, c.Out)
-		if err != nil {
-			return job, err
-		}
-		if c.Settings == "" {
-			job.Settings = planned.Settings
-		}
-		if len(c.Layout) == 0 {
-			job.Layouts = planned.Layouts
-		}
-		if c.Recipes == "" {
-			job.Recipes = planned.Recipes
-		}
-		if c.Manifest == "" && planned.Manifest != "" {
-			if job.Manifest, err = pipeline.ReadManifest(planned.Manifest, planned.Manifest); err != nil {
-				return job, err
-			}
-		}
-		if c.Limit == 0 {
-			job.Limit = planned.Limit
-		}
-	}
-	if c.Workers != 0 {
-		job.Settings.Run.Workers = c.Workers
-	}
-	return job, nil
-}
-
 func (a *app) locate(path string) string {
-	if filepath.IsAbs(path) {
-		return path
-	}
-	return filepath.Join(a.folder, path)
+	return absolute(a.folder, path)
 }
 
-// readSettings reads a settings file over the defaults; without a name it
-// returns the defaults.
-func readSettings(a *app, name string) (pipeline.Settings, error) {
+// readSettings reads a settings file over base; without a name it returns base.
+func readSettings(a *app, name string, base pipeline.Settings) (pipeline.Settings, error) {
 	if name == "" {
-		return pipeline.DefaultSettings(), nil
+		return base, nil
 	}
 	text, err := readText(a, name, "settings")
 	if err != nil {
-		return pipeline.Settings{}, err
+		return base, err
 	}
-	set, err := pipeline.ParseSettings(text)
+	set, err := base.Over(text)
 	if err != nil {
 		return set, fmt.Errorf("%s is not used, it has these problems:\n%w", name, err)
 	}

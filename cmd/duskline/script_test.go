@@ -16,7 +16,9 @@ import (
 	"github.com/rogpeppe/go-internal/testscript"
 )
 
-func TestMain(m *testing.M) { testscript.Main(m, map[string]func(){"duskline": main}) }
+func TestMain(m *testing.M) {
+	testscript.Main(m, map[string]func(){"duskline": main, quickName: quickMain})
+}
 
 // TestScripts runs the commands as people do. Beside the usual words a script
 // knows:
@@ -26,12 +28,14 @@ func TestMain(m *testing.M) { testscript.Main(m, map[string]func(){"duskline": m
 //	await PATTERN           wait until a file is there
 //	isplot FILE             want a PNG that is more than an empty frame
 //	spoil FILE              cut a file in half
+//	mkshort DIR FILES N     write FILES files of N short spectra each
 func TestScripts(t *testing.T) {
 	testscript.Run(t, testscript.Params{
 		Dir:                 "testdata",
 		RequireExplicitExec: true,
 		Cmds: map[string]func(ts *testscript.TestScript, neg bool, args []string){
 			"exits": exits, "mknight": makeNight, "await": await, "isplot": isPlot, "spoil": spoil,
+			"mkshort": makeShort,
 		},
 	})
 }
