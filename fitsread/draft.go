@@ -135,7 +135,7 @@ func (f *File) draft() (Draft, error) {
 			w.line("[[arm]]")
 			w.line("name = %s", quoteTOML(a.name))
 		}
-		if err := f.draftArm(&w, prefix, g, a); err != nil {
+		if err := f.draftArm(&w, prefix, g, a, s.Medium.String()); err != nil {
 			return Draft{}, err
 		}
 	}
@@ -169,14 +169,14 @@ func printable(r rune) rune {
 	return r
 }
 
-func (f *File) draftArm(w *writer, prefix string, g *group, a *arm) error {
+func (f *File) draftArm(w *writer, prefix string, g *group, a *arm, medium string) error {
 	arr, err := f.arrays(a, 0)
 	if err != nil {
 		return err
 	}
 	w.line("")
 	w.line("[%swavelength]", prefix)
-	f.draftWave(w, g, &a.wave)
+	f.draftWave(w, g, &a.wave, medium)
 	w.line("")
 	w.line("[%sflux]", prefix)
 	f.writePlace(w, a.flux)
@@ -201,7 +201,7 @@ func (f *File) draftArm(w *writer, prefix string, g *group, a *arm) error {
 	return nil
 }
 
-func (f *File) draftWave(w *writer, g *group, p *wavePlan) {
+func (f *File) draftWave(w *writer, g *group, p *wavePlan, medium string) {
 	switch {
 	case p.axis != nil:
 		w.line("hdu = %s", f.reference(p.axisHDU))
@@ -234,7 +234,7 @@ func (f *File) draftWave(w *writer, g *group, p *wavePlan) {
 	case p.mediumKnown || g.obs.mediumKnown:
 		w.line("# The headers say air or vacuum.")
 	default:
-		w.line(`# medium = "vacuum"   # or air: not stated, and assumed for each spectrum`)
+		w.line("# medium = %s   # not stated, and assumed for each spectrum by its wavelengths", quoteTOML(medium))
 	}
 }
 

@@ -238,10 +238,39 @@ func TestLayoutFiles(t *testing.T) {
 				t.Fatal("there is no sample of this kind of file")
 			}
 			delete(kinds, name)
-			sameArrays(t, save(t, data), Options{}, Options{Layouts: []Layout{l}, Force: name}, string(text))
+			for _, sample := range data {
+				sameArrays(t, save(t, sample), Options{}, Options{Layouts: []Layout{l}, Force: name}, string(text))
+			}
 		})
 	}
 	for name := range kinds {
 		t.Errorf("there is a sample %s and no layout", name)
+	}
+}
+
+// The same on a real file of every convention: each layout is of some of them, and
+// what it reads is what the built-in rules read. Medium and frame may be stated by a
+// layout where the file does not.
+func TestLayoutFilesOfRealSpectra(t *testing.T) {
+	dir := sharedSpectra(t)
+	for pattern, name := range map[string]string{
+		"sdss_random100/*": "loglam-rows", "sdss_sky/*": "loglam-rows", "sdss_boss_qso/*": "loglam-rows", "sdss_spspec/*": "sigma-lines", "lamost_dr1/*": "ivar-lines",
+		"deep2/*": "arm-cells", "xqr30/*": "error-cells", "calspec/*": "staterror-rows", "dla_highres/UM669*": "axis-image", "hst_stis/*": "order-cells",
+		"desi_mini/*": "arm-images", "vandels/*": "ivoa-ucds", "vandels/*2.fits": "error-rows", "pickles/*": "flux-rows", "ism_textbook/m51*": "error-rows", "sdss_misc/source3*": "flux-rows", "sdss_misc/3C433*": "axis-image",
+	} {
+		paths, err := filepath.Glob(filepath.Join(dir, pattern))
+		if err != nil || len(paths) == 0 {
+			t.Errorf("%s: no file, %v", pattern, err)
+			continue
+		}
+		text, err := os.ReadFile(filepath.Join("..", "configs", "layouts", name+".toml"))
+		if err != nil {
+			t.Fatal(err)
+		}
+		l, err := ParseLayout(name, text)
+		if err != nil {
+			t.Fatal(err)
+		}
+		sameArrays(t, paths[0], Options{}, Options{Layouts: []Layout{l}, Force: name}, "")
 	}
 }
