@@ -42,7 +42,7 @@ type StackJob struct {
 type StackReport struct {
 	Objects    int // in the composite
 	Excluded   int // named by Exclude
-	Missed     int // names of Exclude that no object of the run has
+	Missed     int // names of Exclude that no object of the whole run has
 	Unreadable int // secure objects that are not as the run read them, or cannot be read
 	Unfit      int // without a continuum
 	Why        []string
@@ -188,6 +188,7 @@ func (st *stacker) begin() {
 // member is an object to be stacked and the file that holds it.
 type member struct {
 	row    int64 // in the catalog
+	named  bool  // on the list of those left out
 	in     planInput
 	object catalog.Object
 }
@@ -211,7 +212,7 @@ func (st *stacker) eachMember(visit func(m *member) error) error {
 		}
 		left--
 		m.row++
-		m.object = *o
+		m.object, m.named = *o, st.excluded(o)
 		if o.Verdict != catalog.Secure || math.IsNaN(o.Redshift) || !(o.SNR >= st.job.MinSNR) ||
 			st.job.Family != "" && o.Family != st.job.Family || st.job.Class != "" && o.Class != st.job.Class {
 			return nil
@@ -281,7 +282,7 @@ func (st *stacker) eachSpectrum(ctx context.Context, visit func(r *restSpectrum)
 		return nil
 	}
 	err := st.eachMember(func(m *member) error {
-		if st.excluded(&m.object) {
+		if m.named {
 			st.report.Excluded++
 			return nil
 		}

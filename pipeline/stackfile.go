@@ -56,7 +56,7 @@ func (st *stacker) write(ctx context.Context, sums *stackSums, first, last int) 
 // asked for and not left out by name.
 func (st *stacker) eachWritten(visit func(m *member) error) error {
 	return st.eachMember(func(m *member) error {
-		if st.excluded(&m.object) || st.lost[m.row] {
+		if m.named || st.lost[m.row] {
 			return nil
 		}
 		return visit(m)

@@ -70,7 +70,7 @@ func (c *templatesStackCmd) run(a *app) (int, error) {
 	if len(job.Exclude) > 0 {
 		fmt.Fprintf(a.stdout, "%s left out by name", count(int64(rep.Excluded), "object", "objects"))
 		if rep.Missed > 0 {
-			fmt.Fprintf(a.stdout, "; %d of %d names fit no such object of the run", rep.Missed, len(job.Exclude))
+			fmt.Fprintf(a.stdout, "; %d of %d names fit no object of the run", rep.Missed, len(job.Exclude))
 		}
 		fmt.Fprintln(a.stdout)
 	}
