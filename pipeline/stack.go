@@ -34,6 +34,7 @@ type StackJob struct {
 	ExcludeDigest string
 	Clip          float64 // sigmas beyond which a pixel of an object is left out, 0 for never
 	MinObjects    int     // objects that a pixel of the composite needs
+	MaxError      float64 // error from the noise alone that it may have, a fraction of the continuum
 	Workers       int     // spectra worked on at the same time, 0 for one a processor; changes no result
 	Program       string  // version of the program
 }
@@ -99,10 +100,10 @@ func Stack(ctx context.Context, job StackJob) (*StackReport, error) {
 			rep.Missed++
 		}
 	}
-	first, last := sums.trim(job.MinObjects)
+	first, last := sums.trim(job.MinObjects, job.MaxError)
 	if first >= last {
-		return nil, inputError("no rest wavelength has the %d objects that --min-objects asks for: %d secure objects of %s in %s can be stacked; take another family or a larger run",
-			job.MinObjects, rep.Objects, st.what(), job.Run)
+		return nil, inputError("no rest wavelength has the %d objects that --min-objects and the error of %g that --max-error asks for: %d secure objects of %s in %s can be stacked; take another family or a larger run",
+			job.MinObjects, job.MaxError, rep.Objects, st.what(), job.Run)
 	}
 	rep.Pixels = last - first
 	rep.First, rep.Last = sums.wave(first), sums.wave(last-1)

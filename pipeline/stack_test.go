@@ -103,7 +103,7 @@ func stackNight(t *testing.T) StackJob {
 	writeSpectrumFile(t, filepath.Join(base, "night", "z0.3000.fits"), flat, 0.1, 102)
 	writeSpectrumFile(t, filepath.Join(base, "night", "z0.3001.fits"), flat, 0.1, 103)
 	finish(t, Job{Out: "RUN", Base: base, Paths: []string{"night"}, Settings: DefaultSettings(), Program: "test", Processor: labelScience{}})
-	return StackJob{Run: "RUN", Base: base, Out: "out.fits", Family: "passive", Clip: 4, MinObjects: 3, Program: "test",
+	return StackJob{Run: "RUN", Base: base, Out: "out.fits", Family: "passive", Clip: 4, MinObjects: 3, MaxError: 0.1, Program: "test",
 		Exclude: map[string]bool{"z0.3000": true, "night/z0.3001.fits": true, "nobody": true}, ExcludeDigest: "00"}
 }
 
@@ -273,6 +273,7 @@ func TestStackComplains(t *testing.T) {
 		{"family", `RUN knows no family "pasive"; its families are carbon`, func(j *StackJob) { j.Family = "pasive" }},
 		{"nothing asked", "give --family or --class", func(j *StackJob) { j.Family = "" }},
 		{"no members", "0 secure objects of family carbon", func(j *StackJob) { j.Family = "carbon" }},
+		{"too good", "the error of 1e-06 that --max-error asks for", func(j *StackJob) { j.MaxError = 1e-6 }},
 		{"too bright", "no rest wavelength has the 3 objects", func(j *StackJob) { j.MinSNR = 1e9 }},
 	} {
 		j := job

@@ -78,6 +78,7 @@ func (st *stacker) header(inputs string) *fitsout.Header {
 	h.Float("CLIP", st.job.Clip, "sigmas beyond which pixels are left out")
 	h.Int("CLIPNUM", clipRounds, "rounds of clipping")
 	h.Int("MINOBJ", int64(st.job.MinObjects), "objects that a pixel needs")
+	h.Float("MAXERR", st.job.MaxError, "error from noise that a pixel may have")
 	h.Float("EQUALERR", equalError, "least error of a pixel of an object")
 	h.Float("LOGSTEP", redshift.CompositeStep, "dex a pixel")
 	text("EXCLUDED", st.job.ExcludeDigest, "digest of the list of excluded names")
@@ -106,7 +107,7 @@ func (st *stacker) writeComposite(fw *fitsout.Writer, sums *stackSums, first, la
 	for j := first; j < last; j++ {
 		mean, scatter := sums.at(j)
 		sigma := math.NaN()
-		if int(sums.n[j]) >= max(1, st.job.MinObjects) {
+		if sums.known(j, st.job.MinObjects, st.job.MaxError) {
 			sigma = sums.errorOf(j)
 		} else {
 			mean, scatter = math.NaN(), math.NaN()

@@ -121,12 +121,18 @@ func (s *stackSums) add(r *restSpectrum) {
 	}
 }
 
+// known reports whether a pixel has enough objects and little enough noise. The
+// scatter does not count here: it is large where the features are.
+func (s *stackSums) known(j, least int, most float64) bool {
+	return int(s.n[j]) >= max(1, least) && s.w[j]*most*most >= 1
+}
+
 // trim returns the half-open range of pixels from the first to the last that
-// has enough objects.
-func (s *stackSums) trim(least int) (first, last int) {
+// is known.
+func (s *stackSums) trim(least int, most float64) (first, last int) {
 	first, last = stackPixels, 0
-	for j, n := range s.n {
-		if int(n) >= max(1, least) {
+	for j := range s.n {
+		if s.known(j, least, most) {
 			first, last = min(first, j), j+1
 		}
 	}

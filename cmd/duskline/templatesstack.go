@@ -19,6 +19,7 @@ type templatesStackCmd struct {
 	ExcludeList string  `placeholder:"FILE" help:"Text file of objects to leave out, an object_id or a source_file of the catalog a line."`
 	MinSNR      float64 `name:"min-snr" default:"3" placeholder:"S" help:"Least signal-to-noise a pixel of the objects."`
 	MinObjects  int     `default:"3" placeholder:"N" help:"Objects that a pixel of the composite needs."`
+	MaxError    float64 `default:"0.1" placeholder:"E" help:"Error from the noise that a pixel of the composite may have, a fraction of the continuum: noise must not become a feature."`
 	Clip        float64 `default:"4" placeholder:"K" help:"Leave out pixels more than K sigma from the mean; 0 for none."`
 	Workers     int     `placeholder:"N" help:"Spectra worked on at the same time; by default one a processor. Changes no result."`
 	Run         string  `arg:"" help:"Folder of a finished run; its input files must still be in place."`
@@ -46,6 +47,9 @@ func (c *templatesStackCmd) run(a *app) (int, error) {
 	if !(c.Clip >= 0) || c.Clip > 0 && c.Clip < 2 {
 		bad("--clip %g is not allowed; give 0 or at least 2", c.Clip)
 	}
+	if !(c.MaxError > 0) {
+		bad("--max-error %g is not allowed; give a number above 0", c.MaxError)
+	}
 	if !(c.MinSNR >= 0) {
 		bad("--min-snr %g is not allowed; give 0 or more", c.MinSNR)
 	}
@@ -56,7 +60,7 @@ func (c *templatesStackCmd) run(a *app) (int, error) {
 		return 0, &pipeline.InputError{Problems: problems}
 	}
 	job := pipeline.StackJob{Run: c.Run, Base: a.folder, Out: c.Out, Family: c.Family, Class: c.Class, MinSNR: c.MinSNR,
-		Clip: c.Clip, MinObjects: c.MinObjects, Workers: c.Workers, Program: version()}
+		Clip: c.Clip, MinObjects: c.MinObjects, MaxError: c.MaxError, Workers: c.Workers, Program: version()}
 	var err error
 	if job.Exclude, job.ExcludeDigest, err = readExcluded(a, c.ExcludeList); err != nil {
 		return 0, err
