@@ -35,6 +35,7 @@ const minTableRows = 32
 // their order, the built-in ones in order of trust.
 func (f *File) choose() error {
 	var unfit error // why a layout that is for any file does not fit this one
+	var unused []string
 	for i := range f.opts.Layouts {
 		l := &f.opts.Layouts[i]
 		forced := f.opts.Force == l.Name
@@ -46,11 +47,17 @@ func (f *File) choose() error {
 			if unfit == nil {
 				unfit = err
 			}
+			why := err.Error()
+			if re, ok := err.(*ReadError); ok {
+				why = re.Msg
+			}
+			unused = append(unused, fmt.Sprintf("layout %s: %s", l.Name, why))
 			continue
 		}
 		if err != nil {
 			return err
 		}
+		p.skipped = append(unused, p.skipped...)
 		f.plan = p
 		return f.settle()
 	}
@@ -67,6 +74,7 @@ func (f *File) choose() error {
 		}
 		if p != nil {
 			p.layout = b.name
+			p.skipped = append(unused, p.skipped...)
 			f.plan = p
 			return f.settle()
 		}

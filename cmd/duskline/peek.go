@@ -21,7 +21,8 @@ type peekCmd struct {
 	Row      int      `default:"0" placeholder:"N" help:"Spectrum in the file, from 0."`
 	Plot     string   `placeholder:"OUT.png" help:"Also draw the spectrum, its continuum and the lines that were found."`
 	Settings string   `placeholder:"FILE" help:"Settings in TOML over the built-in ones."`
-	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML, tried before the built-in rules; may be repeated."`
+	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML, or the name of one that comes with the program, tried before the built-in rules; may be repeated."`
+	Write    string   `name:"write-layout" placeholder:"OUT.toml" help:"Write a layout for files like this one: a first draft to be edited where the file is not understood."`
 	Recipes  string   `placeholder:"DIR" help:"Folder of template recipes over the built-in ones."`
 	File     string   `arg:"" help:"FITS file, gzipped or not."`
 }
@@ -33,6 +34,7 @@ func (peekCmd) Help() string {
   duskline peek --plot spec.png spec-0042.fits     with a picture
   duskline peek --row 17 plate.fits                one of many spectra in a file
   duskline peek --layout ours.toml spec-0042.fits  try a layout before a long run
+  duskline peek --write-layout ours.toml odd.fits  draft a layout for such files
 
 Worth doing once for every kind of file, before a run: what had to be assumed about wavelengths, errors and frame is said here.`
 }
@@ -64,6 +66,11 @@ func (c *peekCmd) run(a *app) (int, error) {
 	chain, err := pipeline.NewChain(set, recipes...)
 	if err != nil {
 		return 0, err
+	}
+	if c.Write != "" {
+		if understood, err := c.writeLayout(a, opts); err != nil || !understood {
+			return exitUnreadable, err
+		}
 	}
 	f, err := fitsread.Open(a.locate(c.File), opts)
 	if err != nil {

@@ -13,7 +13,7 @@ type runCmd struct {
 	Out      string   `required:"" placeholder:"RUN" help:"Folder for the run: new, empty, or that of a run to go on with."`
 	Settings string   `placeholder:"FILE" help:"Settings in TOML over the built-in ones."`
 	Set      []string `placeholder:"KEY=VALUE" sep:"none" help:"One setting, such as redshift.stiffness=0.05, over the others; may be repeated."`
-	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML: how to read files that do not speak for themselves; may be repeated."`
+	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML, or the name of one that comes with the program: how to read files that do not speak for themselves; may be repeated."`
 	Recipes  string   `placeholder:"DIR" help:"Folder of template recipes (*.toml) that add to the built-in families or replace them."`
 	Manifest string   `placeholder:"FILE" help:"Table, CSV or FITS, of what is known about the objects: names, positions, limits, what to leave out."`
 	Workers  int      `placeholder:"N" help:"Spectra worked on at the same time; by default one a processor. Changes no result."`
@@ -94,6 +94,10 @@ func readSettings(a *app, name string, base pipeline.Settings) (pipeline.Setting
 func readLayouts(a *app, names []string) ([]pipeline.LayoutText, error) {
 	var out []pipeline.LayoutText
 	for _, name := range names {
+		if text, ok := builtInLayout(name); ok {
+			out = append(out, pipeline.LayoutText{Name: name, Text: string(text)})
+			continue
+		}
 		text, err := readText(a, name, "layout")
 		if err != nil {
 			return nil, err
