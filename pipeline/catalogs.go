@@ -55,6 +55,21 @@ func (w *workshop) close() {
 	w.lock.Close()
 }
 
+// place makes a file last and puts it into the run folder.
+func (w *workshop) place(out, name string, text []byte) error {
+	path := filepath.Join(w.path, name)
+	if _, err := writeSynced(path, func(f io.Writer) error {
+		_, err := f.Write(text)
+		return err
+	}); err != nil {
+		return err
+	}
+	if err := os.Rename(path, filepath.Join(out, name)); err != nil {
+		return fmt.Errorf("%s cannot be put into place: %w", name, err)
+	}
+	return syncFolder(out)
+}
+
 // clearWorkshop removes a workshop in which nobody works any more.
 func clearWorkshop(path string) error {
 	lock, err := os.Open(filepath.Join(path, lockName))
@@ -202,6 +217,13 @@ func (r *Run) sweep(complete bool) {
 	})
 	if complete {
 		r.sweepFolder(filepath.Join(r.out, blocksName), os.RemoveAll)
+		for _, name := range []string{settingsName, r.head.Manifest} { // as writeAtomic names what is not whole
+			if left, err := filepath.Glob(filepath.Join(escapePattern(r.out), "."+name+"[0-9]*")); err == nil && name != "" {
+				for _, path := range left {
+					os.Remove(path)
+				}
+			}
+		}
 	}
 }
 

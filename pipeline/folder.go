@@ -2,8 +2,10 @@ package pipeline
 
 import (
 	"crypto/rand"
+	"errors"
 	"fmt"
 	"io"
+	"io/fs"
 	"os"
 	"path/filepath"
 
@@ -51,16 +53,24 @@ func createUnfinished(folder, what string) (*os.File, error) {
 func writeAtomic(path string, write func(w io.Writer) error) error {
 	f, err := renameio.NewPendingFile(path, renameio.WithTempDir(filepath.Dir(path)), renameio.WithPermissions(0o666))
 	if err != nil {
-		return fmt.Errorf("%s cannot be written: %w", path, err)
+		return cannotWrite(path, err)
 	}
 	defer f.Cleanup()
 	if err := write(f); err != nil {
-		return fmt.Errorf("%s cannot be written: %w", path, err)
+		return cannotWrite(path, err)
 	}
 	if err := f.CloseAtomicallyReplace(); err != nil {
-		return fmt.Errorf("%s cannot be put into place: %w", path, err)
+		return cannotWrite(path, err)
 	}
 	return syncFolder(filepath.Dir(path))
+}
+
+func cannotWrite(path string, err error) error {
+	var in *fs.PathError
+	if errors.As(err, &in) {
+		err = in.Err // the path there is that of a temporary file
+	}
+	return fmt.Errorf("%s cannot be written: %w; make room or mend the folder, then repeat the command", path, err)
 }
 
 // syncFolder makes renames inside a folder last.

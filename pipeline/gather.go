@@ -122,10 +122,7 @@ func (g *gathering) all(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
-	return writeAtomic(filepath.Join(g.out, summaryName), func(w io.Writer) error {
-		_, err := w.Write(text)
-		return err
-	})
+	return shop.place(g.out, summaryName, text)
 }
 
 func (g *gathering) missingText() string {

@@ -340,6 +340,12 @@ func (r *Run) makePlan(ctx context.Context, head planHead) error {
 	if err := os.MkdirAll(r.out, 0o777); err != nil {
 		return inputError("the run folder %s cannot be made: %s; give another --out", r.job.Out, plain(err))
 	}
+	if statErr != nil {
+		// Best effort: a folder may be entered and not read.
+		if err := syncFolder(filepath.Dir(r.out)); err != nil {
+			r.job.Log.Debug("the folder around the run folder cannot be synced", "reason", err)
+		}
+	}
 	tmp, err := createUnfinished(r.out, "plan")
 	if err != nil {
 		return inputError("the run folder %s cannot be written to: %s; give another --out", r.job.Out, plain(err))
@@ -364,6 +370,10 @@ func (r *Run) makePlan(ctx context.Context, head planHead) error {
 			return take(in)
 		})
 	})
+	var full *fs.PathError
+	if errors.As(err, &full) && full.Path == tmp.Name() {
+		return fmt.Errorf("the plan in %s cannot be written: %w; make room, then repeat the command", r.job.Out, full.Err)
+	}
 	if err != nil {
 		return err
 	}
