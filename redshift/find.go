@@ -89,12 +89,14 @@ type Scratch struct {
 	smooth      []float64
 	dropLag     []float64
 	features    []feature
+	count       []int // of peaks, by family
 	traces      []trace
-	single      drawing // of one line
+	single      drawing   // of one line
+	normal      []float64 // normalized residuals
 	excess      []float64
 	scaled      []float64 // flux in the units of the levels
 	weight      []float64 // weights before they are tempered
-	independent float64   // pixels with weight that are independent
+	independent float64   // fraction of the pixels that are independent
 	floor       []float64 // template error, fraction of the local flux
 	basis       continuum.Basis
 }
@@ -126,9 +128,9 @@ func (f *Finder) Find(g *spectrum.Grid, s *Scratch) Result {
 	s.peaks = s.peaks[:0]
 	s.scan.resp.reset(&s.full)
 	s.scan.dense.reset()
-	for _, fam := range f.families {
+	for index, fam := range f.families {
 		for _, width := range fam.Widths {
-			f.nominate(s, fam, width)
+			f.nominate(s, index, width)
 		}
 	}
 	f.judge(s)
@@ -218,15 +220,7 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 		basis.Intervals *= 4
 	}
 	// Of the pixels left by the bands as many are independent as of all.
-	s.independent = 0
-	for _, w := range l.weight {
-		if w > 0 {
-			s.independent++
-		}
-	}
-	if res.PixelsUsed > 0 && g.Independent > 0 {
-		s.independent *= math.Min(1, g.Independent/float64(res.PixelsUsed))
-	}
+	s.independent = math.Min(1, g.Independent/float64(res.PixelsUsed))
 	s.basis = basis
 	s.scaled = append(s.scaled[:0], l.resid...)
 	s.weight = append(s.weight[:0], l.weight...)
@@ -290,7 +284,8 @@ func medianSNR(s *Scratch, flux, ivar []float64) float64 {
 
 // nominate appends the trial redshifts of one family and width with their
 // joint fits, on binned pixels where all shapes are wide.
-func (f *Finder) nominate(s *Scratch, fam *Family, width float64) {
+func (f *Finder) nominate(s *Scratch, index int, width float64) {
+	fam := f.families[index]
 	s.shifts = s.shifts[:0]
 	narrow := fam.narrowest(width) / (speedOfLight * ln10 * s.full.step) // pixels
 	l := &s.full
@@ -309,7 +304,7 @@ func (f *Finder) nominate(s *Scratch, fam *Family, width float64) {
 		s.shifts = s.scan.nominate(s.shifts, &s.full, fam, width, &f.survive, f.opt.Nominees, max(6, int(3*narrow)))
 	}
 	for _, shift := range s.shifts {
-		p := peak{family: fam, width: width, shift: shift}
+		p := peak{family: fam, index: index, width: width, shift: shift}
 		p.fit = s.bench.evaluate(l, fam, width, shift)
 		s.score(&p)
 		if p.fit.active > 0 {
@@ -337,9 +332,10 @@ func (f *Finder) judge(s *Scratch) {
 	// as possible rivals.
 	best := s.peaks[0].score
 	kept := s.peaks[:0]
-	count := map[*Family]int{}
+	s.count = grow(s.count, len(f.families))
+	clear(s.count)
 	for _, p := range s.peaks {
-		if p.score > 0.4*best+30 || count[p.family] >= 14 {
+		if p.score > 0.4*best+30 || s.count[p.index] >= 14 {
 			continue
 		}
 		dup := false
@@ -352,7 +348,7 @@ func (f *Finder) judge(s *Scratch) {
 		if dup {
 			continue
 		}
-		count[p.family]++
+		s.count[p.index]++
 		kept = append(kept, p)
 	}
 	s.peaks = kept
@@ -379,67 +375,6 @@ func (f *Finder) judge(s *Scratch) {
 		slices.SortStableFunc(s.peaks, byScore)
 	}
 }
-
-// temper brings the weights to what the data show. Where no peak describes
-// them, each weight is divided by the excess: the mean of w r^2 over its
-// neighborhood, from whichever peak fits best there, over what noise would
-// give. The forest, broad absorption or a bad stretch then no longer decides
-// between families by chance agreements, and the gap is in units of what the
-// best models leave. Errors that are stated too large all over are scaled down
-// by what the best peak leaves. The weights stay the same for all families. It
-// reports false, with the weights as they were at first, when too little
-// weight would be left to fit anything.
-func (f *Finder) temper(s *Scratch) bool {
-	l := &s.full
-	half := f.opt.Temper
-	s.tmp, s.excess = grow(s.tmp, l.n), grow(s.excess, l.n)
-	for i := range s.excess {
-		s.excess[i] = math.Inf(1)
-	}
-	least := math.Inf(1)
-	for i := range s.peaks {
-		p := &s.peaks[i]
-		fit := s.bench.evaluate(l, p.family, p.width, p.shift)
-		s.bench.residual(s.tmp, l, &fit)
-		sum, count, chi2 := 0.0, 0, 0.0
-		add := func(k, sign int) {
-			if k >= 0 && k < l.n && l.weight[k] > 0 {
-				sum += float64(sign) * l.weight[k] * s.tmp[k] * s.tmp[k]
-				count += sign
-			}
-		}
-		for k := 0; k < half; k++ {
-			add(k, 1)
-		}
-		for k := range s.excess {
-			add(k+half, 1)
-			add(k-half-1, -1)
-			if count > 0 {
-				s.excess[k] = math.Min(s.excess[k], sum/float64(count))
-			}
-			chi2 += l.weight[k] * s.tmp[k] * s.tmp[k]
-		}
-		least = math.Min(least, chi2)
-	}
-	// What w r^2 is expected to be: less than 1 where pixels are narrower than
-	// the input's, and less again where the stated errors are too large.
-	expect := s.independent / float64(l.good)
-	scale := math.Max(leastScale, math.Min(1, least/s.independent))
-	for k, e := range s.excess {
-		l.weight[k] = s.weight[k] / (scale * math.Max(1, e/(scale*expect)))
-		l.resid[k] = s.scaled[k]
-	}
-	if l.prepare(s.basis, f.opt.Stiffness, ridge) {
-		return true
-	}
-	copy(l.weight, s.weight)
-	copy(l.resid, s.scaled)
-	l.prepare(s.basis, f.opt.Stiffness, ridge) // as it was
-	return false
-}
-
-// leastScale bounds by how much stated variances may be scaled down.
-const leastScale = 0.2
 
 // score sets the score of a peak from its joint fit: chi^2 relative to the
 // continuum alone, plus penalties.

@@ -206,6 +206,7 @@ func (b *bench) norm(c int) float64 {
 // peak is a trial redshift with its joint fit.
 type peak struct {
 	family *Family
+	index  int // of the family in its finder
 	width  float64
 	shift  float64 // log10(1+z)
 	fit    fit

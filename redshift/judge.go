@@ -40,6 +40,10 @@ func DefaultThresholds() Thresholds {
 		MisfitChi2: 5, HopelessChi2: 30, TiedGap: 9, FaintSNR: 1}
 }
 
+// overwhelming is how many times the gap that a secure redshift needs makes up
+// for one missing feature.
+const overwhelming = 3
+
 // Judge sets Confidence, Verdict and the doubts that follow from thresholds.
 func (t Thresholds) Judge(r *Result) {
 	r.Confidence = 0
@@ -48,15 +52,20 @@ func (t Thresholds) Judge(r *Result) {
 		r.Faint = r.SNR < t.FaintSNR
 		return
 	}
-	r.Confidence = 1 - 0.5*math.Exp(-r.Gap/(t.GapScale*math.Max(1, r.Chi2Dof)))
+	r.Confidence = 1 - 0.5*math.Exp(-r.Gap/(t.GapScale*math.Max(1, math.Max(r.Chi2Dof, r.Correlation))))
 	r.Tied = r.Gap < t.TiedGap
 	r.Misfit = r.Chi2Dof > t.MisfitChi2
 	r.Faint = r.LinesSeen == 0 && r.SNR < t.FaintSNR
 	r.LoneLine = r.LinesSeen == 1
 	r.Unseen = r.LinesExpected > 0 && 2*r.LinesCovered < r.LinesExpected
+	enough := r.LinesSeen-r.LinesMissing >= t.SecureLines
+	if r.LinesSeen-r.LinesMissing == t.SecureLines-1 && !r.InEmission {
+		// One feature short: many weak ones must make up for it. A lone emission
+		// line may be a cosmic ray or another line.
+		enough = 1-r.Confidence <= 0.5*math.Pow(2*(1-t.SecureConfidence), overwhelming)
+	}
 	switch {
-	case r.Confidence >= t.SecureConfidence && r.LinesSeen-r.LinesMissing >= t.SecureLines &&
-		r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd:
+	case r.Confidence >= t.SecureConfidence && enough && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd:
 		r.Verdict = Secure
 	case r.LinesSeen == 0 && r.Confidence < t.NoneConfidence:
 		r.Verdict = None

@@ -20,17 +20,20 @@ type Result struct {
 
 	RivalRedshift float64
 	RivalFamily   string
-	Gap           float64 // score of the best rival minus the best score
+	Gap           float64 // score of the best rival, or of the continuum alone where that is less, minus the best score
+	Tight         bool    // the rival, not the continuum alone, sets the gap
 	RStat         float64 // Tonry & Davis (1979)
 	Chi2Dof       float64
+	Correlation   float64 // how often the residuals say the same: 1 for independent pixels
 	Drop          float64 // decrease of chi^2 by the templates against continuum alone
 	SNR           float64 // median over the pixels
 	PixelsUsed    int
 
-	LinesSeen     int // features of the model that stand out by themselves, blends as one
-	LinesExpected int // lines that should stand out in a member of the family
-	LinesCovered  int // those of them inside the coverage
-	LinesMissing  int // lines that the model predicts strongly and the data lack
+	LinesSeen     int  // features of the model that stand out by themselves, blends as one
+	InEmission    bool // one of them is in emission
+	LinesExpected int  // lines that should stand out in a member of the family
+	LinesCovered  int  // those of them inside the coverage
+	LinesMissing  int  // lines that the model predicts strongly and the data lack
 
 	// Doubts that finding raises, and those that Judge adds.
 	FewPixels, BelowZero, RangeEnd, Scattered bool
@@ -65,16 +68,17 @@ func (f *Finder) conclude(g *spectrum.Grid, s *Scratch, res *Result) {
 	if best.family.Class == "quasar" {
 		same = sameVelocityBroad
 	}
-	null := math.Log(math.Max(2, float64(l.good))) // continuum alone, one more parameter at least
 	res.Found = true
 	res.Class, res.Family, res.Width = best.family.Class, best.family.Name, best.width
 	res.Redshift, res.Drop = best.z(), best.fit.drop
-	res.Gap = math.Max(0, null-best.score) // without a rival, the distance to nothing at all
+	res.Gap = math.Max(0, -best.score) // to the continuum alone, whose score is 0
 	for i := range s.peaks[1:] {
 		p := &s.peaks[i+1]
 		if math.Abs(p.shift-best.shift)*ln10*speedOfLight > same {
 			res.RivalRedshift, res.RivalFamily = p.z(), p.family.Name
-			res.Gap = math.Min(res.Gap, p.score-best.score)
+			if gap := p.score - best.score; gap < res.Gap {
+				res.Gap, res.Tight = gap, true
+			}
 			break
 		}
 	}
@@ -85,9 +89,14 @@ func (f *Finder) conclude(g *spectrum.Grid, s *Scratch, res *Result) {
 	for i, w := range s.weight {
 		chi2 += w * s.tmp[i] * s.tmp[i]
 	}
-	// The stiffened spline has about the freedom of its coarse parent.
-	dof := float64(max(1, l.good-s.fit.Basis().Size()-best.fit.active-1))
-	res.Chi2Dof = chi2 / dof
+	s.normal = grow(s.normal, l.n)
+	for i, w := range l.weight {
+		s.normal[i] = math.Sqrt(w) * s.tmp[i]
+	}
+	res.Correlation = math.Max(1, correlation(s.normal, l.weight)*s.independent)
+	// Of pixels narrower than the input's only a fraction is independent; the
+	// stiffened spline has about the freedom of its coarse parent.
+	res.Chi2Dof = chi2 / math.Max(1, s.independent*float64(l.good)-float64(s.fit.Basis().Size()+best.fit.active+1))
 	f.evidence(s, &best, res)
 	res.RedshiftErr = f.redshiftError(s, &best)
 	lo, hi := math.Log10(1+best.family.ZMin), math.Log10(1+best.family.ZMax)
@@ -124,7 +133,7 @@ func (f *Finder) redshiftError(s *Scratch, p *peak) float64 {
 func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 	l := &s.full
 	s.features = s.features[:0]
-	res.Lines = nil
+	res.Lines = make([]LineEvidence, 0, len(s.traces))
 	s.traces = p.traces(s.traces[:0])
 	for _, t := range s.traces {
 		sigma := t.kms / (speedOfLight * ln10 * l.step)
@@ -133,10 +142,14 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 			continue
 		}
 		e.Name, e.Width = t.name, t.kms
+		e.SNR /= math.Sqrt(res.Correlation)
+		e.Model /= math.Sqrt(res.Correlation)
+		e.Err *= math.Sqrt(res.Correlation)
 		e.Wave = math.Pow(10, t.logWave+p.shift)
 		res.Lines = append(res.Lines, e)
 		if t.amp > 0 && e.SNR >= SeenSNR && e.SNR > 0.3*e.Model {
 			s.features = append(s.features, feature{(t.logWave + p.shift - l.start) / l.step, sigma})
+			res.InEmission = res.InEmission || !t.absorption
 		}
 		if t.amp > 0 && t.name != "" && e.Model > missingSNR && e.SNR < e.Model/3 {
 			res.LinesMissing++
@@ -148,10 +161,11 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 		}
 	}
 	res.LinesSeen = countFeatures(s.features)
+	least := 2 * SeenSNR * math.Sqrt(res.Correlation)
 	// A break or band that the data demand counts as one feature.
 	for c := range p.family.components {
 		comp := &p.family.components[c]
-		if a := p.fit.amp[c]; a > 0 && comp.wide() && comp.stack == nil && len(comp.terms) == 0 && a*math.Sqrt(math.Max(0, s.bench.norm(c))) > 2*SeenSNR {
+		if a := p.fit.amp[c]; a > 0 && comp.wide() && comp.stack == nil && len(comp.terms) == 0 && a*math.Sqrt(math.Max(0, s.bench.norm(c))) > least {
 			res.LinesSeen++
 		}
 	}
