@@ -16,8 +16,12 @@ func (f *File) readBytes(h *hdu, from, n int64) ([]byte, error) {
 		return nil, err
 	}
 	buf := make([]byte, n)
-	if _, err := f.src.ReadAt(buf, h.offset+from); err != nil && err != io.EOF {
+	k, err := f.src.ReadAt(buf, h.offset+from)
+	switch {
+	case err != nil && err != io.EOF:
 		return nil, fault(err, h.index, hintCopy, "%d bytes of data cannot be read: %v", n, err)
+	case int64(k) < n:
+		return nil, fault(ErrChanged, h.index, "process it again when it is complete", "the file became shorter while it was read")
 	}
 	return buf, nil
 }

@@ -3,7 +3,10 @@ package fitsread
 import (
 	"errors"
 	"fmt"
+	"strconv"
 	"strings"
+	"unicode"
+	"unicode/utf8"
 )
 
 // The kinds of failure, told apart with errors.Is.
@@ -17,6 +20,7 @@ var (
 	ErrNoSpectrum = errors.New("no spectrum found")
 	ErrLayout     = errors.New("layout does not fit the file")
 	ErrBadData    = errors.New("data cannot be used")
+	ErrChanged    = errors.New("changed while it was read")
 	ErrInternal   = errors.New("reader failed unexpectedly")
 )
 
@@ -35,7 +39,7 @@ type ReadError struct {
 // Error returns one sentence: where, what, and what to do.
 func (e *ReadError) Error() string {
 	var b strings.Builder
-	b.WriteString(e.File)
+	b.WriteString(oneLine(e.File))
 	sep := ": "
 	if e.HDU >= 0 {
 		fmt.Fprintf(&b, "%sHDU %d", sep, e.HDU)
@@ -55,6 +59,17 @@ func (e *ReadError) Error() string {
 		b.WriteString(e.Hint)
 	}
 	return b.String()
+}
+
+// oneLine writes the bytes of a file name that would break a line, or are no
+// text, as escapes.
+func oneLine(name string) string {
+	clean := utf8.ValidString(name) && !strings.ContainsFunc(name, unicode.IsControl)
+	if clean {
+		return name
+	}
+	quoted := strconv.Quote(name)
+	return quoted[1 : len(quoted)-1]
 }
 
 // Unwrap returns the kind of failure.

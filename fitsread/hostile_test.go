@@ -100,8 +100,12 @@ func TestNotFiles(t *testing.T) {
 	if err := os.Symlink(pipe, link); err != nil {
 		t.Fatal(err)
 	}
+	loop := filepath.Join(dir, "loop.fits")
+	if err := os.Symlink(loop, loop); err != nil {
+		t.Fatal(err)
+	}
 	for path, kind := range map[string]error{
-		dir: ErrNotRegular, pipe: ErrNotRegular, link: ErrNotRegular, "/dev/zero": ErrNotRegular,
+		loop: syscall.ELOOP, filepath.Join(pipe, "below.fits"): syscall.ENOTDIR, dir: ErrNotRegular, pipe: ErrNotRegular, link: ErrNotRegular, "/dev/zero": ErrNotRegular,
 		filepath.Join(dir, "none.fits"): fs.ErrNotExist,
 	} {
 		done := make(chan error, 1)
@@ -127,6 +131,72 @@ func TestNotFiles(t *testing.T) {
 	}
 	if _, err := Open(secret, Options{}); !errors.Is(err, fs.ErrPermission) {
 		t.Errorf("no permission: %v", err)
+	}
+}
+
+// A file that is written to, cut or removed while it is open.
+func TestFileThatChanges(t *testing.T) {
+	data := pixelTable(500)
+	for name, change := range map[string]func(path string) error{
+		"cut":     func(path string) error { return os.Truncate(path, 3*blockLen) },
+		"grown":   func(path string) error { return os.Truncate(path, int64(len(data)+blockLen)) },
+		"touched": func(path string) error { return os.Chtimes(path, time.Time{}, time.Unix(2e9, 0)) },
+	} {
+		path := save(t, data)
+		f, err := Open(path, Options{})
+		if err != nil {
+			t.Fatal(err)
+		}
+		if err := change(path); err != nil {
+			t.Fatal(err)
+		}
+		if _, err := f.Read(0); !errors.Is(err, ErrChanged) {
+			t.Errorf("%s: read %v", name, err)
+		}
+		if _, err := f.Digest(0); !errors.Is(err, ErrChanged) {
+			t.Errorf("%s: digest %v", name, err)
+		}
+		f.Close()
+	}
+	path := save(t, data)
+	f := open(t, data, Options{})
+	if err := os.Remove(f.path); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := f.Read(0); err != nil { // what is open stays
+		t.Errorf("removed: %v", err)
+	}
+	closed, err := Open(path, Options{}) // as when a server goes away under an open file
+	if err != nil {
+		t.Fatal(err)
+	}
+	closed.Close()
+	var re *ReadError
+	if _, err := closed.Read(0); !errors.As(err, &re) || re.Hint == "" || !errors.Is(err, fs.ErrClosed) {
+		t.Errorf("gone: %v", err)
+	}
+}
+
+// Names of any bytes are opened, and told in one line.
+func TestNamesOfFiles(t *testing.T) {
+	for _, name := range []string{"a b.fits", "line\nbreak.fits", "caf\xe9.fits", "tab\t.fits", "'quoted\".fits", "-o.fits", "日本.fits"} {
+		path := filepath.Join(t.TempDir(), name)
+		if err := os.WriteFile(path, pixelTable(64), 0o644); err != nil {
+			t.Fatal(err)
+		}
+		f, err := Open(path, Options{})
+		if err != nil {
+			t.Errorf("%q: %v", name, err)
+			continue
+		}
+		if s := read(t, f, 0); s.SourceFile != path {
+			t.Errorf("%q became %q", path, s.SourceFile)
+		}
+		f.Close()
+		_, err = Open(path+"\n", Options{})
+		if err == nil || strings.Contains(err.Error(), "\n") {
+			t.Errorf("%q: %v", name, err)
+		}
 	}
 }
 

@@ -184,3 +184,33 @@ func TestDescribe(t *testing.T) {
 		t.Errorf("medium %q, first %q", d.Medium, d.First)
 	}
 }
+
+// FuzzParseLayout: any text is a layout or an error that names it, and a layout
+// reads any file or says why not.
+func FuzzParseLayout(f *testing.F) {
+	files, _ := filepath.Glob(filepath.Join("..", "configs", "layouts", "*.toml"))
+	for _, file := range files {
+		text, err := os.ReadFile(file)
+		if err != nil {
+			f.Fatal(err)
+		}
+		f.Add(text)
+	}
+	f.Add([]byte("[wavelength]\nhdu = 0\naxis = true\n[flux]\nhdu = 0\nplane = 1\n[resolution]\ntable = [[1.0, 2.0]]\n"))
+	var inputs [][]byte
+	for _, name := range []string{"pixels", "cells", "lines", "arms", "example", "rice"} {
+		inputs = append(inputs, samples()[name])
+	}
+	f.Fuzz(func(t *testing.T, text []byte) {
+		l, err := ParseLayout("fuzz", text)
+		if err != nil {
+			if !strings.Contains(err.Error(), "layout fuzz: ") {
+				t.Fatalf("%v", err)
+			}
+			return
+		}
+		for _, data := range inputs {
+			tryBytes(t, data, Options{MaxPixels: 1 << 16, MaxUnpacked: 1 << 22, Layouts: []Layout{l}, Force: "fuzz"})
+		}
+	})
+}

@@ -145,6 +145,9 @@ func (f *File) ReadAs(i int, who Identity) (s *spectrum.Spectrum, err error) {
 	}
 	f.settleMedium(s, g)
 	f.settleFrame(s, g)
+	if err := f.src.unchanged(); err != nil {
+		return nil, err
+	}
 	return s, nil
 }
 
@@ -236,6 +239,9 @@ func (f *File) hash() ([]byte, error) {
 	h := sha256.New()
 	if _, err := io.Copy(h, io.NewSectionReader(f.src, 0, f.src.size)); err != nil {
 		return nil, fault(err, -1, hintCopy, "it cannot be read: %v", err)
+	}
+	if err := f.src.unchanged(); err != nil {
+		return nil, err
 	}
 	return h.Sum(nil), nil
 }

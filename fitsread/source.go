@@ -7,13 +7,15 @@ import (
 	"io"
 	"io/fs"
 	"os"
+	"time"
 )
 
 // source is the file behind a File: on disk, or unpacked in memory.
 type source struct {
 	io.ReaderAt
 	size    int64
-	file    *os.File // nil when unpacked or given as bytes
+	file    *os.File  // nil when unpacked or given as bytes
+	written time.Time // when the file was last written to before it was opened
 	gzipped bool
 }
 
@@ -39,17 +41,36 @@ func openSource(path string, maxUnpacked int64) (*source, error) {
 		f.Close()
 		return nil, fault(ErrNotRegular, -1, "give a FITS file", "it changed into something else while it was opened")
 	}
-	src := &source{ReaderAt: f, size: info.Size(), file: f}
+	src := &source{ReaderAt: f, size: info.Size(), file: f, written: info.ModTime()}
 	var magic [2]byte
 	if n, _ := f.ReadAt(magic[:], 0); n == 2 && magic[0] == 0x1f && magic[1] == 0x8b {
 		data, err := unpack(f, maxUnpacked)
+		changed := src.unchanged()
 		f.Close()
+		if changed != nil {
+			return nil, changed
+		}
 		if err != nil {
 			return nil, err
 		}
 		return &source{ReaderAt: bytes.NewReader(data), size: int64(len(data)), gzipped: true}, nil
 	}
 	return src, nil
+}
+
+// unchanged returns an error when the file was written to since it was opened.
+func (s *source) unchanged() error {
+	if s.file == nil {
+		return nil
+	}
+	info, err := s.file.Stat()
+	switch {
+	case err != nil:
+		return fault(err, -1, "check the disk or the network", "it cannot be looked at any more: %v", err)
+	case info.Size() != s.size || !info.ModTime().Equal(s.written):
+		return fault(ErrChanged, -1, "process it again when it is complete", "it was written to while it was read")
+	}
+	return nil
 }
 
 func (s *source) close() error {
