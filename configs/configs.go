@@ -19,8 +19,8 @@ func Lines() []byte { return mustRead("lines.toml") }
 // Families returns the folder of template recipes, one TOML file a family.
 func Families() fs.FS { return mustSub("families") }
 
-// Layouts returns the folder of layout files that show how to describe an
-// input format.
+// Layouts returns the folder of layout files, one for every convention of
+// spectra that is known, and an example.
 func Layouts() fs.FS { return mustSub("layouts") }
 
 // mustRead panics when an embedded file is missing: the build is broken then.

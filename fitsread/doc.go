@@ -7,8 +7,9 @@
 //
 // # Order of trust
 //
-// The layout that Options.Force names; the layouts of the settings whose [match]
-// fits, in their order; then the built-in ones:
+// The layout that Options.Force names; the layouts of the settings that fit, in
+// their order: by [match], or without one by having all they name; then the
+// built-in ones:
 //
 //	ivoa-columns   table columns with IVOA Spectrum 1.2 utypes or UCDs
 //	named-columns  table columns named as wavelength, flux, error, ...
@@ -36,47 +37,16 @@
 // ends and pixels that flags of standard meaning call bad weigh zero; masks of
 // many bits do not count beside inverse variances, which mark bad pixels themselves.
 //
+// # Compressed images
+//
+// Lines of tile-compressed images (RICE_1, GZIP_1, GZIP_2, PLIO_1) are unpacked as
+// they are read, see tiles. Other methods and compressed tables are refused with
+// the command that unpacks them.
+//
 // # Layout files
 //
-// A layout is TOML. hdu is a number from 0 or an EXTNAME; line counts image
-// lines from 1 and is left out where every object has its own line.
-//
-//	rows = "spectra"            # or "orders": rows are segments of one spectrum
-//	[match]                     # when to use it without being asked; optional
-//	hdu = "NAME"
-//	columns = ["loglam"]        # must be in that HDU
-//	cards = { TELESCOP = "X" }  # in it or the first; "" for any value
-//	[wavelength]
-//	hdu = 1
-//	column = "loglam"           # or line = 1, or axis = true for the header's axis,
-//	                            # or start = "W0" and step = "DW": columns or cards
-//	unit = "Angstrom"           # Angstrom nm micron m Hz eV keV cm-1 ...
-//	scale = "log10"             # linear, log10 or ln
-//	medium = "vacuum"           # or air
-//	[flux]
-//	hdu = 1
-//	column = "flux"             # or line
-//	unit = "erg/s/cm2/Angstrom"
-//	[weight]
-//	hdu = 1
-//	column = "ivar"             # or line
-//	kind = "inverse_variance"   # or sigma or variance
-//	[mask]
-//	hdu = 1
-//	column = "flag"             # or line
-//	bad = "nonzero"             # or zero
-//	bits = 5                    # only these bits; optional
-//	[resolution]
-//	power = 2000.0              # one R, or hdu with column or line and
-//	kind = "fwhm"               # power, fwhm (Angstrom) or pixels (sigma)
-//	[frame]
-//	velocity = "barycentric"    # heliocentric geocentric topocentric rest
-//	[object]
-//	hdu = 0
-//	id = "TARGET"               # columns or cards
-//	ra = "RA"                   # degrees or hh:mm:ss
-//	dec = "DEC"
-//
-// For several arms, [[arm]] with name, and [arm.wavelength], [arm.flux] and so on
-// below it. The file configs/layouts/example.toml is a whole one.
+// A layout is TOML; docs/reading.md lists every key, configs/layouts has one for
+// every convention, and DraftLayout writes one for a file. hdu is a number from 0
+// or an EXTNAME; line counts image lines from 1 and is left out where every object
+// has its own line.
 package fitsread

@@ -21,16 +21,3 @@ func TestInstrumentSigma(t *testing.T) {
 		t.Error("want NaN where nothing is known")
 	}
 }
-
-// Redshift and the observer's motion multiply: facts of the trade's own example, z
-// = 0.1 seen by an observer who moves at 25 km/s, exact 0.1000917301, while adding
-// velocities gives 0.1000833910 (computed from the definition (1+z)(1+v/c)-1). A
-// line at 5000 Angstrom must come out with it; 1e-10 is the last printed digit.
-func TestVelocitiesMultiply(t *testing.T) {
-	const rest, z, v = 5000.0, 0.1, 25.0
-	s := &Spectrum{Frame: Topocentric, BaryVelocity: v, Segments: []Segment{{Wave: []float64{rest * (1 + z)}}}}
-	s.ToStandard()
-	if got := s.Segments[0].Wave[0]/rest - 1; math.Abs(got-0.1000917301) > 1e-10 {
-		t.Errorf("z = %.10f, want 0.1000917301", got)
-	}
-}
