@@ -1,0 +1,261 @@
+package absorbers
+
+import (
+	"fmt"
+	"math"
+	"math/rand/v2"
+	"os"
+	"testing"
+
+	"duskline/linelist"
+)
+
+func fullFinder(t testing.TB) *Finder {
+	t.Helper()
+	text, err := os.ReadFile("../configs/lines.toml")
+	if err != nil {
+		t.Fatal(err)
+	}
+	list, err := linelist.Parse(text)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return NewFinder(list)
+}
+
+func hydrogenOnly(systems []System) (out []System) {
+	for _, s := range systems {
+		if s.Kind == Hydrogen {
+			out = append(out, s)
+		}
+	}
+	return out
+}
+
+// tally of one cell of column and S/N.
+type tally struct {
+	n, found, false1 float64
+	sum, square      float64 // of log N found minus true
+	pull, pull2      float64
+}
+
+func (c *tally) add(d, err float64) {
+	c.found++
+	c.sum += d
+	c.square += d * d
+	c.pull += d / err
+	c.pull2 += d * d / (err * err)
+}
+
+func (c *tally) pullSD() float64 {
+	m := c.pull / c.found
+	return math.Sqrt(c.pull2/c.found - m*m)
+}
+
+// Damped systems of log N 19.5 to 21.7 in front of quasars of S/N 2 to 20 a
+// pixel, seven in ten with one system: what is found, what is made up, and how
+// right the columns and their errors are. DUSKLINE_LONG=1 takes 500 quasars
+// instead of 160.
+func TestSyntheticQuasars(t *testing.T) {
+	if testing.Short() {
+		t.Skip("simulation of some seconds")
+	}
+	quasars := 160
+	if os.Getenv("DUSKLINE_LONG") == "1" {
+		quasars = 500
+	}
+	f := fullFinder(t)
+	r := rand.New(rand.NewPCG(2031, 314))
+	var sc Scratch
+	cells := map[[2]int]*tally{}
+	cell := func(logN, sn float64) *tally {
+		k := [2]int{int(math.Floor((logN - 19.5) / 0.4)), 0}
+		if sn > 4 {
+			k[1] = 1
+		}
+		if sn > 9 {
+			k[1] = 2
+		}
+		if cells[k] == nil {
+			cells[k] = &tally{}
+		}
+		return cells[k]
+	}
+	var clear tally // log N above 20.3, S/N above 4
+	for i := range quasars {
+		sn := 2 * math.Pow(10, r.Float64())
+		var columns []float64
+		if i%10 < 7 {
+			columns = []float64{19.5 + 2.2*r.Float64()}
+		}
+		q := makeQuasar(r, sn, columns...)
+		systems := hydrogenOnly(f.Find(nil, []Arm{q.arm}, Options{Z: q.z}, &sc))
+		used := -1
+		for _, truth := range q.clouds {
+			cell(truth.logN, sn).n++
+			for k, s := range systems {
+				// Half the width of the narrowest of these lines.
+				if math.Abs(s.Z-truth.z)*c/(1+truth.z) < 800 {
+					used = k
+					cell(truth.logN, sn).add(s.LogN-truth.logN, s.LogErr)
+					if truth.logN > 20.3 && sn > 4 {
+						clear.add(s.LogN-truth.logN, s.LogErr)
+					}
+					break
+				}
+			}
+			if truth.logN > 20.3 && sn > 4 {
+				clear.n++
+			}
+		}
+		for k, s := range systems {
+			if k != used {
+				cell(s.LogN, sn).false1++
+				if s.LogN > 20.3 && sn > 4 {
+					clear.false1++
+				}
+			}
+		}
+	}
+	t.Log("log N | S/N 2-4 | 4-9 | 9-20: found of all (made up)")
+	for k := -1; k < 6; k++ {
+		line := fmt.Sprintf("%.1f-%.1f", 19.5+0.4*float64(k), 19.9+0.4*float64(k))
+		for b := range 3 {
+			v := cells[[2]int{k, b}]
+			if v == nil {
+				v = &tally{}
+			}
+			line += fmt.Sprintf(" | %2.0f of %2.0f (%.0f)", v.found, v.n, v.false1)
+		}
+		t.Log(line)
+	}
+	bias, sd := clear.sum/clear.found, clear.pullSD()
+	t.Logf("log N > 20.3, S/N > 4: %.0f of %.0f, %.0f made up, bias %.4f, pulls %.2f +- %.2f", clear.found, clear.n, clear.false1, bias,
+		clear.pull/clear.found, sd)
+	if clear.found < 0.95*clear.n {
+		t.Errorf("%.0f of %.0f found", clear.found, clear.n)
+	}
+	if clear.false1 > 0.05*clear.n {
+		t.Errorf("%.0f made up beside %.0f", clear.false1, clear.n)
+	}
+	if math.Abs(bias) > 0.05 {
+		t.Errorf("bias %.3f, want 0 +- 0.05", bias)
+	}
+	// With 45 systems the standard error of the deviation is 10 %.
+	if sd < 0.75 || sd > 1.3 {
+		t.Errorf("pulls %.2f, want 1 +- 0.3", sd)
+	}
+}
+
+// Two systems whose wings overlap are fitted together and both come out.
+func TestOverlap(t *testing.T) {
+	f := fullFinder(t)
+	var sc Scratch
+	seen := 0
+	for k := range uint64(12) {
+		r := rand.New(rand.NewPCG(5, k))
+		q := makeQuasar(r, 20)
+		zLow := q.z - 0.45
+		a, b := cloudTruth{zLow, 20.7, 30}, cloudTruth{zLow + 0.06, 20.5, 30} // 5,000 km/s apart
+		for i, w := range q.arm.Wave {
+			for _, x := range []cloudTruth{a, b} {
+				for l, line := range seriesForTests {
+					if l < 3 {
+						d := math.Exp(-line.OpticalDepth(math.Pow(10, x.logN), x.b, w/(1+x.z)))
+						q.arm.Flux[i] *= d
+					}
+				}
+			}
+			q.arm.Flux[i] += 0.02 * r.NormFloat64()
+			q.arm.Ivar[i] = 1 / (1/q.arm.Ivar[i] + 0.02*0.02)
+		}
+		systems := hydrogenOnly(f.Find(nil, []Arm{q.arm}, Options{Z: q.z}, &sc))
+		both := 0
+		for _, x := range []cloudTruth{a, b} {
+			for _, s := range systems {
+				if math.Abs(s.Z-x.z)*c/(1+x.z) < 400 && math.Abs(s.LogN-x.logN) < max(4*s.LogErr, 0.15) {
+					if s.Flags&Overlaps == 0 {
+						t.Errorf("system at %.4f is not marked as overlapping", s.Z)
+					}
+					both++
+				}
+			}
+		}
+		if both == 2 {
+			seen++
+		}
+	}
+	if seen < 11 {
+		t.Errorf("both systems found with the right columns in %d of 12", seen)
+	}
+}
+
+// Same input, same result whatever the scratch has seen; nothing at all in
+// spectra that have no forest, and no panic on bad ones.
+func TestFindDegenerate(t *testing.T) {
+	f := fullFinder(t)
+	q := makeQuasar(rand.New(rand.NewPCG(9, 9)), 10, 20.8)
+	fresh := f.Find(nil, []Arm{q.arm}, Options{Z: q.z}, nil)
+	var sc Scratch
+	other := makeQuasar(rand.New(rand.NewPCG(9, 10)), 10, 20.3, 21.2)
+	f.Find(nil, []Arm{other.arm}, Options{Z: other.z}, &sc)
+	used := f.Find(nil, []Arm{q.arm}, Options{Z: q.z}, &sc)
+	if fmt.Sprint(fresh) != fmt.Sprint(used) || len(hydrogenOnly(fresh)) == 0 {
+		t.Errorf("a used scratch changes the result:\n%v\n%v", fresh, used)
+	}
+	if n := testing.AllocsPerRun(5, func() { used = f.Find(used[:0], []Arm{q.arm}, Options{Z: q.z}, &sc) }); n > 40 {
+		t.Errorf("%v allocations a spectrum", n)
+	}
+	if got := hydrogenOnly(f.Find(nil, []Arm{q.arm}, Options{Z: 0.1}, &sc)); len(got) > 0 {
+		t.Errorf("hydrogen at a redshift where none is covered: %+v", got)
+	}
+	for name, spoil := range map[string]func(a *Arm){
+		"no weight": func(a *Arm) { clear(a.Ivar) },
+		"zero":      func(a *Arm) { clear(a.Flux) },
+		"negative": func(a *Arm) {
+			for i := range a.Flux {
+				a.Flux[i] = -1
+			}
+		},
+		"nan": func(a *Arm) {
+			for i := range a.Flux {
+				a.Flux[i] = math.NaN()
+			}
+		},
+		"huge": func(a *Arm) {
+			for i := range a.Flux {
+				a.Flux[i] *= 1e200
+				a.Ivar[i] *= 1e-200
+			}
+		},
+		"short": func(a *Arm) { a.Wave, a.Flux, a.Ivar = a.Wave[:3], a.Flux[:3], a.Ivar[:3] },
+		"empty": func(a *Arm) { *a = Arm{} },
+	} {
+		a := Arm{Wave: q.arm.Wave, Flux: append([]float64(nil), q.arm.Flux...), Ivar: append([]float64(nil), q.arm.Ivar...)}
+		spoil(&a)
+		for _, s := range f.Find(nil, []Arm{a}, Options{Z: q.z}, &sc) {
+			if math.IsInf(s.LogN, 0) || math.IsInf(s.EW, 0) || math.IsNaN(s.Z) {
+				t.Errorf("%s: %+v", name, s)
+			}
+		}
+	}
+	if got := f.Find(nil, nil, Options{Z: 3}, nil); len(got) > 0 {
+		t.Errorf("no arms: %+v", got)
+	}
+}
+
+func BenchmarkFind(b *testing.B) {
+	f := fullFinder(b)
+	for name, columns := range map[string][]float64{"none": nil, "one": {20.8}} {
+		b.Run(name, func(b *testing.B) {
+			q := makeQuasar(rand.New(rand.NewPCG(4, 4)), 10, columns...)
+			var sc Scratch
+			out := f.Find(nil, []Arm{q.arm}, Options{Z: q.z}, &sc)
+			b.ReportAllocs()
+			for b.Loop() {
+				out = f.Find(out[:0], []Arm{q.arm}, Options{Z: q.z}, &sc)
+			}
+			b.ReportMetric(float64(len(q.arm.Wave)), "pixels")
+		})
+	}
+}
