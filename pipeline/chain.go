@@ -93,7 +93,9 @@ func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 	if res.Verdict == redshift.None {
 		return Outcome{Object: obj}
 	}
-	b.measure(s, &res)
+	if !b.measure(s, &res) {
+		obj.Reason = strings.TrimPrefix(obj.Reason+"; no lines measured: too few usable pixels for their continuum", "; ")
+	}
 	if b.leansOnSky(&res) {
 		obj.Flags |= catalog.OnSkyLine
 	}
@@ -137,7 +139,7 @@ func (b *Bench) leansOnSky(res *redshift.Result) bool {
 // supports reports whether a line stands out in the winning model.
 func supports(res *redshift.Result, name string) bool {
 	for _, e := range res.Lines {
-		if e.Name == name && e.Model > 0 && e.SNR >= redshift.SeenSNR {
+		if e.Name == name && e.Seen {
 			return true
 		}
 	}
@@ -145,8 +147,9 @@ func supports(res *redshift.Result, name string) bool {
 }
 
 // measure fits the final continuum with the lines of the found redshift masked
-// and measures the lines on the spectrum's own pixels.
-func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) {
+// and measures the lines on the spectrum's own pixels. It reports false when no
+// continuum could be had.
+func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) bool {
 	g := &b.grid
 	b.x, b.ivar = resized(b.x, g.Len()), resized(b.ivar, g.Len())
 	copy(b.ivar, g.Ivar)
@@ -159,7 +162,7 @@ func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) {
 		// So much was masked that nothing holds the spline: lines and all.
 		copy(b.ivar, g.Ivar)
 		if b.fit.Fit(b.x, g.Flux, b.ivar, opt) != nil {
-			return
+			return false
 		}
 	}
 	b.fit.Errors()
@@ -188,7 +191,16 @@ func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) {
 		WidthGuess: math.Min(res.Width, maxWidthGuess), Sky: lines.SkyBands(),
 		WindowKms: b.chain.set.Lines.WindowKms, MinGood: b.chain.set.Lines.MinGood,
 	}, &b.measured)
+	return true
 }
+
+// What an assumption leaves open, km/s: half of what separates air and vacuum,
+// and the rms of the observer's velocity over the year and the sky (common
+// practice, no source).
+const (
+	mediumDoubt = 41
+	frameDoubt  = 17
+)
 
 // maxWidthGuess keeps the width of a line that is not seen, km/s, from that of
 // a quasar's broadest.
@@ -237,14 +249,25 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 		{res.FewPixels, catalog.FewPixels}, {res.Faint, catalog.Faint}, {res.Tied, catalog.Tied}, {res.RangeEnd, catalog.RangeEnd},
 		{res.LoneLine, catalog.LoneLine}, {res.Misfit, catalog.Misfit}, {res.Unseen, catalog.LinesUnseen},
 		{res.LinesMissing > 0, catalog.LinesMissing}, {res.BelowZero, catalog.BelowZero}, {res.Scattered, catalog.Scattered},
-		{s.Has(spectrum.MediumAssumed) || s.Has(spectrum.FrameAssumed) || s.Has(spectrum.FrameUncertain), catalog.FrameAssumed},
+		{s.Has(spectrum.MediumAssumed) || s.Has(spectrum.FrameAssumed) || s.Has(spectrum.FrameUncertain) ||
+			s.Frame == spectrum.RestFrame || s.Frame == spectrum.OtherFrame, catalog.FrameAssumed},
 		{s.Has(spectrum.NoiseEstimated), catalog.NoiseEstimated}, {s.Has(spectrum.WeightsSuspect), catalog.WeightsSuspect},
 	} {
 		if d.set {
 			o.Flags |= d.flag
 		}
 	}
+	// What was assumed may be wrong: the redshift is no better than that.
+	if s.Has(spectrum.MediumAssumed) {
+		o.RedshiftErr = math.Hypot(o.RedshiftErr, (1+o.Redshift)*mediumDoubt/spectrum.SpeedOfLight)
+	}
+	if s.Has(spectrum.FrameAssumed) || s.Has(spectrum.FrameUncertain) {
+		o.RedshiftErr = math.Hypot(o.RedshiftErr, (1+o.Redshift)*frameDoubt/spectrum.SpeedOfLight)
+	}
 	why := b.doubts(res)
+	if s.Frame == spectrum.RestFrame || s.Frame == spectrum.OtherFrame {
+		why = append(why, fmt.Sprintf("wavelengths are in the %s frame and were kept: the redshift is in that frame", s.Frame))
+	}
 	for _, w := range s.Warnings {
 		why = append(why, w.Text)
 	}
@@ -272,10 +295,10 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 	}
 	if res.Confidence < t.SecureConfidence && !res.Faint {
 		switch {
-		case math.IsNaN(res.RivalRedshift):
+		case !res.Tight:
 			why = append(why, "the templates explain little more than the continuum alone")
-		case res.Misfit:
-			why = append(why, fmt.Sprintf("too badly described to rule out %s at %.4f", res.RivalFamily, res.RivalRedshift))
+		case res.Misfit && !res.Tied:
+			why = append(why, fmt.Sprintf("chi2/dof of %.1f is too bad to rule out %s at %.4f", res.Chi2Dof, res.RivalFamily, res.RivalRedshift))
 		default:
 			why = append(why, fmt.Sprintf("%s at %.4f fits nearly as well", res.RivalFamily, res.RivalRedshift))
 		}

@@ -13,6 +13,9 @@ import (
 // no line at all, may come out secure. 100 of each kind: a rate of 3 percent
 // would be noticed with a probability of 95 percent.
 func TestCorrelatedNoiseIsNotSecure(t *testing.T) {
+	if testing.Short() {
+		t.Skip("statistics: long, and nothing runs at the same time")
+	}
 	finder, err := NewFinder(builtInFamilies(t), testStep, DefaultOptions())
 	if err != nil {
 		t.Fatal(err)

@@ -220,7 +220,10 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 		basis.Intervals *= 4
 	}
 	// Of the pixels left by the bands as many are independent as of all.
-	s.independent = math.Min(1, g.Independent/float64(res.PixelsUsed))
+	s.independent = 1
+	if g.Independent > 0 {
+		s.independent = math.Min(1, g.Independent/float64(res.PixelsUsed))
+	}
 	s.basis = basis
 	s.scaled = append(s.scaled[:0], l.resid...)
 	s.weight = append(s.weight[:0], l.weight...)

@@ -22,8 +22,12 @@ func TestJudge(t *testing.T) {
 		{"all is well", good, Secure, func(r *Result) []bool {
 			return []bool{!r.Tied, !r.Misfit, !r.Faint, !r.LoneLine, !r.Unseen}
 		}},
-		{"one line", with(func(r *Result) { r.LinesSeen = 1 }), Uncertain, func(r *Result) []bool { return []bool{r.LoneLine} }},
-		{"lines seen, but as many missing", with(func(r *Result) { r.LinesMissing = 4 }), Uncertain, nil},
+		{"one line", with(func(r *Result) { r.LinesSeen, r.InEmission = 1, true }), Uncertain, func(r *Result) []bool { return []bool{r.LoneLine} }},
+		{"one line in absorption, a large gap", with(func(r *Result) { r.LinesSeen = 1 }), Secure, func(r *Result) []bool { return []bool{r.LoneLine} }},
+		{"one line in absorption", with(func(r *Result) { r.LinesSeen, r.Gap = 1, 50 }), Uncertain, nil},
+		{"correlated pixels", with(func(r *Result) { r.Correlation, r.Gap = 3, 50 }), Uncertain, nil},
+		{"beyond description", with(func(r *Result) { r.Chi2Dof, r.Gap = 31, 1e6 }), Uncertain, func(r *Result) []bool { return []bool{r.Misfit} }},
+		{"lines seen, but as many missing", with(func(r *Result) { r.LinesMissing, r.InEmission = 4, true }), Uncertain, nil},
 		{"lines seen, some missing", with(func(r *Result) { r.LinesMissing = 3 }), Secure, nil},
 		{"a small gap", with(func(r *Result) { r.Gap = 8.9 }), Uncertain, func(r *Result) []bool { return []bool{r.Tied} }},
 		{"a gap in a misfit", with(func(r *Result) { r.Chi2Dof = 8; r.Gap = 100 }), Uncertain, func(r *Result) []bool { return []bool{r.Misfit, !r.Tied} }},

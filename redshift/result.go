@@ -51,6 +51,7 @@ type LineEvidence struct {
 	Width  float64 // Gaussian sigma of the template, km/s
 	SNR    float64 // matched-filter signal-to-noise with the rest of the model taken out
 	Model  float64 // the same as the model predicts
+	Seen   bool    // stands out by itself
 	Offset float64 // km/s against the redshift, NaN when not significant
 	Err    float64 // km/s
 }
@@ -146,8 +147,9 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 		e.Model /= math.Sqrt(res.Correlation)
 		e.Err *= math.Sqrt(res.Correlation)
 		e.Wave = math.Pow(10, t.logWave+p.shift)
+		e.Seen = t.amp > 0 && e.SNR >= SeenSNR && e.SNR > 0.3*e.Model
 		res.Lines = append(res.Lines, e)
-		if t.amp > 0 && e.SNR >= SeenSNR && e.SNR > 0.3*e.Model {
+		if e.Seen {
 			s.features = append(s.features, feature{(t.logWave + p.shift - l.start) / l.step, sigma})
 			res.InEmission = res.InEmission || !t.absorption
 		}

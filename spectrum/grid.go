@@ -72,6 +72,9 @@ func (gr *Gridder) Grid(g *Grid, s *Spectrum) {
 	lo, hi := math.Inf(1), math.Inf(-1)
 	for k := range s.Segments {
 		seg := &s.Segments[k]
+		if n := seg.Len(); n > 0 && (seg.Wave[0] < gr.MinWave || seg.Wave[n-1] > gr.MaxWave) {
+			s.Warn(CoverageCut, "wavelengths outside %g to %g Angstrom are not used", gr.MinWave, gr.MaxWave)
+		}
 		i, j := gr.span(seg)
 		if i < j {
 			lo = math.Min(lo, math.Log10(seg.Wave[i]))
