@@ -166,6 +166,7 @@ type Object struct {
 
 	Reason      string // why there is no answer, and what had to be assumed
 	InputDigest string // of the bytes that the spectrum was read from
+	FluxUnit    string // of the input, may be empty
 }
 
 // Line is one row of the line table: one line of one object. Numbers that are
@@ -188,4 +189,5 @@ type Line struct {
 
 	Blend  string // group of lines fitted together, empty for a line alone
 	Pixels int32
+	Reason string // words of package lines joined by "|"; empty when there is nothing to say
 }

@@ -227,9 +227,9 @@ func TestColumnOrder(t *testing.T) {
 	}
 	const objects = "object_id source_file source_row ra dec class family redshift redshift_err confidence verdict flags flag_names " +
 		"rival_redshift rival_family gap r_stat lines_seen snr pixels_used wave_min wave_max chi2_dof velocity_frame bary_velocity " +
-		"reason input_digest"
+		"reason input_digest flux_unit"
 	const lines = "object_id line rest_wave kind ew_rest ew_rest_err ew_sum ew_sum_err flux flux_err offset_kms offset_err width_kms " +
-		"width_err snr continuum upper_limit blend pixels"
+		"width_err snr continuum upper_limit blend pixels reason"
 	if got := names(ObjectColumns()); got != objects {
 		t.Errorf("object columns: %s", got)
 	}
@@ -256,11 +256,11 @@ func TestColumnsCoverFields(t *testing.T) {
 	for _, c := range objectColumns() {
 		fields = append(fields, c.field(&o))
 	}
-	check("Object", fields, 26) // 27 columns, flags and flag_names share a field
+	check("Object", fields, 27) // 28 columns, flags and flag_names share a field
 	var l Line
 	fields = nil
 	for _, c := range lineColumns() {
 		fields = append(fields, c.field(&l))
 	}
-	check("Line", fields, 19)
+	check("Line", fields, 20)
 }

@@ -35,7 +35,7 @@ func objectColumns() []column[Object] {
 			func(o *O) any { return &o.RivalRedshift }},
 		{Column{Name: "rival_family", UCD: "meta.code.class", Description: "template family of the rival"},
 			func(o *O) any { return &o.RivalFamily }},
-		{Column{Name: "gap", UCD: "stat.likelihood", Display: "F12.3", Description: "score of the best rival minus the best score"},
+		{Column{Name: "gap", UCD: "stat.likelihood", Display: "F12.3", Description: "score of the best rival, or of no template, less the best"},
 			func(o *O) any { return &o.Gap }},
 		{Column{Name: "r_stat", UCD: "stat.correlation", Display: "F10.3", Description: "Tonry & Davis (1979) r of the best peak"},
 			func(o *O) any { return &o.RStat }},
@@ -59,6 +59,8 @@ func objectColumns() []column[Object] {
 			func(o *O) any { return &o.Reason }},
 		{Column{Name: "input_digest", UCD: "meta.version;meta.file", Description: "digest of the bytes the spectrum was read from"},
 			func(o *O) any { return &o.InputDigest }},
+		{Column{Name: "flux_unit", UCD: "meta.unit", Description: "flux unit of the input, which line fluxes and continua keep"},
+			func(o *O) any { return &o.FluxUnit }},
 	}
 }
 
@@ -103,5 +105,7 @@ func lineColumns() []column[Line] {
 			func(l *L) any { return &l.Blend }},
 		{Column{Name: "pixels", UCD: "meta.number", Description: "usable pixels in the window of the line"},
 			func(l *L) any { return &l.Pixels }},
+		{Column{Name: "reason", UCD: "meta.note", Description: "why it was not measured, and what to look at before use"},
+			func(l *L) any { return &l.Reason }},
 	}
 }

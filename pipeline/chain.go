@@ -5,6 +5,7 @@ import (
 	"math"
 	"strings"
 
+	"duskline/absorbers"
 	"duskline/catalog"
 	"duskline/configs"
 	"duskline/continuum"
@@ -22,6 +23,7 @@ type Chain struct {
 	list       *linelist.List
 	finder     *redshift.Finder
 	meter      *lines.Meter
+	absorbers  *absorbers.Finder
 	thresholds redshift.Thresholds
 	digests    map[string]string
 }
@@ -33,7 +35,7 @@ func NewChain(set Settings, recipes ...RecipeText) (*Chain, error) {
 	if err != nil {
 		return nil, err
 	}
-	c := &Chain{set: set, list: list, meter: lines.NewMeter(list), digests: map[string]string{"lines": list.Digest()}}
+	c := &Chain{set: set, list: list, meter: lines.NewMeter(list), absorbers: absorbers.NewFinder(list), digests: map[string]string{"lines": list.Digest()}}
 	tried, err := templates(list, recipes)
 	if err != nil {
 		return nil, err
@@ -74,6 +76,7 @@ type Bench struct {
 	scratch  *redshift.Scratch
 	fit      continuum.Fitter
 	measured lines.Scratch
+	sight    sightline
 	x, ivar  []float64
 	arms     []lines.Arm
 	results  []lines.Result
@@ -99,7 +102,7 @@ func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 	if b.leansOnSky(&res) {
 		obj.Flags |= catalog.OnSkyLine
 	}
-	return Outcome{Object: obj, Lines: lineRows(b.results)}
+	return Outcome{Object: obj, Lines: lineRows(b.results), Absorbers: b.absorb(&res)}
 }
 
 // lay brings a spectrum to the standard frame and onto the grid.
@@ -234,7 +237,7 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 		Confidence: res.Confidence, Verdict: res.Verdict.String(), RivalRedshift: res.RivalRedshift, RivalFamily: res.RivalFamily,
 		Gap: res.Gap, RStat: res.RStat, LinesSeen: int32(res.LinesSeen), SNR: res.SNR, PixelsUsed: int32(res.PixelsUsed),
 		WaveMin: math.NaN(), WaveMax: math.NaN(), Chi2Dof: res.Chi2Dof,
-		VelocityFrame: s.Frame.String(), BaryVelocity: s.BaryVelocity,
+		VelocityFrame: s.Frame.String(), BaryVelocity: s.BaryVelocity, FluxUnit: s.FluxUnit,
 	}
 	if res.Class != "" && res.Verdict != redshift.None {
 		o.Class = res.Class
@@ -319,10 +322,21 @@ func lineRows(results []lines.Result) []catalog.Line {
 		rows[i] = catalog.Line{
 			Line: r.Name, RestWave: r.RestWave, Kind: r.Kind, EWRest: r.EWRest, EWRestErr: r.EWRestErr, EWSum: r.EWSum, EWSumErr: r.EWSumErr,
 			Flux: r.Flux, FluxErr: r.FluxErr, OffsetKms: r.OffsetKms, OffsetErr: r.OffsetErr, WidthKms: r.WidthKms, WidthErr: r.WidthErr,
-			SNR: r.SNR, Continuum: r.Continuum, UpperLimit: r.UpperLimit, Blend: r.Blend, Pixels: int32(r.Pixels),
+			SNR: r.SNR, Continuum: r.Continuum, UpperLimit: r.UpperLimit, Blend: r.Blend, Pixels: int32(r.Pixels), Reason: lineReason(&r),
 		}
 	}
 	return rows
+}
+
+// lineReason joins what there is to say about a line.
+func lineReason(r *lines.Result) string {
+	switch {
+	case !r.OnSky:
+		return r.Reason
+	case r.Reason == "":
+		return "on_sky"
+	}
+	return r.Reason + "|on_sky"
 }
 
 func resized(s []float64, n int) []float64 {
