@@ -20,6 +20,7 @@ const (
 	exitFailed      = 1   // could not go on, or internal errors spoiled rows
 	exitUsage       = 2   // command or settings wrong
 	exitUnreadable  = 3   // finished, some inputs were unreadable
+	exitChanged     = 4   // compare: more changed than allowed
 	exitInterrupted = 130 // can be resumed
 )
 
@@ -43,6 +44,7 @@ func theChain(set pipeline.Settings, recipes []pipeline.RecipeText) (pipeline.Pr
 type grammar struct {
 	Run       runCmd       `cmd:"" help:"Process spectra into a catalog; the same command goes on after an interruption."`
 	Gather    gatherCmd    `cmd:"" help:"Join the blocks of a run that was shared among machines into its catalogs."`
+	Compare   compareCmd   `cmd:"" help:"Say what changed between the catalogs of two runs, and why."`
 	Demo      demoCmd      `cmd:"" help:"Make a synthetic night of known truth, process it and count what came out right."`
 	Peek      peekCmd      `cmd:"" help:"Show how one file is read, what was assumed, and the answer."`
 	Templates templatesCmd `cmd:"" help:"List, show, check and stack the template families that redshifts are found with."`
@@ -57,7 +59,7 @@ Examples:
   duskline run --out RUN night/          process a folder
   duskline run --out RUN                 go on after an interruption
 
-Exit codes: 0 all objects processed, 3 finished but some inputs were unreadable, 2 the command or its settings are wrong, 1 the run could not go on or internal errors spoiled some rows, 130 interrupted (the same command goes on).`
+Exit codes: 0 all objects processed, 3 finished but some inputs were unreadable, 2 the command or its settings are wrong, 1 the run could not go on or internal errors spoiled some rows, 4 compare found more changes than allowed, 130 interrupted (the same command goes on).`
 
 // command is what each subcommand does; the code is the exit code where there
 // is no error.

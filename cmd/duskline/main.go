@@ -9,7 +9,7 @@
 // Exit codes: 0 all objects processed (rows may be flagged); 3 finished, but
 // some inputs were unreadable; 2 the command or its settings are wrong; 1 the
 // run could not go on, or it finished and an internal error spoiled some rows;
-// 130 interrupted, the same command goes on.
+// 4 compare found more changes than allowed; 130 interrupted, the same command goes on.
 package main
 
 import (
