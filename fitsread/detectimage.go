@@ -222,7 +222,7 @@ func (f *File) imageAxis(h *hdu) (axis, bool, error) {
 		if ok && err == nil && ax.code != "" {
 			return ax, true, nil
 		}
-		if len(h.axes) == 2 && h.axes[1] > 1 {
+		if len(h.axes) > 1 && h.axes[1] > 1 && h.lines() == h.axes[1] {
 			if second, ok2, err := readAxis(hd, h.first+1); ok2 && err == nil && second.code != "" {
 				h.turned = true
 				return second, true, nil
@@ -241,7 +241,7 @@ func (f *File) imageAxis(h *hdu) (axis, bool, error) {
 // cubeAxis returns the number of a spectral axis beyond the second, 0 for none.
 func cubeAxis(h *hdu) int {
 	for n := h.first + 2; n < h.first+len(h.axes); n++ {
-		if ax, ok, _ := readAxis(h.header, n); ok && ax.code != "" {
+		if ax, ok, _ := readAxis(h.header, n); ok && ax.code != "" && h.axes[n-h.first] > 1 {
 			return n
 		}
 	}

@@ -206,3 +206,17 @@ func TestGzip(t *testing.T) {
 		t.Errorf("cut: %v", err)
 	}
 }
+
+// An axis of one object at the end of a cube of kernels is still one of objects.
+func TestKernelOfOneObject(t *testing.T) {
+	n := 64
+	s := first(t, join(empty(), image(false, -64, []int{n}, ramp(n, 3600, 0.8), kv("EXTNAME", "B_WAVELENGTH")),
+		image(false, -32, []int{n, 1}, noisy(n, 1), kv("EXTNAME", "B_FLUX")), image(false, -32, []int{n, 1}, constant(n, 1), kv("EXTNAME", "B_IVAR")),
+		image(false, -32, []int{n, 3, 1}, stack(constant(n, 1), constant(n, 2), constant(n, 1)), kv("EXTNAME", "B_RESOLUTION"))))
+	// The kernel 1 2 1 has variance 1/2.
+	seg := &s.Segments[0]
+	if len(seg.Resolution) != n {
+		t.Fatal("no resolution")
+	}
+	near(t, "R", seg.Resolution[0], seg.Wave[0]/(sigmaToFWHM*math.Sqrt(0.5)*0.8), 1e-12)
+}

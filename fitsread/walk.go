@@ -28,7 +28,7 @@ type hdu struct {
 	name    string // EXTNAME
 	header  header
 	bitpix  int
-	axes    []int64 // NAXISn; of images without leading and trailing axes of one pixel
+	axes    []int64 // NAXISn, without those of one pixel before the only longer one of an image
 	first   int     // number of the axis in the header that axes[0] is, from 1
 	turned  bool    // the image's lines run along its second axis
 	offset  int64   // of the data
@@ -68,28 +68,19 @@ func (h *hdu) lines() int64 {
 	return n
 }
 
-// dropThinAxes takes away axes of one pixel at both ends: a spectrum is often
-// written along the third axis of a cube of 1 x 1 x n pixels.
+// dropThinAxes takes away axes of one pixel before the only longer one: a spectrum
+// is often written along the third axis of a cube of 1 x 1 x n pixels.
 func (h *hdu) dropThinAxes() {
 	h.first = 1
-	if h.kind != kindImage {
-		return
-	}
 	long := 0
 	for _, a := range h.axes {
 		if a != 1 {
 			long++
 		}
 	}
-	if long == 0 {
-		return
-	}
-	for len(h.axes) > 1 && h.axes[0] == 1 && long == 1 {
+	for h.kind == kindImage && long == 1 && h.axes[0] == 1 {
 		h.axes = h.axes[1:]
 		h.first++
-	}
-	for len(h.axes) > 1 && h.axes[len(h.axes)-1] == 1 {
-		h.axes = h.axes[:len(h.axes)-1]
 	}
 }
 
