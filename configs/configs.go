@@ -16,6 +16,9 @@ func Default() []byte { return mustRead("default.toml") }
 // Lines returns lines.toml, the line list.
 func Lines() []byte { return mustRead("lines.toml") }
 
+// Indices returns indices.toml, definitions of indices between fixed bands.
+func Indices() []byte { return mustRead("indices.toml") }
+
 // Families returns the folder of template recipes, one TOML file a family.
 func Families() fs.FS { return mustSub("families") }
 
