@@ -8,10 +8,11 @@ import (
 	"duskline/spectrum"
 )
 
-// find finds the redshift of the spectrum on the grid, within its limits. What
-// fits better outside them is said in beyond.
+// find finds the redshift of the spectrum on the grid, with templates as wide as
+// its instrument makes lines, within its limits. What fits better outside them is
+// said in beyond.
 func (b *Bench) find(s *spectrum.Spectrum) (res redshift.Result, beyond string) {
-	finder := b.chain.finder
+	finder := b.chain.finder.Resolved(s.InstrumentSigma(b.middle()))
 	if s.Limits == nil {
 		return finder.Find(&b.grid, b.scratch), ""
 	}
@@ -31,6 +32,16 @@ func (b *Bench) find(s *spectrum.Spectrum) (res redshift.Result, beyond string) 
 	}
 	return res, fmt.Sprintf("%s; outside them %s at z = %.5f (%s) lowers chi2 by %.0f more", beyond,
 		free.Class, free.Redshift, free.Verdict, free.Drop-math.Max(0, res.Drop))
+}
+
+// middle returns the wavelength in the middle of the grid's pixels with weight, NaN
+// for none.
+func (b *Bench) middle() float64 {
+	n, first, last := b.grid.Good()
+	if n == 0 {
+		return math.NaN()
+	}
+	return math.Pow(10, 0.5*(b.grid.LogWave(first)+b.grid.LogWave(last)))
 }
 
 // leastBeyond is by how much more an answer outside the limits must lower chi^2
