@@ -89,7 +89,7 @@ func (f *File) identify(g *group, i, row int64) string {
 		}
 	}
 	stem := filepath.Base(f.path)
-	stem = strings.TrimSuffix(stem, ".gz")
+	stem = strings.TrimSuffix(strings.TrimSuffix(stem, ".gz"), ".fz")
 	if ext := filepath.Ext(stem); strings.EqualFold(ext, ".fits") || strings.EqualFold(ext, ".fit") || strings.EqualFold(ext, ".fts") {
 		stem = strings.TrimSuffix(stem, ext)
 	}

@@ -78,7 +78,7 @@ func (e *Error) Error() string { return strings.Join(e.Problems, "\n") }
 //
 // The file of an entry joins by name: a bare name fits a file of that name in any
 // folder, one with folders fits a path that ends in them, one that begins with /
-// is the whole path. ".gz" does not count. Of several that fit the longest wins,
+// is the whole path. ".gz" and ".fz" do not count. Of several that fit the longest wins,
 // and of those an entry for the row before one for all rows. Entries without file
 // join by object_id, where no entry names the file.
 func (m *Manifest) Find(filePath string, row int, id string) int {
@@ -114,8 +114,10 @@ func endsIn(full, file string) bool {
 
 func cleanFile(name string) string {
 	name = path.Clean(strings.TrimSpace(name))
-	if n := len(name) - len(".gz"); n > 0 && strings.EqualFold(name[n:], ".gz") {
-		name = name[:n]
+	for _, packed := range []string{".gz", ".fz"} {
+		if n := len(name) - len(packed); n > 0 && strings.EqualFold(name[n:], packed) {
+			name = name[:n]
+		}
 	}
 	return name
 }

@@ -59,6 +59,7 @@ func TestFind(t *testing.T) {
 		{"/more/data/a.fits", 0, "", 0},
 		{"b.fits", 7, "", 4},
 		{"night/b.fits.gz", 0, "", 4},
+		{"night/b.fits.fz", 0, "", 4},
 		{"other.fits", 0, "LR 9", 5},
 		{"other.fits", 0, "", -1},
 		{"aa.fits", 0, "", -1},

@@ -33,7 +33,7 @@ type finder struct {
 //
 //   - a file, taken whatever its name is;
 //   - a folder, walked recursively in order of names; it yields what is called
-//     *.fits, *.fit or *.fts, with or without .gz, in capitals or not; hidden
+//     *.fits, *.fit or *.fts, with or without .gz or .fz, in capitals or not; hidden
 //     names and finished runs are passed over, links are followed once;
 //   - a pattern with *, ? or [ that no file is named after, in order of names;
 //   - @list, a text file with one file or folder a line; empty lines and lines
@@ -228,7 +228,7 @@ func (f *finder) follow(ctx context.Context, path string) error {
 
 // isSpectrumName reports whether a file of a folder is taken for FITS.
 func isSpectrumName(name string) bool {
-	name = strings.TrimSuffix(strings.ToLower(name), ".gz")
+	name = strings.TrimSuffix(strings.TrimSuffix(strings.ToLower(name), ".gz"), ".fz")
 	switch filepath.Ext(name) {
 	case ".fits", ".fit", ".fts":
 		return true

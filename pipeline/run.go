@@ -378,7 +378,7 @@ func (r *Run) makePlan(ctx context.Context, head planHead) error {
 		return err
 	}
 	if totals.Objects == 0 {
-		return inputError("no FITS file (*.fits, *.fit, *.fts, also with .gz) in %s; give another PATH", strings.Join(r.job.Paths, ", "))
+		return inputError("no FITS file (*.fits, *.fit, *.fts, also with .gz or .fz) in %s; give another PATH", strings.Join(r.job.Paths, ", "))
 	}
 	r.warnManifest(used)
 	return r.linkPlan(ctx, tmp, head)

@@ -220,7 +220,7 @@ func readFault(err error, path string) *fault {
 // fallbackID names an object whose file does not.
 func fallbackID(in *planInput, row int) string {
 	name := filepath.Base(in.Path)
-	for _, suffix := range []string{".gz", ".fits", ".fit", ".fts"} {
+	for _, suffix := range []string{".gz", ".fz", ".fits", ".fit", ".fts"} {
 		if len(name) > len(suffix) && strings.EqualFold(name[len(name)-len(suffix):], suffix) {
 			name = name[:len(name)-len(suffix)]
 		}
