@@ -1,6 +1,7 @@
 package main
 
 import (
+	"duskline/catalog"
 	"fmt"
 	"math"
 	"slices"
@@ -35,7 +36,11 @@ const (
 // newPicture lays out the last object of a bench.
 func newPicture(s *spectrum.Spectrum, out *pipeline.Outcome, v pipeline.View) *picture {
 	n := len(v.LogWave)
-	p := &picture{title: title(&out.Object), redshift: out.Object.Redshift, marks: pipeline.Marks(out),
+	redshift := out.Object.Redshift
+	if out.Object.Verdict == catalog.None {
+		redshift = math.NaN() // a guess has no rest frame
+	}
+	p := &picture{title: title(&out.Object), redshift: redshift, marks: pipeline.Marks(out),
 		wave: make([]float64, n), flux: make([]float64, n), sigma: make([]float64, n), continuum: make([]float64, n)}
 	if len(p.marks) > maxMarks {
 		strongest := slices.Clone(p.marks)

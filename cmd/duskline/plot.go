@@ -254,8 +254,9 @@ func (r restAxis) Plot(c draw.Canvas, p *plot.Plot) {
 		c.StrokeLine2(line, x, c.Max.Y, x, c.Max.Y+tickLength)
 		c.FillText(style, vg.Point{X: x, Y: c.Max.Y + tickLength + 1}, t.Label)
 	}
-	style.XAlign = draw.XRight
-	c.FillText(style, vg.Point{X: c.Min.X - 18, Y: c.Max.Y + tickLength + 1}, "rest [Å]")
+	// At the left edge of the picture, where no tick label reaches.
+	style.XAlign = draw.XLeft
+	c.FillText(style, vg.Point{X: 4, Y: c.Max.Y + tickLength + 1}, "rest [Å]")
 }
 
 // evenTicks places about n labeled ticks at steps of 1, 2 or 5 times a power of
