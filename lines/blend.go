@@ -188,17 +188,27 @@ func (s *Scratch) build(main int) {
 	s.assignAmplitudes()
 	for k := range q.ties {
 		e := &q.ties[k]
-		e.pv, e.ps = -1, -1
+		e.pv, e.ps, e.pa, e.pb = -1, -1, -1, -1
 		if e.own {
 			e.pv, e.ps = q.n, q.n+1
 			q.n += 2
+			if s.opt.Profile != Gaussian && math.Abs(e.snr) >= shapeFrom {
+				e.pa = q.n
+				q.n++
+				if s.opt.Profile == Hermite {
+					e.pb = q.n
+					q.n++
+				}
+			}
 		}
 	}
 	for k := range q.ties {
 		if e := &q.ties[k]; !e.own && !e.borrowed && main >= 0 {
-			e.pv, e.ps = q.ties[main].pv, q.ties[main].ps
+			m := &q.ties[main]
+			e.pv, e.ps, e.pa, e.pb = m.pv, m.ps, m.pa, m.pb
 		}
 	}
+	q.profileAs = s.opt.Profile
 	s.layWindows()
 	q.act = q.act[:0]
 	for i := range q.windows {
@@ -219,6 +229,7 @@ func (s *Scratch) build(main int) {
 					q.act = appendNew(q.act, w.act0, c.amp)
 				} else {
 					q.act = appendNew(appendNew(q.act, w.act0, e.pv), w.act0, e.ps)
+					q.act = appendNew(appendNew(q.act, w.act0, e.pa), w.act0, e.pb)
 				}
 			}
 			if !kin {
@@ -233,6 +244,13 @@ func (s *Scratch) build(main int) {
 		if e.own {
 			s.lm.p[e.pv], s.lm.lo[e.pv], s.lm.hi[e.pv] = e.v, -e.vmax, e.vmax
 			s.lm.p[e.ps], s.lm.lo[e.ps], s.lm.hi[e.ps] = e.s, e.smin, e.smax
+			switch {
+			case e.pb >= 0:
+				s.lm.p[e.pa], s.lm.lo[e.pa], s.lm.hi[e.pa] = e.a, -hermiteMost, hermiteMost
+				s.lm.p[e.pb], s.lm.lo[e.pb], s.lm.hi[e.pb] = e.b, -hermiteMost, hermiteMost
+			case e.pa >= 0:
+				s.lm.p[e.pa], s.lm.lo[e.pa], s.lm.hi[e.pa] = max(e.a, 0.2*e.s), 0, 5*e.smax
+			}
 		}
 	}
 	for i := range q.windows {

@@ -258,12 +258,21 @@ func TestScratch(t *testing.T) {
 func same(a, b Result) bool {
 	x, y := reflect.ValueOf(a), reflect.ValueOf(b)
 	for i := range x.NumField() {
-		if x.Field(i).Kind() == reflect.Float64 {
+		switch x.Field(i).Kind() {
+		case reflect.Array:
+			for k := range x.Field(i).Len() {
+				if math.Float64bits(x.Field(i).Index(k).Float()) != math.Float64bits(y.Field(i).Index(k).Float()) {
+					return false
+				}
+			}
+		case reflect.Float64:
 			if math.Float64bits(x.Field(i).Float()) != math.Float64bits(y.Field(i).Float()) {
 				return false
 			}
-		} else if !x.Field(i).Equal(y.Field(i)) {
-			return false
+		default:
+			if !x.Field(i).Equal(y.Field(i)) {
+				return false
+			}
 		}
 	}
 	return true

@@ -58,8 +58,11 @@ type Result struct {
 	// observed. WidthErr is the step to its upper 1-sigma bound, NaN when the
 	// width was taken over from a stronger line or from Options.
 	WidthKms, WidthErr float64
-	SNR                float64 // |Flux| / FluxErr
-	Continuum          float64 // at the line, with the local straight line
+	// Shape has h3 and h4 of a Hermite profile, or the Lorentzian half width
+	// in km/s of a Voigt profile; NaN for Gaussians.
+	Shape, ShapeErr [2]float64
+	SNR             float64 // |Flux| / FluxErr
+	Continuum       float64 // at the line, with the local straight line
 	// UpperLimit is |EWRest| + 3 EWRestErr of a limit: the true |W| is below
 	// it with a probability of at least 99.7 % for a line of the width given.
 	UpperLimit float64
@@ -94,6 +97,9 @@ type Options struct {
 	// noise of a pixel. A negative value means that the continuum is right
 	// within ContErr; with ContErr nil it is then held fixed.
 	ContinuumSlack float64
+
+	// Profile is the form of lines that stand out: Gaussian unless asked for.
+	Profile Profile
 
 	Sky []Band // wavelengths to be noted in Result.OnSky; see SkyBands
 }

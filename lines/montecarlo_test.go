@@ -8,9 +8,9 @@ import (
 )
 
 // trials of each cell. The standard error of a pull's standard deviation is
-// 1/sqrt(2 trials) = 1.6 %, that of its mean 2.2 %, that of the share within
-// one sigma 1.0 %. Seeds are fixed.
-const trials = 2000
+// 1/sqrt(2 trials) = 2.0 %, that of its mean 2.9 %, that of the share within
+// one sigma 1.3 %. Seeds are fixed.
+const trials = 1200
 
 const pair = `
 [[line]]
@@ -154,7 +154,7 @@ func cells() []cell {
 type bounds struct{ low, high, mean, share float64 }
 
 // bounds returns the requirement for a line of that significance: 0.9 to 1.1,
-// six standard errors away, a mean that allows for the bias of second order in
+// five standard errors away, a mean that allows for the bias of second order in
 // noise/signal, and three and a half standard errors of the share. Below 10
 // sigma the errors of a fit with free offset and width are no longer Gaussian:
 // loose bounds. The mean over the posterior of two lines nearer than 2 sigma is
@@ -169,7 +169,7 @@ func (k cell) bounds(significance float64) bounds {
 	case tight:
 		return bounds{0.87, 1.1, 0.28, 0.08}
 	}
-	return bounds{0.9, 1.1, 0.13, 0.037}
+	return bounds{0.9, 1.1, 0.15, 0.046}
 }
 
 // checkPull fails when pulls have not mean 0, standard deviation 1 and a share

@@ -22,6 +22,7 @@ type problem struct {
 	comps      []component
 	dsig       []float64 // instrument's variance against the tie's, per component and arm, (km/s)^2
 	narms      int
+	profileAs  Profile
 	ties       []tie
 	n          int
 	act        []int // lists of active parameters of the windows
@@ -68,6 +69,8 @@ type tie struct {
 	settled  bool    // was freed or bound after a fit, not to be changed again
 	borrowed bool    // offset and width come from outside the blend and are held
 	pv, ps   int     // parameters: its own, or the main tie's
+	pa, pb   int     // parameters of the shape, likewise; -1: none
+	a, b     float64 // their values
 	vmax     float64
 	vprior   float64 // standard error of the offset known beforehand, 0: none
 	smin     float64
@@ -178,9 +181,9 @@ func (q *problem) place(ci, arm int, p []float64) (mu, sigma, dsigma float64) {
 // profile adds one component to the Jacobian of a window.
 func (q *problem) profile(ci int, win *window, p []float64, act []int) {
 	mu, sigma, dsigma := q.place(ci, win.arm, p)
-	lo, hi := q.reach(win, mu, sigma)
 	c := &q.comps[ci]
 	t := &q.ties[c.tie]
+	lo, hi := q.reach(win, mu, t.far(p, c.lam0, sigma)/profileReach)
 	ka := find(act, c.amp)
 	if lo >= hi || ka < 0 {
 		return
@@ -195,20 +198,39 @@ func (q *problem) profile(ci int, win *window, p []float64, act []int) {
 		q.spans[kv].cover(lo-win.lo, hi-win.lo)
 		q.spans[ks].cover(lo-win.lo, hi-win.lo)
 	}
+	var colA, colB []float64
+	if k := find(act, t.pa); k >= 0 {
+		colA = q.cols[k*np : k*np+np]
+		q.spans[k].cover(lo-win.lo, hi-win.lo)
+	}
+	if k := find(act, t.pb); k >= 0 {
+		colB = q.cols[k*np : k*np+np]
+		q.spans[k].cover(lo-win.lo, hi-win.lo)
+	}
 	flux := c.share * p[c.amp]
 	scaleV := flux * c.lam0 / spectrum.SpeedOfLight
 	scaleS := flux * dsigma
-	g := newGauss(mu, sigma, q.width[lo])
+	scaleA := flux
+	if t.pb < 0 {
+		scaleA = scaleV
+	}
+	g := q.shapeOf(t, p, c.lam0, mu, sigma, q.width[lo])
 	for i := lo; i < hi; i++ {
 		if d := q.width[i]; math.Abs(d-g.d) > 0.02*g.d {
-			g = newGauss(mu, sigma, d)
+			g = q.shapeOf(t, p, c.lam0, mu, sigma, d)
 		}
-		v, dmu, ds := g.at(q.lam[i])
+		v, dmu, ds, da, db := g.full(q.lam[i])
 		j := i - win.lo
 		amp[j] += c.share * v
 		if kv >= 0 {
 			colV[j] += dmu * scaleV
 			colS[j] += ds * scaleS
+		}
+		if colA != nil {
+			colA[j] += da * scaleA
+		}
+		if colB != nil {
+			colB[j] += db * flux
 		}
 	}
 }

@@ -102,6 +102,14 @@ func (s *Scratch) reportKinematics(r *Result, e *tie, seen bool, scale float64) 
 		up := max(e.s, e.sres) + scale*math.Sqrt(v)
 		r.WidthErr = math.Sqrt(max(0, up*up-e.sres*e.sres)) - r.WidthKms
 	}
+	for k, i := range [2]int{e.pa, e.pb} {
+		if i >= 0 {
+			r.Shape[k] = m.p[i]
+			if v := m.cov[i*m.n+i]; v > 0 {
+				r.ShapeErr[k] = scale * math.Sqrt(v)
+			}
+		}
+	}
 	if r.Reason == "" && (m.held[e.pv] || m.held[e.ps]) && e.s > e.smin {
 		r.Reason = ReasonAtBound
 	}

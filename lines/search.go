@@ -128,7 +128,8 @@ func (s *Scratch) nearClaim(t *track) bool {
 func blank(l *line) Result {
 	nan := math.NaN()
 	return Result{Name: l.Name, RestWave: l.Wave, Kind: Unmeasured, EWRest: nan, EWRestErr: nan, EWSum: nan, EWSumErr: nan,
-		Flux: nan, FluxErr: nan, OffsetKms: nan, OffsetErr: nan, WidthKms: nan, WidthErr: nan, SNR: nan, Continuum: nan, UpperLimit: nan}
+		Flux: nan, FluxErr: nan, OffsetKms: nan, OffsetErr: nan, WidthKms: nan, WidthErr: nan, SNR: nan, Continuum: nan, UpperLimit: nan,
+		Shape: [2]float64{nan, nan}, ShapeErr: [2]float64{nan, nan}}
 }
 
 // nextInGroup returns the distance, km/s, from line i to the nearest other one

@@ -96,6 +96,12 @@ func (s *Scratch) fixKinematics(fixed bool) {
 	for k := range q.ties {
 		if e := &q.ties[k]; e.own {
 			m.fixed[e.pv], m.fixed[e.ps] = fixed, fixed
+			if e.pa >= 0 {
+				m.fixed[e.pa] = fixed
+			}
+			if e.pb >= 0 {
+				m.fixed[e.pb] = fixed
+			}
 		}
 	}
 }
@@ -145,6 +151,12 @@ func (s *Scratch) readKinematics() {
 	for k := range q.ties {
 		if e := &q.ties[k]; e.pv >= 0 {
 			e.v, e.s = s.lm.p[e.pv], s.lm.p[e.ps]
+			if e.pa >= 0 {
+				e.a = s.lm.p[e.pa]
+			}
+			if e.pb >= 0 {
+				e.b = s.lm.p[e.pb]
+			}
 		}
 	}
 }

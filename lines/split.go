@@ -37,7 +37,7 @@ func (s *Scratch) split(main int) {
 	q := &s.prob
 	for k := len(q.ties) - 1; k >= 0; k-- {
 		e := &q.ties[k]
-		if !e.own || e.vprior > 0 || s.tieSNR(k) < splitSNR*s.errorScale() {
+		if !e.own || e.pa >= 0 || e.vprior > 0 || s.tieSNR(k) < splitSNR*s.errorScale() {
 			continue
 		}
 		if w, v, ok := s.secondStart(k); ok {

@@ -126,13 +126,13 @@ func (s *Scratch) pixelProfiles(ci int, win *window, i int, f float64, good bool
 	q, p := &s.prob, s.lm.p
 	for k := range q.comps {
 		mu, sigma, dsigma := q.place(k, win.arm, p)
-		if math.Abs(q.lam[i]-mu) > profileReach*sigma+q.width[i] {
-			continue
-		}
 		c := &q.comps[k]
 		t := &q.ties[c.tie]
-		g := newGauss(mu, sigma, q.width[i])
-		v, dmu, ds := g.at(q.lam[i])
+		if math.Abs(q.lam[i]-mu) > t.far(p, c.lam0, sigma)+q.width[i] {
+			continue
+		}
+		g := q.shapeOf(t, p, c.lam0, mu, sigma, q.width[i])
+		v, dmu, ds, da, db := g.full(q.lam[i])
 		flux := c.share * p[c.amp]
 		into := 0.0
 		switch {
@@ -147,16 +147,32 @@ func (s *Scratch) pixelProfiles(ci int, win *window, i int, f float64, good bool
 		}
 		dmu *= flux * c.lam0 / spectrum.SpeedOfLight
 		ds *= flux * dsigma
+		da *= flux
+		if t.pb < 0 {
+			da *= c.lam0 / spectrum.SpeedOfLight
+		}
 		s.grad[c.amp] += into * c.share * v
 		if t.pv >= 0 {
 			s.grad[t.pv] += into * dmu
 			s.grad[t.ps] += into * ds
+		}
+		if t.pa >= 0 {
+			s.grad[t.pa] += into * da
+		}
+		if t.pb >= 0 {
+			s.grad[t.pb] += into * db * flux
 		}
 		if good {
 			s.cross[c.amp] -= f * c.share * v
 			if t.pv >= 0 {
 				s.cross[t.pv] -= f * dmu
 				s.cross[t.ps] -= f * ds
+			}
+			if t.pa >= 0 {
+				s.cross[t.pa] -= f * da
+			}
+			if t.pb >= 0 {
+				s.cross[t.pb] -= f * db * flux
 			}
 		}
 	}
