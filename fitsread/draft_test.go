@@ -1,11 +1,15 @@
 package fitsread
 
 import (
+	"bytes"
 	"errors"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
+
+	"duskline/spectrum"
 
 	"github.com/google/go-cmp/cmp"
 	"github.com/google/go-cmp/cmp/cmpopts"
@@ -58,8 +62,8 @@ func sameArrays(t testing.TB, path string, opts, with Options, text string) {
 		if errA != nil {
 			continue
 		}
-		if diff := cmp.Diff(a.Segments, b.Segments, cmpopts.EquateNaNs()); diff != "" {
-			t.Errorf("%s spectrum %d: %.600s\n%s", path, i, diff, text)
+		if !sameSegments(a.Segments, b.Segments) {
+			t.Errorf("%s spectrum %d: %.600s\n%s", path, i, cmp.Diff(a.Segments, b.Segments, cmpopts.EquateNaNs()), text)
 		}
 		// A name made of the file's and the row depends on how many groups there are.
 		sameName := a.ObjectID == b.ObjectID || strings.Contains(a.ObjectID, "#")
@@ -68,6 +72,15 @@ func sameArrays(t testing.TB, path string, opts, with Options, text string) {
 				a.ObjectID, a.Medium, a.Frame, a.RA, a.Dec, b.ObjectID, b.Medium, b.Frame, b.RA, b.Dec)
 		}
 	}
+}
+
+// sameSegments compares bit for bit.
+func sameSegments(a, b []spectrum.Segment) bool {
+	same := func(x, y []float64) bool { return bytes.Equal(encode('D', x), encode('D', y)) }
+	return slices.EqualFunc(a, b, func(x, y spectrum.Segment) bool {
+		return x.Name == y.Name && x.LogUniform == y.LogUniform && same(x.Wave, y.Wave) && same(x.Flux, y.Flux) &&
+			same(x.Ivar, y.Ivar) && same(x.Resolution, y.Resolution)
+	})
 }
 
 func TestDraftOfSamples(t *testing.T) {
