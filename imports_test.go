@@ -23,6 +23,7 @@ var edges = map[string][]string{
 	"spectrum":         {},
 	"hydrogen":         {},
 	"configs":          {},
+	"cluster":          {},
 	"manifest":         {},
 	"internal/fitsout": {},
 	"linelist":         {"hydrogen"},
@@ -36,7 +37,7 @@ var edges = map[string][]string{
 	"synth":            {"spectrum", "hydrogen", "linelist", "catalog", "internal/fitsout"},
 	"pipeline": {"spectrum", "hydrogen", "linelist", "configs", "fitsread", "continuum", "redshift", "lines", "absorbers",
 		"catalog", "synth", "internal/fitsout", "manifest"},
-	"cmd/duskline": {"pipeline", "catalog", "report", "synth", "configs", "fitsread", "spectrum"},
+	"cmd/duskline": {"pipeline", "cluster", "catalog", "report", "synth", "configs", "fitsread", "spectrum"},
 }
 
 // testEdges is what the tests of any package may import on top: makers of

@@ -96,7 +96,7 @@ func (f *finder) expand(path string) ([]string, error) {
 	}
 	info, err := os.Stat(f.locate(path))
 	if err == nil {
-		if info.IsDir() && isRun(f.locate(path)) {
+		if info.IsDir() && IsRun(f.locate(path)) {
 			return nil, fmt.Errorf("%s is a run of duskline, not a folder of spectra; give the folder the spectra are in", path)
 		}
 		return []string{path}, nil
@@ -186,7 +186,7 @@ func (f *finder) walk(ctx context.Context, folder string) error {
 	if err != nil {
 		return f.yieldOnce(f.locate(folder), candidate{folder, "folder cannot be entered: " + plain(err)})
 	}
-	if f.folders[real] || real == f.out || isRun(real) {
+	if f.folders[real] || real == f.out || IsRun(real) {
 		return nil
 	}
 	f.folders[real] = true

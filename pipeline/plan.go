@@ -219,8 +219,8 @@ func readTotals(path string) (planHead, planEnd, string, error) {
 	return r.head, counted, hex.EncodeToString(sum.Sum(nil)[:8]), nil
 }
 
-// isRun reports whether a folder holds a plan of ours.
-func isRun(folder string) bool {
+// IsRun reports whether a folder holds a plan of ours.
+func IsRun(folder string) bool {
 	r, err := openPlan(filepath.Join(folder, planName))
 	if err != nil {
 		return false

@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"os/exec"
 	"strings"
 	"time"
 
@@ -30,6 +31,7 @@ type app struct {
 	stdout, stderr io.Writer
 	getenv         func(string) string
 	folder         string // working folder
+	program        string // path of the program itself
 	// science makes what measures one spectrum.
 	science func(pipeline.Settings, []pipeline.RecipeText) (pipeline.Processor, error)
 }
@@ -45,6 +47,7 @@ type grammar struct {
 	Run       runCmd       `cmd:"" help:"Process spectra into a catalog; the same command goes on after an interruption."`
 	Gather    gatherCmd    `cmd:"" help:"Join the blocks of a run that was shared among machines into its catalogs."`
 	Compare   compareCmd   `cmd:"" help:"Say what changed between the catalogs of two runs, and why."`
+	Cluster   clusterCmd   `cmd:"" help:"Share a run among the nodes of a cluster."`
 	Demo      demoCmd      `cmd:"" help:"Make a synthetic night of known truth, process it and count what came out right."`
 	Peek      peekCmd      `cmd:"" help:"Show how one file is read, what was assumed, and the answer."`
 	Templates templatesCmd `cmd:"" help:"List, show, check and stack the template families that redshifts are found with."`
@@ -106,6 +109,9 @@ func runApp(a *app, args []string) (code int) {
 		return exitFailed
 	}
 	a.folder = folder
+	if a.program, err = exec.LookPath(os.Args[0]); err == nil {
+		a.program = absolute(folder, a.program)
+	}
 	cmd, ok := parsed.Selected().Target.Addr().Interface().(command)
 	if !ok {
 		panic("command without run: " + parsed.Command())

@@ -113,6 +113,9 @@ func treeOf(t *testing.T, root string) map[string][]byte {
 // TestKilledAnywhere kills runs without warning at random moments, sometimes
 // one or both of two commands that work on the same run.
 func TestKilledAnywhere(t *testing.T) {
+	if testing.Short() {
+		t.Skip("kills a program that the race detector does not watch")
+	}
 	seed := uint64(time.Now().UnixNano())
 	t.Logf("seed %d", seed)
 	r := rand.New(rand.NewPCG(seed, 1))

@@ -8,18 +8,29 @@ import (
 	"duskline/pipeline"
 )
 
+// jobFlags say what a run is of.
+type jobFlags struct {
+	Out      string   `required:"" placeholder:"RUN" help:"Folder for the run: new, empty, or that of a run to go on with."`
+	Settings string   `placeholder:"FILE" help:"Settings in TOML over the built-in ones."`
+	Set      []string `placeholder:"KEY=VALUE" sep:"none" help:"One setting, such as redshift.stiffness=0.05, over the others; may be repeated."`
+	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML, or the name of one that comes with the program: how to read files that do not speak for themselves; may be repeated."`
+	Recipes  string   `placeholder:"DIR" help:"Folder of template recipes (*.toml) that add to the built-in families or replace them."`
+	Manifest string   `placeholder:"FILE" help:"Table, CSV or FITS, of what is known about the objects: names, positions, limits, what to leave out."`
+	Workers  int      `placeholder:"N" help:"Spectra worked on at the same time; by default one a processor. Changes no result."`
+	Limit    int64    `placeholder:"N" help:"Process the first N spectra only."`
+	Like     string   `placeholder:"OLDRUN" help:"Repeat an earlier run, with the changes that other flags name; rows that nothing changed for are taken over."`
+	Path     []string `arg:"" optional:"" help:"FITS files, folders (searched through), quoted patterns, or @list.txt with a path a line."`
+}
+
 // job turns the flags into a job. What is not given is taken from the run that
 // is to be repeated or, without any PATH, from the one that is to go on.
-func (c *runCmd) job(a *app) (pipeline.Job, error) {
+func (c *jobFlags) job(a *app) (pipeline.Job, error) {
 	job := pipeline.Job{Out: c.Out, Base: a.folder, Paths: c.Path, Limit: c.Limit, Like: c.Like, Program: version(), Build: build(),
 		Settings: pipeline.DefaultSettings()}
 	if c.Limit < 0 {
 		return job, &pipeline.InputError{Problems: []string{fmt.Sprintf("--limit %d is not allowed; give the number of spectra to process, at least 1", c.Limit)}}
 	}
 	var err error
-	if job.Shard, err = shardOf(c.Shard, a.getenv); err != nil {
-		return job, err
-	}
 	if err := c.recall(a, &job); err != nil {
 		return job, err
 	}
@@ -60,13 +71,13 @@ func (c *runCmd) job(a *app) (pipeline.Job, error) {
 
 // recall fills a job from a run that was planned before, if the flags refer to
 // one.
-func (c *runCmd) recall(a *app, job *pipeline.Job) error {
-	from := c.Like
-	if from == "" {
-		if len(c.Path) > 0 {
-			return nil
-		}
-		from = c.Out
+func (c *jobFlags) recall(a *app, job *pipeline.Job) error {
+	from := c.Out
+	switch {
+	case c.Like == "" && len(c.Path) > 0:
+		return nil
+	case c.Like != "" && !pipeline.IsRun(a.locate(c.Out)):
+		from = c.Like
 	}
 	planned, err := pipeline.Recall(a.folder, from)
 	if err != nil {

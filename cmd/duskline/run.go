@@ -10,19 +10,10 @@ import (
 )
 
 type runCmd struct {
-	Out      string   `required:"" placeholder:"RUN" help:"Folder for the run: new, empty, or that of a run to go on with."`
-	Settings string   `placeholder:"FILE" help:"Settings in TOML over the built-in ones."`
-	Set      []string `placeholder:"KEY=VALUE" sep:"none" help:"One setting, such as redshift.stiffness=0.05, over the others; may be repeated."`
-	Layout   []string `placeholder:"FILE" sep:"none" help:"Layout in TOML, or the name of one that comes with the program: how to read files that do not speak for themselves; may be repeated."`
-	Recipes  string   `placeholder:"DIR" help:"Folder of template recipes (*.toml) that add to the built-in families or replace them."`
-	Manifest string   `placeholder:"FILE" help:"Table, CSV or FITS, of what is known about the objects: names, positions, limits, what to leave out."`
-	Workers  int      `placeholder:"N" help:"Spectra worked on at the same time; by default one a processor. Changes no result."`
-	Limit    int64    `placeholder:"N" help:"Process the first N spectra only."`
-	Like     string   `placeholder:"OLDRUN" help:"Repeat an earlier run, with the changes that other flags name; rows that nothing changed for are taken over."`
-	PlanOnly bool     `help:"Plan the run and do nothing else."`
-	Shard    string   `placeholder:"I/N" env:"DUSKLINE_SHARD" help:"Do part I of N, I from 0 to N-1, and write no catalogs; array takes I and N from the environment of a job array."`
+	jobFlags
+	PlanOnly bool   `help:"Plan the run and do nothing else."`
+	Shard    string `placeholder:"I/N" env:"DUSKLINE_SHARD" help:"Do part I of N, I from 0 to N-1, and write no catalogs; array takes I and N from the environment of a job array."`
 	logFlags
-	Path []string `arg:"" optional:"" help:"FITS files, folders (searched through), quoted patterns, or @list.txt with a path a line."`
 }
 
 // Help teaches by example.
@@ -45,6 +36,9 @@ The run folder then holds catalog.fits, catalog.csv, objects.parquet, lines.parq
 func (c *runCmd) run(a *app) (int, error) {
 	job, err := c.job(a)
 	if err != nil {
+		return 0, err
+	}
+	if job.Shard, err = shardOf(c.Shard, a.getenv); err != nil {
 		return 0, err
 	}
 	if c.PlanOnly {
