@@ -16,6 +16,7 @@ const binKms = 70.0
 // bins uniform in log wavelength.
 type forest struct {
 	x0, step float64   // c ln wave of the center of bin 0; km/s
+	first    int       // first bin redward of the Lyman limit of the background
 	flux     []float64 // mean over the bin
 	noise    []float64 // variance of that mean, 0 where there is no data
 	level    []float64 // mean level that thin absorption leaves
@@ -33,11 +34,11 @@ func (f *forest) wave(i int) float64 {
 	return math.Exp((f.x0 + float64(i)*f.step) / spectrum.SpeedOfLight)
 }
 
-// fill bins the track from the redshifted Lyman limit, or where it begins, to
+// fill bins the track from below the redshifted Lyman limit, or where it begins, to
 // redBound in the frame of the background. It reports whether there is enough.
 func (f *forest) fill(t *track, z float64) bool {
 	f.step = binKms
-	first := index(t.wave, 915*(1+z))
+	first := index(t.wave, blueBound*(1+z))
 	last := index(t.wave, redBound*(1+z))
 	for first < last && t.weight[first] == 0 {
 		first++
@@ -86,12 +87,17 @@ func (f *forest) fill(t *track, z float64) bool {
 		good++
 	}
 	f.sorted = counts[:0]
+	f.first = 0
+	for f.first < n && f.wave(f.first) < 915*(1+z) {
+		f.first++
+	}
 	f.sres = sres / max(cover, 1)
 	return good > 40
 }
 
-// redBound is how far redward the level is followed, rest Angstrom: beyond N V.
-const redBound = 1290.0
+// Range of the bins, rest Angstrom: from where breaks at the Lyman limit are
+// looked for to beyond N V.
+const blueBound, redBound = 780.0, 1290.0
 
 // bumps are the emission lines that stand on the level: rest wavelength and
 // sigma in Angstrom.
@@ -142,7 +148,7 @@ func (f *forest) follow(z float64) bool {
 func (f *forest) followShaded() bool {
 	for range 2 {
 		for i := range f.keep {
-			f.keep[i] = f.noise[i] > 0 && f.shade[i] > 0.3
+			f.keep[i] = i >= f.first && f.noise[i] > 0 && f.shade[i] > 0.3
 		}
 		if !f.refit() {
 			return false
@@ -170,20 +176,22 @@ func (f *forest) prepare(z float64) {
 	}
 	// The transmission is smooth but for its steps at the Lyman lines.
 	for i := range n {
-		w := f.wave(i)
+		// Below the limit of the background the level is that of light which
+		// no Lyman-limit system has dimmed: they are looked for.
+		w := f.wave(max(i, min(f.first, n-1)))
 		if i%4 == 0 || w/(1+z) > 1200 || i == n-1 {
 			f.mean[i] = hydrogen.Transmission(z, w)
 		} else {
 			f.mean[i] = f.mean[i-1]
 		}
-		rest := w / (1 + z)
+		rest := f.wave(i) / (1 + z)
 		u := (rest - 1100) / 150
 		f.basis[0][i], f.basis[1][i], f.basis[2][i] = f.mean[i], f.mean[i]*u, f.mean[i]*u*u
 		for b, k := range bumps {
 			d := (rest - k.wave) / k.sigma
 			f.basis[3+b][i] = f.mean[i] * math.Exp(-0.5*d*d)
 		}
-		f.keep[i] = f.noise[i] > 0
+		f.keep[i] = i >= f.first && f.noise[i] > 0
 	}
 }
 
@@ -326,7 +334,7 @@ func (f *forest) measureMemory() {
 func (f *forest) dropDeep() {
 	n := len(f.flux)
 	for i := range n {
-		f.keep[i] = f.noise[i] > 0
+		f.keep[i] = i >= f.first && f.noise[i] > 0
 	}
 	// The mean of half a dozen bins, so that single thin lines stay.
 	const reach = 4

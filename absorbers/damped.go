@@ -191,7 +191,7 @@ func (s *Scratch) bestCenter(f *Finder, opt Options) (best cloud, ok bool) {
 	last := min(n-1, s.bin(f, spectrum.SpeedOfLight*math.Log1p(opt.Z)+aheadKms))
 	best.gain = searchGain
 	at, column := -1, 0
-	for i := core; i <= last; i++ {
+	for i := max(core, fo.first); i <= last; i++ {
 		if s.refused[i] {
 			continue
 		}
@@ -255,7 +255,7 @@ func (s *Scratch) lineWindow(f *Finder, c cloud, l int) (lo, hi int) {
 	center := (c.x + spectrum.SpeedOfLight*math.Log(line.Wave) - fo.x0) / fo.step
 	lo = int(math.Ceil(center - half/fo.step))
 	hi = int(math.Floor(center+half/fo.step)) + 1
-	return max(lo, 0), min(hi, len(fo.flux))
+	return max(lo, fo.first), min(hi, len(fo.flux))
 }
 
 // dim fills through with the transmission of line l of a system on the bins from

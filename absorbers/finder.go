@@ -147,6 +147,7 @@ func (f *Finder) Find(dst []System, arms []Arm, opt Options, scratch *Scratch) [
 	if s.forest.fill(&s.track, opt.Z) && s.forest.follow(opt.Z) {
 		s.findDamped(f, opt)
 		dst = s.reportHydrogen(dst, f, opt)
+		dst = s.findLimit(dst, f, opt)
 	}
 	s.red.fit(&s.track)
 	return s.findDoublets(dst, f, opt)

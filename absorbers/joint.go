@@ -91,7 +91,7 @@ func (s *Scratch) gather(f *Finder, k int) {
 		if lo >= hi {
 			return 0, 0
 		}
-		return max(0, lo-flank), min(len(fo.flux), hi+flank)
+		return max(fo.first, lo-flank), min(len(fo.flux), hi+flank)
 	}
 	for grown := true; grown; {
 		grown = false

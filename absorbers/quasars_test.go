@@ -27,7 +27,11 @@ const fineKms, pixelFine, surveyR = 11.5, 6, 2000.0
 // makeQuasar paints a quasar with damped systems of the given columns at drawn
 // redshifts and noise of sn a pixel near 1350 Angstrom.
 func makeQuasar(r *rand.Rand, sn float64, columns ...float64) madeUp {
-	q := madeUp{z: 2.4 + 1.2*r.Float64()}
+	return makeQuasarAt(r, 2.4+1.2*r.Float64(), sn, columns...)
+}
+
+func makeQuasarAt(r *rand.Rand, z, sn float64, columns ...float64) madeUp {
+	q := madeUp{z: z}
 	start := math.Log(3600) * c
 	end := math.Log(min(1420*(1+q.z), 9000)) * c
 	n := int((end-start)/fineKms) / pixelFine * pixelFine
