@@ -55,7 +55,7 @@ func (f *File) imageSets() []*imageSet {
 			continue
 		}
 		prefix, word, r := imageRole(h.name)
-		if r == roleNone && h.index == 0 && (h.name == "" || strings.EqualFold(h.name, "primary")) {
+		if r == roleNone && f.isPrimary(h) {
 			prefix, word, r = "", "", roleFlux
 		}
 		s := set(prefix)
@@ -64,6 +64,15 @@ func (f *File) imageSets() []*imageSet {
 		}
 	}
 	return sets
+}
+
+// isPrimary reports the image that a file is about: that of the primary HDU, also
+// where compressing it moved it into the first extension.
+func (f *File) isPrimary(h *hdu) bool {
+	if h.index == 0 {
+		return h.name == "" || strings.EqualFold(h.name, "primary")
+	}
+	return h.index == 1 && h.tiles != nil && len(f.hdus[0].axes) == 0 && (h.name == "" || strings.EqualFold(h.name, "compressed_image"))
 }
 
 // findImages reads images that are told by their EXTNAME: FLUX, WAVELENGTH and

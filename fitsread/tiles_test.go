@@ -179,3 +179,16 @@ func FuzzTiles(f *testing.F) {
 		}
 	})
 }
+
+// A flux in the primary HDU stays the flux when compressing moves it.
+func TestPackedPrimary(t *testing.T) {
+	n := 40
+	named := func(name string, v []float64) []byte {
+		return image(false, -32, []int{n, 2}, append(append([]float64{}, v...), v...), kv("EXTNAME", name))
+	}
+	flux := packedImage("RICE_1", 32, n, [][]byte{riceUnpacked(whole(n, 500)), riceUnpacked(whole(n, 900))}, kv("EXTNAME", "COMPRESSED_IMAGE"))
+	s := read(t, open(t, join(flux, image(false, -64, []int{n}, ramp(n, 5000, 2), kv("EXTNAME", "WAVELENGTH")), named("IVAR", constant(n, 0.04))), Options{}), 1)
+	if s.Layout != layoutImages || s.Segments[0].Flux[3] != whole(n, 900)[3] || s.Segments[0].Wave[3] != 5006 {
+		t.Errorf("%s: %v %v", s.Layout, s.Segments[0].Wave[:4], s.Segments[0].Flux[:4])
+	}
+}
