@@ -112,14 +112,21 @@ func endsIn(full, file string) bool {
 	return ok && (head == "" || strings.HasSuffix(head, "/"))
 }
 
+// cleanFile brings a name to the form that is compared: no "./" or doubled slashes,
+// no suffix of packing. Cleaning twice changes nothing more.
 func cleanFile(name string) string {
-	name = path.Clean(strings.TrimSpace(name))
-	for _, packed := range []string{".gz", ".fz"} {
-		if n := len(name) - len(packed); n > 0 && strings.EqualFold(name[n:], packed) {
-			name = name[:n]
+	for {
+		short := path.Clean(name)
+		for _, packed := range []string{".gz", ".fz"} {
+			if n := len(short) - len(packed); n > 0 && strings.EqualFold(short[n:], packed) {
+				short = short[:n]
+			}
 		}
+		if short == name {
+			return name
+		}
+		name = short
 	}
-	return name
 }
 
 // columns lists the names that mean something.
