@@ -125,7 +125,7 @@ func TestFromTable(t *testing.T) {
 func FuzzReadCSV(f *testing.F) {
 	f.Add("file,row,object_id,ra,dec,magnitude,expected_class,redshift_min,redshift_max,exclude\na.fits,1,x,1,2,3,star,0,1,f\n")
 	f.Add("object_id\nLR 1\n")
-	f.Add("file\n/a /\n")     // a blank that only shows when the slash is gone
+	f.Add("file\n/a /\n")    // a blank that only shows when the slash is gone
 	f.Add("file\nx.gz.fz\n") // packed twice
 	f.Fuzz(func(t *testing.T, text string) {
 		m, err := ReadCSV("fuzz.csv", strings.NewReader(text))
