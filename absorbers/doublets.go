@@ -22,6 +22,9 @@ const (
 	edgeFrom   = 2.5
 	bridgeKms  = 50
 	bridgeFrom = 3.0
+	// leastRange is the half range of a sum at least, in half widths of the
+	// best box.
+	leastRange = 0.8
 	// mostMismatch is the part of the absorption that may contradict a ratio.
 	mostMismatch = 0.3
 	// proximateKms is how near to the object a system is called proximate.
@@ -239,11 +242,14 @@ func (s *Scratch) measureDoublet(f *Finder, c candidate, opt Options) (System, b
 	d := &f.doublets[c.doublet]
 	i := index(t.x, c.x)
 	step := t.dx[min(i, len(t.dx)-1)]
-	// The deepest place of both lines, and outward from there.
+	// The deepest place of both lines, outward from there, and as much more as
+	// the instrument spreads.
 	c.x += s.deepest(c.x, d.split, c.half, step)
 	most := 0.5 * d.split
-	low := s.outward(c.x, d.split, -step, -step, most) - step
-	high := s.outward(c.x, d.split, step, step, most) + step
+	margin := max(step, 1.7*t.sres[min(i, len(t.sres)-1)])
+	least := max(step, leastRange*c.half)
+	low := max(s.outward(c.x, d.split, -least, -step, most)-margin, -most)
+	high := min(s.outward(c.x, d.split, least, step, most)+margin, most)
 	a, b := s.sumLine(c.x, low, high), s.sumLine(c.x+d.split, low, high)
 	sys := blank(d.kind)
 	if a.taken > 0.3 || b.taken > 0.3 || a.good < 0.7 || b.good < 0.5 || !(a.ew > strongFrom*a.err) || !(b.ew > weakFrom*b.err) {
