@@ -60,8 +60,15 @@ type Manifest struct {
 	// Ignored are the names of columns that mean nothing here.
 	Ignored []string
 
-	byFile map[string][]int // base name -> entries, in order
-	byID   map[string]int   // entries without file
+	byFile map[fileRow][]int // entries, in order
+	byID   map[string]int    // entries without file
+}
+
+// fileRow is what entries are looked up by: the last part of the file's name, and
+// the row.
+type fileRow struct {
+	base string
+	row  int
 }
 
 // ByName reports whether some entries are joined by object_id alone.
@@ -84,14 +91,12 @@ func (e *Error) Error() string { return strings.Join(e.Problems, "\n") }
 func (m *Manifest) Find(filePath string, row int, id string) int {
 	full := cleanFile(filePath)
 	best := -1
-	for _, i := range m.byFile[path.Base(full)] {
-		e := &m.Entries[i]
-		if e.Row != AllRows && e.Row != row || !endsIn(full, e.File) {
-			continue
-		}
-		if best < 0 || len(e.File) > len(m.Entries[best].File) ||
-			len(e.File) == len(m.Entries[best].File) && e.Row != AllRows {
-			best = i
+	for _, key := range []fileRow{{path.Base(full), row}, {path.Base(full), AllRows}} {
+		for _, i := range m.byFile[key] {
+			e := &m.Entries[i]
+			if endsIn(full, e.File) && (best < 0 || len(e.File) > len(m.Entries[best].File)) {
+				best = i
+			}
 		}
 	}
 	if best >= 0 {
@@ -143,12 +148,18 @@ type builder struct {
 	m        *Manifest
 	problems []string
 	more     int
-	keys     map[string]int // file and row, or id -> line
+	keys     map[objectKey]int // line
+}
+
+// objectKey is what must not stand twice: file and row, or a name.
+type objectKey struct {
+	file, id string
+	row      int
 }
 
 func newBuilder(name, unit string) *builder {
-	return &builder{name: name, unit: unit, at: map[string]int{}, keys: map[string]int{},
-		m: &Manifest{byFile: map[string][]int{}, byID: map[string]int{}}}
+	return &builder{name: name, unit: unit, at: map[string]int{}, keys: map[objectKey]int{},
+		m: &Manifest{byFile: map[fileRow][]int{}, byID: map[string]int{}}}
 }
 
 func (b *builder) bad(line int, column, format string, args ...any) {
@@ -288,9 +299,9 @@ func (b *builder) add(line int, cells []string) {
 	default:
 		b.bad(line, "exclude", "%q is not true or false", s)
 	}
-	key := fmt.Sprintf("%q %d", e.File, e.Row)
+	key := objectKey{file: e.File, row: e.Row}
 	if e.File == "" {
-		key = fmt.Sprintf("id %q", e.ObjectID)
+		key.id = e.ObjectID
 	}
 	if first, twice := b.keys[key]; twice {
 		b.bad(line, "", "it names the same object as %s %d", b.unit, first)
@@ -305,8 +316,8 @@ func (b *builder) add(line int, cells []string) {
 		b.m.byID[e.ObjectID] = n
 		return
 	}
-	base := path.Base(e.File)
-	b.m.byFile[base] = append(b.m.byFile[base], n)
+	at := fileRow{path.Base(e.File), e.Row}
+	b.m.byFile[at] = append(b.m.byFile[at], n)
 }
 
 func (b *builder) number(line int, column, s string, lo, hi float64) float64 {
