@@ -72,6 +72,12 @@ func checkResult(t *testing.T, r *Result) {
 			t.Fatalf("a line seen: %+v", r)
 		}
 	case Limit:
+		if r.Reason == ReasonWrongSign {
+			if !(r.UpperLimit >= 0) || r.EWRest < 0 || r.SNR < 3 {
+				t.Fatalf("a line of the wrong sign: %+v", r)
+			}
+			return
+		}
 		if math.IsNaN(r.UpperLimit) || r.UpperLimit < math.Abs(r.EWRest) || r.SNR >= 3 {
 			t.Fatalf("a limit: %+v", r)
 		}

@@ -22,6 +22,9 @@ type Arm struct {
 	Resolution []float64
 }
 
+// wingsSuffix makes the name of a second component from that of its line.
+const wingsSuffix = "_broad"
+
 // The kinds of a Result.
 const (
 	Absorption = "absorption"
@@ -33,6 +36,8 @@ const (
 // What Result.Reason can say.
 const (
 	ReasonMasked      = "masked"       // too few good pixels on the line
+	ReasonUnexpected  = "unexpected"   // Options.Expect leaves the line out
+	ReasonWrongSign   = "wrong_sign"   // a line that never absorbs, where something absorbs: not this line
 	ReasonOffEdge     = "off_edge"     // the line runs over the end of the coverage
 	ReasonNoContinuum = "no_continuum" // continuum missing, negative or not above 3 times its error
 	ReasonBlended     = "blended"      // too close to a line of another ion, which carries the sum of both
@@ -100,6 +105,10 @@ type Options struct {
 
 	// Profile is the form of lines that stand out: Gaussian unless asked for.
 	Profile Profile
+
+	// Expect says which lines objects of this kind have; the others are not
+	// fitted, so that they take nothing from those that are there. nil: all.
+	Expect func(*linelist.Line) bool
 
 	Sky []Band // wavelengths to be noted in Result.OnSky; see SkyBands
 }
@@ -183,7 +192,7 @@ func NewMeter(list *linelist.List) *Meter {
 	m := &Meter{}
 	for _, l := range list.Lines() {
 		forbidden := strings.HasPrefix(l.Ion, "[")
-		e := line{Line: l, ion: plainIon(l.Ion), narrow: forbidden || l.Seen == Absorption, group: -1, doublet: -1, share: 1, wings: l.Name + "_broad"}
+		e := line{Line: l, ion: plainIon(l.Ion), narrow: forbidden || l.Seen == Absorption, group: -1, doublet: -1, share: 1, wings: l.Name + wingsSuffix}
 		if l.Group != "" {
 			g, ok := groups[l.Group]
 			if !ok {

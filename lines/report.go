@@ -60,11 +60,17 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 	} else {
 		r.Reason = ReasonNoContinuum
 	}
+	if seen && flux < 0 && t.line.Seen == Emission {
+		seen, r.Reason = false, ReasonWrongSign
+	}
 	switch {
 	case seen && flux > 0:
 		r.Kind = Emission
 	case seen:
 		r.Kind = Absorption
+	case known && r.Reason == ReasonWrongSign:
+		r.Kind = Limit
+		r.UpperLimit = 3 * r.EWRestErr
 	case known:
 		r.Kind = Limit
 		r.UpperLimit = math.Abs(r.EWRest) + 3*r.EWRestErr

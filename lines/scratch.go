@@ -34,6 +34,7 @@ type Scratch struct {
 	copy    []float64 // profiles of a second component
 	grad    []float64
 	cross   []float64
+	placed  []placement
 	labels  map[labelKey]string
 	labeled *Meter // whose names the labels are
 }

@@ -36,14 +36,18 @@ func (s *Scratch) findTracks() {
 		t.result = blank(l)
 		t.s = max(math.Hypot(s.opt.WidthGuess, t.sres), 0.5*t.pix)
 		t.center, t.next = c, s.nextInGroup(i, t.broad)
-		s.search(&t)
-		t.first = t.snr
+		if s.opt.Expect != nil && !s.opt.Expect(&l.Line) {
+			t.result.Reason = ReasonUnexpected
+		} else {
+			s.search(&t)
+			t.first = t.snr
+		}
 		s.tracks = append(s.tracks, t)
 	}
 	s.refine()
 	for i := range s.tracks {
 		t := &s.tracks[i]
-		t.usable = s.covered(t)
+		t.usable = t.result.Reason != ReasonUnexpected && s.covered(t)
 	}
 }
 

@@ -59,6 +59,7 @@ func (s *Scratch) sumWindow(ci int, win *window) sum {
 	c := &q.comps[ci]
 	lo, hi := q.reach(win, mu, sigma)
 	s.grad, s.cross = resize(s.grad, m.n), resize(s.cross, m.n)
+	s.placeAll(win.arm)
 	// Pixels widen the profile; the window follows.
 	if hi > lo {
 		d := q.width[(lo+hi)/2]
@@ -117,6 +118,24 @@ func (s *Scratch) sumWindow(ci int, win *window) sum {
 	return r
 }
 
+// placement is a component on an arm as sums use it.
+type placement struct {
+	shape       shape
+	dsigma, far float64
+}
+
+// placeAll fills placed for an arm.
+func (s *Scratch) placeAll(arm int) {
+	q, p := &s.prob, s.lm.p
+	s.placed = s.placed[:0]
+	for k := range q.comps {
+		mu, sigma, dsigma := q.place(k, arm, p)
+		c := &q.comps[k]
+		t := &q.ties[c.tie]
+		s.placed = append(s.placed, placement{q.shapeOf(t, p, c.lam0, mu, sigma, 1e-3*sigma), dsigma, t.far(p, c.lam0, sigma)})
+	}
+}
+
 // pixelProfiles returns the profile of component ci, per unit flux, and the
 // sum of the other lines at pixel i, and adds their derivatives, times f, to
 // the gradient of the sum: those of the neighbors where the pixel is good, that
@@ -125,14 +144,15 @@ func (s *Scratch) sumWindow(ci int, win *window) sum {
 func (s *Scratch) pixelProfiles(ci int, win *window, i int, f float64, good bool) (own, others float64) {
 	q, p := &s.prob, s.lm.p
 	for k := range q.comps {
-		mu, sigma, dsigma := q.place(k, win.arm, p)
-		c := &q.comps[k]
+		c, at := &q.comps[k], &s.placed[k]
 		t := &q.ties[c.tie]
-		if math.Abs(q.lam[i]-mu) > t.far(p, c.lam0, sigma)+q.width[i] {
+		if math.Abs(q.lam[i]-at.shape.mu) > at.far+q.width[i] {
 			continue
 		}
-		g := q.shapeOf(t, p, c.lam0, mu, sigma, q.width[i])
-		v, dmu, ds, da, db := g.full(q.lam[i])
+		if d := q.width[i]; math.Abs(d-at.shape.d) > 0.01*d {
+			at.shape = q.shapeOf(t, p, c.lam0, at.shape.mu, at.shape.sigma, d)
+		}
+		v, dmu, ds, da, db := at.shape.full(q.lam[i])
 		flux := c.share * p[c.amp]
 		into := 0.0
 		switch {
@@ -146,7 +166,7 @@ func (s *Scratch) pixelProfiles(ci int, win *window, i int, f float64, good bool
 			into = f
 		}
 		dmu *= flux * c.lam0 / spectrum.SpeedOfLight
-		ds *= flux * dsigma
+		ds *= flux * at.dsigma
 		da *= flux
 		if t.pb < 0 {
 			da *= c.lam0 / spectrum.SpeedOfLight

@@ -192,9 +192,34 @@ func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) bool {
 	b.results = b.chain.meter.Measure(b.results, b.arms, lines.Options{
 		Z: res.Redshift, ZErr: res.RedshiftErr, Broad: res.Class == catalog.Quasar,
 		WidthGuess: math.Min(res.Width, maxWidthGuess), Sky: lines.SkyBands(),
-		WindowKms: b.chain.set.Lines.WindowKms, MinGood: b.chain.set.Lines.MinGood,
+		WindowKms: b.chain.set.Lines.WindowKms, MinGood: b.chain.set.Lines.MinGood, Expect: expectation(res),
 	}, &b.measured)
+	if res.Class == catalog.Star {
+		b.results = lines.Fold(b.results)
+	}
 	return true
+}
+
+// expectation says which lines objects of the found kind have: stars no
+// forbidden lines, those too cool for it no helium and no ions of the far
+// ultraviolet, those too hot for it no molecules.
+func expectation(res *redshift.Result) func(*linelist.Line) bool {
+	if res.Class != catalog.Star {
+		return nil
+	}
+	cool := res.Family != "hot"
+	return func(l *linelist.Line) bool {
+		if l.Seen == "emission" && l.Ion != "He II" {
+			return false
+		}
+		switch l.Ion {
+		case "He I", "He II", "O VI", "N V", "Si IV", "C IV", "Al III", "Si III":
+			return !cool
+		case "CH":
+			return cool
+		}
+		return true
+	}
 }
 
 // What an assumption leaves open, km/s: half of what separates air and vacuum,
