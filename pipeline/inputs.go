@@ -25,7 +25,7 @@ type finder struct {
 	base    string // folder that relative paths start from
 	out     string // run folder, never searched
 	folders map[string]bool
-	files   map[[16]byte]bool // digests of real paths: a survey has millions of them
+	files   map[[16]byte]bool // digests of real paths of files that were named or linked, not found by a walk
 	yield   func(candidate) error
 }
 
@@ -164,12 +164,34 @@ func (f *finder) take(ctx context.Context, path string) error {
 	if err != nil {
 		real = f.locate(path)
 	}
+	if f.walked(real) {
+		return nil
+	}
 	return f.yieldOnce(real, candidate{path: path})
 }
 
-func (f *finder) yieldOnce(real string, c candidate) error {
+// walked reports whether a walk yields or has yielded a file by itself.
+func (f *finder) walked(real string) bool {
+	name := filepath.Base(real)
+	return f.folders[filepath.Dir(real)] && isSpectrumName(name) && !strings.HasPrefix(name, ".")
+}
+
+// yieldWalked yields a file of a folder that is walked once. Nothing is noted
+// of it: a survey has millions.
+func (f *finder) yieldWalked(real, path string) error {
+	if f.files[pathDigest(real)] {
+		return nil
+	}
+	return f.yield(candidate{path: path})
+}
+
+func pathDigest(real string) [16]byte {
 	sum := sha256.Sum256([]byte(real))
-	key := [16]byte(sum[:16])
+	return [16]byte(sum[:16])
+}
+
+func (f *finder) yieldOnce(real string, c candidate) error {
+	key := pathDigest(real)
 	if f.files[key] {
 		return nil
 	}
@@ -206,7 +228,7 @@ func (f *finder) walk(ctx context.Context, folder string) error {
 		case entry.Type()&fs.ModeSymlink != 0:
 			err = f.follow(ctx, path)
 		case isSpectrumName(name):
-			err = f.yieldOnce(filepath.Join(real, name), candidate{path: path})
+			err = f.yieldWalked(filepath.Join(real, name), path)
 		}
 		if err != nil {
 			return err

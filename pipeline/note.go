@@ -86,7 +86,7 @@ func (r *Run) readNote(number int) (*blockNote, error) {
 func (r *Run) readNoteSum(number int) (*blockNote, string, error) {
 	folder := r.blockFolder(number)
 	if _, err := os.Stat(folder); err != nil {
-		return nil, "", err
+		return nil, "", fmt.Errorf("block %d of %s cannot be read: %w; mend the folder, then repeat the command", number, r.job.Out, err)
 	}
 	damaged := func(format string, args ...any) (*blockNote, string, error) {
 		return nil, "", fmt.Errorf("block %d of %s is %w: %s", number, r.job.Out, ErrDamaged, fmt.Sprintf(format, args...))

@@ -257,7 +257,7 @@ func (h *planHead) differences(want *planHead) []string {
 		}
 	}
 	for _, name := range names {
-		if name != settingsDigest && h.Digests[name] != want.Digests[name] {
+		if name != settingsDigest && name != calibrationDigest && h.Digests[name] != want.Digests[name] {
 			out = append(out, fmt.Sprintf("%s changed (digest %s, now %s)", name, orNone(h.Digests[name]), orNone(want.Digests[name])))
 		}
 	}

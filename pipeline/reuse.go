@@ -47,7 +47,7 @@ func reachOf(old, now *planHead) (reach, []string) {
 			continue
 		}
 		switch name {
-		case settingsDigest, layoutsDigest, manifestDigest:
+		case settingsDigest, calibrationDigest, layoutsDigest, manifestDigest:
 		default:
 			note(every, name)
 		}

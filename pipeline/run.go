@@ -79,7 +79,10 @@ type Run struct {
 // The names in the digests of a plan that are not the processor's.
 const (
 	settingsDigest = "settings"
-	layoutsDigest  = "layouts"
+	// calibrationDigest is of what turns a gap between scores into a confidence
+	// and a verdict. It is a part of the settings.
+	calibrationDigest = "calibration"
+	layoutsDigest     = "layouts"
 )
 
 // Recalled is what an earlier command planned in a run folder.
@@ -236,7 +239,7 @@ func (r *Run) Folder() string { return r.out }
 
 // head builds the head of a plan for the job.
 func (j *Job) head() (planHead, error) {
-	digests := map[string]string{settingsDigest: j.Settings.Digest()}
+	digests := map[string]string{settingsDigest: j.Settings.Digest(), calibrationDigest: Settings{Verdict: j.Settings.Verdict}.Digest()}
 	maps.Copy(digests, j.Processor.Digests())
 	if len(j.Layouts) > 0 {
 		sum := sha256.New()

@@ -29,6 +29,8 @@ func (c *gatherCmd) run(a *app) (int, error) {
 		return 0, err
 	}
 	s.log = s.log.With("run", r.ID())
+	s.progress.startMetrics(r.LogFile(), r.ID(), "")
+	s.progress.total = r.Objects()
 	join := r.Gather
 	if c.AcceptMissing {
 		join = r.GatherPresent
@@ -37,6 +39,7 @@ func (c *gatherCmd) run(a *app) (int, error) {
 	if err != nil {
 		return 0, s.failed(err)
 	}
+	s.progress.there = summary.Objects
 	s.report(c.Out, summary)
 	return outcomeCode(summary), nil
 }

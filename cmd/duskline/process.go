@@ -1,6 +1,8 @@
 package main
 
 import (
+	"context"
+	"errors"
 	"fmt"
 	"io"
 	"log/slog"
@@ -43,6 +45,7 @@ func (s *session) prepare(job pipeline.Job) (*pipeline.Run, error) {
 		return nil, err
 	}
 	s.log = s.log.With("run", r.ID())
+	s.progress.startMetrics(r.LogFile(), r.ID(), job.Shard.String())
 	s.log.Info("run begins", "out", job.Out, "program", job.Program, "build", job.Build, "spectra", r.Objects(),
 		"blocks", r.Blocks(), "shard", job.Shard.String())
 	return r, nil
@@ -56,6 +59,11 @@ func (s *session) end() {
 // failed notes an error in the log of the run on its way out.
 func (s *session) failed(err error) error {
 	s.log.Warn("run ends early", "error", err)
+	state := "failed"
+	if errors.Is(err, context.Canceled) {
+		state = "interrupted"
+	}
+	s.progress.endMetrics(state, err)
 	return err
 }
 
@@ -80,6 +88,7 @@ func (a *app) process(job pipeline.Job, flags logFlags) (*pipeline.Summary, erro
 	}
 	if !job.Shard.Whole() {
 		s.progress.close()
+		s.progress.endMetrics("done", nil)
 		s.log.Info("shard ends", "shard", job.Shard.String(), "spectra", s.progress.done, "unreadable", s.progress.bad,
 			"seconds", s.seconds())
 		if !flags.Quiet {
@@ -115,6 +124,7 @@ func (a *app) planOnly(job pipeline.Job, flags logFlags) error {
 // nothing else.
 func (s *session) report(out string, summary *pipeline.Summary) {
 	s.progress.close()
+	s.progress.endMetrics("done", nil)
 	s.log.Info("run ends", "complete", summary.Complete, "spectra", summary.Objects, "secure", summary.Verdicts["secure"],
 		"uncertain", summary.Verdicts["uncertain"], "none", summary.Verdicts["none"], "unreadable", summary.Unreadable,
 		"internal_errors", summary.InternalErrors, "seconds", s.seconds())

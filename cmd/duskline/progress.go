@@ -32,6 +32,8 @@ type progress struct {
 	done   int64 // in this process
 	secure int64
 	bad    int64 // unreadable
+
+	metrics *metrics // nil before the run folder is known
 }
 
 func newProgress(w io.Writer, showBar bool, log *slog.Logger) *progress {
@@ -93,6 +95,7 @@ func (p *progress) Planning(inputs, spectra int64) {
 func (p *progress) Working(total, there int64) {
 	p.total, p.there, p.start = total, there, time.Now()
 	p.log.Info("working", "spectra", total, "already_done", there)
+	p.tellMetrics(true)
 	if total > there {
 		p.newBar(total-there, "measuring")
 	}
@@ -109,6 +112,7 @@ func (p *progress) Object(o *catalog.Object) {
 	if p.bar != nil {
 		p.bar.Add(1)
 	}
+	p.tellMetrics(false)
 	if p.due() {
 		rate := float64(p.done) / time.Since(p.start).Seconds()
 		left := time.Duration(float64(p.total-p.there-p.done) / rate * float64(time.Second))
@@ -127,4 +131,5 @@ func (p *progress) Elsewhere(n int64) {
 func (p *progress) Gathering() {
 	p.close()
 	p.log.Info("writing the catalogs")
+	p.endMetrics("gathering", nil)
 }

@@ -33,9 +33,9 @@ func startSlurm(t *testing.T, s *crashSite) *slurmSite {
 	if err != nil {
 		t.Fatal(err)
 	}
-	out, err := exec.Command("testdata/slurm/start.sh", folder).Output()
+	out, err := exec.Command("bash", "testdata/slurm/start.sh", folder).Output()
 	t.Cleanup(func() {
-		if err := exec.Command("testdata/slurm/stop.sh", folder).Run(); err != nil {
+		if err := exec.Command("bash", "testdata/slurm/stop.sh", folder).Run(); err != nil {
 			t.Errorf("the test Slurm was not stopped: %v", err)
 		}
 		os.RemoveAll(folder)
