@@ -188,7 +188,7 @@ func (s *Scratch) bestCenter(f *Finder, opt Options) (best cloud, ok bool) {
 		d.null[i+1] = d.null[i] + s.cost(i, d.level[i], 1)
 	}
 	core := int(coreKms / fo.step)
-	last := min(n-1, s.bin(f, spectrum.SpeedOfLight*math.Log1p(opt.Z)+aheadKms))
+	last := min(n-1, s.bin(f, spectrum.SpeedOfLight*math.Log1p(opt.Z)+aheadKms+3*spectrum.SpeedOfLight*max(0, opt.ZErr)/(1+opt.Z)))
 	best.gain = searchGain
 	at, column := -1, 0
 	for i := max(core, fo.first); i <= last; i++ {

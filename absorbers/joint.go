@@ -1,10 +1,6 @@
 package absorbers
 
-import (
-	"math"
-
-	"duskline/spectrum"
-)
+import "math"
 
 const (
 	// Standard errors of what is known beforehand: gain, tilt and bend of the
@@ -75,6 +71,8 @@ func (s *Scratch) fitClouds(f *Finder, k int) bool {
 	for _, m := range j.members {
 		d.found[m].chi2, d.found[m].dof = chi2, max(1, dof-float64(3*len(j.members)))
 		d.found[m].lap = len(j.members) > 1
+		lo, hi := s.lineWindow(f, d.found[m], 0)
+		d.found[m].hidden = s.goodShare(lo, hi) < 0.95
 	}
 	return true
 }
@@ -291,166 +289,6 @@ func (s *Scratch) solveJoint(f *Finder) (chi2 float64, ok bool) {
 	return chi2, true
 }
 
-// chi2 is that of a model with the present weights, priors included.
-func (s *Scratch) chi2(p, model []float64) float64 {
-	j, fo := &s.joint, &s.forest
-	sum := 0.0
-	for _, w := range j.windows {
-		for i := w.lo; i < w.hi; i++ {
-			k := w.at + i - w.lo
-			r := fo.flux[i] - model[k]
-			sum += r * r * j.weight[k]
-		}
-	}
-	for i := range p {
-		if v, e := s.prior(i); e > 0 {
-			sum += (p[i] - v) * (p[i] - v) / (e * e)
-		}
-	}
-	return sum
-}
-
-// linearize fills the normal equations at p, with derivatives by differences.
-func (s *Scratch) linearize(f *Finder, n int) {
-	j, fo := &s.joint, &s.forest
-	total := len(j.model)
-	nm := 3 * len(j.members)
-	for i := range n {
-		h := 0.02
-		if i < nm && i%3 == 0 {
-			h = 20 // km/s
-		}
-		row := j.deriv[i*total : (i+1)*total]
-		if i >= nm {
-			clear(row)
-			w := j.windows[(i-nm)/shapes]
-			half := 0.5 * float64(w.hi-w.lo)
-			for b := range w.hi - w.lo {
-				row[w.at+b] = fo.level[w.lo+b] * j.shade[w.at+b]
-				switch u := float64(b)/half - 1; (i - nm) % shapes {
-				case 1:
-					row[w.at+b] *= u
-				case 2:
-					row[w.at+b] *= u*u - 1.0/3
-				}
-			}
-			continue
-		}
-		old := j.p[i]
-		j.p[i] = old + h
-		s.evaluate(f, j.p, row, nil)
-		j.p[i] = old
-		for b := range row {
-			row[b] = (row[b] - j.model[b]) / h
-		}
-	}
-	clear(j.a)
-	clear(j.b)
-	for i := range n {
-		ri := j.deriv[i*total : (i+1)*total]
-		for k := i; k < n; k++ {
-			rk := j.deriv[k*total : (k+1)*total]
-			sum := 0.0
-			for b, w := range j.weight {
-				sum += ri[b] * rk[b] * w
-			}
-			j.a[i*n+k], j.a[k*n+i] = sum, sum
-		}
-		for _, w := range j.windows {
-			for b := w.lo; b < w.hi; b++ {
-				k := w.at + b - w.lo
-				j.b[i] += ri[k] * j.weight[k] * (fo.flux[b] - j.model[k])
-			}
-		}
-		if v, e := s.prior(i); e > 0 {
-			j.a[i*n+i] += 1 / (e * e)
-			j.b[i] -= (j.p[i] - v) / (e * e)
-		}
-	}
-}
-
-// factor writes the Cholesky factor of a with its diagonal raised.
-func (j *joint) factor(n int, lambda float64) bool {
-	for r := range n {
-		for c := 0; c <= r; c++ {
-			v := j.a[r*n+c]
-			if r == c {
-				v *= 1 + lambda
-			}
-			for k := range c {
-				v -= j.chol[r*n+k] * j.chol[c*n+k]
-			}
-			if r != c {
-				j.chol[r*n+c] = v / j.chol[c*n+c]
-				continue
-			}
-			if !(v > 1e-12*j.a[r*n+r]) {
-				return false
-			}
-			j.chol[r*n+r] = math.Sqrt(v)
-		}
-	}
-	return true
-}
-
-func (j *joint) back(n int, x []float64) {
-	for r := range n {
-		for k := range r {
-			x[r] -= j.chol[r*n+k] * x[k]
-		}
-		x[r] /= j.chol[r*n+r]
-	}
-	for r := n - 1; r >= 0; r-- {
-		for k := r + 1; k < n; k++ {
-			x[r] -= j.chol[k*n+r] * x[k]
-		}
-		x[r] /= j.chol[r*n+r]
-	}
-}
-
-// proposeJoint puts the damped step into best, within bounds.
-func (s *Scratch) proposeJoint(n int, lambda float64) bool {
-	j := &s.joint
-	if !j.factor(n, lambda) {
-		return false
-	}
-	copy(j.step, j.b)
-	j.back(n, j.step)
-	nm := 3 * len(j.members)
-	for i := range n {
-		v := j.p[i] + j.step[i]
-		switch {
-		case math.IsNaN(v):
-			return false
-		case i >= nm:
-		case i%3 == 0:
-			v = min(max(v, s.startX[i/3]-mostShift), s.startX[i/3]+mostShift)
-		case i%3 == 1:
-			v = min(max(v, lowestLogN), highestLogN)
-		default:
-			v = min(max(v, math.Log(5)), math.Log(150))
-		}
-		j.best[i] = v
-	}
-	return true
-}
-
-func (s *Scratch) invertJoint(n int) bool {
-	j := &s.joint
-	if !j.factor(n, 0) {
-		return false
-	}
-	for c := range n {
-		clear(j.step)
-		j.step[c] = 1
-		j.back(n, j.step)
-		for r := range n {
-			j.cov[r*n+c] = j.step[r]
-		}
-	}
-	return true
-}
-
 // gainOf returns by how much -2 ln likelihood of the bins of the joint fit
 // grows without system k.
 func (s *Scratch) gainOf(f *Finder, k int) float64 {
@@ -485,46 +323,4 @@ func (s *Scratch) gainOf(f *Finder, k int) float64 {
 	sum(-1)
 	s.damp.found[k].gain = gain
 	return gain
-}
-
-// reportHydrogen appends the systems found, by redshift.
-func (s *Scratch) reportHydrogen(dst []System, f *Finder, opt Options) []System {
-	d := &s.damp
-	for i := 1; i < len(d.found); i++ {
-		for k := i; k > 0 && d.found[k].x < d.found[k-1].x; k-- {
-			d.found[k], d.found[k-1] = d.found[k-1], d.found[k]
-		}
-	}
-	for _, c := range d.found {
-		sys := blank(Hydrogen)
-		sys.Z = math.Expm1(c.x / spectrum.SpeedOfLight)
-		sys.ZErr = (1 + sys.Z) * c.xErr / spectrum.SpeedOfLight
-		sys.LogN, sys.LogErr = c.logN, math.Hypot(c.nErr, columnFloor)
-		if c.bErr < 0.5*lnBPrior {
-			sys.B = math.Exp(c.lnB)
-			sys.BErr = sys.B * c.bErr
-		}
-		sys.EW = f.series[0].EquivalentWidth(math.Pow(10, c.logN), math.Exp(c.lnB))
-		sys.EWErr = 0.5 * math.Ln10 * sys.LogErr * sys.EW
-		sys.Significance = math.Sqrt(max(0, c.gain))
-		for l := range c.lines {
-			if l > 0 {
-				sys.Lines += "+"
-			}
-			sys.Lines += f.names[l]
-		}
-		for _, t := range []struct {
-			set  bool
-			flag Flags
-		}{
-			{c.nErr > 0.3, FlatPart}, {c.chi2 > poorFrom*c.dof, PoorFit}, {c.bound, AtBound}, {c.lines == 1, OneLine}, {c.lap, Overlaps},
-			{spectrum.SpeedOfLight*math.Log1p(opt.Z)-c.x < proximateKms, Proximate}, {c.hidden, PartlyHidden},
-		} {
-			if t.set {
-				sys.Flags |= t.flag
-			}
-		}
-		dst = append(dst, sys)
-	}
-	return dst
 }

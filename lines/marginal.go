@@ -90,9 +90,9 @@ func (s *Scratch) averageTie(e *tie) {
 			}
 			m.p[e.ps] = w
 			g.bound(m, 0)
-			// The second step starts near, a third knows what was put at a
-			// bound.
-			if !m.linear(&s.prob) || !m.linear(&s.prob) || g.pressed(m) && !m.linear(&s.prob) {
+			// The second step starts near, the third knows what the first
+			// put at a bound.
+			if !m.linear(&s.prob) || !m.linear(&s.prob) || !m.linear(&s.prob) {
 				break
 			}
 			drop := (m.chi2 - chi2) / g.scale2
@@ -123,16 +123,6 @@ func (g *average) bound(m *marquardt, far float64) {
 			m.lo[a], m.hi[a] = math.Inf(-1), far
 		}
 	}
-}
-
-// pressed reports whether a crowded amplitude lies at its bound.
-func (g *average) pressed(m *marquardt) bool {
-	for _, a := range g.tight {
-		if m.p[a] == 0 {
-			return true
-		}
-	}
-	return false
 }
 
 // add takes in the parameters of a node and their covariance.
