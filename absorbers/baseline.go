@@ -22,6 +22,7 @@ type forest struct {
 	level    []float64 // mean level that thin absorption leaves
 	mean     []float64 // mean transmission of the intergalactic medium
 	scatter  float64   // standard deviation of the thin absorption over level, of a bin
+	scale    float64   // typical flux
 	memory   float64   // by how much correlation of neighboring bins raises that of wide means
 	sres     float64   // instrument's sigma, km/s
 	basis    [][]float64
@@ -109,7 +110,7 @@ var bumps = [...]struct{ wave, sigma float64 }{
 const levelSize = 3 + len(bumps)
 
 const (
-	levelRounds = 8
+	levelRounds = 5
 	// A bin leaves the level where it lies below this part of it and below
 	// three of its errors, scatter included: it belongs to a damped line.
 	deepPart = 0.55
@@ -125,7 +126,7 @@ func (f *forest) follow(z float64) bool {
 		f.shade[i] = 1
 	}
 	f.prepare(z)
-	f.scatter = 0.2
+	f.scatter, f.scale = 0.2, f.typical()
 	for round := range levelRounds {
 		if !f.refit() {
 			return false
@@ -200,7 +201,7 @@ func (f *forest) refit() bool {
 	const nb = levelSize
 	n := len(f.flux)
 	var a [nb][nb + 1]float64
-	scale := f.typical()
+	scale := f.scale
 	for r := range a {
 		// Bumps are small unless the data say else.
 		prior := 1e-4
@@ -210,6 +211,8 @@ func (f *forest) refit() bool {
 		a[r][r] = prior / (scale * scale)
 	}
 	used := 0
+	var row [nb]int
+	var value [nb]float64
 	for i := range n {
 		if !f.keep[i] {
 			continue
@@ -217,12 +220,20 @@ func (f *forest) refit() bool {
 		used++
 		s := f.scatter * scale * f.shade[i]
 		w := f.shade[i] / (f.noise[i] + s*s)
+		// Most bumps are far from most bins.
+		near := 0
 		for r := range nb {
-			wr := w * f.basis[r][i]
-			for c := r; c < nb; c++ {
-				a[r][c] += wr * f.basis[c][i] * f.shade[i]
+			if v := f.basis[r][i]; v > 1e-6 || r < 3 {
+				row[near], value[near] = r, v
+				near++
 			}
-			a[r][nb] += wr * f.flux[i]
+		}
+		for k := range near {
+			wr := w * value[k]
+			for l := k; l < near; l++ {
+				a[row[k]][row[l]] += wr * value[l] * f.shade[i]
+			}
+			a[row[k]][nb] += wr * f.flux[i]
 		}
 	}
 	var p [nb]float64

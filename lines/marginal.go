@@ -92,7 +92,11 @@ func (s *Scratch) averageTie(e *tie) {
 			g.bound(m, 0)
 			// The second step starts near, the third knows what the first
 			// put at a bound.
-			if !m.linear(&s.prob) || !m.linear(&s.prob) || !m.linear(&s.prob) {
+			solved := true
+			for k := 0; k < 3 && solved; k++ {
+				solved = m.linear(&s.prob)
+			}
+			if !solved {
 				break
 			}
 			drop := (m.chi2 - chi2) / g.scale2
