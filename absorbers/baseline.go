@@ -18,6 +18,7 @@ type forest struct {
 	x0, step float64   // c ln wave of the center of bin 0; km/s
 	first    int       // first bin redward of the Lyman limit of the background
 	flux     []float64 // mean over the bin
+	waves    []float64 // wavelengths of the centers
 	noise    []float64 // variance of that mean, 0 where there is no data
 	level    []float64 // mean level that thin absorption leaves
 	mean     []float64 // mean transmission of the intergalactic medium
@@ -54,6 +55,10 @@ func (f *forest) fill(t *track, z float64) bool {
 	f.x0 = t.x[first]
 	n := int((t.x[last-1]-f.x0)/f.step) + 1
 	f.flux, f.noise = resize(f.flux, n), resize(f.noise, n)
+	f.waves = f.waves[:0]
+	for i := range n {
+		f.waves = append(f.waves, math.Exp((f.x0+float64(i)*f.step)/spectrum.SpeedOfLight))
+	}
 	f.keep = f.keep[:0]
 	counts := resize(f.sorted, n) // borrowed
 	var sres, cover float64

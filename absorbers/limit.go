@@ -46,7 +46,8 @@ func (s *Scratch) findLimit(dst []System, f *Finder, opt Options) []System {
 	last := int((spectrum.SpeedOfLight*math.Log(hydrogen.LymanLimit*(1+opt.Z)*(1+aheadKms/spectrum.SpeedOfLight)) - fo.x0) / fo.step)
 	bestGain, at, depth := limitGain, -1, 0.0
 	var span [2]int
-	for i := limitLeast; i <= min(last, n-1); i += 3 {
+	// First with wide steps and few depths, then around the best with all.
+	try := func(i, by int) {
 		edge := fo.wave(i)
 		lo, hi := i, i
 		for lo > 0 && fo.wave(lo-1) > edge*(1-limitSpan) {
@@ -58,18 +59,28 @@ func (s *Scratch) findLimit(dst []System, f *Finder, opt Options) []System {
 		var blue, red int
 		null := s.limitCost(lo, hi, edge, 0, &blue, &red)
 		if blue < limitLeast || red < limitLeast {
-			continue
+			return
 		}
 		tau := limitFirst
-		for range limitDepths {
+		for d := range limitDepths {
+			if d%by != by/2 {
+				tau *= limitGrowth
+				continue
+			}
 			if gain := null - s.limitCost(lo, hi, edge, tau, nil, nil); gain > bestGain {
 				bestGain, at, depth, span = gain, i, tau, [2]int{lo, hi}
 			}
 			tau *= limitGrowth
 		}
 	}
+	for i := limitLeast; i <= min(last, n-1); i += 9 {
+		try(i, 4)
+	}
 	if at < 0 {
 		return dst
+	}
+	for i, center := max(limitLeast, at-9), at; i <= min(center+9, last, n-1); i += 3 {
+		try(i, 1)
 	}
 	sys := blank(Hydrogen)
 	sys.Z = fo.wave(at)/hydrogen.LymanLimit - 1
