@@ -33,11 +33,10 @@ var edges = map[string][]string{
 	"lines":            {"spectrum", "hydrogen", "linelist"},
 	"absorbers":        {"spectrum", "hydrogen", "linelist"},
 	"catalog":          {"internal/fitsout"},
-	"report":           {"catalog"},
 	"synth":            {"spectrum", "hydrogen", "linelist", "catalog", "internal/fitsout"},
 	"pipeline": {"spectrum", "hydrogen", "linelist", "configs", "fitsread", "continuum", "redshift", "lines", "absorbers",
 		"catalog", "synth", "internal/fitsout", "manifest"},
-	"cmd/duskline": {"pipeline", "cluster", "catalog", "report", "synth", "configs", "fitsread", "spectrum"},
+	"cmd/duskline": {"pipeline", "cluster", "catalog", "synth", "configs", "fitsread", "spectrum"},
 }
 
 // testEdges is what the tests of any package may import on top: makers of

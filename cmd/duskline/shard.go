@@ -10,12 +10,11 @@ import (
 // arrayEngine says in which variables an engine for job arrays keeps the number
 // of an element and what is known of the others.
 type arrayEngine struct {
-	name         string
-	index        string
-	first, last  string // empty: see count
-	step         string // empty: 1
-	count        string // elements that were submitted; empty: unknown
-	startsAtZero bool   // where first is not told
+	name        string
+	index       string
+	first, last string // empty: see count
+	step        string // empty: 1
+	count       string // elements that were submitted; empty: unknown
 }
 
 // arrayEngines are tried in order.
