@@ -88,7 +88,7 @@ func (g *gathering) all(ctx context.Context) error {
 		return err
 	}
 	defer shop.close()
-	if g.names, err = newNames(shop.path, g.totals.Objects); err != nil {
+	if g.names, err = newNames(shop.path, g.totals.Objects, idsAPart); err != nil {
 		return err
 	}
 	defer g.names.close()

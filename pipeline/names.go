@@ -38,10 +38,11 @@ const idsAPart = 500_000
 // nameRecord is an object and the hash of its ID, or its number.
 const nameRecord = 16
 
-// newNames makes files in a folder for an expected number of objects.
-func newNames(folder string, objects int64) (*names, error) {
+// newNames makes files in a folder, so many that one of objects IDs has about
+// aPart of them.
+func newNames(folder string, objects, aPart int64) (*names, error) {
 	n := &names{folder: folder}
-	for i := range int(objects/idsAPart) + 1 {
+	for i := range int(objects/aPart) + 1 {
 		f, err := os.Create(filepath.Join(folder, fmt.Sprintf("ids-%04d", i)))
 		if err != nil {
 			n.close()

@@ -12,8 +12,8 @@ import (
 type arrayEngine struct {
 	name        string
 	index       string
-	first, last string // empty: see count
-	step        string // empty: 1
+	first, last string // an empty first is 1
+	step        string
 	count       string // elements that were submitted; empty: unknown
 }
 
