@@ -32,39 +32,12 @@ func differences(dst, flux, ivar []float64) []float64 {
 	return dst
 }
 
-// medianOf reorders v, which has no NaN, and returns its median, the upper one
-// of an even number, 0 for none. It selects (Hoare 1961) rather than sorts.
+// medianOf is spectrum.Median with 0 for the median of nothing.
 func medianOf(v []float64) float64 {
 	if len(v) == 0 {
 		return 0
 	}
-	k := len(v) / 2
-	for lo, hi := 0, len(v)-1; lo < hi; {
-		pivot := v[lo+(hi-lo)/2]
-		i, j := lo, hi
-		for i <= j {
-			for v[i] < pivot {
-				i++
-			}
-			for v[j] > pivot {
-				j--
-			}
-			if i <= j {
-				v[i], v[j] = v[j], v[i]
-				i++
-				j--
-			}
-		}
-		switch {
-		case k <= j:
-			hi = j
-		case k >= i:
-			lo = i
-		default:
-			return v[k]
-		}
-	}
-	return v[k]
+	return spectrum.Median(v)
 }
 
 func medianPositive(v []float64) float64 {
