@@ -2,6 +2,8 @@ package fitsread
 
 import (
 	"math"
+
+	"duskline/spectrum"
 )
 
 // Robust noise of a spectrum after Stoehr et al. 2008 (ADASS XVII, ASP Conf. Ser.
