@@ -152,7 +152,8 @@ func TestTableAgainstFormulas(t *testing.T) {
 // The forest is the mean transmission less one. The table is linear in
 // redshift over steps of 0.1 and in log wavelength over steps of 4e-4 dex; away
 // from the steps at the Lyman lines, where a table pixel is left out on each
-// side, that costs up to 0.42 percent of the continuum.
+// side, that costs up to 0.6 percent of the continuum, most of it below the
+// Lyman limit.
 func TestForestAgainstTransmission(t *testing.T) {
 	var series []float64
 	for n := 2; n <= 45; n++ {
@@ -194,7 +195,7 @@ func TestForestAgainstTransmission(t *testing.T) {
 				continue
 			}
 			want := hydrogen.Transmission(z, wave*(1+z)) - 1
-			if math.Abs(v-want) > 0.006 {
+			if math.Abs(v-want) > 0.01 {
 				t.Fatalf("z = %.3f, rest %.2f Angstrom: %.5f, want %.5f", z, wave, v, want)
 			}
 			if wave > 1216 && v != 0 {
