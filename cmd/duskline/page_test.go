@@ -12,6 +12,9 @@ import (
 
 // TestRunningPage runs the commands of docs/running.md as they stand there.
 func TestRunningPage(t *testing.T) {
+	if testing.Short() {
+		t.Skip("the scripts run the same commands")
+	}
 	text, err := os.ReadFile("../../docs/running.md")
 	if err != nil {
 		t.Fatal(err)

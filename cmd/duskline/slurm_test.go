@@ -130,9 +130,6 @@ func (s *slurmSite) jobs() (array, gather string) {
 // missing and requeues one of these, on two nodes with different numbers of
 // workers: the catalogs are those of one run on one machine.
 func TestSlurm(t *testing.T) {
-	if testing.Short() {
-		t.Skip("takes most of a minute")
-	}
 	if os.Getenv("DUSKLINE_SLURM") != "1" {
 		t.Skip("needs Slurm daemons of its own; set DUSKLINE_SLURM=1 as the gate does")
 	}
