@@ -40,7 +40,7 @@ func DefaultOptions() Options {
 		Stiffness:     0.03,
 		Temper:        12,
 		ClipSpikes:    6,
-		Nominees:      14,
+		Nominees:      10,
 		MinPixels:     200,
 		SearchFrom:    3000,
 		SearchTo:      26000,
@@ -338,7 +338,7 @@ func (f *Finder) judge(s *Scratch) {
 	s.count = grow(s.count, len(f.families))
 	clear(s.count)
 	for _, p := range s.peaks {
-		if p.score > 0.4*best+30 || s.count[p.index] >= 14 {
+		if p.score > 0.4*best+30 || s.count[p.index] >= 8 {
 			continue
 		}
 		dup := false
