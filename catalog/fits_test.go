@@ -12,6 +12,7 @@ import (
 	"testing"
 
 	"duskline/internal/fitsout"
+	"duskline/internal/outside"
 
 	"github.com/google/go-cmp/cmp"
 	"pgregory.net/rapid"
@@ -58,15 +59,6 @@ func writeFITS(t interface{ Fatal(...any) }, objects []Object, lines []Line, abs
 	return m.Bytes()
 }
 
-// missing skips a live cross-check, or fails it where skips are forbidden.
-func missing(t *testing.T, what string) {
-	t.Helper()
-	if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
-		t.Fatalf("%s is not installed and skips are forbidden", what)
-	}
-	t.Skipf("%s is not installed", what)
-}
-
 func saveFITS(t *testing.T, objects []Object, lines []Line, absorbers ...Absorber) string {
 	path := filepath.Join(t.TempDir(), "catalog.fits")
 	if err := os.WriteFile(path, writeFITS(t, objects, lines, absorbers...), 0o644); err != nil {
@@ -76,10 +68,7 @@ func saveFITS(t *testing.T, objects []Object, lines []Line, absorbers ...Absorbe
 }
 
 func TestFITSVerify(t *testing.T) {
-	program, err := exec.LookPath("fitsverify")
-	if err != nil {
-		missing(t, "fitsverify")
-	}
+	program := outside.Program(t, "fitsverify")
 	for name, path := range map[string]string{
 		"rows":    saveFITS(t, someObjects(), someLines(), someAbsorbers()...),
 		"no rows": saveFITS(t, nil, nil),
@@ -109,10 +98,7 @@ type readback struct {
 // TestFITSInAstropy holds names, units, UCDs and every value against what an
 // independent reader finds. Numbers are compared bit by bit.
 func TestFITSInAstropy(t *testing.T) {
-	const python = "/usr/bin/python3"
-	if exec.Command(python, "-c", "import astropy").Run() != nil {
-		missing(t, "python3 with astropy")
-	}
+	python := outside.Python(t, "astropy")
 	objects, lines, absorbers := someObjects(), someLines(), someAbsorbers()
 	out, err := exec.Command("timeout", "60", python, filepath.Join("testdata", "readback.py"), saveFITS(t, objects, lines, absorbers...)).Output()
 	if err != nil {

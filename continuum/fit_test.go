@@ -6,10 +6,11 @@ import (
 	"errors"
 	"math"
 	"math/rand/v2"
-	"os"
 	"os/exec"
 	"slices"
 	"testing"
+
+	"duskline/internal/outside"
 
 	"gonum.org/v1/gonum/mat"
 	"pgregory.net/rapid"
@@ -98,19 +99,7 @@ func rough() (x, flux, ivar []float64) {
 // on the same interior knots. Uniform knots beyond the ends span the same
 // splines as repeated end knots.
 func TestFitAgreesWithScipy(t *testing.T) {
-	python := ""
-	for _, name := range []string{"python3", "/usr/bin/python3"} {
-		if exec.Command("timeout", "60", name, "-c", "import scipy.interpolate").Run() == nil {
-			python = name
-			break
-		}
-	}
-	if python == "" {
-		if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
-			t.Fatal("python3 with scipy is not installed and skips are forbidden")
-		}
-		t.Skip("python3 with scipy is not installed")
-	}
+	python := outside.Python(t, "scipy.interpolate")
 	x, flux, ivar := rough()
 	f := fitted(t, x, flux, ivar, Options{Spacing: 0.0251, Iterations: 1})
 	b := f.Basis()

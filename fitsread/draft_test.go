@@ -9,6 +9,7 @@ import (
 	"strings"
 	"testing"
 
+	"duskline/internal/outside"
 	"duskline/spectrum"
 
 	"github.com/google/go-cmp/cmp"
@@ -93,7 +94,7 @@ func TestDraftOfSamples(t *testing.T) {
 
 // Of every real file the draft reads what the built-in rules read.
 func TestDraftOfRealSpectra(t *testing.T) {
-	dir := sharedSpectra(t)
+	dir := outside.Spectra(t)
 	paths, err := filepath.Glob(filepath.Join(dir, "*", "*.fit*"))
 	if err != nil || len(paths) < 200 {
 		t.Fatalf("%d files, %v", len(paths), err)
@@ -265,7 +266,7 @@ func TestLayoutFiles(t *testing.T) {
 // what it reads is what the built-in rules read. Medium and frame may be stated by a
 // layout where the file does not.
 func TestLayoutFilesOfRealSpectra(t *testing.T) {
-	dir := sharedSpectra(t)
+	dir := outside.Spectra(t)
 	for pattern, name := range map[string]string{
 		"sdss_random100/*": "loglam-rows", "sdss_sky/*": "loglam-rows", "sdss_boss_qso/*": "loglam-rows", "sdss_spspec/*": "sigma-lines", "lamost_dr1/*": "ivar-lines",
 		"deep2/*": "arm-cells", "xqr30/*": "error-cells", "calspec/*": "staterror-rows", "dla_highres/UM669*": "axis-image", "hst_stis/*": "order-cells",

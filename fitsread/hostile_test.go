@@ -13,6 +13,7 @@ import (
 	"testing"
 	"time"
 
+	"duskline/internal/outside"
 	"duskline/spectrum"
 
 	"github.com/google/go-cmp/cmp"
@@ -94,7 +95,7 @@ func TestNotFiles(t *testing.T) {
 	dir := t.TempDir()
 	pipe := filepath.Join(dir, "pipe")
 	if err := syscall.Mkfifo(pipe, 0o644); err != nil {
-		missing(t, "no pipes here: "+err.Error())
+		outside.Missing(t, "no pipes here: %v", err)
 	}
 	link := filepath.Join(dir, "link.fits")
 	if err := os.Symlink(pipe, link); err != nil {

@@ -6,6 +6,8 @@ import (
 	"os/exec"
 	"path/filepath"
 	"testing"
+
+	"duskline/internal/outside"
 )
 
 // answers is the stream that testdata/live_files.py writes.
@@ -44,10 +46,7 @@ func (a *answers) array() []float64 {
 // rounding of a square and a quotient; wavelengths to 1e-9, the project's figure
 // for spectral axes.
 func TestFilesOfAstropy(t *testing.T) {
-	const python = "/usr/bin/python3"
-	if exec.Command(python, "-c", "import astropy").Run() != nil {
-		missing(t, "python3 with astropy is not there")
-	}
+	python := outside.Python(t, "astropy")
 	dir := t.TempDir()
 	raw, err := exec.Command(python, filepath.Join("testdata", "live_files.py"), dir).Output()
 	if err != nil {

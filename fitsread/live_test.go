@@ -7,6 +7,8 @@ import (
 	"os/exec"
 	"path/filepath"
 	"testing"
+
+	"duskline/internal/outside"
 )
 
 // liveScript reads the arrays of one file of every dataset with astropy and
@@ -53,11 +55,8 @@ for kind, path in zip(sys.argv[1::2], sys.argv[2::2]):
 // wavelengths and weights within the rounding of a few operations (1e-13).
 // Pixels that weigh zero here are compared in wavelength only.
 func TestAgainstAstropy(t *testing.T) {
-	dir := sharedSpectra(t)
-	const python = "/usr/bin/python3"
-	if exec.Command(python, "-c", "import astropy").Run() != nil {
-		missing(t, "python3 with astropy is not there")
-	}
+	dir := outside.Spectra(t)
+	python := outside.Python(t, "astropy")
 	cases := []struct{ pattern, kind, path string }{
 		{"calspec/alpha*", "sigma", ""}, {"deep2/*", "horne", ""}, {"desi_mini/coadd-sv3*", "arms", ""}, {"dla_highres/UM669*", "axis1", ""},
 		{"hst_stis/*", "orders", ""}, {"ism_textbook/m51*", "sigma", ""}, {"lamost_dr1/*", "lamost", ""}, {"pickles/*uk_9*", "noerror", ""},

@@ -8,6 +8,7 @@ import (
 	"strings"
 	"testing"
 
+	"duskline/internal/outside"
 	"duskline/spectrum"
 )
 
@@ -21,34 +22,10 @@ func moduleDir(t testing.TB, module string) string {
 	return strings.TrimSpace(string(out))
 }
 
-// sharedSpectra finds the folder of real spectra beside the repository.
-func sharedSpectra(t testing.TB) string {
-	t.Helper()
-	root := os.Getenv("DUSKLINE_SHARED")
-	if root == "" {
-		root = filepath.Join("..", "..", "shared")
-	}
-	dir := filepath.Join(root, "spectra")
-	if _, err := os.Stat(filepath.Join(dir, "truth.csv")); err != nil {
-		missing(t, "the folder of real spectra is not there: "+dir)
-	}
-	return dir
-}
-
-// missing skips a test for want of something outside the repository, or fails it
-// where skipping is forbidden.
-func missing(t testing.TB, why string) {
-	t.Helper()
-	if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
-		t.Fatal(why)
-	}
-	t.Skip(why)
-}
-
 // Every file of ../shared/spectra opens and reads, and its medium is the one
 // that truth.csv (column wavelengths) gives or is flagged as assumed.
 func TestRealSpectra(t *testing.T) {
-	dir := sharedSpectra(t)
+	dir := outside.Spectra(t)
 	fh, err := os.Open(filepath.Join(dir, "truth.csv"))
 	if err != nil {
 		t.Fatal(err)

@@ -7,10 +7,11 @@ import (
 	"math"
 	"math/cmplx"
 	"math/rand/v2"
-	"os"
 	"os/exec"
 	"strings"
 	"testing"
+
+	"duskline/internal/outside"
 
 	"pgregory.net/rapid"
 )
@@ -158,13 +159,7 @@ func TestVoigtDoesNotAllocate(t *testing.T) {
 // Random points against scipy.special.wofz, whose own error is 1e-14 in the
 // real and 1.4e-13 in the imaginary part (against the 30-digit table).
 func TestFaddeevaAgainstScipy(t *testing.T) {
-	const python = "/usr/bin/python3"
-	if err := exec.Command(python, "-c", "import scipy.special").Run(); err != nil {
-		if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
-			t.Fatalf("%s with scipy is missing: %v", python, err)
-		}
-		t.Skipf("%s with scipy is missing: %v", python, err)
-	}
+	python := outside.Python(t, "scipy.special")
 	rng := rand.New(rand.NewPCG(1, 2))
 	var in strings.Builder
 	points := make([]complex128, 4000)

@@ -7,6 +7,8 @@ import (
 	"os"
 	"os/exec"
 	"testing"
+
+	"duskline/internal/outside"
 )
 
 // fitScript fits two Gaussians of one offset and width plus a straight line to
@@ -31,26 +33,12 @@ p, cov = curve_fit(model, y, y, p0=d["start"], sigma=s, absolute_sigma=True, xto
 json.dump({"p": list(p), "e": list(np.sqrt(np.diag(cov)))}, sys.stdout)
 `
 
-// python returns a command that runs script with scipy, or skips the test;
-// DUSKLINE_NO_SKIP=1 turns the skip into a failure.
-func python(t *testing.T, script string) *exec.Cmd {
-	t.Helper()
-	const exe = "/usr/bin/python3"
-	if err := exec.Command(exe, "-c", "import scipy.optimize").Run(); err != nil {
-		if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
-			t.Fatalf("%s with scipy is missing: %v", exe, err)
-		}
-		t.Skipf("%s with scipy is missing: %v", exe, err)
-	}
-	return exec.Command(exe, "-c", script)
-}
-
 // The fit of a tied pair must agree with scipy.optimize.curve_fit on the same
 // pixels, values and errors. Both minimize the same sum but for a prior of 100
 // on the straight line, and stop within 1e-2 of an error; covariances are taken
 // a hair apart.
 func TestAgainstScipy(t *testing.T) {
-	cmd := python(t, fitScript)
+	cmd := exec.Command(outside.Python(t, "scipy.optimize"), "-c", fitScript)
 	m := parse(t, `
 [[line]]
 name = "A"

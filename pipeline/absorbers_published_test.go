@@ -13,6 +13,7 @@ import (
 	"duskline/absorbers"
 	"duskline/configs"
 	"duskline/fitsread"
+	"duskline/internal/outside"
 	"duskline/linelist"
 	"duskline/spectrum"
 )
@@ -84,7 +85,7 @@ func cell(row []string, i int) float64 {
 // third, of UM669, is logged: on this spectrum, normalized by others, the red
 // edge of the trough is brighter than any continuum times the published profile.
 func TestPublishedDamped(t *testing.T) {
-	dir := sharedSpectra(t)
+	dir := outside.Spectra(t)
 	f := absorberFinder(t)
 	for _, tc := range []struct {
 		file       string
@@ -119,7 +120,7 @@ func TestPublishedDamped(t *testing.T) {
 // hand sum, the stronger line of them has 4.1, 3.6 and -3 sigma, the weaker one
 // 1.4, 0.5 and 7 (in the wing of an emission line).
 func TestPublishedMgII(t *testing.T) {
-	dir := sharedSpectra(t)
+	dir := outside.Spectra(t)
 	f := absorberFinder(t)
 	zs := map[string]float64{}
 	for _, p := range readPublished(t, dir) {
@@ -150,7 +151,7 @@ func TestPublishedMgII(t *testing.T) {
 // within 600 km/s, both lines 1 % inside the coverage and redward of Lyman alpha,
 // off the telluric bands.
 func TestPublishedDoublets(t *testing.T) {
-	dir := sharedSpectra(t)
+	dir := outside.Spectra(t)
 	f := absorberFinder(t)
 	kinds := map[string]string{"MgII_2796": absorbers.MgII, "CIV_1548": absorbers.CIV, "SiIV_1393": absorbers.SiIV, "AlIII_1854": absorbers.AlIII}
 	wave := map[string]float64{absorbers.MgII: 2796.35, absorbers.CIV: 1548.20, absorbers.SiIV: 1393.76, absorbers.AlIII: 1854.72}

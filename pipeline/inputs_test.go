@@ -8,6 +8,8 @@ import (
 	"strings"
 	"syscall"
 	"testing"
+
+	"duskline/internal/outside"
 )
 
 // found returns what findInputs yields, a line a candidate.
@@ -133,7 +135,7 @@ func TestOddNames(t *testing.T) {
 	base := t.TempDir()
 	name := "odd\xff\n.fits"
 	if err := os.WriteFile(filepath.Join(base, name), []byte("w"), 0o666); err != nil {
-		t.Skipf("this file system takes no such name: %v", err)
+		outside.Missing(t, "this file system takes no such name: %v", err)
 	}
 	set := DefaultSettings()
 	job := Job{Out: "RUN", Base: base, Paths: []string{name}, Settings: set, Program: "test", Processor: wordScience{}, Open: openWords}

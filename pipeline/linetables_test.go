@@ -10,6 +10,7 @@ import (
 
 	"duskline/catalog"
 	"duskline/fitsread"
+	"duskline/internal/outside"
 	"duskline/pipeline"
 
 	"github.com/astrogo/fitsio"
@@ -104,7 +105,7 @@ func summarize(list []comparison) (ratio, scatter float64) {
 // are one line to the survey). Sums of our components and of doublets are
 // compared, and the survey's line sigma is not.
 func TestSurveyLineTables(t *testing.T) {
-	dir := sharedSpectra(t)
+	dir := outside.Spectra(t)
 	chain, err := pipeline.NewChain(pipeline.DefaultSettings())
 	if err != nil {
 		t.Fatal(err)

@@ -13,6 +13,7 @@ import (
 
 	"duskline/catalog"
 	"duskline/fitsread"
+	"duskline/internal/outside"
 	"duskline/pipeline"
 	"duskline/spectrum"
 
@@ -24,24 +25,6 @@ import (
 type published struct {
 	file, dataset, class, reliable string
 	z, zErr, snr                   float64
-}
-
-// sharedSpectra returns the folder of open spectra with published answers. The
-// test is skipped where there is none, unless skips are forbidden.
-func sharedSpectra(t *testing.T) string {
-	t.Helper()
-	root := os.Getenv("DUSKLINE_SHARED")
-	if root == "" {
-		root = filepath.Join("..", "..", "shared")
-	}
-	dir := filepath.Join(root, "spectra")
-	if _, err := os.Stat(filepath.Join(dir, "truth.csv")); err != nil {
-		if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
-			t.Fatalf("the folder of published spectra is missing and skips are forbidden: %v", err)
-		}
-		t.Skipf("no folder of published spectra at %s; set DUSKLINE_SHARED to its parent", dir)
-	}
-	return dir
 }
 
 func readPublished(t *testing.T, dir string) []published {
@@ -130,7 +113,7 @@ func best(worker pipeline.Worker, path string) (catalog.Object, error) {
 // km/s, for quasars 3,000 km/s, of the published value. The bounds are those
 // that the tool promises; the log shows every group, the weak ones too.
 func TestPublishedRedshifts(t *testing.T) {
-	dir := sharedSpectra(t)
+	dir := outside.Spectra(t)
 	list := readPublished(t, dir)
 	objects, errs := processAll(t, dir, list)
 

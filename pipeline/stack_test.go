@@ -17,6 +17,7 @@ import (
 	"duskline/catalog"
 	"duskline/fitsread"
 	"duskline/internal/fitsout"
+	"duskline/internal/outside"
 	"duskline/spectrum"
 )
 
@@ -310,28 +311,16 @@ func TestStackComplains(t *testing.T) {
 // TestStackFileElsewhere: other programs find the file in order and read the
 // same numbers.
 func TestStackFileElsewhere(t *testing.T) {
-	missing := func(what string) {
-		if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
-			t.Fatalf("%s is not installed and skips are forbidden", what)
-		}
-		t.Skipf("%s is not installed", what)
-	}
 	job := stackNight(t)
 	if _, err := Stack(context.Background(), job); err != nil {
 		t.Fatal(err)
 	}
 	path := filepath.Join(job.Base, job.Out)
-	if _, err := exec.LookPath("fitsverify"); err != nil {
-		missing("fitsverify")
-	}
-	out, err := exec.Command("timeout", "60", "fitsverify", "-l", path).CombinedOutput()
+	out, err := exec.Command("timeout", "60", outside.Program(t, "fitsverify"), "-l", path).CombinedOutput()
 	if err != nil || !strings.Contains(string(out), "0 warning(s) and 0 error(s)") {
 		t.Errorf("fitsverify: %v\n%s", err, out)
 	}
-	const python = "/usr/bin/python3"
-	if exec.Command(python, "-c", "import astropy").Run() != nil {
-		missing("python3 with astropy")
-	}
+	python := outside.Python(t, "astropy")
 	out, err = exec.Command("timeout", "60", python, "-W", "error", "-c", `
 import sys
 import numpy as np

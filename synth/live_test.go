@@ -4,21 +4,13 @@ import (
 	"encoding/json"
 	"errors"
 	"math"
-	"os"
 	"os/exec"
 	"path/filepath"
 	"strings"
 	"testing"
-)
 
-// missing skips a live cross-check, or fails it where skips are forbidden.
-func missing(t *testing.T, what string) {
-	t.Helper()
-	if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
-		t.Fatalf("%s is not installed and skips are forbidden", what)
-	}
-	t.Skipf("%s is not installed", what)
-}
+	"duskline/internal/outside"
+)
 
 // firstFiles writes a small night and returns its folder and the first truth
 // row of every plate.
@@ -45,10 +37,7 @@ func firstFiles(t *testing.T) (dir string, first []Truth) {
 // Every layout opens in astropy with the wavelengths, fluxes and weights that
 // were written.
 func TestLayoutsInAstropy(t *testing.T) {
-	const python = "/usr/bin/python3"
-	if exec.Command(python, "-c", "import astropy").Run() != nil {
-		missing(t, "python3 with astropy")
-	}
+	python := outside.Python(t, "astropy")
 	dir, first := firstFiles(t)
 	args := []string{"60", python, filepath.Join("testdata", "readback.py")}
 	for _, row := range first {
@@ -109,10 +98,7 @@ func TestLayoutsInAstropy(t *testing.T) {
 
 // fitsverify finds no error and no warning in any layout.
 func TestLayoutsVerify(t *testing.T) {
-	program, err := exec.LookPath("fitsverify")
-	if err != nil {
-		missing(t, "fitsverify")
-	}
+	program := outside.Program(t, "fitsverify")
 	dir, first := firstFiles(t)
 	for _, row := range first {
 		path := filepath.Join(dir, row.File)

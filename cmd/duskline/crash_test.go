@@ -14,6 +14,8 @@ import (
 	"syscall"
 	"testing"
 	"time"
+
+	"duskline/internal/outside"
 )
 
 // The full size: go test ./cmd/duskline -run Killed -kill-runs 20 -kills 10 -kill-objects 3000
@@ -181,7 +183,7 @@ func mountSmall(t *testing.T, folder string, size int) (resize func(size int)) {
 		return syscall.Mount("tmpfs", folder, "tmpfs", flags, fmt.Sprintf("size=%d", size))
 	}
 	if err := mount(0, size); err != nil {
-		missing(t, "a file system in memory cannot be mounted: %v; run the test as root", err)
+		outside.Missing(t, "a file system in memory cannot be mounted: %v; run the test as root", err)
 	}
 	t.Cleanup(func() { syscall.Unmount(folder, syscall.MNT_DETACH) })
 	return func(size int) {
@@ -189,16 +191,6 @@ func mountSmall(t *testing.T, folder string, size int) (resize func(size int)) {
 			t.Fatal(err)
 		}
 	}
-}
-
-// missing skips a test that needs what is not there, or fails it where skips
-// are forbidden.
-func missing(t *testing.T, format string, args ...any) {
-	t.Helper()
-	if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
-		t.Fatalf(format, args...)
-	}
-	t.Skipf(format, args...)
 }
 
 // TestDiskThatIsFull fills the disk at every stage: the plan, the first blocks,

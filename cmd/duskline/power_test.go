@@ -3,11 +3,12 @@ package main
 import (
 	"bufio"
 	"os"
-	"os/exec"
 	"path/filepath"
 	"regexp"
 	"strings"
 	"testing"
+
+	"duskline/internal/outside"
 )
 
 // call is one system call that matters for what a loss of power leaves.
@@ -19,10 +20,7 @@ type call struct {
 // under which it counts, its content and its folder are on disk, and the name
 // itself is before the run ends.
 func TestPowerLoss(t *testing.T) {
-	strace, err := exec.LookPath("strace")
-	if err != nil {
-		missing(t, "strace is not installed")
-	}
+	strace := outside.Program(t, "strace")
 	s := newCrashSite(t, 300)
 	trace := filepath.Join(s.base, "trace")
 	c := s.command()
@@ -30,7 +28,7 @@ func TestPowerLoss(t *testing.T) {
 	c.Args = append([]string{"strace", "-f", "-y", "-s", "4096", "-e", "trace=fsync,fdatasync,rename,renameat,renameat2,link,linkat",
 		"-o", trace, filepath.Join(s.bin, quickName)}, s.runArgs("RUN")...)
 	if code, out := finished(t, c); code != exitDone {
-		missing(t, "strace does not work here: exit code %d: %s", code, out)
+		outside.Missing(t, "strace does not work here: exit code %d: %s", code, out)
 	}
 	calls := readTrace(t, trace)
 	synced := map[string]int{} // path to its last sync

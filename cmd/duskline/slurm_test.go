@@ -13,6 +13,8 @@ import (
 	"syscall"
 	"testing"
 	"time"
+
+	"duskline/internal/outside"
 )
 
 // slurmSite is a Slurm of two nodes on this machine with a run to be done.
@@ -25,9 +27,7 @@ type slurmSite struct {
 func startSlurm(t *testing.T, s *crashSite) *slurmSite {
 	t.Helper()
 	for _, name := range []string{"slurmctld", "slurmd", "sbatch", "munged"} {
-		if _, err := exec.LookPath(name); err != nil {
-			missing(t, "%s is not installed: apt-get install slurmctld slurmd slurm-client munge", name)
-		}
+		outside.Program(t, name)
 	}
 	folder, err := os.MkdirTemp("/tmp", "lrslurm") // short: a socket lives there
 	if err != nil {

@@ -2,29 +2,18 @@ package fitsout
 
 import (
 	"encoding/json"
-	"os"
 	"os/exec"
 	"path/filepath"
 	"strings"
 	"testing"
-)
 
-// missing skips a live cross-check, or fails it where skips are forbidden.
-func missing(t *testing.T, what string) {
-	t.Helper()
-	if os.Getenv("DUSKLINE_NO_SKIP") == "1" {
-		t.Fatalf("%s is not installed and skips are forbidden", what)
-	}
-	t.Skipf("%s is not installed", what)
-}
+	"duskline/internal/outside"
+)
 
 // verifyFITS runs fitsverify, which must find no error and no warning.
 func verifyFITS(t *testing.T, path string) {
 	t.Helper()
-	program, err := exec.LookPath("fitsverify")
-	if err != nil {
-		missing(t, "fitsverify")
-	}
+	program := outside.Program(t, "fitsverify")
 	// It can hang on some files.
 	out, err := exec.Command("timeout", "60", program, "-l", path).CombinedOutput()
 	if err != nil || !strings.Contains(string(out), "0 warning(s) and 0 error(s)") {
@@ -50,10 +39,7 @@ type readback struct {
 // readAstropy returns what astropy finds in the file.
 func readAstropy(t *testing.T, path string) readback {
 	t.Helper()
-	python := "/usr/bin/python3"
-	if exec.Command(python, "-c", "import astropy").Run() != nil {
-		missing(t, "python3 with astropy")
-	}
+	python := outside.Python(t, "astropy")
 	out, err := exec.Command("timeout", "60", python, filepath.Join("testdata", "readback.py"), path).Output()
 	if err != nil {
 		if exit, ok := err.(*exec.ExitError); ok {
