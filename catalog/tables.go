@@ -57,7 +57,7 @@ func objectColumns() []column[Object] {
 			func(o *O) any { return &o.BaryVelocity }},
 		{Column{Name: "reason", UCD: "meta.note", Description: "why there is no answer, and what had to be assumed"},
 			func(o *O) any { return &o.Reason }},
-		{Column{Name: "input_digest", UCD: "meta.version;meta.file", Description: "digest of the bytes the spectrum was read from"},
+		{Column{Name: "input_digest", UCD: "meta.version;meta.file", Description: "digest of the headers of its file and of the bytes that the spectrum was read from"},
 			func(o *O) any { return &o.InputDigest }},
 		{Column{Name: "flux_unit", UCD: "meta.unit", Description: "flux unit of the input, which line fluxes and continua keep"},
 			func(o *O) any { return &o.FluxUnit }},

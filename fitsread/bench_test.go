@@ -66,16 +66,25 @@ func BenchmarkOpenColumns(b *testing.B) {
 	})
 }
 
+// BenchmarkDigest reads the same with and without recording what is read.
 func BenchmarkDigest(b *testing.B) {
-	path := save(b, surveyFile())
-	for b.Loop() {
-		f, err := Open(path, Options{})
-		if err != nil {
-			b.Fatal(err)
-		}
-		if _, err := f.Digest(0); err != nil {
-			b.Fatal(err)
-		}
-		f.Close()
+	f, err := Open(save(b, surveyFile()), Options{})
+	if err != nil {
+		b.Fatal(err)
 	}
+	defer f.Close()
+	b.Run("with", func(b *testing.B) {
+		timed(b, func() {
+			if _, err := f.Read(0); err != nil {
+				b.Fatal(err)
+			}
+		})
+	})
+	b.Run("without", func(b *testing.B) {
+		timed(b, func() {
+			if _, err := f.readAs(0, Nobody()); err != nil {
+				b.Fatal(err)
+			}
+		})
+	})
 }

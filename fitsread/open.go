@@ -2,13 +2,10 @@ package fitsread
 
 import (
 	"crypto/sha256"
-	"encoding/hex"
 	"errors"
 	"fmt"
-	"io"
 	"math"
 	"sort"
-	"sync"
 
 	"duskline/spectrum"
 )
@@ -30,12 +27,12 @@ type Options struct {
 // File is an open FITS file whose layout has been chosen. Its methods may be
 // called from several goroutines.
 type File struct {
-	path   string
-	opts   Options
-	src    *source
-	hdus   []*hdu
-	plan   *plan
-	digest func() ([]byte, error)
+	path string
+	opts Options
+	src  *source
+	hdus []*hdu
+	plan *plan
+	base [sha256.Size]byte // digest of what all spectra share
 }
 
 // Open reads the headers of a file and chooses its layout. Gzipped files are told
@@ -66,11 +63,16 @@ func Open(path string, opts Options) (f *File, err error) {
 
 // load walks the source and chooses the layout.
 func (f *File) load() (err error) {
-	f.digest = sync.OnceValues(f.hash)
 	if f.hdus, err = walk(f.src, f.src.size); err != nil {
 		return err
 	}
-	return f.choose()
+	heard, sum := f.recorded()
+	if err := heard.choose(); err != nil {
+		return err
+	}
+	f.plan = heard.plan
+	f.base = f.baseDigest(sum)
+	return nil
 }
 
 // guard gives errors the file's name and, as a last resort, turns a panic that a
@@ -124,7 +126,17 @@ func (f *File) locate(i int) (*group, int64) {
 // ReadAs is Read for an object of whom more is known than the file says: what who
 // has goes before the name and position of the file, also where wavelengths are
 // to be corrected for the motion of the Earth.
-func (f *File) ReadAs(i int, who Identity) (s *spectrum.Spectrum, err error) {
+func (f *File) ReadAs(i int, who Identity) (*spectrum.Spectrum, error) {
+	heard, sum := f.recorded()
+	s, err := heard.readAs(i, who)
+	if err != nil {
+		return nil, err
+	}
+	s.InputDigest = f.finish(sum, i)
+	return s, nil
+}
+
+func (f *File) readAs(i int, who Identity) (s *spectrum.Spectrum, err error) {
 	g, row := f.locate(i)
 	defer f.guard(&err)
 	s = &spectrum.Spectrum{SourceFile: f.path, SourceRow: i, Layout: f.plan.layout,
@@ -232,35 +244,4 @@ func (f *File) settleFrame(s *spectrum.Spectrum, g *group) {
 	if g.obs.frameDoubt == spectrum.FrameAssumed && math.IsNaN(s.BaryVelocity) {
 		s.Frame = spectrum.Barycentric // nothing to correct with: the same doubt, one name
 	}
-}
-
-// hash digests the bytes of the file, unpacked where it was gzipped.
-func (f *File) hash() ([]byte, error) {
-	h := sha256.New()
-	if _, err := io.Copy(h, io.NewSectionReader(f.src, 0, f.src.size)); err != nil {
-		return nil, fault(err, -1, hintCopy, "it cannot be read: %v", err)
-	}
-	if err := f.src.unchanged(); err != nil {
-		return nil, err
-	}
-	return h.Sum(nil), nil
-}
-
-// Digest identifies what spectrum i depends on: the first 16 hexadecimal digits
-// of the SHA-256 of the file's bytes (unpacked), the layout and the row. The
-// bytes are read once, whatever the number of spectra.
-//
-// Panics if i is not below Count.
-func (f *File) Digest(i int) (digest string, err error) {
-	if i < 0 || i >= f.Count() {
-		panic(fmt.Sprintf("fitsread: spectrum %d of %d", i, f.Count()))
-	}
-	defer f.guard(&err)
-	sum, err := f.digest()
-	if err != nil {
-		return "", err
-	}
-	h := sha256.New()
-	fmt.Fprintf(h, "%x %s %s %d", sum, f.plan.layout, f.plan.digest, i)
-	return hex.EncodeToString(h.Sum(nil)[:8]), nil
 }

@@ -320,7 +320,7 @@ func (f endlessFile) Count() int                   { return int(f) }
 func (f endlessFile) Close() error                 { return nil }
 func (f endlessFile) Digest(i int) (string, error) { return fmt.Sprint(i), nil }
 func (f endlessFile) Read(i int) (*spectrum.Spectrum, error) {
-	return &spectrum.Spectrum{Layout: fmt.Sprint(i), ObjectID: fmt.Sprint(i)}, nil
+	return &spectrum.Spectrum{Layout: fmt.Sprint(i), ObjectID: fmt.Sprint(i), InputDigest: fmt.Sprint(i)}, nil
 }
 
 // heapWatch measures the heap in use after some and after many objects.

@@ -58,7 +58,8 @@ func (f *wordFile) Read(i int) (*spectrum.Spectrum, error) {
 	case "trap":
 		panic("reading fell into a trap")
 	}
-	return &spectrum.Spectrum{ObjectID: f.words[i], SourceFile: f.path, SourceRow: i, RA: 10, Dec: 20, Layout: f.words[i]}, nil
+	digest, err := f.Digest(i)
+	return &spectrum.Spectrum{ObjectID: f.words[i], SourceFile: f.path, SourceRow: i, RA: 10, Dec: 20, Layout: f.words[i], InputDigest: digest}, err
 }
 
 // wordScience is a Processor whose answer is a hash of the word, and which

@@ -192,35 +192,46 @@ func (r *Run) warnManifest(used map[int]bool) {
 }
 
 // readObject reads a spectrum with what the manifest knows about it, which also
-// goes into the digest of its input.
+// goes into the digest of its input. The digest is empty where the disk gives
+// none.
 func (r *Run) readObject(in *planInput, f SpectrumFile, row int) (s *spectrum.Spectrum, digest string, err error) {
-	if digest, err = f.Digest(row); err != nil {
-		return nil, digest, err
+	e, names := r.known(in, f, row)
+	if e == nil {
+		s, err = f.Read(row)
+	} else {
+		s, err = names.ReadAs(row, fitsread.Identity{ObjectID: e.ObjectID, RA: e.RA, Dec: e.Dec})
 	}
+	if err == nil {
+		digest = s.InputDigest
+	} else if d, unknown := f.Digest(row); unknown == nil {
+		digest = d
+	}
+	if e == nil {
+		return s, digest, err
+	}
+	if digest != "" {
+		sum := sha256.Sum256([]byte(digest + " " + e.Key()))
+		digest = hex.EncodeToString(sum[:8])
+	}
+	if err == nil && e.Restricts() {
+		s.Limits = &spectrum.Limits{Class: e.ExpectedClass, ZMin: e.RedshiftMin, ZMax: e.RedshiftMax}
+	}
+	return s, digest, err
+}
+
+// known returns what the manifest says about an object of a file that takes it,
+// nil for nothing.
+func (r *Run) known(in *planInput, f SpectrumFile, row int) (*manifest.Entry, identifier) {
 	m := r.job.Manifest
 	names, ok := f.(identifier)
 	if m == nil || !ok {
-		s, err = f.Read(row)
-		return s, digest, err
+		return nil, nil
 	}
 	id := ""
 	if m.table.ByName() {
 		id = names.Identity(row).ObjectID
 	}
-	e := m.find(in.file(r.head.Folder), row, id)
-	if e == nil {
-		s, err = f.Read(row)
-		return s, digest, err
-	}
-	sum := sha256.Sum256([]byte(digest + " " + e.Key()))
-	digest = hex.EncodeToString(sum[:8])
-	if s, err = names.ReadAs(row, fitsread.Identity{ObjectID: e.ObjectID, RA: e.RA, Dec: e.Dec}); err != nil {
-		return nil, digest, err
-	}
-	if e.Restricts() {
-		s.Limits = &spectrum.Limits{Class: e.ExpectedClass, ZMin: e.RedshiftMin, ZMax: e.RedshiftMax}
-	}
-	return s, digest, nil
+	return m.find(in.file(r.head.Folder), row, id), names
 }
 
 // unreadObject is the row of an object that could not be read: what the manifest

@@ -120,13 +120,11 @@ func readStack(path, name string) StackText {
 		return s
 	}
 	sp, err := f.Read(0)
-	if err == nil {
-		s.Digest, err = f.Digest(0)
-	}
 	if err != nil {
 		s.problem = plainRead(err)
 		return s
 	}
+	s.Digest = sp.InputDigest
 	first, last := redshift.CompositeRange()
 	gridder := spectrum.Gridder{Step: redshift.CompositeStep, MinWave: first, MaxWave: last}
 	var g spectrum.Grid

@@ -57,7 +57,9 @@ type LayoutText struct {
 // call its methods, except Close, at the same time.
 type SpectrumFile interface {
 	Count() int
+	// Read returns spectrum i with its InputDigest.
 	Read(i int) (*spectrum.Spectrum, error)
+	// Digest is of spectrum i, also where it cannot be read.
 	Digest(i int) (string, error)
 	Close() error
 }

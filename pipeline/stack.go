@@ -121,6 +121,7 @@ type stacker struct {
 	planID string
 	chain  *Chain
 	open   func(string) (SpectrumFile, error)
+	run    Run // as far as reading needs it
 	report StackReport
 	named  map[string]bool // names of the exclude list that were met
 	lost   map[int64]bool  // rows of the catalog that could not be used
@@ -165,6 +166,12 @@ func newStacker(job StackJob) (*stacker, error) {
 	}
 	if job.Family != "" && known != nil {
 		return nil, inputError("%s knows no family %q; its families are %s", job.Run, job.Family, strings.Join(known, ", "))
+	}
+	st.run.head = st.head
+	if st.head.Manifest != "" {
+		if st.run.job.Manifest, err = ReadManifest(filepath.Join(st.out, st.head.Manifest), st.head.Manifest); err != nil {
+			return nil, err
+		}
 	}
 	st.open, err = openWith(st.head.Layouts)
 	return st, err
@@ -358,12 +365,9 @@ func (st *stacker) read(m *member) (s *spectrum.Spectrum, err error) {
 	if row < 0 || row >= f.Count() {
 		return nil, fmt.Errorf("has no spectrum %d any more", row)
 	}
-	digest, err := f.Digest(row)
+	s, digest, err := st.run.readObject(&m.in, f, row)
 	if err == nil && digest != m.object.InputDigest {
-		err = errors.New("was written to since the run")
+		return nil, errors.New("was written to since the run")
 	}
-	if err != nil {
-		return nil, err
-	}
-	return f.Read(row)
+	return s, err
 }

@@ -192,6 +192,25 @@ func TestStack(t *testing.T) {
 	}
 }
 
+// What a manifest said in the run holds when its spectra are read again.
+func TestStackWithManifest(t *testing.T) {
+	job := stackNight(t)
+	path := filepath.Join(job.Base, "known.csv")
+	if err := os.WriteFile(path, []byte("file,ra,dec\nz0.0200.fits,150.5,2.5\nz0.0323.fits,150.6,2.5\n"), 0o666); err != nil {
+		t.Fatal(err)
+	}
+	m, err := ReadManifest(path, "known.csv")
+	if err != nil {
+		t.Fatal(err)
+	}
+	finish(t, Job{Out: "KNOWN", Base: job.Base, Paths: []string{"night"}, Settings: DefaultSettings(), Program: "test", Processor: labelScience{}, Manifest: m})
+	job.Run = "KNOWN"
+	rep, err := Stack(context.Background(), job)
+	if err != nil || rep.Objects != 12 || rep.Unreadable != 0 {
+		t.Errorf("%+v, %v", rep, err)
+	}
+}
+
 // One object that is nothing like the others is clipped, not averaged in.
 func TestStackClips(t *testing.T) {
 	grid := func(v float64) *restSpectrum {

@@ -169,8 +169,11 @@ type Spectrum struct {
 	// Limits restricts the search for the redshift; nil for none.
 	Limits *Limits
 
-	Layout   string // name of the layout that was used to read it
-	Warnings []Warning
+	Layout string // name of the layout that was used to read it
+	// InputDigest is of the bytes that it was read from and of how, 16 hexadecimal
+	// digits: equal ones mean equal spectra.
+	InputDigest string
+	Warnings    []Warning
 }
 
 // Warn appends a warning unless the same code is already present.

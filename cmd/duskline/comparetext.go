@@ -71,13 +71,13 @@ func writeMatrix(w io.Writer, what string, words []string, counts map[[2]string]
 	}
 	fmt.Fprintf(w, "\n%-20s", what+": old below,")
 	for _, now := range words {
-		fmt.Fprintf(w, "%11s", "new "+now)
+		fmt.Fprintf(w, "%15s", "new "+now)
 	}
 	fmt.Fprintln(w)
 	for _, old := range words {
 		fmt.Fprintf(w, "%-20s", old)
 		for _, now := range words {
-			fmt.Fprintf(w, "%11d", counts[[2]string{old, now}])
+			fmt.Fprintf(w, "%15d", counts[[2]string{old, now}])
 		}
 		fmt.Fprintln(w)
 	}

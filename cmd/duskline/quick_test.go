@@ -2,7 +2,9 @@ package main
 
 import (
 	"bufio"
+	"bytes"
 	"context"
+	"encoding/binary"
 	"fmt"
 	"hash/fnv"
 	"math"
@@ -171,6 +173,26 @@ func makeShort(ts *testscript.TestScript, neg bool, args []string) {
 	n, err := strconv.Atoi(args[2])
 	ts.Check(err)
 	ts.Check(writeShort(ts.MkAbs(args[0]), files, n))
+}
+
+// touchRow changes the flux of one pixel in one spectrum of a file of writeShort
+// with up to 10,000 of them.
+func touchRow(ts *testscript.TestScript, neg bool, args []string) {
+	if neg || len(args) != 2 {
+		ts.Fatalf("usage: touchrow FILE ROW")
+	}
+	path := ts.MkAbs(args[0])
+	row, err := strconv.Atoi(args[1])
+	ts.Check(err)
+	data, err := os.ReadFile(path)
+	ts.Check(err)
+	at := bytes.Index(data, []byte("EXTNAME = 'FLUX"))
+	if at < 0 {
+		ts.Fatalf("%s is not of mkshort", args[0])
+	}
+	at = (at/2880+1)*2880 + row*shortPixels*4 // the header is one block
+	binary.BigEndian.PutUint32(data[at:], math.Float32bits(99))
+	ts.Check(os.WriteFile(path, data, 0o666))
 }
 
 // commandFolder returns a folder with the program and its quick double, for

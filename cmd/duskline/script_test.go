@@ -35,7 +35,7 @@ func TestScripts(t *testing.T) {
 		RequireExplicitExec: true,
 		Cmds: map[string]func(ts *testscript.TestScript, neg bool, args []string){
 			"exits": exits, "mknight": makeNight, "await": await, "isplot": isPlot, "spoil": spoil,
-			"mkshort": makeShort,
+			"mkshort": makeShort, "touchrow": touchRow,
 		},
 	})
 }
