@@ -107,8 +107,8 @@ func (f *File) segment(s *spectrum.Spectrum, a *arm, row int64) (spectrum.Segmen
 
 // rawArrays are the numbers of one arm as they stand in the file.
 type rawArrays struct {
-	wave, flux, weight, resolution []float64
-	masks                          [][]float64
+	wave, flux, weight, upper, resolution []float64
+	masks                                 [][]float64
 }
 
 // arrays reads all arrays of an arm; columns of one table in a single pass.
@@ -119,7 +119,7 @@ func (f *File) arrays(a *arm, row int64) (rawArrays, error) {
 		at place
 		to *[]float64
 	}
-	wants := []want{{a.flux, &arr.flux}, {a.weight, &arr.weight}}
+	wants := []want{{a.flux, &arr.flux}, {a.weight, &arr.weight}, {a.upper, &arr.upper}}
 	if !a.powerWave.isSet() {
 		wants = append(wants, want{a.resolution, &arr.resolution})
 	}
@@ -153,7 +153,25 @@ func (f *File) arrays(a *arm, row int64) (rawArrays, error) {
 			*to[k] = v[k]
 		}
 	}
+	if len(arr.upper) == len(arr.weight) {
+		meanError(arr.weight, arr.upper)
+	}
 	return arr, nil
+}
+
+// meanError makes one error of the lower and the upper one, in place: their mean,
+// or the one that is there. Lower errors may be written with a minus.
+func meanError(low, high []float64) {
+	for i := range low {
+		a, b := math.Abs(low[i]), math.Abs(high[i])
+		switch {
+		case !(a > 0):
+			a = b
+		case !(b > 0):
+			b = a
+		}
+		low[i] = (a + b) / 2
+	}
 }
 
 // wavelengths returns an arm's wavelengths in Angstrom and whether they are

@@ -93,7 +93,7 @@ func (h *hdu) readColumns() {
 			col.unit = strings.TrimSpace(c.value())
 		case "TUCD":
 			col.ucd = strings.ToLower(strings.TrimSpace(c.value()))
-		case "TUTYP":
+		case "TUTYP", "TUTYPE": // the standard and what some write
 			col.utype = strings.ToLower(strings.TrimSpace(c.value()))
 		case "TNULL":
 			col.null = strings.TrimSpace(c.value())

@@ -2,6 +2,7 @@ package fitsread
 
 import (
 	"fmt"
+	"math"
 	"strings"
 )
 
@@ -68,7 +69,7 @@ func (f *File) Describe() (d Description) {
 			used[m.at] = true
 		}
 		p.Mask = strings.Join(masks, ", ")
-		for _, pl := range []place{a.wave.values, a.wave.start, a.wave.step, a.flux, a.weight, a.resolution, a.kernel} {
+		for _, pl := range []place{a.wave.values, a.wave.start, a.wave.step, a.flux, a.weight, a.upper, a.resolution, a.kernel} {
 			used[pl] = true
 		}
 		d.Parts = append(d.Parts, p)
@@ -155,6 +156,9 @@ func (u spectralUnit) String() string {
 			base = name
 			break
 		}
+	}
+	if si := map[quantity]string{wavelength: "m", frequency: "Hz", energy: "J", wavenumber: "m-1"}[u.quantity]; base == "" && si != "" {
+		base = fmt.Sprintf("10**(%d) %s", int(math.Round(math.Log10(u.factor))), si)
 	}
 	if base == "" {
 		base = "SI"

@@ -9,6 +9,7 @@ import (
 
 // The names of the built-in layouts, in order of trust.
 const (
+	layoutClass  = "ivoa-spectrum" // tables that VOCLASS calls spectra
 	layoutIVOA   = "ivoa-columns"  // columns told by IVOA utypes or UCDs
 	layoutNamed  = "named-columns" // columns told by their names
 	layoutImages = "named-images"  // images told by their EXTNAME
@@ -20,6 +21,7 @@ var builtins = []struct {
 	name string
 	find func(*File) (*plan, error)
 }{
+	{layoutClass, (*File).findClassed},
 	{layoutIVOA, (*File).findIVOA},
 	{layoutNamed, (*File).findNamed},
 	{layoutImages, (*File).findImages},
@@ -102,6 +104,9 @@ func (f *File) nothingFound() error {
 			return compressedFault(h)
 		}
 	}
+	if err := f.otherClass(); err != nil {
+		return err
+	}
 	return fault(ErrNoSpectrum, -1, "write a layout that names HDU and columns (see configs/layouts/example.toml)",
 		"no wavelengths and fluxes were recognized in %d HDUs", len(f.hdus))
 }
@@ -137,7 +142,7 @@ func (f *File) settle() error {
 	for gi := range p.groups {
 		for ai := range p.groups[gi].arms {
 			a := &p.groups[gi].arms[ai]
-			for _, pl := range []place{a.wave.values, a.flux, a.weight, a.resolution, a.powerWave} {
+			for _, pl := range []place{a.wave.values, a.flux, a.weight, a.upper, a.resolution, a.powerWave} {
 				note(pl)
 			}
 			for _, m := range a.masks {
@@ -156,12 +161,7 @@ func (f *File) settle() error {
 		if f.hdus[0] != g.headers[0] {
 			g.headers = append(g.headers, f.hdus[0])
 		}
-		g.obs = observe(g.headers)
-		if ax := g.arms[0].wave.axis; ax != nil && ax.alt != "" {
-			if c, ok := findCard(g.headers, "SPECSYS"+ax.alt); ok {
-				g.obs.systemStated(c)
-			}
-		}
+		g.obs = observe(g.headers, &g.arms[0].wave)
 		if p.frame != nil {
 			g.obs.frame, g.obs.frameDoubt, g.obs.frameWhy = *p.frame, "", "layout "+p.layout
 			if *p.frame == spectrum.RestFrame {

@@ -15,9 +15,17 @@ type ranked struct {
 	rank int
 }
 
-// roles tells the columns' roles, by UCD and utype where byUCD is set and by
-// name otherwise, best first.
-func (h *hdu) roles(byUCD bool) []ranked {
+// telling is what tells which columns are wavelength and flux.
+type telling int
+
+const (
+	byNames telling = iota
+	byUCDs          // utypes and UCDs
+	byClass         // the same or names, in tables that VOCLASS calls spectra
+)
+
+// roles tells the columns' roles, best first. UCDs and utypes go before names.
+func (h *hdu) roles(by telling) []ranked {
 	var out []ranked
 	for i := range h.columns {
 		c := &h.columns[i]
@@ -25,7 +33,7 @@ func (h *hdu) roles(byUCD bool) []ranked {
 			continue
 		}
 		r := ranked{col: c}
-		if byUCD {
+		if by != byNames {
 			var certain bool
 			r.role, certain = roleOfUCD(c.utype, c.ucd)
 			if !certain {
@@ -35,7 +43,7 @@ func (h *hdu) roles(byUCD bool) []ranked {
 		if r.role == roleNone {
 			wr := roleOfName(c.name)
 			r.role, r.rank = wr.role, 10+wr.rank
-			if byUCD && (r.role == roleWave || r.role == roleFlux) {
+			if by == byUCDs && (r.role == roleWave || r.role == roleFlux) {
 				continue
 			}
 		}
@@ -47,29 +55,36 @@ func (h *hdu) roles(byUCD bool) []ranked {
 	return out
 }
 
+func (f *File) findClassed() (*plan, error) {
+	return f.findTables(byClass, "VOCLASS says that the table is a spectrum")
+}
+
 func (f *File) findIVOA() (*plan, error) {
-	return f.findTables(true, "columns carry IVOA utypes or UCDs")
+	return f.findTables(byUCDs, "columns carry IVOA utypes or UCDs")
 }
 
 func (f *File) findNamed() (*plan, error) {
-	return f.findTables(false, "columns are named as wavelength and flux")
+	return f.findTables(byNames, "columns are named as wavelength and flux")
 }
 
-func (f *File) findTables(byUCD bool, why string) (*plan, error) {
+func (f *File) findTables(by telling, why string) (*plan, error) {
 	var cands []candidate
 	var firstErr error
 	for _, h := range f.hdus {
 		if h.kind != kindTable && h.kind != kindASCII || h.broken != nil || h.axes[1] == 0 {
 			continue
 		}
+		if class, _ := f.dataClass(h); class == classOther || by == byClass && class != classSpectrum {
+			continue
+		}
 		if h.missing > 0 {
 			// A cut table is an error only where nothing else serves.
-			if c, err := f.tableCandidate(h, byUCD); err == nil && c != nil && firstErr == nil {
+			if c, err := f.tableCandidate(h, by); err == nil && c != nil && firstErr == nil {
 				firstErr = h.need(0, h.length)
 			}
 			continue
 		}
-		c, err := f.tableCandidate(h, byUCD)
+		c, err := f.tableCandidate(h, by)
 		if err != nil {
 			return nil, err
 		}
@@ -82,12 +97,13 @@ func (f *File) findTables(byUCD bool, why string) (*plan, error) {
 	}
 	p := &plan{why: why}
 	p.groups, p.skipped = arrange(cands)
+	p.skipped = append(p.skipped, f.unclassed(by == byClass)...)
 	return p, nil
 }
 
 // tableCandidate sees a spectrum in a table, nil for none.
-func (f *File) tableCandidate(h *hdu, byUCD bool) (*candidate, error) {
-	roles := h.roles(byUCD)
+func (f *File) tableCandidate(h *hdu, by telling) (*candidate, error) {
+	roles := h.roles(by)
 	pick := func(want role, fits func(*column) bool) *column {
 		for _, r := range roles {
 			if r.role == want && fits(r.col) {
@@ -105,7 +121,7 @@ func (f *File) tableCandidate(h *hdu, byUCD bool) (*candidate, error) {
 		w := r.col
 		switch flux = pick(roleFlux, func(c *column) bool { return sameShape(c, w) }); {
 		case flux != nil:
-			if !w.isVector() && h.axes[1] < minTableRows && !byUCD {
+			if !w.isVector() && h.axes[1] < minTableRows && by == byNames {
 				flux = nil
 				continue
 			}
@@ -127,7 +143,7 @@ func (f *File) tableCandidate(h *hdu, byUCD bool) (*candidate, error) {
 			return nil, nil
 		}
 		ok := false
-		if a.wave, ok = f.waveElsewhere(h, flux.repeat); !ok {
+		if a.wave, ok = f.waveElsewhere(h, flux); !ok {
 			return nil, nil
 		}
 	}
@@ -138,6 +154,9 @@ func (f *File) tableCandidate(h *hdu, byUCD bool) (*candidate, error) {
 			a.weight, a.weightRole = place{hdu: h, col: c}, want
 			break
 		}
+	}
+	if low, high := pick(roleErrLow, like), pick(roleErrHigh, like); !a.weight.isSet() && low != nil && high != nil {
+		a.weight, a.upper, a.weightRole = place{hdu: h, col: low}, place{hdu: h, col: high}, roleSigma
 	}
 	for _, want := range []role{roleQuality, roleGood, roleMask} {
 		if want == roleMask && a.weightRole == roleIvar {
@@ -151,6 +170,9 @@ func (f *File) tableCandidate(h *hdu, byUCD bool) (*candidate, error) {
 	for _, want := range []role{roleDisp, roleFWHM, rolePower} {
 		if c := pick(want, like); c != nil {
 			a.resolution, a.resRole = place{hdu: h, col: c}, want
+			if _, ok := c.isLength(); ok && want == rolePower {
+				a.resRole = roleFWHM
+			}
 			break
 		}
 	}
@@ -229,9 +251,14 @@ func (w *wavePlan) describe(name, unit, ucd, comment string) {
 	w.atRest = restInName(name)
 }
 
-// waveElsewhere looks for n wavelengths outside the table: an image or another
-// table's cell that is named so, or axis cards in the table's header.
-func (f *File) waveElsewhere(h *hdu, n int64) (wavePlan, bool) {
+// waveElsewhere looks for the wavelengths of a flux column outside the columns: axis
+// cards for the arrays in its cells, an image that is named so, or axis cards in
+// the table's header.
+func (f *File) waveElsewhere(h *hdu, flux *column) (wavePlan, bool) {
+	if w, ok := cellAxis(h, flux); ok {
+		return w, true
+	}
+	n := flux.repeat
 	for _, other := range f.hdus {
 		if other.kind == kindImage && other.pixels() == n && other.lines() == 1 && roleOfName(other.name).role == roleWave {
 			w := wavePlan{values: place{hdu: other}}
@@ -302,6 +329,9 @@ func (f *File) maskFor(at place, r role) maskPlan {
 func (f *File) findGuess() (*plan, error) {
 	for _, h := range f.hdus {
 		if h.kind != kindTable && h.kind != kindASCII || h.broken != nil || h.missing > 0 || h.axes[1] < minTableRows {
+			continue
+		}
+		if class, _ := f.dataClass(h); class == classOther {
 			continue
 		}
 		var cols []*column

@@ -11,7 +11,9 @@
 // their order: by [match], or without one by having all they name; then the
 // built-in ones:
 //
-//	ivoa-columns   table columns with IVOA Spectrum 1.2 utypes or UCDs
+//	ivoa-spectrum  tables that VOCLASS calls spectra, columns by IVOA utypes, UCDs
+//	               or names; tables of other classes are not read
+//	ivoa-columns   table columns with IVOA Spectrum utypes or UCDs
 //	named-columns  table columns named as wavelength, flux, error, ...
 //	named-images   images whose EXTNAME says FLUX, WAVELENGTH, IVAR, ..., with
 //	               a common prefix an arm each

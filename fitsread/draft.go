@@ -194,6 +194,9 @@ func (f *File) draftArm(w *writer, prefix string, g *group, a *arm, medium strin
 		w.line("[%sweight]", prefix)
 		f.writePlace(w, a.weight)
 		w.line("kind = %s", quoteTOML(key(weightKinds, func(r role) bool { return r == kind })))
+		if a.upper.isSet() {
+			w.line("upper = %s   # errors towards higher flux", columnName(a.upper.hdu, a.upper.col))
+		}
 	}
 	f.draftMasks(w, prefix, a, arr, kind)
 	f.draftResolution(w, prefix, a)

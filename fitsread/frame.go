@@ -15,7 +15,8 @@ type observation struct {
 	frameDoubt  spectrum.Code // "" when the frame is stated without doubt
 	velocity    float64       // of a correction that is stated but not applied, km/s; NaN
 	standard    string        // SPECSYS of a standard of rest beyond the solar system
-	jd          float64       // mid-exposure, UTC; NaN
+	observer    observerVelocity
+	jd          float64 // mid-exposure, UTC; NaN
 	site        spectrum.Site
 	siteKnown   bool
 	onGround    bool
@@ -25,8 +26,8 @@ type observation struct {
 	power       float64 // resolving power, 0 when not stated
 }
 
-// observe reads the headers, most specific first.
-func observe(hs []*hdu) observation {
+// observe reads the headers, most specific first, for the wavelengths of w.
+func observe(hs []*hdu, w *wavePlan) observation {
 	o := observation{velocity: math.NaN(), jd: math.NaN()}
 	o.readMedium(hs)
 	o.site, o.siteKnown = readSite(hs)
@@ -35,9 +36,12 @@ func observe(hs []*hdu) observation {
 		o.onGround = true
 	}
 	o.onGround = o.onGround || o.siteKnown
-	o.readFrame(hs)
-	for _, key := range []string{"SPEC_RES", "SPECRES", "RESPOWER", "SPEC_RP"} {
-		if v, _, ok := findNumber(hs, key); ok && v > 10 && v < 1e7 {
+	o.readFrame(hs, w)
+	o.observer = readVelosys(hs)
+	for _, key := range []string{"SPEC_RP", "RESPOWER", "SPEC_RES", "SPECRES"} {
+		// In SPEC_RES the Spectrum data model has an FWHM, others have the power.
+		v, c, ok := findNumber(hs, key)
+		if ok && v > 10 && v < 1e7 && (v >= 100 || key == "SPEC_RP" || key == "RESPOWER" || strings.Contains(strings.ToLower(c.comment()), "power")) {
 			o.power = v
 			break
 		}
@@ -142,21 +146,49 @@ var correctionCards = []struct {
 	{"BARYCORR BARYCOR BARYVEL V_BARY VBARY BARY_RV BARY_V BERV BARYCENT", spectrum.Barycentric},
 }
 
-// readFrame finds the velocity frame: SPECSYS; cards about a heliocentric or
-// barycentric correction; remarks. Otherwise single exposures from the ground,
-// whose header has time and place, count as topocentric and all others as
-// barycentric, both with FrameAssumed.
-func (o *observation) readFrame(hs []*hdu) {
-	if c, ok := findCard(hs, "SPECSYS"); ok && c.value() != "" {
-		if o.systemStated(c) {
+// systemKeys returns the cards that state the frame, best first: SPECSYS of the
+// description of the axis in use, and its form for the cells of a table column,
+// SPECn (FITS standard 4.0, table 22).
+func (w *wavePlan) systemKeys() []string {
+	keys := []string{"SPECSYS"}
+	if w.axis != nil && w.axis.alt != "" {
+		keys = []string{"SPECSYS" + w.axis.alt, "SPECSYS"}
+	}
+	for _, c := range []*column{w.values.col, w.cells} {
+		if c != nil {
+			keys = append([]string{fmt.Sprintf("SPEC%d", c.number)}, keys...)
+		}
+	}
+	return keys
+}
+
+// readFrame finds the velocity frame: SPECSYS; a redshift that was taken out; cards
+// about a heliocentric or barycentric correction; remarks. Otherwise single
+// exposures from the ground, whose header has time and place, count as topocentric
+// and all others as barycentric, both with FrameAssumed; in tables of the IVOA
+// Spectrum data model those with a time do, whose default that is.
+func (o *observation) readFrame(hs []*hdu, w *wavePlan) {
+	for _, key := range w.systemKeys() {
+		if c, ok := findCard(hs, key); ok && o.systemStated(c) {
 			return
 		}
+	}
+	// CoordSys.SpectralFrame.Redshift of the data model.
+	if v, _, ok := findNumber(hs, "REST_Z"); ok && v != 0 {
+		o.frame, o.frameDoubt, o.frameWhy = spectrum.RestFrame, spectrum.RestFrameStated, "card REST_Z says that a redshift was taken out"
+		return
 	}
 	if o.fromCorrections(hs) || o.fromRemarks(hs) {
 		return
 	}
 	o.frameDoubt = spectrum.FrameAssumed
-	if o.onGround && !math.IsNaN(o.jd) {
+	class, _ := findCard(hs, "VOCLASS")
+	switch {
+	case math.IsNaN(o.jd):
+	case classWord(class.value()) == "spectrum":
+		o.frame, o.frameWhy = spectrum.Topocentric, "velocity frame not stated; topocentric by the default of the Spectrum data model"
+		return
+	case o.onGround:
 		o.frame, o.frameWhy = spectrum.Topocentric, "velocity frame not stated; a single exposure from the ground, taken as topocentric"
 		return
 	}
@@ -165,34 +197,36 @@ func (o *observation) readFrame(hs []*hdu) {
 
 // systemStated takes the frame from a SPECSYS card.
 func (o *observation) systemStated(c card) bool {
-	fr, ok := frameNamed(c.value())
+	fr, standard, ok := frameNamed(c.value())
 	if !ok {
 		return false
 	}
-	o.frame, o.frameWhy, o.frameDoubt = fr, c.key, ""
-	switch fr {
-	case spectrum.RestFrame:
+	o.frame, o.frameWhy, o.frameDoubt, o.standard = fr, c.key, "", standard
+	if fr == spectrum.RestFrame {
 		o.frameDoubt = spectrum.RestFrameStated
-	case spectrum.OtherFrame:
-		o.standard = strings.ToUpper(strings.TrimSpace(c.value()))
+		o.frameWhy = c.key + " says that the wavelengths are at rest with the source; the redshift is what is left"
 	}
 	return true
 }
 
-// frameNamed reads a SPECSYS value; its first letters tell.
-func frameNamed(s string) (spectrum.Frame, bool) {
+// frameNamed reads a SPECSYS value; its first letters tell, also of the data
+// model's TOPOCENTER and the like. standard is the name of a standard of rest
+// beyond the solar system as FITS has it.
+func frameNamed(s string) (frame spectrum.Frame, standard string, ok bool) {
 	s = strings.ToUpper(strings.TrimSpace(s))
 	for _, f := range []struct {
-		prefix string
-		frame  spectrum.Frame
-	}{{"BARY", spectrum.Barycentric}, {"HELIO", spectrum.Heliocentric}, {"TOPO", spectrum.Topocentric},
-		{"GEOC", spectrum.Geocentric}, {"SOURCE", spectrum.RestFrame}, {"REST", spectrum.RestFrame}, {"LSR", spectrum.OtherFrame},
-		{"GALACT", spectrum.OtherFrame}, {"LOCALG", spectrum.OtherFrame}, {"CMBDIP", spectrum.OtherFrame}} {
+		prefix   string
+		frame    spectrum.Frame
+		standard string
+	}{{"BARY", spectrum.Barycentric, ""}, {"HELIO", spectrum.Heliocentric, ""}, {"TOPO", spectrum.Topocentric, ""},
+		{"GEOC", spectrum.Geocentric, ""}, {"SOURCE", spectrum.RestFrame, ""}, {"REST", spectrum.RestFrame, ""},
+		{"LSRK", spectrum.OtherFrame, "LSRK"}, {"LSRD", spectrum.OtherFrame, "LSRD"}, {"LSR", spectrum.OtherFrame, "LSR"},
+		{"GALACT", spectrum.OtherFrame, "GALACTOC"}, {"LOCALG", spectrum.OtherFrame, "LOCALGRP"}, {"CMB", spectrum.OtherFrame, "CMBDIPOL"}} {
 		if strings.HasPrefix(s, f.prefix) {
-			return f.frame, true
+			return f.frame, f.standard, true
 		}
 	}
-	return 0, false
+	return 0, "", false
 }
 
 // fromCorrections weighs the cards about corrections: a clear "made" beats a
@@ -277,21 +311,4 @@ func (o *observation) fromRemarks(hs []*hdu) bool {
 		return false
 	}
 	return true
-}
-
-// baryVelocity returns the velocity that brings the spectrum to the barycenter,
-// NaN where time or place of the object are missing. Without a site the center of
-// the Earth stands for it, good to 0.47 km/s.
-func (o *observation) baryVelocity(ra, dec float64) float64 {
-	switch {
-	case o.frame == spectrum.OtherFrame:
-		return spectrum.RestStandardVelocity(o.standard, ra, dec)
-	case o.frame != spectrum.Topocentric && o.frame != spectrum.Geocentric:
-		return math.NaN()
-	case math.IsNaN(o.jd) || math.IsNaN(ra) || math.IsNaN(dec):
-		return o.velocity
-	case o.siteKnown && o.frame == spectrum.Topocentric:
-		return spectrum.BarycentricVelocity(o.site, o.jd, ra, dec)
-	}
-	return spectrum.GeocenterVelocity(o.jd, ra, dec)
 }

@@ -87,13 +87,14 @@ func TestUnits(t *testing.T) {
 		"Angstroms": unitAngstrom, "ANGSTROM": unitAngstrom, "0.1 nm": unitAngstrom, "nm": {wavelength, 1e-9, linear},
 		"microns": {wavelength, 1e-6, linear}, "log10(Angstrom)": {wavelength, angstrom, log10}, "dex(nm)": {wavelength, 1e-9, log10},
 		"ln(Angstrom)": {wavelength, angstrom, ln}, "cm^-1": {wavenumber, 100, linear}, "keV": {energy, 1000 * joulePerEV, linear},
+		"10**(-10) m": unitAngstrom, "10^-8m": {wavelength, 1e-8, linear}, "10+9 Hz": {frequency, 1e9, linear},
 		"GHz": {frequency, 1e9, linear}, "km/s": {apparentSpeed, 1000, linear}, "log": {wavelength, angstrom, log10},
 	} {
 		if got, ok := parseUnit(s); !ok || got != want {
 			t.Errorf("%q: %+v, %v", s, got, ok)
 		}
 	}
-	for _, s := range []string{"", "counts", "pixel", "erg/s/cm2/Angstrom"} {
+	for _, s := range []string{"", "counts", "pixel", "erg/s/cm2/Angstrom", "10**(-17) erg/s/cm2/Angstrom", "10**99 m", "109 Hz"} {
 		if u, ok := parseUnit(s); ok {
 			t.Errorf("%q reads as %+v", s, u)
 		}

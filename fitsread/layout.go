@@ -83,7 +83,8 @@ type fluxDoc struct {
 
 type weightDoc struct {
 	placeDoc
-	Kind string `toml:"kind"`
+	Kind  string `toml:"kind"`
+	Upper string `toml:"upper"`
 }
 
 type maskDoc struct {
@@ -256,6 +257,9 @@ func (a *armDoc) check(bad complain, i int) {
 	if a.Weight != nil {
 		a.Weight.check(bad, "weight")
 		oneOf(bad, "weight.kind", a.Weight.Kind, weightKinds)
+		if a.Weight.Upper != "" && (a.Weight.Column == "" || a.Weight.Kind != "sigma") {
+			bad("weight.upper belongs to a weight.column of kind sigma")
+		}
 	}
 	for _, m := range a.masks() {
 		m.check(bad, "mask")

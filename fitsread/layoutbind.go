@@ -207,13 +207,18 @@ func (f *File) bindArm(d *armDoc) (arm, error) {
 	default:
 		a.fluxUnit = a.flux.hdu.header.text("BUNIT")
 	}
-	if a.wave, err = f.bindWave(d.Wavelength); err != nil {
+	if a.wave, err = f.bindWave(d.Wavelength, a.flux); err != nil {
 		return a, err
 	}
 	if w := d.Weight; w != nil {
 		a.weightRole = weightKinds[w.Kind]
 		if a.weight, err = f.arrayPlace("weight", w.placeDoc); err != nil {
 			return a, err
+		}
+		if w.Upper != "" {
+			if a.upper, err = f.arrayPlace("weight", placeDoc{HDU: w.HDU, Column: w.Upper}); err != nil {
+				return a, err
+			}
 		}
 	}
 	for _, m := range d.masks() {
@@ -260,7 +265,7 @@ func (f *File) bindResolution(a *arm, r *resDoc) error {
 	return err
 }
 
-func (f *File) bindWave(d *waveDoc) (wavePlan, error) {
+func (f *File) bindWave(d *waveDoc, flux place) (wavePlan, error) {
 	h := findHDU(f.hdus, d.HDU)
 	if h == nil {
 		return wavePlan{}, missingHDU("wavelength", d.HDU)
@@ -269,6 +274,10 @@ func (f *File) bindWave(d *waveDoc) (wavePlan, error) {
 	var err error
 	switch {
 	case d.Axis:
+		if cells, ok := cellAxis(h, flux.col); ok && flux.hdu == h {
+			w = cells
+			break
+		}
 		ax, ok, err := f.imageAxis(h)
 		if err == nil && !ok {
 			err = fmt.Errorf("the header describes no spectral axis")

@@ -145,12 +145,13 @@ func resolvingPower(seg *spectrum.Segment, v []float64, a *arm) []float64 {
 		}
 		return v
 	}
+	kind, scale := a.resolutionUnit(v)
 	good := false
 	for i, x := range v {
 		r := x
-		switch a.resRole {
+		switch kind {
 		case roleFWHM:
-			r = seg.Wave[i] / x
+			r = seg.Wave[i] / (x * scale)
 		case roleDisp:
 			lo, hi := max(i-1, 0), min(i+1, n-1)
 			pixel := (seg.Wave[hi] - seg.Wave[lo]) / float64(hi-lo)
@@ -181,6 +182,31 @@ func resolvingPower(seg *spectrum.Segment, v []float64, a *arm) []float64 {
 		}
 	}
 	return v
+}
+
+// isLength reports a column in a unit of wavelength, and the unit in Angstrom.
+func (c *column) isLength() (scale float64, ok bool) {
+	u, ok := parseUnit(c.unit)
+	return u.factor / angstrom, ok && u.quantity == wavelength && u.scale == linear
+}
+
+// resolutionUnit settles whether the numbers of a resolution are powers or FWHM,
+// and the unit of the latter in Angstrom: the column's own, else Angstrom. The data
+// model's Data.SpectralAxis.Resolution is an FWHM in the unit of the spectral axis,
+// while many columns of that utype hold lambda / FWHM; without a unit those with a
+// median above 30 do (common practice, no source).
+func (a *arm) resolutionUnit(v []float64) (kind role, scale float64) {
+	c := a.resolution.col
+	switch {
+	case c == nil:
+	case a.resRole == roleFWHM:
+		if scale, ok := c.isLength(); ok {
+			return roleFWHM, scale
+		}
+	case a.resRole == rolePower && modelPath(c.utype) == "data.spectralaxis.resolution" && medianPositive(v) < 30 && a.wave.unit.quantity == wavelength:
+		return roleFWHM, a.wave.unit.factor / angstrom
+	}
+	return a.resRole, 1
 }
 
 // between interpolates linearly in pairs of increasing first number; beyond the

@@ -20,7 +20,9 @@ const (
 	roleMask
 	roleQuality // non-zero is bad by definition (IVOA Quality)
 	roleGood    // non-zero is good
-	rolePower   // resolving power
+	roleErrLow  // error towards lower flux
+	roleErrHigh // error towards higher flux
+	rolePower   // resolving power, or the FWHM where unit or numbers tell
 	roleFWHM    // width of the resolution element, Angstrom
 	roleDisp    // its sigma in pixels
 	roleKernel  // line spread functions, a plane an object
@@ -43,6 +45,8 @@ var vocabulary = []struct {
 		"signal counts net sci"},
 	{roleSigma, "err error sigma fluxerr fluxerror errflux errorflux staterror staterr statisticalerror sig uncertainty unc eflux " +
 		"fluxsigma sigmaflux fluxunc noise std stddev stdev rms errors errs dflux fluxstd efluxlambda fluxerrors sigflux errlambda"},
+	{roleErrLow, "errlo errlow errlower errminus fluxerrlo fluxerrlow staterrlow"},
+	{roleErrHigh, "errhi errhigh errupper errplus fluxerrhi fluxerrhigh staterrhigh"},
 	{roleIvar, "ivar invvar invvariance inversevariance fluxivar ivarflux iv inverse"},
 	{roleVariance, "variance var fluxvar fluxvariance varflux"},
 	{roleWeight, "weight weights wgt wt stat"},
@@ -118,50 +122,9 @@ func unitInName(name string) (spectralUnit, bool) {
 	return parseUnit(strings.Trim(name[i:], "_()[] "))
 }
 
-// roleOfUCD tells the role from an IVOA utype (Spectrum data model 1.2) or from
-// a UCD. certain is true for utypes, which name exactly one role.
-func roleOfUCD(utype, ucd string) (r role, certain bool) {
-	if i := strings.LastIndexByte(utype, ':'); i >= 0 {
-		utype = utype[i+1:]
-	}
-	utype = strings.TrimPrefix(utype, "spectrum.")
-	switch utype {
-	case "data.spectralaxis.value":
-		return roleWave, true
-	case "data.fluxaxis.value":
-		return roleFlux, true
-	case "data.fluxaxis.accuracy.staterror":
-		return roleSigma, true
-	case "data.fluxaxis.quality", "data.fluxaxis.accuracy.quality", "data.fluxaxis.accuracy.qualitystatus":
-		return roleQuality, true
-	case "data.spectralaxis.resolution", "data.spectralaxis.respower":
-		return rolePower, true
-	}
-	first, rest, _ := strings.Cut(ucd, ";")
-	switch first {
-	case "em.wl", "em.freq", "em.energy", "em.wavenumber":
-		return roleWave, false
-	case "phot.flux.density", "phot.flux", "phot.count", "phot.fluence":
-		return roleFlux, false
-	case "stat.error":
-		if strings.HasPrefix(rest, "phot.") {
-			return roleSigma, false
-		}
-	case "stat.variance":
-		if strings.HasPrefix(rest, "phot.") {
-			return roleVariance, false
-		}
-	case "meta.code.qual":
-		return roleQuality, false
-	case "spect.resolution":
-		return rolePower, false
-	}
-	return roleNone, false
-}
-
 // mediumInWords reads air or vacuum out of a column's name, UCD or comment.
 func mediumInWords(name, ucd, comment string) (spectrum.Medium, bool) {
-	if strings.HasPrefix(ucd, "em.wl") {
+	if ucd = strings.TrimPrefix(ucd, "ivoa:"); strings.HasPrefix(ucd, "em.wl") {
 		if strings.Contains(ucd, "obs.atmos") {
 			return spectrum.Air, true
 		}

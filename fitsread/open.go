@@ -240,7 +240,10 @@ func (f *File) settleFrame(s *spectrum.Spectrum, g *group) {
 	default:
 		s.Warn(g.obs.frameDoubt, "%s", g.obs.frameWhy)
 	}
-	s.BaryVelocity = g.obs.baryVelocity(s.RA, s.Dec)
+	var doubt string
+	if s.BaryVelocity, doubt = g.obs.baryVelocity(s.RA, s.Dec); doubt != "" {
+		s.Warn(spectrum.FrameUncertain, "%s", doubt)
+	}
 	if g.obs.frameDoubt == spectrum.FrameAssumed && math.IsNaN(s.BaryVelocity) {
 		s.Frame = spectrum.Barycentric // nothing to correct with: the same doubt, one name
 	}

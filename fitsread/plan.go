@@ -125,6 +125,7 @@ type wavePlan struct {
 	axis        *axis     // header cards, or
 	fixed       []float64 // worked out from a table when the file was opened
 	axisHDU     *hdu
+	cells       *column // the axis cards are of this column's arrays
 	unit        spectralUnit
 	unitKnown   bool
 	medium      spectrum.Medium
@@ -136,6 +137,8 @@ type wavePlan struct {
 // String names where the wavelengths come from.
 func (w wavePlan) String() string {
 	switch {
+	case w.cells != nil:
+		return fmt.Sprintf("axis cards of column %s of HDU %d", w.cells.name, w.axisHDU.index)
 	case w.axis != nil:
 		return fmt.Sprintf("axis cards of HDU %d", w.axisHDU.index)
 	case w.fixed != nil:
@@ -153,7 +156,8 @@ type arm struct {
 	flux       place
 	fluxUnit   string
 	weight     place
-	weightRole role // roleSigma, roleVariance, roleIvar or roleWeight
+	weightRole role  // roleSigma, roleVariance, roleIvar or roleWeight
+	upper      place // errors towards higher flux, where weight has those towards lower
 	masks      []maskPlan
 	resolution place
 	resRole    role         // rolePower, roleFWHM or roleDisp

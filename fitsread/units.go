@@ -2,6 +2,8 @@ package fitsread
 
 import (
 	"math"
+	"regexp"
+	"strconv"
 	"strings"
 )
 
@@ -81,6 +83,14 @@ func parseUnit(s string) (spectralUnit, bool) {
 			break
 		}
 	}
+	power := 1.0
+	if m := powerOfTen.FindStringSubmatch(s); m != nil {
+		k, err := strconv.Atoi(m[1] + m[2])
+		if err != nil || k < -40 || k > 40 {
+			return spectralUnit{}, false
+		}
+		power, s = math.Pow10(k), m[3]
+	}
 	s = strings.NewReplacer(" ", "", "^", "", "*", "", "{", "", "}", "", "[", "", "]", "").Replace(s)
 	u, ok := unitNames[s]
 	if !ok {
@@ -90,8 +100,13 @@ func parseUnit(s string) (spectralUnit, bool) {
 		u, ok = unitAngstrom, true // "log" alone: the wavelengths' usual unit
 	}
 	u.scale = mode
+	u.factor *= power
 	return u, ok
 }
+
+// powerOfTen is a multiplier before a unit: 10**k, 10^k or 10 and a signed k, with
+// or without parentheses (FITS standard 4.0, section 4.3.1).
+var powerOfTen = regexp.MustCompile(`^10(?:(?:\*\*|\^)\s*\(?\s*([+-]?\d+)\s*\)?|([+-]\d+))\s*\.?\s*(.+)$`)
 
 // guessUnit chooses a unit for wavelengths that come without one: by common
 // practice (no source) lists below 30 are micron, spectra from 200 to 3000 that

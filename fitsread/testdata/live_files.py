@@ -134,6 +134,40 @@ with fits.open(path) as h:
     tell("ivoa_one_row.fits", [[(d["A"], d["B"], 1 / np.asarray(d["C"], "f8") ** 2)]])
 
 
+# The table that VOCLASS calls a spectrum, by names, behind one of another class; units as
+# powers of ten; errors towards lower and higher flux.
+def low_high(d):
+    return 1 / ((np.asarray(d["C4"], "f8") + np.asarray(d["C3"], "f8")) / 2) ** 2
+
+
+other = fits.BinTableHDU.from_columns([column("TIME", "D", w), column("FLUX", "E", flux())], name="LIGHTCURVE")
+other.header["VOCLASS"] = "TIMESERIES 1.0"
+t = fits.BinTableHDU.from_columns([wcol(), column("FLUX", "E", flux()), column("ERR", "E", err)])
+t.header["VOCLASS"] = "SPECTRUM 1.00"
+path = write("ivoa_class.fits", [fits.PrimaryHDU(), other, t])
+with fits.open(path) as h:
+    d = h[2].data
+    tell("ivoa_class.fits", [[(d["WAVE"], d["FLUX"], 1 / np.asarray(d["ERR"], "f8") ** 2)]])
+pixel_table("ivoa_low_high.fits", column("C1", "D", w / 100, unit="10**(-8) m"), column("C2", "E", flux()), [column("C3", "E", err), column("C4", "E", 1.5 * err)],
+            ivar=low_high, to_wave=lambda x: 100 * x,
+            head=[("TUTYP1", "spec:Spectrum.Data.SpectralAxis.Value"), ("TUTYP2", "spec:Spectrum.Data.FluxAxis.Value"),
+                  ("TUTYP3", "spec:Spectrum.Data.FluxAxis.Accuracy.StatErrLow"), ("TUTYP4", "spec:Spectrum.Data.FluxAxis.Accuracy.StatErrHigh")])
+
+# The axis of the arrays in a column, by the cards of a table (FITS standard 4.0, table 22).
+for name, ctype, crval, cdelt, unit, to in (("linear", "WAVE", 500.0, 0.15, "nm", lambda x: x * 1e10), ("f2w", "WAVE-F2W", 5e-7, 1.5e-10, "m", lambda x: x * 1e10),
+                                            ("freq", "FREQ", 6e14, -1.5e11, "Hz", lambda x: 2.99792458e18 / x)):
+    fs = np.array([flux(), flux()]).astype("f4")
+    t = fits.BinTableHDU.from_columns([column("TARGETID", "J", [5, 6]), column("FLUX", f"{N}E", fs)])
+    for k, v in (("1CTYP2", ctype), ("1CRVL2", crval), ("1CDLT2", cdelt), ("1CRPX2", 3.0), ("1CUNI2", unit), ("SPEC2", "BARYCENT")):
+        t.header[k] = v
+    path = write(f"cells_axis_{name}.fits", [fits.PrimaryHDU(), t])
+    with fits.open(path) as h:
+        # wcslib wants the size of the array as an image has it
+        ws = WCS(h[1].header, keysel=["binary"], colsel=[2], naxis=1)
+        x = ws.wcs_pix2world(np.arange(N)[:, None], 0)[:, 0]
+        tell(f"cells_axis_{name}.fits", [[(to(x), h[1].data["FLUX"][i], None)] for i in range(2)])
+
+
 # Arrays in cells: in the row, on the heap by 32 and 64 bits, of different lengths.
 def cell_table(name, form_of, rows=3, same=True):
     n = [N if same else N - 7 * r for r in range(rows)]
