@@ -37,7 +37,11 @@ func (s *Scratch) formTies(b *blend) (main int) {
 		e.v, e.s = t.v, t.s
 		e.vmax = s.opt.search(e.broad)
 		e.smin = max(0.35*t.pix, 0.7*e.sres)
-		e.smax = math.Hypot(s.opt.widthMax(e.broad), e.sres)
+		e.smax = math.Hypot(s.opt.widthMax(t.line, e.broad), e.sres)
+		if e.stark = s.opt.Stark && e.ion == hydrogenIon && e.snr < 0; e.stark && s.wings.snr > 0 {
+			// Boxes end where neighbors begin.
+			e.v, e.s = s.wings.v, math.Hypot(s.wings.source, e.sres)
+		}
 		e.s = min(max(e.s, e.smin), e.smax)
 		if t.seen() && !b.faint && (main < 0 || math.Abs(e.snr) > math.Abs(q.ties[main].snr)) {
 			main = k
@@ -48,7 +52,7 @@ func (s *Scratch) formTies(b *blend) (main int) {
 		switch {
 		case main < 0:
 			s.borrow(e)
-		case k == main:
+		case k == main || e.stark && s.tracks[e.lead].seen():
 			e.own = true
 		case s.tracks[e.lead].seen() && (!s.akin(k, main) || s.clear(k, main)):
 			e.own = true

@@ -106,6 +106,10 @@ type Options struct {
 	// Profile is the form of lines that stand out: Gaussian unless asked for.
 	Profile Profile
 
+	// Stark says that hydrogen absorbs with the wings of Stark broadening, as in
+	// hot stars: its lines then have the profile of starkCore.
+	Stark bool
+
 	// Expect says which lines objects of this kind have; the others are not
 	// fitted, so that they take nothing from those that are there. nil: all.
 	Expect func(*linelist.Line) bool
@@ -146,9 +150,15 @@ func (o *Options) search(broad bool) float64 {
 }
 
 // widthMax returns the largest width of the source for a line, km/s.
-func (o *Options) widthMax(broad bool) float64 {
+func (o *Options) widthMax(l *line, broad bool) float64 {
 	if o.WidthMax > 0 {
 		return o.WidthMax
+	}
+	if o.Stark {
+		if l.ion == hydrogenIon {
+			return starkWidest
+		}
+		return starkMetal
 	}
 	if broad {
 		return 10000
@@ -229,6 +239,8 @@ func NewMeter(list *linelist.List) *Meter {
 	}
 	return m
 }
+
+const hydrogenIon = "H I"
 
 // plainIon strips what does not name the ion: brackets and fine-structure stars.
 func plainIon(s string) string {

@@ -42,7 +42,7 @@ func (s *Scratch) apart(a, b *track) float64 {
 // plan settles lines that cannot be told apart and gathers the blends.
 func (s *Scratch) plan() {
 	s.blends, s.member = s.blends[:0], s.member[:0]
-	s.anchor = [2][2]kinematics{}
+	s.anchor, s.wings = [2][2]kinematics{}, kinematics{}
 	s.parent = s.parent[:0]
 	for i := range s.tracks {
 		s.parent = append(s.parent, i)
@@ -122,6 +122,9 @@ func (s *Scratch) settle(a, b *track) {
 	sa, sb := s.support(a, sg), s.support(b, sg)
 	ratio := math.Abs(b.first) / max(math.Abs(a.first), 1)
 	switch {
+	case s.opt.Stark && a.line.ion == hydrogenIon:
+	case s.opt.Stark && b.line.ion == hydrogenIon:
+		carrier, silent = b, a
 	case min(sa, sb) < 0, ratio > 0.8 && ratio < 1.25, !a.seen() && !b.seen():
 		if sb > sa {
 			carrier, silent = b, a

@@ -67,6 +67,7 @@ type tie struct {
 	v, s     float64 // offset and total sigma, km/s
 	own      bool    // has parameters of its own
 	settled  bool    // was freed or bound after a fit, not to be changed again
+	stark    bool    // wings of Stark broadening
 	borrowed bool    // offset and width come from outside the blend and are held
 	pv, ps   int     // parameters: its own, or the main tie's
 	pa, pb   int     // parameters of the shape, likewise; -1: none

@@ -24,6 +24,9 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 	r.Blend = s.overlaps(ci)
 	sd := scale * math.Sqrt(m.cov[c.amp*m.n+c.amp])
 	flux, doubt := c.share*m.p[c.amp], s.shareDoubt(ci)
+	if e.stark {
+		doubt = math.Hypot(doubt, starkDoubt*math.Abs(flux))
+	}
 	fluxErr := math.Hypot(math.Abs(c.share)*sd, doubt)
 	if !ok || !(sd > 0) || !finite(flux, fluxErr) {
 		r.Reason = ReasonNoFit
@@ -49,6 +52,11 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 		if known = finite(ew, err); known {
 			r.EWRest, r.EWRestErr = ew, err
 		}
+	}
+	if given := s.continuumGiven(ci); e.stark && known && math.Abs(cont-given) > starkLeave*given {
+		blankNumbers(r)
+		r.Reason = ReasonNoFit
+		return
 	}
 	if known {
 		sum := s.directSum(ci)
@@ -76,6 +84,23 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 		r.UpperLimit = math.Abs(r.EWRest) + 3*r.EWRestErr
 	}
 	s.reportKinematics(r, e, seen, scale)
+}
+
+// starkLeave is how far the straight line of a window may carry the continuum
+// from the one given where hydrogen has wide wings, which otherwise end there.
+const starkLeave = 0.1
+
+// continuumGiven returns the continuum that the caller gave at a line.
+func (s *Scratch) continuumGiven(ci int) float64 {
+	t := &s.tracks[s.prob.comps[ci].track]
+	return s.arms[t.arm].Cont[t.center]
+}
+
+// blankNumbers takes back what was measured; the kind stays unmeasured.
+func blankNumbers(r *Result) {
+	name, wave, blend := r.Name, r.RestWave, r.Blend
+	*r = blank(&line{})
+	r.Name, r.RestWave, r.Blend = name, wave, blend
 }
 
 func finite(v ...float64) bool {

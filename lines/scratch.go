@@ -25,6 +25,7 @@ type Scratch struct {
 	order  []int // blends, strongest first
 	member []int // track indices of all blends, one after the other
 	anchor [2][2]kinematics
+	wings  kinematics // of the strongest line of hydrogen in a hot star
 
 	bins    []int // pixels a bin may have, along a window
 	prob    problem

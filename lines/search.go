@@ -160,7 +160,7 @@ func (s *Scratch) nextInGroup(i int, broad bool) float64 {
 func (s *Scratch) search(t *track) {
 	c := t.center
 	low := max(t.sres, 0.7*t.pix)
-	high := math.Hypot(s.opt.widthMax(t.broad), t.sres)
+	high := math.Hypot(s.opt.widthMax(t.line, t.broad), t.sres)
 	// A box must not swallow the neighbor.
 	if t.broad {
 		low = max(low, 400)

@@ -11,7 +11,7 @@ import (
 // Derivatives against central differences, relative error below 1e-5 of the
 // largest: those of the pixel-averaged Gaussian are checked elsewhere.
 func TestShapeDerivatives(t *testing.T) {
-	for _, profile := range []Profile{Gaussian, Hermite, Voigt} {
+	for _, profile := range []Profile{Gaussian, Hermite, Voigt, stark} {
 		form := func(mu, sigma, a, b float64) shape {
 			return shape{gauss: newGauss(mu, sigma, 0.3), profile: profile, a: a, b: b}
 		}
@@ -33,16 +33,57 @@ func TestShapeDerivatives(t *testing.T) {
 }
 
 // Profiles have unit area: by the midpoint rule, which for the Voigt profile
-// leaves out the tails beyond 400, 2 gamma/(pi 400).
+// leaves out the tails beyond 400, 2 gamma/(pi 400), and for wings of the power
+// -5/2 twice 2/3 s^(3/2) 400^(-3/2) over the area in units of s.
 func TestShapeArea(t *testing.T) {
-	for _, g := range []shape{{gauss: newGauss(0, 1, 0.02), profile: Hermite, a: 0.1, b: 0.15}, {gauss: newGauss(0, 1, 0.02), profile: Voigt, a: 0.5}} {
+	for _, g := range []shape{{gauss: newGauss(0, 1, 0.02), profile: Hermite, a: 0.1, b: 0.15}, {gauss: newGauss(0, 1, 0.02), profile: Voigt, a: 0.5},
+		{gauss: newGauss(0, 1, 0.02), profile: stark}} {
 		sum := 0.0
 		for x := -400.0; x < 400; x += 0.02 {
 			v, _, _, _, _ := g.full(x + 0.01)
 			sum += 0.02 * v
 		}
-		near(t, "area", sum, 1, 1e-6+map[Profile]float64{Voigt: 2 * 0.5 / (math.Pi * 400) * 1.01}[g.profile])
+		near(t, "area", sum, 1, 1e-6+map[Profile]float64{Voigt: 2 * 0.5 / (math.Pi * 400) * 1.01,
+			stark: 4. / 3 * math.Pow(starkCore, 1.5) * math.Pow(400, -1.5) / starkArea}[g.profile])
 	}
+	// sigma stands for the full width at half maximum.
+	g := shape{gauss: newGauss(0, 1, 1e-6), profile: stark}
+	top, _, _, _, _ := g.full(0)
+	half, _, _, _, _ := g.full(0.5 * fwhmPerSigma)
+	near(t, "half maximum", half/top, 0.5, 1e-6)
+}
+
+// A line of hydrogen with the wings of Stark broadening: 300 spectra, standard
+// error of the mean 0.06 of the error from noise.
+func TestStarkRecovered(t *testing.T) {
+	m := parse(t, hBeta)
+	wave := m.lines[0].Wave
+	clean := newArm(grid(wave, 69, 501), 1, 0.02)
+	const sigma, flux = 11.0, -18.0
+	for i, w := range clean.Wave {
+		u := (w - wave) / (1.3677 * sigma)
+		clean.Flux[i] += flux / (1.3677 * sigma * 2.3963) * math.Pow(1+u*u, -1.25)
+	}
+	rng := rand.New(rand.NewPCG(19, 1))
+	var a Arm
+	var sc Scratch
+	var ew, sum, width, stated moments
+	for range 300 {
+		noisy(&a, clean, rng)
+		r := m.Measure(nil, []Arm{a}, Options{Stark: true, ContinuumSlack: 0.01}, &sc)[0]
+		ew.add(r.EWRest)
+		sum.add(r.EWSum)
+		width.add((r.WidthKms - sigma/wave*c) / r.WidthErr)
+		stated.add(math.Sqrt(r.EWRestErr*r.EWRestErr - math.Pow(starkDoubt*r.EWRest, 2)))
+	}
+	t.Logf("W %.3f +- %.3f, stated %.3f; sum %.3f +- %.3f; width %.2f +- %.2f", ew.mean(), ew.sd(), stated.mean(), sum.mean(), sum.sd(), width.mean(), width.sd())
+	near(t, "equivalent width", ew.mean(), -flux, 0.25*stated.mean())
+	near(t, "sum", sum.mean(), -flux, 0.25*stated.mean())
+	// A standard deviation of 300 has a standard error of 4 %.
+	if r := ew.sd() / stated.mean(); r > 1.12 || r < 0.88 {
+		t.Errorf("scatter %.3f, stated without the doubt of the form %.3f", ew.sd(), stated.mean())
+	}
+	checkPull(t, "width", &width, bounds{0.87, 1.13, 0.25, 0.1})
 }
 
 // What is put in comes out, with errors that hold: 500 spectra each, standard

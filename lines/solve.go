@@ -334,6 +334,12 @@ func (s *Scratch) dropAnchors() {
 				flux += q.comps[i].share * s.lm.p[q.comps[i].amp]
 			}
 		}
+		if e.stark {
+			if snr > s.wings.snr {
+				s.wings = kinematics{snr, e.v, math.Sqrt(max(0, e.s*e.s-e.sres*e.sres))}
+			}
+			continue
+		}
 		class := 0
 		if e.broad {
 			class = 1

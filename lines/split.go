@@ -53,7 +53,7 @@ func (s *Scratch) secondStart(k int) (width, offset float64, ok bool) {
 	e := q.ties[k]
 	s.residuals()
 	least := 0.5 * splitGain
-	if e.ion == "H I" && !s.opt.Broad {
+	if e.ion == hydrogenIon && !s.opt.Broad {
 		least = splitStellar
 	}
 	starts := [5][2]float64{{0.5 * e.s, e.v}, {2 * e.s, e.v}, {3.5 * e.s, e.v}, {6 * e.s, 0}}
@@ -161,6 +161,7 @@ func (s *Scratch) trySecond(main, k int, v, w float64) {
 	ties, comps := len(q.ties), len(q.comps)
 	first := q.ties[k]
 	second := first
+	second.stark = false
 	second.v, second.s = min(max(v, -first.vmax), first.vmax), w
 	q.ties = append(q.ties, second)
 	for i := range comps {
@@ -207,20 +208,23 @@ func (s *Scratch) trySecond(main, k int, v, w float64) {
 // and the other emits.
 func (s *Scratch) stellar(k, l int) bool {
 	q := &s.prob
-	if q.ties[k].ion != "H I" || s.opt.Broad {
+	if q.ties[k].ion != hydrogenIon || s.opt.Broad {
 		return false
 	}
 	if q.ties[k].s < q.ties[l].s {
 		k, l = l, k
 	}
-	var broad, slim float64
+	return s.tieFlux(k) < 0 && s.tieFlux(l) > 0
+}
+
+// tieFlux returns the sum of the amplitudes of a tie's lines.
+func (s *Scratch) tieFlux(k int) float64 {
+	q := &s.prob
+	flux := 0.0
 	for i := range q.comps {
-		switch c := &q.comps[i]; c.tie {
-		case k:
-			broad += s.lm.p[c.amp]
-		case l:
-			slim += s.lm.p[c.amp]
+		if q.comps[i].tie == k {
+			flux += s.lm.p[q.comps[i].amp]
 		}
 	}
-	return broad < 0 && slim > 0
+	return flux
 }

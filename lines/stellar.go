@@ -28,7 +28,7 @@ func (s *Scratch) allowStellar() {
 	for ci := range q.comps {
 		c := &q.comps[ci]
 		l := s.tracks[c.track].line
-		if l.ion == "H I" && l.Wave > 3640 && l.Wave < 6600 && s.lm.p[c.amp] > 0 && q.ties[c.tie].own && s.onlyPart(ci) {
+		if l.ion == hydrogenIon && l.Wave > 3640 && l.Wave < 6600 && s.lm.p[c.amp] > 0 && q.ties[c.tie].own && s.onlyPart(ci) {
 			s.addStellar(ci)
 		}
 	}

@@ -23,6 +23,9 @@ func (s *Scratch) layWindows() {
 			times = 6
 		}
 		half := max(s.opt.WindowKms, times*e.s, 12*t.pix)
+		if e.stark {
+			half = min(half, starkWindow*s.nextHydrogen(t))
+		}
 		mu := c.lam0 * (1 + e.v/spectrum.SpeedOfLight)
 		d := c.lam0 * half / spectrum.SpeedOfLight
 		for k := range s.arms {
@@ -41,6 +44,21 @@ func (s *Scratch) layWindows() {
 	for i := range q.windows {
 		s.fillWindow(&q.windows[i])
 	}
+}
+
+// starkWindow is how far the window of a line of hydrogen with wide wings
+// reaches, in distances of the next one: beyond the middle the neighbor rules.
+const starkWindow = 0.5
+
+// nextHydrogen returns the distance to the nearest other line of hydrogen, km/s.
+func (s *Scratch) nextHydrogen(t *track) float64 {
+	d := math.Inf(1)
+	for i := range s.meter.lines {
+		if l := &s.meter.lines[i]; l.ion == t.line.ion && i != t.index {
+			d = min(d, spectrum.SpeedOfLight*math.Abs(l.Wave/t.line.Wave-1))
+		}
+	}
+	return d
 }
 
 func (s *Scratch) addWindow(arm, lo, hi int) {
@@ -196,8 +214,12 @@ func (s *Scratch) markBins(w *window) {
 		scale := c.lam0 / spectrum.SpeedOfLight
 		mu, sigma := c.lam0+scale*e.v, scale*e.s
 		most := max(1, int(e.s/(binSigma*s.tracks[c.track].pix)))
-		lo := max(a.index(mu-6*sigma), w.pix0)
-		hi := min(a.index(mu+6*sigma), w.pixLimit)
+		far := 6.0
+		if e.stark {
+			far = starkReach
+		}
+		lo := max(a.index(mu-far*sigma), w.pix0)
+		hi := min(a.index(mu+far*sigma), w.pixLimit)
 		for i := lo; i < hi; i++ {
 			s.bins[i-w.pix0] = min(s.bins[i-w.pix0], most)
 		}

@@ -16,7 +16,7 @@ type sightline struct {
 // absorb returns the absorbers in front of a quasar, none for other objects. It
 // reads the arms that measure has filled.
 func (b *Bench) absorb(res *redshift.Result) []catalog.Absorber {
-	if res.Class != catalog.Quasar || !b.haveCont {
+	if res.Class != catalog.Quasar || !b.level.ready {
 		return nil
 	}
 	l := &b.sight

@@ -8,7 +8,6 @@ import (
 	"duskline/absorbers"
 	"duskline/catalog"
 	"duskline/configs"
-	"duskline/continuum"
 	"duskline/linelist"
 	"duskline/lines"
 	"duskline/redshift"
@@ -74,18 +73,17 @@ type Bench struct {
 	gridder  spectrum.Gridder
 	grid     spectrum.Grid
 	scratch  *redshift.Scratch
-	fit      continuum.Fitter
+	level    level
 	measured lines.Scratch
 	sight    sightline
-	x, ivar  []float64
+	x        []float64
 	arms     []lines.Arm
 	results  []lines.Result
-	haveCont bool
 }
 
 // Process takes one spectrum through the chain.
 func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
-	b.haveCont, b.results = false, b.results[:0]
+	b.level.ready, b.results = false, b.results[:0]
 	b.lay(s)
 	res, beyond := b.find(s)
 	b.chain.thresholds.Judge(&res)
@@ -154,22 +152,13 @@ func supports(res *redshift.Result, name string) bool {
 // continuum could be had.
 func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) bool {
 	g := &b.grid
-	b.x, b.ivar = resized(b.x, g.Len()), resized(b.ivar, g.Len())
-	copy(b.ivar, g.Ivar)
+	b.x = resized(b.x, g.Len())
 	for i := range b.x {
 		b.x[i] = g.LogWave(i)
 	}
-	b.maskLines(res)
-	opt := b.chain.set.continuumOptions()
-	if b.fit.Fit(b.x, g.Flux, b.ivar, opt) != nil {
-		// So much was masked that nothing holds the spline: lines and all.
-		copy(b.ivar, g.Ivar)
-		if b.fit.Fit(b.x, g.Flux, b.ivar, opt) != nil {
-			return false
-		}
+	if !b.level.fit(g, b.x, res, &b.chain.set) {
+		return false
 	}
-	b.fit.Errors()
-	b.haveCont = true
 	if cap(b.arms) < len(s.Segments) {
 		b.arms = append(b.arms[:cap(b.arms)], make([]lines.Arm, len(s.Segments)-cap(b.arms))...)
 	}
@@ -179,21 +168,24 @@ func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) bool {
 		n := seg.Len()
 		arm.Wave, arm.Flux, arm.Ivar, arm.Resolution = seg.Wave, seg.Flux, seg.Ivar, seg.Resolution
 		arm.Cont, arm.ContErr = resized(arm.Cont, n), resized(arm.ContErr, n)
-		basis := b.fit.Basis()
 		for i, w := range seg.Wave {
 			x := math.Log10(w)
-			if x < basis.Low-g.Step || x > basis.High+g.Step {
+			if !b.level.covers(x, g.Step) {
 				arm.Cont[i], arm.ContErr[i] = math.NaN(), math.NaN()
 				continue
 			}
-			arm.Cont[i], arm.ContErr[i] = b.fit.Value(x), b.fit.Sigma(x)
+			arm.Cont[i], arm.ContErr[i] = b.level.Value(x), b.level.Sigma(x)
 		}
 	}
-	b.results = b.chain.meter.Measure(b.results, b.arms, lines.Options{
+	opt := lines.Options{
 		Z: res.Redshift, ZErr: res.RedshiftErr, Broad: res.Class == catalog.Quasar,
 		WidthGuess: math.Min(res.Width, maxWidthGuess), Sky: lines.SkyBands(),
 		WindowKms: b.chain.set.Lines.WindowKms, MinGood: b.chain.set.Lines.MinGood, Expect: expectation(res),
-	}, &b.measured)
+	}
+	if b.level.wide {
+		opt.ContinuumSlack, opt.Stark = 0.01, true
+	}
+	b.results = b.chain.meter.Measure(b.results, b.arms, opt, &b.measured)
 	if res.Class == catalog.Star {
 		b.results = lines.Fold(b.results)
 	}
@@ -233,26 +225,6 @@ const (
 // maxWidthGuess keeps the width of a line that is not seen, km/s, from that of
 // a quasar's broadest.
 const maxWidthGuess = 1500
-
-// maskLines takes the weight from pixels on lines that the winning model uses.
-func (b *Bench) maskLines(res *redshift.Result) {
-	g := &b.grid
-	for _, e := range res.Lines {
-		if e.Name == "" || e.Model < 1 {
-			continue
-		}
-		half := b.chain.set.Continuum.MaskWidths * math.Min(e.Width, maxMaskKms) / spectrum.SpeedOfLight
-		lo := int(math.Ceil((math.Log10(e.Wave*(1-half)) - g.Start) / g.Step))
-		hi := int(math.Floor((math.Log10(e.Wave*(1+half)) - g.Start) / g.Step))
-		for i := max(0, lo); i <= min(hi, g.Len()-1); i++ {
-			b.ivar[i] = 0
-		}
-	}
-}
-
-// maxMaskKms bounds the Gaussian sigma that a mask is made for: a mask wider
-// than the knot spacing leaves the spline without a hold.
-const maxMaskKms = 3000
 
 // object fills the row of the object table.
 func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Object {

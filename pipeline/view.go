@@ -20,8 +20,8 @@ func (b *Bench) View() View {
 		b.x[i] = b.grid.LogWave(i)
 	}
 	v := View{LogWave: b.x, Flux: b.grid.Flux, Ivar: b.grid.Ivar}
-	if b.haveCont || b.fit.Fit(b.x, b.grid.Flux, b.grid.Ivar, b.chain.set.continuumOptions()) == nil {
-		v.Continuum = b.fit.Value
+	if b.level.ready || b.level.plain(&b.grid, b.x, b.chain.set.continuumOptions()) {
+		v.Continuum = b.level.Value
 	}
 	return v
 }
