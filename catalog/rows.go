@@ -167,6 +167,8 @@ type Object struct {
 	Reason      string // why there is no answer, and what had to be assumed
 	InputDigest string // of the bytes that the spectrum was read from
 	FluxUnit    string // of the input, may be empty
+
+	Magnitude float64 // as the manifest gives it; NaN without
 }
 
 // Line is one row of the line table: one line of one object. Numbers that are

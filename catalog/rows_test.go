@@ -22,7 +22,7 @@ func someObjects() []Object {
 		RA: 210.1234567, Dec: -5.7654321, Class: Galaxy, Family: "emission", Redshift: 0.1234567, RedshiftErr: 0.0000123,
 		Confidence: 0.99876, Verdict: Secure, Flags: LoneLine | FrameAssumed, RivalRedshift: 0.7654321, RivalFamily: "quasar",
 		Gap: 43.125, RStat: 8.25, LinesSeen: 7, SNR: 4.5, PixelsUsed: 4321, WaveMin: 3600.125, WaveMax: 9799.875,
-		Chi2Dof: 1.0625, VelocityFrame: "topocentric", BaryVelocity: -12.34567, InputDigest: "0123456789abcdef"}
+		Chi2Dof: 1.0625, VelocityFrame: "topocentric", BaryVelocity: -12.34567, InputDigest: "0123456789abcdef", Magnitude: 21.375}
 	quasar := full
 	quasar.ObjectID, quasar.Class, quasar.Verdict, quasar.Flags = "lr-20310314-p03-118", Quasar, Uncertain, 0
 	quasar.Redshift, quasar.RA, quasar.Dec, quasar.BaryVelocity = 3.25, nan, nan, nan
@@ -33,7 +33,7 @@ func someObjects() []Object {
 	nebula.ObjectID, nebula.Class, nebula.Flags = "nebula", Nebula, knownFlags&^Unreadable
 	unread := Object{ObjectID: "broken", SourceFile: "night/bad\nname\xff.fits", RA: nan, Dec: nan, Class: Unknown, Redshift: nan,
 		RedshiftErr: nan, Confidence: nan, Verdict: None, Flags: Unreadable, RivalRedshift: nan, Gap: nan, RStat: nan, SNR: nan,
-		WaveMin: nan, WaveMax: nan, Chi2Dof: nan, BaryVelocity: nan, Reason: "header cut short at byte 1,440, HDU 2"}
+		WaveMin: nan, WaveMax: nan, Chi2Dof: nan, BaryVelocity: nan, Magnitude: nan, Reason: "header cut short at byte 1,440, HDU 2"}
 	return []Object{full, quasar, star, nebula, unread}
 }
 
@@ -78,7 +78,7 @@ func drawObject(t *rapid.T) Object {
 		Gap: big.Draw(t, "gap"), RStat: big.Draw(t, "r"), LinesSeen: rapid.Int32Min(0).Draw(t, "lines"), SNR: big.Draw(t, "snr"),
 		PixelsUsed: rapid.Int32Min(0).Draw(t, "pixels"), WaveMin: anyNumber(0, 5e3).Draw(t, "min"), WaveMax: anyNumber(5e3, 1e6).Draw(t, "max"),
 		Chi2Dof: anyNumber(0, 1e300).Draw(t, "chi2"), VelocityFrame: anyText.Draw(t, "frame"), BaryVelocity: big.Draw(t, "bary"),
-		Reason: "x" + anyText.Draw(t, "reason"), InputDigest: anyText.Draw(t, "digest")}
+		Reason: "x" + anyText.Draw(t, "reason"), InputDigest: anyText.Draw(t, "digest"), Magnitude: anyNumber(-50, 100).Draw(t, "magnitude")}
 	if rapid.Bool().Draw(t, "placed") {
 		o.RA, o.Dec = rapid.Float64Range(0, 360).Draw(t, "ra"), rapid.Float64Range(-90, 90).Draw(t, "dec")
 	}
@@ -227,7 +227,7 @@ func TestColumnOrder(t *testing.T) {
 	}
 	const objects = "object_id source_file source_row ra dec class family redshift redshift_err confidence verdict flags flag_names " +
 		"rival_redshift rival_family gap r_stat lines_seen snr pixels_used wave_min wave_max chi2_dof velocity_frame bary_velocity " +
-		"reason input_digest flux_unit"
+		"reason input_digest flux_unit magnitude"
 	const lines = "object_id line rest_wave kind ew_rest ew_rest_err ew_sum ew_sum_err flux flux_err offset_kms offset_err width_kms " +
 		"width_err snr continuum upper_limit blend pixels reason"
 	if got := names(ObjectColumns()); got != objects {
@@ -256,7 +256,7 @@ func TestColumnsCoverFields(t *testing.T) {
 	for _, c := range objectColumns() {
 		fields = append(fields, c.field(&o))
 	}
-	check("Object", fields, 27) // 28 columns, flags and flag_names share a field
+	check("Object", fields, 28) // 29 columns, flags and flag_names share a field
 	var l Line
 	fields = nil
 	for _, c := range lineColumns() {

@@ -61,6 +61,8 @@ func objectColumns() []column[Object] {
 			func(o *O) any { return &o.InputDigest }},
 		{Column{Name: "flux_unit", UCD: "meta.unit", Description: "flux unit of the input, which line fluxes and continua keep"},
 			func(o *O) any { return &o.FluxUnit }},
+		{Column{Name: "magnitude", Unit: "mag", UCD: "phot.mag", Display: "F8.3", Description: "magnitude of the object as the manifest gives it"},
+			func(o *O) any { return &o.Magnitude }},
 	}
 }
 

@@ -7,7 +7,7 @@
 //	row             spectrum in that file, from 0; empty for all of them
 //	object_id       name of the object, instead of the file's
 //	ra, dec         position, ICRS: degrees, or hh:mm:ss and dd:mm:ss
-//	magnitude       kept for people, not used
+//	magnitude       stands in the catalog, for plots of success against it
 //	expected_class  galaxy, quasar, star or nebula
 //	redshift_min    lowest redshift to be tried
 //	redshift_max    highest redshift to be tried
@@ -49,9 +49,9 @@ func (e *Entry) Restricts() bool {
 	return e.ExpectedClass != "" || !math.IsNaN(e.RedshiftMin) || !math.IsNaN(e.RedshiftMax)
 }
 
-// Key identifies what of the entry can change a result, for digests.
+// Key identifies what of the entry can change a row, for digests.
 func (e *Entry) Key() string {
-	return fmt.Sprintf("%q %v %v %q %v %v", e.ObjectID, e.RA, e.Dec, e.ExpectedClass, e.RedshiftMin, e.RedshiftMax)
+	return fmt.Sprintf("%q %v %v %v %q %v %v", e.ObjectID, e.RA, e.Dec, e.Magnitude, e.ExpectedClass, e.RedshiftMin, e.RedshiftMax)
 }
 
 // Manifest is a table of entries. It is immutable and may be shared.

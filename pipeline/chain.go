@@ -234,7 +234,7 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 		Confidence: res.Confidence, Verdict: res.Verdict.String(), RivalRedshift: res.RivalRedshift, RivalFamily: res.RivalFamily,
 		Gap: res.Gap, RStat: res.RStat, LinesSeen: int32(res.LinesSeen), SNR: res.SNR, PixelsUsed: int32(res.PixelsUsed),
 		WaveMin: math.NaN(), WaveMax: math.NaN(), Chi2Dof: res.Chi2Dof,
-		VelocityFrame: s.Frame.String(), BaryVelocity: s.BaryVelocity, FluxUnit: s.FluxUnit,
+		VelocityFrame: s.Frame.String(), BaryVelocity: s.BaryVelocity, FluxUnit: s.FluxUnit, Magnitude: math.NaN(),
 	}
 	if res.Class != "" && res.Verdict != redshift.None {
 		o.Class = res.Class

@@ -191,10 +191,16 @@ func (r *Run) warnManifest(used map[int]bool) {
 	}
 }
 
+// origin is what goes from input and manifest into a row past the science.
+type origin struct {
+	digest    string  // empty where the disk gives none
+	magnitude float64 // NaN where the manifest has none
+}
+
 // readObject reads a spectrum with what the manifest knows about it, which also
-// goes into the digest of its input. The digest is empty where the disk gives
-// none.
-func (r *Run) readObject(in *planInput, f SpectrumFile, row int) (s *spectrum.Spectrum, digest string, err error) {
+// goes into the digest of its input.
+func (r *Run) readObject(in *planInput, f SpectrumFile, row int) (s *spectrum.Spectrum, from origin, err error) {
+	from.magnitude = math.NaN()
 	e, names := r.known(in, f, row)
 	if e == nil {
 		s, err = f.Read(row)
@@ -202,21 +208,22 @@ func (r *Run) readObject(in *planInput, f SpectrumFile, row int) (s *spectrum.Sp
 		s, err = names.ReadAs(row, fitsread.Identity{ObjectID: e.ObjectID, RA: e.RA, Dec: e.Dec})
 	}
 	if err == nil {
-		digest = s.InputDigest
+		from.digest = s.InputDigest
 	} else if d, unknown := f.Digest(row); unknown == nil {
-		digest = d
+		from.digest = d
 	}
 	if e == nil {
-		return s, digest, err
+		return s, from, err
 	}
-	if digest != "" {
-		sum := sha256.Sum256([]byte(digest + " " + e.Key()))
-		digest = hex.EncodeToString(sum[:8])
+	from.magnitude = e.Magnitude
+	if from.digest != "" {
+		sum := sha256.Sum256([]byte(from.digest + " " + e.Key()))
+		from.digest = hex.EncodeToString(sum[:8])
 	}
 	if err == nil && e.Restricts() {
 		s.Limits = &spectrum.Limits{Class: e.ExpectedClass, ZMin: e.RedshiftMin, ZMax: e.RedshiftMax}
 	}
-	return s, digest, err
+	return s, from, err
 }
 
 // known returns what the manifest says about an object of a file that takes it,
@@ -239,7 +246,7 @@ func (r *Run) known(in *planInput, f SpectrumFile, row int) (*manifest.Entry, id
 func (r *Run) unreadObject(in *planInput, row int) catalog.Object {
 	o := blankObject()
 	if e := r.job.Manifest.find(in.file(r.head.Folder), row, ""); e != nil {
-		o.ObjectID, o.RA, o.Dec = e.ObjectID, e.RA, e.Dec
+		o.ObjectID, o.RA, o.Dec, o.Magnitude = e.ObjectID, e.RA, e.Dec, e.Magnitude
 	}
 	return o
 }

@@ -365,8 +365,8 @@ func (st *stacker) read(m *member) (s *spectrum.Spectrum, err error) {
 	if row < 0 || row >= f.Count() {
 		return nil, fmt.Errorf("has no spectrum %d any more", row)
 	}
-	s, digest, err := st.run.readObject(&m.in, f, row)
-	if err == nil && digest != m.object.InputDigest {
+	s, from, err := st.run.readObject(&m.in, f, row)
+	if err == nil && from.digest != m.object.InputDigest {
 		return nil, errors.New("was written to since the run")
 	}
 	return s, err

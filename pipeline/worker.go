@@ -50,19 +50,22 @@ type fault struct {
 
 // do works on one object. Whatever is wrong with it becomes a row.
 func (w *objectWorker) do(t task) result {
-	s, digest, bad := w.read(t)
+	s, from, bad := w.read(t)
 	if bad != nil {
 		r := result{task: t, internal: bad.internal}
 		r.outcome.Object = w.run.unreadObject(t.in, t.row)
 		r.outcome.Object.Flags = catalog.Unreadable
 		r.outcome.Object.Reason = bad.reason
-		r.complete(digest)
+		if math.IsNaN(from.magnitude) {
+			from.magnitude = r.outcome.Object.Magnitude
+		}
+		r.complete(from)
 		return r
 	}
 	s.SourceFile, s.SourceRow = t.in.Path, t.row
 	id, ra, dec := s.ObjectID, s.RA, s.Dec
 	r := result{task: t}
-	if out, same := w.run.earlier.outcome(t.in, w.run.head.Folder, t.row, digest); same {
+	if out, same := w.run.earlier.outcome(t.in, w.run.head.Folder, t.row, from.digest); same {
 		r.outcome, r.taken = out, true
 		return r
 	}
@@ -70,7 +73,7 @@ func (w *objectWorker) do(t task) result {
 		if r.outcome.Object.ObjectID == "" {
 			r.outcome.Object.ObjectID = id
 		}
-		r.complete(digest)
+		r.complete(from)
 		bad = w.inspect(&r)
 	}
 	if bad != nil {
@@ -78,21 +81,22 @@ func (w *objectWorker) do(t task) result {
 		r.outcome = Outcome{Object: blankObject()}
 		o := &r.outcome.Object
 		o.ObjectID, o.RA, o.Dec, o.Reason = id, ra, dec, bad.reason
-		r.complete(digest)
+		r.complete(from)
 	}
 	return r
 }
 
 // complete fills in what the engine knows better than the science.
-func (r *result) complete(digest string) {
+func (r *result) complete(from origin) {
 	o := &r.outcome.Object
 	o.SourceFile, o.SourceRow = r.in.Path, int64(r.row)
 	if o.ObjectID == "" {
 		o.ObjectID = fallbackID(r.in, r.row)
 	}
 	if o.InputDigest == "" {
-		o.InputDigest = digest
+		o.InputDigest = from.digest
 	}
+	o.Magnitude = from.magnitude
 	if !(o.RA >= 0 && o.RA <= 360 && o.Dec >= -90 && o.Dec <= 90) {
 		o.RA, o.Dec = math.NaN(), math.NaN() // headers of surveys hold -999 and the like
 	}
@@ -127,29 +131,30 @@ func (w *objectWorker) inspect(r *result) *fault {
 	return &fault{internalPrefix + err.Error(), true}
 }
 
-// read returns the spectrum of a task and the digest of its input, or what is
-// wrong with it.
-func (w *objectWorker) read(t task) (s *spectrum.Spectrum, digest string, bad *fault) {
+// read returns the spectrum of a task and where it comes from, or what is wrong
+// with it.
+func (w *objectWorker) read(t task) (s *spectrum.Spectrum, from origin, bad *fault) {
+	from.magnitude = math.NaN()
 	if t.in.Trouble != "" {
-		return nil, "", &fault{t.in.Trouble, t.in.Internal}
+		return nil, from, &fault{t.in.Trouble, t.in.Internal}
 	}
 	if w.held == nil || w.held.in != t.in {
 		w.release()
 		w.held = w.shelf.take(t.in)
 	}
 	if w.held.fault != nil {
-		return nil, "", w.held.fault
+		return nil, from, w.held.fault
 	}
 	defer func() {
 		if p := recover(); p != nil {
 			s, bad = nil, w.run.report(t.in.Path, t.row, p)
 		}
 	}()
-	s, digest, err := w.run.readObject(t.in, w.held.file, t.row)
+	s, from, err := w.run.readObject(t.in, w.held.file, t.row)
 	if err != nil {
-		return nil, digest, readFault(err, t.in.Path)
+		return nil, from, readFault(err, t.in.Path)
 	}
-	return s, digest, nil
+	return s, from, nil
 }
 
 func (w *objectWorker) release() {
@@ -236,6 +241,6 @@ func blankObject() catalog.Object {
 	nan := math.NaN()
 	return catalog.Object{
 		RA: nan, Dec: nan, Class: catalog.Unknown, Redshift: nan, RedshiftErr: nan, Confidence: nan, Verdict: catalog.None,
-		RivalRedshift: nan, Gap: nan, RStat: nan, SNR: nan, WaveMin: nan, WaveMax: nan, Chi2Dof: nan, BaryVelocity: nan,
+		RivalRedshift: nan, Gap: nan, RStat: nan, SNR: nan, WaveMin: nan, WaveMax: nan, Chi2Dof: nan, BaryVelocity: nan, Magnitude: nan,
 	}
 }

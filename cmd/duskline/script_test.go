@@ -29,13 +29,14 @@ func TestMain(m *testing.M) {
 //	isplot FILE             want a PNG that is more than an empty frame
 //	spoil FILE              cut a file in half
 //	mkshort DIR FILES N     write FILES files of N short spectra each
+//	mkspectrum FILE [CARD]  write a spectrum with such cards as SPECSYS=TOPOCENT
 func TestScripts(t *testing.T) {
 	testscript.Run(t, testscript.Params{
 		Dir:                 "testdata",
 		RequireExplicitExec: true,
 		Cmds: map[string]func(ts *testscript.TestScript, neg bool, args []string){
 			"exits": exits, "mknight": makeNight, "await": await, "isplot": isPlot, "spoil": spoil,
-			"mkshort": makeShort, "touchrow": touchRow,
+			"mkshort": makeShort, "touchrow": touchRow, "mkspectrum": makeSpectrum,
 		},
 	})
 }
