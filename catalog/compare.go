@@ -3,7 +3,6 @@ package catalog
 import (
 	"cmp"
 	"fmt"
-	"maps"
 	"math"
 	"slices"
 	"strings"
@@ -98,11 +97,13 @@ func (s *LineShift) add(sigmas float64) {
 }
 
 // Comparison holds two catalogs against each other. Give it all entries of
-// both with Add, in any order; memory is least where the two have the same
-// order. Then read the fields; Finish first.
+// both with Add, in any order; it is fastest where the two have the same order.
+// Then Finish, and read the fields. Memory is bounded, but for Keep changes:
+// what is too much goes to files without names in Folder.
 type Comparison struct {
-	Limit float64 // errors beyond which a number has changed
-	Keep  int     // most changes that are kept
+	Limit  float64 // errors beyond which a number has changed
+	Keep   int     // most changes that are kept
+	Folder string  // empty for that of temporary files
 
 	Matched, OnlyOld, OnlyNew int64
 	NewInputs                 int64 // matched objects whose input is another
@@ -114,15 +115,20 @@ type Comparison struct {
 	Lines                     map[string]*LineShift
 	Redshifts                 LineShift // changes over their errors
 	Changes                   []Change  // most significant first
-	waiting                   [2]map[string]Entry
+	join                      join
+	lone                      [2][]string // first IDs of those on one side only
 }
 
 // NewComparison returns a comparison of nothing yet.
 func NewComparison(limit float64, keep int) *Comparison {
-	return &Comparison{Limit: limit, Keep: keep, Verdicts: map[[2]string]int64{}, Classes: map[[2]string]int64{},
-		FlagsGained: map[string]int64{}, FlagsLost: map[string]int64{}, Lines: map[string]*LineShift{},
-		waiting: [2]map[string]Entry{{}, {}}}
+	c := &Comparison{Limit: limit, Keep: keep, Verdicts: map[[2]string]int64{}, Classes: map[[2]string]int64{},
+		FlagsGained: map[string]int64{}, FlagsLost: map[string]int64{}, Lines: map[string]*LineShift{}}
+	c.join = join{most: waitingBytes, pair: c.pair, lone: c.addLone}
+	return c
 }
+
+// waitingBytes is how much of two catalogs in different orders waits in memory.
+const waitingBytes = 32 << 20
 
 // Changed returns the number of objects that changed or stand in one catalog
 // only.
@@ -140,31 +146,35 @@ const (
 	NewSide = 1
 )
 
-// Add takes an entry of one side.
-func (c *Comparison) Add(side int, e Entry) {
-	other, ok := c.waiting[1-side][e.ObjectID]
-	if !ok {
-		c.waiting[side][e.ObjectID] = e
-		return
-	}
-	delete(c.waiting[1-side], e.ObjectID)
-	if side == NewSide {
-		c.pair(&other, &e)
-	} else {
-		c.pair(&e, &other)
-	}
+// Add takes an entry of one side. The error is of a file that takes no more.
+func (c *Comparison) Add(side int, e Entry) error {
+	c.join.folder = c.Folder
+	return c.join.add(side, e)
 }
 
-// Finish closes the comparison once all entries were added.
-func (c *Comparison) Finish() {
-	c.OnlyOld, c.OnlyNew = int64(len(c.waiting[OldSide])), int64(len(c.waiting[NewSide]))
+// Finish closes the comparison once all entries were added. The error is of a
+// file that cannot be read back.
+func (c *Comparison) Finish() error {
+	if err := c.join.finish(); err != nil {
+		return err
+	}
 	c.trim(c.Keep)
+	return nil
 }
 
-// Lone returns the first few IDs, in order, that stand on one side only.
+func (c *Comparison) addLone(side int, id string) {
+	if side == OldSide {
+		c.OnlyOld++
+	} else {
+		c.OnlyNew++
+	}
+	c.lone[side] = firstFew(c.lone[side], id, loneKept)
+}
+
+// Lone returns the first few IDs, in order, at most ten, that stand on one side
+// only.
 func (c *Comparison) Lone(side, most int) []string {
-	ids := slices.Sorted(maps.Keys(c.waiting[side]))
-	return ids[:min(most, len(ids))]
+	return c.lone[side][:min(most, len(c.lone[side]))]
 }
 
 func (c *Comparison) pair(old, now *Entry) {
@@ -190,7 +200,7 @@ func (c *Comparison) pair(old, now *Entry) {
 		return
 	}
 	c.Changes = append(c.Changes, d)
-	if len(c.Changes) >= 2*c.Keep+1000 {
+	if len(c.Changes) >= c.Keep+c.Keep/8+1000 {
 		c.trim(c.Keep)
 	}
 }

@@ -4,9 +4,11 @@ import (
 	"fmt"
 	"math"
 	"math/rand/v2"
+	"os"
 	"reflect"
 	"slices"
 	"testing"
+	"unsafe"
 )
 
 func entry(id string, change func(*Entry)) Entry {
@@ -51,9 +53,9 @@ var changeCases = []struct {
 func TestChangesHaveTheirWeight(t *testing.T) {
 	for _, k := range changeCases {
 		c := NewComparison(3, 10)
-		c.Add(OldSide, entry("x", nil))
-		c.Add(NewSide, entry("x", k.change))
-		c.Finish()
+		check(t, c.Add(OldSide, entry("x", nil)))
+		check(t, c.Add(NewSide, entry("x", k.change)))
+		check(t, c.Finish())
 		if c.ByWeight[k.weight] != 1 || c.Matched != 1 {
 			t.Errorf("%s: weights %v", k.name, c.ByWeight)
 		}
@@ -82,17 +84,19 @@ func TestOrderDoesNotMatter(t *testing.T) {
 			now = append(now, entry(id, k.change))
 		}
 	}
+	folder, most := t.TempDir(), waitingBytes
 	compare := func(keep int) *Comparison {
 		c := NewComparison(3, keep)
+		c.Folder, c.join.most = folder, most
 		for i := range max(len(old), len(now)) {
 			if i < len(old) {
-				c.Add(OldSide, old[i])
+				check(t, c.Add(OldSide, old[i]))
 			}
 			if i < len(now) {
-				c.Add(NewSide, now[i])
+				check(t, c.Add(NewSide, now[i]))
 			}
 		}
-		c.Finish()
+		check(t, c.Finish())
 		return c
 	}
 	want := compare(1000)
@@ -107,12 +111,15 @@ func TestOrderDoesNotMatter(t *testing.T) {
 		t.Error("a shorter table is not the head of the longer one")
 	}
 	r := rand.New(rand.NewPCG(1, 2))
-	for range 5 {
+	for _, most = range []int{waitingBytes, 100_000, 20_000, 3000, 1} { // in memory, in files, in files of files
 		r.Shuffle(len(old), func(i, j int) { old[i], old[j] = old[j], old[i] })
 		r.Shuffle(len(now), func(i, j int) { now[i], now[j] = now[j], now[i] })
 		got := compare(1000)
 		if got.ByWeight != want.ByWeight || !reflect.DeepEqual(got.Verdicts, want.Verdicts) || !reflect.DeepEqual(got.Lines, want.Lines) {
 			t.Error("another order counts differently")
+		}
+		if got.OnlyOld != want.OnlyOld || got.OnlyNew != want.OnlyNew || !slices.Equal(got.Lone(OldSide, 3), want.Lone(OldSide, 3)) || len(want.Lone(NewSide, 3)) != 3 {
+			t.Errorf("on one side only: %d and %d, %v", got.OnlyOld, got.OnlyNew, got.Lone(OldSide, 3))
 		}
 		for i := range got.Changes {
 			if got.Changes[i].New.ObjectID != want.Changes[i].New.ObjectID {
@@ -120,16 +127,33 @@ func TestOrderDoesNotMatter(t *testing.T) {
 			}
 		}
 	}
+	if left, err := os.ReadDir(folder); err != nil || len(left) > 0 {
+		t.Errorf("left behind: %v, %v", left, err)
+	}
+}
+
+func check(t *testing.T, err error) {
+	t.Helper()
+	if err != nil {
+		t.Fatal(err)
+	}
+}
+
+// What waits is counted by these sizes.
+func TestCostOfEntries(t *testing.T) {
+	if o, l := unsafe.Sizeof(Object{}), unsafe.Sizeof(Line{}); o > entryCost || l > lineCost || 2*o < entryCost || 2*l < lineCost {
+		t.Errorf("an object takes %d bytes and a line %d; counted are %d and %d", o, l, entryCost, lineCost)
+	}
 }
 
 func TestQuantiles(t *testing.T) {
 	c := NewComparison(3, 10)
 	for i := range 201 { // widths shifted by -1 to 1 errors in steps of 0.01
 		id := fmt.Sprint(i)
-		c.Add(OldSide, entry(id, nil))
-		c.Add(NewSide, entry(id, func(e *Entry) { e.Lines[0].EWRest += math.Sqrt2 * float64(i-100) / 100 }))
+		check(t, c.Add(OldSide, entry(id, nil)))
+		check(t, c.Add(NewSide, entry(id, func(e *Entry) { e.Lines[0].EWRest += math.Sqrt2 * float64(i-100) / 100 })))
 	}
-	c.Finish()
+	check(t, c.Finish())
 	s := c.Lines["Ha"]
 	for q, want := range map[float64]float64{0.16: -0.68, 0.5: 0, 0.84: 0.68} {
 		if got := s.Quantile(q); math.Abs(got-want) > 0.1 { // a bin

@@ -3,14 +3,13 @@ package pipeline
 import (
 	"bufio"
 	"context"
-	"crypto/sha256"
 	"errors"
 	"fmt"
-	"io/fs"
 	"os"
 	"path/filepath"
-	"slices"
 	"strings"
+
+	"duskline/internal/spill"
 )
 
 // candidate is a file to be taken as input, or a place where one should be.
@@ -20,13 +19,19 @@ type candidate struct {
 }
 
 // finder turns the PATH arguments of a command into files, in order and each
-// once.
+// once. Its memory does not grow with their number.
 type finder struct {
-	base    string // folder that relative paths start from
-	out     string // run folder, never searched
-	folders map[string]bool
-	files   map[[16]byte]bool // digests of real paths of files that were named or linked, not found by a walk
+	base    string    // folder that relative paths start from
+	out     string    // run folder, never searched
+	folders spill.Map // real paths of folders that were walked
+	files   spill.Map // real paths of files that were named or linked, not found by a walk
 	yield   func(candidate) error
+}
+
+// named is an argument that was looked at.
+type named struct {
+	path string
+	kind byte // 'p' for a path, '@' for a list, '*' for a pattern
 }
 
 // findInputs calls yield for every input file:
@@ -35,35 +40,40 @@ type finder struct {
 //   - a folder, walked recursively in order of names; it yields what is called
 //     *.fits, *.fit or *.fts, with or without .gz or .fz, in capitals or not; hidden
 //     names and finished runs are passed over, links are followed once;
-//   - a pattern with *, ? or [ that no file is named after, in order of names;
+//   - a pattern with *, ? or [ that no file is named after, folder by folder in
+//     order of names;
 //   - @list, a text file with one file or folder a line; empty lines and lines
 //     that begin with # are passed over.
 //
 // The same file is yielded once, however often it is named. A path that does
 // not exist is a problem of the command and is reported with all others before
 // anything is yielded; one that a list names is yielded with its trouble.
-func findInputs(ctx context.Context, base, out string, paths []string, yield func(candidate) error) error {
-	f := &finder{base: base, folders: map[string]bool{}, files: map[[16]byte]bool{}, yield: yield}
+func findInputs(ctx context.Context, base, out string, paths []string, yield func(candidate) error) (err error) {
+	f := &finder{base: base, yield: yield, folders: spill.Map{Folder: out}, files: spill.Map{Folder: out}}
+	defer func() { err = errors.Join(err, f.folders.Close(), f.files.Close()) }()
 	if real, err := filepath.EvalSymlinks(out); err == nil {
 		f.out = real
 	}
-	var expanded, problems []string
+	var all []named
+	var problems []string
 	for _, path := range paths {
-		names, err := f.expand(path)
+		n, err := f.look(path)
 		if err != nil {
 			problems = append(problems, err.Error())
 		}
-		expanded = append(expanded, names...)
+		all = append(all, n)
 	}
 	if len(problems) > 0 {
 		return &InputError{problems}
 	}
-	for _, path := range expanded {
-		var err error
-		if list, ok := strings.CutPrefix(path, "@"); ok {
-			err = f.takeList(ctx, list)
-		} else {
-			err = f.take(ctx, path)
+	for _, n := range all {
+		switch n.kind {
+		case '@':
+			err = f.takeList(ctx, n.path)
+		case '*':
+			err = f.glob(ctx, n.path, func(path string) error { return f.take(ctx, path) })
+		default:
+			err = f.take(ctx, n.path)
 		}
 		if err != nil {
 			return err
@@ -82,50 +92,38 @@ func locate(base, path string) string {
 	return filepath.Join(base, path)
 }
 
-// expand checks one argument and resolves a pattern.
-func (f *finder) expand(path string) ([]string, error) {
+// look finds out what an argument is, and whether it can be used.
+func (f *finder) look(path string) (named, error) {
 	if list, ok := strings.CutPrefix(path, "@"); ok {
 		info, err := os.Stat(f.locate(list))
 		if err != nil {
-			return nil, fmt.Errorf("the list %s cannot be read: %s; give an existing text file after @", list, plain(err))
+			return named{}, fmt.Errorf("the list %s cannot be read: %s; give an existing text file after @", list, plain(err))
 		}
 		if info.IsDir() {
-			return nil, fmt.Errorf("the list %s is a folder; give it without the @", list)
+			return named{}, fmt.Errorf("the list %s is a folder; give it without the @", list)
 		}
-		return []string{path}, nil
+		return named{list, '@'}, nil
 	}
 	info, err := os.Stat(f.locate(path))
 	if err == nil {
 		if info.IsDir() && IsRun(f.locate(path)) {
-			return nil, fmt.Errorf("%s is a run of duskline, not a folder of spectra; give the folder the spectra are in", path)
+			return named{}, fmt.Errorf("%s is a run of duskline, not a folder of spectra; give the folder the spectra are in", path)
 		}
-		return []string{path}, nil
+		return named{path, 'p'}, nil
 	}
-	if strings.ContainsAny(path, "*?[") {
-		pattern := path
-		if !filepath.IsAbs(path) {
-			pattern = filepath.Join(escapePattern(f.base), path)
-		}
-		matches, err := filepath.Glob(pattern)
-		if err != nil {
-			return nil, fmt.Errorf("the pattern %s is not valid: a [ has no ]", path)
-		}
-		if len(matches) == 0 {
-			return nil, fmt.Errorf("no file matches %s", path)
-		}
-		slices.Sort(matches)
-		for i, m := range matches {
-			if rel, err := filepath.Rel(f.base, m); err == nil && !filepath.IsAbs(path) {
-				matches[i] = rel
-			}
-		}
-		return matches, nil
+	if !strings.ContainsAny(path, "*?[") {
+		return named{}, fmt.Errorf("%s cannot be read: %s", path, plain(err))
 	}
-	return nil, fmt.Errorf("%s cannot be read: %s", path, plain(err))
-}
-
-func escapePattern(s string) string {
-	return strings.NewReplacer(`\`, `\\`, `*`, `\*`, `?`, `\?`, `[`, `\[`).Replace(s)
+	if _, err := filepath.Match(path, ""); err != nil {
+		return named{}, fmt.Errorf("the pattern %s is not valid: a [ has no ]", path)
+	}
+	switch err := f.glob(context.Background(), path, func(string) error { return errEnough }); {
+	case errors.Is(err, errEnough):
+		return named{path, '*'}, nil
+	case err != nil:
+		return named{}, err
+	}
+	return named{}, fmt.Errorf("no file matches %s", path)
 }
 
 // takeList yields what the lines of a text file name.
@@ -164,106 +162,15 @@ func (f *finder) take(ctx context.Context, path string) error {
 	if err != nil {
 		real = f.locate(path)
 	}
-	if f.walked(real) {
-		return nil
+	if walked, err := f.walked(real); walked || err != nil {
+		return err
 	}
 	return f.yieldOnce(real, candidate{path: path})
 }
 
 // walked reports whether a walk yields or has yielded a file by itself.
-func (f *finder) walked(real string) bool {
+func (f *finder) walked(real string) (bool, error) {
 	name := filepath.Base(real)
-	return f.folders[filepath.Dir(real)] && isSpectrumName(name) && !strings.HasPrefix(name, ".")
-}
-
-// yieldWalked yields a file of a folder that is walked once. Nothing is noted
-// of it: a survey has millions.
-func (f *finder) yieldWalked(real, path string) error {
-	if f.files[pathDigest(real)] {
-		return nil
-	}
-	return f.yield(candidate{path: path})
-}
-
-func pathDigest(real string) [16]byte {
-	sum := sha256.Sum256([]byte(real))
-	return [16]byte(sum[:16])
-}
-
-func (f *finder) yieldOnce(real string, c candidate) error {
-	key := pathDigest(real)
-	if f.files[key] {
-		return nil
-	}
-	f.files[key] = true
-	return f.yield(c)
-}
-
-// walk yields the spectra of a folder that was not walked before.
-func (f *finder) walk(ctx context.Context, folder string) error {
-	if err := ctx.Err(); err != nil {
-		return err
-	}
-	real, err := filepath.EvalSymlinks(f.locate(folder))
-	if err != nil {
-		return f.yieldOnce(f.locate(folder), candidate{folder, "folder cannot be entered: " + plain(err)})
-	}
-	if f.folders[real] || real == f.out || IsRun(real) {
-		return nil
-	}
-	f.folders[real] = true
-	entries, err := os.ReadDir(real)
-	if err != nil {
-		return f.yieldOnce(real, candidate{folder, "folder cannot be listed: " + plain(err)})
-	}
-	for _, entry := range entries {
-		name := entry.Name()
-		if strings.HasPrefix(name, ".") {
-			continue
-		}
-		path := filepath.Join(folder, name)
-		switch {
-		case entry.IsDir():
-			err = f.walk(ctx, path)
-		case entry.Type()&fs.ModeSymlink != 0:
-			err = f.follow(ctx, path)
-		case isSpectrumName(name):
-			err = f.yieldWalked(filepath.Join(real, name), path)
-		}
-		if err != nil {
-			return err
-		}
-	}
-	return nil
-}
-
-// follow yields what a link inside a folder leads to.
-func (f *finder) follow(ctx context.Context, path string) error {
-	if info, err := os.Stat(f.locate(path)); err == nil && info.IsDir() {
-		return f.walk(ctx, path)
-	}
-	if isSpectrumName(path) {
-		return f.take(ctx, path)
-	}
-	return nil
-}
-
-// isSpectrumName reports whether a file of a folder is taken for FITS.
-func isSpectrumName(name string) bool {
-	name = strings.TrimSuffix(strings.TrimSuffix(strings.ToLower(name), ".gz"), ".fz")
-	switch filepath.Ext(name) {
-	case ".fits", ".fit", ".fts":
-		return true
-	}
-	return false
-}
-
-// plain returns the cause of a file error without the operation and path that
-// the message around it names already.
-func plain(err error) string {
-	var pathErr *fs.PathError
-	if errors.As(err, &pathErr) {
-		return pathErr.Err.Error()
-	}
-	return err.Error()
+	_, walked, err := f.folders.Get(spill.KeyOf(filepath.Dir(real)))
+	return walked && isSpectrumName(name) && !strings.HasPrefix(name, "."), err
 }

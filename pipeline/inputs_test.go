@@ -88,6 +88,8 @@ n/pipe.fits`
 		{[]string{"odd[1].fits"}, "odd[1].fits"},
 		{[]string{"n/[ab].*", "n/twin.fits"}, "n/a.FITS.GZ\nn/b.fits"},
 		{[]string{"n/twin.fits", "n/b.fits"}, "n/twin.fits"},
+		{[]string{"n/*/z.fit", "*/b.fits", "./n/d/[xyz].f*"}, "n/d/z.fit\nn/b.fits\nn/d/y.fts"},
+		{[]string{filepath.Join(base, "?", "b.fit*")}, filepath.Join(base, "n", "b.fits")},
 	} {
 		got, err := found(base, filepath.Join(base, "OUT"), c.paths...)
 		if err != nil || got != c.want {

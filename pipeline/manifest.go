@@ -165,8 +165,16 @@ func (in *planInput) taken() iter.Seq[int64] {
 	}
 }
 
+// unusedYet has an element false for every entry.
+func (m *Manifest) unusedYet() []bool {
+	if m == nil {
+		return nil
+	}
+	return make([]bool, len(m.table.Entries))
+}
+
 // unused tells which entries of the manifest named no input.
-func (m *Manifest) unused(used map[int]bool) (number int, first string) {
+func (m *Manifest) unused(used []bool) (number int, first string) {
 	for i := range m.table.Entries {
 		if e := &m.table.Entries[i]; !used[i] {
 			if number++; number == 1 {
@@ -178,7 +186,7 @@ func (m *Manifest) unused(used map[int]bool) (number int, first string) {
 }
 
 // warnManifest says what of the manifest has no effect.
-func (r *Run) warnManifest(used map[int]bool) {
+func (r *Run) warnManifest(used []bool) {
 	m := r.job.Manifest
 	if m == nil {
 		return

@@ -132,6 +132,7 @@ type planReader struct {
 	buf  *bufio.Reader
 	head planHead
 	line int
+	at   int64 // byte at which the next line begins
 }
 
 func openPlan(path string) (*planReader, error) {
@@ -159,6 +160,7 @@ func openPlan(path string) (*planReader, error) {
 func (r *planReader) decode(dst any) error {
 	r.line++
 	text, err := r.buf.ReadBytes('\n')
+	r.at += int64(len(text))
 	if err == nil {
 		err = json.Unmarshal(text, dst)
 	}

@@ -74,6 +74,8 @@ func (r *Run) Work(ctx context.Context) error {
 	})
 	err = g.Wait()
 	r.allWhole = err == nil && r.job.Shard.Whole()
+	r.earlier.close()
+	r.earlier = nil
 	return err
 }
 

@@ -362,7 +362,7 @@ func (r *Run) makePlan(ctx context.Context, head planHead) error {
 			os.Remove(r.out) // succeeds only if nothing came of it
 		}
 	}()
-	used := map[int]bool{} // entries of the manifest
+	used := r.job.Manifest.unusedYet()
 	totals, err := writePlan(tmp, head, func(take func(planInput) (bool, error)) error {
 		var seen planEnd
 		return r.job.listInputs(ctx, (*Job).examineOpen, func(in planInput) (bool, error) {

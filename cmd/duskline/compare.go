@@ -185,10 +185,14 @@ func readSides(a *app, cmp *catalog.Comparison, old, now string) ([]string, erro
 			if err != nil {
 				return nil, err
 			}
-			cmp.Add(i, e)
+			if err := cmp.Add(i, e); err != nil {
+				return nil, err
+			}
 		}
 	}
-	cmp.Finish()
+	if err := cmp.Finish(); err != nil {
+		return nil, err
+	}
 	return catalog.Causes(sides[0].objectRows.Facts(), sides[1].objectRows.Facts()), nil
 }
 

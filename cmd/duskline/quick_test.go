@@ -95,19 +95,26 @@ func writeShort(folder string, files, n int) error {
 	if err := os.MkdirAll(folder, 0o777); err != nil {
 		return err
 	}
-	wave := make([]float64, shortPixels)
-	for i := range wave {
-		wave[i] = 4000 * math.Pow(10, 1e-3*float64(i))
-	}
+	wave := shortWave()
 	for k := range files {
-		if err := writeShortFile(filepath.Join(folder, fmt.Sprintf("lr-%04d.fits", k)), wave, k*n, n); err != nil {
+		if err := writeShortFile(filepath.Join(folder, fmt.Sprintf("lr-%04d.fits", k)), wave, k*n, n, true); err != nil {
 			return err
 		}
 	}
 	return nil
 }
 
-func writeShortFile(path string, wave []float64, first, n int) error {
+func shortWave() []float64 {
+	wave := make([]float64, shortPixels)
+	for i := range wave {
+		wave[i] = 4000 * math.Pow(10, 1e-3*float64(i))
+	}
+	return wave
+}
+
+// writeShortFile writes n short spectra, with a table of targets or, if they are
+// not named, without.
+func writeShortFile(path string, wave []float64, first, n int, named bool) error {
 	f, err := os.Create(path)
 	if err != nil {
 		return err
@@ -141,6 +148,9 @@ func writeShortFile(path string, wave []float64, first, n int) error {
 	}
 	if err := fitsout.WriteImage(w, nil, "IVAR", []int{len(wave), n}, ivar); err != nil {
 		return err
+	}
+	if !named {
+		return w.Close()
 	}
 	t, err := w.Table(nil, "TARGETS", []fitsout.Column{
 		{Name: "TARGET_ID", Kind: fitsout.Text, Repeat: 16, UCD: "meta.id;meta.main"},
