@@ -32,6 +32,7 @@ type app struct {
 	getenv         func(string) string
 	folder         string // working folder
 	program        string // path of the program itself
+	clock          clock
 	// science makes what measures one spectrum.
 	science func(pipeline.Settings, []pipeline.RecipeText) (pipeline.Processor, error)
 }
@@ -76,7 +77,7 @@ type early int
 // run is the whole program: it takes everything from outside as arguments and
 // returns the exit code.
 func run(ctx context.Context, args []string, _ io.Reader, stdout, stderr io.Writer, getenv func(string) string) int {
-	return runApp(&app{ctx: ctx, stdout: stdout, stderr: stderr, getenv: getenv, science: theChain}, args)
+	return runApp(&app{ctx: ctx, stdout: stdout, stderr: stderr, getenv: getenv, clock: systemClock(), science: theChain}, args)
 }
 
 // runApp is run with a science to choose.

@@ -133,13 +133,13 @@ func (c *slurmCmd) run(a *app) (int, error) {
 func (s *session) measure(r *pipeline.Run, n int) (cluster.Sample, error) {
 	var out cluster.Sample
 	out.Before = residentMost()
-	began := time.Now()
+	began := s.clock.elapsed()
 	var err error
-	out.Objects, err = r.Sample(s.ctx, n, func() { began = time.Now() })
+	out.Objects, err = r.Sample(s.ctx, n, func() { began = s.clock.elapsed() })
 	if out.Objects == 0 { // a single object
 		out.Objects = 1
 	}
-	out.Seconds = time.Since(began).Seconds()
+	out.Seconds = (s.clock.elapsed() - began).Seconds()
 	out.After = residentMost()
 	return out, err
 }

@@ -310,4 +310,33 @@ func TestClockThatJumps(t *testing.T) {
 		}
 		s.sameAsWhole(out, fmt.Sprint(year))
 	}
+	// The clock is set while commands run, one of which is killed.
+	s.env = append(s.env, "QUICK_CLOCK=jumps", "QUICK_PAUSE=1ms")
+	c := s.command(s.runArgs("JUMPS")...)
+	if err := c.Start(); err != nil {
+		t.Fatal(err)
+	}
+	blocks := filepath.Join(s.base, "JUMPS", "blocks", "000002")
+	for range 6000 {
+		if _, err := os.Stat(blocks); err == nil {
+			break
+		}
+		time.Sleep(time.Millisecond)
+	}
+	c.Process.Kill()
+	c.Wait()
+	began := time.Now()
+	if code, text := s.run(s.runArgs("JUMPS")...); code != exitDone {
+		t.Fatal(text)
+	}
+	took := time.Since(began).Seconds()
+	s.sameAsWhole("JUMPS", "a clock that is set")
+	m := readMetrics(t, filepath.Join(s.base, "JUMPS", "metrics.json"))
+	if most := float64(m.DoneHere) * 2000; m.State != "done" || m.Done != 900 || m.DoneHere == 0 || m.DoneHere == 900 || // by two workers, 1 ms a spectrum
+		!(m.PerSecond > float64(m.DoneHere)/took-1) || m.PerSecond > most || m.Seconds > took || m.Seconds <= 0 {
+		t.Errorf("it took %.1f s, and the metrics are %+v", took, m)
+	}
+	if gap := m.Updated.Sub(m.Started).Abs(); gap < 24*time.Hour {
+		t.Errorf("the clock did not jump: %v", gap)
+	}
 }

@@ -24,6 +24,7 @@ type metrics struct {
 	Error       string    `json:"error,omitempty"`
 	Started     time.Time `json:"started"`
 	Updated     time.Time `json:"updated"`
+	Seconds     float64   `json:"seconds"`      // that the command has run, whatever the clock was set to
 	Spectra     int64     `json:"spectra"`      // of the run or the shard
 	Done        int64     `json:"done"`         // of them, by whomever
 	DoneHere    int64     `json:"done_here"`    // by this command
@@ -35,29 +36,30 @@ type metrics struct {
 	Process     int       `json:"process"`
 
 	path string
-	next time.Time
+	next time.Duration
 }
 
 // startMetrics begins to write beside the log of a run.
 func (p *progress) startMetrics(logFile, run, shard string) {
 	name := strings.Replace(filepath.Base(logFile), "run", "metrics", 1)
 	name = strings.TrimSuffix(name, ".log") + ".json"
-	p.metrics = &metrics{Format: "duskline metrics", Version: 1, Run: run, Shard: shard, State: "measuring", Started: time.Now().UTC(),
+	p.metrics = &metrics{Format: "duskline metrics", Version: 1, Run: run, Shard: shard, State: "measuring", Started: p.clock.wall().UTC(),
 		Process: os.Getpid(), path: filepath.Join(filepath.Dir(logFile), name)}
 }
 
 // tellMetrics writes the file when it is time, or now.
 func (p *progress) tellMetrics(now bool) {
 	m := p.metrics
-	if m == nil || !now && time.Now().Before(m.next) {
+	if m == nil || !now && p.clock.elapsed() < m.next {
 		return
 	}
-	m.next = time.Now().Add(metricsEvery)
-	m.Updated = time.Now().UTC()
+	m.next = p.clock.elapsed() + metricsEvery
+	m.Updated = p.clock.wall().UTC()
+	m.Seconds = round1(p.clock.elapsed().Seconds())
 	m.Spectra, m.Done, m.DoneHere, m.Secure, m.Unreadable = p.total, p.there+p.done, p.done, p.secure, p.bad
 	m.PerSecond, m.SecondsLeft = 0, 0
 	if p.done > 0 {
-		m.PerSecond = round1(float64(p.done) / time.Since(p.start).Seconds())
+		m.PerSecond = round1(p.rate())
 		m.SecondsLeft = round1(float64(m.Spectra-m.Done) / max(m.PerSecond, 0.1))
 	}
 	m.MemoryMB = residentMost() >> 20

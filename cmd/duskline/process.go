@@ -18,15 +18,15 @@ type session struct {
 	file     *runLog
 	log      *slog.Logger
 	progress *progress
-	began    time.Time
+	began    time.Duration
 }
 
 // begin makes log and progress for a job and puts them into it.
 func (a *app) begin(job *pipeline.Job, flags logFlags) *session {
 	bar := isTerminal(a.stderr) && !flags.Quiet && flags.LogFormat == "text"
-	s := &session{app: a, flags: flags, file: &runLog{}, began: time.Now()}
+	s := &session{app: a, flags: flags, file: &runLog{}, began: a.clock.elapsed()}
 	s.log = flags.newLogger(a.stderr, bar, s.file)
-	s.progress = newProgress(a.stderr, bar, s.log)
+	s.progress = newProgress(a.stderr, bar, s.log, a.clock)
 	job.Log, job.Progress = s.log, s.progress
 	return s
 }
@@ -133,11 +133,11 @@ func (s *session) report(out string, summary *pipeline.Summary) {
 	}
 	writeTally(s.stdout, summary)
 	writeWhere(s.stdout, out, summary)
-	writeLastWord(s.stdout, out, summary, time.Since(s.began))
+	writeLastWord(s.stdout, out, summary, s.clock.elapsed()-s.began)
 }
 
 func (s *session) seconds() float64 {
-	return time.Since(s.began).Round(time.Millisecond).Seconds()
+	return (s.clock.elapsed() - s.began).Round(time.Millisecond).Seconds()
 }
 
 // writeLastWord is the line to be read at breakfast.

@@ -25,8 +25,9 @@ type progress struct {
 	bar    *progressbar.ProgressBar // of the current phase, nil without a terminal
 	term   io.Writer                // nil without a terminal
 	log    *slog.Logger
-	next   time.Time // of the next log line
-	start  time.Time // of work
+	clock  clock
+	next   time.Duration // of the next log line
+	start  time.Duration // of work
 	total  int64
 	there  int64 // finished before work began, or elsewhere
 	done   int64 // in this process
@@ -36,8 +37,8 @@ type progress struct {
 	metrics *metrics // nil before the run folder is known
 }
 
-func newProgress(w io.Writer, showBar bool, log *slog.Logger) *progress {
-	p := &progress{log: log, next: time.Now().Add(firstReport)}
+func newProgress(w io.Writer, showBar bool, log *slog.Logger, clock clock) *progress {
+	p := &progress{log: log, clock: clock, next: clock.elapsed() + firstReport}
 	if showBar {
 		p.term = w
 	}
@@ -72,11 +73,11 @@ func (p *progress) close() {
 
 // due reports whether it is time for a line in the log.
 func (p *progress) due() bool {
-	now := time.Now()
-	if now.Before(p.next) {
+	now := p.clock.elapsed()
+	if now < p.next {
 		return false
 	}
-	p.next = now.Add(reportEvery)
+	p.next = now + reportEvery
 	return true
 }
 
@@ -93,7 +94,7 @@ func (p *progress) Planning(inputs, spectra int64) {
 }
 
 func (p *progress) Working(total, there int64) {
-	p.total, p.there, p.start = total, there, time.Now()
+	p.total, p.there, p.start = total, there, p.clock.elapsed()
 	p.log.Info("working", "spectra", total, "already_done", there)
 	p.tellMetrics(true)
 	if total > there {
@@ -114,11 +115,16 @@ func (p *progress) Object(o *catalog.Object) {
 	}
 	p.tellMetrics(false)
 	if p.due() {
-		rate := float64(p.done) / time.Since(p.start).Seconds()
+		rate := p.rate()
 		left := time.Duration(float64(p.total-p.there-p.done) / rate * float64(time.Second))
 		p.log.Info("measuring", "done", p.there+p.done, "of", p.total, "per_second", float64(int(rate*10))/10,
 			"left", left.Round(time.Second).String(), "secure", p.secure, "unreadable", p.bad)
 	}
+}
+
+// rate returns how many spectra were done a second.
+func (p *progress) rate() float64 {
+	return float64(p.done) / max(p.clock.elapsed()-p.start, time.Millisecond).Seconds()
 }
 
 func (p *progress) Elsewhere(n int64) {

@@ -13,6 +13,7 @@ import (
 	"os/signal"
 	"path/filepath"
 	"strconv"
+	"sync/atomic"
 	"syscall"
 	"testing"
 	"time"
@@ -32,7 +33,7 @@ const quickName = "duskline-quick"
 func quickMain() {
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	context.AfterFunc(ctx, stop)
-	a := &app{ctx: ctx, stdout: os.Stdout, stderr: os.Stderr, getenv: os.Getenv,
+	a := &app{ctx: ctx, stdout: os.Stdout, stderr: os.Stderr, getenv: os.Getenv, clock: quickClock(),
 		science: func(pipeline.Settings, []pipeline.RecipeText) (pipeline.Processor, error) {
 			pause, err := time.ParseDuration(os.Getenv("QUICK_PAUSE"))
 			if err != nil {
@@ -41,6 +42,17 @@ func quickMain() {
 			return quick{pause, os.Getenv("QUICK_LINES")}, nil
 		}}
 	os.Exit(runApp(a, os.Args[1:]))
+}
+
+// quickClock is the system's, or with QUICK_CLOCK=jumps one that somebody sets
+// half a century forth and back whenever it is looked at.
+func quickClock() clock {
+	c := systemClock()
+	if os.Getenv("QUICK_CLOCK") == "jumps" {
+		var looks atomic.Int64
+		c.wall = func() time.Time { return time.Now().AddDate(int(50*(1-2*(looks.Add(1)%2))), 0, 0).Round(0) }
+	}
+	return c
 }
 
 // quick answers with a hash of the flux. QUICK_PAUSE makes it sleep as long for
