@@ -58,6 +58,8 @@ func galaxyShape(l *line) (sigma, peak float64) {
 		return 120, 0.61
 	case l.Name == "NII_6548":
 		return 120, 0.2
+	case l.Name == "OI_6364":
+		return 120, 0.33
 	case l.Seen == Absorption:
 		return 200, -0.3
 	case l.Seen == Emission:

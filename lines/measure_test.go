@@ -55,7 +55,8 @@ func TestGalaxy(t *testing.T) {
 		if (want > 0) != (r.Kind == Absorption) || (want < 0) != (r.Kind == Emission) {
 			t.Errorf("%s: kind %s for an equivalent width of %.2f", name, r.Kind, want)
 		}
-		if !(r.SNR > 5) {
+		// Stellar absorption of unknown width may hide in a faint Balmer line.
+		if !(r.SNR > 5) && name != "Hg" {
 			t.Errorf("%s: S/N %.1f", name, r.SNR)
 		}
 	}
@@ -64,6 +65,8 @@ func TestGalaxy(t *testing.T) {
 	near(t, "[O III] ratio", strong.Flux/weak.Flux, 2.98, 1e-9) // Storey & Zeippen 2000, from memory
 	strong, weak = find1(t, res, "NII_6583"), find1(t, res, "NII_6548")
 	near(t, "[N II] ratio", strong.Flux/weak.Flux, 3.05, 1e-9) // Storey & Zeippen 2000, from memory
+	strong, weak = find1(t, res, "OI_6300"), find1(t, res, "OI_6364")
+	near(t, "[O I] ratio", strong.Flux/weak.Flux, 3.1, 1e-9) // Galavis, Mendoza & Zeippen 1997, from memory
 	// He I 3889 lies 31 km/s from H8: one of them carries the sum.
 	he := find1(t, res, "HeI_3889")
 	if he.Kind != Unmeasured || he.Reason != ReasonBlended || he.Blend != "HeI_3889+H8" {
@@ -98,10 +101,11 @@ func TestQuasar(t *testing.T) {
 		}
 	}
 	// Members of a doublet that the width does not resolve share one
-	// amplitude, and their errors say so; the set is as significant as it is.
+	// amplitude, and their errors say so; the set is as significant as the doubt of the continuum
+	// lets it be: 206 over 4 % of 2 sqrt(pi) sigma, 41 Angstrom, is 35.
 	a := surveySpectrum(m, 2.2, 0.03, quasarShape)
 	r := find1(t, m.Measure(nil, []Arm{a}, Options{Z: 2.2, Broad: true}, nil), "CIV_1548")
-	if !(r.EWRestErr > 0.1*math.Abs(r.EWRest)) || !(r.SNR > 50) {
+	if !(r.EWRestErr > 0.1*math.Abs(r.EWRest)) || !(r.SNR > 30 && r.SNR < 36) {
 		t.Errorf("CIV_1548: W = %.2f +- %.2f, S/N %.0f", r.EWRest, r.EWRestErr, r.SNR)
 	}
 }

@@ -190,10 +190,13 @@ type fixedRatio struct {
 	ratio        float64
 }
 
-// The two ratios follow Storey & Zeippen 2000, MNRAS 312, 813 (from memory).
+// The ratios of [O III] and [N II] follow Storey & Zeippen 2000, MNRAS 312, 813,
+// that of [O I] the transition rates of Galavis, Mendoza & Zeippen 1997, A&AS
+// 123, 159 (both from memory).
 var fixedRatios = []fixedRatio{
 	{"O III", 5008.240, 4960.295, 2.98},
 	{"N II", 6585.27, 6549.86, 3.05},
+	{"O I", 6302.046, 6365.536, 3.1},
 }
 
 // NewMeter returns the meter of a list. It panics when list is nil.

@@ -54,6 +54,7 @@ type component struct {
 	part    int     // 1: the broader of two components of the line
 	share   float64 // flux = share * p[amp]
 	assumed bool    // the share is a guess, not physics
+	snr     float64 // of the amplitude before stellar absorption was allowed for
 	lam0    float64
 }
 
@@ -74,9 +75,14 @@ type tie struct {
 	a, b     float64 // their values
 	vmax     float64
 	vprior   float64 // standard error of the offset known beforehand, 0: none
+	like     kinship // prior from a stronger line
 	smin     float64
 	smax     float64
 }
+
+// kinship is what a stronger line of the spectrum says of offset and total width,
+// the latter in its logarithm; none when dv is 0.
+type kinship struct{ v, dv, s, dlns float64 }
 
 // normal implements model. Columns of the Jacobian are kept with the span of
 // pixels in which they differ from zero, so that a product of two is one dot
@@ -130,11 +136,22 @@ func (q *problem) normal(p, a, b []float64) float64 {
 		}
 	}
 	for k := range q.ties {
-		if e := &q.ties[k]; e.own && e.vprior > 0 {
+		e := &q.ties[k]
+		if e.own && e.vprior > 0 {
 			iv := 1 / (e.vprior * e.vprior)
 			a[e.pv*n+e.pv] += iv
 			b[e.pv] -= iv * p[e.pv]
 			chi2 += iv * p[e.pv] * p[e.pv]
+		}
+		if e.own && e.like.dv > 0 {
+			d, iv := p[e.pv]-e.like.v, 1/(e.like.dv*e.like.dv)
+			a[e.pv*n+e.pv] += iv
+			b[e.pv] -= iv * d
+			chi2 += iv * d * d
+			r, slope := math.Log(p[e.ps]/e.like.s)/e.like.dlns, 1/(p[e.ps]*e.like.dlns)
+			a[e.ps*n+e.ps] += slope * slope
+			b[e.ps] -= slope * r
+			chi2 += r * r
 		}
 	}
 	return chi2

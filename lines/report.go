@@ -1,6 +1,10 @@
 package lines
 
-import "math"
+import (
+	"math"
+
+	"duskline/spectrum"
+)
 
 // report writes the results of the blend that was just fitted.
 func (s *Scratch) report(ok bool) {
@@ -27,6 +31,8 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 	if e.stark {
 		doubt = math.Hypot(doubt, starkDoubt*math.Abs(flux))
 	}
+	hidden := s.continuumDoubt(ci)
+	doubt = math.Hypot(doubt, math.Abs(c.share)*hidden)
 	fluxErr := math.Hypot(math.Abs(c.share)*sd, doubt)
 	if !ok || !(sd > 0) || !finite(flux, fluxErr) {
 		r.Reason = ReasonNoFit
@@ -34,8 +40,8 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 	}
 	mu, sigma, _ := q.place(ci, q.windows[0].arm, m.p)
 	r.OnSky = onSky(s.opt.Sky, mu-1.5*sigma, mu+1.5*sigma)
-	r.Flux, r.FluxErr, r.SNR = flux, fluxErr, math.Abs(m.p[c.amp])/sd
-	seen := r.SNR >= seenFrom
+	r.Flux, r.FluxErr, r.SNR = flux, fluxErr, math.Abs(m.p[c.amp])/math.Hypot(sd, hidden)
+	seen := math.Max(r.SNR, c.snr) >= seenFrom
 
 	z1 := 1 + s.opt.Z
 	cont, known := s.continuumAt(ci, scale)
@@ -84,6 +90,31 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 		r.UpperLimit = math.Abs(r.EWRest) + 3*r.EWRestErr
 	}
 	s.reportKinematics(r, e, seen, scale)
+}
+
+// broadDoubt is the relative standard error of the continuum under the broad
+// lines of quasars, where iron and the wings of the lines hide it: ours and that
+// of a survey differ by 6 % under 114 of them, 4 % for each. A fit of a Gaussian on a
+// continuum that is wrong by d has its flux wrong by 2 sqrt(pi) sigma d.
+const broadDoubt = 0.04
+
+// continuumDoubt returns the error of the amplitude of a component that comes
+// from broadDoubt, 0 for other lines.
+func (s *Scratch) continuumDoubt(ci int) float64 {
+	q := &s.prob
+	c := &q.comps[ci]
+	given := s.continuumGiven(ci)
+	if !q.ties[c.tie].broad || !(given > 0) {
+		return 0
+	}
+	total := 0.0
+	for i := range q.comps {
+		if q.comps[i].amp == c.amp {
+			total += q.comps[i].share
+		}
+	}
+	sigma := c.lam0 * q.ties[c.tie].s / spectrum.SpeedOfLight
+	return broadDoubt * given * 2 * math.Sqrt(math.Pi) * sigma / total
 }
 
 // starkLeave is how far the straight line of a window may carry the continuum

