@@ -15,6 +15,9 @@ func (f *File) readBytes(h *hdu, from, n int64) ([]byte, error) {
 	if err := h.need(from, n); err != nil {
 		return nil, err
 	}
+	if h.packed != nil {
+		return f.packedBytes(h, from, n)
+	}
 	buf := make([]byte, n)
 	k, err := f.src.ReadAt(buf, h.offset+from)
 	switch {

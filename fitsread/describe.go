@@ -109,6 +109,9 @@ func (h *hdu) info(used map[place]bool) HDUInfo {
 	switch h.kind {
 	case kindTable, kindASCII:
 		info.Shape = fmt.Sprintf("%d columns, %d rows", len(h.columns), h.axes[1])
+		if h.packed != nil {
+			info.Shape += ", compressed in tiles"
+		}
 	default:
 		sizes := make([]string, len(h.axes))
 		for i, a := range h.axes {

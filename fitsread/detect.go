@@ -113,7 +113,7 @@ func (f *File) nothingFound() error {
 
 func compressedFault(h *hdu) *ReadError {
 	if h.kind == kindPacked {
-		return fault(ErrCompressed, h.index, unpackHint, "the table %q is compressed in tiles", h.name)
+		return fault(ErrCompressed, h.index, unpackHint, "the table %q is compressed in tiles by a method, or holds arrays on the heap, that are not read here", h.name)
 	}
 	return fault(ErrCompressed, h.index, unpackHint, "the image %q is compressed by the method %s, which is not read here",
 		h.name, h.header.text("ZCMPTYPE"))

@@ -33,13 +33,7 @@ func (t *tiles) decode(out []float64, raw []byte) error {
 		return fmt.Errorf("%d bytes for %d pixels", len(raw), n)
 	}
 	if t.method == "GZIP_2" { // the most significant bytes of all pixels come first
-		plain := make([]byte, len(raw))
-		for b := range size {
-			for i := range n {
-				plain[i*size+b] = raw[b*n+i]
-			}
-		}
-		raw = plain
+		raw = unshuffle(raw, size)
 	}
 	c := column{scale: 1, code: map[int64]byte{1: 'B', 2: 'I', 4: 'J', 8: 'K'}[size]}
 	if t.isFloat && !t.quantized && size == t.pixelSize {

@@ -20,16 +20,30 @@ import (
 // digest and its neighbors have not; and no byte is read for the digest alone.
 
 // recording is a source that digests what is read from it, in order, each piece
-// with its length. It is for one goroutine.
+// with its length, and keeps the first failure of the disk. It is for one goroutine.
 type recording struct {
 	io.ReaderAt
-	sum hash.Hash
+	sum    hash.Hash
+	failed error
 }
 
 func (r *recording) ReadAt(b []byte, off int64) (int, error) {
 	n, err := r.ReaderAt.ReadAt(b, off)
 	writePiece(r.sum, b[:n])
+	if err != nil && err != io.EOF && r.failed == nil {
+		r.failed = err
+	}
 	return n, err
+}
+
+// heard returns err, or the failure of the disk where it came to nothing or was
+// taken for a fault of the file: names and the like do without what cannot be read,
+// and that must not pass for a file without them.
+func (r *recording) heard(err error) error {
+	if r.failed == nil || errors.Is(err, r.failed) {
+		return err
+	}
+	return fault(r.failed, -1, "check the disk or the network", "it cannot be read any more: %v", r.failed)
 }
 
 func writePiece(sum hash.Hash, b []byte) {
@@ -39,13 +53,13 @@ func writePiece(sum hash.Hash, b []byte) {
 	sum.Write(b)
 }
 
-// recorded returns the same file with a digest of all that is read through it.
-func (f *File) recorded() (*File, hash.Hash) {
-	sum := sha256.New()
+// recorded returns the same file and what hears all that is read through it.
+func (f *File) recorded() (*File, *recording) {
 	src, heard := *f.src, *f
-	src.ReaderAt = &recording{src.ReaderAt, sum}
+	rec := &recording{ReaderAt: src.ReaderAt, sum: sha256.New()}
+	src.ReaderAt = rec
 	heard.src = &src
-	return &heard, sum
+	return &heard, rec
 }
 
 // checksumCards follow from the data (FITS standard 4.0, sections 4.4.2.7 and
@@ -91,11 +105,12 @@ func (f *File) finish(read hash.Hash, i int) string {
 //
 // Panics if i is not below Count.
 func (f *File) Digest(i int) (string, error) {
-	heard, sum := f.recorded()
+	heard, rec := f.recorded()
 	_, err := heard.readAs(i, Nobody())
+	err = named(rec.heard(err), f.path)
 	var disk *fs.PathError
-	if errors.Is(err, ErrChanged) || errors.As(err, &disk) {
+	if errors.Is(err, ErrChanged) || errors.As(err, &disk) || rec.failed != nil {
 		return "", err
 	}
-	return f.finish(sum, i), nil
+	return f.finish(rec.sum, i), nil
 }

@@ -171,7 +171,7 @@ func TestDigestReadsOneRow(t *testing.T) {
 // digest is another.
 func TestDigestTellsSpectraApart(t *testing.T) {
 	all := samples()
-	delete(all, "gzip") // its bytes are not those of FITS
+	delete(all, "gzipped") // its bytes are not those of FITS
 	for name, list := range layoutSamples() {
 		for i, data := range list {
 			all[fmt.Sprint(name, " ", i)] = data

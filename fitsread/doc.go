@@ -39,11 +39,12 @@
 // ends and pixels that flags of standard meaning call bad weigh zero; masks of
 // many bits do not count beside inverse variances, which mark bad pixels themselves.
 //
-// # Compressed images
+// # Compressed images and tables
 //
 // Lines of tile-compressed images (RICE_1, GZIP_1, GZIP_2, PLIO_1) are unpacked as
-// they are read, see tiles. Other methods and compressed tables are refused with
-// the command that unpacks them.
+// they are read, see tiles; compressed tables whole, when they are first read from,
+// see packed. Other methods, and compressed tables of arrays on the heap, are
+// refused with the command that unpacks them.
 //
 // # Layout files
 //

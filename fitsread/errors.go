@@ -24,6 +24,16 @@ var (
 	ErrInternal   = errors.New("reader failed unexpectedly")
 )
 
+// ours reports an error about what is in a file, not about the disk it is on.
+func ours(err error) bool {
+	for _, kind := range []error{ErrNotFITS, ErrTruncated, ErrBadHeader, ErrTooLarge, ErrCompressed, ErrNoSpectrum, ErrLayout, ErrBadData, ErrInternal} {
+		if errors.Is(err, kind) {
+			return true
+		}
+	}
+	return false
+}
+
 // ReadError says which file could not be read, where in it, why, and what to do
 // about it. HDU and Row count from 0 and are -1 where they do not apply.
 type ReadError struct {

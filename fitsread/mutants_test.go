@@ -78,7 +78,7 @@ func someSize(r *rand.Rand, m []byte) int {
 	for k := range len(m) / cardLen {
 		at := (first + k) % (len(m) / cardLen) * cardLen
 		key := string(m[at : at+8])
-		for _, size := range []string{"NAXIS", "BITPIX", "PCOUNT", "GCOUNT", "TFIELDS", "TFORM", "THEAP", "ZNAXIS", "ZTILE", "ZBITPIX", "ZVAL", "TBCOL", "CRPIX", "CDELT", "CRVAL"} {
+		for _, size := range []string{"NAXIS", "BITPIX", "PCOUNT", "GCOUNT", "TFIELDS", "TFORM", "THEAP", "ZNAXIS", "ZTILE", "ZBITPIX", "ZVAL", "ZFORM", "ZCTYP", "TBCOL", "CRPIX", "CDELT", "CRVAL"} {
 			if strings.HasPrefix(key, size) && at+30 <= len(m) {
 				return at
 			}
@@ -97,7 +97,7 @@ func TestMutants(t *testing.T) {
 			all[fmt.Sprint(name, " ", i)] = data
 		}
 	}
-	delete(all, "gzip") // its bytes are not those of FITS
+	delete(all, "gzipped") // its bytes are not those of FITS
 	names := slices.Sorted(maps.Keys(all))
 	opts := Options{MaxPixels: 1 << 22, MaxUnpacked: 1 << 30, Layouts: []Layout{example(t)}} // the limits of users
 	n := *mutants

@@ -66,12 +66,12 @@ func (f *File) load() (err error) {
 	if f.hdus, err = walk(f.src, f.src.size); err != nil {
 		return err
 	}
-	heard, sum := f.recorded()
-	if err := heard.choose(); err != nil {
+	heard, rec := f.recorded()
+	if err := rec.heard(heard.choose()); err != nil {
 		return err
 	}
 	f.plan = heard.plan
-	f.base = f.baseDigest(sum)
+	f.base = f.baseDigest(rec.sum)
 	return nil
 }
 
@@ -106,14 +106,15 @@ type Identity struct {
 func Nobody() Identity { return Identity{RA: math.NaN(), Dec: math.NaN()} }
 
 // Identity returns the name and position of spectrum i as the file has them,
-// without reading the spectrum.
+// without reading the spectrum. The error is that of a disk that gives them not.
 //
 // Panics if i is not below Count.
-func (f *File) Identity(i int) Identity {
-	g, row := f.locate(i)
-	who := Identity{ObjectID: f.identify(g, int64(i), row)}
-	who.RA, who.Dec = f.position(g, row)
-	return who
+func (f *File) Identity(i int) (Identity, error) {
+	heard, rec := f.recorded()
+	g, row := heard.locate(i)
+	who := Identity{ObjectID: heard.identify(g, int64(i), row)}
+	who.RA, who.Dec = heard.position(g, row)
+	return who, named(rec.heard(nil), f.path)
 }
 
 func (f *File) locate(i int) (*group, int64) {
@@ -127,12 +128,12 @@ func (f *File) locate(i int) (*group, int64) {
 // has goes before the name and position of the file, also where wavelengths are
 // to be corrected for the motion of the Earth.
 func (f *File) ReadAs(i int, who Identity) (*spectrum.Spectrum, error) {
-	heard, sum := f.recorded()
+	heard, rec := f.recorded()
 	s, err := heard.readAs(i, who)
-	if err != nil {
+	if err = named(rec.heard(err), f.path); err != nil {
 		return nil, err
 	}
-	s.InputDigest = f.finish(sum, i)
+	s.InputDigest = f.finish(rec.sum, i)
 	return s, nil
 }
 

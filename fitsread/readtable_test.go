@@ -41,7 +41,7 @@ func TestReadAs(t *testing.T) {
 	n := 64
 	cards := append([]string{kv("SPECSYS", "LSRK"), kv("RA", 83.6), kv("DEC", 22.0), kv("OBJECTID", "LR 7")}, logAxis...)
 	f := open(t, image(true, -32, []int{n}, noisy(n, 1), cards...), Options{})
-	if who := f.Identity(0); who != (Identity{"LR 7", 83.6, 22}) {
+	if who, err := f.Identity(0); err != nil || who != (Identity{"LR 7", 83.6, 22}) {
 		t.Errorf("%+v", who)
 	}
 	s, err := f.ReadAs(0, Identity{"Mine", 200, -35})

@@ -7,6 +7,7 @@ import (
 	"io"
 	"io/fs"
 	"os"
+	"syscall"
 	"time"
 )
 
@@ -31,15 +32,9 @@ func openSource(path string, maxUnpacked int64) (*source, error) {
 	if !info.Mode().IsRegular() {
 		return nil, fault(ErrNotRegular, -1, "give a FITS file", "%s", describeMode(info.Mode()))
 	}
-	f, err := os.Open(path)
+	f, info, err := openRegular(path)
 	if err != nil {
-		return nil, osFault(err)
-	}
-	// The path may have changed hands between Stat and Open.
-	info, err = f.Stat()
-	if err != nil || !info.Mode().IsRegular() {
-		f.Close()
-		return nil, fault(ErrNotRegular, -1, "give a FITS file", "it changed into something else while it was opened")
+		return nil, err
 	}
 	src := &source{ReaderAt: f, size: info.Size(), file: f, written: info.ModTime()}
 	var magic [2]byte
@@ -56,6 +51,21 @@ func openSource(path string, maxUnpacked int64) (*source, error) {
 		return &source{ReaderAt: bytes.NewReader(data), size: int64(len(data)), gzipped: true}, nil
 	}
 	return src, nil
+}
+
+// openRegular opens what was a regular file a moment ago. Should the path have
+// changed hands it neither waits for the other end of a pipe nor reads from a device.
+func openRegular(path string) (*os.File, fs.FileInfo, error) {
+	f, err := os.OpenFile(path, os.O_RDONLY|syscall.O_NONBLOCK, 0)
+	if err != nil {
+		return nil, nil, osFault(err)
+	}
+	info, err := f.Stat()
+	if err != nil || !info.Mode().IsRegular() {
+		f.Close()
+		return nil, nil, fault(ErrNotRegular, -1, "give a FITS file", "it changed into something else while it was opened")
+	}
+	return f, info, nil
 }
 
 // unchanged returns an error when the file was written to since it was opened.

@@ -1,6 +1,7 @@
 package fitsread
 
 import (
+	"errors"
 	"io"
 	"math"
 	"strings"
@@ -13,7 +14,7 @@ const (
 	kindTable
 	kindASCII
 	kindCompressed // image in tiles whose method is not known here
-	kindPacked     // table in tiles
+	kindPacked     // table in tiles that is not unpacked here
 	kindOther
 )
 
@@ -37,6 +38,7 @@ type hdu struct {
 	columns []column
 	broken  *ReadError // why a table must not be used, nil when it may
 	tiles   *tiles     // of a compressed image, nil for others
+	packed  *packed    // of a compressed table, nil for others
 }
 
 // pixels returns the number of pixels of an image line, 0 for no image.
@@ -107,8 +109,9 @@ func walk(src io.ReaderAt, size int64) ([]*hdu, error) {
 			if re, ok := err.(*ReadError); ok {
 				re.HDU = len(hdus)
 			}
-			// A later header that breaks off takes nothing from earlier HDUs.
-			if len(hdus) > 0 {
+			// A later header that breaks off takes nothing from earlier HDUs; one that the
+			// disk does not give might be any.
+			if len(hdus) > 0 && (errors.Is(err, ErrTruncated) || errors.Is(err, ErrBadHeader)) {
 				hdus = append(hdus, &hdu{index: len(hdus), kind: kindOther, missing: 1})
 				break
 			}
@@ -240,6 +243,8 @@ func (h *hdu) structure() *ReadError {
 		h.readColumns()
 	case kindCompressed:
 		h.readTiles()
+	case kindPacked:
+		h.readPacked()
 	}
 	h.dropThinAxes()
 	return nil
@@ -312,12 +317,18 @@ func abs(n int) int {
 
 // need returns an error unless the bytes [from, from+n) of the data are there.
 func (h *hdu) need(from, n int64) *ReadError {
+	length := h.length
+	if h.packed != nil {
+		length = h.packed.size
+	}
 	switch {
 	case h.broken != nil:
 		return h.broken
-	case from < 0 || n < 0 || from > h.length-n:
-		return fault(ErrBadHeader, h.index, hintCopy, "bytes %d to %d of the data are asked for, the header gives it %d", from, from+n, h.length)
-	case from+n > h.length-h.missing:
+	case h.packed != nil && h.missing > 0:
+		return fault(ErrTruncated, h.index, hintCopy, "the file ends %d bytes before this HDU does", h.missing)
+	case from < 0 || n < 0 || from > length-n:
+		return fault(ErrBadHeader, h.index, hintCopy, "bytes %d to %d of the data are asked for, the header gives it %d", from, from+n, length)
+	case from+n > length-h.missing:
 		return fault(ErrTruncated, h.index, hintCopy, "the file ends %d bytes before this HDU does", h.missing)
 	}
 	return nil

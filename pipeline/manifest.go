@@ -98,7 +98,7 @@ func (m *Manifest) find(path string, row int, id string) *manifest.Entry {
 // identifier is a SpectrumFile that tells names and takes others; *fitsread.File
 // is one.
 type identifier interface {
-	Identity(i int) fitsread.Identity
+	Identity(i int) (fitsread.Identity, error)
 	ReadAs(i int, who fitsread.Identity) (*spectrum.Spectrum, error)
 }
 
@@ -112,7 +112,14 @@ func (m *Manifest) sift(in *planInput, path string, f SpectrumFile) {
 	for row := range in.Rows {
 		id := ""
 		if names != nil && m.table.ByName() {
-			id = names.Identity(int(row)).ObjectID
+			who, err := names.Identity(int(row))
+			if err != nil { // the disk: it might be any
+				bad := readFault(err, in.Path)
+				in.Rows, in.Skip, in.entries, in.Trouble, in.Internal = 1, nil, nil, bad.reason, bad.internal
+				m.siftUnopened(in, path)
+				return
+			}
+			id = who.ObjectID
 		}
 		i := m.table.Find(path, int(row), id)
 		if i < 0 {
@@ -209,7 +216,10 @@ type origin struct {
 // goes into the digest of its input.
 func (r *Run) readObject(in *planInput, f SpectrumFile, row int) (s *spectrum.Spectrum, from origin, err error) {
 	from.magnitude = math.NaN()
-	e, names := r.known(in, f, row)
+	e, names, err := r.known(in, f, row)
+	if err != nil {
+		return nil, from, err
+	}
 	if e == nil {
 		s, err = f.Read(row)
 	} else {
@@ -236,17 +246,21 @@ func (r *Run) readObject(in *planInput, f SpectrumFile, row int) (s *spectrum.Sp
 
 // known returns what the manifest says about an object of a file that takes it,
 // nil for nothing.
-func (r *Run) known(in *planInput, f SpectrumFile, row int) (*manifest.Entry, identifier) {
+func (r *Run) known(in *planInput, f SpectrumFile, row int) (*manifest.Entry, identifier, error) {
 	m := r.job.Manifest
 	names, ok := f.(identifier)
 	if m == nil || !ok {
-		return nil, nil
+		return nil, nil, nil
 	}
 	id := ""
 	if m.table.ByName() {
-		id = names.Identity(row).ObjectID
+		who, err := names.Identity(row)
+		if err != nil {
+			return nil, names, err
+		}
+		id = who.ObjectID
 	}
-	return m.find(in.file(r.head.Folder), row, id), names
+	return m.find(in.file(r.head.Folder), row, id), names, nil
 }
 
 // unreadObject is the row of an object that could not be read: what the manifest

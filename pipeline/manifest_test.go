@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"context"
 	"errors"
+	"io/fs"
 	"math"
 	"os"
 	"path/filepath"
@@ -20,8 +21,8 @@ import (
 // namedFile is a file of words that tells names and takes others.
 type namedFile struct{ *wordFile }
 
-func (f namedFile) Identity(i int) fitsread.Identity {
-	return fitsread.Identity{ObjectID: f.words[i], RA: 10, Dec: 20}
+func (f namedFile) Identity(i int) (fitsread.Identity, error) {
+	return fitsread.Identity{ObjectID: f.words[i], RA: 10, Dec: 20}, nil
 }
 
 func (f namedFile) ReadAs(i int, who fitsread.Identity) (*spectrum.Spectrum, error) {
@@ -249,5 +250,38 @@ func TestManifestInFITS(t *testing.T) {
 	}
 	if e := m.find("x/b.fits", 5, ""); e == nil || !e.Exclude || m.copy != "manifest.fits" || !bytes.Equal(m.text, file.Bytes()) {
 		t.Errorf("%+v", e)
+	}
+}
+
+// mute is a file whose names cannot be read any more.
+type mute struct{ namedFile }
+
+func (mute) Identity(int) (fitsread.Identity, error) {
+	return fitsread.Identity{}, &fitsread.ReadError{File: "x", HDU: 1, Row: -1, Msg: "stale", Hint: "look at the disk", Err: fs.ErrInvalid}
+}
+
+// A disk that gives no names must not undo an exclusion: what is asked for by name
+// cannot be told from the rest, and the file is a row that says why.
+func TestManifestWithoutNames(t *testing.T) {
+	job := manifestJob(t, "object_id,exclude\nnobody,yes\n")
+	job.Open = func(path string) (SpectrumFile, error) {
+		f, err := openNamed(path)
+		if err == nil && filepath.Base(path) == "b.fits" {
+			f = mute{f.(namedFile)}
+		}
+		return f, err
+	}
+	finish(t, job)
+	n := 0
+	for _, o := range readObjects(t, job) {
+		if filepath.Base(o.SourceFile) == "b.fits" {
+			n++
+			if !o.Flags.Has(catalog.Unreadable) || !strings.Contains(o.Reason, "stale") {
+				t.Errorf("%+v", o)
+			}
+		}
+	}
+	if n != 1 {
+		t.Errorf("%d rows of b.fits", n)
 	}
 }

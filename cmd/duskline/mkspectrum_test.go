@@ -1,7 +1,9 @@
 package main
 
 import (
+	"bytes"
 	"errors"
+	"fmt"
 	"math"
 	"math/rand/v2"
 	"os"
@@ -51,4 +53,24 @@ func makeSpectrum(ts *testscript.TestScript, neg bool, args []string) {
 	}
 	path := ts.MkAbs(args[0])
 	ts.Check(errors.Join(tab.Close(), w.Close(), os.MkdirAll(filepath.Dir(path), 0o777), os.WriteFile(path, m.Bytes(), 0o666)))
+}
+
+// makeHeader writes an empty primary HDU and a second one of the given cards, each
+// as it stands in a file, with so many bytes of zeros behind.
+func makeHeader(ts *testscript.TestScript, neg bool, args []string) {
+	if neg || len(args) < 3 {
+		ts.Fatalf("usage: mkheader FILE BYTES CARD...")
+	}
+	size, err := strconv.Atoi(args[1])
+	ts.Check(err)
+	var b bytes.Buffer
+	for _, cards := range [][]string{{"SIMPLE  =                    T", "BITPIX  =                    8", "NAXIS   =                    0"}, args[2:]} {
+		for _, c := range append(cards, "END") {
+			fmt.Fprintf(&b, "%-80s", c)
+		}
+		b.WriteString(strings.Repeat(" ", (2880-b.Len()%2880)%2880))
+	}
+	b.Write(make([]byte, (size+2879)/2880*2880))
+	ts.Check(os.MkdirAll(filepath.Dir(ts.MkAbs(args[0])), 0o777))
+	ts.Check(os.WriteFile(ts.MkAbs(args[0]), b.Bytes(), 0o666))
 }

@@ -29,6 +29,7 @@ func TestMain(m *testing.M) {
 //	isplot FILE             want a PNG that is more than an empty frame
 //	spoil FILE              cut a file in half
 //	mkshort DIR FILES N     write FILES files of N short spectra each
+//	mkheader FILE N CARD... write an HDU of these cards and N bytes
 //	mkspectrum FILE [CARD]  write a spectrum with such cards as SPECSYS=TOPOCENT
 func TestScripts(t *testing.T) {
 	testscript.Run(t, testscript.Params{
@@ -36,7 +37,7 @@ func TestScripts(t *testing.T) {
 		RequireExplicitExec: true,
 		Cmds: map[string]func(ts *testscript.TestScript, neg bool, args []string){
 			"exits": exits, "mknight": makeNight, "await": await, "isplot": isPlot, "spoil": spoil,
-			"mkshort": makeShort, "touchrow": touchRow, "mkspectrum": makeSpectrum,
+			"mkshort": makeShort, "touchrow": touchRow, "mkspectrum": makeSpectrum, "mkheader": makeHeader,
 		},
 	})
 }

@@ -1,4 +1,5 @@
-"""Writes files of every layout and type with astropy into a folder, and what
+"""Writes files of every layout and type with astropy into a folder, spectra of 96
+pixels or as many as the second argument says, and what
 astropy reads back from them to standard output: a line of name, options and
 number of segments, then for every segment of the first spectra the wavelengths
 in Angstrom (as on the axis: air or vacuum), fluxes and inverse variances, each as
@@ -16,7 +17,7 @@ from astropy.wcs import WCS
 warnings.simplefilter("ignore")
 folder = sys.argv[1]
 rng = np.random.default_rng(20310314)
-N = 96
+N = int(sys.argv[2]) if len(sys.argv) > 2 else 96
 out = sys.stdout.buffer
 names = []
 

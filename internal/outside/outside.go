@@ -32,6 +32,16 @@ func Program(t testing.TB, name string) string {
 	return path
 }
 
+// CProgram compiles a source in C against a library and returns the program.
+func CProgram(t testing.TB, source, library string) string {
+	t.Helper()
+	out := filepath.Join(t.TempDir(), "program")
+	if text, err := exec.Command(Program(t, "gcc"), "-O2", "-o", out, source, "-l"+library).CombinedOutput(); err != nil {
+		Missing(t, "%s cannot be compiled against lib%s; .ci/run lists the packages: %v %s", source, library, err, text)
+	}
+	return out
+}
+
 // python is the interpreter of the system, for which the gate installs packages.
 const python = "/usr/bin/python3"
 
