@@ -43,10 +43,24 @@ type Entry struct {
 	Lines []Line
 }
 
+// Answer is what one catalog says of an object, as far as changes are told by it.
+type Answer struct {
+	Class, Verdict, Family            string
+	Redshift, RedshiftErr, Confidence float64
+}
+
+// Answer returns what a row says.
+func (o *Object) Answer() Answer {
+	return Answer{o.Class, o.Verdict, o.Family, o.Redshift, o.RedshiftErr, o.Confidence}
+}
+
 // Change is one object that differs between two catalogs.
 type Change struct {
-	Old, New Object
-	Weight   Weight
+	ObjectID   string
+	SourceFile string // of the later catalog
+	SourceRow  int64
+	Old, New   Answer
+	Weight     Weight
 	// Sigmas is the change of redshift over the errors of both in quadrature;
 	// +Inf where there is one redshift only, 0 where there is none.
 	Sigmas       float64
@@ -181,7 +195,7 @@ func (c *Comparison) pair(old, now *Entry) {
 	c.Matched++
 	c.Verdicts[[2]string{old.Verdict, now.Verdict}]++
 	c.Classes[[2]string{old.Class, now.Class}]++
-	d := Change{Old: old.Object, New: now.Object, Gained: now.Flags &^ old.Flags, Lost: old.Flags &^ now.Flags,
+	d := Change{ObjectID: now.ObjectID, SourceFile: now.SourceFile, SourceRow: now.SourceRow, Old: old.Answer(), New: now.Answer(), Gained: now.Flags &^ old.Flags, Lost: old.Flags &^ now.Flags,
 		SameInput: old.InputDigest == now.InputDigest, Kms: math.NaN()}
 	if !d.SameInput {
 		c.NewInputs++
@@ -316,7 +330,7 @@ func (c *Comparison) weigh(d *Change) Weight {
 func (c *Comparison) trim(keep int) {
 	slices.SortFunc(c.Changes, func(a, b Change) int {
 		return cmp.Or(cmp.Compare(b.Weight, a.Weight), cmp.Compare(b.Sigmas, a.Sigmas), cmp.Compare(b.LineSigmas, a.LineSigmas),
-			cmp.Compare(a.New.ObjectID, b.New.ObjectID))
+			cmp.Compare(a.ObjectID, b.ObjectID))
 	})
 	if len(c.Changes) > keep {
 		clear(c.Changes[keep:])

@@ -107,7 +107,7 @@ func TestOrderDoesNotMatter(t *testing.T) {
 		t.Error("the changes do not come by weight")
 	}
 	few := compare(20)
-	if len(few.Changes) != 20 || few.Changed() != want.Changed() || few.Changes[19].New.ObjectID != want.Changes[19].New.ObjectID {
+	if len(few.Changes) != 20 || few.Changed() != want.Changed() || few.Changes[19].ObjectID != want.Changes[19].ObjectID {
 		t.Error("a shorter table is not the head of the longer one")
 	}
 	r := rand.New(rand.NewPCG(1, 2))
@@ -122,7 +122,7 @@ func TestOrderDoesNotMatter(t *testing.T) {
 			t.Errorf("on one side only: %d and %d, %v", got.OnlyOld, got.OnlyNew, got.Lone(OldSide, 3))
 		}
 		for i := range got.Changes {
-			if got.Changes[i].New.ObjectID != want.Changes[i].New.ObjectID {
+			if got.Changes[i].ObjectID != want.Changes[i].ObjectID {
 				t.Fatalf("another order ranks differently at %d", i)
 			}
 		}
@@ -182,7 +182,7 @@ func TestCauses(t *testing.T) {
 	if len(Causes(old, old)) != 0 {
 		t.Error("equal origins have causes")
 	}
-	d := Change{SameInput: true, Old: Object{Family: "late"}, New: Object{Family: "odd"}}
+	d := Change{SameInput: true, Old: Answer{Family: "late"}, New: Answer{Family: "odd"}}
 	if got := d.Cause(want); got != "family odd (new)" {
 		t.Errorf("cause is %q", got)
 	}

@@ -221,9 +221,15 @@ func writeVO(w *fitsout.Writer, e *exposure) error {
 
 // writeMany writes all exposures into one file: for every arm an image with an
 // object a row, its inverse variance and the wavelengths; then the targets.
-func writeMany(w *fitsout.Writer, all []*exposure) error {
+func writeMany(w *fitsout.Writer, all []*exposure) error { return writeManyOf(w, all, 0) }
+
+// writeManyOf also states the resolving power, if it is not 0.
+func writeManyOf(w *fitsout.Writer, all []*exposure, power float64) error {
 	primary := &fitsout.Header{}
 	night(primary, all[0].begin)
+	if power > 0 {
+		primary.Float("SPEC_RP", power, "resolving power")
+	}
 	if err := w.Empty(primary); err != nil {
 		return err
 	}

@@ -8,15 +8,21 @@ import (
 	"os/exec"
 	"path/filepath"
 	"slices"
+	"strconv"
 	"strings"
 	"testing"
 	"time"
+
+	"duskline/pipeline"
+	"duskline/synth"
 )
 
 // The full sizes: go test ./cmd/duskline -run TestArchive -archive 1000000 -archive-files 1000000 -timeout 3h -v
 var (
 	archiveObjects = flag.Int("archive", 30_000, "objects of the archive of large files")
 	archiveFiles   = flag.Int("archive-files", 6_000, "objects of the archive of one file each")
+	archiveScience = flag.String("archive-science", "quick", "what measures the archive of large files: quick, or real, the program itself on spectra of 600 pixels")
+	archiveFolder  = flag.String("archive-folder", "", "where the real archive and its run are kept; the same command goes on with them")
 )
 
 // memoryMost is what a command may take, whatever the size of the archive.
@@ -28,6 +34,7 @@ type archiveSite struct {
 	*testing.T
 	folder, bin string
 	env         []string
+	program     string
 }
 
 func newArchiveSite(t *testing.T) *archiveSite {
@@ -35,19 +42,27 @@ func newArchiveSite(t *testing.T) *archiveSite {
 	if testing.Short() {
 		t.Skip("measures the memory of a program that the race detector does not watch")
 	}
-	return &archiveSite{t, t.TempDir(), commandFolder(t), os.Environ()}
+	return &archiveSite{t, t.TempDir(), commandFolder(t), os.Environ(), quickName}
 }
 
 func (s *archiveSite) step(what string, args ...string) (output string) {
 	s.Helper()
-	c := exec.Command(filepath.Join(s.bin, quickName), args...)
-	c.Dir, c.Env = s.folder, s.env
+	c := exec.Command(filepath.Join(s.bin, s.program), args...)
+	peak := filepath.Join(s.bin, "peak")
+	c.Dir, c.Env = s.folder, append(s.env, peakFile+"="+peak)
 	began := time.Now()
 	code, out := finished(s.T, c)
 	if code != exitDone {
 		s.Fatalf("%s: exit code %d: %s", what, code, out)
 	}
-	memory := peakMemory(c)
+	text, err := os.ReadFile(peak)
+	if err != nil {
+		s.Fatal(err)
+	}
+	memory, err := strconv.ParseInt(string(text), 10, 64)
+	if err != nil || memory == 0 {
+		s.Fatalf("the peak of memory is %q", text)
+	}
 	s.Logf("%-44s %8.2f s  %4d MB", what, time.Since(began).Seconds(), memory>>20)
 	if memory > memoryMost {
 		s.Errorf("%s took %d MB", what, memory>>20)
@@ -61,6 +76,10 @@ func (s *archiveSite) step(what string, args ...string) (output string) {
 // and catalogs are those of the program.
 func TestArchive(t *testing.T) {
 	s := newArchiveSite(t)
+	if *archiveScience == "real" {
+		s.real(*archiveObjects)
+		return
+	}
 	const perFile = 10_000
 	if err := writeShort(filepath.Join(s.folder, "archive"), *archiveObjects/perFile, perFile); err != nil {
 		t.Fatal(err)
@@ -76,6 +95,35 @@ func TestArchive(t *testing.T) {
 	if n := lineCount(t, filepath.Join(s.folder, "RUN", "catalog.csv")); n != *archiveObjects+1 {
 		t.Errorf("the catalog has %d lines for %d objects", n, *archiveObjects)
 	}
+}
+
+// real takes spectra of 600 pixels, 2,000 a file, through the program itself, on
+// the grid that they have. A command that was killed is gone on with.
+func (s *archiveSite) real(objects int) {
+	if *archiveFolder != "" {
+		if err := os.MkdirAll(*archiveFolder, 0o777); err != nil {
+			s.Fatal(err)
+		}
+		s.folder = *archiveFolder
+	}
+	s.program = "duskline"
+	const perFile = 2000
+	began := time.Now()
+	if err := synth.ShortArchive(filepath.Join(s.folder, "archive"), objects/perFile, perFile, nil); err != nil {
+		s.Fatal(err)
+	}
+	s.Logf("%d spectra are there after %.0f s", objects, time.Since(began).Seconds())
+	s.step("plan", "run", "--out", "RUN", "--plan-only", "-q", "--set", fmt.Sprintf("grid.step=%g", synth.ShortStep), "archive")
+	s.step("run and gather", "run", "--out", "RUN", "-q")
+	s.step("the same run again, nothing to do", "run", "--out", "RUN", "-q")
+	if n := lineCount(s.T, filepath.Join(s.folder, "RUN", "catalog.csv")); n != objects+1 {
+		s.Errorf("the catalog has %d lines for %d objects", n, objects)
+	}
+	summary, err := pipeline.ReadSummary(filepath.Join(s.folder, "RUN", "summary.json"))
+	if err != nil || !summary.Complete || summary.Unreadable > 0 || summary.InternalErrors > 0 {
+		s.Errorf("%v, %+v", err, summary)
+	}
+	s.Logf("%v", summary.Classes)
 }
 
 // TestArchiveOfFiles does the same with a file for each object, half of them in

@@ -11,7 +11,6 @@ import (
 	"os/exec"
 	"path/filepath"
 	"strings"
-	"syscall"
 	"time"
 
 	"duskline/cluster"
@@ -144,13 +143,20 @@ func (s *session) measure(r *pipeline.Run, n int) (cluster.Sample, error) {
 	return out, err
 }
 
-// residentMost returns the largest resident memory so far, bytes.
+// residentMost returns the largest resident memory so far, bytes: the "high water
+// mark" of proc_pid_status(5), since getrusage(2) also counts what the parent had
+// when it started this program. 0 where there is no such file.
 func residentMost() int64 {
-	var u syscall.Rusage
-	if syscall.Getrusage(syscall.RUSAGE_SELF, &u) != nil {
+	text, err := os.ReadFile("/proc/self/status")
+	if err != nil {
 		return 0
 	}
-	return int64(u.Maxrss) * 1024 // Linux counts kilobytes
+	_, rest, _ := strings.Cut(string(text), "\nVmHWM:")
+	var kilobytes int64
+	if _, err := fmt.Sscan(rest, &kilobytes); err != nil {
+		return 0
+	}
+	return kilobytes * 1024
 }
 
 func writeScripts(array *cluster.Array) ([2]string, error) {

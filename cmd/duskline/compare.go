@@ -239,11 +239,11 @@ func writeChanges(w io.Writer, cmp *catalog.Comparison, causes []string) {
 	line(slices.Clone(changeColumns)...)
 	for i := range cmp.Changes {
 		d := &cmp.Changes[i]
-		line(strconv.Itoa(i+1), d.New.ObjectID, d.Weight.String(), d.What(cmp.Limit), d.Cause(causes),
+		line(strconv.Itoa(i+1), d.ObjectID, d.Weight.String(), d.What(cmp.Limit), d.Cause(causes),
 			tableNumber(d.Old.Redshift, 7), tableNumber(d.New.Redshift, 7), tableNumber(d.Sigmas, 2), tableNumber(d.Kms, 1),
 			d.Old.Class, d.New.Class, d.Old.Verdict, d.New.Verdict, d.Old.Family, d.New.Family,
 			tableNumber(d.Old.Confidence, 5), tableNumber(d.New.Confidence, 5), d.Gained.String(), d.Lost.String(),
-			strconv.Itoa(d.LinesMoved), d.Line, tableNumber(d.LineSigmas, 2), d.New.SourceFile, strconv.FormatInt(d.New.SourceRow, 10))
+			strconv.Itoa(d.LinesMoved), d.Line, tableNumber(d.LineSigmas, 2), d.SourceFile, strconv.FormatInt(d.SourceRow, 10))
 	}
 }
 

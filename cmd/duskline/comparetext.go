@@ -54,7 +54,7 @@ func writeComparison(w io.Writer, c *catalog.Comparison, causes []string) {
 	}
 	for i := range min(len(c.Changes), 10) {
 		d := &c.Changes[i]
-		fmt.Fprintf(w, "  %-24s %s %s at %s, now %s %s at %s (%s)\n", d.New.ObjectID, d.Old.Verdict, d.Old.Class, tableNumber(d.Old.Redshift, 5),
+		fmt.Fprintf(w, "  %-24s %s %s at %s, now %s %s at %s (%s)\n", d.ObjectID, d.Old.Verdict, d.Old.Class, tableNumber(d.Old.Redshift, 5),
 			d.New.Verdict, d.New.Class, tableNumber(d.New.Redshift, 5), d.Cause(causes))
 	}
 }

@@ -19,8 +19,11 @@ import (
 	"syscall"
 )
 
-func main() {
+func main() { os.Exit(start()) }
+
+// start is the program with what is outside of it.
+func start() int {
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	context.AfterFunc(ctx, stop) // a second signal ends the process at once
-	os.Exit(run(ctx, os.Args[1:], os.Stdin, os.Stdout, os.Stderr, os.Getenv))
+	return run(ctx, os.Args[1:], os.Stdin, os.Stdout, os.Stderr, os.Getenv)
 }

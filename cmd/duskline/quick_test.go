@@ -9,7 +9,6 @@ import (
 	"hash/fnv"
 	"math"
 	"os"
-	"os/exec"
 	"os/signal"
 	"path/filepath"
 	"strconv"
@@ -30,7 +29,7 @@ import (
 // everything around it: the same commands, files, plans, blocks and catalogs.
 const quickName = "duskline-quick"
 
-func quickMain() {
+func quickStart() int {
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	context.AfterFunc(ctx, stop)
 	a := &app{ctx: ctx, stdout: os.Stdout, stderr: os.Stderr, getenv: os.Getenv, clock: quickClock(),
@@ -41,7 +40,7 @@ func quickMain() {
 			}
 			return quick{pause, os.Getenv("QUICK_LINES")}, nil
 		}}
-	os.Exit(runApp(a, os.Args[1:]))
+	return runApp(a, os.Args[1:])
 }
 
 // quickClock is the system's, or with QUICK_CLOCK=jumps one that somebody sets
@@ -234,9 +233,23 @@ func commandFolder(t testing.TB) string {
 	return folder
 }
 
-// peakMemory reads the largest resident memory of a finished process, bytes.
-func peakMemory(c *exec.Cmd) int64 {
-	return c.ProcessState.SysUsage().(*syscall.Rusage).Maxrss * 1024
+// peakFile names the environment variable with the path of a file for the peak of
+// a program's memory.
+const peakFile = "DUSKLINE_TEST_PEAK"
+
+// tellingPeak makes a main function that leaves its largest resident memory in a
+// file if it is asked to. What the system counts for a child also has what the
+// test itself takes.
+func tellingPeak(start func() int) func() {
+	return func() {
+		code := start()
+		if path := os.Getenv(peakFile); path != "" {
+			if err := os.WriteFile(path, []byte(strconv.FormatInt(residentMost(), 10)), 0o666); err != nil {
+				panic(err)
+			}
+		}
+		os.Exit(code)
+	}
 }
 
 // lineCount counts the lines of a file.

@@ -17,7 +17,7 @@ import (
 )
 
 func TestMain(m *testing.M) {
-	testscript.Main(m, map[string]func(){"duskline": main, quickName: quickMain})
+	testscript.Main(m, map[string]func(){"duskline": tellingPeak(start), quickName: tellingPeak(quickStart)})
 }
 
 // TestScripts runs the commands as people do. Beside the usual words a script
