@@ -32,10 +32,6 @@ type forest struct {
 	sorted   []float64
 }
 
-func (f *forest) wave(i int) float64 {
-	return math.Exp((f.x0 + float64(i)*f.step) / spectrum.SpeedOfLight)
-}
-
 // fill bins the track from below the redshifted Lyman limit, or where it begins, to
 // redBound in the frame of the background. It reports whether there is enough.
 func (f *forest) fill(t *track, z float64) bool {
@@ -94,7 +90,7 @@ func (f *forest) fill(t *track, z float64) bool {
 	}
 	f.sorted = counts[:0]
 	f.first = 0
-	for f.first < n && f.wave(f.first) < 915*(1+z) {
+	for f.first < n && f.waves[f.first] < 915*(1+z) {
 		f.first++
 	}
 	f.sres = sres / max(cover, 1)
@@ -184,13 +180,13 @@ func (f *forest) prepare(z float64) {
 	for i := range n {
 		// Below the limit of the background the level is that of light which
 		// no Lyman-limit system has dimmed: they are looked for.
-		w := f.wave(max(i, min(f.first, n-1)))
+		w := f.waves[max(i, min(f.first, n-1))]
 		if i%4 == 0 || w/(1+z) > 1200 || i == n-1 {
 			f.mean[i] = hydrogen.Transmission(z, w)
 		} else {
 			f.mean[i] = f.mean[i-1]
 		}
-		rest := f.wave(i) / (1 + z)
+		rest := f.waves[i] / (1 + z)
 		u := (rest - 1100) / 150
 		f.basis[0][i], f.basis[1][i], f.basis[2][i] = f.mean[i], f.mean[i]*u, f.mean[i]*u*u
 		for b, k := range bumps {

@@ -267,7 +267,7 @@ func (s *Scratch) dim(f *Finder, c cloud, l, lo, hi int) {
 	center := line.Wave * math.Exp(c.x/spectrum.SpeedOfLight)
 	s.through = resize(s.through, hi-lo)
 	for i := lo; i < hi; i++ {
-		s.through[i-lo] = math.Exp(-line.OpticalDepth(column, b, line.Wave*fo.wave(i)/center))
+		s.through[i-lo] = math.Exp(-line.OpticalDepth(column, b, line.Wave*fo.waves[i]/center))
 	}
 	s.blur = blur(s.through, s.blur, fo.sres/fo.step)
 }

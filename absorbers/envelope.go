@@ -4,28 +4,39 @@ import "math"
 
 const (
 	// envelopeHalf is the half width of the window in which the continuum of
-	// the doublet search is a straight line, km/s: wider than any doublet
-	// of an intervening system, narrower than emission lines of quasars.
+	// the doublet search is a parabola, km/s: wider than any doublet of an
+	// intervening system, no wider than the emission lines of quasars.
 	envelopeHalf = 2200.0
 	// A pixel leaves the continuum when it lies below by clipLow or above by
 	// clipHigh of its error; a few rounds settle it.
 	clipLow, clipHigh = 2.0, 3.5
 	clipRounds        = 8
-	// Fewest pixels, and fewest of the window's, that hold a straight line.
+	// So does one whose neighborhood of clipKms on either side lies below as a
+	// whole by clipBox of its error, contFloor included: shallow lines of many
+	// pixels would otherwise bend the parabola into themselves.
+	clipKms, clipBox = 150.0, 2.5
+	// Fewest pixels, and fewest of the window's, that hold the continuum.
 	envelopeLeast = 8
 	envelopeShare = 0.15
+	// The bend is used where the kept pixels hold it: they reach to both sides
+	// of the pixel, and what the line leaves of the square of x has at least
+	// this variance (0.09 for pixels spread evenly over the window).
+	bendSpread = 0.02
+	// envelopePiece is the length, in half windows, of the pieces in which
+	// running sums begin anew, so that fourth powers keep their digits.
+	envelopePiece = 16.0
 )
 
 // envelope is a continuum above narrow absorption.
 type envelope struct {
 	level, err []float64 // NaN where there is none
 	keep       []bool
-	sum        [5][]float64 // running sums of w, wx, wxx, wy, wxy
+	sum        [8][]float64 // running sums of w, wx, wx^2, wx^3, wx^4, wy, wxy, wx^2y
 }
 
 // fit follows emission lines and runs over absorption lines: in a window around
-// every pixel a weighted straight line, with pixels that lie low or high left
-// out of all windows. err is the standard error of the line at the pixel.
+// every pixel a weighted parabola, with pixels that lie low or high left out of
+// all windows. err is the standard error of the parabola at the pixel.
 func (e *envelope) fit(t *track) {
 	n := len(t.x)
 	e.level, e.err = resize(e.level, n), resize(e.err, n)
@@ -40,37 +51,45 @@ func (e *envelope) fit(t *track) {
 		e.sum[k] = resize(e.sum[k], n+1)
 	}
 	for round := range clipRounds {
-		e.lines(t)
+		for first := 0; first < n; {
+			end := index(t.x, t.x[first]+envelopePiece*envelopeHalf)
+			e.piece(t, first, end)
+			first = end
+		}
 		if round == clipRounds-1 || !e.clip(t) {
 			return
 		}
 	}
 }
 
-// lines fits all windows by running sums.
-func (e *envelope) lines(t *track) {
-	n := len(t.x)
-	if n == 0 {
-		return
-	}
-	x0 := t.x[0]
+// piece fits the windows of the pixels from first to end by running sums.
+func (e *envelope) piece(t *track, first, end int) {
 	s := &e.sum
-	for i := range n {
+	x0 := 0.5 * (t.x[first] + t.x[end-1])
+	begin, stop := index(t.x, t.x[first]-envelopeHalf), index(t.x, t.x[end-1]+1.001*envelopeHalf)
+	for k := range s {
+		s[k][begin] = 0
+	}
+	for i := begin; i < stop; i++ {
 		w := 0.0
 		if e.keep[i] {
 			w = t.weight[i]
 		}
 		x, y := (t.x[i]-x0)/envelopeHalf, t.flux[i]
+		wx := w * x
+		wxx := wx * x
 		s[0][i+1] = s[0][i] + w
-		s[1][i+1] = s[1][i] + w*x
-		s[2][i+1] = s[2][i] + w*x*x
-		s[3][i+1] = s[3][i] + w*y
-		s[4][i+1] = s[4][i] + w*x*y
+		s[1][i+1] = s[1][i] + wx
+		s[2][i+1] = s[2][i] + wxx
+		s[3][i+1] = s[3][i] + wxx*x
+		s[4][i+1] = s[4][i] + wxx*x*x
+		s[5][i+1] = s[5][i] + w*y
+		s[6][i+1] = s[6][i] + wx*y
+		s[7][i+1] = s[7][i] + wxx*y
 	}
-	lo, hi := 0, 0
-	kept := 0
-	for i := range n {
-		for hi < n && t.x[hi] <= t.x[i]+envelopeHalf {
+	lo, hi, kept := begin, begin, 0
+	for i := first; i < end; i++ {
+		for hi < stop && t.x[hi] <= t.x[i]+envelopeHalf {
 			if e.keep[hi] {
 				kept++
 			}
@@ -86,18 +105,41 @@ func (e *envelope) lines(t *track) {
 		if kept < envelopeLeast || float64(kept) < envelopeShare*float64(hi-lo) {
 			continue
 		}
-		x := (t.x[i] - x0) / envelopeHalf
-		w, wx, wxx := s[0][hi]-s[0][lo], s[1][hi]-s[1][lo], s[2][hi]-s[2][lo]
-		wy, wxy := s[3][hi]-s[3][lo], s[4][hi]-s[4][lo]
-		mean := wx / w
-		spread := wxx/w - mean*mean
-		level, variance := wy/w, 1/w
-		if d := x - mean; spread > 0.02 && math.Abs(d) < 1 {
-			level += d * (wxy/w - mean*wy/w) / spread
-			variance *= 1 + d*d/spread
-		}
-		e.level[i], e.err[i] = level, math.Sqrt(variance)
+		e.level[i], e.err[i] = e.at((t.x[i]-x0)/envelopeHalf, lo, hi)
 	}
+}
+
+// at returns the value at x and its error of the parabola through the kept
+// pixels from lo to hi, by polynomials that are orthogonal over them. Where they
+// do not hold its bend it is a line, where not that, the mean.
+func (e *envelope) at(x float64, lo, hi int) (level, err float64) {
+	s := &e.sum
+	w := s[0][hi] - s[0][lo]
+	mean := (s[1][hi] - s[1][lo]) / w
+	// Moments about the mean, by the binomial theorem.
+	m2, m3, m4 := (s[2][hi]-s[2][lo])/w, (s[3][hi]-s[3][lo])/w, (s[4][hi]-s[4][lo])/w
+	c2 := m2 - mean*mean
+	c3 := m3 - 3*mean*m2 + 2*mean*mean*mean
+	c4 := m4 - 4*mean*m3 + 6*mean*mean*m2 - 3*mean*mean*mean*mean
+	y0, y1, y2 := (s[5][hi]-s[5][lo])/w, (s[6][hi]-s[6][lo])/w, (s[7][hi]-s[7][lo])/w
+	level, variance := y0, 1.0
+	d := x - mean
+	if c2 <= 0.02 || math.Abs(d) >= 1 {
+		return level, math.Sqrt(variance / w)
+	}
+	slope := (y1 - mean*y0) / c2
+	level += slope * d
+	variance += d * d / c2
+	// The bend: q = d^2 - (c3/c2) d - c2.
+	norm := c4 - c3*c3/c2 - c2*c2
+	if norm > bendSpread && math.Abs(d) < 0.5 {
+		q := d*d - c3/c2*d - c2
+		square := y2 - 2*mean*y1 + mean*mean*y0 // mean of (x - mean)^2 y
+		bend := (square - c3*slope - c2*y0) / norm
+		level += bend * q
+		variance += q * q / norm
+	}
+	return level, math.Sqrt(variance / w)
 }
 
 // clip judges every pixel against the present continuum and reports whether
@@ -106,12 +148,33 @@ func (e *envelope) clip(t *track) bool {
 	changed := false
 	n := len(t.x)
 	pull := func(i int) float64 { return (t.flux[i] - e.level[i]) * math.Sqrt(t.weight[i]) }
+	// Running sums of weight and of weighted residual, in room that lines uses.
+	ws, rs := e.sum[0], e.sum[1]
+	ws[0], rs[0] = 0, 0
 	for i := range n {
+		w, r := t.weight[i], t.flux[i]-e.level[i]
+		if w == 0 || math.IsNaN(r) {
+			w, r = 0, 0
+		}
+		ws[i+1], rs[i+1] = ws[i]+w, rs[i]+w*r
+	}
+	lo, hi := 0, 0
+	for i := range n {
+		for hi < n && t.x[hi] <= t.x[i]+clipKms {
+			hi++
+		}
+		for t.x[lo] < t.x[i]-clipKms {
+			lo++
+		}
 		if t.weight[i] == 0 || math.IsNaN(e.level[i]) {
 			continue
 		}
 		p := pull(i)
 		keep := p > -clipLow && p < clipHigh
+		if keep {
+			w, floor := ws[hi]-ws[lo], contFloor*e.level[i]
+			keep = (rs[hi]-rs[lo])/w > -clipBox*math.Sqrt(1/w+floor*floor)
+		}
 		if keep && p < 0 {
 			for _, j := range [2]int{i - 1, i + 1} {
 				if j >= 0 && j < n && t.weight[j] > 0 && pull(j) < -2*clipLow {

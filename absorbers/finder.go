@@ -113,8 +113,10 @@ type Scratch struct {
 	order []int
 	red   envelope
 	metal metals
+	looks []float64
 
 	forest  forest
+	limit   limits
 	damp    damped
 	joint   joint
 	refused []bool    // bins where no further system is looked for
@@ -149,8 +151,12 @@ func (f *Finder) Find(dst []System, arms []Arm, opt Options, scratch *Scratch) [
 		dst = s.reportHydrogen(dst, f, opt)
 		dst = s.findLimit(dst, f, opt)
 	}
+	// Doublets are looked for redward of Lyman alpha of the background.
+	first := index(s.track.x, spectrum.SpeedOfLight*math.Log(f.series[0].Wave*(1+opt.Z))+behindKms)
+	s.distrustErrors(first)
 	s.red.fit(&s.track)
-	return s.findDoublets(dst, f, opt)
+	s.metal.memory = s.noiseMemory(first)
+	return s.findDoublets(dst, f, opt, first)
 }
 
 func blank(kind string) System {
