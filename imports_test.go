@@ -24,10 +24,11 @@ var edges = map[string][]string{
 	"spectrum":         {},
 	"hydrogen":         {},
 	"configs":          {},
-	"cluster":          {},
+	"cluster":          {"internal/shards"},
 	"manifest":         {},
 	"internal/fitsout": {},
 	"internal/outside": {},
+	"internal/shards":  {},
 	"internal/spill":   {},
 	"linelist":         {"hydrogen"},
 	"fitsread":         {"spectrum"},
@@ -38,8 +39,8 @@ var edges = map[string][]string{
 	"catalog":          {"internal/fitsout", "internal/spill"},
 	"synth":            {"spectrum", "hydrogen", "linelist", "catalog", "internal/fitsout"},
 	"pipeline": {"spectrum", "hydrogen", "linelist", "configs", "fitsread", "continuum", "redshift", "lines", "absorbers",
-		"catalog", "synth", "internal/fitsout", "internal/spill", "manifest"},
-	"cmd/duskline": {"pipeline", "cluster", "catalog", "synth", "configs", "fitsread", "spectrum"},
+		"catalog", "synth", "internal/fitsout", "internal/shards", "internal/spill", "manifest"},
+	"cmd/duskline": {"pipeline", "cluster", "internal/shards", "catalog", "synth", "configs", "fitsread", "spectrum"},
 }
 
 // testEdges is what the tests of any package may import on top: makers of

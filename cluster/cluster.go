@@ -7,9 +7,9 @@ import (
 	"errors"
 	"fmt"
 	"math"
-	"slices"
-	"strconv"
 	"strings"
+
+	"duskline/internal/shards"
 )
 
 // Sample is what a short run on this machine has shown.
@@ -56,8 +56,9 @@ func Size(s Sample, blocks int, missing []int, blockSize, workers, elements int,
 	longest := 0
 	of := make([]int, n.Elements)
 	for _, b := range missing {
-		of[b%n.Elements]++
-		longest = max(longest, of[b%n.Elements])
+		i := shards.Of(b, n.Elements)
+		of[i]++
+		longest = max(longest, of[i])
 	}
 	n.Minutes = max(int(math.Ceil(timeReserve*float64(longest)*block/60)), minutesLeast)
 	grown := max(s.After-s.Before, 0)
@@ -88,7 +89,7 @@ var ErrLine = errors.New("line break in a name or an option")
 // A script that is run again, or twice at the same time, changes nothing.
 func (a *Array) ElementScript() (string, error) {
 	lines := append(a.head("array", "array-%A_%a.log", a.Minutes, a.MemoryMB, a.Workers),
-		"#SBATCH --array="+Ranges(a.Shards), "#SBATCH --requeue")
+		"#SBATCH --array="+shards.Ranges(a.Shards, ","), "#SBATCH --requeue")
 	command := fmt.Sprintf(`exec %s run --out %s --shard "$SLURM_ARRAY_TASK_ID/%d" --workers %d --quiet --log-format json`,
 		Quote(a.Program), Quote(a.Run), a.Elements, a.Workers)
 	if a.Like != "" {
@@ -146,41 +147,4 @@ func (a *Array) script(head []string, command string) (string, error) {
 // Quote writes a text as one word of a POSIX shell.
 func Quote(s string) string {
 	return "'" + strings.ReplaceAll(s, "'", `'\''`) + "'"
-}
-
-// ShardsOf returns the shards, of n, that have any of the blocks, in order.
-func ShardsOf(blocks []int, n int) []int {
-	has := make([]bool, n)
-	for _, b := range blocks {
-		has[b%n] = true
-	}
-	var out []int
-	for i, yes := range has {
-		if yes {
-			out = append(out, i)
-		}
-	}
-	return out
-}
-
-// Ranges writes numbers in order as Slurm does, such as "0-3,7".
-func Ranges(numbers []int) string {
-	numbers = slices.Clone(numbers)
-	slices.Sort(numbers)
-	var b strings.Builder
-	for i := 0; i < len(numbers); {
-		k := i
-		for k+1 < len(numbers) && numbers[k+1] == numbers[k]+1 {
-			k++
-		}
-		if i > 0 {
-			b.WriteByte(',')
-		}
-		b.WriteString(strconv.Itoa(numbers[i]))
-		if k > i {
-			fmt.Fprintf(&b, "-%d", numbers[k])
-		}
-		i = k + 1
-	}
-	return b.String()
 }

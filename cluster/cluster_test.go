@@ -63,12 +63,3 @@ func TestScriptsAreShell(t *testing.T) {
 		t.Errorf("a line break in a name gives %v", err)
 	}
 }
-
-func TestShardsOf(t *testing.T) {
-	if got := ShardsOf([]int{0, 3, 8, 9, 17}, 8); !slices.Equal(got, []int{0, 1, 3}) {
-		t.Errorf("got %v", got)
-	}
-	if got := Ranges([]int{7, 0, 1, 2}); got != "0-2,7" {
-		t.Errorf("got %s", got)
-	}
-}

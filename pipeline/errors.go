@@ -4,6 +4,8 @@ import (
 	"errors"
 	"fmt"
 	"strings"
+
+	"duskline/internal/shards"
 )
 
 // InputError says that the inputs or the run folder cannot be used as asked:
@@ -43,13 +45,19 @@ type MissingError struct {
 	Of     int   // blocks of the run
 }
 
-// Error names the blocks and the ways out.
+// blocksTold bounds how many blocks a message names.
+const blocksTold = 20
+
+// Error names the first blocks and the ways out.
 func (e *MissingError) Error() string {
-	what := "block"
+	what, list := "block", shards.Ranges(e.Blocks[:min(len(e.Blocks), blocksTold)], ", ")
 	if len(e.Blocks) > 1 {
 		what = "blocks"
 	}
+	if more := len(e.Blocks) - blocksTold; more > 0 {
+		list += fmt.Sprintf(" and %d more", more)
+	}
 	return fmt.Sprintf("%d of the %d blocks of %s are missing: %s %s. "+
 		"Do them with duskline run --out %s, or write catalogs without them with duskline gather --accept-missing %s.",
-		len(e.Blocks), e.Of, e.Out, what, ranges(e.Blocks), e.Out, e.Out)
+		len(e.Blocks), e.Of, e.Out, what, list, e.Out, e.Out)
 }

@@ -12,6 +12,7 @@ import (
 	"strings"
 
 	"duskline/catalog"
+	"duskline/internal/shards"
 )
 
 // Gather joins the blocks, in order, into the catalogs and counts them. The
@@ -129,7 +130,7 @@ func (g *gathering) missingText() string {
 	if g.summary.Complete {
 		return ""
 	}
-	return fmt.Sprintf("%d of %d objects, blocks %s", g.summary.MissingObjects, g.summary.Planned, ranges(g.summary.MissingBlocks))
+	return fmt.Sprintf("%d of %d objects, blocks %s", g.summary.MissingObjects, g.summary.Planned, shards.Ranges(g.summary.MissingBlocks, ", "))
 }
 
 // survey is the first pass: it counts, finds repeated IDs and the widths of
@@ -182,16 +183,9 @@ func (g *gathering) inPlace() *Summary {
 // eachObjects yields the objects of every block with unique IDs.
 func (g *gathering) eachObjects(ctx context.Context) func(yield func([]catalog.Object) error) error {
 	return func(yield func([]catalog.Object) error) error {
-		ids, err := g.names.cursor()
-		if err != nil {
-			return err
-		}
-		for _, number := range g.blocks {
-			if err := ctx.Err(); err != nil {
-				return err
-			}
+		return g.eachBlock(ctx, func(number int, ids *nameCursor) error {
 			var batch []catalog.Object
-			if err := readTable(filepath.Join(g.blockFolder(number), objectsName), func(o *catalog.Object) error {
+			if err := readTable(filepath.Join(g.blockFolder(number), objectsName), func(o *catalog.Object) (err error) {
 				batch = append(batch, *o)
 				o = &batch[len(batch)-1]
 				o.ObjectID, err = ids.unique(o.ObjectID)
@@ -199,12 +193,27 @@ func (g *gathering) eachObjects(ctx context.Context) func(yield func([]catalog.O
 			}); err != nil {
 				return err
 			}
-			if err := yield(batch); err != nil {
-				return err
-			}
-		}
-		return nil
+			return yield(batch)
+		})
 	}
+}
+
+// eachBlock visits the blocks in order, with what makes the IDs of their objects
+// unique.
+func (g *gathering) eachBlock(ctx context.Context, visit func(number int, ids *nameCursor) error) error {
+	ids, err := g.names.cursor()
+	if err != nil {
+		return err
+	}
+	for _, number := range g.blocks {
+		if err := ctx.Err(); err != nil {
+			return err
+		}
+		if err := visit(number, ids); err != nil {
+			return err
+		}
+	}
+	return nil
 }
 
 // rowsABatch bounds the memory of rows on their way to the writers.
@@ -215,14 +224,7 @@ const rowsABatch = 4096
 func eachOwned[T catalog.Row](ctx context.Context, g *gathering, file string, counts func(*blockNote) []int,
 	owner func(*T) *string) func(yield func([]T) error) error {
 	return func(yield func([]T) error) error {
-		ids, err := g.names.cursor()
-		if err != nil {
-			return err
-		}
-		for _, number := range g.blocks {
-			if err := ctx.Err(); err != nil {
-				return err
-			}
+		return g.eachBlock(ctx, func(number int, ids *nameCursor) error {
 			note, err := g.readNote(number)
 			if err != nil {
 				return err
@@ -252,11 +254,8 @@ func eachOwned[T catalog.Row](ctx context.Context, g *gathering, file string, co
 			}); err != nil {
 				return err
 			}
-			if err := yield(batch); err != nil {
-				return err
-			}
-		}
-		return nil
+			return yield(batch)
+		})
 	}
 }
 

@@ -8,6 +8,8 @@ import (
 	"strconv"
 	"strings"
 
+	"duskline/internal/shards"
+
 	"golang.org/x/sync/errgroup"
 )
 
@@ -30,7 +32,7 @@ func ParseShard(text string) (Shard, error) {
 // Whole reports whether the shard is the whole run.
 func (s Shard) Whole() bool { return s.Count <= 1 }
 
-func (s Shard) has(block int) bool { return s.Whole() || block%s.Count == s.Index }
+func (s Shard) has(block int) bool { return s.Whole() || shards.Of(block, s.Count) == s.Index }
 
 // String returns "I/N", empty for the whole run.
 func (s Shard) String() string {
@@ -81,26 +83,6 @@ func (r *Run) verify(ctx context.Context, shard Shard) (whole []bool, damaged []
 		}
 	}
 	return whole, damaged, nil
-}
-
-// ranges writes block numbers in order as "3, 7-9".
-func ranges(numbers []int) string {
-	var b strings.Builder
-	for i := 0; i < len(numbers); {
-		k := i
-		for k+1 < len(numbers) && numbers[k+1] == numbers[k]+1 {
-			k++
-		}
-		if i > 0 {
-			b.WriteString(", ")
-		}
-		b.WriteString(strconv.Itoa(numbers[i]))
-		if k > i {
-			fmt.Fprintf(&b, "-%d", numbers[k])
-		}
-		i = k + 1
-	}
-	return b.String()
 }
 
 // finishedBlocks looks for the blocks of the shard that are there. Damaged ones

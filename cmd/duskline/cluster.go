@@ -14,6 +14,7 @@ import (
 	"time"
 
 	"duskline/cluster"
+	"duskline/internal/shards"
 	"duskline/pipeline"
 )
 
@@ -100,7 +101,7 @@ func (c *slurmCmd) run(a *app) (int, error) {
 	if c.Like != "" {
 		array.Like = a.locate(c.Like)
 	}
-	array.Shards = cluster.ShardsOf(missing, array.Elements)
+	array.Shards = shards.With(missing, array.Elements)
 	record.Elements = array.Elements
 	scripts, err := writeScripts(&array)
 	if err != nil {
@@ -123,7 +124,7 @@ func (c *slurmCmd) run(a *app) (int, error) {
 	if err == nil {
 		record.Jobs = append(record.Jobs, second)
 		fmt.Fprintf(a.stdout, "Submitted: array %s, gathering %s. See how it goes with duskline cluster status %s\n", first, second, c.Out)
-		s.log.Info("submitted", "array", first, "gathering", second, "elements", cluster.Ranges(array.Shards), "of", array.Elements)
+		s.log.Info("submitted", "array", first, "gathering", second, "elements", shards.Ranges(array.Shards, ","), "of", array.Elements)
 	}
 	return exitDone, errors.Join(err, writeRecord(r.Folder(), record))
 }
@@ -267,7 +268,7 @@ func (c *statusCmd) run(a *app) (int, error) {
 	s.Done = s.Blocks - len(missing)
 	record := readRecord(r.Folder())
 	if s.Elements = record.Elements; s.Elements > 0 {
-		s.Wanted = append(s.Wanted, cluster.ShardsOf(missing, s.Elements)...)
+		s.Wanted = append(s.Wanted, shards.With(missing, s.Elements)...)
 	}
 	summary, err := pipeline.ReadSummary(filepath.Join(r.Folder(), "summary.json"))
 	if err != nil && !errors.Is(err, fs.ErrNotExist) {
@@ -295,7 +296,7 @@ func (c *statusCmd) print(a *app, s *runStatus) {
 	}
 	switch {
 	case len(s.Missing) > 0 && s.Elements > 0:
-		fmt.Fprintf(a.stdout, "Elements of the array with missing blocks: %s of %d.\n", cluster.Ranges(s.Wanted), s.Elements)
+		fmt.Fprintf(a.stdout, "Elements of the array with missing blocks: %s of %d.\n", shards.Ranges(s.Wanted, ","), s.Elements)
 		fmt.Fprintf(a.stdout, "When none of them runs any more: duskline cluster slurm --out %s --submit, or duskline run --out %s here.\n", c.Run, c.Run)
 	case len(s.Missing) > 0:
 		fmt.Fprintf(a.stdout, "Go on with duskline run --out %s.\n", c.Run)

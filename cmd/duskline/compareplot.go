@@ -1,11 +1,9 @@
 package main
 
 import (
-	"bytes"
 	"fmt"
 	"image/color"
 	"math"
-	"os"
 	"path/filepath"
 
 	"duskline/catalog"
@@ -14,7 +12,6 @@ import (
 	"gonum.org/v1/plot/plotter"
 	"gonum.org/v1/plot/vg"
 	"gonum.org/v1/plot/vg/draw"
-	"gonum.org/v1/plot/vg/vgimg"
 )
 
 // saveComparison draws what changed: redshifts.png, velocities.png and
@@ -27,14 +24,10 @@ func saveComparison(folder string, c *catalog.Comparison) error {
 		if err != nil {
 			return fmt.Errorf("%s cannot be drawn: %w", name, err)
 		}
-		canvas := vgimg.PngCanvas{Canvas: vgimg.NewWith(vgimg.UseWH(9*vg.Inch, 6.5*vg.Inch), vgimg.UseDPI(pictureDPI))}
-		p.Draw(draw.Crop(draw.New(canvas), 8, -14, 8, -8))
-		var png bytes.Buffer
-		if _, err := canvas.WriteTo(&png); err != nil {
-			return fmt.Errorf("%s cannot be drawn: %w", name, err)
-		}
-		if err := os.WriteFile(filepath.Join(folder, name), png.Bytes(), 0o666); err != nil {
-			return fmt.Errorf("the picture cannot be written: %w", err)
+		if err := savePNG(filepath.Join(folder, name), 9*vg.Inch, 6.5*vg.Inch, func(c draw.Canvas) {
+			p.Draw(draw.Crop(c, 8, -14, 8, -8))
+		}); err != nil {
+			return err
 		}
 	}
 	return nil

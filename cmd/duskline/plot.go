@@ -39,8 +39,13 @@ var (
 
 // savePicture draws a picture into a PNG file.
 func savePicture(path string, p *picture) error {
-	canvas := vgimg.PngCanvas{Canvas: vgimg.NewWith(vgimg.UseWH(pictureWidth, pictureHeight), vgimg.UseDPI(pictureDPI))}
-	p.draw(draw.New(canvas))
+	return savePNG(path, pictureWidth, pictureHeight, p.draw)
+}
+
+// savePNG draws onto an empty canvas and writes it to a file.
+func savePNG(path string, width, height vg.Length, paint func(draw.Canvas)) error {
+	canvas := vgimg.PngCanvas{Canvas: vgimg.NewWith(vgimg.UseWH(width, height), vgimg.UseDPI(pictureDPI))}
+	paint(draw.New(canvas))
 	var png bytes.Buffer
 	if _, err := canvas.WriteTo(&png); err != nil {
 		return fmt.Errorf("the picture cannot be drawn: %w", err)

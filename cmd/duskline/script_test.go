@@ -3,6 +3,7 @@ package main
 import (
 	"bytes"
 	"errors"
+	"image"
 	"image/png"
 	"os"
 	"os/exec"
@@ -86,9 +87,8 @@ func await(ts *testscript.TestScript, neg bool, args []string) {
 	ts.Fatalf("%s did not appear", args[0])
 }
 
-func isPlot(ts *testscript.TestScript, neg bool, args []string) {
-	img, err := png.Decode(bytes.NewReader([]byte(ts.ReadFile(args[0]))))
-	ts.Check(err)
+// inksOf counts the pixels of every color.
+func inksOf(img image.Image) map[[3]uint32]int {
 	inks := map[[3]uint32]int{}
 	b := img.Bounds()
 	for y := b.Min.Y; y < b.Max.Y; y++ {
@@ -97,10 +97,17 @@ func isPlot(ts *testscript.TestScript, neg bool, args []string) {
 			inks[[3]uint32{r >> 8, g >> 8, blue >> 8}]++
 		}
 	}
+	return inks
+}
+
+func isPlot(ts *testscript.TestScript, neg bool, args []string) {
+	img, err := png.Decode(bytes.NewReader([]byte(ts.ReadFile(args[0]))))
+	ts.Check(err)
+	inks := inksOf(img)
 	// Black of the smoothed spectrum and red of the continuum over most of the
 	// width of the plot.
 	for _, ink := range [][3]uint32{{25, 25, 25}, {214, 69, 33}} {
-		if inks[ink] < b.Dx()/4 {
+		if inks[ink] < img.Bounds().Dx()/4 {
 			ts.Fatalf("%s has %d pixels of color %v", args[0], inks[ink], ink)
 		}
 	}

@@ -1,19 +1,16 @@
 package main
 
 import (
-	"bytes"
 	"cmp"
 	"fmt"
 	"image/color"
 	"math"
-	"os"
 	"slices"
 
 	"duskline/pipeline"
 
 	"gonum.org/v1/plot/vg"
 	"gonum.org/v1/plot/vg/draw"
-	"gonum.org/v1/plot/vg/vgimg"
 )
 
 const (
@@ -104,16 +101,7 @@ func newSheet(f *pipeline.Template, z float64) *sheet {
 func saveTemplate(path string, f *pipeline.Template, z float64) error {
 	s := newSheet(f, z)
 	height := sheetMargin + sumHeight + rowHeight*vg.Length(len(s.rows))
-	canvas := vgimg.PngCanvas{Canvas: vgimg.NewWith(vgimg.UseWH(sheetWidth, height), vgimg.UseDPI(pictureDPI))}
-	s.draw(draw.New(canvas))
-	var png bytes.Buffer
-	if _, err := canvas.WriteTo(&png); err != nil {
-		return fmt.Errorf("the picture cannot be drawn: %w", err)
-	}
-	if err := os.WriteFile(path, png.Bytes(), 0o666); err != nil {
-		return fmt.Errorf("the picture cannot be written: %w", err)
-	}
-	return nil
+	return savePNG(path, sheetWidth, height, s.draw)
 }
 
 // draw lays the rows out from the top: the sum, then the components.

@@ -61,18 +61,11 @@ func TestSheets(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	inks := map[[3]uint32]int{}
-	b := img.Bounds()
-	for y := b.Min.Y; y < b.Max.Y; y++ {
-		for x := b.Min.X; x < b.Max.X; x++ {
-			r, g, blue, _ := img.At(x, y).RGBA()
-			inks[[3]uint32{r >> 8, g >> 8, blue >> 8}]++
-		}
-	}
+	inks := inksOf(img)
 	// The sum, emission and absorption; slopes and ends of a curve are of lighter
 	// ink, so that a tenth of the width is asked for.
 	for _, ink := range [][3]uint32{{25, 25, 25}, {16, 92, 166}, {120, 40, 120}} {
-		if inks[ink] < b.Dx()/10 {
+		if inks[ink] < img.Bounds().Dx()/10 {
 			t.Errorf("%d pixels of color %v", inks[ink], ink)
 		}
 	}
