@@ -90,6 +90,9 @@ func (f *File) otherClass() *ReadError {
 // model put there ("Spectrum.", "SED.Segment."). Drafts before 1.0 said Points for
 // Data (from memory).
 func modelPath(utype string) string {
+	if utype == "" {
+		return ""
+	}
 	if i := strings.LastIndexByte(utype, ':'); i >= 0 {
 		utype = utype[i+1:]
 	}
@@ -99,8 +102,15 @@ func modelPath(utype string) string {
 	if rest, ok := strings.CutPrefix(utype, "points."); ok {
 		utype = "data." + rest
 	}
-	return strings.NewReplacer("data.spectralcoord.", "data.spectralaxis.", "data.flux.", "data.fluxaxis.").Replace(utype)
+	return draftPaths.Replace(utype)
 }
+
+var (
+	draftPaths = strings.NewReplacer("data.spectralcoord.", "data.spectralaxis.", "data.flux.", "data.fluxaxis.")
+	// UCD1+ had phot.fluDens before phot.flux.density (from memory); UCDs may have a
+	// name space.
+	oldWords = strings.NewReplacer("ivoa:", "", "phot.fludens", "phot.flux.density")
+)
 
 // roleOfUCD tells the role from an IVOA utype (Spectrum data model 1.0 to 1.2) or
 // from a UCD. certain is true for utypes, which name exactly one role.
@@ -123,10 +133,10 @@ func roleOfUCD(utype, ucd string) (r role, certain bool) {
 	case "data.spectralaxis.order", "data.spectralaxis.relorder":
 		return roleOrder, true
 	}
-	// UCD1+ had phot.fluDens before phot.flux.density (from memory); UCDs may have a
-	// name space.
-	ucd = strings.NewReplacer("ivoa:", "", "phot.fludens", "phot.flux.density").Replace(ucd)
-	first, rest, _ := strings.Cut(ucd, ";")
+	if ucd == "" {
+		return roleNone, false
+	}
+	first, rest, _ := strings.Cut(oldWords.Replace(ucd), ";")
 	switch first {
 	case "em.wl", "em.freq", "em.energy", "em.wavenumber":
 		return roleWave, false
