@@ -6,24 +6,29 @@ import "math"
 // the families are made for, R = 2000: it is in them already.
 const designSigma = 64.0
 
-// Resolved returns a finder for an instrument of Gaussian width sigma in km/s: the
-// families' widths with what it has more than designSigma added in quadrature.
-// Instruments that resolve as well or better, and NaN, change nothing: the lines of
-// the objects are not narrower for it. Widths that recipes fix in km/s stay.
+// Resolved returns a finder for an instrument of Gaussian width sigma in km/s. What
+// a family's width has beyond designSigma is the object's own, and the instrument
+// adds to it in quadrature,
+//
+//	width^2 = w^2 - designSigma^2 + sigma^2,
+//
+// wider for less resolution and narrower for more, but no narrower than half a
+// pixel of the grid where w is not. Instruments within a tenth of the design, and
+// NaN, change nothing. Widths that recipes fix in km/s stay.
 func (f *Finder) Resolved(sigma float64) *Finder {
-	if !(sigma > 1.1*designSigma) {
+	if !(math.Abs(sigma/designSigma-1) > 0.1) {
 		return f
 	}
-	excess := math.Sqrt(sigma*sigma - designSigma*designSigma)
-	wide := *f
-	wide.families = make([]*Family, len(f.families))
+	fitted := *f
+	fitted.families = make([]*Family, len(f.families))
 	for i, fam := range f.families {
-		broad := *fam
-		broad.Widths = make([]float64, len(fam.Widths))
+		own := *fam
+		own.Widths = make([]float64, len(fam.Widths))
 		for k, w := range fam.Widths {
-			broad.Widths[k] = math.Hypot(w, excess)
+			least := min(w, 0.5*f.step*ln10*speedOfLight)
+			own.Widths[k] = math.Sqrt(max(w*w-designSigma*designSigma+sigma*sigma, least*least))
 		}
-		wide.families[i] = &broad
+		fitted.families[i] = &own
 	}
-	return &wide
+	return &fitted
 }
