@@ -112,6 +112,7 @@ func plotVelocities(c *catalog.Comparison) (*plot.Plot, error) {
 	area.Color = inkSigma
 	area.LineStyle = draw.LineStyle{Color: inkEmission, Width: 0.5}
 	p.Add(area)
+	p.Y.Max *= headroom
 	for _, x := range []float64{-c.Limit, c.Limit} {
 		line, err := plotter.NewLine(plotter.XYs{{X: x, Y: 0}, {X: x, Y: p.Y.Max}})
 		if err != nil {
@@ -122,6 +123,9 @@ func plotVelocities(c *catalog.Comparison) (*plot.Plot, error) {
 	}
 	return p, nil
 }
+
+// headroom keeps what is highest off the edge.
+const headroom = 1.05
 
 // linesMost bounds the lines of a picture.
 const linesMost = 40
@@ -162,5 +166,6 @@ func plotLines(c *catalog.Comparison) (*plot.Plot, error) {
 	p.X.Tick.Label.Rotation = math.Pi / 2
 	p.X.Tick.Label.XAlign, p.X.Tick.Label.YAlign = draw.XRight, draw.YCenter
 	p.Add(zeroLine{})
+	p.Y.Min, p.Y.Max = p.Y.Min*headroom, p.Y.Max*headroom // zero is between them
 	return p, nil
 }

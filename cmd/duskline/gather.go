@@ -25,11 +25,9 @@ func (c *gatherCmd) run(a *app) (int, error) {
 	if err != nil {
 		return 0, err
 	}
-	if err := s.file.open(r.LogFile()); err != nil {
+	if err := s.record(r, pipeline.Shard{}); err != nil {
 		return 0, err
 	}
-	s.log = s.log.With("run", r.ID())
-	s.progress.startMetrics(r.LogFile(), r.ID(), "")
 	s.progress.total = r.Objects()
 	join := r.Gather
 	if c.AcceptMissing {

@@ -41,14 +41,23 @@ func (s *session) prepare(job pipeline.Job) (*pipeline.Run, error) {
 	if err != nil {
 		return nil, err
 	}
-	if err := s.file.open(r.LogFile()); err != nil {
+	if err := s.record(r, job.Shard); err != nil {
 		return nil, err
 	}
-	s.log = s.log.With("run", r.ID())
-	s.progress.startMetrics(r.LogFile(), r.ID(), job.Shard.String())
 	s.log.Info("run begins", "out", job.Out, "program", job.Program, "build", job.Build, "spectra", r.Objects(),
 		"blocks", r.Blocks(), "shard", job.Shard.String())
 	return r, nil
+}
+
+// record begins to keep the log and the metrics of a run.
+func (s *session) record(r *pipeline.Run, shard pipeline.Shard) error {
+	if err := s.file.open(r.LogFile()); err != nil {
+		return err
+	}
+	s.log = s.log.With("run", r.ID())
+	s.progress.log = s.log
+	s.progress.startMetrics(r.LogFile(), r.ID(), shard.String())
+	return nil
 }
 
 func (s *session) end() {
@@ -56,9 +65,14 @@ func (s *session) end() {
 	s.file.Close()
 }
 
-// failed notes an error in the log of the run on its way out.
+// failed notes an error in the log of the run on its way out. A person reads it
+// once, as the last words of the command.
 func (s *session) failed(err error) error {
-	s.log.Warn("run ends early", "error", err)
+	log := s.log
+	if s.flags.LogFormat == "text" {
+		log = s.flags.newLogger(io.Discard, false, s.file).With("run", s.progress.metrics.Run)
+	}
+	log.Error("run ends early", "error", err)
 	state := "failed"
 	if errors.Is(err, context.Canceled) {
 		state = "interrupted"
