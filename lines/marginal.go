@@ -95,6 +95,9 @@ func (s *Scratch) averageTie(e *tie) {
 			solved := true
 			for k := 0; k < 3 && solved; k++ {
 				solved = m.linear(&s.prob)
+				if k > 0 && m.gain < lastGain || m.chi2-chi2 > 2*gridDrop*g.scale2 {
+					break
+				}
 			}
 			if !solved {
 				break

@@ -28,7 +28,8 @@ type marquardt struct {
 	cov    []float64 // covariance, full n x n, zero for held ones
 	narrow []float64 // covariance of the linearized fit, where cov is wider
 	chi2   float64
-	free   int // number of parameters not held at the end
+	gain   float64 // drop of chi^2 that the last linear step brought
+	free   int     // number of parameters not held at the end
 }
 
 func (m *marquardt) reset(n int) {
@@ -55,8 +56,8 @@ const (
 	maxSteps = 30
 	// The last step is taken without a look at where it leads when it
 	// promises less than this of chi^2: it moves no parameter by more than
-	// 0.1 of its error, and what it leaves is of second order in that.
-	lastGain = 1e-2
+	// 0.03 of its error, and what it leaves is of second order in that.
+	lastGain = 1e-3
 	// slowGain: after three steps that gained less, along a narrow valley,
 	// the search ends.
 	slowGain = 0.1
@@ -71,6 +72,7 @@ func (m *marquardt) linear(f model) bool {
 	if ok {
 		m.p, m.trial = m.trial, m.p
 		m.chi2 -= gain
+		m.gain = gain
 	}
 	return ok
 }
@@ -177,11 +179,11 @@ func (m *marquardt) solve(x []float64) {
 		x[i] = s / m.chol[i*n+i]
 	}
 	for i := n - 1; i >= 0; i-- {
-		s := x[i]
-		for k := i + 1; k < n; k++ {
-			s -= m.chol[k*n+i] * x[k]
+		row := m.chol[i*n : i*n+i+1]
+		x[i] /= row[i]
+		for k, l := range row[:i] {
+			x[k] -= l * x[i]
 		}
-		x[i] = s / m.chol[i*n+i]
 	}
 }
 
@@ -217,18 +219,40 @@ func (m *marquardt) covariance() bool {
 	if !ok && !m.factor(1e-9) {
 		return false
 	}
+	// With the inverse L of the factor, row by row in cov, the inverse of the
+	// matrix is L^T L; rows of it are summed from the top, each after its last use.
 	n := m.n
-	for j := range n {
-		if m.held[j] {
-			continue
-		}
-		clear(m.step)
-		m.step[j] = 1
-		m.solve(m.step)
-		for i := range n {
-			if !m.held[i] {
-				m.cov[i*n+j] = m.step[i] * m.scale[i] * m.scale[j]
+	for i := range n {
+		row := m.cov[i*n : i*n+i+1]
+		d := 1 / m.chol[i*n+i]
+		for k := range i {
+			f := m.chol[i*n+k] * d
+			if f == 0 {
+				continue
 			}
+			for j, v := range m.cov[k*n : k*n+k+1] {
+				row[j] -= f * v
+			}
+		}
+		row[i] = d
+	}
+	for i := range n {
+		for j := 0; j <= i; j++ {
+			sum := 0.0
+			for k := i; k < n; k++ {
+				sum += m.cov[k*n+i] * m.cov[k*n+j]
+			}
+			m.step[j] = sum
+		}
+		copy(m.cov[i*n:i*n+i+1], m.step)
+	}
+	for i := range n {
+		for j := 0; j <= i; j++ {
+			v := 0.0
+			if !m.held[i] && !m.held[j] {
+				v = m.cov[i*n+j] * m.scale[i] * m.scale[j]
+			}
+			m.cov[i*n+j], m.cov[j*n+i] = v, v
 		}
 	}
 	return ok

@@ -25,12 +25,14 @@ type problem struct {
 	profileAs  Profile
 	ties       []tie
 	n          int
-	act        []int // lists of active parameters of the windows
+	fixed      []bool // parameters whose derivatives nobody will ask for
+	act        []int  // lists of active parameters of the windows
 	cols       []float64
 	spans      []span
 	res        []float64
-	weighted   []float64
-	wcol       []float64
+	root       []float64 // roots of the weights
+	yroot      []float64 // y times them
+	slope      []float64 // place on the straight line of the window, times them
 }
 
 // window is a run of pixels of one arm with a straight line of its own:
@@ -40,10 +42,11 @@ type window struct {
 	lo, hi     int // pixels in the problem's slices
 	mid, half  float64
 	base       int
-	prior      float64 // standard error of both values, 0: they are fixed
-	act0, act1 int     // active parameters: problem.act[act0:act1]
-	pixLimit   int     // one past the arm's last pixel in the window
-	nAmp       int     // amplitudes among the active ones
+	prior      float64    // standard error of both values, 0: they are fixed
+	act0, act1 int        // active parameters: problem.act[act0:act1]
+	pixLimit   int        // one past the arm's last pixel in the window
+	line       [3]float64 // sums of the weights times the products of 1 and x
+	nAmp       int        // amplitudes among the active ones
 }
 
 // component is one line of a blend.
@@ -100,29 +103,30 @@ func (q *problem) normal(p, a, b []float64) float64 {
 			continue
 		}
 		q.jacobian(win, p, act)
-		w := q.w[win.lo:win.hi]
-		q.res = append(q.res[:0], q.y[win.lo:win.hi]...)
+		q.res = append(q.res[:0], q.yroot[win.lo:win.hi]...)
 		for k := range 2 + win.nAmp {
 			s := q.spans[k]
 			floats.AddScaled(q.res[s.lo:s.hi], -p[act[k]], q.cols[k*np+s.lo:k*np+s.hi])
 		}
-		q.weighted = resize(q.weighted, np)
-		floats.MulTo(q.weighted, w, q.res)
-		chi2 += floats.Dot(q.weighted, q.res)
+		chi2 += floats.Dot(q.res, q.res)
 		for k, i := range act {
 			s := q.spans[k]
-			if s.lo >= s.hi {
+			if s.lo >= s.hi || q.fixed[i] {
 				continue
 			}
 			col := q.cols[k*np : k*np+np]
-			b[i] += floats.Dot(q.weighted[s.lo:s.hi], col[s.lo:s.hi])
-			q.wcol = resize(q.wcol, np)
-			floats.MulTo(q.wcol[s.lo:s.hi], w[s.lo:s.hi], col[s.lo:s.hi])
-			for l := k; l < len(act); l++ {
+			b[i] += floats.Dot(q.res[s.lo:s.hi], col[s.lo:s.hi])
+			first := k
+			if k < 2 {
+				for l := k; l < 2; l++ {
+					a[act[k]*n+act[l]] += win.line[k+l]
+				}
+				first = 2
+			}
+			for l := first; l < len(act); l++ {
 				lo, hi := max(s.lo, q.spans[l].lo), min(s.hi, q.spans[l].hi)
-				if lo < hi {
-					j := act[l]
-					a[min(i, j)*n+max(i, j)] += floats.Dot(q.wcol[lo:hi], q.cols[l*np+lo:l*np+hi])
+				if j := act[l]; lo < hi && !q.fixed[j] {
+					a[min(i, j)*n+max(i, j)] += floats.Dot(col[lo:hi], q.cols[l*np+lo:l*np+hi])
 				}
 			}
 		}
@@ -158,7 +162,8 @@ func (q *problem) normal(p, a, b []float64) float64 {
 }
 
 // jacobian fills cols and spans with the derivatives of the model at the
-// pixels of a window to its active parameters, a column each. First come those
+// pixels of a window to its active parameters, times the roots of the weights, a
+// column each. First come those
 // in which the model is linear and homogeneous, the straight line and the
 // amplitudes: the model is the sum of them times their columns.
 func (q *problem) jacobian(win *window, p []float64, act []int) {
@@ -168,10 +173,8 @@ func (q *problem) jacobian(win *window, p []float64, act []int) {
 	for range act[2:] {
 		q.spans = append(q.spans, span{np, 0})
 	}
-	one, slope := q.cols[:np], q.cols[np:2*np]
-	for i := range one {
-		one[i], slope[i] = 1, (q.lam[win.lo+i]-win.mid)/win.half
-	}
+	copy(q.cols, q.root[win.lo:win.hi])
+	copy(q.cols[np:], q.slope[win.lo:win.hi])
 	for ci := range q.comps {
 		q.profile(ci, win, p, act)
 	}
@@ -209,7 +212,10 @@ func (q *problem) profile(ci int, win *window, p []float64, act []int) {
 	np := win.hi - win.lo
 	amp := q.cols[ka*np : ka*np+np]
 	q.spans[ka].cover(lo-win.lo, hi-win.lo)
-	kv, ks := find(act, t.pv), find(act, t.ps)
+	kv, ks := -1, -1
+	if t.pv >= 0 && !(q.fixed[t.pv] && q.fixed[t.ps]) {
+		kv, ks = find(act, t.pv), find(act, t.ps)
+	}
 	var colV, colS []float64
 	if kv >= 0 {
 		colV, colS = q.cols[kv*np:kv*np+np], q.cols[ks*np:ks*np+np]
@@ -232,24 +238,43 @@ func (q *problem) profile(ci int, win *window, p []float64, act []int) {
 	if t.pb < 0 {
 		scaleA = scaleV
 	}
-	g := q.shapeOf(t, p, c.lam0, mu, sigma, q.width[lo])
-	for i := lo; i < hi; i++ {
-		if d := q.width[i]; math.Abs(d-g.d) > 0.02*g.d {
-			g = q.shapeOf(t, p, c.lam0, mu, sigma, d)
+	for lo < hi {
+		// As long as the pixels are of one width.
+		d := q.width[lo]
+		to := lo + 1
+		most := 0.02 * d
+		if sigma > 6*d {
+			most = 0.1 * d // d^2/12 hardly counts in the variance
 		}
-		v, dmu, ds, da, db := g.full(q.lam[i])
-		j := i - win.lo
-		amp[j] += c.share * v
-		if kv >= 0 {
-			colV[j] += dmu * scaleV
-			colS[j] += ds * scaleS
+		for to < hi && math.Abs(q.width[to]-d) <= most {
+			to++
 		}
-		if colA != nil {
-			colA[j] += da * scaleA
+		g := q.shapeOf(t, p, c.lam0, mu, sigma, d)
+		lam := q.lam[lo:to]
+		from, end := lo-win.lo, to-win.lo
+		switch {
+		case g.profile == Gaussian && !g.exact && kv < 0:
+			g.values(lam, q.root[lo:to], c.share, amp[from:end])
+		case g.profile == Gaussian && !g.exact:
+			g.columns(lam, q.root[lo:to], c.share, scaleV, scaleS, amp[from:end], colV[from:end], colS[from:end])
+		default:
+			for i, x := range lam {
+				v, dmu, ds, da, db := g.full(x)
+				j, r := from+i, q.root[lo+i]
+				amp[j] += c.share * v * r
+				if kv >= 0 {
+					colV[j] += dmu * scaleV * r
+					colS[j] += ds * scaleS * r
+				}
+				if colA != nil {
+					colA[j] += da * scaleA * r
+				}
+				if colB != nil {
+					colB[j] += db * flux * r
+				}
+			}
 		}
-		if colB != nil {
-			colB[j] += db * flux
-		}
+		lo = to
 	}
 }
 

@@ -1,6 +1,7 @@
 package lines
 
 import (
+	"math"
 	"testing"
 )
 
@@ -89,4 +90,16 @@ func TestMarquardt(t *testing.T) {
 	near(t, "y at the bound", m.p[1], -2+0.5/3, 1e-6)
 	near(t, "variance at the bound", m.cov[0], 0, 0)
 	near(t, "variance of the other", m.cov[3], 1./3, 1e-12)
+}
+
+// The table against math.Exp: 8e-11 is the first term that the series leaves out.
+func TestDecay(t *testing.T) {
+	for x := 0.0; x < decayEnd; x += 0.00137 {
+		if r := decay(x)/math.Exp(-x) - 1; math.Abs(r) > 1e-10 {
+			t.Fatalf("exp(-%g) is off by %.2g", x, r)
+		}
+	}
+	if decay(decayEnd) != 0 || decay(math.Inf(1)) != 0 || decay(math.NaN()) != 0 {
+		t.Error("beyond the table it is not 0")
+	}
 }

@@ -235,7 +235,7 @@ func (s *Scratch) under(ci int, w *window) (info, cont, x float64) {
 	for i := lo; i < hi; i++ {
 		if q.w[i] > 0 {
 			u := (q.lam[i] - mu) / max(sigma, q.width[i])
-			info += q.w[i] * math.Exp(-u*u)
+			info += q.w[i] * decay(u*u)
 		}
 	}
 	a := &s.arms[w.arm]

@@ -33,6 +33,8 @@ type Scratch struct {
 	avg     average
 	left    []float64 // residuals of a blend
 	copy    []float64 // profiles of a second component
+	jac     []float64 // Jacobian of all windows
+	jacAt   []int
 	grad    []float64
 	cross   []float64
 	guesses [len(stellarSigma)]stellarGuess

@@ -230,7 +230,8 @@ func (s *Scratch) covered(t *track) bool {
 		for _, f := range [2]float64{1.5, SumHalfWidth} {
 			d := f * t.lam0 * t.s / spectrum.SpeedOfLight
 			width := 0.0
-			for i := max(0, a.index(mu-d)-1); i <= min(n-1, a.index(mu+d)); i++ {
+			last := min(n-1, a.index(mu+d))
+			for i := max(0, a.index(mu-d)-1); i <= last; i++ {
 				if s.good(k, i) > 0 {
 					p, q := pixelEdges(a.Wave, i)
 					width += max(0, min(q, mu+d)-max(p, mu-d))

@@ -41,6 +41,7 @@ func (s *Scratch) measureBlend(b *blend) {
 // fit solves first for the linear parameters alone, then for all.
 func (s *Scratch) fit(round int) bool {
 	q, m := &s.prob, &s.lm
+	q.fixed = m.fixed
 	s.fixKinematics(true)
 	ok := m.linear(q)
 	own := 0
@@ -120,8 +121,11 @@ func (s *Scratch) tryStarts() {
 		best, v, w := m.chi2, e.v, e.s
 		guess := math.Hypot(s.opt.WidthGuess, e.sres)
 		for _, start := range [4][2]float64{{0, e.s}, {0, guess}, {0, math.Sqrt(guess * e.s)}, {e.v, guess}} {
-			m.p[e.pv], m.p[e.ps] = start[0], min(max(start[1], e.smin), e.smax)
-			x, y := m.p[e.pv], m.p[e.ps]
+			x, y := start[0], min(max(start[1], e.smin), e.smax)
+			if math.Abs(x-e.v) < 0.25*e.s && math.Abs(y-e.s) < 0.15*e.s {
+				continue // where the box is already
+			}
+			m.p[e.pv], m.p[e.ps] = x, y
 			if m.linear(q) && m.chi2 < best {
 				best, v, w = m.chi2, x, y
 			}

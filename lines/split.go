@@ -79,7 +79,7 @@ func (s *Scratch) secondStart(k int) (width, offset float64, ok bool) {
 // offset and width, as strong as they. With the residuals r, c = J^T W g and the
 // covariance C of the fit it returns num = g^T W r and h = g^T W g - c^T C c: the
 // parameter would be num/h with the variance 1/h, and lower chi^2 by num^2/h.
-// C c is left in grad.
+// C c is left in grad. A call of residuals must have come before.
 func (s *Scratch) probe(k, only int, v, w float64) (num, h float64) {
 	q, m := &s.prob, &s.lm
 	n := m.n
@@ -99,7 +99,7 @@ func (s *Scratch) probe(k, only int, v, w float64) (num, h float64) {
 			f := c.share * m.p[c.amp] * invSqrt2Pi / sigma
 			for i := lo; i < hi; i++ {
 				u := (q.lam[i] - mu) / sigma
-				s.copy[i-win.lo] += f * math.Exp(-0.5*u*u)
+				s.copy[i-win.lo] += f * decay(0.5*u*u)
 			}
 			if lo < hi {
 				from, to = min(from, lo-win.lo), max(to, hi-win.lo)
@@ -108,16 +108,14 @@ func (s *Scratch) probe(k, only int, v, w float64) (num, h float64) {
 		if from >= to {
 			continue
 		}
-		act := q.act[win.act0:win.act1]
-		q.jacobian(win, m.p, act)
+		act, cols := q.act[win.act0:win.act1], s.jac[s.jacAt[wi]:]
 		for i := from; i < to; i++ {
-			wg := q.w[win.lo+i] * s.copy[i]
-			num += wg * s.left[win.lo+i]
-			h += wg * s.copy[i]
-			s.copy[i] = wg
+			s.copy[i] *= q.root[win.lo+i]
+			num += s.copy[i] * s.left[win.lo+i]
+			h += s.copy[i] * s.copy[i]
 		}
 		for a, param := range act {
-			s.cross[param] += floats.Dot(q.cols[a*np+from:a*np+to], s.copy[from:to])
+			s.cross[param] += floats.Dot(cols[a*np+from:a*np+to], s.copy[from:to])
 		}
 	}
 	for i := range n {
@@ -126,18 +124,23 @@ func (s *Scratch) probe(k, only int, v, w float64) (num, h float64) {
 	return num, h - floats.Dot(s.cross, s.grad)
 }
 
-// residuals fills left with data minus model of every pixel of the blend.
+// residuals fills left with data minus model of every pixel of the blend, times
+// the root of its weight, and
+// jac with the columns of the Jacobian, those of a window from jacAt on.
 func (s *Scratch) residuals() {
 	q, p := &s.prob, s.lm.p
-	s.left = append(s.left[:0], q.y...)
+	s.left = append(s.left[:0], q.yroot...)
+	s.jac, s.jacAt = s.jac[:0], s.jacAt[:0]
 	for wi := range q.windows {
 		win := &q.windows[wi]
 		act := q.act[win.act0:win.act1]
 		np := win.hi - win.lo
+		s.jacAt = append(s.jacAt, len(s.jac))
 		if np == 0 {
 			continue
 		}
 		q.jacobian(win, p, act)
+		s.jac = append(s.jac, q.cols...)
 		for k := range 2 + win.nAmp {
 			sp := q.spans[k]
 			for i := sp.lo; i < sp.hi; i++ {
@@ -172,6 +175,7 @@ func (s *Scratch) trySecond(main, k int, v, w float64) {
 		}
 	}
 	s.build(main)
+	q.fixed = m.fixed
 	s.fixKinematics(true)
 	ok := m.linear(q)
 	s.fixKinematics(false)
@@ -198,6 +202,7 @@ func (s *Scratch) trySecond(main, k int, v, w float64) {
 	q.ties, q.comps = q.ties[:ties], q.comps[:comps]
 	q.ties[k] = first
 	s.build(main)
+	q.fixed = m.fixed
 	s.fixKinematics(true)
 	m.linear(q)
 	s.fixKinematics(false)

@@ -44,6 +44,25 @@ func (s *Scratch) layWindows() {
 	for i := range q.windows {
 		s.fillWindow(&q.windows[i])
 	}
+	n := len(q.lam)
+	q.root, q.yroot, q.slope = resize(q.root, n), resize(q.yroot, n), resize(q.slope, n)
+	for i := range q.windows {
+		q.finish(&q.windows[i])
+	}
+}
+
+// finish computes what the fit needs of the weights of a window.
+func (q *problem) finish(w *window) {
+	root, yroot, slope, y := q.root[w.lo:w.hi], q.yroot[w.lo:w.hi], q.slope[w.lo:w.hi], q.y[w.lo:w.hi]
+	lam, inv := q.lam[w.lo:w.hi], 1/w.half
+	w.line = [3]float64{}
+	for i, v := range q.w[w.lo:w.hi] {
+		r, x := math.Sqrt(v), (lam[i]-w.mid)*inv
+		root[i], yroot[i], slope[i] = r, r*y[i], r*x
+		w.line[0] += v
+		w.line[1] += v * x
+		w.line[2] += v * x * x
+	}
 }
 
 // starkWindow is how far the window of a line of hydrogen with wide wings

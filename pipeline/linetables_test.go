@@ -238,9 +238,11 @@ func TestSurveyLineTables(t *testing.T) {
 		if math.Abs(r-1) > 0.05 || sc > 1.5 {
 			t.Errorf("%s: median ratio of fluxes %.3f, want 1 +- 0.05; scatter of pulls %.2f, want below 1.5", class, r, sc)
 		}
-		// Measured 1.47 in galaxies and 1.51 in quasars, where 1.5 is wanted.
-		if math.Abs(re-1) > 0.05 || se > 1.55 {
-			t.Errorf("%s: median ratio of equivalent widths %.3f, want 1 +- 0.05; scatter of pulls %.2f, want below 1.55", class, re, se)
+		// 1.5 is wanted: measured 1.46 in galaxies, 1.54 in quasars, where the
+		// survey's one width for all forbidden lines misses narrow ones.
+		most := map[string]float64{catalog.Galaxy: 1.5, catalog.Quasar: 1.6}[class]
+		if math.Abs(re-1) > 0.05 || se > most {
+			t.Errorf("%s: median ratio of equivalent widths %.3f, want 1 +- 0.05; scatter of pulls %.2f, want below %.1f", class, re, se, most)
 		}
 	}
 }
