@@ -11,18 +11,20 @@ import (
 	"slices"
 	"syscall"
 	"testing"
+	"testing/iotest"
 
 	"duskline/internal/outside"
 )
 
-// failing is a file whose server goes away after some reads.
+// failing is a file whose server goes away after some reads, for once or for good.
 type failing struct {
 	io.ReaderAt
 	left int
+	once bool
 }
 
 func (f *failing) ReadAt(b []byte, off int64) (int, error) {
-	if f.left--; f.left < 0 {
+	if f.left--; f.left == -1 || f.left < 0 && !f.once {
 		return 0, syscall.ESTALE
 	}
 	return f.ReaderAt.ReadAt(b, off)
@@ -37,10 +39,13 @@ func TestDiskThatFails(t *testing.T) {
 	for i, data := range layoutSamples()["arm-images"] {
 		all["arm-images "+string(rune('0'+i))] = data
 	}
+	all["packed cells"] = packTable("GZIP_1", 2, 1, []tcol{{name: "TARGETID", form: "K", data: []float64{11, 12}},
+		{name: "WAVE", form: "40D", unit: "nm", data: ramp(80, 400, 1)}, {name: "FLUX", form: "40E", data: noisy(80, 1)}})
 	points := 0
 	for _, name := range slices.Sorted(maps.Keys(all)) {
-		for reads := 0; ; reads++ {
-			disk := &failing{bytes.NewReader(all[name]), reads}
+		for try := 0; ; try++ {
+			reads := try / 2
+			disk := &failing{bytes.NewReader(all[name]), reads, try%2 == 1}
 			f := &File{path: "away.fits", opts: Options{MaxPixels: 1 << 22, MaxUnpacked: 1 << 30}, src: &source{ReaderAt: disk, size: int64(len(all[name]))}}
 			err := f.load()
 			if err == nil {
@@ -55,12 +60,24 @@ func TestDiskThatFails(t *testing.T) {
 			points++
 			var re *ReadError
 			if !errors.Is(err, syscall.ESTALE) || !errors.As(err, &re) || re.Hint == "" {
-				t.Errorf("%s, after %d reads: %v", name, reads, err)
+				t.Errorf("%s, after %d reads, for once %v: %v", name, reads, disk.once, err)
 			}
 		}
 	}
-	if points < 50 {
+	if points < 100 {
 		t.Errorf("only %d reads failed: the test is blind", points)
+	}
+}
+
+// The same of a gzipped file, which is read whole when it is opened.
+func TestDiskThatFailsUnderGzip(t *testing.T) {
+	data := gzipped(pixelTable(2000))
+	for _, n := range []int{0, 5, len(data) / 2} {
+		away := iotest.ErrReader(syscall.ESTALE)
+		_, err := unpack(io.MultiReader(bytes.NewReader(data[:n]), away), 1<<30)
+		if !errors.Is(err, syscall.ESTALE) || errors.Is(err, ErrTruncated) {
+			t.Errorf("after %d bytes: %v", n, err)
+		}
 	}
 }
 

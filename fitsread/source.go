@@ -114,16 +114,36 @@ func describeMode(m fs.FileMode) string {
 	return "this is not a regular file"
 }
 
+// keeping keeps the failure of a disk, which is no fault of what is packed on it.
+type keeping struct {
+	io.Reader
+	failed error
+}
+
+func (k *keeping) Read(b []byte) (int, error) {
+	n, err := k.Reader.Read(b)
+	if err != nil && err != io.EOF {
+		k.failed = err
+	}
+	return n, err
+}
+
 // unpack inflates a gzip stream of at most limit bytes. The size that the
 // stream claims for itself is not believed.
 func unpack(r io.Reader, limit int64) ([]byte, error) {
-	z, err := gzip.NewReader(r)
-	if err != nil {
+	disk := &keeping{Reader: r}
+	z, err := gzip.NewReader(disk)
+	if err != nil && disk.failed == nil {
 		return nil, fault(ErrTruncated, -1, hintCopy, "the gzip stream cannot be read: %v", err)
 	}
 	var buf bytes.Buffer
-	n, err := io.Copy(&buf, io.LimitReader(z, limit+1))
+	var n int64
+	if err == nil {
+		n, err = io.Copy(&buf, io.LimitReader(z, limit+1))
+	}
 	switch {
+	case disk.failed != nil:
+		return nil, fault(disk.failed, -1, "check the disk or the network", "it cannot be read: %v", disk.failed)
 	case n > limit:
 		return nil, fault(ErrTooLarge, -1, "unpack it with gunzip, or raise the limit",
 			"it unpacks to more than %d bytes", limit)
