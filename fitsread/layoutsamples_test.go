@@ -46,6 +46,7 @@ func layoutSamples() map[string][][]byte {
 			image1(kv("CTYPE1", "WAVE-F2W"), kv("CRVAL1", 5e-7), kv("CDELT1", 1e-10), kv("CRPIX1", 1)),
 			image1(kv("CTYPE1", "FREQ"), kv("CRVAL1", 5e14), kv("CDELT1", -1e11), kv("CUNIT1", "Hz"), kv("CRPIX1", 1)),
 			image1(kv("CRVAL1", 3.6), kv("CD1_1", 1e-4), kv("CRPIX1", 1), kv("DC-FLAG", 1))},
+		"axis-cells": {rowCells(2, col("FLUX", vector("E"), "", noisy(2*n, 1), stem{"1CTYP", "WAVE"}, stem{"1CRVL", 500.0}, stem{"1CDLT", 0.1}, stem{"1CRPX", 1.0}, stem{"1CUNI", "nm"}))},
 		"ivar-lines": {image(true, -32, []int{n, 5}, stack(noisy(n, 1), constant(n, 1), noisy(n, 1), constant(n, 0), constant(n, 0)),
 			append([]string{kv("ROW1", "Flux"), kv("ROW2", "Inverse Variance"), kv("ROW3", "Continuum-subtracted flux"), kv("ROW4", "andmask"), kv("ROW5", "ormask")}, stated...)...)},
 		"sigma-lines": {image(true, -32, []int{n, 3}, stack(noisy(n, 1), noisy(n, 1), constant(n, 1)),

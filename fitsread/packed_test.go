@@ -29,6 +29,10 @@ func TestTablesPackedByCfitsio(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
+	ways := []struct{ rows, method string }{{"77", ""}, {"1000", ""}, {"500", "GZIP_1"}, {"500", "GZIP_2"}, {"500", "RICE_1"}}
+	if testing.Short() {
+		ways = ways[:1]
+	}
 	packed, refused := 0, 0
 	for _, path := range paths {
 		name := strings.TrimSuffix(filepath.Base(path), ".fits")
@@ -40,7 +44,7 @@ func TestTablesPackedByCfitsio(t *testing.T) {
 		if plain.Close(); at.col == nil || at.hdu.kind == kindASCII || at.hdu.index != 1 {
 			continue
 		}
-		for _, how := range []struct{ rows, method string }{{"1000", ""}, {"77", ""}, {"500", "GZIP_1"}, {"500", "GZIP_2"}, {"500", "RICE_1"}} {
+		for _, how := range ways {
 			out := filepath.Join(t.TempDir(), name+".fits") // of the same name, which becomes that of the object
 			if text, err := exec.Command(cfitsio, "pack", path, out, how.rows, how.method).CombinedOutput(); err != nil {
 				t.Errorf("%s: %v %s", name, err, text)
@@ -63,7 +67,7 @@ func TestTablesPackedByCfitsio(t *testing.T) {
 			packed++
 		}
 	}
-	if packed < 100 || refused == 0 {
+	if packed < 30*len(ways) || refused == 0 {
 		t.Errorf("%d packed files compared, %d refused: the test is blind", packed, refused)
 	}
 	t.Logf("%d packed files compared, %d refused", packed, refused)
