@@ -25,7 +25,7 @@ var edges = map[string][]string{
 	"hydrogen":         {},
 	"configs":          {},
 	"cluster":          {"internal/shards"},
-	"manifest":         {},
+	"manifest":         {"internal/spill"},
 	"internal/fitsout": {},
 	"internal/outside": {},
 	"internal/shards":  {},

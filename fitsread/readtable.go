@@ -5,42 +5,42 @@ import (
 	"strings"
 )
 
-// maxTableCells bounds the cells that ReadTable returns.
-const maxTableCells = 50_000_000
-
-// ReadTable returns the columns of one value a row, as text, of the first table of
-// a FITS file that has any: their names, and the cells row by row. Numbers are
-// written so that they read back as the same value; null, NaN and blank cells are
-// empty, logicals are T or F. Errors are *ReadError.
-func ReadTable(path string) (names []string, rows [][]string, err error) {
+// ReadTable reads the columns of one value a row, as text, of the first table of a
+// FITS file that has any: header is called with their names, then row with the cells
+// of each row, which it must not keep. Numbers are written so that they read back as
+// the same value; null, NaN and blank cells are empty, logicals are T or F. Errors are
+// *ReadError.
+func ReadTable(path string, header, row func(cells []string)) (err error) {
 	f := &File{path: path, opts: Options{MaxPixels: 1 << 22, MaxUnpacked: 1 << 30}}
 	defer f.guard(&err)
 	if f.src, err = openSource(path, f.opts.MaxUnpacked); err != nil {
-		return nil, nil, err
+		return err
 	}
 	defer f.src.close()
 	if f.hdus, err = walk(f.src, f.src.size); err != nil {
-		return nil, nil, err
+		return err
 	}
 	for _, h := range f.hdus {
 		switch {
 		case h.kind == kindPacked:
-			return nil, nil, compressedFault(h)
+			return compressedFault(h)
 		case h.kind != kindTable && h.kind != kindASCII:
 			continue
 		case h.broken != nil:
-			return nil, nil, h.broken
+			return h.broken
 		}
-		if names, rows, err = f.tableText(h); err != nil || len(names) > 0 {
-			return names, rows, err
+		if read, err := f.tableText(h, header, row); err != nil || read {
+			return err
 		}
 	}
-	return nil, nil, fault(ErrNoSpectrum, -1, "give a file with a table of one value a cell", "there is no table in it")
+	return fault(ErrNoSpectrum, -1, "give a file with a table of one value a cell", "there is no table in it")
 }
 
-// tableText reads a table row by row.
-func (f *File) tableText(h *hdu) (names []string, rows [][]string, err error) {
+// tableText reads a table row by row; it reports false for one without a column of
+// one value a row.
+func (f *File) tableText(h *hdu, header, row func(cells []string)) (bool, error) {
 	var cols []*column
+	var names []string
 	for i := range h.columns {
 		if c := &h.columns[i]; !c.bad && !c.isVector() && c.repeat > 0 && strings.IndexByte("ALBIJKED", c.code) >= 0 {
 			cols, names = append(cols, c), append(names, c.name)
@@ -48,31 +48,29 @@ func (f *File) tableText(h *hdu) (names []string, rows [][]string, err error) {
 	}
 	rowLen, n := h.axes[0], h.axes[1]
 	if len(cols) == 0 {
-		return nil, nil, nil
-	}
-	if n > 0 && int64(len(cols)) > maxTableCells/n {
-		return nil, nil, fault(ErrTooLarge, h.index, "split it", "the table has %d rows of %d columns", n, len(cols))
+		return false, nil
 	}
 	if err := h.need(0, rowLen*n); err != nil {
-		return nil, nil, err
+		return false, err
 	}
+	header(names)
+	cells := make([]string, len(cols))
 	step := max(tableChunk/max(rowLen, 1), 1)
-	for row := int64(0); row < n; row += step {
-		k := min(step, n-row)
-		raw, err := f.readBytes(h, row*rowLen, k*rowLen)
+	for first := int64(0); first < n; first += step {
+		k := min(step, n-first)
+		raw, err := f.readBytes(h, first*rowLen, k*rowLen)
 		if err != nil {
-			return nil, nil, err
+			return false, err
 		}
 		for r := range k {
-			cells := make([]string, len(cols))
 			for j, c := range cols {
 				at := r*rowLen + c.offset
 				cells[j] = c.cellText(raw[at:at+c.width], h.kind == kindASCII)
 			}
-			rows = append(rows, cells)
+			row(cells)
 		}
 	}
-	return names, rows, nil
+	return true, nil
 }
 
 // cellText writes one value as text.

@@ -19,16 +19,20 @@
 package manifest
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"path"
 	"strconv"
 	"strings"
+
+	"duskline/internal/spill"
 )
 
 // Entry is what a manifest says about one object. What it does not say is empty
 // or NaN.
 type Entry struct {
+	Number        int    // of the entry, from 0
 	Line          int    // of the manifest: line of a CSV file, row from 1 of a FITS table
 	File          string // as written, cleaned
 	Row           int    // AllRows where it is empty
@@ -54,25 +58,31 @@ func (e *Entry) Key() string {
 	return fmt.Sprintf("%q %v %v %v %q %v %v", e.ObjectID, e.RA, e.Dec, e.Magnitude, e.ExpectedClass, e.RedshiftMin, e.RedshiftMax)
 }
 
-// Manifest is a table of entries. It is immutable and may be shared.
+// Manifest is a table of entries. It is immutable and may be shared; memory does
+// not grow with their number.
 type Manifest struct {
-	Entries []Entry
 	// Ignored are the names of columns that mean nothing here.
 	Ignored []string
 
-	byFile map[fileRow][]int // entries, in order
-	byID   map[string]int    // entries without file
+	entries store
+	places  spill.Map // of entries, by joining: reference and line
+	byName  bool
 }
 
-// fileRow is what entries are looked up by: the last part of the file's name, and
-// the row.
-type fileRow struct {
-	base string
-	row  int
+// fileKey and nameKey are what entries are looked up by.
+func fileKey(file string, row int) spill.Key {
+	return spill.KeyOf(fmt.Sprintf("file %d %s", row, file))
 }
+func nameKey(id string) spill.Key { return spill.KeyOf("name " + id) }
+
+// Len returns the number of entries.
+func (m *Manifest) Len() int { return m.entries.n }
+
+// Each visits the entries in order.
+func (m *Manifest) Each(visit func(*Entry) error) error { return m.entries.each(visit) }
 
 // ByName reports whether some entries are joined by object_id alone.
-func (m *Manifest) ByName() bool { return len(m.byID) > 0 }
+func (m *Manifest) ByName() bool { return m.byName }
 
 // Error tells everything that is wrong with a manifest, a line each.
 type Error struct{ Problems []string }
@@ -80,41 +90,36 @@ type Error struct{ Problems []string }
 // Error returns the problems, one a line.
 func (e *Error) Error() string { return strings.Join(e.Problems, "\n") }
 
-// Find returns the number of the entry for spectrum row of the file at path, whose
-// object is called id by the file itself, -1 for none.
+// Find returns the entry for spectrum row of the file at path, whose object is
+// called id by the file itself, nil for none. The error is of the file that a large
+// manifest is held in.
 //
 // The file of an entry joins by name: a bare name fits a file of that name in any
 // folder, one with folders fits a path that ends in them, one that begins with /
 // is the whole path. ".gz" and ".fz" do not count. Of several that fit the longest wins,
 // and of those an entry for the row before one for all rows. Entries without file
 // join by object_id, where no entry names the file.
-func (m *Manifest) Find(filePath string, row int, id string) int {
-	full := cleanFile(filePath)
-	best := -1
-	for _, key := range []fileRow{{path.Base(full), row}, {path.Base(full), AllRows}} {
-		for _, i := range m.byFile[key] {
-			e := &m.Entries[i]
-			if endsIn(full, e.File) && (best < 0 || len(e.File) > len(m.Entries[best].File)) {
-				best = i
+func (m *Manifest) Find(filePath string, row int, id string) (*Entry, error) {
+	for rest, more := cleanFile(filePath), true; more; {
+		for _, r := range [2]int{row, AllRows} {
+			if e, err := m.at(fileKey(rest, r)); e != nil || err != nil {
+				return e, err
 			}
 		}
+		_, rest, more = strings.Cut(rest, "/") // of "/data/a": "data/a"
 	}
-	if best >= 0 {
-		return best
+	if !m.byName || id == "" {
+		return nil, nil
 	}
-	if i, ok := m.byID[id]; ok && id != "" {
-		return i
-	}
-	return -1
+	return m.at(nameKey(id))
 }
 
-// endsIn reports whether a path is file or ends in /file.
-func endsIn(full, file string) bool {
-	if path.IsAbs(file) {
-		return full == file
+func (m *Manifest) at(key spill.Key) (*Entry, error) {
+	v, ok, err := m.places.Get(key)
+	if !ok || err != nil {
+		return nil, err
 	}
-	head, ok := strings.CutSuffix(full, file)
-	return ok && (head == "" || strings.HasSuffix(head, "/"))
+	return m.entries.get(v[0])
 }
 
 // cleanFile brings a name to the form that is compared: no "./" or doubled slashes,
@@ -148,18 +153,11 @@ type builder struct {
 	m        *Manifest
 	problems []string
 	more     int
-	keys     map[objectKey]int // line
-}
-
-// objectKey is what must not stand twice: file and row, or a name.
-type objectKey struct {
-	file, id string
-	row      int
+	broken   error // of the file that a large manifest is held in
 }
 
 func newBuilder(name, unit string) *builder {
-	return &builder{name: name, unit: unit, at: map[string]int{}, keys: map[objectKey]int{},
-		m: &Manifest{byFile: map[fileRow][]int{}, byID: map[string]int{}}}
+	return &builder{name: name, unit: unit, at: map[string]int{}, m: &Manifest{entries: store{most: memoryMost}}}
 }
 
 func (b *builder) bad(line int, column, format string, args ...any) {
@@ -175,6 +173,9 @@ func (b *builder) bad(line int, column, format string, args ...any) {
 }
 
 func (b *builder) err() error {
+	if err := errors.Join(b.broken, b.m.entries.done()); err != nil {
+		return fmt.Errorf("%s: %w", b.name, err)
+	}
 	if len(b.problems) == 0 {
 		return nil
 	}
@@ -299,25 +300,21 @@ func (b *builder) add(line int, cells []string) {
 	default:
 		b.bad(line, "exclude", "%q is not true or false", s)
 	}
-	key := objectKey{file: e.File, row: e.Row}
+	key := fileKey(e.File, e.Row)
 	if e.File == "" {
-		key.id = e.ObjectID
+		key = nameKey(e.ObjectID)
 	}
-	if first, twice := b.keys[key]; twice {
-		b.bad(line, "", "it names the same object as %s %d", b.unit, first)
+	first, twice, err := b.m.places.Get(key)
+	if twice {
+		b.bad(line, "", "it names the same object as %s %d", b.unit, first[1])
 	}
-	if len(b.problems)+b.more > before {
+	if b.broken = errors.Join(b.broken, err); len(b.problems)+b.more > before || b.broken != nil {
 		return
 	}
-	b.keys[key] = line
-	n := len(b.m.Entries)
-	b.m.Entries = append(b.m.Entries, e)
-	if e.File == "" {
-		b.m.byID[e.ObjectID] = n
-		return
-	}
-	at := fileRow{path.Base(e.File), e.Row}
-	b.m.byFile[at] = append(b.m.byFile[at], n)
+	ref, err := b.m.entries.add(e)
+	_, err2 := b.m.places.Put(key, spill.Value{ref, int64(line)})
+	b.broken = errors.Join(err, err2)
+	b.m.byName = b.m.byName || e.File == ""
 }
 
 func (b *builder) number(line int, column, s string, lo, hi float64) float64 {

@@ -2,6 +2,7 @@ package manifest
 
 import (
 	"errors"
+	"fmt"
 	"math"
 	"strings"
 	"testing"
@@ -16,20 +17,89 @@ func readAll(t *testing.T, text string) *Manifest {
 	return m
 }
 
+func all(t testing.TB, m *Manifest) (out []Entry) {
+	t.Helper()
+	if err := m.Each(func(e *Entry) error { out = append(out, *e); return nil }); err != nil || len(out) != m.Len() {
+		t.Fatalf("%d of %d entries, %v", len(out), m.Len(), err)
+	}
+	return out
+}
+
+func find(t testing.TB, m *Manifest, path string, row int, id string) *Entry {
+	t.Helper()
+	e, err := m.Find(path, row, id)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return e
+}
+
+// A manifest of more entries than are kept in memory, and more keys, answers as a
+// small one does.
+func TestLargeManifest(t *testing.T) {
+	const n = 120_000
+	var b strings.Builder
+	b.WriteString("file,row,object_id,ra,dec,magnitude,expected_class,redshift_min,redshift_max,exclude\n")
+	for i := range n {
+		switch i % 3 {
+		case 0:
+			fmt.Fprintf(&b, "n%d/spec.fits,,LR %d,%d,-1.5,20.25,galaxy,0.5,,\n", i, i, i%360)
+		case 1:
+			fmt.Fprintf(&b, "many.fits,%d,,,,,,,,yes\n", i)
+		case 2:
+			fmt.Fprintf(&b, ",,LR %d,,,,star,,0.01,\n", i)
+		}
+	}
+	m := readAll(t, b.String())
+	if m.entries.file == nil || m.Len() != n {
+		t.Fatalf("%d entries are in memory: the test is blind", m.Len())
+	}
+	for i, e := range all(t, m) {
+		if e.Number != i || e.Line != i+2 {
+			t.Fatalf("entry %d is %+v", i, e)
+		}
+		if i%101 != 0 {
+			continue
+		}
+		path, row, id := fmt.Sprintf("/data/n%d/spec.fits.gz", i), 7, "nobody"
+		switch i % 3 {
+		case 1:
+			path, row = "many.fits", i
+		case 2:
+			path, id = "other.fits", fmt.Sprintf("LR %d", i)
+		}
+		got := find(t, m, path, row, id)
+		if got == nil || fmt.Sprintf("%+v", *got) != fmt.Sprintf("%+v", e) {
+			t.Errorf("%s row %d, id %q: %+v, want %+v", path, row, id, got, e)
+		}
+	}
+	if e := all(t, m)[99_999]; e.RA != 279 || e.Dec != -1.5 || e.Magnitude != 20.25 || e.ExpectedClass != "galaxy" || e.RedshiftMin != 0.5 ||
+		!math.IsNaN(e.RedshiftMax) || e.Exclude || e.ObjectID != "LR 99999" || e.File != "n99999/spec.fits" || e.Row != AllRows {
+		t.Errorf("%+v", e)
+	}
+	if find(t, m, "many.fits", 2, "") != nil || find(t, m, "spec.fits", 0, "LR 1") != nil {
+		t.Error("something was found that is not there")
+	}
+	if _, err := ReadCSV("night.csv", strings.NewReader(b.String()+",,LR 119999,,,,,,,\n")); err == nil || !strings.Contains(err.Error(), "line 120002: it names the same object as line 120001") {
+		t.Error(err)
+	}
+}
+
 func TestReadCSV(t *testing.T) {
 	m := readAll(t, "\xef\xbb\xbf# Lantern Ridge, 2031-03-14\n"+
 		"File, Object ID,ra,DEC,magnitude,expected-class,redshift_min,redshift_max,exclude,fiber\n"+
 		"a.fits,LR 1,10:30:00,-00:30:00,21.5,Galaxy,0.1,0.9,no,7\n"+
 		"\"b,c.fits\",,,,,,,,yes,\n")
-	if len(m.Entries) != 2 || len(m.Ignored) != 1 || m.Ignored[0] != "fiber" || m.ByName() {
+	entries := all(t, m)
+	if len(entries) != 2 || len(m.Ignored) != 1 || m.Ignored[0] != "fiber" || m.ByName() {
 		t.Fatalf("%+v", m)
 	}
-	e := m.Entries[0]
+	e := entries[0]
 	if e.Line != 3 || e.Row != AllRows || e.ObjectID != "LR 1" || e.RA != 157.5 || e.Dec != -0.5 || e.Magnitude != 21.5 ||
 		e.ExpectedClass != "galaxy" || e.RedshiftMin != 0.1 || e.RedshiftMax != 0.9 || e.Exclude || !e.Restricts() {
 		t.Errorf("%+v", e)
 	}
-	e = m.Entries[1]
+	e = entries[1]
 	if e.File != "b,c.fits" || !math.IsNaN(e.RA) || !math.IsNaN(e.RedshiftMin) || !e.Exclude || e.Restricts() {
 		t.Errorf("%+v", e)
 	}
@@ -64,7 +134,11 @@ func TestFind(t *testing.T) {
 		{"other.fits", 0, "", -1},
 		{"aa.fits", 0, "", -1},
 	} {
-		if got := m.Find(tt.path, tt.row, tt.id); got != tt.want {
+		got := -1
+		if e := find(t, m, tt.path, tt.row, tt.id); e != nil {
+			got = e.Number
+		}
+		if got != tt.want {
 			t.Errorf("%s row %d, id %q: entry %d, want %d", tt.path, tt.row, tt.id, got, tt.want)
 		}
 	}
@@ -111,11 +185,18 @@ func TestProblems(t *testing.T) {
 }
 
 func TestFromTable(t *testing.T) {
-	m, err := FromTable("night.fits", []string{"FILE", "REDSHIFT_MAX"}, [][]string{{"a.fits", "0.5"}})
-	if err != nil || m.Entries[0].RedshiftMax != 0.5 || m.Find("a.fits", 0, "") != 0 {
+	table := func(cell string) func(header, row func([]string)) error {
+		return func(header, row func([]string)) error {
+			header([]string{"FILE", "REDSHIFT_MAX"})
+			row([]string{"a.fits", cell})
+			return nil
+		}
+	}
+	m, err := FromTable("night.fits", table("0.5"))
+	if err != nil || all(t, m)[0].RedshiftMax != 0.5 || find(t, m, "a.fits", 0, "").Number != 0 {
 		t.Fatalf("%+v, %v", m, err)
 	}
-	_, err = FromTable("night.fits", []string{"FILE", "REDSHIFT_MAX"}, [][]string{{"a.fits", "x"}})
+	_, err = FromTable("night.fits", table("x"))
 	if err == nil || !strings.HasPrefix(err.Error(), "night.fits row 1, column redshift_max") {
 		t.Error(err)
 	}
@@ -136,12 +217,11 @@ func FuzzReadCSV(f *testing.F) {
 			}
 			return
 		}
-		for i := range m.Entries {
-			e := &m.Entries[i]
+		for _, e := range all(t, m) {
 			if e.File == "" && e.ObjectID == "" || e.RedshiftMin > e.RedshiftMax || e.RA < 0 || math.Abs(e.Dec) > 90 {
 				t.Fatalf("%+v", e)
 			}
-			if k := m.Find(e.File, max(e.Row, 0), e.ObjectID); k < 0 {
+			if find(t, m, e.File, max(e.Row, 0), e.ObjectID) == nil {
 				t.Fatalf("%+v does not find itself", e)
 			}
 		}

@@ -1,7 +1,7 @@
 package manifest
 
 import (
-	"bytes"
+	"bufio"
 	"encoding/csv"
 	"errors"
 	"fmt"
@@ -12,12 +12,11 @@ import (
 // comment (#) names the columns. name is what messages call it. The error is an
 // *Error that lists up to 20 problems with line and column, or one of reading r.
 func ReadCSV(name string, r io.Reader) (*Manifest, error) {
-	text, err := io.ReadAll(r)
-	if err != nil {
-		return nil, fmt.Errorf("%s: %w", name, err)
+	in := bufio.NewReaderSize(r, 1<<16)
+	if mark, _ := in.Peek(3); string(mark) == "\xef\xbb\xbf" { // that some editors write before the text
+		in.Discard(3)
 	}
-	text = bytes.TrimPrefix(text, []byte("\xef\xbb\xbf")) // mark that some editors write before the text
-	c := csv.NewReader(bytes.NewReader(text))
+	c := csv.NewReader(in)
 	c.Comment, c.TrimLeadingSpace, c.FieldsPerRecord, c.ReuseRecord = '#', true, -1, true
 	b := newBuilder(name, "line")
 	width := 0
@@ -54,14 +53,18 @@ func ReadCSV(name string, r io.Reader) (*Manifest, error) {
 	return b.m, nil
 }
 
-// FromTable makes a manifest of a table that was read elsewhere: names of the
-// columns and rows of as many cells. name is what messages call it, rows count
-// from 1. The error is an *Error.
-func FromTable(name string, names []string, rows [][]string) (*Manifest, error) {
+// FromTable makes a manifest of a table that is read elsewhere: read calls header
+// with the names of the columns, and then row with as many cells for each row. name is
+// what messages call it, rows count from 1. The error is an *Error, or that of
+// read.
+func FromTable(name string, read func(header, row func(cells []string)) error) (*Manifest, error) {
 	b := newBuilder(name, "row")
-	b.header(0, names)
-	for i, cells := range rows {
-		b.add(i+1, cells)
+	n := 0
+	if err := read(func(names []string) { b.header(0, names) }, func(cells []string) {
+		n++
+		b.add(n, cells)
+	}); err != nil {
+		return nil, err
 	}
 	if err := b.err(); err != nil {
 		return nil, err

@@ -30,8 +30,9 @@
 // program panic, or that comes out with numbers a catalog must not hold is a row
 // with its reason and never ends the run; a file that changed since the plan is
 // a row that says so; damaged blocks are noticed by their digest and done again;
-// memory does not grow with the number of objects, but for an entry for each
-// input that is named, listed or linked, or that Job.Like may be asked for.
+// memory does not grow with the number of objects, files, folders, entries of the
+// manifest or rows of an earlier run: what is too much goes to files without names
+// (package spill), but for some twenty bytes a block and one an entry of the manifest.
 //
 // The science of one object is behind Processor; Chain is the real one. Only
 // this package starts goroutines for work.

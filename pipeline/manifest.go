@@ -24,7 +24,8 @@ import (
 // package manifest.
 type Manifest struct {
 	table *manifest.Manifest
-	text  []byte
+	path  string
+	sum   string // SHA-256 of its bytes
 	copy  string // name of its copy in the run folder
 	named string // as the user called it
 }
@@ -35,24 +36,37 @@ const manifestDigest = "manifest"
 // ReadManifest reads a manifest, a table in CSV or FITS; name is what the user
 // called it. The error is an *InputError with every problem.
 func ReadManifest(path, name string) (*Manifest, error) {
-	text, err := os.ReadFile(path)
+	f, err := os.Open(path)
 	if err != nil {
 		return nil, inputError("the manifest %s cannot be read: %s", name, plain(err))
 	}
-	m := &Manifest{text: text, copy: "manifest.csv", named: name}
-	if bytes.HasPrefix(text, []byte("SIMPLE  =")) || bytes.HasPrefix(text, []byte("\x1f\x8b")) {
-		m.copy = "manifest.fits"
-		columns, rows, err := fitsread.ReadTable(path)
-		if err != nil {
-			return nil, inputError("the manifest cannot be used: %s", readFault(err, name).reason)
-		}
-		m.table, err = manifest.FromTable(name, columns, rows)
-		if err != nil {
-			return nil, manifestProblems(err)
-		}
-		return m, nil
+	defer f.Close()
+	m := &Manifest{path: path, copy: "manifest.csv", named: name}
+	start := make([]byte, 9)
+	n, _ := io.ReadFull(f, start)
+	sum := sha256.New()
+	if _, err = f.Seek(0, io.SeekStart); err == nil {
+		_, err = io.Copy(sum, f)
 	}
-	if m.table, err = manifest.ReadCSV(name, bytes.NewReader(text)); err != nil {
+	if err == nil {
+		_, err = f.Seek(0, io.SeekStart)
+	}
+	if err != nil {
+		return nil, inputError("the manifest %s cannot be read: %s", name, plain(err))
+	}
+	m.sum = hex.EncodeToString(sum.Sum(nil))
+	if bytes.HasPrefix(start[:n], []byte("SIMPLE  =")) || bytes.HasPrefix(start[:n], []byte("\x1f\x8b")) {
+		m.copy = "manifest.fits"
+		m.table, err = manifest.FromTable(name, func(header, row func([]string)) error {
+			if err := fitsread.ReadTable(path, header, row); err != nil {
+				return inputError("the manifest cannot be used: %s", readFault(err, name).reason)
+			}
+			return nil
+		})
+	} else {
+		m.table, err = manifest.ReadCSV(name, f)
+	}
+	if err != nil {
 		return nil, manifestProblems(err)
 	}
 	return m, nil
@@ -60,16 +74,17 @@ func ReadManifest(path, name string) (*Manifest, error) {
 
 func manifestProblems(err error) error {
 	var problems *manifest.Error
-	if errors.As(err, &problems) {
+	var input *InputError
+	switch {
+	case errors.As(err, &problems):
 		return &InputError{problems.Problems}
+	case errors.As(err, &input):
+		return input
 	}
 	return &InputError{[]string{err.Error()}}
 }
 
-func (m *Manifest) digest() string {
-	sum := sha256.Sum256(m.text)
-	return hex.EncodeToString(sum[:8])
-}
+func (m *Manifest) digest() string { return m.sum[:16] }
 
 // keep puts a copy of the manifest into the run folder, for commands that go on
 // with the run.
@@ -79,20 +94,32 @@ func (m *Manifest) keep(folder string) error {
 		return err
 	}
 	return writeAtomic(path, func(w io.Writer) error {
-		_, err := w.Write(m.text)
-		return err
+		f, err := os.Open(m.path)
+		if err != nil {
+			return err
+		}
+		defer f.Close()
+		sum := sha256.New()
+		if _, err := io.Copy(io.MultiWriter(w, sum), f); err != nil {
+			return err
+		}
+		if hex.EncodeToString(sum.Sum(nil)) != m.sum {
+			return fmt.Errorf("%s was written to since it was read", m.named)
+		}
+		return nil
 	})
 }
 
 // find returns the entry for an object, nil for none or without manifest.
-func (m *Manifest) find(path string, row int, id string) *manifest.Entry {
+func (m *Manifest) find(path string, row int, id string) (*manifest.Entry, error) {
 	if m == nil {
-		return nil
+		return nil, nil
 	}
-	if i := m.table.Find(path, row, id); i >= 0 {
-		return &m.table.Entries[i]
+	e, err := m.table.Find(path, row, id)
+	if err != nil {
+		return nil, fmt.Errorf("the manifest %s cannot be looked up: %w", m.named, err)
 	}
-	return nil
+	return e, nil
 }
 
 // identifier is a SpectrumFile that tells names and takes others; *fitsread.File
@@ -121,14 +148,18 @@ func (m *Manifest) sift(in *planInput, path string, f SpectrumFile) {
 			}
 			id = who.ObjectID
 		}
-		i := m.table.Find(path, int(row), id)
-		if i < 0 {
+		e, err := m.find(path, int(row), id)
+		if err != nil {
+			in.Rows, in.Skip, in.entries, in.Trouble = 1, nil, nil, err.Error()
+			return
+		}
+		if e == nil {
 			continue
 		}
-		if n := len(in.entries); n == 0 || in.entries[n-1] != i {
-			in.entries = append(in.entries, i)
+		if n := len(in.entries); n == 0 || in.entries[n-1] != e.Number {
+			in.entries = append(in.entries, e.Number)
 		}
-		if m.table.Entries[i].Exclude {
+		if e.Exclude {
 			in.Skip = append(in.Skip, row)
 		}
 	}
@@ -137,12 +168,9 @@ func (m *Manifest) sift(in *planInput, path string, f SpectrumFile) {
 
 // siftUnopened is sift for an input that cannot be opened, a single row.
 func (m *Manifest) siftUnopened(in *planInput, path string) {
-	if m == nil {
-		return
-	}
-	if i := m.table.Find(path, 0, ""); i >= 0 {
-		in.entries = []int{i}
-		if m.table.Entries[i].Exclude {
+	if e, err := m.find(path, 0, ""); err == nil && e != nil {
+		in.entries = []int{e.Number}
+		if e.Exclude {
 			in.Skip = []int64{0}
 			in.leaveOut()
 		}
@@ -177,19 +205,20 @@ func (m *Manifest) unusedYet() []bool {
 	if m == nil {
 		return nil
 	}
-	return make([]bool, len(m.table.Entries))
+	return make([]bool, m.table.Len())
 }
 
 // unused tells which entries of the manifest named no input.
-func (m *Manifest) unused(used []bool) (number int, first string) {
-	for i := range m.table.Entries {
-		if e := &m.table.Entries[i]; !used[i] {
+func (m *Manifest) unused(used []bool) (number int, first string, err error) {
+	err = m.table.Each(func(e *manifest.Entry) error {
+		if !used[e.Number] {
 			if number++; number == 1 {
 				first = fmt.Sprintf("%s (line %d)", cmp.Or(e.File, e.ObjectID), e.Line)
 			}
 		}
-	}
-	return number, first
+		return nil
+	})
+	return number, first, err
 }
 
 // warnManifest says what of the manifest has no effect.
@@ -198,7 +227,11 @@ func (r *Run) warnManifest(used []bool) {
 	if m == nil {
 		return
 	}
-	if n, first := m.unused(used); n > 0 {
+	n, first, err := m.unused(used)
+	if err != nil {
+		r.job.Log.Warn("the manifest cannot be looked through", "manifest", m.named, "error", err)
+	}
+	if n > 0 {
 		r.job.Log.Warn("entries of the manifest name nothing among the inputs", "manifest", m.named, "entries", n, "first", first)
 	}
 	if len(m.table.Ignored) > 0 {
@@ -260,14 +293,15 @@ func (r *Run) known(in *planInput, f SpectrumFile, row int) (*manifest.Entry, id
 		}
 		id = who.ObjectID
 	}
-	return m.find(in.file(r.head.Folder), row, id), names, nil
+	e, err := m.find(in.file(r.head.Folder), row, id)
+	return e, names, err
 }
 
 // unreadObject is the row of an object that could not be read: what the manifest
 // knows about it.
 func (r *Run) unreadObject(in *planInput, row int) catalog.Object {
 	o := blankObject()
-	if e := r.job.Manifest.find(in.file(r.head.Folder), row, ""); e != nil {
+	if e, err := r.job.Manifest.find(in.file(r.head.Folder), row, ""); err == nil && e != nil {
 		o.ObjectID, o.RA, o.Dec, o.Magnitude = e.ObjectID, e.RA, e.Dec, e.Magnitude
 	}
 	return o

@@ -245,11 +245,25 @@ func TestManifestInFITS(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	if e := m.find("x/a.fits", 0, ""); e == nil || e.RA != 33 || e.Dec != -44 || e.Exclude {
+	if e, err := m.find("x/a.fits", 0, ""); err != nil || e == nil || e.RA != 33 || e.Dec != -44 || e.Exclude {
 		t.Errorf("%+v", e)
 	}
-	if e := m.find("x/b.fits", 5, ""); e == nil || !e.Exclude || m.copy != "manifest.fits" || !bytes.Equal(m.text, file.Bytes()) {
-		t.Errorf("%+v", e)
+	if e, err := m.find("x/b.fits", 5, ""); err != nil || e == nil || !e.Exclude {
+		t.Errorf("%+v, %v", e, err)
+	}
+	folder := t.TempDir()
+	if err := m.keep(folder); err != nil {
+		t.Fatal(err)
+	}
+	if kept, err := os.ReadFile(filepath.Join(folder, "manifest.fits")); err != nil || !bytes.Equal(kept, file.Bytes()) {
+		t.Errorf("the copy has %d bytes of %d, %v", len(kept), len(file.Bytes()), err)
+	}
+	// A manifest that changes between its reading and the copy is no longer the same.
+	if err := os.WriteFile(path, append(file.Bytes(), 0), 0o666); err != nil {
+		t.Fatal(err)
+	}
+	if err := m.keep(t.TempDir()); err == nil || !strings.Contains(err.Error(), "known.fits was written to") {
+		t.Errorf("a manifest that changed: %v", err)
 	}
 }
 

@@ -14,7 +14,7 @@ import (
 const Prefix = ".unfinished-"
 
 // File makes a file without a name in folder, or in the folder for temporary
-// files where that one takes none. Closing it gives its space back.
+// files where that is empty or takes none. Closing it gives its space back.
 func File(folder string) (*os.File, error) {
 	f, err := unnamed(folder)
 	if err == nil {
@@ -28,6 +28,9 @@ func File(folder string) (*os.File, error) {
 }
 
 func unnamed(folder string) (*os.File, error) {
+	if folder == "" {
+		folder = os.TempDir()
+	}
 	name := filepath.Join(folder, Prefix+"spill-"+rand.Text())
 	f, err := os.OpenFile(name, os.O_RDWR|os.O_CREATE|os.O_EXCL, 0o600)
 	if err != nil {
