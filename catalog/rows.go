@@ -192,4 +192,8 @@ type Line struct {
 	Blend  string // group of lines fitted together, empty for a line alone
 	Pixels int32
 	Reason string // words of package lines joined by "|"; empty when there is nothing to say
+
+	// Shape of the profile, where a run asks for it; NaN without.
+	H3, H3Err, H4, H4Err   float64 // Gauss-Hermite
+	LorentzKms, LorentzErr float64 // Voigt
 }

@@ -229,7 +229,7 @@ func TestColumnOrder(t *testing.T) {
 		"rival_redshift rival_family gap r_stat lines_seen snr pixels_used wave_min wave_max chi2_dof velocity_frame bary_velocity " +
 		"reason input_digest flux_unit magnitude"
 	const lines = "object_id line rest_wave kind ew_rest ew_rest_err ew_sum ew_sum_err flux flux_err offset_kms offset_err width_kms " +
-		"width_err snr continuum upper_limit blend pixels reason"
+		"width_err snr continuum upper_limit blend pixels reason h3 h3_err h4 h4_err lorentz_kms lorentz_err"
 	if got := names(ObjectColumns()); got != objects {
 		t.Errorf("object columns: %s", got)
 	}
@@ -262,5 +262,5 @@ func TestColumnsCoverFields(t *testing.T) {
 	for _, c := range lineColumns() {
 		fields = append(fields, c.field(&l))
 	}
-	check("Line", fields, 20)
+	check("Line", fields, 26)
 }

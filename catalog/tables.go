@@ -109,5 +109,17 @@ func lineColumns() []column[Line] {
 			func(l *L) any { return &l.Pixels }},
 		{Column{Name: "reason", UCD: "meta.note", Description: "why it was not measured, and what to look at before use"},
 			func(l *L) any { return &l.Reason }},
+		{Column{Name: "h3", UCD: "stat.param;spect.line", Display: "F9.4", Description: "Gauss-Hermite h3 of the profile, where a run asks for it"},
+			func(l *L) any { return &l.H3 }},
+		{Column{Name: "h3_err", UCD: "stat.error;stat.param", Display: "F9.4", Description: "one-sigma error of h3"},
+			func(l *L) any { return &l.H3Err }},
+		{Column{Name: "h4", UCD: "stat.param;spect.line", Display: "F9.4", Description: "Gauss-Hermite h4 of the profile, where a run asks for it"},
+			func(l *L) any { return &l.H4 }},
+		{Column{Name: "h4_err", UCD: "stat.error;stat.param", Display: "F9.4", Description: "one-sigma error of h4"},
+			func(l *L) any { return &l.H4Err }},
+		{Column{Name: "lorentz_kms", Unit: "km/s", UCD: "phys.veloc.dispersion;spect.line", Display: "F11.3", Description: "half width at half maximum of the Lorentzian of a Voigt profile, where a run asks for it"},
+			func(l *L) any { return &l.LorentzKms }},
+		{Column{Name: "lorentz_err", Unit: "km/s", UCD: "stat.error;phys.veloc.dispersion", Display: "F11.3", Description: "one-sigma error of lorentz_kms"},
+			func(l *L) any { return &l.LorentzErr }},
 	}
 }

@@ -114,7 +114,7 @@ type Options struct {
 	// fitted, so that they take nothing from those that are there. nil: all.
 	Expect func(*linelist.Line) bool
 
-	Sky []Band // wavelengths to be noted in Result.OnSky; see SkyBands
+	Sky []Band // wavelengths to be noted in Result.OnSky
 }
 
 func (o Options) withDefaults() Options {

@@ -24,6 +24,7 @@ type Chain struct {
 	meter      *lines.Meter
 	absorbers  *absorbers.Finder
 	thresholds redshift.Thresholds
+	noted      []lines.Band // see Settings.notedBands
 	digests    map[string]string
 }
 
@@ -34,7 +35,7 @@ func NewChain(set Settings, recipes ...RecipeText) (*Chain, error) {
 	if err != nil {
 		return nil, err
 	}
-	c := &Chain{set: set, list: list, meter: lines.NewMeter(list), absorbers: absorbers.NewFinder(list), digests: map[string]string{"lines": list.Digest()}}
+	c := &Chain{set: set, noted: set.notedBands(), list: list, meter: lines.NewMeter(list), absorbers: absorbers.NewFinder(list), digests: map[string]string{"lines": list.Digest()}}
 	tried, err := templates(list, recipes)
 	if err != nil {
 		return nil, err
@@ -100,7 +101,7 @@ func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 	if b.leansOnSky(&res) {
 		obj.Flags |= catalog.OnSkyLine
 	}
-	return Outcome{Object: obj, Lines: lineRows(b.results), Absorbers: b.absorb(&res)}
+	return Outcome{Object: obj, Lines: lineRows(b.results, profileOf(b.chain.set.Lines.Profile)), Absorbers: b.absorb(&res)}
 }
 
 // lay brings a spectrum to the standard frame and onto the grid.
@@ -179,8 +180,8 @@ func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) bool {
 	}
 	opt := lines.Options{
 		Z: res.Redshift, ZErr: res.RedshiftErr, Broad: res.Class == catalog.Quasar,
-		WidthGuess: math.Min(res.Width, maxWidthGuess), Sky: lines.SkyBands(),
-		WindowKms: b.chain.set.Lines.WindowKms, MinGood: b.chain.set.Lines.MinGood, Expect: expectation(res),
+		WidthGuess: math.Min(res.Width, maxWidthGuess), Sky: b.chain.noted,
+		Profile: profileOf(b.chain.set.Lines.Profile), WindowKms: b.chain.set.Lines.WindowKms, MinGood: b.chain.set.Lines.MinGood, Expect: expectation(res),
 	}
 	if b.level.wide {
 		opt.ContinuumSlack, opt.Stark = 0.01, true
@@ -312,14 +313,31 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 	return why
 }
 
+// profileOf names the form of lines that a setting asks for.
+func profileOf(name string) lines.Profile {
+	switch name {
+	case "gauss-hermite":
+		return lines.Hermite
+	case "voigt":
+		return lines.Voigt
+	}
+	return lines.Gaussian
+}
+
 // lineRows copies measured lines into catalog rows.
-func lineRows(results []lines.Result) []catalog.Line {
+func lineRows(results []lines.Result, profile lines.Profile) []catalog.Line {
 	rows := make([]catalog.Line, len(results))
+	nan := math.NaN()
 	for i, r := range results {
+		hermite, voigt := [4]float64{r.Shape[0], r.ShapeErr[0], r.Shape[1], r.ShapeErr[1]}, [2]float64{nan, nan}
+		if profile == lines.Voigt {
+			hermite, voigt = [4]float64{nan, nan, nan, nan}, [2]float64{r.Shape[0], r.ShapeErr[0]}
+		}
 		rows[i] = catalog.Line{
 			Line: r.Name, RestWave: r.RestWave, Kind: r.Kind, EWRest: r.EWRest, EWRestErr: r.EWRestErr, EWSum: r.EWSum, EWSumErr: r.EWSumErr,
 			Flux: r.Flux, FluxErr: r.FluxErr, OffsetKms: r.OffsetKms, OffsetErr: r.OffsetErr, WidthKms: r.WidthKms, WidthErr: r.WidthErr,
 			SNR: r.SNR, Continuum: r.Continuum, UpperLimit: r.UpperLimit, Blend: r.Blend, Pixels: int32(r.Pixels), Reason: lineReason(&r),
+			H3: hermite[0], H3Err: hermite[1], H4: hermite[2], H4Err: hermite[3], LorentzKms: voigt[0], LorentzErr: voigt[1],
 		}
 	}
 	return rows

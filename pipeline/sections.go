@@ -2,6 +2,7 @@ package pipeline
 
 import (
 	"duskline/continuum"
+	"duskline/lines"
 	"duskline/redshift"
 )
 
@@ -91,6 +92,16 @@ func (r RedshiftSettings) check() []Problem {
 type LinesSettings struct {
 	WindowKms float64 `toml:"window_kms" min:"100" max:"30000"`
 	MinGood   float64 `toml:"min_good" min:"0.1" max:"1"`
+	Profile   string  `toml:"profile" oneof:"gaussian,gauss-hermite,voigt"`
+	// SkyBands come beside those of [redshift].
+	SkyBands []float64 `toml:"sky_bands" min:"100" max:"1e6"`
+}
+
+func (l LinesSettings) check() []Problem {
+	if len(l.SkyBands)%2 != 0 {
+		return []Problem{{"lines.sky_bands", "wants pairs of first and last wavelength"}}
+	}
+	return nil
 }
 
 // VerdictSettings is section [verdict].
@@ -120,6 +131,17 @@ func pairs(v []float64) [][2]float64 {
 	var out [][2]float64
 	for i := 0; i+1 < len(v); i += 2 {
 		out = append(out, [2]float64{v[i], v[i+1]})
+	}
+	return out
+}
+
+// notedBands are the wavelengths to be noted of a line: all that the sky spoils.
+func (s Settings) notedBands() []lines.Band {
+	var out []lines.Band
+	for _, list := range [][]float64{s.Redshift.SkyBands, s.Redshift.TelluricBands, s.Lines.SkyBands} {
+		for _, b := range pairs(list) {
+			out = append(out, lines.Band{Lo: b[0], Hi: b[1]})
+		}
 	}
 	return out
 }
