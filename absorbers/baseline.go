@@ -22,6 +22,7 @@ type forest struct {
 	noise    []float64 // variance of that mean, 0 where there is no data
 	level    []float64 // mean level that thin absorption leaves
 	mean     []float64 // mean transmission of the intergalactic medium
+	begin    []float64 // -2 ln of the chance that a run of dark bins begins
 	scatter  float64   // standard deviation of the thin absorption over level, of a bin
 	scale    float64   // typical flux
 	memory   float64   // by how much correlation of neighboring bins raises that of wide means
@@ -164,7 +165,7 @@ func (f *forest) followShaded() bool {
 // prepare lays out the functions of the level.
 func (f *forest) prepare(z float64) {
 	n := len(f.flux)
-	f.mean, f.level = resize(f.mean, n), resize(f.level, n)
+	f.mean, f.level, f.begin = resize(f.mean, n), resize(f.level, n), resize(f.begin, n)
 	if cap(f.keep) < n {
 		f.keep = make([]bool, n+n/2)
 	}
@@ -183,8 +184,9 @@ func (f *forest) prepare(z float64) {
 		w := f.waves[max(i, min(f.first, n-1))]
 		if i%4 == 0 || w/(1+z) > 1200 || i == n-1 {
 			f.mean[i] = hydrogen.Transmission(z, w)
+			f.begin[i] = runBegin(f.mean[i])
 		} else {
-			f.mean[i] = f.mean[i-1]
+			f.mean[i], f.begin[i] = f.mean[i-1], f.begin[i-1]
 		}
 		rest := f.waves[i] / (1 + z)
 		u := (rest - 1100) / 150

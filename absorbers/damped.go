@@ -17,13 +17,17 @@ const (
 	corePart, coreKms = 0.3, 250.0
 	// A system enters the joint fit where twice the logarithm of the likelihood
 	// gains searchGain, and is kept where it gains keepGain.
-	searchGain, keepGain = 16.0, 25.0
+	searchGain, keepGain = 12.0, 20.0
 	// Most systems of a spectrum.
 	mostSystems = 8
 	// So often the level is fitted again with the systems found in it.
 	levelTurns = 2
 	// wingDepth is the depth at which the window of a line ends.
 	wingDepth = 0.04
+	// leastMean is the mean transmission below which nothing is looked for: from
+	// redshift 4.9 on so little light comes through beside any system that
+	// most of what is found is made up (TestOpaqueForest).
+	leastMean = 0.25
 	// aheadKms is how far redward of the object hydrogen may lie.
 	aheadKms = 1500.0
 )
@@ -184,15 +188,13 @@ func (s *Scratch) bestCenter(f *Finder, opt Options) (best cloud, ok bool) {
 	d, fo := &s.damp, &s.forest
 	n := len(fo.flux)
 	d.null = resize(d.null, n+1)
-	for i := range n {
-		d.null[i+1] = d.null[i] + s.cost(i, d.level[i], 1)
-	}
+	s.emptyCosts(d.null, 0, n, func(i int) float64 { return d.level[i] })
 	core := int(coreKms / fo.step)
 	last := min(n-1, s.bin(f, spectrum.SpeedOfLight*math.Log1p(opt.Z)+aheadKms+3*spectrum.SpeedOfLight*max(0, opt.ZErr)/(1+opt.Z)))
 	best.gain = searchGain
 	at, column := -1, 0
 	for i := max(core, fo.first); i <= last; i++ {
-		if s.refused[i] {
+		if s.refused[i] || fo.mean[i] < leastMean {
 			continue
 		}
 		var sum, level, variance, bins float64

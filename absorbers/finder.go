@@ -115,15 +115,17 @@ type Scratch struct {
 	metal metals
 	looks []float64
 
-	forest  forest
-	limit   limits
-	damp    damped
-	joint   joint
-	refused []bool    // bins where no further system is looked for
-	through []float64 // transmission of one line
-	blur    []float64
-	saved   []cloud
-	startX  []float64 // of the members of a joint fit
+	forest                             forest
+	limit                              limits
+	damp                               damped
+	joint                              joint
+	darkFrom, darkOwn, lightOwn, empty []float64
+	inRun                              []bool
+	refused                            []bool    // bins where no further system is looked for
+	through                            []float64 // transmission of one line
+	blur                               []float64
+	saved                              []cloud
+	startX                             []float64 // of the members of a joint fit
 }
 
 // Find appends the systems in front of a background at Options.Z to dst, first

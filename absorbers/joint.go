@@ -17,7 +17,7 @@ const (
 	// columnFloor is the standard error of log N from what the model leaves
 	// out, mostly thin lines crowding at the edge of a damped one: with it the
 	// errors hold in simulation.
-	columnFloor = 0.02
+	columnFloor = 0.04
 	// keepLogN is the least column that is reported from damped lines.
 	keepLogN = 19.3
 	// poorFrom is the chi^2/dof from which a fit is called poor.
@@ -296,21 +296,15 @@ func (s *Scratch) gainOf(f *Finder, k int) float64 {
 	nm := 3 * len(j.members)
 	s.evaluate(f, j.p, j.model, j.shade)
 	gain := 0.0
-	sum := func(sign float64) {
-		for wi, w := range j.windows {
-			half := 0.5 * float64(w.hi-w.lo)
-			for i := w.lo; i < w.hi; i++ {
-				b := i - w.lo
-				level := s.forest.level[i]
-				if sign > 0 {
-					u := float64(b)/half - 1
-					level *= j.p[nm+shapes*wi] + j.p[nm+shapes*wi+1]*u + j.p[nm+shapes*wi+2]*(u*u-1.0/3)
-				}
-				gain -= sign * s.cost(i, level, j.shade[w.at+b])
-			}
+	for wi, w := range j.windows {
+		half := 0.5 * float64(w.hi-w.lo)
+		for i := w.lo; i < w.hi; i++ {
+			b := i - w.lo
+			u := float64(b)/half - 1
+			level := s.forest.level[i] * (j.p[nm+shapes*wi] + j.p[nm+shapes*wi+1]*u + j.p[nm+shapes*wi+2]*(u*u-1.0/3))
+			gain -= s.cost(i, level, j.shade[w.at+b])
 		}
 	}
-	sum(1)
 	mi := 0
 	for j.members[mi] != k {
 		mi++
@@ -320,7 +314,11 @@ func (s *Scratch) gainOf(f *Finder, k int) float64 {
 	j.p[3*mi+1] = 0
 	s.evaluate(f, j.p, j.model, j.shade)
 	j.p[3*mi+1] = old
-	sum(-1)
+	for _, w := range j.windows {
+		s.empty = resize(s.empty, w.hi-w.lo+1)
+		s.emptyCosts(s.empty, w.lo, w.hi, func(i int) float64 { return s.forest.level[i] * j.shade[w.at+i-w.lo] })
+		gain += s.empty[w.hi-w.lo]
+	}
 	s.damp.found[k].gain = gain
 	return gain
 }

@@ -18,6 +18,9 @@ const (
 	limitGain = 30.0
 	// opaque is the depth from which only a lower limit is known.
 	opaque = 3.0
+	// leastDepth is the least depth that is reported: a shallower break may as
+	// well be a fault of the level, see levelDoubt.
+	leastDepth = 0.5
 	// Fewest bins below the limit and above it.
 	limitLeast = 12
 	// limitShift is how well a break alone places a system, km/s: the lines
@@ -44,7 +47,7 @@ func (s *Scratch) findLimit(dst []System, f *Finder, opt Options) []System {
 	fo := &s.forest
 	n := len(fo.flux)
 	last := int((spectrum.SpeedOfLight*math.Log(hydrogen.LymanLimit*(1+opt.Z)*(1+aheadKms/spectrum.SpeedOfLight)) - fo.x0) / fo.step)
-	if last < limitLeast {
+	if last < limitLeast || fo.mean[min(last, n-1)] < leastMean {
 		return dst
 	}
 	s.prepareLimit()
@@ -69,6 +72,9 @@ func (s *Scratch) findLimit(dst []System, f *Finder, opt Options) []System {
 	}
 	for i, center := max(limitLeast, at-9), at; i <= min(center+9, last, n-1); i += 3 {
 		try(i, 1)
+	}
+	if depth < leastDepth {
+		return dst
 	}
 	sys := blank(Hydrogen)
 	sys.Z = fo.waves[at]/hydrogen.LymanLimit - 1
