@@ -7,6 +7,7 @@ import (
 	"math/rand/v2"
 	"os"
 	"slices"
+	"sync"
 	"testing"
 
 	"pgregory.net/rapid"
@@ -49,6 +50,32 @@ func TestMapIsAMap(t *testing.T) {
 		}
 	})
 	empty(t, folder)
+}
+
+// Several goroutines may ask at the same time, also a file.
+func TestMapIsReadByMany(t *testing.T) {
+	m := &Map{Folder: t.TempDir(), Most: 10}
+	defer m.Close()
+	const n = 5000
+	for i := range n {
+		if _, err := m.Put(KeyOf(fmt.Sprint(i)), Value{int64(i), -1}); err != nil {
+			t.Fatal(err)
+		}
+	}
+	var g sync.WaitGroup
+	for k := range 4 {
+		g.Go(func() {
+			for i := k; i < n; i += 3 {
+				if v, ok, err := m.Get(KeyOf(fmt.Sprint(i))); !ok || err != nil || v != (Value{int64(i), -1}) {
+					t.Errorf("%d: %v, %v, %v", i, v, ok, err)
+				}
+			}
+		})
+	}
+	g.Wait()
+	if m.Len() != n {
+		t.Errorf("%d keys", m.Len())
+	}
 }
 
 // A Sorter that spills yields what sorting in memory does, twice.
