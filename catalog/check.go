@@ -39,6 +39,8 @@ func (t *table[T]) verify(row *T) error {
 		c.line(r)
 	case *Absorber:
 		c.absorber(r)
+	case *Index:
+		c.index(r)
 	}
 	return c.err(t.name, textOf(t.columns[0].field(row)))
 }

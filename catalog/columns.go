@@ -8,8 +8,11 @@ import (
 	"unicode/utf8"
 )
 
-// Row is the type of a row: of the object, the line or the absorber table.
-type Row interface{ Object | Line | Absorber }
+// Row is the type of a row: of the object, the line or the absorber table, or
+// of the table of indices.
+type Row interface {
+	Object | Line | Absorber | Index
+}
 
 // Column says what one column means. One table of them drives every format.
 type Column struct {
@@ -49,6 +52,8 @@ func tableOf[T Row]() table[T] {
 		name, columns = "LINES", lineColumns()
 	case Absorber:
 		name, columns = "ABSORBERS", absorberColumns()
+	case Index:
+		name, columns = "INDICES", indexColumns()
 	}
 	t := table[T]{name, columns.([]column[T])}
 	row := new(T)

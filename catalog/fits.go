@@ -9,9 +9,8 @@ import (
 	"duskline/internal/fitsout"
 )
 
-// ErrOrder is returned by FITS for an object after the first line or absorber,
-// and for a line after the first absorber.
-var ErrOrder = errors.New("catalog: objects, lines and absorbers must be written in this order")
+// ErrOrder is returned by FITS for a row after the first one of a later table.
+var ErrOrder = errors.New("catalog: objects, lines, absorbers and indices must be written in this order")
 
 // Widths gathers what a FITS table must know before its first row: the widths
 // of its text columns. Show it every row that will be written, in any order,
@@ -20,6 +19,7 @@ type Widths struct {
 	objects widths[Object]
 	lines   widths[Line]
 	absorb  widths[Absorber]
+	indices widths[Index]
 }
 
 // AddObject takes account of an object.
@@ -31,16 +31,20 @@ func (w *Widths) AddLine(l *Line) { w.lines.add(l) }
 // AddAbsorber takes account of an absorber.
 func (w *Widths) AddAbsorber(a *Absorber) { w.absorb.add(a) }
 
+// AddIndex takes account of an index.
+func (w *Widths) AddIndex(i *Index) { w.indices.add(i) }
+
 // Merge takes account of every row that o has seen.
 func (w *Widths) Merge(o *Widths) {
 	w.objects.merge(o.objects.size)
 	w.lines.merge(o.lines.size)
 	w.absorb.merge(o.absorb.size)
+	w.indices.merge(o.indices.size)
 }
 
 // LengthenIDs makes room for n more bytes in every object_id.
 func (w *Widths) LengthenIDs(n int) {
-	for _, size := range [][]int{w.objects.size, w.lines.size, w.absorb.size} {
+	for _, size := range [][]int{w.objects.size, w.lines.size, w.absorb.size, w.indices.size} {
 		if size != nil {
 			size[0] += n
 		}
@@ -53,11 +57,12 @@ type widthsJSON struct {
 	Objects   []int `json:"objects"`
 	Lines     []int `json:"lines"`
 	Absorbers []int `json:"absorbers"`
+	Indices   []int `json:"indices,omitempty"`
 }
 
 // MarshalJSON writes the sizes of all columns, in their order.
 func (w *Widths) MarshalJSON() ([]byte, error) {
-	return json.Marshal(widthsJSON{w.objects.size, w.lines.size, w.absorb.size})
+	return json.Marshal(widthsJSON{w.objects.size, w.lines.size, w.absorb.size, w.indices.size})
 }
 
 // UnmarshalJSON replaces w by what MarshalJSON wrote. Sizes of other columns
@@ -68,7 +73,7 @@ func (w *Widths) UnmarshalJSON(text []byte) error {
 		return err
 	}
 	*w = Widths{}
-	return errors.Join(w.objects.set(sizes.Objects), w.lines.set(sizes.Lines), w.absorb.set(sizes.Absorbers))
+	return errors.Join(w.objects.set(sizes.Objects), w.lines.set(sizes.Lines), w.absorb.set(sizes.Absorbers), w.indices.set(sizes.Indices))
 }
 
 // widths holds the largest size of every text column in bytes.
@@ -116,7 +121,8 @@ func (w *widths[T]) set(size []int) error {
 }
 
 // FITS writes a catalog as one FITS file: an empty primary HDU with the
-// provenance, then the binary tables OBJECTS, LINES and ABSORBERS. Text is held as ASCII;
+// provenance, then the binary tables OBJECTS, LINES and ABSORBERS, and INDICES
+// where it is asked for. Text is held as ASCII;
 // other characters are written as escapes such as \u00e9. NaN is the null of
 // numbers. Bytes depend on rows, widths and provenance only.
 type FITS struct {
@@ -125,6 +131,7 @@ type FITS struct {
 	objects *fitsTable[Object]
 	lines   *fitsTable[Line]
 	absorb  *fitsTable[Absorber]
+	indices *fitsTable[Index]
 }
 
 // NewFITS begins a file at the current position of out. The widths must have
@@ -187,6 +194,9 @@ func (f *FITS) beginLines() error {
 
 // WriteAbsorber adds a row to ABSORBERS; no object or line can follow.
 func (f *FITS) WriteAbsorber(a *Absorber) error {
+	if f.indices != nil {
+		return ErrOrder
+	}
 	if err := f.beginAbsorbers(); err != nil {
 		return err
 	}
@@ -216,13 +226,48 @@ func (f *FITS) beginAbsorbers() error {
 	return nil
 }
 
+// WriteIndex adds a row to INDICES; no row of another table can follow.
+func (f *FITS) WriteIndex(i *Index) error {
+	if err := f.BeginIndices(); err != nil {
+		return err
+	}
+	return f.indices.write(i)
+}
+
+// BeginIndices makes the table INDICES, which is not there otherwise.
+func (f *FITS) BeginIndices() error {
+	if f.indices != nil {
+		return nil
+	}
+	if err := f.beginAbsorbers(); err != nil {
+		return err
+	}
+	if err := f.absorb.out.Close(); err != nil {
+		return err
+	}
+	h := &fitsout.Header{}
+	h.Comment("The column object_id points to the table OBJECTS. NaN stands for a number that is not known.")
+	indices, err := newFITSTable(f.out, h, &f.widths.indices)
+	if err != nil {
+		return err
+	}
+	f.indices = indices
+	return nil
+}
+
 // Close completes all tables, also where they have no rows, and the file. It
 // does not close the underlying file.
 func (f *FITS) Close() error {
 	if err := f.beginAbsorbers(); err != nil {
 		return err
 	}
-	if err := f.absorb.out.Close(); err != nil {
+	var err error
+	if f.indices != nil {
+		err = f.indices.out.Close()
+	} else {
+		err = f.absorb.out.Close()
+	}
+	if err != nil {
 		return err
 	}
 	return f.out.Close()

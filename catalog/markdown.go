@@ -16,7 +16,7 @@ Version of the columns: ` + FormatVersion + `.
 
 The object table is the HDU OBJECTS of catalog.fits, catalog.csv and objects.parquet. The line table is the HDU
 LINES of catalog.fits and lines.parquet, the absorber table the HDU ABSORBERS and absorbers.parquet. ` + "`object_id`" + `
-joins them.
+joins them. Where the setting lines.indices names a file, the table of indices is the HDU INDICES and indices.parquet.
 
 A number that is not known is NaN in FITS, null in Parquet and an empty field in CSV. Whole numbers and text are
 always there; text that is not known is empty. CSV holds the decimals given below, FITS and Parquet the full double.
@@ -28,6 +28,7 @@ all other characters are written as escapes such as \u00e9.
 	markdownTable(&b, "Object table", ObjectColumns())
 	markdownTable(&b, "Line table", LineColumns())
 	markdownTable(&b, "Absorber table", AbsorberColumns())
+	markdownTable(&b, "Table of indices", IndexColumns())
 	b.WriteString("\n## Flags\n\nBits of `flags`, low bit first. `flag_names` has the names of those that are set, joined by `|`.\n\n" +
 		"| bit | value | name | says |\n|---|---|---|---|\n")
 	for bit, f := range flagTable {

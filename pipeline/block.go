@@ -100,6 +100,11 @@ func (r *Run) fillBlock(folder string, b *block) error {
 	); err != nil {
 		return err
 	}
+	if r.hasIndices() {
+		if err := writeTable(note, r, folder, indicesName, b, func(o *Outcome) []catalog.Index { return o.Indices }); err != nil {
+			return err
+		}
+	}
 	text, err := note.text()
 	if err != nil {
 		return err
@@ -176,7 +181,7 @@ func (r *Run) checkBlock(number int) error {
 	if err != nil {
 		return err
 	}
-	for _, name := range tableNames {
+	for _, name := range r.blockFiles() {
 		got, err := noteOf(filepath.Join(r.blockFolder(number), name))
 		if err != nil {
 			return fmt.Errorf("block %d of %s is %w: %s: %s", number, r.job.Out, ErrDamaged, name, plain(err))

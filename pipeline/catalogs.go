@@ -94,10 +94,14 @@ type catalogs struct {
 	objects   *catalog.Parquet[catalog.Object]
 	lines     *catalog.Parquet[catalog.Line]
 	absorbers *catalog.Parquet[catalog.Absorber]
+	indices   *catalog.Parquet[catalog.Index] // nil where the run has none
+	names     []string
 }
 
-func (w *workshop) openCatalogs(p catalog.Provenance, widths *catalog.Widths) (*catalogs, error) {
-	c := &catalogs{shop: w}
+// openCatalogs opens the files of those names, which are catalogNames, or
+// these and indicesName.
+func (w *workshop) openCatalogs(names []string, p catalog.Provenance, widths *catalog.Widths) (*catalogs, error) {
+	c := &catalogs{shop: w, names: names}
 	open := func(name string, begin func(f *os.File) (io.Closer, error)) error {
 		f, err := os.OpenFile(filepath.Join(w.path, name), os.O_RDWR|os.O_CREATE|os.O_EXCL, 0o666)
 		if err != nil {
@@ -129,6 +133,12 @@ func (w *workshop) openCatalogs(p catalog.Provenance, widths *catalog.Widths) (*
 			c.absorbers, err = catalog.NewParquet[catalog.Absorber](f, p)
 			return c.absorbers, err
 		}))
+	if err == nil && len(names) > len(catalogNames) {
+		err = open(indicesName, func(f *os.File) (w io.Closer, err error) {
+			c.indices, err = catalog.NewParquet[catalog.Index](f, p)
+			return c.indices, err
+		})
+	}
 	return c, err
 }
 
@@ -142,15 +152,15 @@ func (c *catalogs) finish(out string) (map[string]int64, error) {
 			err = c.files[i].Sync()
 		}
 		if err != nil {
-			return nil, fmt.Errorf("%s cannot be completed: %w", catalogNames[i], err)
+			return nil, fmt.Errorf("%s cannot be completed: %w", c.names[i], err)
 		}
 		info, err := c.files[i].Stat()
 		if err != nil {
 			return nil, err
 		}
-		sizes[catalogNames[i]] = info.Size()
+		sizes[c.names[i]] = info.Size()
 	}
-	for _, name := range catalogNames {
+	for _, name := range c.names {
 		if err := os.Rename(filepath.Join(c.shop.path, name), filepath.Join(out, name)); err != nil {
 			return nil, fmt.Errorf("%s cannot be put into place: %w", name, err)
 		}

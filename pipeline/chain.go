@@ -25,6 +25,7 @@ type Chain struct {
 	absorbers  *absorbers.Finder
 	thresholds redshift.Thresholds
 	noted      []lines.Band // see Settings.notedBands
+	indices    []lines.Index
 	digests    map[string]string
 }
 
@@ -50,7 +51,7 @@ func NewChain(set Settings, recipes ...RecipeText) (*Chain, error) {
 		return nil, err
 	}
 	c.thresholds = set.thresholds()
-	return c, nil
+	return c, c.readIndices()
 }
 
 // Digests identifies the line list and every template family.
@@ -101,7 +102,7 @@ func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 	if b.leansOnSky(&res) {
 		obj.Flags |= catalog.OnSkyLine
 	}
-	return Outcome{Object: obj, Lines: lineRows(b.results, profileOf(b.chain.set.Lines.Profile)), Absorbers: b.absorb(&res)}
+	return Outcome{Object: obj, Indices: b.indexRows(&res), Lines: lineRows(b.results, profileOf(b.chain.set.Lines.Profile)), Absorbers: b.absorb(&res)}
 }
 
 // lay brings a spectrum to the standard frame and onto the grid.

@@ -18,6 +18,7 @@
 //	RUN/plan.toml            the settings of the plan, for people
 //	RUN/blocks/000000/       objects.parquet, lines.parquet, absorbers.parquet, block.json with their digests
 //	RUN/catalog.fits         tables OBJECTS, LINES and ABSORBERS
+//	RUN/indices.parquet      and INDICES, where the setting lines.indices asks for them
 //	RUN/catalog.csv          the object table
 //	RUN/objects.parquet      RUN/lines.parquet  RUN/absorbers.parquet
 //	RUN/summary.json         counts and digests

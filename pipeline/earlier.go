@@ -230,6 +230,11 @@ func (r *Run) loadBlock(number int) []Outcome {
 	}) {
 		return nil
 	}
+	if r.hasIndices() && !loadOwned(filepath.Join(folder, indicesName), note.IndexCounts, func(i int, x *catalog.Index) {
+		out[i].Indices = append(out[i].Indices, *x)
+	}) {
+		return nil
+	}
 	return out
 }
 

@@ -26,11 +26,32 @@ const (
 	objectsName   = "objects.parquet"
 	linesName     = "lines.parquet"
 	absorbersName = "absorbers.parquet"
+	indicesName   = "indices.parquet"
 	summaryName   = "summary.json"
 )
 
-// tableNames are the files of a block beside its note.
+// tableNames are the files of a block beside its note; indicesName comes to them
+// in runs that have indices.
 var tableNames = [...]string{objectsName, linesName, absorbersName}
+
+// hasIndices reports whether the run has a table of indices.
+func (r *Run) hasIndices() bool { return r.head.Digests[IndicesDigest] != "" }
+
+// blockFiles lists the files of a block beside its note.
+func (r *Run) blockFiles() []string {
+	if r.hasIndices() {
+		return append(tableNames[:len(tableNames):len(tableNames)], indicesName)
+	}
+	return tableNames[:]
+}
+
+// catalogFiles lists the files that Gather writes, beside the summary.
+func (r *Run) catalogFiles() []string {
+	if r.hasIndices() {
+		return append(catalogNames[:len(catalogNames):len(catalogNames)], indicesName)
+	}
+	return catalogNames[:]
+}
 
 // LogFile returns the path of the log of a run, of its own for a shard: not
 // every file system lets several machines append to one. It is kept out of the

@@ -21,7 +21,7 @@ import (
 // error is a *MissingError if a block is not there or damaged.
 //
 // Objects whose object_id came before get a number after it, such as "x#2", so
-// that object_id is a key; their lines and absorbers follow.
+// that object_id is a key; their lines, absorbers and indices follow.
 func (r *Run) Gather(ctx context.Context) (*Summary, error) { return r.gather(ctx, false) }
 
 // GatherPresent does as Gather without the blocks that are missing. Catalogs
@@ -100,7 +100,7 @@ func (g *gathering) all(ctx context.Context) error {
 		g.summary = old
 		return nil
 	}
-	out, err := shop.openCatalogs(g.provenance(g.missingText()), &g.widths)
+	out, err := shop.openCatalogs(g.catalogFiles(), g.provenance(g.missingText()), &g.widths)
 	defer out.close()
 	if err != nil {
 		return err
@@ -115,6 +115,15 @@ func (g *gathering) all(ctx context.Context) error {
 	if err := fanOut(ctx, eachOwned(ctx, g, absorbersName, func(n *blockNote) []int { return n.AbsorberCounts },
 		func(a *catalog.Absorber) *string { return &a.ObjectID }), out.fits.WriteAbsorber, out.absorbers.Write); err != nil {
 		return err
+	}
+	if g.hasIndices() {
+		if err := out.fits.BeginIndices(); err != nil {
+			return err
+		}
+		if err := fanOut(ctx, eachOwned(ctx, g, indicesName, func(n *blockNote) []int { return n.IndexCounts },
+			func(i *catalog.Index) *string { return &i.ObjectID }), out.fits.WriteIndex, out.indices.Write); err != nil {
+			return err
+		}
 	}
 	if g.summary.Files, err = out.finish(g.out); err != nil {
 		return err
@@ -171,7 +180,7 @@ func (g *gathering) inPlace() *Summary {
 	if err != nil || old.Run != g.id || old.Complete != g.summary.Complete || old.Blocks != g.summary.Blocks {
 		return nil
 	}
-	for _, name := range catalogNames {
+	for _, name := range g.catalogFiles() {
 		info, err := os.Stat(filepath.Join(g.out, name))
 		if err != nil || info.Size() != old.Files[name] {
 			return nil

@@ -23,9 +23,11 @@ type blockNote struct {
 	Internal int    `json:"internal_errors"`
 	// IDs are the object_id of the rows, not yet made unique in the run.
 	IDs []string `json:"ids"`
-	// Rows of the line and of the absorber table for each object.
+	// Rows of the line and of the absorber table for each object, and of the
+	// table of indices where there is one.
 	LineCounts     []int               `json:"line_counts"`
 	AbsorberCounts []int               `json:"absorber_counts"`
+	IndexCounts    []int               `json:"index_counts,omitempty"`
 	Counts         *counts             `json:"counts"`
 	Widths         *catalog.Widths     `json:"widths"`
 	Files          map[string]fileNote `json:"files"`
@@ -55,6 +57,13 @@ func newBlockNote(r *Run, b *block) *blockNote {
 		}
 		for k := range b.outcomes[i].Absorbers {
 			note.Widths.AddAbsorber(&b.outcomes[i].Absorbers[k])
+		}
+		if r.hasIndices() {
+			note.IndexCounts = append(note.IndexCounts, len(b.outcomes[i].Indices))
+			note.Counts.Indices += int64(len(b.outcomes[i].Indices))
+		}
+		for k := range b.outcomes[i].Indices {
+			note.Widths.AddIndex(&b.outcomes[i].Indices[k])
 		}
 	}
 	return note
@@ -107,7 +116,7 @@ func (r *Run) readNoteSum(number int) (*blockNote, string, error) {
 	case note.Plan != r.id || note.Block != number:
 		return damaged("it belongs to block %d of another plan", note.Block)
 	case note.Objects != r.blockLen(number) || len(note.LineCounts) != note.Objects ||
-		len(note.AbsorberCounts) != note.Objects || len(note.IDs) != note.Objects:
+		len(note.AbsorberCounts) != note.Objects || len(note.IDs) != note.Objects || r.hasIndices() && len(note.IndexCounts) != note.Objects:
 		return damaged("it has %d objects, want %d", note.Objects, r.blockLen(number))
 	case note.Counts == nil || note.Widths == nil:
 		return damaged("%s lacks counts or widths", noteName)

@@ -10,6 +10,7 @@ type Outcome struct {
 	Object    catalog.Object
 	Lines     []catalog.Line
 	Absorbers []catalog.Absorber
+	Indices   []catalog.Index
 }
 
 // Worker holds one worker's scratch. It is used by one goroutine at a time.
@@ -20,10 +21,13 @@ type Worker interface {
 	// not share memory with the worker.
 	//
 	// The engine fills ObjectID, SourceFile, SourceRow, and InputDigest where
-	// they are left empty, and the object_id of every line and
-	// absorber.
+	// they are left empty, and the object_id of every line, absorber
+	// and index.
 	Process(s *spectrum.Spectrum) Outcome
 }
+
+// IndicesDigest is the name of the digest of the file of indices.
+const IndicesDigest = "indices"
 
 // Processor is the immutable science of a run, shared by its workers.
 type Processor interface {
@@ -31,5 +35,8 @@ type Processor interface {
 	// Digests identifies everything beside the settings that the answer
 	// depends on, such as template recipes and the line list: name to digest.
 	// They are frozen in the plan and written into every catalog.
+	//
+	// The name IndicesDigest says that outcomes have indices; a run then has
+	// a table of them.
 	Digests() map[string]string
 }

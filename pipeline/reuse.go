@@ -37,6 +37,8 @@ func reachOf(old, now *planHead) (reach, []string) {
 		}
 		switch name {
 		case settingsDigest, calibrationDigest, layoutsDigest, manifestDigest:
+		case IndicesDigest:
+			note(measured, name)
 		default:
 			note(every, name)
 		}

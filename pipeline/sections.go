@@ -93,6 +93,7 @@ type LinesSettings struct {
 	WindowKms float64 `toml:"window_kms" min:"100" max:"30000"`
 	MinGood   float64 `toml:"min_good" min:"0.1" max:"1"`
 	Profile   string  `toml:"profile" oneof:"gaussian,gauss-hermite,voigt"`
+	Indices   string  `toml:"indices"`
 	// SkyBands come beside those of [redshift].
 	SkyBands []float64 `toml:"sky_bands" min:"100" max:"1e6"`
 }

@@ -33,9 +33,10 @@ type Summary struct {
 
 // counts is what adds up over blocks.
 type counts struct {
-	Objects    int64                       `json:"objects"`   // rows of the object table
-	Lines      int64                       `json:"lines"`     // rows of the line table
-	Absorbers  int64                       `json:"absorbers"` // rows of the absorber table
+	Objects    int64                       `json:"objects"`           // rows of the object table
+	Lines      int64                       `json:"lines"`             // rows of the line table
+	Absorbers  int64                       `json:"absorbers"`         // rows of the absorber table
+	Indices    int64                       `json:"indices,omitempty"` // rows of the table of indices
 	Verdicts   map[string]int64            `json:"verdicts"`
 	Classes    map[string]map[string]int64 `json:"classes"` // class, then verdict
 	Flags      map[string]int64            `json:"flags"`
@@ -86,6 +87,7 @@ func (c *counts) addAll(b *counts) {
 	c.Objects += b.Objects
 	c.Lines += b.Lines
 	c.Absorbers += b.Absorbers
+	c.Indices += b.Indices
 	c.Unreadable += b.Unreadable
 	for v, n := range b.Verdicts {
 		c.Verdicts[v] += n

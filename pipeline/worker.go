@@ -107,6 +107,9 @@ func (r *result) complete(from origin) {
 	for i := range r.outcome.Absorbers {
 		r.outcome.Absorbers[i].ObjectID = o.ObjectID
 	}
+	for i := range r.outcome.Indices {
+		r.outcome.Indices[i].ObjectID = o.ObjectID
+	}
 }
 
 // inspect makes sure that the rows may be written: one that breaks the rules
@@ -121,6 +124,11 @@ func (w *objectWorker) inspect(r *result) *fault {
 	for i := range r.outcome.Absorbers {
 		if err == nil {
 			err = catalog.Check(&r.outcome.Absorbers[i])
+		}
+	}
+	for i := range r.outcome.Indices {
+		if err == nil {
+			err = catalog.Check(&r.outcome.Indices[i])
 		}
 	}
 	if err == nil {
