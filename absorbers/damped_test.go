@@ -297,18 +297,29 @@ func TestFindDegenerate(t *testing.T) {
 	}
 }
 
+// One quasar of S/N 10 with its forest alone, without and with a damped system, and
+// a whole survey spectrum to 9800 Angstrom with emission lines and two doublets.
 func BenchmarkFind(b *testing.B) {
 	f := fullFinder(b)
-	for name, columns := range map[string][]float64{"none": nil, "one": {20.8}} {
-		b.Run(name, func(b *testing.B) {
-			q := makeQuasar(rand.New(rand.NewPCG(4, 4)), 10, columns...)
+	none := makeQuasar(rand.New(rand.NewPCG(4, 4)), 10)
+	one := makeQuasar(rand.New(rand.NewPCG(4, 4)), 10, 20.8)
+	red := redSide(rand.New(rand.NewPCG(4, 5)), one.z, 10)
+	paintDoublet(&red, f.doublets[0], 1.6, 14, 50)
+	paintDoublet(&red, f.doublets[1], one.z-0.2, 14.3, 50)
+	for _, bc := range []struct {
+		name string
+		z    float64
+		arms []Arm
+	}{{"none", none.z, []Arm{none.arm}}, {"one", one.z, []Arm{one.arm}}, {"whole", one.z, []Arm{one.arm, red}}} {
+		b.Run(bc.name, func(b *testing.B) {
 			var sc Scratch
-			out := f.Find(nil, []Arm{q.arm}, Options{Z: q.z}, &sc)
+			out := f.Find(nil, bc.arms, Options{Z: bc.z}, &sc)
 			b.ReportAllocs()
 			for b.Loop() {
-				out = f.Find(out[:0], []Arm{q.arm}, Options{Z: q.z}, &sc)
+				out = f.Find(out[:0], bc.arms, Options{Z: bc.z}, &sc)
 			}
-			b.ReportMetric(float64(len(q.arm.Wave)), "pixels")
+			b.ReportMetric(float64(len(sc.track.x)), "pixels")
+			b.ReportMetric(float64(len(out)), "systems")
 		})
 	}
 }

@@ -31,32 +31,37 @@ const (
 type envelope struct {
 	level, err []float64 // NaN where there is none
 	keep       []bool
+	root       []float64 // of the weights
 	sum        [8][]float64 // running sums of w, wx, wx^2, wx^3, wx^4, wy, wxy, wx^2y
 }
 
 // fit follows emission lines and runs over absorption lines: in a window around
-// every pixel a weighted parabola, with pixels that lie low or high left out of
-// all windows. err is the standard error of the parabola at the pixel.
-func (e *envelope) fit(t *track) {
+// every pixel from start on a weighted parabola, with pixels that lie low or high
+// left out of all windows. err is the standard error of the parabola at the
+// pixel.
+func (e *envelope) fit(t *track, start int) {
 	n := len(t.x)
 	e.level, e.err = resize(e.level, n), resize(e.err, n)
 	if cap(e.keep) < n {
 		e.keep = make([]bool, n+n/2)
 	}
 	e.keep = e.keep[:n]
+	e.root = resize(e.root, n)
 	for i := range e.keep {
-		e.keep[i] = t.weight[i] > 0
+		e.keep[i] = i >= start && t.weight[i] > 0
+		e.level[i], e.err[i] = math.NaN(), math.NaN()
+		e.root[i] = math.Sqrt(t.weight[i])
 	}
 	for k := range e.sum {
 		e.sum[k] = resize(e.sum[k], n+1)
 	}
 	for round := range clipRounds {
-		for first := 0; first < n; {
+		for first := start; first < n; {
 			end := index(t.x, t.x[first]+envelopePiece*envelopeHalf)
 			e.piece(t, first, end)
 			first = end
 		}
-		if round == clipRounds-1 || !e.clip(t) {
+		if round == clipRounds-1 || !e.clip(t, start) {
 			return
 		}
 	}
@@ -144,22 +149,22 @@ func (e *envelope) at(x float64, lo, hi int) (level, err float64) {
 
 // clip judges every pixel against the present continuum and reports whether
 // any changed sides. Neighbors of a deep pixel go with it.
-func (e *envelope) clip(t *track) bool {
+func (e *envelope) clip(t *track, start int) bool {
 	changed := false
 	n := len(t.x)
-	pull := func(i int) float64 { return (t.flux[i] - e.level[i]) * math.Sqrt(t.weight[i]) }
+	pull := func(i int) float64 { return (t.flux[i] - e.level[i]) * e.root[i] }
 	// Running sums of weight and of weighted residual, in room that lines uses.
 	ws, rs := e.sum[0], e.sum[1]
-	ws[0], rs[0] = 0, 0
-	for i := range n {
+	ws[start], rs[start] = 0, 0
+	for i := start; i < n; i++ {
 		w, r := t.weight[i], t.flux[i]-e.level[i]
 		if w == 0 || math.IsNaN(r) {
 			w, r = 0, 0
 		}
 		ws[i+1], rs[i+1] = ws[i]+w, rs[i]+w*r
 	}
-	lo, hi := 0, 0
-	for i := range n {
+	lo, hi := start, start
+	for i := start; i < n; i++ {
 		for hi < n && t.x[hi] <= t.x[i]+clipKms {
 			hi++
 		}
@@ -177,7 +182,7 @@ func (e *envelope) clip(t *track) bool {
 		}
 		if keep && p < 0 {
 			for _, j := range [2]int{i - 1, i + 1} {
-				if j >= 0 && j < n && t.weight[j] > 0 && pull(j) < -2*clipLow {
+				if j >= start && j < n && t.weight[j] > 0 && pull(j) < -2*clipLow {
 					keep = false
 				}
 			}

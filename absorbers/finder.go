@@ -156,7 +156,7 @@ func (f *Finder) Find(dst []System, arms []Arm, opt Options, scratch *Scratch) [
 	// Doublets are looked for redward of Lyman alpha of the background.
 	first := index(s.track.x, spectrum.SpeedOfLight*math.Log(f.series[0].Wave*(1+opt.Z))+behindKms)
 	s.distrustErrors(first)
-	s.red.fit(&s.track)
+	s.red.fit(&s.track, first)
 	s.metal.memory = s.noiseMemory(first)
 	return s.findDoublets(dst, f, opt, first)
 }
