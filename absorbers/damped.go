@@ -29,7 +29,7 @@ const (
 	// most of what is found is made up (TestOpaqueForest).
 	leastMean = 0.25
 	// aheadKms is how far redward of the object hydrogen may lie.
-	aheadKms = 1500.0
+	aheadKms = 3000.0
 )
 
 // damped is the state of the search for damped lines.

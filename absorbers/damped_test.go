@@ -200,6 +200,49 @@ func TestOpaqueForest(t *testing.T) {
 	}
 }
 
+// A damped system that falls towards the quasar, 2,500 km/s beyond its redshift, is
+// found, marked as proximate; so is one 1,500 km/s in front of it.
+func TestProximate(t *testing.T) {
+	f := fullFinder(t)
+	var sc Scratch
+	for _, v := range []float64{-1500, 2500} {
+		found := 0
+		const n = 12
+		for k := range uint64(n) {
+			r := rand.New(rand.NewPCG(61, k))
+			q := makeQuasarAt(r, 2.8, 15)
+			z := q.z + (1+q.z)*v/c
+			dimQuasar(r, &q, cloudTruth{z, 20.8, 30})
+			for _, s := range hydrogenOnly(f.Find(nil, []Arm{q.arm}, Options{Z: q.z}, &sc)) {
+				if math.Abs(s.Z-z)*c/(1+z) < 500 && math.Abs(s.LogN-20.8) < 0.3 {
+					found++
+					if s.Flags&Proximate == 0 {
+						t.Errorf("%+.0f km/s: not marked as proximate", v)
+					}
+				}
+			}
+		}
+		t.Logf("%+.0f km/s: %d of %d", v, found, n)
+		if found < 10 {
+			t.Errorf("%+.0f km/s: found with the right column in %d of %d", v, found, n)
+		}
+	}
+}
+
+// dimQuasar multiplies the Lyman lines of a system into a quasar, with a little more
+// noise.
+func dimQuasar(r *rand.Rand, q *madeUp, clouds ...cloudTruth) {
+	for i, w := range q.arm.Wave {
+		for _, x := range clouds {
+			for _, line := range seriesForTests[:3] {
+				q.arm.Flux[i] *= math.Exp(-line.OpticalDepth(math.Pow(10, x.logN), x.b, w/(1+x.z)))
+			}
+		}
+		q.arm.Flux[i] += 0.02 * r.NormFloat64()
+		q.arm.Ivar[i] = 1 / (1/q.arm.Ivar[i] + 0.02*0.02)
+	}
+}
+
 // Two systems whose wings overlap are fitted together and both come out.
 func TestOverlap(t *testing.T) {
 	f := fullFinder(t)
@@ -210,18 +253,7 @@ func TestOverlap(t *testing.T) {
 		q := makeQuasar(r, 20)
 		zLow := q.z - 0.45
 		a, b := cloudTruth{zLow, 20.7, 30}, cloudTruth{zLow + 0.06, 20.5, 30} // 5,000 km/s apart
-		for i, w := range q.arm.Wave {
-			for _, x := range []cloudTruth{a, b} {
-				for l, line := range seriesForTests {
-					if l < 3 {
-						d := math.Exp(-line.OpticalDepth(math.Pow(10, x.logN), x.b, w/(1+x.z)))
-						q.arm.Flux[i] *= d
-					}
-				}
-			}
-			q.arm.Flux[i] += 0.02 * r.NormFloat64()
-			q.arm.Ivar[i] = 1 / (1/q.arm.Ivar[i] + 0.02*0.02)
-		}
+		dimQuasar(r, &q, a, b)
 		systems := hydrogenOnly(f.Find(nil, []Arm{q.arm}, Options{Z: q.z}, &sc))
 		both := 0
 		for _, x := range []cloudTruth{a, b} {

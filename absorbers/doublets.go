@@ -47,6 +47,9 @@ const (
 	mostNominees = 3000
 	// proximateKms is how near to the object a system is called proximate.
 	proximateKms = 3000.0
+	// ownKms is how far in front of a background with lines of its own a system
+	// lies at least.
+	ownKms = 3000.0
 	// behindKms is how far redward of the object a system may lie.
 	behindKms = 3000.0
 )
@@ -74,6 +77,9 @@ func (s *Scratch) findDoublets(dst []System, f *Finder, opt Options, first int) 
 	s.normalize()
 	m.found = m.found[:0]
 	end := spectrum.SpeedOfLight*math.Log1p(opt.Z) + behindKms
+	if opt.OwnLines {
+		end = spectrum.SpeedOfLight*math.Log1p(opt.Z) - ownKms
+	}
 	for half := boxFirst; half <= boxLast; half *= boxGrowth {
 		if first+1 < len(t.x) && half*boxGrowth < t.dx[first] {
 			continue // one pixel, as the next one

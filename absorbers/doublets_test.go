@@ -139,6 +139,28 @@ func TestAloneAlIII(t *testing.T) {
 	}
 }
 
+// Behind a background with lines of its own those lines are no systems, while
+// doublets in front of it are.
+func TestOwnLines(t *testing.T) {
+	f := fullFinder(t)
+	r := rand.New(rand.NewPCG(39, 7))
+	for _, tc := range []struct {
+		z    float64
+		own  bool
+		want int
+	}{{1.0, false, 1}, {1.0, true, 1}, {1.198, false, 1}, {1.198, true, 0}} {
+		a := noisyCopy(bare(20, [4]float64{2796.3522, tc.z, 1.2, 90}, [4]float64{2803.531, tc.z, 0.9, 90}), r)
+		got := f.Find(nil, []Arm{a}, Options{Z: 1.2, OwnLines: tc.own}, nil)
+		if len(got) != tc.want {
+			t.Errorf("redshift %g, own lines %v: %+v", tc.z, tc.own, got)
+		}
+	}
+	q := makeQuasar(rand.New(rand.NewPCG(9, 9)), 10, 20.8)
+	if got := hydrogenOnly(f.Find(nil, []Arm{q.arm}, Options{Z: q.z, OwnLines: true}, nil)); len(got) > 0 {
+		t.Errorf("hydrogen in front of a galaxy: %+v", got)
+	}
+}
+
 // A line of something else beside one of the two does not enter its sum: the
 // other line tells what the doublet can have there.
 func TestForeignLine(t *testing.T) {

@@ -119,7 +119,10 @@ func (s *Scratch) measureDoublet(f *Finder, c candidate, opt Options) (sys measu
 	if ratio < 1-4*err-0.1 || ratio > d.ratio+4*err+0.3 {
 		return sys, false
 	}
-	if ratio < 1-2*err || ratio > d.ratio+2*err {
+	// Whether something else lies on a line is told by the sums without limits.
+	ra, rb := s.sumLine(c.x, low, high, 0, 0), s.sumLine(c.x+d.split, low, high, 0, 0)
+	raw := ra.ew * d.strong.Wave / (rb.ew * d.weak.Wave)
+	if e := raw * math.Hypot(ra.err/ra.ew, rb.err/rb.ew); rb.ew <= 0 || raw < 1-2*e || raw > d.ratio+2*e {
 		sys.Flags |= RatioOff
 	}
 	if ratio-1 < 0.2 && math.Abs(ratio-1) < 2*err {

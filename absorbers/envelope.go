@@ -31,7 +31,7 @@ const (
 type envelope struct {
 	level, err []float64 // NaN where there is none
 	keep       []bool
-	root       []float64 // of the weights
+	root       []float64    // of the weights
 	sum        [8][]float64 // running sums of w, wx, wx^2, wx^3, wx^4, wy, wxy, wx^2y
 }
 

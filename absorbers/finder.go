@@ -20,7 +20,7 @@ const (
 // Flags are remarks on one system.
 type Flags uint32
 
-// The flags, low bit first, with the meanings of the absorber table.
+// The flags, low bit first, with the bits and meanings of the absorber table.
 const (
 	FlatPart     Flags = 1 << iota // column density and Doppler parameter cannot be told apart
 	PoorFit                        // the profile describes the pixels badly
@@ -32,7 +32,7 @@ const (
 	RatioOff                       // the doublet ratio is outside what atomic physics allows
 	Saturated                      // the doublet ratio is that of saturated lines
 	Proximate                      // within 3,000 km/s of the object
-	InForest                       // bluer than Lyman-alpha of the object
+	_                              // in the forest: no search of this version sets it
 	PartlyHidden                   // pixels of its lines are masked or outside the coverage
 )
 
@@ -58,6 +58,11 @@ type System struct {
 // Options steers a search.
 type Options struct {
 	Z, ZErr float64 // redshift of the background
+	// OwnLines says that the background has interstellar and stellar absorption
+	// of its own, as galaxies have: hydrogen is not looked for, because such
+	// lines blueward of Lyman alpha (Si II 1190, Si III 1207, C III 1176) pass
+	// for sub-damped systems, and doublets must lie ownKms in front of it.
+	OwnLines bool
 }
 
 // doublet is a resonance doublet of the line list.
@@ -148,7 +153,7 @@ func (f *Finder) Find(dst []System, arms []Arm, opt Options, scratch *Scratch) [
 	if len(s.track.x) < 2*envelopeLeast {
 		return dst
 	}
-	if s.forest.fill(&s.track, opt.Z) && s.forest.follow(opt.Z) {
+	if !opt.OwnLines && s.forest.fill(&s.track, opt.Z) && s.forest.follow(opt.Z) {
 		s.findDamped(f, opt)
 		dst = s.reportHydrogen(dst, f, opt)
 		dst = s.findLimit(dst, f, opt)

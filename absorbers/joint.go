@@ -53,21 +53,14 @@ func (s *Scratch) fitClouds(f *Finder, k int) bool {
 	s.gather(f, k)
 	before := append(s.saved[:0], d.found...)
 	s.saved = before
-	chi2, ok := s.solveJoint(f)
+	ok := s.solveJoint(f)
 	c := &d.found[k]
 	ok = ok && c.logN >= keepLogN && c.nErr < 1 && s.gainOf(f, k) > keepGain
 	if !ok {
 		copy(d.found, before)
 		return false
 	}
-	dof := 0.0
-	for _, w := range j.windows {
-		for i := w.lo; i < w.hi; i++ {
-			if s.forest.noise[i] > 0 {
-				dof++
-			}
-		}
-	}
+	chi2, dof := s.describe(f)
 	for _, m := range j.members {
 		d.found[m].chi2, d.found[m].dof = chi2, max(1, dof-float64(3*len(j.members)))
 		d.found[m].lap = len(j.members) > 1
@@ -75,6 +68,25 @@ func (s *Scratch) fitClouds(f *Finder, k int) bool {
 		d.found[m].hidden = s.goodShare(lo, hi) < 0.95
 	}
 	return true
+}
+
+// describe returns chi^2 of the bins of the joint fit, of noise and the scatter of
+// single bins, and how many there are. The fit itself counts correlated bins for
+// less, which would let any model pass.
+func (s *Scratch) describe(f *Finder) (chi2, bins float64) {
+	j, fo := &s.joint, &s.forest
+	s.evaluate(f, j.p, j.model, nil)
+	for _, w := range j.windows {
+		for i := w.lo; i < w.hi; i++ {
+			if fo.noise[i] > 0 {
+				m := j.model[w.at+i-w.lo]
+				sd, r := fo.scatter*m, fo.flux[i]-m
+				chi2 += r * r / (fo.noise[i] + sd*sd)
+				bins++
+			}
+		}
+	}
+	return chi2, bins
 }
 
 // gather lists the systems that share a window with system k and lays out the
@@ -223,7 +235,7 @@ func (s *Scratch) prior(i int) (value, err float64) {
 // forest, dimmed like the light. The result is unbiased where the model is
 // right, because residuals then have mean zero whatever the weights. Values and
 // errors go into damp.found.
-func (s *Scratch) solveJoint(f *Finder) (chi2 float64, ok bool) {
+func (s *Scratch) solveJoint(f *Finder) bool {
 	d, j, fo := &s.damp, &s.joint, &s.forest
 	nm := 3 * len(j.members)
 	n := nm + shapes*len(j.windows)
@@ -242,7 +254,6 @@ func (s *Scratch) solveJoint(f *Finder) (chi2 float64, ok bool) {
 	j.a, j.b, j.chol, j.cov = resize(j.a, n*n), resize(j.b, n), resize(j.chol, n*n), resize(j.cov, n*n)
 	j.step, j.best = resize(j.step, n), resize(j.best, n)
 	lambda := 1e-2
-	chi2 = math.Inf(1)
 	for range 14 {
 		s.evaluate(f, j.p, j.model, j.shade)
 		for _, w := range j.windows {
@@ -255,7 +266,7 @@ func (s *Scratch) solveJoint(f *Finder) (chi2 float64, ok bool) {
 				}
 			}
 		}
-		chi2 = s.chi2(j.p, j.model)
+		chi2 := s.chi2(j.p, j.model)
 		s.linearize(f, n)
 		improved := false
 		for range 6 {
@@ -277,7 +288,7 @@ func (s *Scratch) solveJoint(f *Finder) (chi2 float64, ok bool) {
 		}
 	}
 	if !s.invertJoint(n) {
-		return chi2, false
+		return false
 	}
 	for mi, m := range j.members {
 		c := &d.found[m]
@@ -286,7 +297,7 @@ func (s *Scratch) solveJoint(f *Finder) (chi2 float64, ok bool) {
 		c.x, c.logN, c.lnB = j.p[i], j.p[i+1], j.p[i+2]
 		c.xErr, c.nErr, c.bErr = math.Sqrt(j.cov[i*n+i]), math.Sqrt(j.cov[(i+1)*n+i+1]), math.Sqrt(j.cov[(i+2)*n+i+2])
 	}
-	return chi2, true
+	return true
 }
 
 // gainOf returns by how much -2 ln likelihood of the bins of the joint fit

@@ -6,7 +6,7 @@ import (
 	"duskline/redshift"
 )
 
-// sightline is a worker's search for absorbers in front of quasars.
+// sightline is a worker's search for absorbers in front of quasars and galaxies.
 type sightline struct {
 	scratch absorbers.Scratch
 	arms    []absorbers.Arm
@@ -24,7 +24,7 @@ func (b *Bench) absorb(res *redshift.Result) []catalog.Absorber {
 	for i := range b.arms {
 		l.arms = append(l.arms, absorbers.Arm(b.arms[i]))
 	}
-	l.found = b.chain.absorbers.Find(l.found[:0], l.arms, absorbers.Options{Z: res.Redshift, ZErr: res.RedshiftErr}, &l.scratch)
+	l.found = b.chain.absorbers.Find(l.found[:0], l.arms, absorbers.Options{Z: res.Redshift, ZErr: res.RedshiftErr, OwnLines: res.Class == catalog.Galaxy}, &l.scratch)
 	if len(l.found) == 0 {
 		return nil
 	}
@@ -32,27 +32,18 @@ func (b *Bench) absorb(res *redshift.Result) []catalog.Absorber {
 	for i, s := range l.found {
 		rows[i] = catalog.Absorber{
 			ZAbs: s.Z, ZAbsErr: s.ZErr, LogNHI: s.LogN, LogNHIErr: s.LogErr, BKms: s.B, BErr: s.BErr, LinesUsed: s.Lines,
-			Flags: absorberFlags(s.Flags), Kind: s.Kind, EWRest: s.EW, EWRestErr: s.EWErr, EWSecond: s.Second, EWSecondErr: s.SecondErr,
+			Flags: catalog.AbsorberFlags(s.Flags), Kind: s.Kind, EWRest: s.EW, EWRestErr: s.EWErr, EWSecond: s.Second, EWSecondErr: s.SecondErr,
 			Significance: s.Significance,
 		}
 	}
 	return rows
 }
 
-// absorberFlags gives the remarks of package absorbers the bits of the catalog.
-func absorberFlags(f absorbers.Flags) (out catalog.AbsorberFlags) {
-	for _, k := range [...]struct {
-		from absorbers.Flags
-		to   catalog.AbsorberFlags
-	}{
-		{absorbers.FlatPart, catalog.FlatPart}, {absorbers.PoorFit, catalog.PoorFit}, {absorbers.AtBound, catalog.AtBound},
-		{absorbers.OneLine, catalog.OneLine}, {absorbers.BreakOnly, catalog.BreakOnly}, {absorbers.LowerLimit, catalog.LowerLimit},
-		{absorbers.Overlaps, catalog.Overlaps}, {absorbers.RatioOff, catalog.RatioOff}, {absorbers.Saturated, catalog.Saturated},
-		{absorbers.Proximate, catalog.Proximate}, {absorbers.InForest, catalog.InForest}, {absorbers.PartlyHidden, catalog.PartlyHidden},
-	} {
-		if f&k.from != 0 {
-			out |= k.to
-		}
-	}
-	return out
-}
+// The remarks of package absorbers have the bits of the catalog: an index out of
+// range here does not compile.
+var _ = [1]struct{}{}[uint32(absorbers.FlatPart)^uint32(catalog.FlatPart)|uint32(absorbers.PoorFit)^uint32(catalog.PoorFit)|
+	uint32(absorbers.AtBound)^uint32(catalog.AtBound)|uint32(absorbers.OneLine)^uint32(catalog.OneLine)|
+	uint32(absorbers.BreakOnly)^uint32(catalog.BreakOnly)|uint32(absorbers.LowerLimit)^uint32(catalog.LowerLimit)|
+	uint32(absorbers.Overlaps)^uint32(catalog.Overlaps)|uint32(absorbers.RatioOff)^uint32(catalog.RatioOff)|
+	uint32(absorbers.Saturated)^uint32(catalog.Saturated)|uint32(absorbers.Proximate)^uint32(catalog.Proximate)|
+	uint32(absorbers.PartlyHidden)^uint32(catalog.PartlyHidden)]
