@@ -8,12 +8,14 @@
 //  2. baseline.go fits the mean level that the forest of thin lines leaves of the
 //     background, and the scatter about it.
 //  3. damped.go looks for damped and sub-damped systems along that level with
-//     the likelihood of a set of column densities.
+//     the likelihood of a set of column densities, against runs of dark bins that
+//     a crowded forest has by itself (darkrun.go).
 //  4. joint.go fits systems whose lines overlap together, with all Lyman lines in
 //     the coverage, by Voigt profiles convolved with the instrument.
 //  5. limit.go looks for the break of a Lyman-limit system.
 //  6. doublets.go looks for Mg II, C IV, Si IV and Al III on a continuum that
-//     follows emission lines (envelope.go), and measures both lines.
+//     follows emission lines (envelope.go), with errors that match the scatter
+//     (noise.go). pairfit.go judges each pair, doubletsum.go measures both lines.
 //
 // growth.go turns equivalent widths into column densities.
 //
