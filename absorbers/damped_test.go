@@ -330,7 +330,8 @@ func TestFindDegenerate(t *testing.T) {
 }
 
 // One quasar of S/N 10 with its forest alone, without and with a damped system, and
-// a whole survey spectrum to 9800 Angstrom with emission lines and two doublets.
+// a whole survey spectrum to 9800 Angstrom with emission lines and two doublets, and
+// a galaxy at redshift 0.6.
 func BenchmarkFind(b *testing.B) {
 	f := fullFinder(b)
 	none := makeQuasar(rand.New(rand.NewPCG(4, 4)), 10)
@@ -340,15 +341,16 @@ func BenchmarkFind(b *testing.B) {
 	paintDoublet(&red, f.doublets[1], one.z-0.2, 14.3, 50)
 	for _, bc := range []struct {
 		name string
-		z    float64
+		opt  Options
 		arms []Arm
-	}{{"none", none.z, []Arm{none.arm}}, {"one", one.z, []Arm{one.arm}}, {"whole", one.z, []Arm{one.arm, red}}} {
+	}{{"none", Options{Z: none.z}, []Arm{none.arm}}, {"one", Options{Z: one.z}, []Arm{one.arm}}, {"whole", Options{Z: one.z}, []Arm{one.arm, red}},
+		{"galaxy", Options{Z: 0.6, OwnLines: true}, []Arm{bare(10)}}} {
 		b.Run(bc.name, func(b *testing.B) {
 			var sc Scratch
-			out := f.Find(nil, bc.arms, Options{Z: bc.z}, &sc)
+			out := f.Find(nil, bc.arms, bc.opt, &sc)
 			b.ReportAllocs()
 			for b.Loop() {
-				out = f.Find(out[:0], bc.arms, Options{Z: bc.z}, &sc)
+				out = f.Find(out[:0], bc.arms, bc.opt, &sc)
 			}
 			b.ReportMetric(float64(len(sc.track.x)), "pixels")
 			b.ReportMetric(float64(len(out)), "systems")

@@ -76,10 +76,7 @@ func (s *Scratch) findDoublets(dst []System, f *Finder, opt Options, first int) 
 	t, m := &s.track, &s.metal
 	s.normalize()
 	m.found = m.found[:0]
-	end := spectrum.SpeedOfLight*math.Log1p(opt.Z) + behindKms
-	if opt.OwnLines {
-		end = spectrum.SpeedOfLight*math.Log1p(opt.Z) - ownKms
-	}
+	end := opt.last()
 	for half := boxFirst; half <= boxLast; half *= boxGrowth {
 		if first+1 < len(t.x) && half*boxGrowth < t.dx[first] {
 			continue // one pixel, as the next one

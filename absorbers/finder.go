@@ -65,6 +65,15 @@ type Options struct {
 	OwnLines bool
 }
 
+// last returns c ln(1+z) of the farthest doublet that is looked for.
+func (o Options) last() float64 {
+	x := spectrum.SpeedOfLight * math.Log1p(o.Z)
+	if o.OwnLines {
+		return x - ownKms
+	}
+	return x + behindKms
+}
+
 // doublet is a resonance doublet of the line list.
 type doublet struct {
 	kind         string
@@ -160,6 +169,15 @@ func (f *Finder) Find(dst []System, arms []Arm, opt Options, scratch *Scratch) [
 	}
 	// Doublets are looked for redward of Lyman alpha of the background.
 	first := index(s.track.x, spectrum.SpeedOfLight*math.Log(f.series[0].Wave*(1+opt.Z))+behindKms)
+	// Beyond the last place of any doublet only the continuum needs a little more.
+	end := 0.0
+	for _, d := range f.doublets {
+		end = max(end, opt.last()+spectrum.SpeedOfLight*math.Log(d.weak.Wave)+2*envelopeHalf)
+	}
+	s.track.truncate(index(s.track.x, end))
+	if len(s.track.x)-first < 2*envelopeLeast {
+		return dst
+	}
 	s.distrustErrors(first)
 	s.red.fit(&s.track, first)
 	s.metal.memory = s.noiseMemory(first)

@@ -115,6 +115,7 @@ func (s *Scratch) lay(arms []Arm) {
 
 func (t *track) truncate(n int) {
 	t.wave, t.x, t.flux, t.weight, t.sres = t.wave[:n], t.x[:n], t.flux[:n], t.weight[:n], t.sres[:n]
+	t.dx = t.dx[:min(n, len(t.dx))] // laid last
 }
 
 func (t *track) add(a *Arm, p int) {

@@ -95,3 +95,27 @@ func TestChancePairs(t *testing.T) {
 		}
 	}
 }
+
+// TestGalaxyDoublets: in front of the galaxies, at their published redshifts, hardly
+// anything is found: nothing is known to be there, and stellar lines make no pairs.
+func TestGalaxyDoublets(t *testing.T) {
+	dir := outside.Spectra(t)
+	finder := stretchedFinder(t, 1)
+	galaxies, found := 0, 0
+	for _, p := range readPublished(t, dir) {
+		if p.class != "GALAXY" || !(p.z >= 0) {
+			continue
+		}
+		f, err := fitsread.Open(filepath.Join(dir, p.file), fitsread.Options{})
+		if err != nil {
+			continue
+		}
+		f.Close()
+		galaxies++
+		found += len(finder.Find(nil, sightlineArms(t, filepath.Join(dir, p.file)), absorbers.Options{Z: p.z, OwnLines: true}, nil))
+	}
+	t.Logf("%d doublets in front of %d galaxies", found, galaxies)
+	if galaxies < 50 || found > 2 {
+		t.Errorf("%d doublets in front of %d galaxies", found, galaxies)
+	}
+}
