@@ -290,9 +290,11 @@ func medianSNR(s *Scratch, flux, ivar []float64) float64 {
 func (f *Finder) nominate(s *Scratch, index int, width float64) {
 	fam := f.families[index]
 	s.shifts = s.shifts[:0]
-	narrow := fam.narrowest(width) / (speedOfLight * ln10 * s.full.step) // pixels
+	pixel := speedOfLight * ln10 * s.full.step
+	narrow := fam.narrowest(width) / pixel
 	l := &s.full
-	if fam.headed() || narrow >= 1.5*coarseFactor {
+	broad := width >= 1.5*coarseFactor*pixel
+	if fam.headed() || broad {
 		l = &s.coarse
 	}
 	if fam.headed() {
@@ -309,6 +311,12 @@ func (f *Finder) nominate(s *Scratch, index int, width float64) {
 	for _, shift := range s.shifts {
 		p := peak{family: fam, index: index, width: width, shift: shift}
 		p.fit = s.bench.evaluate(l, fam, width, shift)
+		if broad && !fam.headed() {
+			// The scan knows no forest and no overlap of components: broad
+			// lines can be a width off.
+			s.bench.climb(l, &p, 0.5*width/(speedOfLight*ln10), 6)
+			s.bench.climb(l, &p, 0.15*width/(speedOfLight*ln10), 2)
+		}
 		s.score(&p)
 		if p.fit.active > 0 {
 			s.peaks = append(s.peaks, p)

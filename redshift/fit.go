@@ -12,6 +12,7 @@ type fit struct {
 // bench holds the scratch of joint fits.
 type bench struct {
 	draws    [maxComponents]drawing
+	veil     drawing   // transmission less one of the intergalactic medium
 	weighted []float64 // weight times template
 	spline   []float64 // B^T W T, row-major size x m
 	project  []float64 // A^-1 B^T W T
@@ -97,9 +98,14 @@ func (b *bench) evaluate(l *level, f *Family, width, shift float64) fit {
 // draw draws the components of f that reach into the level, absorption times
 // the continuum, and sets the bounds of their amplitudes. The forest takes its
 // share of the continuum redward of Lyman-alpha: what is left blueward at high
-// redshift is no continuum to take a share of.
+// redshift is no continuum to take a share of. Where a family has a forest the
+// blue sides of its emission lines are behind it too.
 func (b *bench) draw(l *level, f *Family, width, shift float64) {
 	b.m = 0
+	b.veil.reset(l.n)
+	if f.forested {
+		forest().draw(&b.veil, l.n, l.start-shift, l.step, math.Pow(10, shift)-1)
+	}
 	for c := range f.components {
 		comp := &f.components[c]
 		d := &b.draws[c]
@@ -118,6 +124,12 @@ func (b *bench) draw(l *level, f *Family, width, shift float64) {
 			case comp.absorption:
 				for i, c := range l.cont[r.lo:r.hi] {
 					v[i] *= c
+				}
+			default:
+				for _, q := range b.veil.runs {
+					for i := max(q.lo, r.lo); i < min(q.hi, r.hi); i++ {
+						d.values[i] *= 1 + b.veil.values[i]
+					}
 				}
 			}
 		}
