@@ -167,6 +167,7 @@ func TestForestAgainstTransmission(t *testing.T) {
 		t.Fatalf("only %d Lyman lines", len(series))
 	}
 	table := forest()
+	var row []float64
 	rapid.Check(t, func(t *rapid.T) {
 		z := rapid.Float64Range(0.01, 7.5).Draw(t, "z")
 		const n = 2000
@@ -174,7 +175,7 @@ func TestForestAgainstTransmission(t *testing.T) {
 		step := rapid.SampledFrom([]float64{1e-4, 4e-4}).Draw(t, "step")
 		var d drawing
 		d.reset(n)
-		table.draw(&d, n, start, step, z)
+		table.draw(&d, &row, n, start, step, z)
 	pixels:
 		for i, v := range d.values {
 			x := start + float64(i)*step
@@ -205,12 +206,12 @@ func TestForestAgainstTransmission(t *testing.T) {
 	})
 	var d drawing
 	d.reset(100)
-	table.draw(&d, 100, 3.0, 1e-4, 0)
-	table.draw(&d, 100, 3.2, 1e-4, 3)
+	table.draw(&d, &row, 100, 3.0, 1e-4, 0)
+	table.draw(&d, &row, 100, 3.2, 1e-4, 3)
 	if len(d.runs) != 0 {
 		t.Errorf("drew %v at redshift zero or redward of Lyman alpha", d.runs)
 	}
-	table.draw(&d, 100, 3.0, 1e-4, 40)
+	table.draw(&d, &row, 100, 3.0, 1e-4, 40)
 	for i, v := range d.values {
 		if !(v >= -1 && v <= 0) {
 			t.Fatalf("pixel %d: transmission less one is %g at a redshift beyond the table", i, v)

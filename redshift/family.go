@@ -76,6 +76,16 @@ func (c *component) sigmaKms(t *term, familyWidth float64) float64 {
 	return familyWidth * c.scale
 }
 
+// lyman returns a family of Lyman-alpha and the forest alone.
+func (f *Family) lyman() *Family {
+	part := *f
+	part.components = []component{
+		{name: "forest", absorption: true, forest: true, scale: 1, most: 1.3},
+		{name: "lya", scale: 1, terms: []term{{name: "Lya", logWave: forestEdgeLog, amp: 1}}},
+	}
+	return &part
+}
+
 // wide reports whether the component reaches over most of a spectrum.
 func (c *component) wide() bool {
 	return c.forest || c.stack != nil || len(c.edges) > 0 || len(c.heads) > 0
@@ -130,7 +140,7 @@ func (d *drawing) include(lo, hi int) {
 	d.runs = append(d.runs[:i+1], d.runs[j:]...)
 }
 
-// draw draws the component at 1+z = 10^shift on n pixels that start at log10
+// draw draws all of the component but its forest at 1+z = 10^shift on n pixels that start at log10
 // wavelength start with the given step. Absorption shapes come out negative:
 // the caller multiplies them by the continuum.
 func (c *component) draw(d *drawing, n int, start, step, shift, familyWidth float64) {
@@ -149,9 +159,6 @@ func (c *component) draw(d *drawing, n int, start, step, shift, familyWidth floa
 	}
 	if c.stack != nil {
 		c.stack.shape.draw(d, n, start-shift, step)
-	}
-	if c.forest {
-		forest().draw(d, n, start-shift, step, math.Pow(10, shift)-1)
 	}
 }
 

@@ -56,7 +56,9 @@ type Finder struct {
 	families []*Family
 	opt      Options
 	step     float64
-	survive  [ladderSize]float64
+	series   *Family             // Lyman-alpha and the forest, over the range of the forested families
+	survive  [ladderSize]float64 // of a line's norm beside the spline, on full pixels
+	binned   [ladderSize]float64 // the same on those of the coarse level
 }
 
 // NewFinder returns a finder for spectra on grids of the given step in dex.
@@ -64,12 +66,18 @@ func NewFinder(families []*Family, step float64, opt Options) (*Finder, error) {
 	if len(families) == 0 {
 		return nil, errors.New("no template families")
 	}
+	var series *Family
 	for _, f := range families {
-		if f.forested {
-			forest() // built here, not in the first spectrum
+		if !f.forested {
+			continue
 		}
+		forest() // built here, not in the first spectrum
+		if series == nil {
+			series = f.lyman()
+		}
+		series.ZMin, series.ZMax = math.Min(series.ZMin, f.ZMin), math.Max(series.ZMax, f.ZMax)
 	}
-	return &Finder{families: families, opt: opt, step: step, survive: survival(opt.KnotSpacing / step)}, nil
+	return &Finder{series: series, families: families, opt: opt, step: step, survive: survival(opt.KnotSpacing / step), binned: survival(opt.KnotSpacing / (coarseFactor * step))}, nil
 }
 
 // Families returns the families in the order in which they are tried.
@@ -81,9 +89,13 @@ type Scratch struct {
 	x           []float64
 	full        level
 	coarse      level
+	rough       level // for breaks
 	bench       bench
 	scan        scanner
+	scanCoarse  scanner
 	shifts      []float64
+	breaks      []float64 // shifts at which the forest alone describes the data best
+	drops       []float64
 	peaks       []peak
 	tmp         []float64
 	smooth      []float64
@@ -106,6 +118,7 @@ func (f *Finder) NewScratch() *Scratch { return &Scratch{} }
 
 const (
 	coarseFactor = 4
+	roughFactor  = 16
 	// ridge carries splines over gaps, see continuum.Normal.Ridge.
 	ridge = 1e-9
 	// finalists are refined once more with the tempered weights.
@@ -126,8 +139,9 @@ func (f *Finder) Find(g *spectrum.Grid, s *Scratch) Result {
 		return res
 	}
 	s.peaks = s.peaks[:0]
-	s.scan.resp.reset(&s.full)
-	s.scan.dense.reset()
+	s.scan.reset(&s.full)
+	s.scanCoarse.reset(&s.coarse)
+	f.sweep(s)
 	for index, fam := range f.families {
 		for _, width := range fam.Widths {
 			f.nominate(s, index, width)
@@ -229,7 +243,8 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 	s.weight = append(s.weight[:0], l.weight...)
 	capOutliers(l)
 	s.coarse.bin(l, coarseFactor)
-	if !l.prepare(basis, f.opt.Stiffness, ridge) || !s.coarse.prepare(basis, f.opt.Stiffness, ridge) {
+	s.rough.bin(l, roughFactor)
+	if !l.prepare(basis, f.opt.Stiffness, ridge) || !s.coarse.prepare(basis, f.opt.Stiffness, ridge) || !s.rough.prepare(basis, f.opt.Stiffness, ridge) {
 		res.FewPixels = true
 		res.Reason = "too few usable pixels for a continuum"
 		return false
@@ -285,56 +300,8 @@ func medianSNR(s *Scratch, flux, ivar []float64) float64 {
 	return spectrum.Median(s.tmp)
 }
 
-// nominate appends the trial redshifts of one family and width with their
-// joint fits, on binned pixels where all shapes are wide.
-func (f *Finder) nominate(s *Scratch, index int, width float64) {
-	fam := f.families[index]
-	s.shifts = s.shifts[:0]
-	pixel := speedOfLight * ln10 * s.full.step
-	narrow := fam.narrowest(width) / pixel
-	l := &s.full
-	broad := width >= 1.5*coarseFactor*pixel
-	if fam.headed() || broad {
-		l = &s.coarse
-	}
-	if fam.headed() {
-		// Bands have no place in the scan; such families have short ranges, and
-		// the whole of it is tried.
-		first, last := math.Log10(1+fam.ZMin), math.Log10(1+fam.ZMax)
-		d := 4 * s.full.step
-		for k := 0; first+float64(k)*d <= last; k++ {
-			s.shifts = append(s.shifts, first+float64(k)*d)
-		}
-	} else {
-		s.shifts = s.scan.nominate(s.shifts, &s.full, fam, width, &f.survive, f.opt.Nominees, max(6, int(3*narrow)))
-	}
-	for _, shift := range s.shifts {
-		p := peak{family: fam, index: index, width: width, shift: shift}
-		p.fit = s.bench.evaluate(l, fam, width, shift)
-		if broad && !fam.headed() {
-			// The scan knows no forest and no overlap of components: broad
-			// lines can be a width off.
-			s.bench.climb(l, &p, 0.5*width/(speedOfLight*ln10), 6)
-			s.bench.climb(l, &p, 0.15*width/(speedOfLight*ln10), 2)
-		}
-		s.score(&p)
-		if p.fit.active > 0 {
-			s.peaks = append(s.peaks, p)
-		}
-	}
-}
-
 // judge refines the most promising peaks on the full pixels and sorts by score.
 func (f *Finder) judge(s *Scratch) {
-	byScore := func(a, b peak) int {
-		switch {
-		case a.score < b.score:
-			return -1
-		case a.score > b.score:
-			return 1
-		}
-		return 0
-	}
 	slices.SortStableFunc(s.peaks, byScore)
 	if len(s.peaks) == 0 {
 		return
@@ -365,7 +332,7 @@ func (f *Finder) judge(s *Scratch) {
 	s.peaks = kept
 	for i := range s.peaks {
 		p := &s.peaks[i]
-		h := s.full.step * math.Max(1, 0.5*p.family.narrowest(p.width)/(speedOfLight*ln10*s.full.step))
+		h := s.full.step * math.Max(1, 0.5*p.family.narrowest(p.width)/s.pixelKms())
 		p.fit = s.bench.evaluate(&s.full, p.family, p.width, p.shift)
 		s.bench.climb(&s.full, p, h, 4)
 		s.score(p)
@@ -384,6 +351,11 @@ func (f *Finder) judge(s *Scratch) {
 			s.score(p)
 		}
 		slices.SortStableFunc(s.peaks, byScore)
+		// Where the weights changed much the winner may have further to go.
+		win := &s.peaks[0]
+		s.bench.climb(&s.full, win, s.full.step*math.Max(1, 0.25*win.width/s.pixelKms()), 4)
+		s.bench.climb(&s.full, win, 0.5*s.full.step, 3)
+		s.score(win)
 	}
 }
 

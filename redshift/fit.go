@@ -13,6 +13,7 @@ type fit struct {
 type bench struct {
 	draws    [maxComponents]drawing
 	veil     drawing   // transmission less one of the intergalactic medium
+	row      []float64 // the same in the rest frame
 	weighted []float64 // weight times template
 	spline   []float64 // B^T W T, row-major size x m
 	project  []float64 // A^-1 B^T W T
@@ -104,12 +105,20 @@ func (b *bench) draw(l *level, f *Family, width, shift float64) {
 	b.m = 0
 	b.veil.reset(l.n)
 	if f.forested {
-		forest().draw(&b.veil, l.n, l.start-shift, l.step, math.Pow(10, shift)-1)
+		forest().draw(&b.veil, &b.row, l.n, l.start-shift, l.step, math.Pow(10, shift)-1)
 	}
 	for c := range f.components {
 		comp := &f.components[c]
 		d := &b.draws[c]
 		comp.draw(d, l.n, l.start, l.step, shift, width)
+		if comp.forest {
+			for _, r := range b.veil.runs {
+				for i, v := range b.veil.values[r.lo:r.hi] {
+					d.values[r.lo+i] += v
+				}
+				d.include(r.lo, r.hi)
+			}
+		}
 		if len(d.runs) == 0 {
 			continue
 		}

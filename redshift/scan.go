@@ -173,6 +173,12 @@ type scanner struct {
 	dense    denseScan
 }
 
+// reset readies the scanner for a level.
+func (s *scanner) reset(l *level) {
+	s.resp.reset(l)
+	s.dense.reset()
+}
+
 // nominate scans family f at one width over its redshift range and appends up
 // to limit trial shifts, best first, at least apart pixels from each other.
 func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, surv *[ladderSize]float64, limit, apart int) []float64 {

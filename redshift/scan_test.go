@@ -1,7 +1,6 @@
 package redshift
 
 import (
-	"fmt"
 	"math"
 	"math/rand/v2"
 	"slices"
@@ -297,25 +296,22 @@ func TestSurvivalAgainstProjection(t *testing.T) {
 
 // BenchmarkNominate scans all families and widths over one spectrum.
 func BenchmarkNominate(b *testing.B) {
-	families := builtInFamilies(b)
-	for _, n := range []int{4600} {
-		b.Run(fmt.Sprintf("%d_pixels", n), func(b *testing.B) {
-			l := noisyLevel(rand.New(rand.NewPCG(2, 2)), n)
-			surv := survival(251)
-			var s scanner
-			var shifts []float64
-			b.ReportAllocs()
-			for b.Loop() {
-				s.resp.reset(l)
-				for _, f := range families {
-					if f.headed() {
-						continue
-					}
-					for _, width := range f.Widths {
-						shifts = s.nominate(shifts[:0], l, f, width, &surv, 14, 6)
-					}
-				}
+	finder := newTestFinder(b, builtInFamilies(b))
+	s := finder.NewScratch()
+	grids, _ := synthetic(1, 1)
+	var res Result
+	if !finder.prepare(grids[0], s, &res) {
+		b.Fatal(res.Reason)
+	}
+	b.ReportAllocs()
+	for b.Loop() {
+		s.scan.reset(&s.full)
+		s.scanCoarse.reset(&s.coarse)
+		finder.sweep(s)
+		for _, f := range finder.families {
+			for _, width := range f.Widths {
+				finder.trials(s, f, width)
 			}
-		})
+		}
 	}
 }
