@@ -56,6 +56,7 @@ const (
 	FrameAssumed                     // air/vacuum or velocity frame was not stated and was assumed
 	NoiseEstimated                   // no errors in the input: noise was estimated from the flux
 	WeightsSuspect                   // the stated errors disagree with the scatter
+	Normalized                       // the input was divided by its continuum
 )
 
 // flagTable is in order of bits.
@@ -75,6 +76,7 @@ var flagTable = [...]struct{ name, says string }{
 	{"frame_assumed", "air/vacuum or velocity frame was assumed"},
 	{"noise_estimated", "noise was estimated from the flux"},
 	{"weights_suspect", "the stated errors disagree with the scatter"},
+	{"normalized", "the input looks divided by its continuum"},
 }
 
 // knownFlags has every defined bit set.

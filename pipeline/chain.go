@@ -88,6 +88,7 @@ func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 	b.level.ready, b.results = false, b.results[:0]
 	b.lay(s)
 	res, beyond := b.find(s)
+	res.Normalized = normalized(&b.grid, s.FluxUnit, b.x)
 	b.chain.thresholds.Judge(&res)
 	obj := b.object(s, &res)
 	if beyond != "" {
@@ -254,6 +255,7 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 		{s.Has(spectrum.MediumAssumed) || s.Has(spectrum.FrameAssumed) || s.Has(spectrum.FrameUncertain) ||
 			s.Frame == spectrum.RestFrame || s.Frame == spectrum.OtherFrame, catalog.FrameAssumed},
 		{s.Has(spectrum.NoiseEstimated), catalog.NoiseEstimated}, {s.Has(spectrum.WeightsSuspect), catalog.WeightsSuspect},
+		{res.Normalized, catalog.Normalized},
 	} {
 		if d.set {
 			o.Flags |= d.flag
@@ -307,6 +309,9 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 	}
 	if res.Chi2Dof >= t.HopelessChi2 {
 		why = append(why, fmt.Sprintf("no family describes the spectrum: chi2/dof is %.0f", res.Chi2Dof))
+	}
+	if res.Bare() {
+		why = append(why, "the input looks divided by its continuum: without broad lines and breaks an absorber passes for the object")
 	}
 	if res.RangeEnd {
 		why = append(why, "the redshift lies at the end of the family's range")

@@ -33,7 +33,8 @@ type Family struct {
 	floor      float64 // km/s, least error of a redshift
 	components []component
 	expected   []expectedLine
-	forested   bool // has the forest of Lyman-alpha
+	needs      []int // components of which one must be there, any if empty
+	forested   bool  // has the forest of Lyman-alpha
 }
 
 type expectedLine struct {

@@ -101,6 +101,8 @@ type Scratch struct {
 	smooth      []float64
 	dropLag     []float64
 	features    []feature
+	binFlux     []float64 // of maskTroughs
+	binErr      []float64
 	count       []int // of peaks, by family
 	traces      []trace
 	single      drawing   // of one line
@@ -202,6 +204,7 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 	weightFloor(l.weight, l.resid, s.smooth, s.floor, 15)
 	fillBands(l.weight, g, f.opt.SkyBands, 0)
 	f.limitRange(l)
+	s.maskTroughs(l)
 	copt := continuum.Options{Spacing: f.opt.KnotSpacing, ClipLow: f.opt.ClipSpikes, ClipHigh: f.opt.ClipSpikes, Iterations: 4}
 	if err := s.fit.Fit(s.x, l.resid, l.weight, copt); err != nil {
 		res.FewPixels = true
@@ -352,17 +355,29 @@ func (f *Finder) judge(s *Scratch) {
 		}
 		slices.SortStableFunc(s.peaks, byScore)
 		// Where the weights changed much the winner may have further to go.
-		win := &s.peaks[0]
-		s.bench.climb(&s.full, win, s.full.step*math.Max(1, 0.25*win.width/s.pixelKms()), 4)
-		s.bench.climb(&s.full, win, 0.5*s.full.step, 3)
-		s.score(win)
+		win := s.peaks[0]
+		s.bench.climb(&s.full, &win, s.full.step*math.Max(1, 0.25*win.width/s.pixelKms()), 4)
+		s.bench.climb(&s.full, &win, 0.5*s.full.step, 3)
+		s.score(&win)
+		if win.score < s.peaks[0].score {
+			s.peaks[0] = win // else it only took more components
+		}
 	}
 }
 
 // score sets the score of a peak from its joint fit: chi^2 relative to the
 // continuum alone, plus penalties.
 func (s *Scratch) score(p *peak) {
+	if !p.family.whole(&p.fit) {
+		p.score = 0 // no better than the continuum alone
+		return
+	}
 	p.score = p.family.penalty(s.full.good, s.full.step, p.fit.active) - p.fit.drop
+}
+
+// whole reports whether a fit has one of the components that the family needs.
+func (f *Family) whole(fit *fit) bool {
+	return len(f.needs) == 0 || slices.ContainsFunc(f.needs, func(c int) bool { return fit.amp[c] > 0 })
 }
 
 // penalty is the part of a score that does not depend on the data: the number

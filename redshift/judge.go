@@ -65,7 +65,7 @@ func (t Thresholds) Judge(r *Result) {
 		enough = 1-r.Confidence <= 0.5*math.Pow(2*(1-t.SecureConfidence), overwhelming)
 	}
 	switch {
-	case r.Confidence >= t.SecureConfidence && enough && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd:
+	case r.Confidence >= t.SecureConfidence && enough && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd && !r.Bare():
 		r.Verdict = Secure
 	case r.LinesSeen == 0 && r.Confidence < t.NoneConfidence:
 		r.Verdict = None
@@ -73,6 +73,11 @@ func (t Thresholds) Judge(r *Result) {
 		r.Verdict = Uncertain
 	}
 }
+
+// Bare reports whether the spectrum of an extragalactic object lacks what tells
+// it from absorbers in front of it: broad lines and breaks, divided away with
+// the continuum.
+func (r *Result) Bare() bool { return r.Normalized && (r.Class == "galaxy" || r.Class == "quasar") }
 
 // countFeatures counts the lines that stand out by themselves, lines that
 // overlap within their widths as one.

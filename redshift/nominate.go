@@ -19,7 +19,7 @@ func (f *Finder) nominate(s *Scratch, index int, width float64) {
 		p := peak{family: fam, index: index, width: width, shift: shift}
 		p.fit = s.bench.evaluate(l, fam, width, shift)
 		s.score(&p)
-		if p.fit.active > 0 {
+		if p.fit.active > 0 && fam.whole(&p.fit) {
 			s.peaks = append(s.peaks, p)
 		}
 	}

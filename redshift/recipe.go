@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 
 	"duskline/hydrogen"
 	"duskline/linelist"
@@ -22,7 +23,10 @@ type Recipe struct {
 	Floor float64 `toml:"floor_kms"`
 	// Expected names the lines that should stand out when the family is right
 	// and the lines are covered.
-	Expected   []string          `toml:"expected"`
+	Expected []string `toml:"expected"`
+	// Needs names components of which at least one must be there for a
+	// spectrum to belong to the family: what sets it apart from others.
+	Needs      []string          `toml:"needs"`
 	Components []ComponentRecipe `toml:"component"`
 }
 
@@ -165,6 +169,14 @@ func ParseRecipeWith(file string, text []byte, list *linelist.List, stacks Stack
 		}
 		f.components = append(f.components, c)
 		f.forested = f.forested || c.forest
+	}
+	for _, name := range r.Needs {
+		k := slices.IndexFunc(r.Components, func(c ComponentRecipe) bool { return c.Name == name })
+		if k < 0 {
+			bad("needs: no component %q", name)
+			continue
+		}
+		f.needs = append(f.needs, k)
 	}
 	if len(errs) > 0 {
 		return nil, errors.Join(errs...)

@@ -37,6 +37,7 @@ type Result struct {
 
 	// Doubts that finding raises, and those that Judge adds.
 	FewPixels, BelowZero, RangeEnd, Scattered bool
+	Normalized                                bool // the input was divided by its continuum; set by the caller
 	Faint, Tied, LoneLine, Misfit, Unseen     bool
 
 	Verdict Verdict

@@ -105,8 +105,24 @@ func (f *Family) Span(width float64) (first, last float64) {
 // to the continuum or, in absorption, its fraction of the continuum with its
 // sign.
 func (f *Family) Curve(i int, z, width, first, last float64, n int) []float64 {
-	var d drawing
+	var d, veil drawing
+	var row []float64
 	shift, start := math.Log10(1+z), math.Log10(first)
-	f.components[i].draw(&d, n, start+shift, (math.Log10(last)-start)/float64(n-1), shift, width)
+	step := (math.Log10(last) - start) / float64(n-1)
+	c := &f.components[i]
+	c.draw(&d, n, start+shift, step, shift, width)
+	if !f.forested {
+		return d.values
+	}
+	veil.reset(n)
+	forest().draw(&veil, &row, n, start, step, z)
+	for k, v := range veil.values {
+		switch {
+		case c.forest:
+			d.values[k] += v
+		case !c.absorption:
+			d.values[k] *= 1 + v
+		}
+	}
 	return d.values
 }
