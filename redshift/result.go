@@ -57,6 +57,10 @@ type LineEvidence struct {
 	Err    float64 // km/s
 }
 
+// worstPixel is the most sigmas that one pixel counts in Chi2Dof: a single bad
+// one is no reason to distrust thousands.
+const worstPixel = 30.0
+
 const (
 	SeenSNR    = 4.0 // signal-to-noise from which a line stands out by itself
 	missingSNR = 6.0 // a line the model predicts with this and the data show with less than a third
@@ -89,7 +93,7 @@ func (f *Finder) conclude(g *spectrum.Grid, s *Scratch, res *Result) {
 	s.bench.residual(s.tmp, l, &best.fit)
 	chi2 := 0.0
 	for i, w := range s.weight {
-		chi2 += w * s.tmp[i] * s.tmp[i]
+		chi2 += math.Min(w*s.tmp[i]*s.tmp[i], worstPixel*worstPixel)
 	}
 	s.normal = grow(s.normal, l.n)
 	for i, w := range l.weight {
