@@ -372,7 +372,7 @@ func (s *Scratch) score(p *peak) {
 		p.score = 0 // no better than the continuum alone
 		return
 	}
-	p.score = p.family.penalty(s.full.good, s.full.step, p.fit.active) - p.fit.drop
+	p.score = p.family.penalty(s.independent*float64(s.full.good), s.full.step, p.fit.active) - p.fit.drop
 }
 
 // whole reports whether a fit has one of the components that the family needs.
@@ -381,11 +381,11 @@ func (f *Family) whole(fit *fit) bool {
 }
 
 // penalty is the part of a score that does not depend on the data: the number
-// of active amplitudes times ln n (Schwarz 1978) and the logarithm of the
+// of active amplitudes times ln n (Schwarz 1978), n the independent pixels, and the logarithm of the
 // number of trial redshifts.
-func (f *Family) penalty(pixels int, step float64, active int) float64 {
+func (f *Family) penalty(pixels, step float64, active int) float64 {
 	trials := (math.Log10(1+f.ZMax) - math.Log10(1+f.ZMin)) / step
-	return float64(active)*math.Log(float64(pixels)) + math.Log(math.Max(1, trials))
+	return float64(active)*math.Log(math.Max(1, pixels)) + math.Log(math.Max(1, trials))
 }
 
 // narrowest returns the smallest Gaussian width of the family in km/s.
