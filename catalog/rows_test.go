@@ -156,7 +156,7 @@ func TestCheckNamesWhatIsBroken(t *testing.T) {
 		"ra and dec":     func(o *Object) { o.Dec = nan },
 		"class":          func(o *Object) { o.Class = "comet" },
 		"verdict":        func(o *Object) { o.Verdict = "" },
-		"flags":          func(o *Object) { o.Flags = 1 << 15 },
+		"flags":          func(o *Object) { o.Flags = knownFlags + 1 },
 		"redshift":       func(o *Object) { o.Redshift = -1 },
 		"rival_redshift": func(o *Object) { o.RivalRedshift = -2 },
 		"redshift_err":   func(o *Object) { o.RedshiftErr = -1e-9 },
