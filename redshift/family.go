@@ -33,8 +33,9 @@ type Family struct {
 	floor      float64 // km/s, least error of a redshift
 	components []component
 	expected   []expectedLine
-	needs      []int // components of which one must be there, any if empty
-	forested   bool  // has the forest of Lyman-alpha
+	needs      []int   // components of which one must be there, any if empty
+	forested   bool    // has the forest of Lyman-alpha
+	proximity  float64 // dex by which its edges are moved blueward
 }
 
 type expectedLine struct {

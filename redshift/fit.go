@@ -105,7 +105,7 @@ func (b *bench) draw(l *level, f *Family, width, shift float64) {
 	b.m = 0
 	b.veil.reset(l.n)
 	if f.forested {
-		forest().draw(&b.veil, &b.row, l.n, l.start-shift, l.step, math.Pow(10, shift)-1)
+		forest().draw(&b.veil, &b.row, l.n, l.start-shift+f.proximity, l.step, math.Pow(10, shift)-1)
 	}
 	for c := range f.components {
 		comp := &f.components[c]

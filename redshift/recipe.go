@@ -50,6 +50,9 @@ type ComponentRecipe struct {
 	Edges  []edge       `toml:"edges"`
 	Heads  []head       `toml:"heads"`
 	Forest bool         `toml:"forest"`
+	// Proximity moves the edges of the forest blueward, km/s: so far a quasar
+	// thins the gas around it (Bajtlik, Duncan & Ostriker 1988).
+	Proximity float64 `toml:"proximity_kms"`
 	// Stack is the path of a dense rest-frame spectrum divided by its
 	// continuum, relative to the recipe. It multiplies the continuum, with both
 	// signs, so that its kind is "absorption".
@@ -169,6 +172,11 @@ func ParseRecipeWith(file string, text []byte, list *linelist.List, stacks Stack
 		}
 		f.components = append(f.components, c)
 		f.forested = f.forested || c.forest
+		if p := r.Components[i].Proximity; !(p >= 0 && p <= 10000) || p > 0 && !c.forest {
+			bad("component %q: proximity_kms = %g, want 0 to 10000, beside a forest", r.Components[i].Name, p)
+		} else if p > 0 {
+			f.proximity = math.Log10(1 + p/speedOfLight)
+		}
 	}
 	for _, name := range r.Needs {
 		k := slices.IndexFunc(r.Components, func(c ComponentRecipe) bool { return c.Name == name })

@@ -4,6 +4,7 @@ import (
 	"math"
 	"slices"
 
+	"duskline/hydrogen"
 	"duskline/spectrum"
 )
 
@@ -131,7 +132,22 @@ func (f *Finder) redshiftError(s *Scratch, p *peak) float64 {
 		}
 		delta = math.Max(0.02*l.step, math.Min(60*l.step, sigma))
 	}
-	return (1 + p.z()) * math.Hypot(ln10*sigma, p.family.floor/speedOfLight)
+	return (1 + p.z()) * math.Hypot(ln10*sigma, math.Hypot(p.family.floor, p.edgeDoubt(l))/speedOfLight)
+}
+
+// zoneScatter is by how many km/s the sizes of the zones that quasars thin around
+// them scatter at redshift 6: 2 to 7 Mpc (Eilers et al. 2017, from memory), 700 km/s each.
+const zoneScatter = 1500.0
+
+// edgeDoubt is what the redshift of a quasar in a thick forest owes to the unknown
+// place where its light is cut, km/s: zoneScatter times the square of the light
+// that is lost just blueward of Lyman-alpha; 0 where that is not covered.
+func (p *peak) edgeDoubt(l *level) float64 {
+	if p.family.proximity == 0 || !l.covers(forestEdgeLog+p.shift) {
+		return 0
+	}
+	lost := 1 - hydrogen.Transmission(p.z(), 1210*(1+p.z()))
+	return zoneScatter * lost * lost
 }
 
 // evidence measures each line of the winning model by itself, from the

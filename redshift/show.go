@@ -115,7 +115,7 @@ func (f *Family) Curve(i int, z, width, first, last float64, n int) []float64 {
 		return d.values
 	}
 	veil.reset(n)
-	forest().draw(&veil, &row, n, start, step, z)
+	forest().draw(&veil, &row, n, start+f.proximity, step, z)
 	for k, v := range veil.values {
 		switch {
 		case c.forest:

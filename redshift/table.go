@@ -13,7 +13,8 @@ const (
 	tableStart = 2.9 // log10 of 794 Angstrom
 	tableEnd   = 4.6
 	tableStep  = 1e-4 // dex; the sharpest shapes are some pixels wide
-	headBlur   = 6.0  // Angstrom, softness of a band head on its steep side
+	headBlur   = 3.0  // Angstrom, softness of a band head on its steep side, about R = 2000
+	headHalf   = 2.5  // Angstrom from half depth, where the head is, to full depth: headBlur sqrt(ln 2)
 )
 
 // newTable draws the edges and heads of a component, nil if it has none.
@@ -51,12 +52,13 @@ func (e *edge) at(wave float64) float64 {
 }
 
 // at is the depth of a molecular band at a rest wavelength: a head with a
-// Gaussian rise on its steep side and an exponential tail.
+// Gaussian rise on its steep side, half way up at Wave, and an exponential tail.
 func (h *head) at(wave float64) float64 {
 	q := wave - h.Wave
 	if h.Blue {
 		q = -q
 	}
+	q -= headHalf
 	switch {
 	case q >= 0 && q < 6*h.Tail:
 		return h.Depth * math.Exp(-q/h.Tail)
