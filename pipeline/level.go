@@ -91,7 +91,7 @@ func (m *masker) lines(res *redshift.Result) {
 		if e.Name == "" || e.Model < 1 {
 			continue
 		}
-		width := math.Min(e.Width, maxMaskKms)
+		width := math.Min(e.Breadth, maxMaskKms)
 		if res.Class == catalog.Quasar && width > broadFromKms {
 			width = math.Max(width, broadMaskKms)
 		}

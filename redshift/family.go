@@ -49,6 +49,7 @@ type component struct {
 	absorption bool
 	width      float64 // km/s; 0: the family's
 	scale      float64 // on the family's width
+	least      float64 // amplitude from which it is there, see Family.needs
 	most       float64 // largest amplitude, see ComponentRecipe.Most; 0 for no bound
 	terms      []term
 	edges      []edge

@@ -377,7 +377,7 @@ func (s *Scratch) score(p *peak) {
 
 // whole reports whether a fit has one of the components that the family needs.
 func (f *Family) whole(fit *fit) bool {
-	return len(f.needs) == 0 || slices.ContainsFunc(f.needs, func(c int) bool { return fit.amp[c] > 0 })
+	return len(f.needs) == 0 || slices.ContainsFunc(f.needs, func(c int) bool { return fit.amp[c] > 0 && fit.amp[c] >= f.components[c].least })
 }
 
 // penalty is the part of a score that does not depend on the data: the number

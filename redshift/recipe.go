@@ -42,7 +42,9 @@ type ComponentRecipe struct {
 	// Most bounds what nature makes: for absorption the largest depth as a
 	// fraction of the continuum, for emission the largest peak of the strongest
 	// line inside the coverage over the continuum there. No bound when 0.
-	Most   float64      `toml:"most"`
+	Most float64 `toml:"most"`
+	// Least is the amplitude from which the component counts as there for Needs.
+	Least  float64      `toml:"least"`
 	Source string       `toml:"source"`
 	Lines  []lineRatio  `toml:"lines"`
 	CaseB  *caseBRecipe `toml:"case_b"`
@@ -199,7 +201,7 @@ func ParseRecipeWith(file string, text []byte, list *linelist.List, stacks Stack
 func compile(r *ComponentRecipe, list *linelist.List, stacks Stacks) (component, []string) {
 	var problems []string
 	bad := func(format string, args ...any) { problems = append(problems, fmt.Sprintf(format, args...)) }
-	c := component{name: r.Name, source: r.Source, width: r.Width, scale: r.WidthScale, most: r.Most}
+	c := component{name: r.Name, source: r.Source, width: r.Width, scale: r.WidthScale, most: r.Most, least: r.Least}
 	if c.scale == 0 {
 		c.scale = 1
 	}
@@ -212,6 +214,9 @@ func compile(r *ComponentRecipe, list *linelist.List, stacks Stacks) (component,
 		c.absorption = true
 	default:
 		bad("kind = %q, want emission or absorption", r.Kind)
+	}
+	if !(r.Least >= 0 && (r.Most == 0 || r.Least <= r.Most)) {
+		bad("least = %g, want 0 or more, and no more than most", r.Least)
 	}
 	if !(r.Most >= 0) {
 		bad("most = %g, want a positive bound, or 0 for none", r.Most)
@@ -228,8 +233,8 @@ func compile(r *ComponentRecipe, list *linelist.List, stacks Stacks) (component,
 		if !positive(l.Ratio) {
 			bad("lines: %s: ratio = %g, want a positive number", l.Line, l.Ratio)
 		}
-		if !(math.Abs(l.Shift) <= 10000) {
-			bad("lines: %s: shift = %g, want -10000 to 10000 km/s", l.Line, l.Shift)
+		if !(math.Abs(l.Shift) <= 30000) {
+			bad("lines: %s: shift = %g, want -30000 to 30000 km/s", l.Line, l.Shift)
 		}
 		shift := math.Log10(1 + l.Shift/speedOfLight)
 		c.terms = append(c.terms, term{name: l.Line, logWave: math.Log10(found.Wave) + shift, amp: l.Ratio})

@@ -48,14 +48,15 @@ type Result struct {
 
 // LineEvidence is what the data say about one line of the winning model.
 type LineEvidence struct {
-	Name   string
-	Wave   float64 // observed, Angstrom
-	Width  float64 // Gaussian sigma of the template, km/s
-	SNR    float64 // matched-filter signal-to-noise with the rest of the model taken out
-	Model  float64 // the same as the model predicts
-	Seen   bool    // stands out by itself
-	Offset float64 // km/s against the redshift, NaN when not significant
-	Err    float64 // km/s
+	Name    string
+	Wave    float64 // observed, Angstrom
+	Width   float64 // Gaussian sigma of the template's highest part, km/s
+	Breadth float64 // of its part with most flux
+	SNR     float64 // matched-filter signal-to-noise with the rest of the model taken out
+	Model   float64 // the same as the model predicts
+	Seen    bool    // stands out by itself
+	Offset  float64 // km/s against the redshift, NaN when not significant
+	Err     float64 // km/s
 }
 
 // worstPixel is the most sigmas that one pixel counts in Chi2Dof: a single bad
@@ -163,7 +164,7 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 		if !ok {
 			continue
 		}
-		e.Name, e.Width = t.name, t.kms
+		e.Name, e.Width, e.Breadth = t.name, t.kms, t.breadth
 		e.SNR /= math.Sqrt(res.Correlation)
 		e.Model /= math.Sqrt(res.Correlation)
 		e.Err *= math.Sqrt(res.Correlation)
@@ -210,6 +211,8 @@ type trace struct {
 	logWave    float64
 	kms        float64 // Gaussian sigma
 	amp        float64
+	breadth    float64 // Gaussian sigma of the part with the largest area
+	area       float64 // of that part
 }
 
 // traces appends the lines of the model; a line in several components takes
@@ -219,7 +222,8 @@ func (p *peak) traces(dst []trace) []trace {
 		comp := &p.family.components[c]
 		for i := range comp.terms {
 			t := &comp.terms[i]
-			n := trace{t.name, comp.absorption, t.logWave, comp.sigmaKms(t, p.width), p.fit.amp[c] * t.amp}
+			n := trace{t.name, comp.absorption, t.logWave, comp.sigmaKms(t, p.width), p.fit.amp[c] * t.amp, 0, 0}
+			n.breadth, n.area = n.kms, n.amp*n.kms
 			k := slices.IndexFunc(dst, func(o trace) bool {
 				return o.name != "" && o.name == n.name && o.absorption == n.absorption && o.logWave == n.logWave
 			})
@@ -229,6 +233,9 @@ func (p *peak) traces(dst []trace) []trace {
 			}
 			if n.amp > dst[k].amp {
 				dst[k].kms = n.kms
+			}
+			if n.area > dst[k].area {
+				dst[k].breadth, dst[k].area = n.breadth, n.area
 			}
 			dst[k].amp += n.amp
 		}
