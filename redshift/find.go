@@ -252,6 +252,8 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 		res.Reason = "too few usable pixels for a continuum"
 		return false
 	}
+	price := math.Log(math.Max(1, s.independent*float64(l.good)))
+	l.price, s.coarse.price, s.rough.price = price, price, price
 	return true
 }
 
@@ -372,7 +374,7 @@ func (s *Scratch) score(p *peak) {
 		p.score = 0 // no better than the continuum alone
 		return
 	}
-	p.score = p.family.penalty(s.independent*float64(s.full.good), s.full.step, p.fit.active) - p.fit.drop
+	p.score = p.family.search(s.full.step) - p.fit.gain
 }
 
 // whole reports whether a fit has one of the components that the family needs.
@@ -380,12 +382,9 @@ func (f *Family) whole(fit *fit) bool {
 	return len(f.needs) == 0 || slices.ContainsFunc(f.needs, func(c int) bool { return fit.amp[c] > 0 && fit.amp[c] >= f.components[c].least })
 }
 
-// penalty is the part of a score that does not depend on the data: the number
-// of active amplitudes times ln n (Schwarz 1978), n the independent pixels, and the logarithm of the
-// number of trial redshifts.
-func (f *Family) penalty(pixels, step float64, active int) float64 {
-	trials := (math.Log10(1+f.ZMax) - math.Log10(1+f.ZMin)) / step
-	return float64(active)*math.Log(math.Max(1, pixels)) + math.Log(math.Max(1, trials))
+// search is the price of the search: the logarithm of the number of trial redshifts.
+func (f *Family) search(step float64) float64 {
+	return math.Log(math.Max(1, (math.Log10(1+f.ZMax)-math.Log10(1+f.ZMin))/step))
 }
 
 // narrowest returns the smallest Gaussian width of the family in km/s.

@@ -5,6 +5,7 @@ import "math"
 // fit is the answer of one joint fit.
 type fit struct {
 	drop   float64 // decrease of chi^2 against the spline alone
+	gain   float64 // the same less the price of the active components
 	active int     // components with a positive amplitude
 	amp    [maxComponents]float64
 }
@@ -32,7 +33,15 @@ type bench struct {
 //	G = T^T W T - (B^T W T)^T (B^T W B)^-1 (B^T W T),  h = T^T W r
 //
 // and r is the residual of the spline alone.
+//
+// Components that are not worth the price of the level are left out.
 func (b *bench) evaluate(l *level, f *Family, width, shift float64) fit {
+	return b.solve(l, f, width, shift, nil)
+}
+
+// solve is evaluate; with a fit given, just the components active in that one are used,
+// at no price.
+func (b *bench) solve(l *level, f *Family, width, shift float64, like *fit) fit {
 	b.weighted = grow(b.weighted, l.n)
 	b.draw(l, f, width, shift)
 	m := b.m
@@ -89,7 +98,16 @@ func (b *bench) evaluate(l *level, f *Family, width, shift float64) fit {
 	}
 	var out fit
 	var amp [maxComponents]float64
-	out.drop, out.active = nnls(&amp, &b.g, &b.h, &b.most, m)
+	var barred [maxComponents]bool
+	price := l.price
+	if like != nil {
+		price = 0
+		for k := range m {
+			barred[k] = like.amp[b.used[k]] <= 0
+		}
+	}
+	out.drop, out.active = economize(&amp, &b.g, &b.h, &b.most, &barred, m, price)
+	out.gain = out.drop - l.price*float64(out.active)
 	for k := 0; k < m; k++ {
 		out.amp[b.used[k]] = amp[k]
 	}
@@ -246,12 +264,12 @@ func (b *bench) climb(l *level, p *peak, h float64, moves int) {
 	left, right := at(p.shift-h), at(p.shift+h)
 	for k := 0; k < moves; k++ {
 		switch {
-		case right.drop > mid.drop && right.drop >= left.drop && p.shift+h <= hi:
+		case right.gain > mid.gain && right.gain >= left.gain && p.shift+h <= hi:
 			left, mid = mid, right
 			p.shift += h
 			right = at(p.shift + h)
 			continue
-		case left.drop > mid.drop && p.shift-h >= lo:
+		case left.gain > mid.gain && p.shift-h >= lo:
 			right, mid = mid, left
 			p.shift -= h
 			left = at(p.shift - h)
@@ -260,11 +278,11 @@ func (b *bench) climb(l *level, p *peak, h float64, moves int) {
 		break
 	}
 	p.fit = mid
-	den := left.drop - 2*mid.drop + right.drop
+	den := left.gain - 2*mid.gain + right.gain
 	if den < 0 {
-		s := p.shift + 0.5*h*(left.drop-right.drop)/den
+		s := p.shift + 0.5*h*(left.gain-right.gain)/den
 		if math.Abs(s-p.shift) < h && s >= lo && s <= hi {
-			if f := at(s); f.drop > p.fit.drop {
+			if f := at(s); f.gain > p.fit.gain {
 				p.fit, p.shift = f, s
 			}
 		}

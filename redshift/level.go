@@ -22,6 +22,7 @@ type level struct {
 	size        int // coefficients of the spline
 	good        int // pixels with weight
 	chi2        float64
+	price       float64 // of a component: ln of the independent pixels (Schwarz 1978)
 	coef        []float64
 }
 

@@ -8,13 +8,13 @@ import "math"
 // normal equations (Bro & De Jong 1997). A positive most[i] bounds a[i] from
 // above as well (Stark & Parker 1995, Computational Statistics 10, 129). It
 // writes the solution to a and returns the decrease 2 h^T a - a^T G a and the
-// number of positive amplitudes. Components whose diagonal is not positive stay
-// at zero.
-func nnls(a *[maxComponents]float64, g *[maxComponents * maxComponents]float64, h, most *[maxComponents]float64, m int) (drop float64, active int) {
+// number of positive amplitudes. Components whose diagonal is not positive, and
+// those that are barred, stay at zero.
+func nnls(a *[maxComponents]float64, g *[maxComponents * maxComponents]float64, h, most *[maxComponents]float64, barred *[maxComponents]bool, m int) (drop float64, active int) {
 	// An amplitude is free (in), at zero or at its bound (full).
 	var in, full, dead [maxComponents]bool
 	for i := 0; i < m; i++ {
-		a[i], dead[i] = 0, !(g[i*maxComponents+i] > 0)
+		a[i], dead[i] = 0, barred[i] || !(g[i*maxComponents+i] > 0)
 	}
 	for iter := 0; iter < 4*m; iter++ {
 		// The gradient of the variable that gains most, scaled by its norm.

@@ -136,7 +136,7 @@ func TestNNLSIsOptimal(t *testing.T) {
 			rapid.Check(t, func(t *rapid.T) {
 				p := drawProblem(t, c.bounded)
 				var a [maxComponents]float64
-				drop, active := nnls(&a, &p.g, &p.h, &p.most, p.m)
+				drop, active := nnls(&a, &p.g, &p.h, &p.most, new([maxComponents]bool), p.m)
 				// Drops are up to 12*10^2; the solver takes gradients below
 				// 1e-9 of a template's norm for zero.
 				const tol = 1e-7
@@ -183,7 +183,7 @@ func TestNNLSCollinear(t *testing.T) {
 		}
 	}
 	var a [maxComponents]float64
-	drop, active := nnls(&a, &p.g, &p.h, &p.most, p.m)
+	drop, active := nnls(&a, &p.g, &p.h, &p.most, new([maxComponents]bool), p.m)
 	if math.Abs(drop-9) > 1e-9 || active != 1 {
 		t.Errorf("drop %g with %d amplitudes, want 9 with 1", drop, active)
 	}
@@ -209,6 +209,6 @@ func BenchmarkNNLS(b *testing.B) {
 	var a [maxComponents]float64
 	b.ReportAllocs()
 	for b.Loop() {
-		nnls(&a, &p.g, &p.h, &p.most, p.m)
+		nnls(&a, &p.g, &p.h, &p.most, new([maxComponents]bool), p.m)
 	}
 }

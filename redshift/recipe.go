@@ -215,7 +215,7 @@ func compile(r *ComponentRecipe, list *linelist.List, stacks Stacks) (component,
 	default:
 		bad("kind = %q, want emission or absorption", r.Kind)
 	}
-	if !(r.Least >= 0 && (r.Most == 0 || r.Least <= r.Most)) {
+	if !(r.Least >= 0) || r.Most > 0 && r.Least > r.Most {
 		bad("least = %g, want 0 or more, and no more than most", r.Least)
 	}
 	if !(r.Most >= 0) {

@@ -120,8 +120,8 @@ func (f *Finder) redshiftError(s *Scratch, p *peak) float64 {
 	delta := l.step
 	sigma := math.NaN()
 	for k := 0; k < 4; k++ {
-		a := s.bench.evaluate(l, p.family, p.width, p.shift-delta).drop
-		b := s.bench.evaluate(l, p.family, p.width, p.shift+delta).drop
+		a := s.bench.solve(l, p.family, p.width, p.shift-delta, &p.fit).drop
+		b := s.bench.solve(l, p.family, p.width, p.shift+delta, &p.fit).drop
 		fall := p.fit.drop - 0.5*(a+b)
 		if !(fall > 0) {
 			delta *= 3
