@@ -40,7 +40,7 @@ func DefaultOptions() Options {
 		Stiffness:     0.03,
 		Temper:        12,
 		ClipSpikes:    6,
-		Nominees:      7,
+		Nominees:      5,
 		MinPixels:     200,
 		SearchFrom:    3000,
 		SearchTo:      26000,
@@ -318,7 +318,7 @@ func (f *Finder) judge(s *Scratch) {
 	s.count = grow(s.count, len(f.families))
 	clear(s.count)
 	for _, p := range s.peaks {
-		if p.score > 0.4*best+30 || s.count[p.index] >= 6 {
+		if p.score > 0.4*best+30 || s.count[p.index] >= 5 {
 			continue
 		}
 		dup := false
