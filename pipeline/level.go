@@ -85,10 +85,11 @@ type masker struct {
 	widths float64 // half width of a mask in Gaussian sigmas of the template's line
 }
 
-// lines masks the lines that the winning model uses.
+// lines masks the lines that the winning model uses; in quasars all that it could:
+// a line too weak to be worth its price there still bends the spline.
 func (m *masker) lines(res *redshift.Result) {
 	for _, e := range res.Lines {
-		if e.Name == "" || e.Model < 1 {
+		if e.Name == "" || e.Model < 1 && res.Class != catalog.Quasar {
 			continue
 		}
 		width := math.Min(e.Breadth, maxMaskKms)

@@ -290,7 +290,7 @@ func TestStackComplains(t *testing.T) {
 		change     func(j *StackJob)
 	}{
 		{"no run", "night holds no run", func(j *StackJob) { j.Run = "night" }},
-		{"family", `RUN knows no family "pasive"; its families are carbon`, func(j *StackJob) { j.Family = "pasive" }},
+		{"family", `RUN knows no family "pasive"; its families are active`, func(j *StackJob) { j.Family = "pasive" }},
 		{"nothing asked", "give --family or --class", func(j *StackJob) { j.Family = "" }},
 		{"no members", "0 secure objects of family carbon", func(j *StackJob) { j.Family = "carbon" }},
 		{"too good", "the error of 1e-06 that --max-error asks for", func(j *StackJob) { j.MaxError = 1e-6 }},
