@@ -94,14 +94,17 @@ type CSVReader[T Row] struct {
 }
 
 // NewCSVReader reads the header line, which must name the columns of the
-// table in their order.
+// table in their order, or the first of them: columns are only ever appended, and a
+// table of an earlier program lacks the last.
 func NewCSVReader[T Row](r io.Reader) (*CSVReader[T], error) {
 	c := &CSVReader[T]{tableOf[T](), csv.NewReader(r)}
 	c.in.ReuseRecord = true
-	c.in.FieldsPerRecord = len(c.columns)
-	names, err := c.in.Read()
+	names, err := c.in.Read() // later records must have as many fields
 	if err != nil {
 		return nil, fmt.Errorf("%w: table %s: header line: %w", ErrCSV, c.name, err)
+	}
+	if len(names) > len(c.columns) {
+		return nil, fmt.Errorf("%w: table %s: %d columns, want at most %d", ErrCSV, c.name, len(names), len(c.columns))
 	}
 	for i, name := range names {
 		if name != c.columns[i].Name {
@@ -125,6 +128,9 @@ func (c *CSVReader[T]) Next(row *T) error {
 			line, _ := c.in.FieldPos(i)
 			return fmt.Errorf("%w: table %s: line %d, column %s: %w", ErrCSV, c.name, line, c.columns[i].Name, err)
 		}
+	}
+	for i := len(values); i < len(c.columns); i++ {
+		forget(c.columns[i].field(row))
 	}
 	if err := c.verify(row); err != nil {
 		line, _ := c.in.FieldPos(0)

@@ -128,7 +128,7 @@ func TestCSVRefusals(t *testing.T) {
 	for _, c := range []struct{ name, old, new, want string }{
 		{"no header", good, "", "header"},
 		{"other column", "source_row", "source_line", `column 3 is "source_line"`},
-		{"column missing", ",input_digest", "", "header"},
+		{"column missing", ",input_digest", "", "column "},
 		{"number with letters", ",0.1234567", ",0.12z", "column redshift"},
 		{"row of wrong length", "0123456789abcdef", "0123,4567", "wrong number of fields"},
 		{"integer too large", ",7,", ",3000000000,", "column lines_seen"},

@@ -34,13 +34,16 @@ type Parquet[T Row] struct {
 
 // NewParquet begins a file.
 func NewParquet[T Row](w io.Writer, p Provenance) (*Parquet[T], error) {
-	t := tableOf[T]()
+	return newParquet(w, tableOf[T](), p)
+}
+
+func newParquet[T Row](w io.Writer, t table[T], p Provenance) (*Parquet[T], error) {
 	described, err := t.describe()
 	if err != nil {
 		return nil, err
 	}
 	options := []parquet.WriterOption{
-		t.schema(),
+		t.schema(len(t.columns)),
 		// The library's own name would change with its version.
 		parquet.CreatedBy("duskline", FormatVersion, "catalog"),
 		parquet.MaxRowsPerRowGroup(rowsPerGroup),
@@ -60,11 +63,11 @@ func NewParquet[T Row](w io.Writer, p Provenance) (*Parquet[T], error) {
 		values: make(parquet.Row, len(t.columns))}, nil
 }
 
-// schema makes the Parquet schema in the order of the columns, which a
+// schema makes the Parquet schema of the first n columns in their order, which a
 // parquet.Group would sort by name.
-func (t *table[T]) schema() *parquet.Schema {
-	fields := make([]reflect.StructField, len(t.columns))
-	for i, c := range t.columns {
+func (t *table[T]) schema(n int) *parquet.Schema {
+	fields := make([]reflect.StructField, n)
+	for i, c := range t.columns[:n] {
 		f := reflect.StructField{Name: fmt.Sprintf("F%d", i), Tag: reflect.StructTag(fmt.Sprintf(`parquet:"%s"`, c.Name))}
 		switch c.Type {
 		case "text":

@@ -152,7 +152,7 @@ func TestParquetRefusals(t *testing.T) {
 	objects := writeParquet(t, someObjects())
 	var unsealed bytes.Buffer
 	objectTable := tableOf[Object]()
-	foreign := parquet.NewGenericWriter[any](&unsealed, objectTable.schema())
+	foreign := parquet.NewGenericWriter[any](&unsealed, objectTable.schema(len(objectTable.columns)))
 	if err := foreign.Close(); err != nil {
 		t.Fatal(err)
 	}

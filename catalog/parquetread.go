@@ -17,6 +17,7 @@ var ErrParquet = errors.New("catalog Parquet")
 // batch of rows.
 type ParquetReader[T Row] struct {
 	table[T]
+	have   int // columns in the file; those after were appended since it was written
 	file   *parquet.File
 	groups []parquet.RowGroup
 	rows   parquet.Rows
@@ -34,7 +35,8 @@ const maxWords = 4096
 
 // OpenParquet opens a table of size bytes. It reads the file once to see that
 // no byte differs from what was written, then checks that its columns are
-// those of T. Close the reader after use.
+// those of T, or the first of them: columns are only ever appended, and a
+// table of an earlier program lacks the last. Close the reader after use.
 func OpenParquet[T Row](r io.ReaderAt, size int64) (*ParquetReader[T], error) {
 	t := tableOf[T]()
 	if err := checkSeal(r, size); err != nil {
@@ -44,10 +46,11 @@ func OpenParquet[T Row](r io.ReaderAt, size int64) (*ParquetReader[T], error) {
 	if err != nil {
 		return nil, fmt.Errorf("%w: table %s: %w", ErrParquet, t.name, err)
 	}
-	if got, want := file.Schema(), t.schema(); !parquet.EqualNodes(got, want) {
+	have := len(file.Schema().Columns())
+	if got, want := file.Schema(), t.schema(min(have, len(t.columns))); !parquet.EqualNodes(got, want) {
 		return nil, fmt.Errorf("%w: table %s: the columns are %s, want %s", ErrParquet, t.name, got, want)
 	}
-	return &ParquetReader[T]{table: t, file: file, groups: file.RowGroups(),
+	return &ParquetReader[T]{table: t, have: have, file: file, groups: file.RowGroups(),
 		batch: make([]parquet.Row, batchRows), words: map[string]string{}}, nil
 }
 
@@ -70,6 +73,10 @@ func (r *ParquetReader[T]) Next(row *T) error {
 	r.left = r.left[1:]
 	r.read++
 	for i := range r.columns {
+		if i >= r.have {
+			forget(r.columns[i].field(row))
+			continue
+		}
 		if err := r.store(r.columns[i].field(row), values[i]); err != nil {
 			return fmt.Errorf("%w: table %s, row %d, column %s: %w", ErrParquet, r.name, r.read, r.columns[i].Name, err)
 		}
@@ -112,6 +119,19 @@ func (r *ParquetReader[T]) closeGroup() error {
 		return fmt.Errorf("%w: table %s: %w", ErrParquet, r.name, err)
 	}
 	return nil
+}
+
+// forget sets the field of a column that a table does not have: NaN, 0 or no
+// text.
+func forget(field any) {
+	switch p := field.(type) {
+	case *float64:
+		*p = math.NaN()
+	case *string:
+		*p = ""
+	default:
+		setInt(field, 0)
+	}
 }
 
 func (r *ParquetReader[T]) store(field any, v parquet.Value) error {
