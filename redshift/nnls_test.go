@@ -19,10 +19,15 @@ type problem struct {
 // drawProblem makes G = T^T T and h = T^T r of m random templates with some
 // correlation, some of them absent (zero).
 func drawProblem(t *rapid.T, bounded bool) *problem {
-	p := &problem{m: rapid.IntRange(1, 6).Draw(t, "components")}
+	m := rapid.IntRange(1, 6).Draw(t, "components")
 	r := rand.New(rand.NewPCG(rapid.Uint64().Draw(t, "seed"), 1))
-	common := rapid.Float64Range(0, 2).Draw(t, "common part")
+	return randomProblem(r, m, rapid.Float64Range(0, 2).Draw(t, "common part"), bounded)
+}
+
+// randomProblem makes the problem of m templates that share a common part.
+func randomProblem(r *rand.Rand, m int, common float64, bounded bool) *problem {
 	const n = 12
+	p := &problem{m: m}
 	var templates [maxComponents][n]float64
 	var data, shared [n]float64
 	for i := range n {
