@@ -41,7 +41,8 @@ func (s *Scratch) maskTroughs(l *level) {
 	for _, v := range s.binFlux {
 		brightest = math.Max(brightest, v)
 	}
-	// light is the upper quartile of the bins lo to hi, NaN with too few.
+	// light is the upper quartile of the bins lo to hi; NaN with too few, or where most
+	// of them are dark beside it: emission lines on hardly any continuum.
 	light := func(lo, hi int) float64 {
 		s.tmp = s.tmp[:0]
 		for k := max(0, lo); k < min(n, hi); k++ {
@@ -53,7 +54,11 @@ func (s *Scratch) maskTroughs(l *level) {
 			return math.NaN()
 		}
 		slices.Sort(s.tmp)
-		return s.tmp[3*len(s.tmp)/4]
+		upper := s.tmp[3*len(s.tmp)/4]
+		if !(s.tmp[len(s.tmp)/2] > troughDark*upper) {
+			return math.NaN()
+		}
+		return upper
 	}
 	for k := 0; k < n; k++ {
 		if !(s.binFlux[k] < troughDark*brightest) || !(s.binErr[k] < 0.5*troughDark*brightest) {
