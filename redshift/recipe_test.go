@@ -1,6 +1,8 @@
 package redshift
 
 import (
+	"math"
+	"math/rand/v2"
 	"slices"
 	"strings"
 	"testing"
@@ -166,6 +168,15 @@ func TestParseRecipeRefuses(t *testing.T) {
 		{"width beyond all", "width = 300.0", "width = 1.0e6", []string{shade, "width = 1e+06"}},
 		{"bump beyond all", "width = 400.0", "width = 1.0e6", []string{shade, "bumps"}},
 		{"head without end", "tail = 100.0", "tail = inf", []string{shade, "heads"}},
+		{"shift beyond any outflow", "shift = -100.0", "shift = -30001.0", []string{glow, "OIII_5007", "shift = -30001"}},
+		{"needs what is not there", `expected = ["Ha"]`, `needs = ["glow", "glare"]`, []string{"needs", `"glare"`}},
+		{"negative least", "most = 0.5", "least = -0.1", []string{shade, "least = -0.1"}},
+		{"least not a number", "most = 0.5", "least = nan", []string{shade, "least = NaN"}},
+		{"least above most", "most = 0.5", "most = 0.5\nleast = 0.6", []string{shade, "least = 0.6", "most"}},
+		{"negative proximity", "forest = true", "forest = true\nproximity_kms = -1.0", []string{shade, "proximity_kms = -1"}},
+		{"proximity not a number", "forest = true", "forest = true\nproximity_kms = nan", []string{shade, "proximity_kms = NaN"}},
+		{"proximity beyond all", "forest = true", "forest = true\nproximity_kms = 10001.0", []string{shade, "proximity_kms = 10001"}},
+		{"proximity without a forest", "width = 300.0", "width = 300.0\n[[component]]\nname = \"zone\"\nkind = \"emission\"\nsource = \"invented\"\nproximity_kms = 500.0\nlines = [{ line = \"Ha\", ratio = 1.0 }]\n[[component]]\nname = \"shade\"\nkind = \"absorption\"\nsource = \"invented\"", []string{`component "zone"`, "proximity_kms = 500", "forest"}},
 		{"negative most", "most = 0.5", "most = -0.5", []string{shade, "most = -0.5"}},
 		{"most not a number", "most = 0.5", "most = nan", []string{shade, "most = NaN"}},
 		{"upper level below the lower", "upper = [4]", "upper = [2]", []string{glow, "case_b"}},
@@ -205,6 +216,93 @@ func TestParseRecipeRefuses(t *testing.T) {
 	for _, l := range lines {
 		if !strings.HasPrefix(l, "lamp.toml: ") {
 			t.Errorf("a problem without its file: %s", l)
+		}
+	}
+}
+
+// The keys at their ends are accepted and become what they say.
+func TestParseRecipeNeeds(t *testing.T) {
+	text := strings.NewReplacer("shift = -100.0", "shift = -30000.0", "most = 0.5", "most = 0.5\nleast = 0.5", "forest = true", "forest = true\nproximity_kms = 10000.0",
+		`expected = ["Ha"]`, `needs = ["shade"]`).Replace(goodRecipe)
+	f, err := ParseRecipe("lamp.toml", []byte(text), builtInLines(t))
+	if err != nil {
+		t.Fatal(err)
+	}
+	if len(f.needs) != 1 || f.needs[0] != 1 || f.components[1].least != 0.5 || f.components[0].least != 0 {
+		t.Errorf("needs %v, least %g and %g", f.needs, f.components[0].least, f.components[1].least)
+	}
+	if want := math.Log10(1 + 10000/speedOfLight); math.Abs(f.proximity-want) > 1e-15 {
+		t.Errorf("a zone of 10,000 km/s is %g dex, want %g", f.proximity, want)
+	}
+	oiii, _ := builtInLines(t).Find("OIII_5007")
+	if got, want := pow10(f.components[0].terms[1].logWave), oiii.Wave*(1-30000/speedOfLight); math.Abs(got/want-1) > 1e-13 {
+		t.Errorf("[O III] 5007 shifted by -30,000 km/s is at %.6f, want %.6f", got, want)
+	}
+}
+
+// A family without what it needs, or with too little of it, is no better than the
+// continuum; one of several is enough.
+func TestScoreWithoutWhatIsNeeded(t *testing.T) {
+	s := (&Finder{}).NewScratch()
+	s.full.step = testStep
+	fam := &Family{ZMin: 0, ZMax: 1, components: []component{{name: "always"}, {name: "some", least: 0.45}, {name: "other"}}}
+	for _, c := range []struct {
+		name  string
+		needs []int
+		amp   [3]float64
+		whole bool
+	}{
+		{"nothing is needed", nil, [3]float64{1, 0, 0}, true},
+		{"not there", []int{1, 2}, [3]float64{1, 0, 0}, false},
+		{"too little of it", []int{1, 2}, [3]float64{1, 0.449, 0}, false},
+		{"just enough of it", []int{1, 2}, [3]float64{1, 0.45, 0}, true},
+		{"a little where a little is enough", []int{1, 2}, [3]float64{1, 0, 1e-6}, true},
+		{"one of two, too little of the other", []int{1, 2}, [3]float64{1, 0.1, 0.1}, true},
+		{"another than needed", []int{1}, [3]float64{1, 0, 1}, false},
+	} {
+		fam.needs = c.needs
+		p := peak{family: fam}
+		p.fit.gain = 1000
+		copy(p.fit.amp[:], c.amp[:])
+		want := 0.0
+		if c.whole {
+			want = math.Log(math.Log10(2)/testStep) - 1000
+		}
+		if s.score(&p); math.Abs(p.score-want) > 1e-9 {
+			t.Errorf("%s: score %g, want %g", c.name, p.score, want)
+		}
+	}
+}
+
+// A spectrum that has all of a family but what it needs is not found by it.
+func TestFindWithoutWhatIsNeeded(t *testing.T) {
+	const recipe = `name = "lamp"
+class = "galaxy"
+redshift = [0.0, 0.5]
+widths = [200.0]
+NEEDS
+[[component]]
+name = "hydrogen"
+kind = "emission"
+source = "invented"
+lines = [{ line = "Ha", ratio = 2.86 }, { line = "Hb", ratio = 1.0 }]
+[[component]]
+name = "oxygen"
+kind = "emission"
+source = "invented"
+lines = [{ line = "OI_6300", ratio = 1.0 }]
+`
+	g := emissionLines(t, rand.New(rand.NewPCG(4, 4)), 0.2, 200, 20)
+	for needs, want := range map[string]bool{"": true, `needs = ["hydrogen"]`: true, `needs = ["oxygen"]`: false} {
+		fam, err := ParseRecipe("lamp.toml", []byte(strings.Replace(recipe, "NEEDS", needs, 1)), builtInLines(t))
+		if err != nil {
+			t.Fatal(err)
+		}
+		f := newTestFinder(t, []*Family{fam})
+		res := f.Find(g, f.NewScratch())
+		DefaultThresholds().Judge(&res)
+		if found := res.Found && math.Abs(res.Redshift-0.2) < 0.001; found != want || !want && res.Verdict == Secure {
+			t.Errorf("%s: %v at %.4f, %v; want it found: %v", needs, res.Found, res.Redshift, res.Verdict, want)
 		}
 	}
 }
