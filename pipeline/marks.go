@@ -32,8 +32,13 @@ func Marks(out *Outcome) []Mark {
 		if l.Kind != "emission" && l.Kind != "absorption" {
 			continue
 		}
-		known, _ := list.Find(l.Line)
-		marks = append(marks, Mark{lineLabel(l.Line, known.Ion), l.RestWave * (1 + out.Object.Redshift), l.Kind == "emission", l.SNR})
+		name, broad := strings.CutSuffix(l.Line, "_broad") // a second component, see docs/lines.md
+		known, _ := list.Find(name)
+		label := lineLabel(name, known.Ion)
+		if broad {
+			label += " broad"
+		}
+		marks = append(marks, Mark{label, l.RestWave * (1 + out.Object.Redshift), l.Kind == "emission", l.SNR})
 	}
 	return marks
 }

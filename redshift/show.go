@@ -10,6 +10,7 @@ type ComponentView struct {
 	Absorption bool
 	Source     string
 	Most       float64 // bound of the amplitude, 0 for none
+	Least      float64 // amplitude from which it is there for what the family needs
 	Shapes     []ShapeView
 }
 
@@ -28,7 +29,7 @@ func (f *Family) View(width float64) []ComponentView {
 	out := make([]ComponentView, len(f.components))
 	for i := range f.components {
 		c := &f.components[i]
-		v := ComponentView{Name: c.name, Absorption: c.absorption, Source: c.source, Most: c.most}
+		v := ComponentView{Name: c.name, Absorption: c.absorption, Source: c.source, Most: c.most, Least: c.least}
 		for j := range c.terms {
 			t := &c.terms[j]
 			s := ShapeView{Kind: "line", Name: t.name, Wave: math.Pow(10, t.logWave), Ratio: t.amp, Width: c.sigmaKms(t, width)}
@@ -63,6 +64,18 @@ func (f *Family) Expected() []string {
 	}
 	return names
 }
+
+// Needs names the components of which one must be there, none if the family needs nothing.
+func (f *Family) Needs() []string {
+	names := make([]string, len(f.needs))
+	for i, c := range f.needs {
+		names[i] = f.components[c].name
+	}
+	return names
+}
+
+// Proximity is by how many km/s the edges of the forest are moved blueward.
+func (f *Family) Proximity() float64 { return speedOfLight * (math.Pow(10, f.proximity) - 1) }
 
 // Forested reports whether the family has the forest of Lyman-alpha, whose
 // depth depends on the redshift.

@@ -141,6 +141,9 @@ func writeTemplate(w io.Writer, f *pipeline.Template) {
 		fmt.Fprintf(t, "redshift\t%g to %g\n", f.ZMin, f.ZMax)
 		fmt.Fprintf(t, "widths\t%s km/s, Gaussian sigma; a component may have its own\n", joined(f.Widths))
 		fmt.Fprintf(t, "expected\t%s\n", orNot(strings.Join(f.Expected(), ", "), "no lines"))
+		if needs := f.Needs(); len(needs) > 0 {
+			fmt.Fprintf(t, "needs\t%s\n", strings.Join(needs, " or "))
+		}
 		fmt.Fprintf(t, "digest\t%s\n", f.Digest)
 		fmt.Fprintf(t, "from\t%s\n", from)
 	})
@@ -152,6 +155,9 @@ func writeTemplate(w io.Writer, f *pipeline.Template) {
 		bound := ""
 		if v.Most > 0 {
 			bound = fmt.Sprintf(", at most %g of the continuum", v.Most)
+		}
+		if v.Least > 0 {
+			bound += fmt.Sprintf(", there from %g on", v.Least)
 		}
 		fmt.Fprintf(w, "\n%s: %s%s\n  source: %s\n", v.Name, kind, bound, orNot(v.Source, "none"))
 		writeTable(w, func(t io.Writer) {
@@ -166,11 +172,19 @@ func writeTemplate(w io.Writer, f *pipeline.Template) {
 				case "stack":
 					fmt.Fprintf(t, "  composite\t%.2f A\tto %.2f A\tdigest %s\n", s.Wave, s.Last, s.Name)
 				case "forest":
-					fmt.Fprintf(t, "  forest\tmean transmission of the intergalactic medium\n")
+					fmt.Fprintf(t, "  forest\tmean transmission of the intergalactic medium%s\n", moved(f.Proximity()))
 				}
 			}
 		})
 	}
+}
+
+// moved says by how much a quasar moves the edges of the forest.
+func moved(kms float64) string {
+	if kms == 0 {
+		return ""
+	}
+	return fmt.Sprintf(", its edges %.0f km/s blueward", kms)
 }
 
 type templatesCheckCmd struct {
