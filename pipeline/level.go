@@ -85,11 +85,12 @@ type masker struct {
 	widths float64 // half width of a mask in Gaussian sigmas of the template's line
 }
 
-// lines masks the lines that the winning model uses; in quasars all that it could:
-// a line too weak to be worth its price there still bends the spline.
+// lines masks the lines that the winning model uses; in quasars all emission that it
+// could: a line too weak to be worth its price there still bends the spline. Troughs that
+// are not there are not masked: with theirs nothing would be left for thousands of km/s.
 func (m *masker) lines(res *redshift.Result) {
 	for _, e := range res.Lines {
-		if e.Name == "" || e.Model < 1 && res.Class != catalog.Quasar {
+		if e.Name == "" || e.Model < 1 && (res.Class != catalog.Quasar || e.Absorption) {
 			continue
 		}
 		width := math.Min(e.Breadth, maxMaskKms)

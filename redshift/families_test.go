@@ -40,6 +40,18 @@ func TestFamiliesOnSpectraMadeOutside(t *testing.T) {
 			if v := velocity(res.Redshift, m.Z); res.Class != class[m.Name] || !(v < limit) {
 				t.Errorf("%s at z = %g, S/N %g: %s, %s at %.4f, off by %.0f km/s", m.Name, m.Z, snr, res.Class, res.Family, res.Redshift, v)
 			}
+			// Emission and troughs are told apart in the evidence.
+			emitted, absorbed := 0, 0
+			for _, e := range res.Lines {
+				if e.Absorption {
+					absorbed++
+				} else {
+					emitted++
+				}
+			}
+			if m.Name == "outflow" && (emitted == 0 || absorbed == 0) {
+				t.Errorf("%s at z = %g, S/N %g: %d lines in emission, %d in absorption", m.Name, m.Z, snr, emitted, absorbed)
+			}
 			tried[m.Name]++
 			if res.Family == m.Name {
 				named[m.Name]++

@@ -55,8 +55,10 @@ type LineEvidence struct {
 	SNR     float64 // matched-filter signal-to-noise with the rest of the model taken out
 	Model   float64 // the same as the model predicts
 	Seen    bool    // stands out by itself
-	Offset  float64 // km/s against the redshift, NaN when not significant
-	Err     float64 // km/s
+	// Absorption says that the model has it in absorption.
+	Absorption bool
+	Offset     float64 // km/s against the redshift, NaN when not significant
+	Err        float64 // km/s
 }
 
 // worstPixel is the most sigmas that one pixel counts in Chi2Dof: a single bad
@@ -164,7 +166,7 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 		if !ok {
 			continue
 		}
-		e.Name, e.Width, e.Breadth = t.name, t.kms, t.breadth
+		e.Name, e.Width, e.Breadth, e.Absorption = t.name, t.kms, t.breadth, t.absorption
 		e.SNR /= math.Sqrt(res.Correlation)
 		e.Model /= math.Sqrt(res.Correlation)
 		e.Err *= math.Sqrt(res.Correlation)
