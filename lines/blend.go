@@ -139,17 +139,20 @@ func (s *Scratch) clear(k, m int) bool {
 // borrow takes offset and width from the strongest line seen in the spectrum
 // of the same class of width, of the kind in which this one usually appears
 // when there is a choice; else it falls back on zero and Options.WidthGuess.
+// Hydrogen in quasars takes them from hydrogen first: in active galaxies its lines may be
+// narrow beside a broad Mg II.
 func (s *Scratch) borrow(e *tie) {
 	e.own, e.borrowed = false, true
-	e.v, e.s = 0, math.Hypot(s.opt.WidthGuess, e.sres)
-	if e.broad {
-		e.s = math.Hypot(10*s.opt.WidthGuess, e.sres)
-	}
+	e.v, e.s = 0, math.Hypot(s.opt.guess(e.broad), e.sres)
 	class := 0
 	if e.broad {
 		class = 1
 	}
-	first, second := s.anchor[class][0], s.anchor[class][1]
+	from := s.anchor[class]
+	if e.broad && e.ion == hydrogenIon && s.series != [2]kinematics{} {
+		from = s.series
+	}
+	first, second := from[0], from[1]
 	if s.tracks[e.lead].line.Seen == Absorption {
 		first, second = second, first
 	}

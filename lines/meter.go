@@ -93,7 +93,7 @@ type Options struct {
 
 	SearchKms  float64 // largest offset: 300; with Broad 3000, 1000 for narrow lines
 	WidthMax   float64 // largest Gaussian sigma of the source, km/s: 1500; 10000 for broad lines
-	WidthGuess float64 // sigma of the source assumed where no line of the spectrum tells, km/s: 100
+	WidthGuess float64 // sigma of the source assumed where no line of the spectrum tells, km/s: 100; ten times that for broad lines
 	WindowKms  float64 // smallest half width of the fit window: 1200
 	MinGood    float64 // smallest good fraction of a line's pixels: 0.7
 	// ContinuumSlack is how far the local straight line may differ from the
@@ -131,6 +131,15 @@ func (o Options) withDefaults() Options {
 		o.ZErr = 0
 	}
 	return o
+}
+
+// guess returns the width assumed where no line tells: the broad lines of a
+// quasar are ten times as wide as the narrow ones.
+func (o *Options) guess(broad bool) float64 {
+	if broad {
+		return 10 * o.WidthGuess
+	}
+	return o.WidthGuess
 }
 
 // search returns the largest offset for a line, km/s.

@@ -42,7 +42,7 @@ func (s *Scratch) apart(a, b *track) float64 {
 // plan settles lines that cannot be told apart and gathers the blends.
 func (s *Scratch) plan() {
 	s.blends, s.member = s.blends[:0], s.member[:0]
-	s.anchor, s.wings = [2][2]kinematics{}, kinematics{}
+	s.anchor, s.series, s.wings = [2][2]kinematics{}, [2]kinematics{}, kinematics{}
 	s.parent = s.parent[:0]
 	for i := range s.tracks {
 		s.parent = append(s.parent, i)
@@ -100,7 +100,7 @@ func (s *Scratch) root(i int) int {
 // expect with the sign seen; else the clearly stronger one at its own place;
 // else the one whose ion shows itself better elsewhere in the spectrum.
 func (s *Scratch) settle(a, b *track) {
-	width := s.opt.WidthGuess
+	width := s.opt.guess(a.broad)
 	switch {
 	case a.seen() && b.seen():
 		width = min(a.s, b.s)

@@ -25,7 +25,8 @@ type Scratch struct {
 	order  []int // blends, strongest first
 	member []int // track indices of all blends, one after the other
 	anchor [2][2]kinematics
-	wings  kinematics // of the strongest line of hydrogen in a hot star
+	series [2]kinematics // of the strongest line of hydrogen in a quasar, by sign
+	wings  kinematics    // of the strongest line of hydrogen in a hot star
 
 	bins    []int // pixels a bin may have, along a window
 	prob    problem

@@ -34,7 +34,7 @@ func (s *Scratch) findTracks() {
 		t.pix, t.sres = a.pixelKms(c), a.sigmaKms(c)
 		t.broad = s.opt.Broad && !l.narrow
 		t.result = blank(l)
-		t.s = max(math.Hypot(s.opt.WidthGuess, t.sres), 0.5*t.pix)
+		t.s = max(math.Hypot(s.opt.guess(t.broad), t.sres), 0.5*t.pix)
 		t.center, t.next = c, s.nextInGroup(i, t.broad)
 		if s.opt.Expect != nil && !s.opt.Expect(&l.Line) {
 			t.result.Reason = ReasonUnexpected
@@ -137,16 +137,19 @@ func blank(l *line) Result {
 }
 
 // nextInGroup returns the distance, km/s, from line i to the nearest other one
-// of its group, for a broad line to the nearest broad one of another ion;
-// infinite when there is none.
+// of its group, for a broad line to the nearest broad one of another ion,
+// whatever its group; infinite when there is none.
 func (s *Scratch) nextInGroup(i int, broad bool) float64 {
 	ls := s.meter.lines
 	d := math.Inf(1)
-	if ls[i].group < 0 {
+	if ls[i].group < 0 && !broad {
 		return d
 	}
 	for j := range ls {
-		if j != i && ls[j].group == ls[i].group && !(broad && (ls[j].narrow || ls[j].ion == ls[i].ion)) {
+		if j == i || broad && (ls[j].narrow || ls[j].ion == ls[i].ion) {
+			continue
+		}
+		if broad || ls[j].group == ls[i].group {
 			d = min(d, spectrum.SpeedOfLight*math.Abs(ls[j].Wave/ls[i].Wave-1))
 		}
 	}
@@ -206,7 +209,7 @@ func (s *Scratch) search(t *track) {
 	}
 	t.snr = best
 	if !t.seen() {
-		t.v, t.s = 0, max(math.Hypot(s.opt.WidthGuess, t.sres), 0.5*t.pix)
+		t.v, t.s = 0, max(math.Hypot(s.opt.guess(t.broad), t.sres), 0.5*t.pix)
 	}
 }
 

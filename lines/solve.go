@@ -119,7 +119,7 @@ func (s *Scratch) tryStarts() {
 			continue
 		}
 		best, v, w := m.chi2, e.v, e.s
-		guess := math.Hypot(s.opt.WidthGuess, e.sres)
+		guess := math.Hypot(s.opt.guess(e.broad), e.sres)
 		for _, start := range [4][2]float64{{0, e.s}, {0, guess}, {0, math.Sqrt(guess * e.s)}, {e.v, guess}} {
 			x, y := start[0], min(max(start[1], e.smin), e.smax)
 			if math.Abs(x-e.v) < 0.25*e.s && math.Abs(y-e.s) < 0.15*e.s {
@@ -348,8 +348,12 @@ func (s *Scratch) dropAnchors() {
 		if e.broad {
 			class = 1
 		}
+		found := kinematics{snr, e.v, math.Sqrt(max(0, e.s*e.s-e.sres*e.sres))}
 		if a := &s.anchor[class][sign(flux)]; snr > a.snr {
-			*a = kinematics{snr, e.v, math.Sqrt(max(0, e.s*e.s-e.sres*e.sres))}
+			*a = found
+		}
+		if a := &s.series[sign(flux)]; e.broad && e.ion == hydrogenIon && snr > a.snr {
+			*a = found
 		}
 	}
 }

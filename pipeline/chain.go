@@ -185,6 +185,9 @@ func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) bool {
 		WidthGuess: math.Min(res.Width, maxWidthGuess), Sky: b.chain.noted,
 		Profile: profileOf(b.chain.set.Lines.Profile), WindowKms: b.chain.set.Lines.WindowKms, MinGood: b.chain.set.Lines.MinGood, Expect: expectation(res),
 	}
+	if opt.Broad && res.Width > broadFromKms {
+		opt.WidthGuess = narrowShare * res.Width
+	}
 	if b.level.wide {
 		opt.ContinuumSlack, opt.Stark = 0.01, true
 	}
@@ -228,6 +231,11 @@ const (
 // maxWidthGuess keeps the width of a line that is not seen, km/s, from that of
 // a quasar's broadest.
 const maxWidthGuess = 1500
+
+// narrowShare is the width of a quasar's narrow lines in units of that of the
+// broad ones, as package lines has it the other way round (common practice, no
+// source: 300 to 600 km/s beside 3,000 to 6,000 at half maximum).
+const narrowShare = 0.1
 
 // object fills the row of the object table.
 func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Object {

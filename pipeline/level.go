@@ -18,6 +18,7 @@ type level struct {
 	wide        bool    // a star with wide Balmer lines
 	jump        float64 // log10 wavelength below which below holds; 0: nowhere
 	flux, ivar  []float64
+	window      []float64
 }
 
 // Value returns the continuum at a log10 wavelength.
@@ -54,6 +55,11 @@ func (l *level) fit(g *spectrum.Grid, x []float64, res *redshift.Result, set *Se
 	opt := set.continuumOptions()
 	masks := masker{grid: g, ivar: l.ivar, widths: set.Continuum.MaskWidths}
 	masks.lines(res)
+	if res.Class == catalog.Quasar {
+		for _, c := range complexes {
+			l.bridgeComplex(g, &masks, c, 1+res.Redshift)
+		}
+	}
 	l.wide = res.Class == catalog.Star && res.Family == "hot"
 	if !l.wide {
 		l.ready = l.main.Fit(x, l.flux, l.ivar, opt) == nil

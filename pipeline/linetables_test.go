@@ -17,7 +17,7 @@ import (
 
 // surveyLine is one row of the line table that a survey put into its own file.
 // side is the level of the survey's own model of the spectrum beside the line.
-type surveyLine struct{ ew, ewErr, area, areaErr, z, chi2, side float64 }
+type surveyLine struct{ ew, ewErr, area, areaErr, z, chi2, side, sigma float64 }
 
 // surveyTable reads the survey's line measurements of a spectrum file, nil where
 // it has none. The names are the survey's.
@@ -34,7 +34,7 @@ func surveyTable(path string) map[string]surveyLine {
 		out := map[string]surveyLine{}
 		for i, name := range t.words["LINENAME"] {
 			l := surveyLine{n["LINEEW"][i], n["LINEEW_ERR"][i], n["LINEAREA"][i], n["LINEAREA_ERR"][i], n["LINEZ"][i],
-				n["LINECHI2"][i] / math.Max(1, n["LINEDOF"][i]), math.NaN()}
+				n["LINECHI2"][i] / math.Max(1, n["LINEDOF"][i]), math.NaN(), n["LINESIGMA"][i]}
 			l.side = sideLevel(tables[0].numbers["LOGLAM"], tables[0].numbers["MODEL"], n["LINEWAVE"][i]*(1+l.z))
 			out[name] = l
 		}
@@ -66,6 +66,25 @@ func median(v []float64) float64 {
 		return math.NaN()
 	}
 	return 0.5 * (v[len(v)/2] + v[(len(v)-1)/2])
+}
+
+// narrowFrom is the Gaussian sigma, km/s, that parts narrow lines of active nuclei from
+// broad ones: 1,200 km/s of full width at half maximum (Hao et al. 2005, AJ 129,
+// 1783, from memory).
+const narrowFrom = 1200 / 2.3548
+
+// otherLine reports whether the survey, with its one width for all lines but
+// those of the Balmer series, gave a forbidden line the width of a broad one, or
+// a resonance line of a quasar that of a narrow one. It looks at the survey's
+// numbers only.
+func (k *target) otherLine(sigma float64) bool {
+	switch name := k.survey[0]; {
+	case k.balmer, name == "He_I 5876", name == "He_II 4685":
+		return false
+	case name == "Mg_II 2799", name == "C_IV 1549", name == "C_III] 1908", name == "He_II 1640":
+		return sigma < narrowFrom
+	}
+	return sigma > narrowFrom
 }
 
 // summarize returns the median ratio, and the robust scatter of the pulls: 1.4826
@@ -160,11 +179,14 @@ func (k *target) sum(rows []catalog.Line, parts bool) (flux, fluxErr, ew, ewErr 
 //   - The survey divides by its stellar template at the center of the line, which
 //     for Balmer lines is the bottom of stellar absorption; our continuum is that
 //     beside the line. So the survey's area is divided by the level of its own
-//     model beside the line, in galaxies and in active nuclei before the light of one. Its equivalent widths as
-//     stated are logged.
+//     model beside the line in galaxies. In quasars it stands as stated: their model
+//     beside a line contains other broad ones. What is stated for galaxies is logged.
 //   - It fits one Gaussian of one width to all forbidden lines and one to the Balmer
 //     lines, and states no larger error where that does not describe them; its own
 //     chi^2 tells. Its errors grow by the root of that here, as ours do.
+//   - That one width is of a broad line for [O III] in some quasars, or of a narrow one
+//     for Mg II: otherLine. Flux and equivalent width are then those of something else. They are
+//     counted in the first comparison and left out of the second.
 //   - Stellar absorption is taken out of its Balmer lines, as from ours.
 //   - In quasars broad and narrow parts are one line to it: ours are added.
 //     C III] and Si III] are one.
@@ -177,6 +199,7 @@ func TestSurveyLineTables(t *testing.T) {
 	}
 	worker := chain.NewWorker()
 	flux, ew, stated := map[string][]comparison{}, map[string][]comparison{}, map[string][]comparison{}
+	same, sameFlux := map[string][]comparison{}, map[string][]comparison{}
 	for _, p := range readPublished(t, dir) {
 		if !strings.HasPrefix(p.dataset, "sdss_") || strings.HasPrefix(p.class, "STAR") {
 			continue
@@ -219,14 +242,18 @@ func TestSurveyLineTables(t *testing.T) {
 			areaErr := math.Sqrt(areaVar * grow)
 			flux[class] = append(flux[class], comparison{ourFlux / area, (ourFlux - area) / math.Hypot(areaErr, ourFluxErr)})
 			like, likeErr := width, math.Sqrt(widthVar*grow)
-			if class == catalog.Galaxy || out.Object.Family == "active" {
+			if class == catalog.Galaxy {
 				like = area / one.side / (1 + one.z)
 				likeErr = like * areaErr / area
 			}
 			ew[class] = append(ew[class], comparison{ourEW / like, (ourEW - like) / math.Hypot(likeErr, ourEWErr)})
+			if !k.otherLine(one.sigma) {
+				sameFlux[class] = append(sameFlux[class], flux[class][len(flux[class])-1])
+				same[class] = append(same[class], ew[class][len(ew[class])-1])
+			}
 		}
 	}
-	for _, list := range []map[string][]comparison{flux, ew, stated} {
+	for _, list := range []map[string][]comparison{flux, ew, stated, same, sameFlux} {
 		list["all"] = slices.Concat(list[catalog.Galaxy], list[catalog.Quasar])
 	}
 	for _, class := range []string{catalog.Galaxy, catalog.Quasar, "all"} {
@@ -241,12 +268,17 @@ func TestSurveyLineTables(t *testing.T) {
 		if math.Abs(r-1) > 0.05 || sc > 1.5 {
 			t.Errorf("%s: median ratio of fluxes %.3f, want 1 +- 0.05; scatter of pulls %.2f, want below 1.5", class, r, sc)
 		}
-		// 1.5 is wanted, and kept over all lines: measured 1.24 in galaxies, 1.44
-		// over all, 1.73 in quasars, where the survey's one width for all forbidden
-		// lines misses narrow ones and iron emission makes two continua of one.
-		most := map[string]float64{catalog.Galaxy: 1.5, catalog.Quasar: 1.8, "all": 1.5}[class]
+		rl, sl := summarize(same[class])
+		rf, sf := summarize(sameFlux[class])
+		t.Logf("%s, of the same kind there: %d lines, flux ratio %.3f, scatter %.2f; equivalent width ratio %.3f, scatter %.2f", class, len(same[class]), rf, sf, rl, sl)
+		// 1.5 is wanted. It is kept over all lines, and by those that are the same
+		// line there; over all lines of quasars 1.62 is measured.
+		most := map[string]float64{catalog.Galaxy: 1.5, catalog.Quasar: 1.7, "all": 1.5}[class]
 		if math.Abs(re-1) > 0.05 || se > most {
 			t.Errorf("%s: median ratio of equivalent widths %.3f, want 1 +- 0.05; scatter of pulls %.2f, want below %.1f", class, re, se, most)
+		}
+		if math.Abs(rl-1) > 0.05 || sl > 1.5 || math.Abs(rf-1) > 0.05 || sf > 1.5 {
+			t.Errorf("%s, of the same kind there: median ratios %.3f and %.3f, want 1 +- 0.05; scatter of pulls %.2f and %.2f, want below 1.5", class, rf, rl, sf, sl)
 		}
 	}
 }
