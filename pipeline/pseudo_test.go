@@ -34,7 +34,7 @@ func wideQuasar(z float64, widths map[float64]float64, seed uint64) *spectrum.Sp
 // them, nor into the light between C IV and the next lines, here a bump at 1660
 // Angstrom; and no neighbor in reach takes a line over, as Al III and Si III] would C III].
 // The bump lifts the continuum at 1620 Angstrom by 3 %, and C IV by a third of that at its end: up to 2 sqrt(pi)
-// sigma of it, 2 Angstrom of 40. With the noise of ten spectra 8 % are allowed.
+// sigma of it, 2 Angstrom of 40 or 5 %. Without bridges C IV, Mg II and H-beta lose 5 to 8 %.
 func TestBroadLinesOfQuasars(t *testing.T) {
 	chain, err := pipeline.NewChain(pipeline.DefaultSettings())
 	if err != nil {
@@ -65,8 +65,8 @@ func TestBroadLinesOfQuasars(t *testing.T) {
 		}
 		for name, want := range tc.lines {
 			t.Logf("z %g, %s: W %.2f of %g", tc.z, name, sums[name], want)
-			if math.Abs(sums[name]/want-1) > 0.08 {
-				t.Errorf("z %g, %s: W %.2f, want %g +- 8 %%", tc.z, name, sums[name], want)
+			if math.Abs(sums[name]/want-1) > 0.05 {
+				t.Errorf("z %g, %s: W %.2f, want %g +- 5 %%", tc.z, name, sums[name], want)
 			}
 		}
 	}
