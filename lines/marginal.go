@@ -36,11 +36,13 @@ type average struct {
 // covariance C = <C(node)> + <(p - <p>)(p - <p>)^T>. A node weighs exp(-chi^2/2)
 // s^-2 dln s: flat in the depths of two lines, not in their areas, which leaves
 // the least bias in simulation. As in the fit, crowded lines that share an offset
-// have one sign; errors are those of free amplitudes.
+// have one sign; errors are those of free amplitudes. Broad lines of quasars stay as fitted:
+// their errors are mostly the doubt of the continuum, and with several ions in one
+// blend the grid wanders between solutions (TestQuasarLines).
 func (s *Scratch) marginalize() {
 	q := &s.prob
 	for k := range q.ties {
-		if e := &q.ties[k]; e.own && s.findTight(k) && s.tieSNR(k) < crowdedSNR*s.errorScale() {
+		if e := &q.ties[k]; e.own && !e.broad && s.findTight(k) && s.tieSNR(k) < crowdedSNR*s.errorScale() {
 			s.averageTie(e)
 		}
 	}

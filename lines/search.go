@@ -89,7 +89,7 @@ func (s *Scratch) dominant(i int) bool {
 	t := &s.tracks[i]
 	for j := range s.tracks {
 		o := &s.tracks[j]
-		if j == i || (!o.strong && math.Abs(o.snr) <= math.Abs(t.snr)) || !o.seen() {
+		if j == i || !o.seen() || !o.strong && !s.strays(t, o) && (math.Abs(o.snr) <= math.Abs(t.snr) || s.strays(o, t)) {
 			continue
 		}
 		d := spectrum.SpeedOfLight*(o.lam0/t.lam0-1) + o.v - t.v
@@ -98,6 +98,16 @@ func (s *Scratch) dominant(i int) bool {
 		}
 	}
 	return true
+}
+
+// strayShare is the part of a box's S/N that a line nearer to the feature must have.
+const strayShare = 0.5
+
+// strays reports whether the box of a broad line has gone more than half of its way to
+// a feature that lies nearer to another one, as that of N V to Lyman-alpha.
+func (s *Scratch) strays(a, b *track) bool {
+	return a.broad && b.broad && sign(a.snr) == sign(b.snr) && math.Abs(a.v) > 0.5*s.opt.search(true) &&
+		math.Abs(b.v) < math.Abs(a.v) && math.Abs(b.snr) > strayShare*math.Abs(a.snr)
 }
 
 // claimPixels lists the ranges of 3 sigma around the strong lines, joined

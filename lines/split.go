@@ -189,7 +189,7 @@ func (s *Scratch) trySecond(main, k int, v, w float64) {
 		need, seen = splitStellar*math.Log(pixels), seenFrom
 	}
 	if ok && (old-m.chi2)/(scale*scale) > need && wider > splitWider*slimmer && wider < 0.98*a.smax &&
-		math.Min(s.tieSNR(k), s.tieSNR(ties)) > seen*scale {
+		math.Min(s.standing(k, scale), s.standing(ties, scale)) > seen {
 		if a.s > b.s {
 			for i := range q.comps {
 				if c := &q.comps[i]; c.tie == k || c.tie == ties {
@@ -208,6 +208,21 @@ func (s *Scratch) trySecond(main, k int, v, w float64) {
 	s.fixKinematics(false)
 	m.chi2 = q.normal(m.p, m.a, m.b)
 	m.covariance()
+}
+
+// standing returns the S/N of tie k with the doubt of the continuum in the error:
+// iron under a broad line is else a second component of it.
+func (s *Scratch) standing(k int, scale float64) float64 {
+	q, m := &s.prob, &s.lm
+	best := 0.0
+	for i := range q.comps {
+		if c := &q.comps[i]; c.tie == k {
+			if v := m.cov[c.amp*m.n+c.amp]; v > 0 {
+				best = max(best, math.Abs(m.p[c.amp])/math.Hypot(scale*math.Sqrt(v), s.continuumDoubt(i)))
+			}
+		}
+	}
+	return best
 }
 
 // stellar reports whether of two ties of a Balmer line the broader one absorbs

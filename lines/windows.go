@@ -208,7 +208,10 @@ func (s *Scratch) addPixel(arm, i, j int) {
 const (
 	// binSigma is how many bins a sigma keeps; the fit then loses less than
 	// 1 % of the information, and profiles are averaged over the bins.
-	binSigma = 4
+	binSigma = 4.0
+	// binBroad is the same for broad lines of quasars: 0.1 of a bin's variance
+	// in units of the line's, and the doubt of the continuum weighs more.
+	binBroad = 3.0
 	// maxBin bounds the pixels of a bin.
 	maxBin = 32
 )
@@ -232,7 +235,11 @@ func (s *Scratch) markBins(w *window) {
 		e := &q.ties[c.tie]
 		scale := c.lam0 / spectrum.SpeedOfLight
 		mu, sigma := c.lam0+scale*e.v, scale*e.s
-		most := max(1, int(e.s/(binSigma*s.tracks[c.track].pix)))
+		bins := binSigma
+		if e.broad {
+			bins = binBroad
+		}
+		most := max(1, int(e.s/(bins*s.tracks[c.track].pix)))
 		far := 6.0
 		if e.stark {
 			far = starkReach
