@@ -318,6 +318,15 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 	if res.Chi2Dof >= t.HopelessChi2 {
 		why = append(why, fmt.Sprintf("no family describes the spectrum: chi2/dof is %.0f", res.Chi2Dof))
 	}
+	if res.LinesMissing > 0 {
+		why = append(why, "lines that should be strong are not there")
+	}
+	if res.Scattered {
+		why = append(why, "the lines disagree on the velocity")
+	}
+	if res.Class == catalog.Quasar && !res.InEmission {
+		why = append(why, "no emission line of a quasar stands out")
+	}
 	if res.Bare() {
 		why = append(why, "the input looks divided by its continuum: without broad lines and breaks an absorber passes for the object")
 	}

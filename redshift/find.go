@@ -107,6 +107,8 @@ type Scratch struct {
 	traces      []trace
 	single      drawing   // of one line
 	normal      []float64 // normalized residuals
+	inSpline    []float64 // of a single line: B^T W t
+	solved      []float64 // and the spline that describes it
 	excess      []float64
 	scaled      []float64 // flux in the units of the levels
 	weight      []float64 // weights before they are tempered

@@ -1,6 +1,7 @@
 package redshift
 
 import (
+	"cmp"
 	"math"
 	"slices"
 )
@@ -65,7 +66,7 @@ func (t Thresholds) Judge(r *Result) {
 		enough = 1-r.Confidence <= 0.5*math.Pow(2*(1-t.SecureConfidence), overwhelming)
 	}
 	switch {
-	case r.Confidence >= t.SecureConfidence && enough && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd && !r.Bare():
+	case r.Confidence >= t.SecureConfidence && enough && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd && !r.Bare() && !r.Scattered && r.LinesMissing == 0 && (r.Class != "quasar" || r.InEmission):
 		r.Verdict = Secure
 	case r.LinesSeen == 0 && r.Confidence < t.NoneConfidence:
 		r.Verdict = None
@@ -80,8 +81,8 @@ func (t Thresholds) Judge(r *Result) {
 func (r *Result) Bare() bool { return r.Normalized && (r.Class == "galaxy" || r.Class == "quasar") }
 
 // countFeatures counts the lines that stand out by themselves, lines that
-// overlap within their widths as one.
-func countFeatures(lines []feature) int {
+// overlap within their widths, or are nearer than apart pixels, as one.
+func countFeatures(lines []feature, apart float64) int {
 	slices.SortFunc(lines, func(a, b feature) int {
 		switch {
 		case a.center < b.center:
@@ -93,12 +94,28 @@ func countFeatures(lines []feature) int {
 	})
 	n := 0
 	for i, f := range lines {
-		if i == 0 || f.center-lines[i-1].center > f.sigma+lines[i-1].sigma {
+		if i == 0 || f.center-lines[i-1].center > math.Max(f.sigma+lines[i-1].sigma, apart) {
 			n++
 		}
 	}
 	return n
 }
 
-// feature is a line that stands out, in pixels.
-type feature struct{ center, sigma float64 }
+// feature is a line that stands out, in pixels, with its signal-to-noise.
+type feature struct{ center, sigma, snr float64 }
+
+// leaders leaves out what stands beside a broad line of four times its
+// signal-to-noise: broad from a sigma of broad pixels on, beside up to reach pixels.
+func leaders(lines []feature, broad, reach float64) []feature {
+	// Strongest first: none is left out for one that comes after it.
+	slices.SortFunc(lines, func(a, b feature) int { return cmp.Or(cmp.Compare(b.snr, a.snr), cmp.Compare(a.center, b.center)) })
+	kept := lines[:0]
+	for _, f := range lines {
+		if !slices.ContainsFunc(kept, func(o feature) bool {
+			return o.sigma >= broad && o.snr > 4*f.snr && math.Abs(o.center-f.center) < reach
+		}) {
+			kept = append(kept, f)
+		}
+	}
+	return kept
+}

@@ -2,6 +2,7 @@ package redshift
 
 import (
 	"math"
+	"slices"
 	"testing"
 )
 
@@ -28,7 +29,10 @@ func TestJudge(t *testing.T) {
 		{"correlated pixels", with(func(r *Result) { r.Correlation, r.Gap = 3, 50 }), Uncertain, nil},
 		{"beyond description", with(func(r *Result) { r.Chi2Dof, r.Gap = 31, 1e6 }), Uncertain, func(r *Result) []bool { return []bool{r.Misfit} }},
 		{"lines seen, but as many missing", with(func(r *Result) { r.LinesMissing, r.InEmission = 4, true }), Uncertain, nil},
-		{"lines seen, some missing", with(func(r *Result) { r.LinesMissing = 3 }), Secure, nil},
+		{"lines seen, some missing", with(func(r *Result) { r.LinesMissing = 3 }), Uncertain, nil},
+		{"lines that disagree", with(func(r *Result) { r.Scattered = true }), Uncertain, nil},
+		{"a quasar without emission", with(func(r *Result) { r.Class = "quasar" }), Uncertain, nil},
+		{"a quasar with emission", with(func(r *Result) { r.Class, r.InEmission = "quasar", true }), Secure, nil},
 		{"a small gap", with(func(r *Result) { r.Gap = 8.9 }), Uncertain, func(r *Result) []bool { return []bool{r.Tied} }},
 		{"a gap in a misfit", with(func(r *Result) { r.Chi2Dof = 8; r.Gap = 100 }), Uncertain, func(r *Result) []bool { return []bool{r.Misfit, !r.Tied} }},
 		{"the end of the range", with(func(r *Result) { r.RangeEnd = true }), Uncertain, nil},
@@ -38,7 +42,7 @@ func TestJudge(t *testing.T) {
 		{"a galaxy without its continuum", with(func(r *Result) { r.Normalized, r.Class = true, "galaxy" }), Uncertain, func(r *Result) []bool { return []bool{r.Bare()} }},
 		{"a quasar without its continuum", with(func(r *Result) { r.Normalized, r.Class = true, "quasar" }), Uncertain, func(r *Result) []bool { return []bool{r.Bare()} }},
 		{"a star without its continuum", with(func(r *Result) { r.Normalized, r.Class = true, "star" }), Secure, func(r *Result) []bool { return []bool{!r.Bare()} }},
-		{"a quasar with its continuum", with(func(r *Result) { r.Class = "quasar" }), Secure, func(r *Result) []bool { return []bool{!r.Bare()} }},
+		{"a quasar with its continuum", with(func(r *Result) { r.Class, r.InEmission = "quasar", true }), Secure, func(r *Result) []bool { return []bool{!r.Bare()} }},
 		{"nothing expected", with(func(r *Result) { r.LinesExpected, r.LinesCovered = 0, 0 }), Secure, func(r *Result) []bool { return []bool{!r.Unseen} }},
 		{"not found", Result{SNR: math.NaN(), Gap: math.NaN()}, None, func(r *Result) []bool { return []bool{!r.Faint, r.Confidence == 0} }},
 		{"not found and faint", Result{SNR: 0.2, Gap: math.NaN()}, None, func(r *Result) []bool { return []bool{r.Faint} }},
@@ -91,15 +95,26 @@ func TestCountFeatures(t *testing.T) {
 		want  int
 	}{
 		{"none", nil, 0},
-		{"one", []feature{{100, 2}}, 1},
-		{"the same line twice", []feature{{100, 2}, {100, 5}}, 1},
-		{"apart, out of order", []feature{{300, 2}, {100, 2}, {200, 2}}, 3},
-		{"a blend", []feature{{100, 2}, {103.9, 2}}, 1},
-		{"just apart", []feature{{100, 2}, {104.1, 2}}, 2},
-		{"a chain of blends", []feature{{100, 2}, {103, 2}, {106, 2}}, 1},
+		{"one", []feature{{100, 2, 9}}, 1},
+		{"the same line twice", []feature{{100, 2, 9}, {100, 5, 9}}, 1},
+		{"apart, out of order", []feature{{300, 2, 9}, {100, 2, 9}, {200, 2, 9}}, 3},
+		{"a blend", []feature{{100, 2, 9}, {103.9, 2, 9}}, 1},
+		{"just apart", []feature{{100, 2, 9}, {104.1, 2, 9}}, 2},
+		{"a doublet nearer than features are", []feature{{100, 1, 9}, {103.5, 1, 9}}, 1},
+		{"a chain of blends", []feature{{100, 2, 9}, {103, 2, 9}, {106, 2, 9}}, 1},
 	} {
-		if got := countFeatures(c.lines); got != c.want {
+		if got := countFeatures(c.lines, 3.9); got != c.want {
 			t.Errorf("%s: %d, want %d", c.name, got, c.want)
 		}
+	}
+}
+
+// A weak line beside a broad one ten times as strong is left out, whichever comes first; one far
+// away, or beside a narrow one, stays.
+func TestLeaders(t *testing.T) {
+	got := leaders([]feature{{150, 20, 5}, {100, 20, 50}, {400, 20, 5}, {700, 2, 50}, {705, 2, 5}}, 12, 200)
+	want := []feature{{100, 20, 50}, {700, 2, 50}, {400, 20, 5}, {705, 2, 5}}
+	if !slices.Equal(got, want) {
+		t.Errorf("%v, want %v", got, want)
 	}
 }

@@ -65,6 +65,19 @@ type LineEvidence struct {
 // one is no reason to distrust thousands.
 const worstPixel = 30.0
 
+// featureKms is the distance from which two lines are two features: the
+// members of [O II] 3726, 3729, 220 km/s apart, are not, for any lone line a little
+// wider than the template would pass for both.
+const featureKms = 420.0
+
+// Beside a broad line (Gaussian sigma from broadKms) a line of less than a
+// quarter of its signal-to-noise within satelliteKms is no feature of its own: He II and O III] beside C IV, Si III]
+// beside C III] also describe the wings of any broad line that is no Gaussian.
+const (
+	broadKms     = 800.0
+	satelliteKms = 25000.0
+)
+
 const (
 	SeenSNR    = 4.0 // signal-to-noise from which a line stands out by itself
 	missingSNR = 6.0 // a line the model predicts with this and the data show with less than a third
@@ -171,10 +184,10 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 		e.Model /= math.Sqrt(res.Correlation)
 		e.Err *= math.Sqrt(res.Correlation)
 		e.Wave = math.Pow(10, t.logWave+p.shift)
-		e.Seen = t.amp > 0 && e.SNR >= SeenSNR && e.SNR > 0.3*e.Model
+		e.Seen = t.amp > 0 && e.SNR >= SeenSNR && e.SNR > 0.3*e.Model && e.Model >= 0.5*SeenSNR
 		res.Lines = append(res.Lines, e)
 		if e.Seen {
-			s.features = append(s.features, feature{(t.logWave + p.shift - l.start) / l.step, sigma})
+			s.features = append(s.features, feature{(t.logWave + p.shift - l.start) / l.step, sigma, e.SNR})
 			res.InEmission = res.InEmission || !t.absorption
 		}
 		if t.amp > 0 && t.name != "" && e.Model > missingSNR && e.SNR < e.Model/3 {
@@ -186,7 +199,8 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 			s.denseFeatures(comp, p.fit.amp[c], p.shift)
 		}
 	}
-	res.LinesSeen = countFeatures(s.features)
+	s.features = leaders(s.features, broadKms/s.pixelKms(), satelliteKms/s.pixelKms())
+	res.LinesSeen = countFeatures(s.features, featureKms/s.pixelKms())
 	least := 2 * SeenSNR * math.Sqrt(res.Correlation)
 	// A break or band that the data demand counts as one feature.
 	for c := range p.family.components {
@@ -257,6 +271,8 @@ func (s *Scratch) weigh(t *trace, sigma, center float64) (LineEvidence, bool) {
 	d.reset(l.n)
 	gaussian(d, l.n, center, sigma, 1)
 	var tr, tt, good, all, dr, dd float64
+	s.inSpline = grow(s.inSpline, l.size)
+	clear(s.inSpline)
 	for _, r := range d.runs {
 		for k := r.lo; k < r.hi; k++ {
 			v := d.values[k]
@@ -271,14 +287,29 @@ func (s *Scratch) weigh(t *trace, sigma, center float64) (LineEvidence, bool) {
 				}
 			}
 			w := l.weight[k]
-			tr += w * v * (s.tmp[k] + t.amp*v)
-			tt += w * v * v
+			wv := w * v
+			tr += wv * (s.tmp[k] + t.amp*v)
+			tt += wv * v
+			j, q := int(l.first[k]), &l.value[k]
+			for a := range 4 {
+				s.inSpline[j+a] += wv * q[a]
+			}
 			// Derivative with respect to the center, per pixel.
 			g := v * u / sigma
 			dr += w * g * s.tmp[k]
 			dd += w * g * g
 		}
 	}
+	// The spline adapts to a line that is there, and to one that the model forces
+	// and the data lack: what it can describe as well is no evidence.
+	s.solved = append(s.solved[:0], s.inSpline...)
+	l.normal.Solve(s.solved)
+	lost := 0.0
+	for k, v := range s.inSpline {
+		lost += v * s.solved[k]
+	}
+	tr -= t.amp * lost
+	tt -= lost
 	if tt <= 0 || good < 0.6*all {
 		return LineEvidence{}, false
 	}
