@@ -13,10 +13,10 @@ type sightline struct {
 	found   []absorbers.System
 }
 
-// absorb returns the absorbers in front of a quasar, none for other objects. It
+// absorb returns the absorbers in front of a quasar or galaxy, none for other objects. It
 // reads the arms that measure has filled.
 func (b *Bench) absorb(res *redshift.Result) []catalog.Absorber {
-	if res.Class != catalog.Quasar || !b.level.ready {
+	if (res.Class != catalog.Quasar && res.Class != catalog.Galaxy) || !b.level.ready {
 		return nil
 	}
 	l := &b.sight

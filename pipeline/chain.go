@@ -205,7 +205,7 @@ func expectation(res *redshift.Result) func(*linelist.Line) bool {
 	if res.Class != catalog.Star {
 		return nil
 	}
-	cool := res.Family != "hot"
+	cool := res.Family != "hot" && res.Family != "helium"
 	return func(l *linelist.Line) bool {
 		if l.Seen == "emission" && l.Ion != "He II" {
 			return false

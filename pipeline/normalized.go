@@ -15,7 +15,7 @@ const (
 )
 
 // normalized reports whether a spectrum that is not in units of energy looks
-// divided by its continuum, whatever unit was left in its header: in three
+// divided by its continuum, whatever other unit was left in its header: in three
 // quarters of its stretches the upper fifth of the pixels begins at 1 within a tenth,
 // which lines and the forest below do not change.
 func normalized(g *spectrum.Grid, unit string, scratch []float64) bool {

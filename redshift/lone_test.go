@@ -26,7 +26,7 @@ func TestLoneLinesAreNotSecure(t *testing.T) {
 		allowed int // of 60
 	}{
 		{"a narrow line", 1, 60, 250, 0},
-		{"a broad line", 1, 1200, 4000, 3},
+		{"a broad line", 1, 1200, 4000, 2},
 		{"two narrow lines", 2, 60, 250, 1},
 	} {
 		r := rand.New(rand.NewPCG(7, 3728))

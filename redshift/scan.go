@@ -184,6 +184,11 @@ func (s *scanner) reset(l *level) {
 func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, surv *[ladderSize]float64, limit, apart int) []float64 {
 	kmin := int(math.Ceil(math.Log10(1+f.ZMin) / l.step))
 	kmax := int(math.Floor(math.Log10(1+f.ZMax) / l.step))
+	if first, last, ok := f.lineSpan(); ok {
+		// Elsewhere no line falls on the spectrum.
+		kmin = max(kmin, int(math.Floor((l.start-last)/l.step)))
+		kmax = min(kmax, int(math.Ceil((l.start-first)/l.step))+l.n)
+	}
 	lags := max(0, kmax-kmin+1)
 	s.num, s.den, s.drop = grow(s.num, lags), grow(s.den, lags), grow(s.drop, lags)
 	clear(s.drop)
@@ -254,6 +259,22 @@ func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, su
 		}
 	}
 	return dst
+}
+
+// lineSpan returns the log10 wavelengths of the bluest and the reddest line; ok is
+// false for a family with a composite, which may reach further.
+func (f *Family) lineSpan() (first, last float64, ok bool) {
+	first, last = math.Inf(1), math.Inf(-1)
+	for i := range f.components {
+		if f.components[i].stack != nil {
+			return 0, 0, false
+		}
+		for j := range f.components[i].terms {
+			w := f.components[i].terms[j].logWave
+			first, last = math.Min(first, w), math.Max(last, w)
+		}
+	}
+	return first, last, last >= first
 }
 
 // addDrops adds what the component at hand takes off chi^2 at each lag.
