@@ -171,6 +171,9 @@ func TestNominateFindsLines(t *testing.T) {
 			l := bareLevel(4600)
 			l.start = math.Log10(3600)
 			z := 0.5 * (f.ZMin + f.ZMax)
+			if f.Name == "emission" {
+				z = 0.8 // in the middle of its range the optical has none of its lines
+			}
 			shift := math.Round(math.Log10(1+z)/testStep) * testStep
 			var d drawing
 			for c := range f.components {
