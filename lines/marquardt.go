@@ -58,7 +58,7 @@ const (
 	// promises less than this of chi^2: it moves no parameter by more than
 	// 0.03 of its error, and what it leaves is of second order in that.
 	lastGain = 1e-3
-	// slowGain: after three steps that gained less, along a narrow valley,
+	// slowGain: after two steps that gained less, along a narrow valley,
 	// the search ends.
 	slowGain = 0.1
 	maxDamp  = 1e8
@@ -109,7 +109,7 @@ func (m *marquardt) minimize(f model) bool {
 			if lambda *= 0.1; lambda < 1e-4 {
 				lambda = 0
 			}
-			if slow == 3 {
+			if slow == 2 {
 				break
 			}
 			continue
