@@ -151,6 +151,9 @@ func TestPublishedMgII(t *testing.T) {
 // within 600 km/s, both lines 1 % inside the coverage and redward of Lyman alpha,
 // off the telluric bands.
 func TestPublishedDoublets(t *testing.T) {
+	if testing.Short() {
+		t.Skip("statistics: long, and nothing runs at the same time")
+	}
 	dir := outside.Spectra(t)
 	f := absorberFinder(t)
 	kinds := map[string]string{"MgII_2796": absorbers.MgII, "CIV_1548": absorbers.CIV, "SiIV_1393": absorbers.SiIV, "AlIII_1854": absorbers.AlIII}

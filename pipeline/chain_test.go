@@ -72,6 +72,9 @@ func BenchmarkShortChain(b *testing.B) {
 
 // Short spectra of low resolution: what is called secure is right.
 func TestShortSpectra(t *testing.T) {
+	if testing.Short() {
+		t.Skip("statistics: long, and nothing runs at the same time")
+	}
 	f, truth := shortFile(t, 512)
 	worker := shortChain(t).NewWorker()
 	secure, right, wrong := 0, 0, 0

@@ -47,6 +47,9 @@ func stretchedFinder(t *testing.T, factor float64) *absorbers.Finder {
 // Those at a line of an accepted doublet are left out, because real lines are no
 // chance. Redshifts are the published ones.
 func TestChancePairs(t *testing.T) {
+	if testing.Short() {
+		t.Skip("statistics: long, and nothing runs at the same time")
+	}
 	dir := outside.Spectra(t)
 	real, decoys := stretchedFinder(t, 1), []*absorbers.Finder{stretchedFinder(t, 1.6), stretchedFinder(t, 2.2)}
 	x := func(s *absorbers.System) float64 {

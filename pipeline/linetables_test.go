@@ -192,6 +192,9 @@ func (k *target) sum(rows []catalog.Line, parts bool) (flux, fluxErr, ew, ewErr 
 //     C III] and Si III] are one.
 //   - [N II] 6548 and [O I] 6364 are free there and have the ratio of physics here.
 func TestSurveyLineTables(t *testing.T) {
+	if testing.Short() {
+		t.Skip("statistics: long, and nothing runs at the same time")
+	}
 	dir := outside.Spectra(t)
 	chain, err := pipeline.NewChain(pipeline.DefaultSettings())
 	if err != nil {
