@@ -13,11 +13,11 @@ import (
 var lya = hydrogen.AbsorptionLine{Wave: 1215.6701, F: 0.4164, Gamma: 6.265e8}
 
 // The inverse of the curve of growth. Source of the equivalent widths:
-// testdata/cog_ew.csv, computed by 64-point Gauss-Legendre quadrature. Their ten
+// ../testdata/cog_ew.csv, computed by 64-point Gauss-Legendre quadrature. Their ten
 // digits and the 2e-6 of EquivalentWidth are magnified by 1/slope, on the flat
 // part up to twenty times.
 func TestColumnOf(t *testing.T) {
-	f, err := os.Open("testdata/cog_ew.csv")
+	f, err := os.Open("../testdata/cog_ew.csv")
 	if err != nil {
 		t.Fatal(err)
 	}

@@ -17,7 +17,7 @@ func TestOpticalDepthConstants(t *testing.T) {
 }
 
 func TestEquivalentWidths(t *testing.T) {
-	c := readTable(t, "cog_ew.csv", 180)
+	c := readTable(t, "../../testdata/cog_ew.csv", 180)
 	for i := range c.rows {
 		line := AbsorptionLine{Wave: c.number(i, "lambda0_A"), F: c.number(i, "f"), Gamma: c.number(i, "gamma_s-1")}
 		b, logN := c.number(i, "b_km_s"), c.number(i, "logN_cm-2")
