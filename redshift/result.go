@@ -369,7 +369,7 @@ func (f *Finder) rStat(s *Scratch, p *peak) float64 {
 			k := rung(comp.sigmaKms(t, p.width) / (speedOfLight * ln10 * l.step))
 			num, _ := s.scan.resp.get(k, kind)
 			x := int(math.Round((t.logWave + p.shift - l.start) / l.step))
-			s.scan.gather(corr, num, x-half, p.fit.amp[c]*t.amp)
+			gather(corr, num, x-half, p.fit.amp[c]*t.amp)
 		}
 	}
 	h := corr[half]

@@ -23,9 +23,20 @@ const (
 	ladderFirst = 1.0
 	ladderRatio = 1.3
 	ladderSize  = 19 // up to 112 pixels
-	binFrom     = 9  // widths from this rung on are filtered on binned pixels
-	binFactor   = 4
+	binFrom     = 6  // widths from this rung on are filtered on pixels binned by two
+	binMoreFrom = 9  // and from this on by four
 )
+
+// binning returns how many pixels are binned to filter at rung k.
+func binning(k int) int {
+	switch {
+	case k >= binMoreFrom:
+		return 4
+	case k >= binFrom:
+		return 2
+	}
+	return 1
+}
 
 func rung(sigmaPixels float64) int {
 	k := int(math.Round(math.Log(sigmaPixels/ladderFirst) / math.Log(ladderRatio)))
@@ -40,50 +51,54 @@ func rungSigma(k int) float64 { return ladderFirst * math.Pow(ladderRatio, float
 type responses struct {
 	have     [ladderSize][2]bool
 	num, den [ladderSize][2][]float64
-	source   [2][2][]float64 // kind, num/den
-	binned   [2][2][]float64
-	tmp      []float64
+	// source holds the sums to be filtered by kind, numerator or denominator,
+	// and the power of two of the binning.
+	source [2][2][3][]float64
+	tmp    []float64
 }
 
 func (r *responses) reset(l *level) {
 	r.have = [ladderSize][2]bool{}
-	for kind := 0; kind < 2; kind++ {
-		for q := 0; q < 2; q++ {
-			r.source[kind][q] = grow(r.source[kind][q], l.n)
+	for kind := range r.source {
+		for q := range r.source[kind] {
+			r.source[kind][q][0] = grow(r.source[kind][q][0], l.n)
 		}
 	}
 	for i := 0; i < l.n; i++ {
 		w, c := l.weight[i], l.cont[i]
 		wr := w * l.resid[i]
-		r.source[0][0][i], r.source[0][1][i] = wr, w
-		r.source[1][0][i], r.source[1][1][i] = -wr*c, w*c*c
+		r.source[0][0][0][i], r.source[0][1][0][i] = wr, w
+		r.source[1][0][0][i], r.source[1][1][0][i] = -wr*c, w*c*c
 	}
-	nb := (l.n + binFactor - 1) / binFactor
-	for kind := 0; kind < 2; kind++ {
-		for q := 0; q < 2; q++ {
-			b := grow(r.binned[kind][q], nb)
-			clear(b)
-			for i, v := range r.source[kind][q] {
-				b[i/binFactor] += v
-			}
-			r.binned[kind][q] = b
+	for kind := range r.source {
+		for q := range r.source[kind] {
+			s := &r.source[kind][q]
+			s[1] = halve(s[1], s[0])
+			s[2] = halve(s[2], s[1])
 		}
 	}
+}
+
+// halve writes the sums of two neighbors each.
+func halve(dst, src []float64) []float64 {
+	dst = grow(dst, (len(src)+1)/2)
+	for j := range len(src) / 2 {
+		dst[j] = src[2*j] + src[2*j+1]
+	}
+	if len(src)%2 == 1 {
+		dst[len(dst)-1] = src[len(src)-1]
+	}
+	return dst
 }
 
 // get returns the responses of a rung and kind, made at first use.
 func (r *responses) get(k, kind int) (num, den []float64) {
 	if !r.have[k][kind] {
-		n := len(r.source[kind][0])
+		n := len(r.source[kind][0][0])
 		r.num[k][kind], r.den[k][kind] = grow(r.num[k][kind], n), grow(r.den[k][kind], n)
 		sigma := rungSigma(k)
-		if k < binFrom {
-			r.filter(r.num[k][kind], r.source[kind][0], sigma)
-			r.filter(r.den[k][kind], r.source[kind][1], sigma/math.Sqrt2)
-		} else {
-			r.filterBinned(r.num[k][kind], r.binned[kind][0], sigma)
-			r.filterBinned(r.den[k][kind], r.binned[kind][1], sigma/math.Sqrt2)
-		}
+		r.filterBinned(r.num[k][kind], &r.source[kind][0], sigma, binning(k))
+		r.filterBinned(r.den[k][kind], &r.source[kind][1], sigma/math.Sqrt2, binning(k))
 		r.have[k][kind] = true
 	}
 	return r.num[k][kind], r.den[k][kind]
@@ -102,20 +117,35 @@ func (r *responses) filter(dst, src []float64, sigma float64) {
 }
 
 // filterBinned does the same on binned sums and interpolates linearly between
-// their centers.
-func (r *responses) filterBinned(dst, src []float64, sigma float64) {
-	r.tmp = grow(r.tmp, len(src))
-	r.filter(r.tmp, src, sigma/binFactor)
-	last := len(src) - 1
-	for i := range dst {
-		p := (float64(i)+0.5)/binFactor - 0.5
-		j := max(0, min(last-1, int(math.Floor(p))))
-		if last == 0 {
-			dst[i] = r.tmp[0]
-			continue
+// their centers; outside of these the outermost holds.
+func (r *responses) filterBinned(dst []float64, source *[3][]float64, sigma float64, factor int) {
+	if factor == 1 {
+		r.filter(dst, source[0], sigma)
+		return
+	}
+	src := source[factor/2]
+	m, half := len(src), factor/2
+	r.tmp = grow(r.tmp, m)
+	r.filter(r.tmp, src, sigma/float64(factor))
+	for i := range min(half, len(dst)) {
+		dst[i] = r.tmp[0]
+	}
+	// Pixels from the center of bin j to that of the next.
+	var share [4]float64
+	for i := range factor {
+		share[i] = (float64(i) + 0.5) / float64(factor)
+	}
+	end := (m-1)*factor + half
+	for j := 0; j+1 < m; j++ {
+		a, d := r.tmp[j], r.tmp[j+1]-r.tmp[j]
+		lo := j*factor + half
+		part := dst[lo:min(lo+factor, len(dst))]
+		for i := range part {
+			part[i] = a + share[i]*d
 		}
-		u := max(0, min(1, p-float64(j)))
-		dst[i] = (1-u)*r.tmp[j] + u*r.tmp[j+1]
+	}
+	for i := min(end, len(dst)); i < len(dst); i++ {
+		dst[i] = r.tmp[m-1]
 	}
 }
 
@@ -196,13 +226,16 @@ func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, su
 		comp := &f.components[c]
 		if comp.stack != nil {
 			s.dense.correlate(s.num, s.den, l, comp.stack, float64(kmin)*l.step)
-			s.addDrops()
+			addDrops(s.drop, s.num, s.den)
 		}
-		if len(comp.terms) == 0 {
+		// Lags at which a line of the component falls on the spectrum.
+		lo, hi := comp.lags(l, kmin, lags)
+		if lo >= hi {
 			continue
 		}
-		clear(s.num)
-		clear(s.den)
+		sumNum, sumDen := s.num[lo:hi], s.den[lo:hi]
+		clear(sumNum)
+		clear(sumDen)
 		kind := 0
 		if comp.absorption {
 			kind = 1
@@ -213,8 +246,9 @@ func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, su
 			k := rung(sp)
 			num, den := s.resp.get(k, kind)
 			p := (t.logWave - l.start) / l.step
-			s.gather(s.num, num, int(math.Round(p))+kmin, t.amp)
-			s.gather(s.den, den, int(math.Round(p))+kmin, t.amp*t.amp*surv[k])
+			at := int(math.Round(p)) + kmin + lo
+			gather(sumNum, num, at, t.amp)
+			gather(sumDen, den, at, t.amp*t.amp*surv[k])
 			// Cross terms with overlapping lines of the component: the product
 			// of two equal Gaussians is one between them.
 			for j := i + 1; j < len(comp.terms); j++ {
@@ -224,10 +258,10 @@ func (s *scanner) nominate(dst []float64, l *level, f *Family, width float64, su
 				if x < 0.02 {
 					continue
 				}
-				s.gather(s.den, den, int(math.Round(p+0.5*d))+kmin, 2*t.amp*u.amp*x*surv[k])
+				gather(sumDen, den, int(math.Round(p+0.5*d))+kmin+lo, 2*t.amp*u.amp*x*surv[k])
 			}
 		}
-		s.addDrops()
+		addDrops(s.drop[lo:hi], sumNum, sumDen)
 	}
 	s.order = s.order[:0]
 	for i, v := range s.drop {
@@ -277,17 +311,33 @@ func (f *Family) lineSpan() (first, last float64, ok bool) {
 	return first, last, last >= first
 }
 
-// addDrops adds what the component at hand takes off chi^2 at each lag.
-func (s *scanner) addDrops() {
-	for i, v := range s.num {
-		if v > 0 && s.den[i] > 0 {
-			s.drop[i] += v * v / s.den[i]
+// lags returns the range of lags from kmin, n of them, at which one of the lines
+// falls on the level; empty for a component without lines.
+func (c *component) lags(l *level, kmin, n int) (lo, hi int) {
+	if len(c.terms) == 0 {
+		return 0, 0
+	}
+	lo, hi = n, 0
+	for i := range c.terms {
+		p := int(math.Round((c.terms[i].logWave-l.start)/l.step)) + kmin
+		lo, hi = min(lo, -p), max(hi, l.n-p)
+	}
+	return max(0, lo), min(n, hi)
+}
+
+// addDrops adds what a component takes off chi^2 at each lag: the matched filter
+// num^2/den where num is positive.
+func addDrops(drop, num, den []float64) {
+	num, den = num[:len(drop)], den[:len(drop)]
+	for i, v := range num {
+		if d := den[i]; v > 0 && d > 0 {
+			drop[i] += v * v / d
 		}
 	}
 }
 
 // gather adds amp*resp[p+j] to dst[j] for all j where p+j is inside resp.
-func (s *scanner) gather(dst, resp []float64, p int, amp float64) {
+func gather(dst, resp []float64, p int, amp float64) {
 	lo, hi := max(0, -p), min(len(dst), len(resp)-p)
 	if lo < hi {
 		floats.AddScaled(dst[lo:hi], amp, resp[p+lo:p+hi])
