@@ -4,7 +4,6 @@ import (
 	"cmp"
 	"math"
 	"slices"
-	"sort"
 
 	"duskline/spectrum"
 )
@@ -28,6 +27,13 @@ const (
 	edgeFrom   = 2.5
 	bridgeKms  = 50
 	bridgeFrom = 3.0
+	// What lies outside contradicts the ratio by drawFrom of its error where
+	// something else begins.
+	drawFrom = 3.0
+	// linkKms is the gap over which neighbors are one system: published systems at
+	// redshift 6 have components up to 181 km/s apart, each of
+	// which reaches some 40 km/s to either side.
+	linkKms = 100.0
 	// sumFrom is the significance that the sum over the stronger line must have.
 	sumFrom = 3.0
 	// foreignFrom is by how many errors a pixel must be deeper than the other
@@ -60,6 +66,7 @@ type metals struct {
 	sum           [2][]float64 // running sums of weight and weight*depth
 	box           []float64    // significance of the box around every pixel
 	found         []candidate
+	accepted      []measured
 	taken         []bool // pixels that an accepted system explains
 	memory        float64
 }
@@ -104,29 +111,22 @@ func (s *Scratch) findDoublets(dst []System, f *Finder, opt Options, first int) 
 		}
 	}
 	s.judge(f, len(t.x)-first)
-	start := len(dst)
+	m.accepted = m.accepted[:0]
 	for _, c := range m.found {
 		if sys, ok := s.measureDoublet(f, c, opt); ok && !s.unlikely(f, &sys, first) {
-			s.take(c.x, sys.low, sys.high)
-			s.take(c.x+f.doublets[c.doublet].split, sys.low, sys.high)
-			dst = append(dst, sys.System)
+			split := f.doublets[c.doublet].split
+			s.take(sys.low, sys.high)
+			s.take(sys.low+split, sys.high+split)
+			m.accepted = append(m.accepted, sys)
 		}
 	}
-	out := dst[start:]
-	rank := func(kind string) int {
-		for d := range f.doublets {
-			if f.doublets[d].kind == kind {
-				return d
-			}
-		}
-		return -1
-	}
-	sort.SliceStable(out, func(i, j int) bool {
-		if a, b := rank(out[i].Kind), rank(out[j].Kind); a != b {
-			return a < b
-		}
-		return out[i].Z < out[j].Z
+	m.accepted = s.link(f, m.accepted, opt)
+	slices.SortStableFunc(m.accepted, func(a, b measured) int {
+		return cmp.Or(cmp.Compare(a.doublet, b.doublet), cmp.Compare(a.Z, b.Z))
 	})
+	for _, sys := range m.accepted {
+		dst = append(dst, sys.System)
+	}
 	return dst
 }
 

@@ -28,6 +28,37 @@ func (s *Scratch) outward(x, split, v, step, most float64) float64 {
 	return v
 }
 
+// drawBack moves the end v of the range of a doublet at x back toward least, to where
+// what lies outside contradicts the ratio of the two lines most, if it does so by
+// drawFrom of its error: then another line begins there.
+func (s *Scratch) drawBack(x float64, d *doublet, v, least, step float64) float64 {
+	end, worst := v, drawFrom
+	if least < 0 {
+		step = -step
+	}
+	// Excess of either line over what the other allows, summed inward.
+	var strong, weak, strongVar, weakVar, n float64
+	// depthAt means two pixels, so that variances of its sum are twice as large.
+	double := 2 * s.metal.memory
+	for u := v; (u-least)*step > 0; u -= step {
+		a, ea := s.depthAt(x + u)
+		b, eb := s.depthAt(x + u + d.split)
+		if math.IsInf(ea, 1) || math.IsInf(eb, 1) {
+			continue
+		}
+		n++
+		strong += a - d.ratio*b
+		weak += b - a
+		strongVar += ea*ea + d.ratio*d.ratio*eb*eb
+		weakVar += ea*ea + eb*eb
+		floor := n * contFloor * d.ratio
+		if p := max(strong/math.Hypot(math.Sqrt(double*strongVar), floor), weak/math.Hypot(math.Sqrt(double*weakVar), floor)); p > worst {
+			end, worst = u-step, p
+		}
+	}
+	return end
+}
+
 // pairSeen reports whether both lines at offset v from x absorb together by
 // more than from of their error, in a ratio that they can have.
 func (s *Scratch) pairSeen(x, split, v, from float64) bool {
@@ -87,26 +118,32 @@ func (s *Scratch) measureDoublet(f *Finder, c candidate, opt Options) (sys measu
 	d := &f.doublets[c.doublet]
 	i := index(t.x, c.x)
 	step := t.dx[min(i, len(t.dx)-1)]
-	p := &c.fit
 	// Outward from the fitted place, and as much more as the instrument spreads.
 	most := 0.5 * d.split
 	margin := max(step, 1.7*t.sres[min(i, len(t.sres)-1)])
-	least := max(step, leastRange*p.sigma)
-	low := max(s.outward(c.x, d.split, -least, -step, most)-margin, -most)
-	high := min(s.outward(c.x, d.split, least, step, most)+margin, most)
-	a, b := s.sumLine(c.x, low, high, d.split, d.ratio), s.sumLine(c.x+d.split, low, high, -d.split, 1)
-	sys = measured{System: blank(d.kind), low: low, high: high}
-	if a.taken > 0.3 || b.taken > 0.3 || a.good < 0.7 || b.good < 0.5 || !(a.ew > sumFrom*a.err) || !(b.ew > 0) {
+	least := max(step, leastRange*c.fit.sigma)
+	low, high := s.outward(c.x, d.split, -least, -step, most), s.outward(c.x, d.split, least, step, most)
+	low, high = s.drawBack(c.x, d, low, -least, step), s.drawBack(c.x, d, high, least, step)
+	low, high = max(low-margin, -most), min(high+margin, most)
+	if s.mismatch(c.x, d, low, high, step) > mostMismatch {
 		return sys, false
 	}
-	if s.mismatch(c.x, d, low, high, step) > mostMismatch {
+	return s.sumDoublet(f, c.doublet, c.x, low, high, opt)
+}
+
+// sumDoublet sums both lines of a doublet at x from low to high.
+func (s *Scratch) sumDoublet(f *Finder, doublet int, x, low, high float64, opt Options) (sys measured, ok bool) {
+	d := &f.doublets[doublet]
+	a, b := s.sumLine(x, low, high, d.split, d.ratio), s.sumLine(x+d.split, low, high, -d.split, 1)
+	sys = measured{System: blank(d.kind), doublet: doublet, low: x + low, high: x + high}
+	if a.taken > 0.3 || b.taken > 0.3 || a.good < 0.7 || b.good < 0.5 || !(a.ew > sumFrom*a.err) || !(b.ew > 0) {
 		return sys, false
 	}
 	// Centers weigh by their errors; the ratio of errors of a and b follows
 	// from the equivalent widths.
 	wa, wb := 1/(a.centerErr*a.centerErr), 1/(b.centerErr*b.centerErr)
-	x := (a.center*wa + (b.center-d.split)*wb) / (wa + wb)
-	z := math.Expm1(x/spectrum.SpeedOfLight - math.Log(d.strong.Wave))
+	center := (a.center*wa + (b.center-d.split)*wb) / (wa + wb)
+	z := math.Expm1(center/spectrum.SpeedOfLight - math.Log(d.strong.Wave))
 	sys.Z, sys.ZErr = z, (1+z)/math.Sqrt(wa+wb)/spectrum.SpeedOfLight
 	toRest := d.strong.Wave / spectrum.SpeedOfLight
 	sys.EW, sys.EWErr = a.ew*toRest, a.err*toRest
@@ -120,7 +157,7 @@ func (s *Scratch) measureDoublet(f *Finder, c candidate, opt Options) (sys measu
 		return sys, false
 	}
 	// Whether something else lies on a line is told by the sums without limits.
-	ra, rb := s.sumLine(c.x, low, high, 0, 0), s.sumLine(c.x+d.split, low, high, 0, 0)
+	ra, rb := s.sumLine(x, low, high, 0, 0), s.sumLine(x+d.split, low, high, 0, 0)
 	raw := ra.ew * d.strong.Wave / (rb.ew * d.weak.Wave)
 	if e := raw * math.Hypot(ra.err/ra.ew, rb.err/rb.ew); rb.ew <= 0 || raw < 1-2*e || raw > d.ratio+2*e {
 		sys.Flags |= RatioOff
@@ -137,13 +174,6 @@ func (s *Scratch) measureDoublet(f *Finder, c candidate, opt Options) (sys measu
 	return sys, true
 }
 
-// measured is a doublet with the range over which its lines were summed, km/s
-// from the place of the fit.
-type measured struct {
-	System
-	low, high float64
-}
-
 // unlikely reports whether an Al III doublet stands against what else the
 // spectrum shows of that gas: C IV or Mg II is covered and none of them is as
 // strong. Aluminum is too rare for that (common practice, no source).
@@ -153,16 +183,18 @@ func (s *Scratch) unlikely(f *Finder, sys *measured, first int) bool {
 	}
 	t := &s.track
 	covered := false
+	own := spectrum.SpeedOfLight * (math.Log(f.doublets[sys.doublet].strong.Wave) + math.Log1p(sys.Z))
 	for k := range f.doublets {
 		d := &f.doublets[k]
 		if d.kind != CIV && d.kind != MgII {
 			continue
 		}
 		x := spectrum.SpeedOfLight * (math.Log(d.strong.Wave) + math.Log1p(sys.Z))
-		if first >= len(t.x) || x+sys.low < t.x[first] || x+sys.high > t.x[len(t.x)-1] {
+		low, high := sys.low-own, sys.high-own
+		if first >= len(t.x) || x+low < t.x[first] || x+high > t.x[len(t.x)-1] {
 			continue
 		}
-		sum := s.sumLine(x, sys.low, sys.high, 0, 0)
+		sum := s.sumLine(x, low, high, 0, 0)
 		if sum.good < 0.7 {
 			continue
 		}
@@ -254,12 +286,4 @@ func (s *Scratch) foreign(i int, other, most float64) (allowed, err float64, yes
 	err = most * math.Sqrt((1-q)*(1-q)/m.weight[k-1]+q*q/m.weight[k])
 	allowed = max(most*depth, 0)
 	return allowed, err, m.depth[i]-allowed > foreignFrom*math.Hypot(math.Hypot(err, contFloor), 1/math.Sqrt(m.weight[i]))
-}
-
-// take marks the pixels of an accepted line.
-func (s *Scratch) take(x, low, high float64) {
-	t := &s.track
-	for i := index(t.x, x+low); i < len(t.x) && t.x[i] <= x+high; i++ {
-		s.metal.taken[i] = true
-	}
 }

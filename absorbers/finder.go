@@ -127,7 +127,8 @@ type Scratch struct {
 	order []int
 	red   envelope
 	metal metals
-	looks []float64
+	// Scatter of pixels, in order, and the weights as stated.
+	looks, stated []float64
 
 	forest                             forest
 	limit                              limits
