@@ -27,6 +27,7 @@ type forest struct {
 	scale    float64   // typical flux
 	memory   float64   // by how much correlation of neighboring bins raises that of wide means
 	sres     float64   // instrument's sigma, km/s
+	lines    bool      // the background has broad emission lines
 	basis    [][]float64
 	keep     []bool
 	shade    []float64 // transmission of the systems found, 1 at first
@@ -121,13 +122,17 @@ const (
 // follow fits the level: the mean transmission times a parabola and bumps where
 // the background has emission lines, by least squares, without the bins of
 // damped lines. It reports whether the fit stands.
-func (f *forest) follow(z float64) bool {
+func (f *forest) follow(opt Options) bool {
 	n := len(f.flux)
+	f.lines = opt.Before == BeforeQuasar
+	if opt.Before == BeforeGalaxy {
+		f.hideOwn(opt.Z)
+	}
 	f.shade = resize(f.shade, n)
 	for i := range f.shade {
 		f.shade[i] = 1
 	}
-	f.prepare(z)
+	f.prepare(opt.Z)
 	f.scatter, f.scale = 0.2, f.typical()
 	for round := range levelRounds {
 		if !f.refit() {
@@ -192,6 +197,9 @@ func (f *forest) prepare(z float64) {
 		u := (rest - 1100) / 150
 		f.basis[0][i], f.basis[1][i], f.basis[2][i] = f.mean[i], f.mean[i]*u, f.mean[i]*u*u
 		for b, k := range bumps {
+			if !f.lines {
+				break
+			}
 			d := (rest - k.wave) / k.sigma
 			f.basis[3+b][i] = f.mean[i] * math.Exp(-0.5*d*d)
 		}

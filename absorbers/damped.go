@@ -40,6 +40,7 @@ type damped struct {
 	null    []float64                // running sum of -2 ln likelihood without a system
 	level   []float64                // level with the systems found so far
 	found   []cloud
+	least   float64 // column from which systems are kept, log10
 }
 
 // cloud is one hydrogen system: parameters and their errors.
@@ -126,6 +127,10 @@ func (s *Scratch) cost(i int, level, t float64) float64 {
 func (s *Scratch) findDamped(f *Finder, opt Options) {
 	d, fo := &s.damp, &s.forest
 	d.found = d.found[:0]
+	d.least = keepLogN
+	if opt.Before == BeforeGalaxy {
+		d.least = ownLogN
+	}
 	s.prepareShapes(f)
 	d.level = append(d.level[:0], fo.level...)
 	if n := len(fo.flux); cap(s.refused) < n {
@@ -190,7 +195,7 @@ func (s *Scratch) bestCenter(f *Finder, opt Options) (best cloud, ok bool) {
 	d.null = resize(d.null, n+1)
 	s.emptyCosts(d.null, 0, n, func(i int) float64 { return d.level[i] })
 	core := int(coreKms / fo.step)
-	last := min(n-1, s.bin(f, spectrum.SpeedOfLight*math.Log1p(opt.Z)+aheadKms+3*spectrum.SpeedOfLight*max(0, opt.ZErr)/(1+opt.Z)))
+	last := min(n-1, s.bin(f, opt.lastHydrogen()))
 	best.gain = searchGain
 	at, column := -1, 0
 	for i := max(core, fo.first); i <= last; i++ {

@@ -344,7 +344,7 @@ func BenchmarkFind(b *testing.B) {
 		opt  Options
 		arms []Arm
 	}{{"none", Options{Z: none.z}, []Arm{none.arm}}, {"one", Options{Z: one.z}, []Arm{one.arm}}, {"whole", Options{Z: one.z}, []Arm{one.arm, red}},
-		{"galaxy", Options{Z: 0.6, OwnLines: true}, []Arm{bare(10)}}} {
+		{"galaxy", Options{Z: 0.6, Before: BeforeGalaxy}, []Arm{bare(10)}}} {
 		b.Run(bc.name, func(b *testing.B) {
 			var sc Scratch
 			out := f.Find(nil, bc.arms, bc.opt, &sc)

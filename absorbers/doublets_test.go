@@ -146,18 +146,14 @@ func TestOwnLines(t *testing.T) {
 	r := rand.New(rand.NewPCG(39, 7))
 	for _, tc := range []struct {
 		z    float64
-		own  bool
+		own  Background
 		want int
-	}{{1.0, false, 1}, {1.0, true, 1}, {1.198, false, 1}, {1.198, true, 0}} {
+	}{{1.0, BeforeQuasar, 1}, {1.0, BeforeGalaxy, 1}, {1.198, BeforeQuasar, 1}, {1.198, BeforeGalaxy, 0}} {
 		a := noisyCopy(bare(20, [4]float64{2796.3522, tc.z, 1.2, 90}, [4]float64{2803.531, tc.z, 0.9, 90}), r)
-		got := f.Find(nil, []Arm{a}, Options{Z: 1.2, OwnLines: tc.own}, nil)
+		got := f.Find(nil, []Arm{a}, Options{Z: 1.2, Before: tc.own}, nil)
 		if len(got) != tc.want {
-			t.Errorf("redshift %g, own lines %v: %+v", tc.z, tc.own, got)
+			t.Errorf("redshift %g, background %v: %+v", tc.z, tc.own, got)
 		}
-	}
-	q := makeQuasar(rand.New(rand.NewPCG(9, 9)), 10, 20.8)
-	if got := hydrogenOnly(f.Find(nil, []Arm{q.arm}, Options{Z: q.z, OwnLines: true}, nil)); len(got) > 0 {
-		t.Errorf("hydrogen in front of a galaxy: %+v", got)
 	}
 }
 

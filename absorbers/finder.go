@@ -55,23 +55,44 @@ type System struct {
 	Flags        Flags
 }
 
+// Background says what light the absorbers stand in front of.
+type Background int
+
+const (
+	// BeforeQuasar: hydrogen and doublets up to the object and a little beyond.
+	BeforeQuasar Background = iota
+	// BeforeGalaxy: interstellar and stellar lines of its own are left out of the
+	// forest, systems lie ownKms in front of it, hydrogen ownHydrogenKms and from
+	// ownLogN on, and no Lyman limit is looked for: galaxies have their own.
+	BeforeGalaxy
+	// BeforeStar: hydrogen of the interstellar medium at the velocity of the star,
+	// without Lyman limit and doublets. It is the caller's to know that the star
+	// has no broad Lyman alpha of its own.
+	BeforeStar
+)
+
 // Options steers a search.
 type Options struct {
 	Z, ZErr float64 // redshift of the background
-	// OwnLines says that the background has interstellar and stellar absorption
-	// of its own, as galaxies have: hydrogen is not looked for, because such
-	// lines blueward of Lyman alpha (Si II 1190, Si III 1207, C III 1176) pass
-	// for sub-damped systems, and doublets must lie ownKms in front of it.
-	OwnLines bool
+	Before  Background
 }
 
 // last returns c ln(1+z) of the farthest doublet that is looked for.
 func (o Options) last() float64 {
 	x := spectrum.SpeedOfLight * math.Log1p(o.Z)
-	if o.OwnLines {
+	if o.Before == BeforeGalaxy {
 		return x - ownKms
 	}
 	return x + behindKms
+}
+
+// lastHydrogen returns c ln(1+z) of the farthest hydrogen.
+func (o Options) lastHydrogen() float64 {
+	x := spectrum.SpeedOfLight * math.Log1p(o.Z)
+	if o.Before == BeforeGalaxy {
+		return x - ownHydrogenKms
+	}
+	return x + aheadKms + 3*spectrum.SpeedOfLight*max(0, o.ZErr)/(1+o.Z)
 }
 
 // doublet is a resonance doublet of the line list.
@@ -163,10 +184,15 @@ func (f *Finder) Find(dst []System, arms []Arm, opt Options, scratch *Scratch) [
 	if len(s.track.x) < 2*envelopeLeast {
 		return dst
 	}
-	if !opt.OwnLines && s.forest.fill(&s.track, opt.Z) && s.forest.follow(opt.Z) {
+	if s.forest.fill(&s.track, opt.Z) && s.forest.follow(opt) {
 		s.findDamped(f, opt)
 		dst = s.reportHydrogen(dst, f, opt)
-		dst = s.findLimit(dst, f, opt)
+		if opt.Before == BeforeQuasar {
+			dst = s.findLimit(dst, f, opt)
+		}
+	}
+	if opt.Before == BeforeStar {
+		return dst
 	}
 	// Doublets are looked for redward of Lyman alpha of the background.
 	first := index(s.track.x, spectrum.SpeedOfLight*math.Log(f.series[0].Wave*(1+opt.Z))+behindKms)

@@ -55,7 +55,7 @@ func (s *Scratch) fitClouds(f *Finder, k int) bool {
 	s.saved = before
 	ok := s.solveJoint(f)
 	c := &d.found[k]
-	ok = ok && c.logN >= keepLogN && c.nErr < 1 && s.gainOf(f, k) > keepGain
+	ok = ok && c.logN >= d.least && c.nErr < 1 && s.gainOf(f, k) > keepGain
 	if !ok {
 		copy(d.found, before)
 		return false

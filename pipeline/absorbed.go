@@ -1,22 +1,56 @@
 package pipeline
 
 import (
+	"math"
+
 	"duskline/absorbers"
 	"duskline/catalog"
 	"duskline/redshift"
 )
 
-// sightline is a worker's search for absorbers in front of quasars and galaxies.
+// sightline is a worker's search for absorbers in front of an object.
 type sightline struct {
 	scratch absorbers.Scratch
 	arms    []absorbers.Arm
 	found   []absorbers.System
 }
 
-// absorb returns the absorbers in front of a quasar or galaxy, none for other objects. It
-// reads the arms that measure has filled.
+// mostOwnBalmer is the equivalent width of H-beta, Angstrom, up to which the Lyman alpha
+// of a hot star is taken for interstellar. That of white dwarfs and of stars later
+// than about B1 is their own and as wide as a damped one (Diplas & Savage 1994 leave
+// such stars out; the width that goes with B1 is from memory).
+const mostOwnBalmer = 5.0
+
+// background says what kind of light an object is for the search for absorbers; ok is
+// false where there is none to look for.
+func (b *Bench) background(res *redshift.Result) (kind absorbers.Background, ok bool) {
+	switch res.Class {
+	case catalog.Quasar:
+		return absorbers.BeforeQuasar, true
+	case catalog.Galaxy:
+		return absorbers.BeforeGalaxy, true
+	case catalog.Star:
+		if res.Family != "hot" && res.Family != "helium" {
+			return 0, false
+		}
+		for i := range b.results {
+			// Where H-beta is not seen the result is a limit, and as good.
+			if r := &b.results[i]; r.Name == "Hb" && r.Reason == "" {
+				return absorbers.BeforeStar, math.Abs(r.EWRest)+2*r.EWRestErr < mostOwnBalmer
+			}
+		}
+	}
+	return 0, false
+}
+
+// absorb returns the absorbers in front of a quasar, a galaxy or a hot star, none for
+// other objects. It reads the arms and results that measure has filled.
 func (b *Bench) absorb(res *redshift.Result) []catalog.Absorber {
-	if (res.Class != catalog.Quasar && res.Class != catalog.Galaxy) || !b.level.ready {
+	if !b.level.ready {
+		return nil
+	}
+	before, ok := b.background(res)
+	if !ok {
 		return nil
 	}
 	l := &b.sight
@@ -24,7 +58,7 @@ func (b *Bench) absorb(res *redshift.Result) []catalog.Absorber {
 	for i := range b.arms {
 		l.arms = append(l.arms, absorbers.Arm(b.arms[i]))
 	}
-	l.found = b.chain.absorbers.Find(l.found[:0], l.arms, absorbers.Options{Z: res.Redshift, ZErr: res.RedshiftErr, OwnLines: res.Class == catalog.Galaxy}, &l.scratch)
+	l.found = b.chain.absorbers.Find(l.found[:0], l.arms, absorbers.Options{Z: res.Redshift, ZErr: res.RedshiftErr, Before: before}, &l.scratch)
 	if len(l.found) == 0 {
 		return nil
 	}
