@@ -31,6 +31,7 @@ type Family struct {
 	Widths  []float64
 
 	floor      float64 // km/s, least error of a redshift
+	scatters   []ScatterRecipe
 	components []component
 	expected   []expectedLine
 	needs      []int   // components of which one must be there, any if empty

@@ -105,6 +105,7 @@ type Scratch struct {
 	binErr      []float64
 	count       []int // of peaks, by family
 	traces      []trace
+	slope, part []float64 // change of the model with the redshift
 	single      drawing   // of one line
 	normal      []float64 // normalized residuals
 	inSpline    []float64 // of a single line: B^T W t

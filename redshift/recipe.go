@@ -21,6 +21,8 @@ type Recipe struct {
 	// Floor is the least one-sigma error of a redshift in km/s: what line
 	// shifts, blends and shapes leave however good the spectrum is.
 	Floor float64 `toml:"floor_kms"`
+	// Scatter names lines whose velocities differ from that of their object.
+	Scatter []ScatterRecipe `toml:"scatter"`
 	// Expected names the lines that should stand out when the family is right
 	// and the lines are covered.
 	Expected []string `toml:"expected"`
@@ -156,7 +158,10 @@ func ParseRecipeWith(file string, text []byte, list *linelist.List, stacks Stack
 	if len(r.Components) == 0 || len(r.Components) >= maxComponents {
 		bad("%d components, want 1 to %d", len(r.Components), maxComponents-1)
 	}
-	f := &Family{Name: r.Name, Class: r.Class, Summary: r.Summary, Widths: r.Widths, floor: r.Floor}
+	f := &Family{Name: r.Name, Class: r.Class, Summary: r.Summary, Widths: r.Widths, floor: r.Floor, scatters: r.Scatter}
+	for _, p := range checkScatters(r.Scatter, list) {
+		bad("%s", p)
+	}
 	if len(r.Redshift) == 2 {
 		f.ZMin, f.ZMax = r.Redshift[0], r.Redshift[1]
 	}

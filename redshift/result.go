@@ -128,8 +128,9 @@ func (f *Finder) conclude(g *spectrum.Grid, s *Scratch, res *Result) {
 }
 
 // redshiftError is the one-sigma error from the curvature of the chi^2 drop,
-// with the weights lowered where the model fails, which widens it, and the
-// family's floor added in quadrature.
+// with the weights lowered where the model fails, which widens it. The family's
+// floor and what its lines' own velocities and the forest leave in doubt are
+// added in quadrature.
 func (f *Finder) redshiftError(s *Scratch, p *peak) float64 {
 	l := &s.full
 	delta := l.step
@@ -148,7 +149,7 @@ func (f *Finder) redshiftError(s *Scratch, p *peak) float64 {
 		}
 		delta = math.Max(0.02*l.step, math.Min(60*l.step, sigma))
 	}
-	return (1 + p.z()) * math.Hypot(ln10*sigma, math.Hypot(p.family.floor, p.edgeDoubt(l))/speedOfLight)
+	return (1 + p.z()) * math.Hypot(ln10*sigma, math.Hypot(math.Hypot(p.family.floor, s.lineDoubt(p)), p.edgeDoubt(l))/speedOfLight)
 }
 
 // zoneScatter is by how many km/s the sizes of the zones that quasars thin around
@@ -231,8 +232,26 @@ type trace struct {
 	area       float64 // of that part
 }
 
+// blend returns the Gaussian of the area, center and variance of two.
+func (t trace) blend(o trace) trace {
+	a, b := t.amp*t.kms, o.amp*o.kms
+	if a+b == 0 {
+		return t
+	}
+	share := b / (a + b)
+	apart := (o.logWave - t.logWave) * ln10 * speedOfLight
+	if o.area > t.area {
+		t.breadth, t.area = o.breadth, o.area
+	}
+	t.logWave += share * (o.logWave - t.logWave)
+	t.kms = math.Sqrt((1-share)*t.kms*t.kms + share*o.kms*o.kms + share*(1-share)*apart*apart)
+	t.amp = (a + b) / t.kms
+	return t
+}
+
 // traces appends the lines of the model; a line in several components takes
-// the width of the one that gives it most.
+// the width of the one that gives it most. Where components shift it by less than
+// makes two lines of it, it is one of their area, center and variance.
 func (p *peak) traces(dst []trace) []trace {
 	for c := range p.family.components {
 		comp := &p.family.components[c]
@@ -241,10 +260,14 @@ func (p *peak) traces(dst []trace) []trace {
 			n := trace{t.name, comp.absorption, t.logWave, comp.sigmaKms(t, p.width), p.fit.amp[c] * t.amp, 0, 0}
 			n.breadth, n.area = n.kms, n.amp*n.kms
 			k := slices.IndexFunc(dst, func(o trace) bool {
-				return o.name != "" && o.name == n.name && o.absorption == n.absorption && o.logWave == n.logWave
+				return o.name != "" && o.name == n.name && o.absorption == n.absorption && math.Abs(o.logWave-n.logWave)*ln10*speedOfLight < 2*math.Max(o.kms, n.kms)
 			})
 			if k < 0 {
 				dst = append(dst, n)
+				continue
+			}
+			if dst[k].logWave != n.logWave {
+				dst[k] = dst[k].blend(n)
 				continue
 			}
 			if n.amp > dst[k].amp {

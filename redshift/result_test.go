@@ -232,3 +232,33 @@ func TestCapOutliers(t *testing.T) {
 		}
 	}
 }
+
+// A line that two components put at different places is one line where these lie
+// within the width of a blend, with its area, center and variance; else two.
+func TestTracesBlendShiftedParts(t *testing.T) {
+	const kms = 1000.0
+	for _, c := range []struct {
+		apart float64 // km/s
+		want  int
+	}{{0, 1}, {1500, 1}, {1999, 1}, {2001, 2}} {
+		f := &Family{}
+		for k, amp := range []float64{1, 3} {
+			f.components = append(f.components, component{scale: 1, terms: []term{
+				{name: "x", amp: amp, logWave: 3.2 - float64(k)*c.apart/(speedOfLight*ln10)}}})
+		}
+		p := peak{family: f, width: kms}
+		p.fit.amp[0], p.fit.amp[1] = 2, 2
+		got := p.traces(nil)
+		if len(got) != c.want {
+			t.Fatalf("%g km/s apart: %d lines, want %d", c.apart, len(got), c.want)
+		}
+		if c.want == 2 {
+			continue
+		}
+		sigma := math.Sqrt(kms*kms + 3.0/16*c.apart*c.apart)
+		if g := got[0]; math.Abs(g.kms/sigma-1) > 1e-12 || math.Abs(g.amp*g.kms/(8*kms)-1) > 1e-12 ||
+			math.Abs((3.2-g.logWave)*ln10*speedOfLight-0.75*c.apart) > 1e-6 || g.breadth != kms {
+			t.Errorf("%g km/s apart: %+v, want sigma %g, area %g, the center at 3/4", c.apart, g, sigma, 8*kms)
+		}
+	}
+}

@@ -65,6 +65,9 @@ func (f *Family) Expected() []string {
 	return names
 }
 
+// Floor is the least error of a redshift in km/s.
+func (f *Family) Floor() float64 { return f.floor }
+
 // Needs names the components of which one must be there, none if the family needs nothing.
 func (f *Family) Needs() []string {
 	names := make([]string, len(f.needs))

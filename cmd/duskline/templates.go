@@ -140,6 +140,10 @@ func writeTemplate(w io.Writer, f *pipeline.Template) {
 	writeTable(w, func(t io.Writer) {
 		fmt.Fprintf(t, "redshift\t%g to %g\n", f.ZMin, f.ZMax)
 		fmt.Fprintf(t, "widths\t%s km/s, Gaussian sigma; a component may have its own\n", joined(f.Widths))
+		fmt.Fprintf(t, "floor\t%g km/s, least error of a redshift\n", f.Floor())
+		for _, g := range f.Scatters() {
+			fmt.Fprintf(t, "scatter\t%g km/s of %s against the redshift; source: %s\n", g.Kms, strings.Join(g.Lines, ", "), g.Source)
+		}
 		fmt.Fprintf(t, "expected\t%s\n", orNot(strings.Join(f.Expected(), ", "), "no lines"))
 		if needs := f.Needs(); len(needs) > 0 {
 			fmt.Fprintf(t, "needs\t%s\n", strings.Join(needs, " or "))
