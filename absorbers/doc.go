@@ -6,7 +6,8 @@
 //
 //  1. sight.go lays the arms end to end on one grid, uniform in log wavelength.
 //  2. baseline.go fits the mean level that the forest of thin lines leaves of the
-//     background, and the scatter about it.
+//     background, and the scatter about it; a galaxy's own lines are left out
+//     (ownlines.go).
 //  3. damped.go looks for damped and sub-damped systems along that level with
 //     the likelihood of a set of column densities, against runs of dark bins that
 //     a crowded forest has by itself (darkrun.go).
@@ -15,7 +16,8 @@
 //  5. limit.go looks for the break of a Lyman-limit system.
 //  6. doublets.go looks for Mg II, C IV, Si IV and Al III on a continuum that
 //     follows emission lines (envelope.go), with errors that match the scatter
-//     (noise.go). pairfit.go judges each pair, doubletsum.go measures both lines.
+//     (noise.go). pairfit.go judges each pair, doubletsum.go measures both lines,
+//     doubletlink.go joins the parts of one system.
 //
 // growth.go turns equivalent widths into column densities.
 //
