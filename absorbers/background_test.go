@@ -97,10 +97,10 @@ func TestHydrogenBeforeGalaxies(t *testing.T) {
 		}
 		t.Logf("S/N %g: %d of %d found, %d made up in front of %d galaxies; of half of them %d as in front of quasars; log N - true %.3f, pulls %.2f +- %.2f",
 			sn, found, all, made, n, asQuasar, columns.sum/columns.found, columns.pull/columns.found, columns.pullSD())
-		if sn >= 4 && float64(found) < 0.8*float64(all) {
+		if sn >= 4 && float64(found) < 0.9*float64(all) {
 			t.Errorf("S/N %g: %d of %d found", sn, found, all)
 		}
-		// 22 in 1,200 with DUSKLINE_LONG=1; three standard errors of room.
+		// 17 in 1,200 with DUSKLINE_LONG=1; three standard errors of room.
 		if usual := 0.025 * float64(n); float64(made) > usual+3*math.Sqrt(usual) {
 			t.Errorf("S/N %g: %d made up in front of %d galaxies", sn, made, n)
 		}

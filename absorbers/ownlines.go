@@ -18,12 +18,13 @@ const (
 	ownHalfKms = 800.0
 )
 
-// ownWaves are the strong interstellar and stellar lines of galaxies blueward of
-// Lyman alpha and just beyond, vacuum Angstrom (Morton 2003, from memory). Lyman
-// beta to delta are among them.
+// ownWaves are the lines of galaxies that are strong or crowd, vacuum Angstrom (Morton
+// 2003, from memory): higher Lyman lines, C III 977, N III 990, O VI, C II 1037, Si II
+// 1190 and 1193, N I 1200, Si III 1206, and beyond Lyman alpha N V and Si II 1260. Single
+// fainter ones, such as N II 1084, Fe III 1122, Fe II 1145 and C III 1176, are much
+// narrower than a line of ownLogN.
 var ownWaves = [...]float64{
-	949.74, 972.54, 977.02, 989.80, 1020.70, 1025.72, 1031.93, 1037.0, 1083.99, 1122.52, 1144.94, 1175.71, 1190.42, 1193.29, 1200.0, 1206.50,
-	1238.82, 1242.80, 1260.42,
+	949.74, 972.54, 977.02, 989.80, 1025.72, 1031.93, 1037.0, 1190.42, 1193.29, 1200.0, 1206.50, 1238.82, 1242.80, 1260.42,
 }
 
 // hideOwn takes the bins out that a galaxy's own lines dim.

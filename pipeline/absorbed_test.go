@@ -7,6 +7,7 @@ import (
 
 	"duskline/catalog"
 	"duskline/fitsread"
+	"duskline/hydrogen"
 	"duskline/internal/outside"
 	"duskline/pipeline"
 	"duskline/spectrum"
@@ -94,6 +95,66 @@ func TestDoubletBeforeGalaxyInChain(t *testing.T) {
 	t.Logf("%d of %d painted doublets in the rows, %d rows without", found, tried, bare)
 	if tried < 5 || float64(found) < 0.7*float64(tried) || bare > 1 {
 		t.Errorf("%d of %d painted doublets in the rows, %d rows without", found, tried, bare)
+	}
+}
+
+// Damped hydrogen painted in front of synthetic galaxies of high redshift reaches the
+// table as well; without it there is none.
+func TestHydrogenBeforeGalaxyInChain(t *testing.T) {
+	chain, err := pipeline.NewChain(pipeline.DefaultSettings())
+	if err != nil {
+		t.Fatal(err)
+	}
+	worker := chain.NewWorker()
+	var series []hydrogen.AbsorptionLine
+	for upper := 2; upper < 7; upper++ {
+		transition, err := hydrogen.NewTransition(1, upper)
+		if err != nil {
+			t.Fatal(err)
+		}
+		series = append(series, transition.Absorption())
+	}
+	const logN = 21.0
+	tried, found, bare := 0, 0, 0
+	for seed := range uint64(8) {
+		spectra, truth := synth.Spectra(seed, 64)
+		for i, s := range spectra {
+			blue, _ := reach(s)
+			z := 0.93*(1+truth[i].Redshift) - 1
+			if truth[i].Class != catalog.Galaxy || truth[i].SNR < 3 || 1215.67*(1+z) < 1.05*blue {
+				continue
+			}
+			painted := cloned(s)
+			for k := range painted.Segments {
+				g := &painted.Segments[k]
+				g.Flux = append([]float64(nil), g.Flux...)
+				for p, w := range g.Wave {
+					for _, line := range series {
+						g.Flux[p] *= math.Exp(-line.OpticalDepth(math.Pow(10, logN), 30, w/(1+z)))
+					}
+				}
+			}
+			bare += len(worker.Process(cloned(s)).Absorbers)
+			out := worker.Process(painted)
+			if v := spectrum.SpeedOfLight * math.Abs(out.Object.Redshift-truth[i].Redshift) / (1 + truth[i].Redshift); out.Object.Class != catalog.Galaxy || v > 1000 {
+				continue // not about absorbers
+			}
+			tried++
+			for _, a := range out.Absorbers {
+				t.Logf("galaxy at %.3f, S/N %.1f: %s at %.4f for %.4f, log N %.2f +- %.2f for %.2f", truth[i].Redshift, truth[i].SNR, a.Kind, a.ZAbs, z,
+					a.LogNHI, a.LogNHIErr, logN)
+				if a.Kind == "hydrogen" && math.Abs(a.ZAbs-z)/(1+z)*spectrum.SpeedOfLight < 800 {
+					found++
+					if math.Abs(a.LogNHI-logN) > 4*a.LogNHIErr {
+						t.Errorf("log N = %.2f +- %.2f, painted %.2f", a.LogNHI, a.LogNHIErr, logN)
+					}
+				}
+			}
+		}
+	}
+	t.Logf("%d of %d painted systems in the rows, %d rows without", found, tried, bare)
+	if tried < 5 || float64(found) < 0.75*float64(tried) || bare > 1+tried/10 {
+		t.Errorf("%d of %d painted systems in the rows, %d rows without", found, tried, bare)
 	}
 }
 
