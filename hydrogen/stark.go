@@ -53,16 +53,23 @@ func NewStarkProfile(upper int, ne, tempK float64) (*StarkProfile, error) {
 
 // At returns the profile at the distance dWave in Angstrom from the center, per
 // Angstrom; its integral over all distances is one. NaN gives NaN.
-func (p *StarkProfile) At(dWave float64) float64 {
+func (p *StarkProfile) At(dWave float64) float64 { return p.below(dWave, math.Inf(1), 1) }
+
+// below is At for the atoms in fields of less than most normal ones; of the unshifted
+// component, which says nothing about its field, a share is left.
+func (p *StarkProfile) below(dWave, most, share float64) float64 {
 	d := math.Abs(dWave)
 	sum := 0.0
 	for _, c := range p.pattern {
 		if c.s == 0 {
 			x := d / p.doppler
-			sum += c.share * math.Exp(-x*x) / (sqrtPi * p.doppler)
+			sum += share * c.share * math.Exp(-x*x) / (sqrtPi * p.doppler)
 			continue
 		}
 		width := p.scale * float64(c.s)
+		if d > most*width {
+			continue
+		}
 		sum += c.share * 0.5 * Holtsmark(d/width) / width
 	}
 	return sum

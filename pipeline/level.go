@@ -195,9 +195,6 @@ func balmerWave(upper int) float64 {
 	return t.Wave
 }
 
-// balmerLimit is the limit of the series, vacuum Angstrom.
-const balmerLimit = 4e10 / hydrogen.RydbergHydrogen
-
 // bridge masks the Balmer lines of a star and writes the extrapolated continuum
 // over the pixels where they have merged; below the limit nothing is left.
 func (l *level) bridge(g *spectrum.Grid, m *masker, z, half float64) {
@@ -210,7 +207,7 @@ func (l *level) bridge(g *spectrum.Grid, m *masker, z, half float64) {
 			merged = (w + half) * z1
 		}
 	}
-	limit := balmerLimit * z1
+	limit := hydrogen.BalmerLimit * z1
 	_, hi := m.pixels(1, limit)
 	clear(l.ivar[:hi])
 	if merged == 0 {
@@ -266,10 +263,10 @@ func (l *level) balmerWidth(g *spectrum.Grid, m *masker, z, half float64, last i
 
 // belowJump fits the spline below the Balmer limit where there is enough for it.
 func (l *level) belowJump(g *spectrum.Grid, x []float64, m *masker, z float64, opt continuum.Options) {
-	_, hi := m.pixels(1, balmerLimit*(1+z))
+	_, hi := m.pixels(1, hydrogen.BalmerLimit*(1+z))
 	if hi == 0 || l.below.Fit(x[:hi], g.Flux[:hi], g.Ivar[:hi], opt) != nil {
 		return // the main spline holds its end value
 	}
 	l.below.Errors()
-	l.jump = math.Log10(balmerLimit * (1 + z))
+	l.jump = math.Log10(hydrogen.BalmerLimit * (1 + z))
 }

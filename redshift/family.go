@@ -56,7 +56,8 @@ type component struct {
 	edges      []edge
 	heads      []head
 	forest     bool
-	dense      *table     // edges and heads, drawn once
+	dense      *table // edges, heads and Balmer lines of dense gas, drawn once
+	stark      *starkRecipe
 	stack      *Composite // dense rest-frame spectrum, nil for none
 	source     string     // of its ratios
 }
@@ -67,6 +68,9 @@ type term struct {
 	logWave float64
 	width   float64 // km/s; 0: the component's
 	amp     float64
+	// shadow marks a Gaussian that stands for a line in the scan and in the
+	// evidence; what is drawn is in the dense part.
+	shadow bool
 }
 
 // sigmaKms returns the Gaussian width of a term for a family width.
@@ -92,7 +96,7 @@ func (f *Family) lyman() *Family {
 
 // wide reports whether the component reaches over most of a spectrum.
 func (c *component) wide() bool {
-	return c.forest || c.stack != nil || len(c.edges) > 0 || len(c.heads) > 0
+	return c.forest || c.stack != nil || c.dense != nil
 }
 
 // run is a half-open range of pixels.
@@ -155,6 +159,9 @@ func (c *component) draw(d *drawing, n int, start, step, shift, familyWidth floa
 	}
 	for i := range c.terms {
 		t := &c.terms[i]
+		if t.shadow {
+			continue
+		}
 		sigma := c.sigmaKms(t, familyWidth) / (speedOfLight * ln10 * step)
 		gaussian(d, n, (t.logWave+shift-start)/step, sigma, sign*t.amp)
 	}

@@ -53,6 +53,7 @@ type ComponentRecipe struct {
 	Bumps  []bump       `toml:"bumps"`
 	Edges  []edge       `toml:"edges"`
 	Heads  []head       `toml:"heads"`
+	Stark  *starkRecipe `toml:"stark"`
 	Forest bool         `toml:"forest"`
 	// Proximity moves the edges of the forest blueward, km/s: so far a quasar
 	// thins the gas around it (Bajtlik, Duncan & Ostriker 1988).
@@ -285,6 +286,12 @@ func compile(r *ComponentRecipe, list *linelist.List, stacks Stacks) (component,
 	}
 	c.forest = r.Forest
 	c.dense = newTable(c.edges, c.heads)
+	if s := r.Stark; s != nil {
+		c.stark = s
+		if err := s.add(&c, list); err != nil {
+			bad("stark: %v", err)
+		}
+	}
 	if r.Stack != "" {
 		var err error
 		switch {
@@ -298,11 +305,11 @@ func compile(r *ComponentRecipe, list *linelist.List, stacks Stacks) (component,
 			}
 		}
 	}
-	if len(r.Lines)+len(r.Bumps)+len(r.Edges)+len(r.Heads) == 0 && r.CaseB == nil && !r.Forest && r.Stack == "" {
-		bad("has no lines, case_b, bumps, edges, heads, forest or stack")
+	if len(r.Lines)+len(r.Bumps)+len(r.Edges)+len(r.Heads) == 0 && r.CaseB == nil && r.Stark == nil && !r.Forest && r.Stack == "" {
+		bad("has no lines, case_b, stark, bumps, edges, heads, forest or stack")
 	}
-	if !c.absorption && len(c.edges)+len(c.heads) > 0 {
-		bad("edges and heads are depths: kind must be absorption")
+	if !c.absorption && (c.dense != nil || r.Stark != nil) {
+		bad("edges, heads and stark are depths: kind must be absorption")
 	}
 	if c.forest && !c.absorption {
 		bad("a forest absorbs: kind must be absorption")

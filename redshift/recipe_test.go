@@ -186,7 +186,7 @@ func TestParseRecipeRefuses(t *testing.T) {
 		{"empty bump", "height = 0.3", "height = 0.0", []string{shade, "bumps"}},
 		{"empty edge", "height = 0.7", "height = -0.7", []string{shade, "edges"}},
 		{"head without a tail", "tail = 100.0", "tail = 0.0", []string{shade, "heads"}},
-		{"edges that emit", `kind = "absorption"`, `kind = "emission"`, []string{shade, "edges and heads are depths", "a forest absorbs"}},
+		{"edges that emit", `kind = "absorption"`, `kind = "emission"`, []string{shade, "edges, heads and stark are depths", "a forest absorbs"}},
 	} {
 		text := strings.Replace(goodRecipe, c.old, c.replacement, 1)
 		if text == goodRecipe {
@@ -330,6 +330,7 @@ func TestNewFinderWantsFamilies(t *testing.T) {
 // scanned.
 func FuzzParseRecipe(f *testing.F) {
 	f.Add([]byte(goodRecipe))
+	f.Add([]byte(starkFamily))
 	list, err := linelist.Parse(configs.Lines())
 	if err != nil {
 		f.Fatal(err)

@@ -2,6 +2,8 @@ package redshift
 
 import (
 	"math"
+
+	"duskline/hydrogen"
 )
 
 // ComponentView is a component of a family as people are shown it.
@@ -16,12 +18,16 @@ type ComponentView struct {
 
 // ShapeView is one shape of a component.
 type ShapeView struct {
-	Kind  string  // "line", "bump", "edge", "head", "forest" or "stack"
+	Kind  string  // "line", "bump", "edge", "head", "stark", "jump", "forest" or "stack"
 	Name  string  // of a line in the line list; digest of a stack
-	Wave  float64 // vacuum Angstrom, with the shift of the line; first of a stack, 0 for the forest
+	Wave  float64 // vacuum Angstrom, with the shift of the line; first of a stack, 0 for forest and stark
 	Last  float64 // last wavelength of a stack
 	Ratio float64 // relative height or depth
 	Width float64 // Gaussian sigma in km/s; of an edge and the tail of a head in Angstrom
+	// Of "stark" and "jump": electrons a cm^3, temperature in K, strength of the
+	// Balmer continuum, last upper level. The lines that follow are Gaussians that stand for those of the atmosphere.
+	Density, Temperature, Strength float64
+	Upper                          int
 }
 
 // View describes the components for a width of the family in km/s.
@@ -30,10 +36,17 @@ func (f *Family) View(width float64) []ComponentView {
 	for i := range f.components {
 		c := &f.components[i]
 		v := ComponentView{Name: c.name, Absorption: c.absorption, Source: c.source, Most: c.most, Least: c.least}
+		if q := c.stark; q != nil {
+			s := ShapeView{Kind: "stark", Ratio: 1, Width: q.sigma(c), Density: q.Density, Temperature: q.Temperature, Strength: q.Strength, Upper: q.Upper}
+			if q.Jump {
+				s.Kind, s.Wave = "jump", hydrogen.BalmerLimit
+			}
+			v.Shapes = append(v.Shapes, s)
+		}
 		for j := range c.terms {
 			t := &c.terms[j]
 			s := ShapeView{Kind: "line", Name: t.name, Wave: math.Pow(10, t.logWave), Ratio: t.amp, Width: c.sigmaKms(t, width)}
-			if t.width > 0 {
+			if t.width > 0 && !t.shadow {
 				s.Kind = "bump"
 			}
 			v.Shapes = append(v.Shapes, s)
@@ -105,6 +118,9 @@ func (f *Family) Span(width float64) (first, last float64) {
 			} else {
 				add(h.Wave-4*headBlur, h.Wave+4*h.Tail)
 			}
+		}
+		if c.stark != nil && c.stark.Jump {
+			add(jumpShown[0], jumpShown[1])
 		}
 		if c.stack != nil {
 			add(c.stack.Range())

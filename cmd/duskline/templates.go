@@ -168,7 +168,13 @@ func writeTemplate(w io.Writer, f *pipeline.Template) {
 			for _, s := range v.Shapes {
 				switch s.Kind {
 				case "line", "bump":
-					fmt.Fprintf(t, "  %s\t%.2f A\tratio %.4g\tsigma %g km/s\n", orNot(s.Name, s.Kind), s.Wave, s.Ratio, s.Width)
+					fmt.Fprintf(t, "  %s\t%.2f A\tratio %.4g\tsigma %.5g km/s\n", orNot(s.Name, s.Kind), s.Wave, s.Ratio, s.Width)
+				case "stark", "jump":
+					what := "lines"
+					if s.Kind == "jump" {
+						what = "confluence of lines"
+					}
+					fmt.Fprintf(t, "  Balmer %s up to 2-%d\tat %g electrons a cm^3, %g K\tstrength %g\tsigma %g km/s\n", what, s.Upper, s.Density, s.Temperature, s.Strength, s.Width)
 				case "edge":
 					fmt.Fprintf(t, "  edge\t%.2f A\tdepth %.4g\twidth %g A\n", s.Wave, s.Ratio, s.Width)
 				case "head":

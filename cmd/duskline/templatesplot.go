@@ -76,6 +76,7 @@ func newSheet(f *pipeline.Template, z float64) *sheet {
 			switch shape.Kind {
 			case "stack", "forest":
 				scale = most // as it is
+			case "stark": // its lines follow
 			case "line":
 				row.names = append(row.names, sheetMark{orNot(shape.Name, fmt.Sprintf("%.0f", shape.Wave)), shape.Wave})
 			default:
