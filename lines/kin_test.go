@@ -35,6 +35,6 @@ func TestKin(t *testing.T) {
 		if !(err.mean() < tc.most*errAlone.mean()) {
 			t.Errorf("sigma %g: error %.3f, without the other line %.3f", tc.sigma, err.mean(), errAlone.mean())
 		}
-		checkPull(t, "equivalent width", &pull, bounds{0.88, 1.12, tc.mean, 0.1})
+		checkPull(t, "equivalent width", &pull, around(0.88, 1.12, tc.mean, 0.1))
 	}
 }

@@ -13,12 +13,16 @@ const (
 	gridStep  = 1.4
 	gridDrop  = 12.0
 	gridSteps = 10
+	// nodeGain: a node is solved by a step that promises less of chi^2, and leaves
+	// less than a tenth of that.
+	nodeGain = 0.03
 )
 
 // average holds the moments of the parameters over the grid of marginalize.
 type average struct {
 	start, mean, second []float64
 	held                []bool
+	slope, last         []float64 // of the parameters by the width, and where the last node was
 	weight              float64
 	square              float64 // sum of the squares of the weights
 	tight               []int   // amplitudes of crowded lines
@@ -83,21 +87,26 @@ func (s *Scratch) averageTie(e *tie) {
 	}
 	m.fixed[e.ps] = true
 	step := min(gridStep*math.Sqrt(ss)/e.s, 0.3)
+	g.slope = g.slope[:0]
+	for i := range n {
+		g.slope = append(g.slope, m.cov[i*n+e.ps]/ss)
+	}
 	for _, side := range [2]int{1, -1} {
 		copy(m.p, g.start)
+		g.last = append(g.last[:0], g.start...)
 		for i := min(side, 0); i*side <= gridSteps; i += side {
 			w := e.s * math.Exp(float64(i)*step)
 			if w < e.smin || w > e.smax {
 				break
 			}
-			m.p[e.ps] = w
+			g.predict(m, e.ps, w)
 			g.bound(m, 0)
 			// The second step starts near, the third knows what the first
 			// put at a bound.
 			solved := true
 			for k := 0; k < 3 && solved; k++ {
 				solved = m.linear(&s.prob)
-				if k > 0 && m.gain < lastGain || m.chi2-chi2 > 2*gridDrop*g.scale2 {
+				if m.gain < nodeGain || m.chi2-chi2 > 2*gridDrop*g.scale2 {
 					break
 				}
 			}
@@ -120,6 +129,23 @@ func (s *Scratch) averageTie(e *tie) {
 	m.chi2 = chi2
 	g.finish(m)
 	e.v, e.s = m.p[e.pv], m.p[e.ps]
+}
+
+// predict moves the parameters to where those of a node of the width w should lie: on the
+// tangent of the covariance from the best fit, then on the line through the last two nodes.
+func (g *average) predict(m *marquardt, ps int, w float64) {
+	before, now := g.last[ps], m.p[ps]
+	for i, x := range m.p {
+		slope := g.slope[i]
+		if before != now {
+			slope = (x - g.last[i]) / (now - before)
+		}
+		g.last[i] = x
+		if m.p[i] += slope * (w - now); i != ps {
+			m.p[i] = min(max(m.p[i], m.lo[i]), m.hi[i])
+		}
+	}
+	m.p[ps] = w
 }
 
 // bound forbids the crowded amplitudes to lie more than so far on the wrong side

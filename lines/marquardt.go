@@ -14,27 +14,28 @@ type model interface {
 // over its bound stops there, and takes no part in steps while the gradient
 // pushes it outward. The zero value is ready; buffers are kept.
 type marquardt struct {
-	n      int
-	p      []float64 // parameters, in and out
-	lo, hi []float64 // bounds
-	fixed  []bool    // parameters that are held
-	held   []bool    // fixed, without effect, or pressed against a bound
-	trial  []float64
-	a, b   []float64
-	ta, tb []float64
-	chol   []float64
-	scale  []float64
-	step   []float64
-	cov    []float64 // covariance, full n x n, zero for held ones
-	narrow []float64 // covariance of the linearized fit, where cov is wider
-	chi2   float64
-	gain   float64 // drop of chi^2 that the last linear step brought
-	free   int     // number of parameters not held at the end
+	n       int
+	p       []float64 // parameters, in and out
+	lo, hi  []float64 // bounds
+	fixed   []bool    // parameters that are held
+	held    []bool    // fixed, without effect, or pressed against a bound
+	trial   []float64
+	a, b    []float64
+	ta, tb  []float64
+	chol    []float64
+	inverse []float64 // of the diagonal of chol
+	scale   []float64
+	step    []float64
+	cov     []float64 // covariance, full n x n, zero for held ones
+	narrow  []float64 // covariance of the linearized fit, where cov is wider
+	chi2    float64
+	gain    float64 // drop of chi^2 that the last linear step brought
+	free    int     // number of parameters not held at the end
 }
 
 func (m *marquardt) reset(n int) {
 	m.n = n
-	for _, v := range []*[]float64{&m.p, &m.lo, &m.hi, &m.trial, &m.b, &m.tb, &m.scale, &m.step} {
+	for _, v := range []*[]float64{&m.p, &m.lo, &m.hi, &m.trial, &m.b, &m.tb, &m.scale, &m.step, &m.inverse} {
 		*v = resize(*v, n)
 	}
 	for _, v := range []*[]float64{&m.a, &m.ta, &m.chol, &m.cov} {
@@ -147,22 +148,25 @@ func (m *marquardt) factor(lambda float64) bool {
 		}
 		m.chol[i*n+i] = 1 + lambda
 	}
+	inv := m.inverse[:n]
 	for i := range n {
 		ri := m.chol[i*n : i*n+n]
 		for j := 0; j <= i; j++ {
-			rj := m.chol[j*n : j*n+n]
+			rj := m.chol[j*n : j*n+j+1]
 			s := ri[j]
-			for k := range j {
-				s -= ri[k] * rj[k]
+			left := ri[:len(rj)]
+			for k, v := range rj[:j] {
+				s -= left[k] * v
 			}
 			if i != j {
-				ri[j] = s / rj[j]
+				ri[j] = s * inv[j]
 				continue
 			}
 			if !(s > 1e-13) {
 				return false
 			}
 			ri[i] = math.Sqrt(s)
+			inv[i] = 1 / ri[i]
 		}
 	}
 	return true
@@ -172,17 +176,17 @@ func (m *marquardt) factor(lambda float64) bool {
 func (m *marquardt) solve(x []float64) {
 	n := m.n
 	for i := range n {
-		s := x[i]
-		for k := range i {
-			s -= m.chol[i*n+k] * x[k]
+		s, y := x[i], x[:i]
+		for k, l := range m.chol[i*n : i*n+len(y)] {
+			s -= l * y[k]
 		}
-		x[i] = s / m.chol[i*n+i]
+		x[i] = s * m.inverse[i]
 	}
 	for i := n - 1; i >= 0; i-- {
-		row := m.chol[i*n : i*n+i+1]
-		x[i] /= row[i]
-		for k, l := range row[:i] {
-			x[k] -= l * x[i]
+		v, y := x[i]*m.inverse[i], x[:i]
+		x[i] = v
+		for k, l := range m.chol[i*n : i*n+len(y)] {
+			y[k] -= l * v
 		}
 	}
 }
@@ -224,7 +228,7 @@ func (m *marquardt) covariance() bool {
 	n := m.n
 	for i := range n {
 		row := m.cov[i*n : i*n+i+1]
-		d := 1 / m.chol[i*n+i]
+		d := m.inverse[i]
 		for k := range i {
 			f := m.chol[i*n+k] * d
 			if f == 0 {

@@ -40,7 +40,8 @@ const (
 	ReasonWrongSign   = "wrong_sign"   // a line that never absorbs, where something absorbs: not this line
 	ReasonOffEdge     = "off_edge"     // the line runs over the end of the coverage
 	ReasonNoContinuum = "no_continuum" // continuum missing, negative or not above 3 times its error
-	ReasonBlended     = "blended"      // too close to a line of another ion, which carries the sum of both
+	ReasonBlended     = "blended"      // too close to another line, which carries the sum of both
+	ReasonSum         = "sum"          // measured: carries the lines of its blend that are blended
 	ReasonNoFit       = "no_fit"       // the pixels do not determine the profile
 	ReasonAtBound     = "at_bound"     // offset or width ended at the limit of its range; the values stand
 )

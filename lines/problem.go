@@ -24,6 +24,7 @@ type problem struct {
 	narms      int
 	profileAs  Profile
 	ties       []tie
+	equal      []equality
 	n          int
 	fixed      []bool // parameters whose derivatives nobody will ask for
 	act        []int  // lists of active parameters of the windows
@@ -57,6 +58,7 @@ type component struct {
 	part    int     // 1: the broader of two components of the line
 	share   float64 // flux = share * p[amp]
 	assumed bool    // the share is a guess, not physics
+	lot     int     // lines of one lot, not 0, are reported as one sum
 	snr     float64 // of the amplitude before stellar absorption was allowed for
 	lam0    float64
 }
@@ -102,6 +104,14 @@ func (q *problem) normal(p, a, b []float64) float64 {
 		if np == 0 {
 			continue
 		}
+		if win.prior > 0 {
+			iv := 1 / (win.prior * win.prior)
+			for k := win.base; k < win.base+2; k++ {
+				a[k*n+k] += iv
+				b[k] -= iv * p[k]
+				chi2 += iv * p[k] * p[k]
+			}
+		}
 		q.jacobian(win, p, act)
 		q.res = append(q.res[:0], q.yroot[win.lo:win.hi]...)
 		for k := range 2 + win.nAmp {
@@ -130,14 +140,6 @@ func (q *problem) normal(p, a, b []float64) float64 {
 				}
 			}
 		}
-		if win.prior > 0 {
-			iv := 1 / (win.prior * win.prior)
-			for k := win.base; k < win.base+2; k++ {
-				a[k*n+k] += iv
-				b[k] -= iv * p[k]
-				chi2 += iv * p[k] * p[k]
-			}
-		}
 	}
 	for k := range q.ties {
 		e := &q.ties[k]
@@ -158,7 +160,22 @@ func (q *problem) normal(p, a, b []float64) float64 {
 			chi2 += r * r
 		}
 	}
+	for _, e := range q.equal {
+		d := p[e.i] - p[e.j]
+		a[e.i*n+e.i] += e.weight
+		a[e.j*n+e.j] += e.weight
+		a[min(e.i, e.j)*n+max(e.i, e.j)] -= e.weight
+		b[e.i] -= e.weight * d
+		b[e.j] += e.weight * d
+		chi2 += e.weight * d * d
+	}
 	return chi2
+}
+
+// equality holds two parameters together.
+type equality struct {
+	i, j   int
+	weight float64
 }
 
 // jacobian fills cols and spans with the derivatives of the model at the
@@ -238,26 +255,19 @@ func (q *problem) profile(ci int, win *window, p []float64, act []int) {
 	if t.pb < 0 {
 		scaleA = scaleV
 	}
+	plain := !t.stark && t.pa < 0
 	for lo < hi {
 		// As long as the pixels are of one width.
-		d := q.width[lo]
-		to := lo + 1
-		most := 0.02 * d
-		if sigma > 6*d {
-			most = 0.1 * d // d^2/12 hardly counts in the variance
-		}
-		for to < hi && math.Abs(q.width[to]-d) <= most {
-			to++
-		}
-		g := q.shapeOf(t, p, c.lam0, mu, sigma, d)
+		d, to := q.width[lo], q.sameWidth(lo, hi, sigma)
 		lam := q.lam[lo:to]
 		from, end := lo-win.lo, to-win.lo
-		switch {
-		case g.profile == Gaussian && !g.exact && kv < 0:
+		switch g := newGauss(mu, sigma, d); {
+		case plain && !g.exact && kv < 0:
 			g.values(lam, q.root[lo:to], c.share, amp[from:end])
-		case g.profile == Gaussian && !g.exact:
+		case plain && !g.exact:
 			g.columns(lam, q.root[lo:to], c.share, scaleV, scaleS, amp[from:end], colV[from:end], colS[from:end])
 		default:
+			g := q.shapeOf(t, p, c.lam0, mu, sigma, d)
 			for i, x := range lam {
 				v, dmu, ds, da, db := g.full(x)
 				j, r := from+i, q.root[lo+i]
@@ -278,6 +288,22 @@ func (q *problem) profile(ci int, win *window, p []float64, act []int) {
 	}
 }
 
+// sameWidth returns the end, hi at most, of the run of pixels from lo on that are of one
+// width for a line of the given sigma.
+func (q *problem) sameWidth(lo, hi int, sigma float64) int {
+	d := q.width[lo]
+	most := 0.02 * d
+	if sigma > 6*d {
+		most = 0.1 * d // d^2/12 hardly counts in the variance
+	}
+	for i, w := range q.width[lo:hi] {
+		if math.Abs(w-d) > most {
+			return lo + i
+		}
+	}
+	return hi
+}
+
 // reach returns the pixels of a window that a profile touches.
 func (q *problem) reach(win *window, mu, sigma float64) (lo, hi int) {
 	reach := profileReach * sigma
@@ -286,10 +312,21 @@ func (q *problem) reach(win *window, mu, sigma float64) (lo, hi int) {
 	return max(lo-1, win.lo), min(hi+1, win.hi)
 }
 
+// lowerBound returns the first index of an increasing list at or above v. It interpolates
+// and bisects in turn: pixels are nearly of one width.
 func lowerBound(x []float64, v float64) int {
 	lo, hi := 0, len(x)
-	for lo < hi {
+	for even := false; lo < hi; even = !even {
 		mid := (lo + hi) / 2
+		if a, b := x[lo], x[hi-1]; !even && hi-lo > 4 {
+			if v <= a {
+				return lo
+			}
+			if v > b {
+				return hi
+			}
+			mid = lo + int((v-a)/(b-a)*float64(hi-1-lo))
+		}
 		if x[mid] < v {
 			lo = mid + 1
 		} else {

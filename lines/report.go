@@ -9,6 +9,7 @@ import (
 // report writes the results of the blend that was just fitted.
 func (s *Scratch) report(ok bool) {
 	scale := s.errorScale()
+	s.placedArm = -1
 	for ci := range s.prob.comps {
 		s.reportLine(ci, ok, scale)
 	}
@@ -26,21 +27,25 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 		r.Name = t.line.wings
 	}
 	r.Blend = s.overlaps(ci)
-	sd := scale * math.Sqrt(m.cov[c.amp*m.n+c.amp])
-	flux, doubt := c.share*m.p[c.amp], s.shareDoubt(ci)
+	if c.lot > 0 && s.lotCarrier(ci) != ci {
+		r.Reason = ReasonBlended
+		return
+	}
+	flux, variance := s.lotFlux(ci, nil, 0)
+	sd, doubt := scale*math.Sqrt(variance), s.shareDoubt(ci)
 	if e.stark {
 		doubt = math.Hypot(doubt, starkDoubt*math.Abs(flux))
 	}
-	hidden := s.continuumDoubt(ci)
-	doubt = math.Hypot(doubt, math.Abs(c.share)*hidden)
-	fluxErr := math.Hypot(math.Abs(c.share)*sd, doubt)
+	hidden := math.Abs(c.share) * s.continuumDoubt(ci)
+	doubt = math.Hypot(doubt, hidden)
+	fluxErr := math.Hypot(sd, doubt)
 	if !ok || !(sd > 0) || !finite(flux, fluxErr) {
 		r.Reason = ReasonNoFit
 		return
 	}
 	mu, sigma, _ := q.place(ci, q.windows[0].arm, m.p)
 	r.OnSky = onSky(s.opt.Sky, mu-1.5*sigma, mu+1.5*sigma)
-	r.Flux, r.FluxErr, r.SNR = flux, fluxErr, math.Abs(m.p[c.amp])/math.Hypot(sd, hidden)
+	r.Flux, r.FluxErr, r.SNR = flux, fluxErr, math.Abs(flux)/math.Hypot(sd, hidden)
 	seen := math.Max(r.SNR, c.snr) >= seenFrom
 
 	z1 := 1 + s.opt.Z
@@ -52,7 +57,7 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 		for i := range s.grad {
 			s.grad[i] *= flux / (cont * cont) / z1
 		}
-		s.grad[c.amp] -= c.share / cont / z1
+		s.lotFlux(ci, s.grad, -1/cont/z1)
 		ew := -flux / cont / z1
 		err := math.Hypot(scale*math.Sqrt(max(0, m.quadratic(s.grad))), doubt/cont/z1)
 		if known = finite(ew, err); known {
@@ -89,7 +94,24 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 		r.Kind = Limit
 		r.UpperLimit = math.Abs(r.EWRest) + 3*r.EWRestErr
 	}
-	s.reportKinematics(r, e, seen, scale)
+	if r.Reason == "" && s.carries(ci) {
+		r.Reason = ReasonSum
+	}
+	s.reportKinematics(r, e, seen, c.lot > 0, scale)
+}
+
+// carries reports whether a component is measured for another line as well.
+func (s *Scratch) carries(ci int) bool {
+	c := &s.prob.comps[ci]
+	if c.lot > 0 {
+		return true
+	}
+	for i := range s.tracks {
+		if c.part == 0 && s.tracks[i].carrier == s.tracks[c.track].index {
+			return true
+		}
+	}
+	return false
 }
 
 // broadDoubt is the relative standard error of the continuum under the broad
@@ -143,7 +165,9 @@ func finite(v ...float64) bool {
 	return true
 }
 
-func (s *Scratch) reportKinematics(r *Result, e *tie, seen bool, scale float64) {
+// reportKinematics writes offset and width; those of a lot assume equal parts, and
+// have no errors.
+func (s *Scratch) reportKinematics(r *Result, e *tie, seen, lot bool, scale float64) {
 	m := &s.lm
 	r.WidthKms = e.s
 	if e.sres > 0 {
@@ -152,7 +176,7 @@ func (s *Scratch) reportKinematics(r *Result, e *tie, seen bool, scale float64) 
 	if seen {
 		r.OffsetKms = e.v
 	}
-	if !seen || !e.own {
+	if !seen || !e.own || lot {
 		return
 	}
 	if v := m.cov[e.pv*m.n+e.pv]; v > 0 {
@@ -172,7 +196,7 @@ func (s *Scratch) reportKinematics(r *Result, e *tie, seen bool, scale float64) 
 			}
 		}
 	}
-	if r.Reason == "" && (m.held[e.pv] || m.held[e.ps]) && e.s > e.smin {
+	if (r.Reason == "" || r.Reason == ReasonSum) && (m.held[e.pv] || m.held[e.ps]) && e.s > e.smin {
 		r.Reason = ReasonAtBound
 	}
 }
@@ -182,7 +206,7 @@ func (s *Scratch) reportKinematics(r *Result, e *tie, seen bool, scale float64) 
 func (s *Scratch) shareDoubt(ci int) float64 {
 	q := &s.prob
 	c := &q.comps[ci]
-	if !c.assumed {
+	if !c.assumed || c.lot > 0 {
 		return 0
 	}
 	total := 0.0

@@ -28,20 +28,23 @@ type Scratch struct {
 	series [2]kinematics // of the strongest line of hydrogen in a quasar, by sign
 	wings  kinematics    // of the strongest line of hydrogen in a hot star
 
-	bins    []int // pixels a bin may have, along a window
-	prob    problem
-	lm      marquardt
-	avg     average
-	left    []float64 // residuals of a blend
-	copy    []float64 // profiles of a second component
-	jac     []float64 // Jacobian of all windows
-	jacAt   []int
-	grad    []float64
-	cross   []float64
-	guesses [len(stellarSigma)]stellarGuess
-	placed  []placement
-	labels  map[labelKey]string
-	labeled *Meter // whose names the labels are
+	bins      []int // pixels a bin may have, along a window
+	prob      problem
+	lm        marquardt
+	avg       average
+	left      []float64 // residuals of a blend
+	copy      []float64 // profiles of a second component
+	jac       []float64 // Jacobian of all windows
+	jacAt     []int
+	grad      []float64
+	cross     []float64
+	bumps     []bump
+	free      snapshot // a blend before its lines are joined to lots
+	guesses   [len(stellarSigma)]stellarGuess
+	placed    []placement
+	placedArm int // the arm of placed
+	labels    map[labelKey]string
+	labeled   *Meter // whose names the labels are
 }
 
 // track is a line inside the coverage.
@@ -131,18 +134,7 @@ func (a *Arm) pixelKms(i int) float64 {
 }
 
 // index returns the first pixel at or above a wavelength.
-func (a *Arm) index(wave float64) int {
-	lo, hi := 0, len(a.Wave)
-	for lo < hi {
-		mid := (lo + hi) / 2
-		if a.Wave[mid] < wave {
-			lo = mid + 1
-		} else {
-			hi = mid
-		}
-	}
-	return lo
-}
+func (a *Arm) index(wave float64) int { return lowerBound(a.Wave, wave) }
 
 // nearest returns the pixel nearest to a wavelength.
 func (a *Arm) nearest(wave float64) int {
@@ -181,17 +173,29 @@ func (s *Scratch) survey() {
 	for k := range s.arms {
 		a, o := &s.arms[k], s.first[k]
 		var w, wr, n float64
-		claim := 0
-		for i, lam := range a.Wave {
-			for claim < len(s.claims) && s.claims[claim].Hi < lam {
-				claim++
+		i := 0
+		for claim := 0; i < len(a.Wave); claim++ {
+			to, next := len(a.Wave), len(a.Wave)
+			if claim < len(s.claims) {
+				b := s.claims[claim]
+				to = max(i, a.index(b.Lo))
+				next = max(to, a.index(math.Nextafter(b.Hi, math.Inf(1))))
 			}
-			if g := s.weight[o+i]; g > 0 && (claim == len(s.claims) || lam < s.claims[claim].Lo) {
-				w += g
-				wr += g * s.resid[o+i]
-				n++
+			weight, resid := s.weight[o+i:o+to], s.resid[o+i:o+to]
+			resid = resid[:len(weight)]
+			sumW, sumWR, sumN := s.sumW[o+i+1:][:len(weight)], s.sumWR[o+i+1:][:len(weight)], s.sumN[o+i+1:][:len(weight)]
+			for k, g := range weight {
+				if g > 0 {
+					w += g
+					wr += g * resid[k]
+					n++
+				}
+				sumW[k], sumWR[k], sumN[k] = w, wr, n
 			}
-			s.sumW[o+i+1], s.sumWR[o+i+1], s.sumN[o+i+1] = w, wr, n
+			for k := to; k < next; k++ {
+				s.sumW[o+k+1], s.sumWR[o+k+1], s.sumN[o+k+1] = w, wr, n
+			}
+			i = next
 		}
 	}
 }

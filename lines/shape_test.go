@@ -83,7 +83,7 @@ func TestStarkRecovered(t *testing.T) {
 	if r := ew.sd() / stated.mean(); r > 1.12 || r < 0.88 {
 		t.Errorf("scatter %.3f, stated without the doubt of the form %.3f", ew.sd(), stated.mean())
 	}
-	checkPull(t, "width", &width, bounds{0.87, 1.13, 0.25, 0.1})
+	checkPull(t, "width", &width, around(0.87, 1.13, 0.25, 0.1))
 }
 
 // What is put in comes out, with errors that hold: 500 spectra each, standard
@@ -122,7 +122,7 @@ func TestShapesRecovered(t *testing.T) {
 			second.add((r.Shape[1] - tc.b) / r.ShapeErr[1])
 		}
 		t.Logf("%v: W %.2f +- %.2f, shape %.2f +- %.2f, %.2f +- %.2f", tc, ew.mean(), ew.sd(), first.mean(), first.sd(), second.mean(), second.sd())
-		b := bounds{0.87, 1.13, 0.3, 0.08}
+		b := around(0.87, 1.13, 0.3, 0.08)
 		checkPull(t, "equivalent width", &ew, b)
 		checkPull(t, "first shape", &first, b)
 		if tc.profile == Hermite {

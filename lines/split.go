@@ -37,7 +37,7 @@ func (s *Scratch) split(main int) {
 	q := &s.prob
 	for k := len(q.ties) - 1; k >= 0; k-- {
 		e := &q.ties[k]
-		if !e.own || e.pa >= 0 || e.vprior > 0 || s.tieSNR(k) < splitSNR*s.errorScale() {
+		if !e.own || e.pa >= 0 || e.vprior > 0 || s.hasLot(k) || s.tieSNR(k) < splitSNR*s.errorScale() {
 			continue
 		}
 		if w, v, ok := s.secondStart(k); ok {
@@ -81,6 +81,21 @@ func (s *Scratch) secondStart(k int) (width, offset float64, ok bool) {
 // parameter would be num/h with the variance 1/h, and lower chi^2 by num^2/h.
 // C c is left in grad. A call of residuals must have come before.
 func (s *Scratch) probe(k, only int, v, w float64) (num, h float64) {
+	q := &s.prob
+	s.bumps = s.bumps[:0]
+	for ci := range q.comps {
+		if c := &q.comps[ci]; c.tie == k && (only < 0 || ci == only) {
+			s.bumps = append(s.bumps, bump{c.lam0, v, w, c.share * s.lm.p[c.amp]})
+		}
+	}
+	return s.probeWith(s.bumps)
+}
+
+// bump is a Gaussian of an offset, a width and a flux.
+type bump struct{ lam0, v, s, flux float64 }
+
+// probeWith does what probe says for any sum of Gaussians.
+func (s *Scratch) probeWith(bumps []bump) (num, h float64) {
 	q, m := &s.prob, &s.lm
 	n := m.n
 	s.cross, s.grad = resize(s.cross, n), resize(s.grad, n)
@@ -89,14 +104,10 @@ func (s *Scratch) probe(k, only int, v, w float64) (num, h float64) {
 		np := win.hi - win.lo
 		s.copy = resize(s.copy, np)
 		from, to := np, 0
-		for ci := range q.comps {
-			c := &q.comps[ci]
-			if c.tie != k || only >= 0 && ci != only {
-				continue
-			}
-			mu, sigma := c.lam0*(1+v/spectrum.SpeedOfLight), c.lam0*w/spectrum.SpeedOfLight
+		for _, b := range bumps {
+			mu, sigma := b.lam0*(1+b.v/spectrum.SpeedOfLight), b.lam0*b.s/spectrum.SpeedOfLight
 			lo, hi := q.reach(win, mu, 0.8*sigma)
-			f := c.share * m.p[c.amp] * invSqrt2Pi / sigma
+			f := b.flux * invSqrt2Pi / sigma
 			for i := lo; i < hi; i++ {
 				u := (q.lam[i] - mu) / sigma
 				s.copy[i-win.lo] += f * decay(0.5*u*u)

@@ -55,7 +55,7 @@ func TestEmissionInAbsorption(t *testing.T) {
 		}
 		if tc.least > 0.5 {
 			// Selection by significance and the criterion shift the mean.
-			b := bounds{0.85, 1.15, 0.3, 0.08}
+			b := around(0.85, 1.15, 0.3, 0.08)
 			checkPull(t, "emission", &em, b)
 			checkPull(t, "absorption", &ab, b)
 		} else {
@@ -95,8 +95,8 @@ func TestWings(t *testing.T) {
 			t.Errorf("wings found in %d of 400 lines that have them", two)
 		case wings > 0:
 			// Standard error of the deviation 3.5 %.
-			checkPull(t, "line", &slim, bounds{0.88, 1.12, 0.25, 0.08})
-			checkPull(t, "wings", &broad, bounds{0.88, 1.12, 0.25, 0.08})
+			checkPull(t, "line", &slim, around(0.88, 1.12, 0.25, 0.08))
+			checkPull(t, "wings", &broad, around(0.88, 1.12, 0.25, 0.08))
 		}
 	}
 }

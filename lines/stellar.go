@@ -38,7 +38,7 @@ func (s *Scratch) allowStellar() {
 	for ci := range q.comps {
 		c := &q.comps[ci]
 		l := s.tracks[c.track].line
-		if l.ion == hydrogenIon && l.Wave > 3640 && l.Wave < 6600 && s.lm.p[c.amp] > 0 && q.ties[c.tie].own && s.onlyPart(ci) {
+		if l.ion == hydrogenIon && l.Wave > 3640 && l.Wave < 6600 && s.lm.p[c.amp] > 0 && q.ties[c.tie].own && c.lot == 0 && s.onlyPart(ci) {
 			c.snr = s.lm.p[c.amp] / (s.errorScale() * math.Sqrt(s.lm.cov[c.amp*s.lm.n+c.amp]))
 			s.addStellar(ci)
 		}

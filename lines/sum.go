@@ -56,17 +56,28 @@ type sum struct {
 func (s *Scratch) sumWindow(ci int, win *window) sum {
 	q, m := &s.prob, &s.lm
 	mu, sigma, _ := q.place(ci, win.arm, m.p)
-	c := &q.comps[ci]
 	lo, hi := q.reach(win, mu, sigma)
+	left, right := mu, mu
+	for k := range q.comps {
+		if k != ci && q.inLot(ci, k) {
+			other, _, _ := q.place(k, win.arm, m.p)
+			left, right = min(left, other), max(right, other)
+			l, h := q.reach(win, other, sigma)
+			lo, hi = min(lo, l), max(hi, h)
+		}
+	}
 	s.grad, s.cross = resize(s.grad, m.n), resize(s.cross, m.n)
-	s.placeAll(win.arm)
+	if s.placedArm != win.arm {
+		s.placeAll(win.arm)
+		s.placedArm = win.arm
+	}
 	// Pixels widen the profile; the window follows.
 	if hi > lo {
 		d := q.width[(lo+hi)/2]
 		sigma = math.Sqrt(sigma*sigma + d*d/12)
 	}
-	from, to := mu-SumHalfWidth*sigma, mu+SumHalfWidth*sigma
-	flux := c.share * m.p[c.amp]
+	from, to := left-SumHalfWidth*sigma, right+SumHalfWidth*sigma
+	flux, _ := s.lotFlux(ci, nil, 0)
 	var r sum
 	seen, profile := 0.0, 0.0
 	noise := 0.0
@@ -86,9 +97,9 @@ func (s *Scratch) sumWindow(ci int, win *window) sum {
 		if math.Abs(q.lam[i]-mu) <= 0.75*q.width[i] {
 			contMu = fc
 		}
-		own, others := s.pixelProfiles(ci, win, i, d/fc, q.w[i] > 0)
-		profile += own * d
-		rel := 1 + flux*own/fc
+		shape, own, others := s.pixelProfiles(ci, win, i, d/fc, q.w[i] > 0)
+		profile += shape * d
+		rel := 1 + own/fc
 		if q.w[i] > 0 {
 			rel = (q.y[i] + q.cont[i] - others) / fc
 			seen += d
@@ -102,8 +113,8 @@ func (s *Scratch) sumWindow(ci int, win *window) sum {
 			s.grad[win.base] += d * rel / fc
 			s.grad[win.base+1] += d * rel / fc * x
 		} else {
-			s.grad[win.base] += d * flux * own / (fc * fc)
-			s.grad[win.base+1] += d * flux * own / (fc * fc) * x
+			s.grad[win.base] += d * own / (fc * fc)
+			s.grad[win.base+1] += d * own / (fc * fc) * x
 		}
 		r.ew += d * (1 - rel)
 	}
@@ -112,7 +123,7 @@ func (s *Scratch) sumWindow(ci int, win *window) sum {
 	// profile.
 	if lost := 1 - profile; contMu > 0 {
 		r.ew -= flux * lost / contMu
-		s.grad[c.amp] -= c.share * lost / contMu
+		s.lotFlux(ci, s.grad, -lost/contMu)
 	}
 	r.variance = noise + 2*m.bilinear(s.grad, s.cross) + m.quadratic(s.grad)
 	return r
@@ -136,13 +147,14 @@ func (s *Scratch) placeAll(arm int) {
 	}
 }
 
-// pixelProfiles returns the profile of component ci, per unit flux, and the
-// sum of the other lines at pixel i, and adds their derivatives, times f, to
+// pixelProfiles returns at pixel i the profile of component ci per unit flux, the
+// mean one of its lot, the flux of both, and that of the other lines, and adds their derivatives, times f, to
 // the gradient of the sum: those of the neighbors where the pixel is good, that
 // of the line itself where the profile stands in for the pixel. A good pixel
 // adds its row of the Jacobian to the correlation with the parameters.
-func (s *Scratch) pixelProfiles(ci int, win *window, i int, f float64, good bool) (own, others float64) {
+func (s *Scratch) pixelProfiles(ci int, win *window, i int, f float64, good bool) (shape, own, others float64) {
 	q, p := &s.prob, s.lm.p
+	lot := 0.0
 	for k := range q.comps {
 		c, at := &q.comps[k], &s.placed[k]
 		t := &q.ties[c.tie]
@@ -156,8 +168,10 @@ func (s *Scratch) pixelProfiles(ci int, win *window, i int, f float64, good bool
 		flux := c.share * p[c.amp]
 		into := 0.0
 		switch {
-		case k == ci:
-			own = v
+		case q.inLot(ci, k):
+			shape += v
+			own += flux * v
+			lot++
 			if !good {
 				into = -f
 			}
@@ -196,7 +210,7 @@ func (s *Scratch) pixelProfiles(ci int, win *window, i int, f float64, good bool
 			}
 		}
 	}
-	return own, others
+	return shape / max(lot, 1), own, others
 }
 
 // directSum combines the sums of a component over its windows by inverse
