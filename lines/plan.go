@@ -163,15 +163,14 @@ func (s *Scratch) support(t *track, sg float64) float64 {
 
 // join puts two lines into one blend if they belong together.
 func (s *Scratch) join(i, j int) {
-	ri, rj := s.root(i), s.root(j)
-	if ri == rj {
+	a, b := &s.tracks[i], &s.tracks[j]
+	grouped := a.line.group >= 0 && a.line.group == b.line.group
+	if !grouped && s.apart(a, b) > joinWithin*(a.s+b.s) {
 		return
 	}
-	a, b := &s.tracks[i], &s.tracks[j]
-	if a.line.group < 0 || a.line.group != b.line.group {
-		if s.apart(a, b) > joinWithin*(a.s+b.s) || s.size(ri)+s.size(rj) > maxJoin {
-			return
-		}
+	ri, rj := s.root(i), s.root(j)
+	if ri == rj || !grouped && s.size(ri)+s.size(rj) > maxJoin {
+		return
 	}
 	s.parent[max(ri, rj)] = min(ri, rj)
 }

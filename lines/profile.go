@@ -61,23 +61,23 @@ func (g *gauss) at(x float64) (v, dmu, dsigma float64) {
 
 const decayEnd = 32
 
-// decayTable holds exp(-k/16).
-var decayTable = func() (t [16 * decayEnd]float64) {
+// decayTable holds exp(-k/64).
+var decayTable = func() (t [64 * decayEnd]float64) {
 	for k := range t {
-		t[k] = math.Exp(-float64(k) / 16)
+		t[k] = math.Exp(-float64(k) / 64)
 	}
 	return t
 }()
 
 // decay returns exp(-x) for x >= 0 from a table and the Taylor series to the
-// fifth order: relative error 8e-11. From decayEnd on it is 0.
+// fourth order: relative error 8e-12. From decayEnd on it is 0.
 func decay(x float64) float64 {
 	if !(x < decayEnd) {
 		return 0
 	}
-	k := int(16 * x)
-	r := x - float64(k)*(1./16)
-	return decayTable[k] * (1 - r*(1-r*(0.5-r*(1./6-r*(1./24-r*(1./120))))))
+	k := int(64 * x)
+	r := x - float64(k)*(1./64)
+	return decayTable[k] * (1 - r*(1-r*(0.5-r*(1./6-r*(1./24)))))
 }
 
 // values adds share times the profile at the pixels x to amp, each times root. The

