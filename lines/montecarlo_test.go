@@ -16,11 +16,14 @@ import (
 // in the noise cancels in the mean of such a pair, and the 400 pairs
 // show a bias 5 to 30 times smaller than independent spectra do. Seeds are fixed.
 func trials() int {
-	if os.Getenv("DUSKLINE_LONG") == "1" {
+	if long() {
 		return 24000
 	}
 	return 1200
 }
+
+// long reports whether all cells are wanted, with many spectra each.
+func long() bool { return os.Getenv("DUSKLINE_LONG") == "1" }
 
 const pair = `
 [[line]]
@@ -158,6 +161,8 @@ func (k cell) run(t *testing.T, seed uint64) outcome {
 	return out
 }
 
+const leastSignificance = 8
+
 // grid of the simulation: cells in which the line is significant (8 sigma by
 // Cayrel's formula), since below that the question is whether it is seen at all.
 func cells() []cell {
@@ -180,13 +185,24 @@ func cells() []cell {
 			}
 		}
 	}
+	if long() {
+		for _, pixels := range []float64{2, 8} {
+			for _, peak := range []float64{-0.6, 2} {
+				for _, sn := range []float64{10, 20} {
+					for _, apart := range []float64{1.5, 2.2, 2.6} {
+						list = append(list, cell{sn: sn, pixels: pixels, peak: peak, apart: apart, sameIon: pixels == 2})
+					}
+				}
+			}
+		}
+	}
 	list = append(list,
 		cell{sn: 10, pixels: 3, peak: -0.6, contErr: 0.03},
 		cell{sn: 50, pixels: 3, peak: -0.6, contErr: 0.03},
 		cell{sn: 50, pixels: 10, peak: 1, contErr: 0.03})
 	kept := list[:0]
 	for _, k := range list {
-		if k.significance() >= 8 {
+		if k.significance() >= leastSignificance {
 			kept = append(kept, k)
 		}
 	}
@@ -204,14 +220,18 @@ func around(low, high, mean, share float64) bounds {
 
 // mostJoint is the part of the spectra in which the sum of two lines may be reported for
 // the second line's pulls to be judged: the rest is a selection by noise.
-const mostJoint = 0.5
+const mostJoint = 0.35
 
 // bounds returns the requirement on n pulls: a standard deviation of 0.95 to
 // 1.05 and a share within 1 of 0.65 to 0.71, each with four of its standard errors, a mean of
 // 0.05 (checkBias looks closer), and 0.3 for what is less than 10 sigma and for lines nearer
 // than 2 sigma to each other: the mean over the posterior of two amplitudes of one sign is drawn
-// to the wide side of a skew distribution.
+// to the wide side of a skew distribution. A second line below 8 sigma, the limit of the
+// cells, has loose bounds.
 func (k cell) bounds(significance, n float64) bounds {
+	if significance < leastSignificance {
+		return around(0.9, 1.2, 0.2, 0.06)
+	}
 	sd, share, mean := 4/math.Sqrt(2*n), 4*math.Sqrt(0.683*0.317/n), 0.05
 	if significance < 10 || k.apart > 0 && k.apart < 2 && significance < 50 {
 		mean = 0.3
@@ -247,7 +267,7 @@ func TestPulls(t *testing.T) {
 			b := k.bounds(first, out.fit.n)
 			checkPull(t, "fit", &out.fit, b)
 			checkPull(t, "sum", &out.sum, b)
-			// Where the sum is reported more often than not, the others are a selection.
+			// Where the sum is reported so often, the others are a selection.
 			share := out.joint / out.fit.n
 			if k.apart > 0 && share < mostJoint {
 				b := k.bounds(first/2, out.fit2.n)
@@ -258,9 +278,12 @@ func TestPulls(t *testing.T) {
 				if out.lost > trials()/100 {
 					t.Errorf("%d of %d lines not seen", out.lost, trials())
 				}
-				// What the mean may be off, in errors, with four standard
-				// errors of the mean on top.
-				tol := (b.mean + 4/math.Sqrt(out.ew.n)) * out.rel.mean()
+				// What the mean may be off: where the error goes with the value, the
+				// pulls of lines nearer than 2 sigma have another mean than the values.
+				tol := b.mean * out.rel.mean()
+				if k.apart > 0 && k.apart < 2 {
+					tol = (0.28 + 4/math.Sqrt(out.ew.n)) * out.rel.mean()
+				}
 				if r := out.ew.mean(); math.Abs(r-1) > tol {
 					t.Errorf("mean of measured over true %.4f, want 1 +- %.4f", r, tol)
 				}
