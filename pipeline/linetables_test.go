@@ -296,8 +296,8 @@ func TestSurveyLineTables(t *testing.T) {
 		rf, sf := summarize(sameFlux[class])
 		t.Logf("%s, of the same kind there: %d lines, flux ratio %.3f, scatter %.2f; equivalent width ratio %.3f, scatter %.2f", class, len(same[class]), rf, sf, rl, sl)
 		// 1.5 is wanted. It is kept over all lines, and by those that are the same
-		// line there; over all lines of quasars 1.62 is measured.
-		most := map[string]float64{catalog.Galaxy: 1.5, catalog.Quasar: 1.7, "all": 1.5}[class]
+		// line there; over all lines of quasars 1.53 is measured.
+		most := map[string]float64{catalog.Galaxy: 1.5, catalog.Quasar: 1.6, "all": 1.5}[class]
 		if math.Abs(re-1) > 0.05 || se > most {
 			t.Errorf("%s: median ratio of equivalent widths %.3f, want 1 +- 0.05; scatter of pulls %.2f, want below %.1f", class, re, se, most)
 		}
