@@ -5,8 +5,8 @@ import (
 	"math"
 )
 
-// BalmerAtmosphere gives the depths of the Balmer lines and of the Balmer jump in the
-// light of a star, from the simplest atmosphere that has their shapes right:
+// BalmerAtmosphere gives the depths of the Balmer lines and of the Balmer jump in the light of a
+// star, from the simplest atmosphere that has their shapes right:
 //
 //   - The temperature is that of a gray atmosphere in Eddington's approximation,
 //     T^4 = 3/4 T_eff^4 (tau + 2/3), tau being the mean optical depth (Mihalas 1978, from memory).
@@ -17,8 +17,8 @@ import (
 //     Angstrom. Absorption by hydrogen goes as its cube (Kramers 1923), scattering by
 //     electrons and absorption by H- hardly change; the square is between them, by trial on open flux standards.
 //
-// Lines and jump follow from balmerGas. Population by the local temperature is assumed, so that strong lines end at
-// the temperature of the surface; real cores are deeper.
+// Lines and jump follow from balmerGas. Population by the local temperature is assumed, so that
+// strong lines end at the temperature of the surface; real cores are deeper.
 type BalmerAtmosphere struct {
 	gas      *balmerGas
 	tempK    float64
@@ -30,12 +30,13 @@ const (
 	lightAt  = 2.0 / 3
 )
 
-// NewBalmerAtmosphere returns the atmosphere of the effective temperature tempK in K with
-// the electron density ne in cm^-3 where the continuum comes from; strength is the
-// absorption of the Balmer continuum at its limit over the other absorption there; last is the upper level of the last line.
+// NewBalmerAtmosphere returns the atmosphere of the effective temperature tempK in K with the
+// electron density ne in cm^-3 where the continuum comes from; strength is the absorption of the
+// Balmer continuum at its limit over the other absorption there; last is the upper level of the
+// last line.
 //
-// It is an error unless ne is 1e9 to 1e19, tempK 2000 to 200000, strength 1e-4 to
-// 1e4, and last 3 to 20.
+// It is an error unless ne is 1e9 to 1e19, tempK 2000 to 200000, strength 1e-4 to 1e4, and last
+// 3 to 20.
 func NewBalmerAtmosphere(ne, tempK, strength float64, last int) (*BalmerAtmosphere, error) {
 	for _, q := range []struct {
 		name               string
@@ -60,7 +61,8 @@ func NewBalmerAtmosphere(ne, tempK, strength float64, last int) (*BalmerAtmosphe
 	return &BalmerAtmosphere{gas, tempK, strength}, nil
 }
 
-// layerBottom is the optical depth of the continuum at the bottom of a layer: each is as thick as all above it.
+// layerBottom is the optical depth of the continuum at the bottom of a layer: each is as thick
+// as all above it.
 func layerBottom(k int) float64 {
 	if k < 0 {
 		return 0
@@ -78,8 +80,8 @@ func (a *BalmerAtmosphere) Lines(wave float64) float64 {
 	return a.depth(wave, &l)
 }
 
-// Jump returns by how much more it is darker because of the Balmer continuum and the
-// levels dissolved into it. NaN unless wave is positive.
+// Jump returns by how much more it is darker because of the Balmer continuum and the levels
+// dissolved into it. NaN unless wave is positive.
 func (a *BalmerAtmosphere) Jump(wave float64) float64 {
 	if !(wave > 0) {
 		return math.NaN()
@@ -91,8 +93,8 @@ func (a *BalmerAtmosphere) Jump(wave float64) float64 {
 	return a.depth(wave, &c) - a.depth(wave, &l)
 }
 
-// depth returns how much darker the light is with so much absorption in the layers, in units of that of
-// the Balmer continuum at its limit.
+// depth returns how much darker the light is with so much absorption in the layers, in units of
+// that of the Balmer continuum at its limit.
 func (a *BalmerAtmosphere) depth(wave float64, opacity *[gasLayers]float64) float64 {
 	q := BalmerLimit / wave
 	scale := a.strength * q * q
@@ -108,7 +110,8 @@ func (a *BalmerAtmosphere) depth(wave float64, opacity *[gasLayers]float64) floa
 	return 0
 }
 
-// brightness is the Planck function, up to a factor, at an optical depth of the continuum at the wavelength.
+// brightness is the Planck function, up to a factor, at an optical depth of the continuum at the
+// wavelength.
 func (a *BalmerAtmosphere) brightness(wave, tau float64) float64 {
 	q := wave / meanWave
 	t := a.tempK * math.Sqrt(math.Sqrt(0.75*(tau/(q*q)+2.0/3)))

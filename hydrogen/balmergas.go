@@ -11,19 +11,20 @@ const balmerRydberg = 1e10 / RydbergHydrogen
 // BalmerLimit is the limit of the Balmer series in vacuum Angstrom.
 const BalmerLimit = 4 * balmerRydberg
 
-// balmerGas is what atoms in the second level absorb at several densities, in
-// units of the Balmer continuum at its limit: pressure-broadened lines, and the pseudo-continuum
-// into which the high ones dissolve.
+// balmerGas is what atoms in the second level absorb at several densities, in units of the
+// Balmer continuum at its limit: pressure-broadened lines, and the pseudo-continuum into which
+// the high ones dissolve.
 //
-// Each line has its oscillator strength and the profile of NewStarkProfile for the atoms in which its
-// upper level exists: those in a field below that in which the Stark patterns of n and n+1 meet,
+// Each line has its oscillator strength and the profile of NewStarkProfile for the atoms in
+// which its upper level exists: those in a field below that in which the Stark patterns of n and
+// n+1 meet,
 //
 //	3 n^2 e a_0 F = Ry (1/n^2 - 1/(n+1)^2)  (Inglis & Teller 1939).
 //
-// Cutting the profile there ends the wings half-way to the next line, as Seaton (1990) and Tremblay &
-// Bergeron (2009) do (from memory). The dip that the quasi-static profile has at the
-// center of every second line is filled up to the maxima beside it, as the motion of the
-// ions and the impacts of electrons, which it leaves out, do for the most part.
+// Cutting the profile there ends the wings half-way to the next line, as Seaton (1990) and
+// Tremblay & Bergeron (2009) do (from memory). The dip that the quasi-static profile has at the
+// center of every second line is filled up to the maxima beside it, as the motion of the ions
+// and the impacts of electrons, which it leaves out, do for the most part.
 type balmerGas struct {
 	lines []balmerLine
 	field [gasLayers]float64 // Rydberg's e/a_0^2 in normal fields of the ions
@@ -48,8 +49,8 @@ const (
 // opacityAt is the distance of a node, Angstrom.
 func opacityAt(node int) float64 { return opacityFirst * math.Exp(opacityStep*float64(node)) }
 
-// newBalmerGas returns the gas with the lines from the upper levels 3 to last, at
-// densities of electrons in cm^-3. It is an error where NewStarkProfile has one.
+// newBalmerGas returns the gas with the lines from the upper levels 3 to last, at densities of
+// electrons in cm^-3. It is an error where NewStarkProfile has one.
 func newBalmerGas(ne *[gasLayers]float64, tempK float64, last int) (*balmerGas, error) {
 	g := &balmerGas{lines: make([]balmerLine, last-2)}
 	for k, density := range ne {
@@ -88,9 +89,9 @@ func meetingField(n float64) float64 { return (1/(n*n) - 1/((n+1)*(n+1))) / (6 *
 // strengthAtLimit is continuumStrength of the Balmer continuum.
 var strengthAtLimit = sync.OnceValue(func() float64 { return continuumStrength(2) })
 
-// continuumStrength is the oscillator strength per Rydberg of the continuum of a lower level
-// at its limit, into which that of the lines goes over: they are n^3/2 levels a
-// Rydberg dense, and f n^3 goes as f_0 (1 + c/n^2) for high n.
+// continuumStrength is the oscillator strength per Rydberg of the continuum of a lower level at
+// its limit, into which that of the lines goes over: they are n^3/2 levels a Rydberg dense, and
+// f n^3 goes as f_0 (1 + c/n^2) for high n.
 func continuumStrength(lower int) float64 {
 	at := func(n int) (x, y float64) {
 		t, err := NewTransition(lower, n)
@@ -127,9 +128,9 @@ func (g *balmerGas) linesAt(wave float64) (sum [gasLayers]float64) {
 //
 //	(lambda/lambda_limit)^3 (1 - intact(n)),  1/n^2 = 1/4 - 911.76/lambda,
 //
-// which is the bound-free absorption blueward of the limit, n being infinite (the
-// cube of Kramers 1923), and redward of it the absorption into levels that fields
-// have dissolved (Daeppen, Anderson & Mihalas 1987; from memory).
+// which is the bound-free absorption blueward of the limit, n being infinite (the cube of
+// Kramers 1923), and redward of it the absorption into levels that fields have dissolved
+// (Daeppen, Anderson & Mihalas 1987; from memory).
 func (g *balmerGas) continuumAt(wave float64) (sum [gasLayers]float64) {
 	q := wave / BalmerLimit
 	level := 0.25 - balmerRydberg/wave
@@ -142,8 +143,8 @@ func (g *balmerGas) continuumAt(wave float64) (sum [gasLayers]float64) {
 	return sum
 }
 
-// intact returns the share of atoms in which the level n, a real number, exists: the
-// probability of a field of the ions below meetingField, as proposed by Hummer & Mihalas (1988).
+// intact returns the share of atoms in which the level n, a real number, exists: the probability
+// of a field of the ions below meetingField, as proposed by Hummer & Mihalas (1988).
 func (g *balmerGas) intact(layer int, n float64) float64 {
 	return holtsmarkBelow(g.field[layer] * meetingField(n))
 }

@@ -1,8 +1,9 @@
 // Package hydrogen computes the spectrum of the hydrogen atom: levels with fine
 // structure, wavelengths, oscillator strengths, decay rates, the Voigt profile
 // with the optical depths and equivalent widths made from it, recombination line
-// ratios, pressure-broadened Balmer wings, and the mean transmission of the
-// intergalactic medium in the Lyman series and continuum.
+// ratios, pressure-broadened Balmer lines and those of a simple stellar atmosphere,
+// and the mean transmission of the intergalactic medium in the Lyman series and
+// continuum.
 //
 // Wavelengths are vacuum Angstrom, velocities km/s, column densities cm^-2,
 // rates s^-1. Everything is pure and safe for concurrent use; tables are built

@@ -8,28 +8,28 @@ import (
 	"duskline/linelist"
 )
 
-// starkRecipe asks for the Balmer lines of a star, broadened by pressure: those
-// of hydrogen.BalmerAtmosphere.
+// starkRecipe asks for the Balmer lines of a star, broadened by pressure: those of
+// hydrogen.BalmerAtmosphere.
 type starkRecipe struct {
 	Density     float64 `toml:"density"`     // electrons, cm^-3
 	Temperature float64 `toml:"temperature"` // effective, K
-	// Strength is the opacity of the Balmer continuum at its limit over that of
-	// the continuum redward of it.
+	// Strength is the opacity of the Balmer continuum at its limit over that of the continuum
+	// redward of it.
 	Strength float64 `toml:"strength"`
 	Upper    int     `toml:"upper"` // last upper level of a line
-	// Jump asks for what the levels that have dissolved and the Balmer continuum take on
-	// top of the lines, instead of the lines.
+	// Jump asks for what the levels that have dissolved and the Balmer continuum take on top of
+	// the lines, instead of the lines.
 	Jump bool `toml:"jump"`
 }
 
 const (
-	// Wavelengths in Angstrom outside which nothing is drawn: the lines have ended there, and the
-	// jump goes on where no search goes.
+	// Wavelengths in Angstrom outside which nothing is drawn: the lines have ended there, and
+	// the jump goes on where no search goes.
 	linesFirst, linesLast = 3500.0, 7600.0
 	jumpFirst, jumpLast   = 2900.0, 5200.0
 	balmerFine            = 2 // samples a pixel of a table: cores are hardly wider than one
-	// leastStandIn is the height of a stand-in, over the deepest place, below which
-	// a line is no feature of its own.
+	// leastStandIn is the height of a stand-in, over the deepest place, below which a line is no
+	// feature of its own.
 	leastStandIn = 0.02
 	standInReach = 0.03 // dex
 )
@@ -37,8 +37,8 @@ const (
 // jumpShown is where the jump is of interest, Angstrom.
 var jumpShown = [2]float64{3450, 4000}
 
-// sigma is the Gaussian width in km/s by which the depths are broadened: the
-// component's, else that of the instrument.
+// sigma is the Gaussian width in km/s by which the depths are broadened: the component's, else
+// that of the instrument.
 func (r *starkRecipe) sigma(c *component) float64 {
 	if c.width > 0 {
 		return c.width
@@ -46,8 +46,8 @@ func (r *starkRecipe) sigma(c *component) float64 {
 	return designSigma
 }
 
-// depths returns the depths in the pixels of a table from first on, broadened by a
-// Gaussian of sigma km/s, 1 at the deepest place.
+// depths returns the depths in the pixels of a table from first on, broadened by a Gaussian of
+// sigma km/s, 1 at the deepest place.
 func (r *starkRecipe) depths(sigma float64) (depth []float64, first int, err error) {
 	star, err := hydrogen.NewBalmerAtmosphere(r.Density, r.Temperature, r.Strength, r.Upper)
 	if err != nil {
@@ -93,8 +93,8 @@ func (r *starkRecipe) depths(sigma float64) (depth []float64, first int, err err
 	return depth, first, nil
 }
 
-// add adds the depths to the dense part of a component, and for each line a Gaussian
-// that stands for it where lines are taken one by one, in the scan and the evidence.
+// add adds the depths to the dense part of a component, and for each line a Gaussian that stands
+// for it where lines are taken one by one, in the scan and the evidence.
 func (r *starkRecipe) add(c *component, list *linelist.List) error {
 	depth, first, err := r.depths(r.sigma(c))
 	if err != nil {
@@ -124,8 +124,8 @@ func (r *starkRecipe) add(c *component, list *linelist.List) error {
 	return nil
 }
 
-// standIn fits a Gaussian on a level to the depths around the Balmer line of an
-// upper level, half-way to its next neighbor on either side and no further than standInReach.
+// standIn fits a Gaussian on a level to the depths around the Balmer line of an upper level,
+// half-way to its next neighbor on either side and no further than standInReach.
 func standIn(depth []float64, first, upper int) (term, error) {
 	line, err := hydrogen.NewTransition(2, upper)
 	if err != nil {
