@@ -119,7 +119,7 @@ func (s *Scratch) settle(a, b *track) {
 		sg = b.first
 	}
 	carrier, silent := a, b
-	sa, sb := s.support(a, sg), s.support(b, sg)
+	sa, sb := s.support(a, sg, 0), s.support(b, sg, 0)
 	ratio := math.Abs(b.first) / max(math.Abs(a.first), 1)
 	switch {
 	case s.opt.Stark && a.line.ion == hydrogenIon:
@@ -145,16 +145,17 @@ func (s *Scratch) settle(a, b *track) {
 }
 
 // support says how well a line would account for a feature of the signed S/N
-// sg: the best S/N of that sign among other lines of its ion, at least 0, and
-// less than nothing when the list says that the line is not seen like that.
-func (s *Scratch) support(t *track, sg float64) float64 {
+// sg: the best S/N of that sign among other lines of its ion, those of a lot left out where
+// lot is not 0, at least 0, and less than nothing when the list says that the line is not
+// seen like that.
+func (s *Scratch) support(t *track, sg float64, lot int) float64 {
 	if (sg > 0 && t.line.Seen == Absorption) || (sg < 0 && t.line.Seen == Emission) {
 		return -1
 	}
 	best := 0.0
 	for k := range s.tracks {
 		o := &s.tracks[k]
-		if o.line != t.line && o.line.ion == t.line.ion && o.seen() && sign(o.snr) == sign(sg) {
+		if o.line != t.line && o.line.ion == t.line.ion && o.seen() && sign(o.snr) == sign(sg) && (lot == 0 || !s.trackInLot(k, lot)) {
 			best = max(best, math.Abs(o.snr))
 		}
 	}

@@ -241,18 +241,30 @@ func (s *Scratch) splitMove(i, j int) float64 {
 func (s *Scratch) lotCarrier(ci int) int {
 	q := &s.prob
 	best, support := -1, 0.0
+	lot := q.comps[ci].lot
+	flux, _ := s.lotFlux(ci, nil, 0)
 	for k := range q.comps {
 		c := &q.comps[k]
-		if c.lot != q.comps[ci].lot {
+		if c.lot != lot {
 			continue
 		}
 		t := &s.tracks[c.track]
-		x := s.support(t, s.lm.p[c.amp])
+		x := s.support(t, flux, lot)
 		if best < 0 || x > support || x == support && t.line.F > s.tracks[q.comps[best].track].line.F {
 			best, support = k, x
 		}
 	}
 	return best
+}
+
+// trackInLot reports whether a track has a component in a lot.
+func (s *Scratch) trackInLot(track, lot int) bool {
+	for i := range s.prob.comps {
+		if c := &s.prob.comps[i]; c.track == track && c.lot == lot {
+			return true
+		}
+	}
+	return false
 }
 
 // hasLot reports whether a line of tie k is reported as part of a sum.
