@@ -263,7 +263,7 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 		{s.Has(spectrum.MediumAssumed) || s.Has(spectrum.FrameAssumed) || s.Has(spectrum.FrameUncertain) ||
 			s.Frame == spectrum.RestFrame || s.Frame == spectrum.OtherFrame, catalog.FrameAssumed},
 		{s.Has(spectrum.NoiseEstimated), catalog.NoiseEstimated}, {s.Has(spectrum.WeightsSuspect), catalog.WeightsSuspect},
-		{res.Normalized, catalog.Normalized},
+		{res.Normalized, catalog.Normalized}, {res.OnSky, catalog.OnSkyLine},
 	} {
 		if d.set {
 			o.Flags |= d.flag
@@ -304,6 +304,8 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 		why = append(why, "no line stands out by itself")
 	case res.LinesSeen < t.SecureLines:
 		why = append(why, fmt.Sprintf("only %d of %d needed features stand out", res.LinesSeen, t.SecureLines))
+	case res.OnSky:
+		why = append(why, fmt.Sprintf("only %d of %d needed features stand out that are not on night-sky lines or in bands of water", res.LinesSeen-res.LinesOfAir, t.SecureLines))
 	}
 	if res.Confidence < t.SecureConfidence && !res.Faint {
 		switch {

@@ -70,6 +70,7 @@ type RedshiftSettings struct {
 	SkyBands      []float64 `toml:"sky_bands" min:"100" max:"1e6"`
 	TelluricBands []float64 `toml:"telluric_bands" min:"100" max:"1e6"`
 	TelluricFloor float64   `toml:"telluric_floor" min:"0" max:"10"`
+	WaterBands    []float64 `toml:"water_bands" min:"100" max:"1e6"`
 }
 
 func (r RedshiftSettings) check() []Problem {
@@ -80,7 +81,7 @@ func (r RedshiftSettings) check() []Problem {
 	for _, b := range []struct {
 		key  string
 		list []float64
-	}{{"redshift.sky_bands", r.SkyBands}, {"redshift.telluric_bands", r.TelluricBands}} {
+	}{{"redshift.sky_bands", r.SkyBands}, {"redshift.telluric_bands", r.TelluricBands}, {"redshift.water_bands", r.WaterBands}} {
 		if len(b.list)%2 != 0 {
 			problems = append(problems, Problem{b.key, "wants pairs of first and last wavelength"})
 		}
@@ -125,6 +126,7 @@ func (s Settings) finderOptions() redshift.Options {
 		SearchFrom: s.Redshift.SearchFrom, SearchTo: s.Redshift.SearchTo, TelluricFloor: s.Redshift.TelluricFloor,
 	}
 	opt.SkyBands, opt.TelluricBands = pairs(s.Redshift.SkyBands), pairs(s.Redshift.TelluricBands)
+	opt.WaterBands, opt.SkyLines = pairs(s.Redshift.WaterBands), pairs(s.Lines.SkyBands)
 	return opt
 }
 
@@ -139,7 +141,7 @@ func pairs(v []float64) [][2]float64 {
 // notedBands are the wavelengths to be noted of a line: all that the sky spoils.
 func (s Settings) notedBands() []lines.Band {
 	var out []lines.Band
-	for _, list := range [][]float64{s.Redshift.SkyBands, s.Redshift.TelluricBands, s.Lines.SkyBands} {
+	for _, list := range [][]float64{s.Redshift.SkyBands, s.Redshift.TelluricBands, s.Redshift.WaterBands, s.Lines.SkyBands} {
 		for _, b := range pairs(list) {
 			out = append(out, lines.Band{Lo: b[0], Hi: b[1]})
 		}

@@ -27,6 +27,12 @@ type Options struct {
 	// not a strong emission line.
 	TelluricBands [][2]float64
 	TelluricFloor float64
+	// WaterBands are observed wavelengths where water of the air takes light; the
+	// template error there grows with what the spectrum shows of it.
+	WaterBands [][2]float64
+	// SkyLines are observed wavelengths of night-sky lines, of which the subtraction may leave
+	// what looks like an emission line.
+	SkyLines [][2]float64
 }
 
 // DefaultOptions returns the settings the tool is tuned with.
@@ -47,6 +53,8 @@ func DefaultOptions() Options {
 		SkyBands:      [][2]float64{{5565, 5590}},
 		TelluricBands: [][2]float64{{6860, 6960}, {7590, 7720}, {13450, 14400}, {18000, 19500}},
 		TelluricFloor: 0.3,
+		WaterBands:    [][2]float64{{7164, 7342}, {8127, 8348}, {8946, 9850}},
+		SkyLines:      [][2]float64{{5890.5, 5898.6}, {6301, 6303.1}, {6364.5, 6366.6}},
 	}
 }
 
@@ -115,6 +123,9 @@ type Scratch struct {
 	weight      []float64 // weights before they are tempered
 	independent float64   // fraction of the pixels that are independent
 	floor       []float64 // template error, fraction of the local flux
+	left        float64   // share of the light that water takes, see waterLeft
+	shares      []float64 // of departure
+	errors      []float64
 	basis       continuum.Basis
 }
 
@@ -203,6 +214,8 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 	for i := range s.floor {
 		s.floor[i] = f.opt.Floor
 	}
+	s.waterLeft(g, l.resid, s.smooth, f.opt.WaterBands)
+	fillBands(s.floor, g, f.opt.WaterBands, math.Max(f.opt.Floor, waterReach*s.left))
 	fillBands(s.floor, g, f.opt.TelluricBands, math.Max(f.opt.Floor, f.opt.TelluricFloor))
 	weightFloor(l.weight, l.resid, s.smooth, s.floor, 15)
 	fillBands(l.weight, g, f.opt.SkyBands, 0)

@@ -59,8 +59,10 @@ func (t Thresholds) Judge(r *Result) {
 	r.Faint = r.LinesSeen == 0 && r.SNR < t.FaintSNR
 	r.LoneLine = r.LinesSeen == 1
 	r.Unseen = r.LinesExpected > 0 && 2*r.LinesCovered < r.LinesExpected
-	enough := r.LinesSeen-r.LinesMissing >= t.SecureLines
-	if r.LinesSeen-r.LinesMissing == t.SecureLines-1 && !r.InEmission {
+	clear := r.LinesSeen - r.LinesOfAir - r.LinesMissing
+	r.OnSky = r.LinesOfAir > 0 && r.LinesSeen-r.LinesOfAir < t.SecureLines
+	enough := clear >= t.SecureLines
+	if clear == t.SecureLines-1 && !r.InEmission {
 		// One feature short: many weak ones must make up for it. A lone emission
 		// line may be a cosmic ray or another line.
 		enough = 1-r.Confidence <= 0.5*math.Pow(2*(1-t.SecureConfidence), overwhelming)
@@ -101,8 +103,12 @@ func countFeatures(lines []feature, apart float64) int {
 	return n
 }
 
-// feature is a line that stands out, in pixels, with its signal-to-noise.
-type feature struct{ center, sigma, snr float64 }
+// feature is a line that stands out, in pixels, with its signal-to-noise; air says
+// that the night sky or water may have made it.
+type feature struct {
+	center, sigma, snr float64
+	air                bool
+}
 
 // leaders leaves out what stands beside a broad line of four times its
 // signal-to-noise: broad from a sigma of broad pixels on, beside up to reach pixels.

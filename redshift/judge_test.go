@@ -28,6 +28,8 @@ func TestJudge(t *testing.T) {
 		{"one line in absorption", with(func(r *Result) { r.LinesSeen, r.Gap = 1, 50 }), Uncertain, nil},
 		{"correlated pixels", with(func(r *Result) { r.Correlation, r.Gap = 3, 50 }), Uncertain, nil},
 		{"beyond description", with(func(r *Result) { r.Chi2Dof, r.Gap = 31, 1e6 }), Uncertain, func(r *Result) []bool { return []bool{r.Misfit} }},
+		{"two lines, one on the night sky", with(func(r *Result) { r.LinesSeen, r.LinesOfAir, r.InEmission = 2, 1, true }), Uncertain, func(r *Result) []bool { return []bool{r.OnSky} }},
+		{"three lines, one on the night sky", with(func(r *Result) { r.LinesSeen, r.LinesOfAir, r.InEmission = 3, 1, true }), Secure, func(r *Result) []bool { return []bool{!r.OnSky} }},
 		{"lines seen, but as many missing", with(func(r *Result) { r.LinesMissing, r.InEmission = 4, true }), Uncertain, nil},
 		{"lines seen, some missing", with(func(r *Result) { r.LinesMissing = 3 }), Uncertain, nil},
 		{"lines that disagree", with(func(r *Result) { r.Scattered = true }), Uncertain, nil},
@@ -95,13 +97,13 @@ func TestCountFeatures(t *testing.T) {
 		want  int
 	}{
 		{"none", nil, 0},
-		{"one", []feature{{100, 2, 9}}, 1},
-		{"the same line twice", []feature{{100, 2, 9}, {100, 5, 9}}, 1},
-		{"apart, out of order", []feature{{300, 2, 9}, {100, 2, 9}, {200, 2, 9}}, 3},
-		{"a blend", []feature{{100, 2, 9}, {103.9, 2, 9}}, 1},
-		{"just apart", []feature{{100, 2, 9}, {104.1, 2, 9}}, 2},
-		{"a doublet nearer than features are", []feature{{100, 1, 9}, {103.5, 1, 9}}, 1},
-		{"a chain of blends", []feature{{100, 2, 9}, {103, 2, 9}, {106, 2, 9}}, 1},
+		{"one", []feature{{center: 100, sigma: 2, snr: 9}}, 1},
+		{"the same line twice", []feature{{center: 100, sigma: 2, snr: 9}, {center: 100, sigma: 5, snr: 9}}, 1},
+		{"apart, out of order", []feature{{center: 300, sigma: 2, snr: 9}, {center: 100, sigma: 2, snr: 9}, {center: 200, sigma: 2, snr: 9}}, 3},
+		{"a blend", []feature{{center: 100, sigma: 2, snr: 9}, {center: 103.9, sigma: 2, snr: 9}}, 1},
+		{"just apart", []feature{{center: 100, sigma: 2, snr: 9}, {center: 104.1, sigma: 2, snr: 9}}, 2},
+		{"a doublet nearer than features are", []feature{{center: 100, sigma: 1, snr: 9}, {center: 103.5, sigma: 1, snr: 9}}, 1},
+		{"a chain of blends", []feature{{center: 100, sigma: 2, snr: 9}, {center: 103, sigma: 2, snr: 9}, {center: 106, sigma: 2, snr: 9}}, 1},
 	} {
 		if got := countFeatures(c.lines, 3.9); got != c.want {
 			t.Errorf("%s: %d, want %d", c.name, got, c.want)
@@ -112,8 +114,8 @@ func TestCountFeatures(t *testing.T) {
 // A weak line beside a broad one ten times as strong is left out, whichever comes first; one far
 // away, or beside a narrow one, stays.
 func TestLeaders(t *testing.T) {
-	got := leaders([]feature{{150, 20, 5}, {100, 20, 50}, {400, 20, 5}, {700, 2, 50}, {705, 2, 5}}, 12, 200)
-	want := []feature{{100, 20, 50}, {700, 2, 50}, {400, 20, 5}, {705, 2, 5}}
+	got := leaders([]feature{{center: 150, sigma: 20, snr: 5}, {center: 100, sigma: 20, snr: 50}, {center: 400, sigma: 20, snr: 5}, {center: 700, sigma: 2, snr: 50}, {center: 705, sigma: 2, snr: 5}}, 12, 200)
+	want := []feature{{center: 100, sigma: 20, snr: 50}, {center: 700, sigma: 2, snr: 50}, {center: 400, sigma: 20, snr: 5}, {center: 705, sigma: 2, snr: 5}}
 	if !slices.Equal(got, want) {
 		t.Errorf("%v, want %v", got, want)
 	}

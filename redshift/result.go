@@ -31,6 +31,7 @@ type Result struct {
 	PixelsUsed    int
 
 	LinesSeen     int  // features of the model that stand out by themselves, blends as one
+	LinesOfAir    int  // those that the night sky or water of the air may have made
 	InEmission    bool // one of them is in emission
 	LinesExpected int  // lines that should stand out in a member of the family
 	LinesCovered  int  // those of them inside the coverage
@@ -40,6 +41,7 @@ type Result struct {
 	FewPixels, BelowZero, RangeEnd, Scattered bool
 	Normalized                                bool // the input was divided by its continuum; set by the caller
 	Faint, Tied, LoneLine, Misfit, Unseen     bool
+	OnSky                                     bool // without LinesOfAir too few are left
 
 	Verdict Verdict
 	Reason  string // why nothing was found
@@ -188,7 +190,7 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 		e.Seen = t.amp > 0 && e.SNR >= SeenSNR && e.SNR > 0.3*e.Model && e.Model >= 0.5*SeenSNR
 		res.Lines = append(res.Lines, e)
 		if e.Seen {
-			s.features = append(s.features, feature{(t.logWave + p.shift - l.start) / l.step, sigma, e.SNR})
+			s.features = append(s.features, feature{(t.logWave + p.shift - l.start) / l.step, sigma, e.SNR, f.airMade(s, &e)})
 			res.InEmission = res.InEmission || !t.absorption
 		}
 		if t.amp > 0 && t.name != "" && e.Model > missingSNR && e.SNR < e.Model/3 {
@@ -201,7 +203,9 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 		}
 	}
 	s.features = leaders(s.features, broadKms/s.pixelKms(), satelliteKms/s.pixelKms())
-	res.LinesSeen = countFeatures(s.features, featureKms/s.pixelKms())
+	apart := featureKms / s.pixelKms()
+	res.LinesSeen = countFeatures(s.features, apart)
+	res.LinesOfAir = res.LinesSeen - countFeatures(slices.DeleteFunc(s.features, func(o feature) bool { return o.air }), apart)
 	least := 2 * SeenSNR * math.Sqrt(res.Correlation)
 	// A break or band that the data demand counts as one feature.
 	for c := range p.family.components {

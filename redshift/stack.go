@@ -171,7 +171,7 @@ func (s *Scratch) denseFeatures(c *component, amp, shift float64) {
 				continue
 			}
 			if snr, model := tr/math.Sqrt(tt), amp*math.Sqrt(tt); snr >= SeenSNR && snr > 0.3*model {
-				s.features = append(s.features, feature{at / tt, 0.3 * float64(chunk), tr / math.Sqrt(tt)})
+				s.features = append(s.features, feature{center: at / tt, sigma: 0.3 * float64(chunk), snr: tr / math.Sqrt(tt)})
 			}
 		}
 	}
