@@ -57,6 +57,8 @@ const (
 	NoiseEstimated                   // no errors in the input: noise was estimated from the flux
 	WeightsSuspect                   // the stated errors disagree with the scatter
 	Normalized                       // the input was divided by its continuum
+	OutsideLimits                    // a better fit lies outside the manifest's limits
+	Unexplained                      // features stand out that the model does not explain
 )
 
 // flagTable is in order of bits.
@@ -77,6 +79,8 @@ var flagTable = [...]struct{ name, says string }{
 	{"noise_estimated", "noise was estimated from the flux"},
 	{"weights_suspect", "the stated errors disagree with the scatter"},
 	{"normalized", "the input looks divided by its continuum"},
+	{"outside_limits", "a better fit lies outside the manifest's limits"},
+	{"unexplained", "features stand out that the model does not explain"},
 }
 
 // knownFlags has every defined bit set.

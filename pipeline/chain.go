@@ -46,7 +46,13 @@ func NewChain(set Settings, recipes ...RecipeText) (*Chain, error) {
 		families = append(families, t.Family)
 		c.digests["family "+t.Family.Name] = t.Digest
 	}
-	c.finder, err = redshift.NewFinder(families, set.Grid.Step, set.finderOptions())
+	opt := set.finderOptions()
+	for _, l := range list.Lines() {
+		if l.Seen != "absorption" {
+			opt.Lines = append(opt.Lines, l.Wave)
+		}
+	}
+	c.finder, err = redshift.NewFinder(families, set.Grid.Step, opt)
 	if err != nil {
 		return nil, err
 	}
@@ -87,10 +93,9 @@ type Bench struct {
 func (b *Bench) Process(s *spectrum.Spectrum) Outcome {
 	b.level.ready, b.results = false, b.results[:0]
 	b.lay(s)
-	res, beyond := b.find(s)
-	res.Normalized = normalized(&b.grid, s.FluxUnit, b.x)
-	b.chain.thresholds.Judge(&res)
+	res, beyond, flags := b.find(s)
 	obj := b.object(s, &res)
+	obj.Flags |= flags
 	if beyond != "" {
 		obj.Reason = strings.TrimPrefix(obj.Reason+"; "+beyond, "; ")
 	}
@@ -264,6 +269,7 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 			s.Frame == spectrum.RestFrame || s.Frame == spectrum.OtherFrame, catalog.FrameAssumed},
 		{s.Has(spectrum.NoiseEstimated), catalog.NoiseEstimated}, {s.Has(spectrum.WeightsSuspect), catalog.WeightsSuspect},
 		{res.Normalized, catalog.Normalized}, {res.OnSky, catalog.OnSkyLine},
+		{res.Unexplained, catalog.Unexplained},
 	} {
 		if d.set {
 			o.Flags |= d.flag
@@ -280,11 +286,28 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 	if s.Frame == spectrum.RestFrame || s.Frame == spectrum.OtherFrame {
 		why = append(why, fmt.Sprintf("wavelengths are in the %s frame and were kept: the redshift is in that frame", s.Frame))
 	}
+	if res.Unexplained {
+		why = append(why, "narrow emission that no line at this redshift explains, as from a second object in the aperture, at "+waves(res.Leftovers))
+	}
 	for _, w := range s.Warnings {
 		why = append(why, w.Text)
 	}
 	o.Reason = strings.Join(why, "; ")
 	return o
+}
+
+// waves writes the first wavelengths of a list.
+func waves(list []float64) string {
+	const most = 4
+	var text []string
+	for _, w := range list[:min(most, len(list))] {
+		text = append(text, fmt.Sprintf("%.0f", w))
+	}
+	more := ""
+	if len(list) > most {
+		more = fmt.Sprintf(" and %d more", len(list)-most)
+	}
+	return strings.Join(text, ", ") + more + " Angstrom"
 }
 
 // doubts says in words why a redshift is not secure.

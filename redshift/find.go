@@ -33,6 +33,8 @@ type Options struct {
 	// SkyLines are observed wavelengths of night-sky lines, of which the subtraction may leave
 	// what looks like an emission line.
 	SkyLines [][2]float64
+	// Lines are rest wavelengths, Angstrom, at which objects have emission lines beside those of the families.
+	Lines []float64
 }
 
 // DefaultOptions returns the settings the tool is tuned with.
@@ -125,6 +127,8 @@ type Scratch struct {
 	floor       []float64 // template error, fraction of the local flux
 	left        float64   // share of the light that water takes, see waterLeft
 	shares      []float64 // of departure
+	filtered    []float64 // of leftovers
+	aside       []float64
 	errors      []float64
 	basis       continuum.Basis
 }
@@ -165,11 +169,26 @@ func (f *Finder) Find(g *spectrum.Grid, s *Scratch) Result {
 	}
 	f.judge(s)
 	if len(s.peaks) == 0 {
-		res.Reason = "no template family covers the spectrum"
+		switch {
+		case len(f.families) == 0:
+			res.Reason = "no template family reaches into the range of redshift that is left"
+		case !slices.ContainsFunc(f.families, func(fam *Family) bool { return fam.reaches(&s.full) }):
+			res.Reason = "no template family has a feature inside the coverage"
+		default:
+			res.Reason = "no template family describes the spectrum better than its continuum alone"
+		}
 		return res
 	}
 	f.conclude(g, s, &res)
 	return res
+}
+
+// reaches reports whether a feature of the family lies on the level at some redshift of its range.
+func (f *Family) reaches(l *level) bool {
+	lo, hi := l.start-math.Log10(1+f.ZMax), l.start+float64(l.n-1)*l.step-math.Log10(1+f.ZMin)
+	return slices.ContainsFunc(f.components, func(c component) bool {
+		return c.wide() || slices.ContainsFunc(c.terms, func(t term) bool { return t.logWave >= lo && t.logWave <= hi })
+	})
 }
 
 // prepare makes the levels. It reports false, with the reason in res, when the

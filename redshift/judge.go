@@ -45,6 +45,9 @@ func DefaultThresholds() Thresholds {
 // for one missing feature.
 const overwhelming = 3
 
+// secondObject is the number of leftovers that tell of another object; one may be a cosmic ray.
+const secondObject = 2
+
 // Judge sets Confidence, Verdict and the doubts that follow from thresholds.
 func (t Thresholds) Judge(r *Result) {
 	r.Confidence = 0
@@ -59,6 +62,7 @@ func (t Thresholds) Judge(r *Result) {
 	r.Faint = r.LinesSeen == 0 && r.SNR < t.FaintSNR
 	r.LoneLine = r.LinesSeen == 1
 	r.Unseen = r.LinesExpected > 0 && 2*r.LinesCovered < r.LinesExpected
+	r.Unexplained = len(r.Leftovers) >= secondObject
 	clear := r.LinesSeen - r.LinesOfAir - r.LinesMissing
 	r.OnSky = r.LinesOfAir > 0 && r.LinesSeen-r.LinesOfAir < t.SecureLines
 	enough := clear >= t.SecureLines

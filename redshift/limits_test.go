@@ -2,6 +2,7 @@ package redshift
 
 import (
 	"math"
+	"math/rand/v2"
 	"testing"
 
 	"duskline/spectrum"
@@ -29,8 +30,78 @@ func TestWithin(t *testing.T) {
 	// Nothing in the recipes lies beyond z = 15.
 	none := f.Within(spectrum.Limits{ZMin: 15, ZMax: 16})
 	res := none.Find(flatGrid(), none.NewScratch())
-	if res.Found || res.Reason == "" || !math.IsNaN(res.Redshift) {
+	if res.Found || !math.IsNaN(res.Redshift) || res.Reason != "no template family reaches into the range of redshift that is left" {
 		t.Errorf("%+v", res)
+	}
+}
+
+// Why nothing is found is said as it is: no feature in the coverage, or none that the
+// spectrum has.
+func TestNothingFoundIsExplained(t *testing.T) {
+	line := func(wave float64) *Family {
+		return &Family{Name: "line", Class: "galaxy", ZMin: 0, ZMax: 0.01, Widths: []float64{100},
+			components: []component{{name: "line", scale: 1, terms: []term{{name: "line", logWave: math.Log10(wave), amp: 1}}}}}
+	}
+	g := flatGrid() // 3600 to 9042 Angstrom
+	for i := range g.Flux {
+		u := (g.LogWave(i) - math.Log10(6000)) / (3 * testStep)
+		g.Flux[i] -= 9 * math.Exp(-0.5*u*u) // an emission line describes nothing here
+	}
+	for _, c := range []struct {
+		wave float64
+		want string
+	}{
+		{12000, "no template family has a feature inside the coverage"},
+		{5970, "no template family describes the spectrum better than its continuum alone"},
+	} {
+		f := newTestFinder(t, []*Family{line(c.wave)})
+		if res := f.Find(g, f.NewScratch()); res.Found || res.Reason != c.want {
+			t.Errorf("a line at %g Angstrom: found %v, %q, want %q", c.wave, res.Found, res.Reason, c.want)
+		}
+	}
+}
+
+// Drop weighs answers of searches within limits and without on the same pixels. The
+// weights of a search are lowered where none of its own answers describe the data, so that the drop
+// it states itself is another. The free answer is the best on the weights of the free search.
+func TestDropOnTheSameWeights(t *testing.T) {
+	f := newTestFinder(t, builtInFamilies(t))
+	s := f.NewScratch()
+	for seed := range uint64(4) {
+		g := emissionLines(t, rand.New(rand.NewPCG(seed, 1)), 0.2, 90, 20)
+		in := f.Within(spectrum.Limits{ZMin: 0.5, ZMax: 0.9}).Find(g, s)
+		free := f.Find(g, s)
+		own, other := f.Drop(s, &free), f.Drop(s, &in)
+		// The winner was refined after its drop was taken; what is left of a step is below a hundredth.
+		if math.Abs(own/free.Drop-1) > 0.01 {
+			t.Errorf("the winner lowers chi^2 by %.1f, now by %.1f", free.Drop, own)
+		}
+		// By hand: the tempered weights of the free search, chi^2 without and with the model.
+		best := 0.0
+		for _, fam := range f.families {
+			if fam.Name != in.Family {
+				continue
+			}
+			fit := s.bench.evaluate(&s.full, fam, in.Width, math.Log10(1+in.Redshift))
+			resid := make([]float64, s.full.n)
+			s.bench.residual(resid, &s.full, &fit)
+			for i, w := range s.full.weight {
+				best += w * (s.full.resid[i]*s.full.resid[i] - resid[i]*resid[i])
+			}
+		}
+		// The prior of the spline takes part in the drop but not in this sum.
+		if math.Abs(best-other) > 0.05*own {
+			t.Errorf("the answer within limits lowers chi^2 by %.1f, by hand %.1f", other, best)
+		}
+		if other >= own {
+			t.Errorf("within limits %.1f, without %.1f", other, own)
+		}
+		if math.Abs(other-in.Drop) < 18.4 {
+			t.Errorf("both weights give %.1f and %.1f: nothing is tested", other, in.Drop)
+		}
+	}
+	if got := f.Drop(s, &Result{}); got != 0 {
+		t.Errorf("%g where nothing was found", got)
 	}
 }
 

@@ -37,11 +37,16 @@ type Result struct {
 	LinesCovered  int  // those of them inside the coverage
 	LinesMissing  int  // lines that the model predicts strongly and the data lack
 
+	// Leftovers are the observed wavelengths, Angstrom, of narrow emission that no line at
+	// the redshift explains, strongest first.
+	Leftovers []float64
+
 	// Doubts that finding raises, and those that Judge adds.
 	FewPixels, BelowZero, RangeEnd, Scattered bool
 	Normalized                                bool // the input was divided by its continuum; set by the caller
 	Faint, Tied, LoneLine, Misfit, Unseen     bool
 	OnSky                                     bool // without LinesOfAir too few are left
+	Unexplained                               bool // Leftovers enough for a second object
 
 	Verdict Verdict
 	Reason  string // why nothing was found
@@ -89,10 +94,7 @@ const (
 func (f *Finder) conclude(g *spectrum.Grid, s *Scratch, res *Result) {
 	l := &s.full
 	best := s.peaks[0]
-	same := sameVelocity
-	if best.family.Class == "quasar" {
-		same = sameVelocityBroad
-	}
+	same := sameKms(best.family.Class)
 	res.Found = true
 	res.Class, res.Family, res.Width = best.family.Class, best.family.Name, best.width
 	res.Redshift, res.Drop = best.z(), best.fit.drop
@@ -122,11 +124,26 @@ func (f *Finder) conclude(g *spectrum.Grid, s *Scratch, res *Result) {
 	// Of pixels narrower than the input's only a fraction is independent; the
 	// stiffened spline has about the freedom of its coarse parent.
 	res.Chi2Dof = chi2 / math.Max(1, s.independent*float64(l.good)-float64(s.fit.Basis().Size()+best.fit.active+1))
+	res.Leftovers = f.leftovers(s, g, &best)
 	f.evidence(s, &best, res)
 	res.RedshiftErr = f.redshiftError(s, &best)
 	lo, hi := math.Log10(1+best.family.ZMin), math.Log10(1+best.family.ZMax)
 	res.RangeEnd = best.shift-lo < 2*l.step || hi-best.shift < 2*l.step
 	res.RStat = f.rStat(s, &best)
+}
+
+// sameKms is the velocity within which two answers of a class are one.
+func sameKms(class string) float64 {
+	if class == "quasar" {
+		return sameVelocityBroad
+	}
+	return sameVelocity
+}
+
+// Same reports whether two answers were found at one redshift.
+func Same(a, b *Result) bool {
+	v := math.Log((1+a.Redshift)/(1+b.Redshift)) * speedOfLight
+	return math.Abs(v) <= math.Max(sameKms(a.Class), sameKms(b.Class))
 }
 
 // redshiftError is the one-sigma error from the curvature of the chi^2 drop,

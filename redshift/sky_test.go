@@ -58,6 +58,7 @@ func TestAirMade(t *testing.T) {
 		{"on [O I] 6300", 0, 6302, 100, false, true},
 		{"its wing on [O I] 6300", 0, 6304, 100, false, true},
 		{"beside [O I] 6300", 0, 6308, 100, false, false},
+		{"a broad line on [O I] 6300", 0, 6302, 2000, false, false},
 		{"absorption on sodium", 0, 5892, 100, true, false},
 		{"absorption in water", 0.1, 8200, 100, true, true},
 		{"a broad line in water", 0.1, 8200, 2000, false, true},

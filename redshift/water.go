@@ -110,22 +110,20 @@ func pixelRange(g *spectrum.Grid, from, to float64) (lo, hi int) {
 const (
 	skyCore    = 1.5  // Gaussian sigmas of a line within which a night-sky line spoils it
 	waterShows = 0.03 // share of the light left from which water passes for a line
-	// narrowKms is the Gaussian sigma below which a line in emission is none of water's.
+	// narrowKms is the Gaussian sigma below which emission may be the sky's, which is unresolved,
+	// and is none of water's.
 	narrowKms = 400.0
 )
 
-// airMade reports whether a line may be what the night sky or water left: an
-// emission line on one of the night sky, or, where water shows in the spectrum, one in a band of it that is
-// no narrow emission.
+// airMade reports whether a line may be what the night sky or water left: narrow
+// emission on a line of the night sky; anything else in a band of water, where water
+// shows in the spectrum.
 func (f *Finder) airMade(s *Scratch, e *LineEvidence) bool {
 	half := skyCore * e.Width / speedOfLight * e.Wave
-	if !e.Absorption && touches(f.opt.SkyLines, e.Wave-half, e.Wave+half) {
-		return true
+	if !e.Absorption && e.Width < narrowKms {
+		return touches(f.opt.SkyLines, e.Wave-half, e.Wave+half)
 	}
-	if s.left < waterShows || !e.Absorption && e.Width < narrowKms {
-		return false
-	}
-	return touches(f.opt.WaterBands, e.Wave-half, e.Wave+half)
+	return s.left >= waterShows && touches(f.opt.WaterBands, e.Wave-half, e.Wave+half)
 }
 
 func touches(bands [][2]float64, from, to float64) bool {
