@@ -89,9 +89,6 @@ func (f AbsorberFlags) String() string {
 // absorberFlagText is a view of AbsorberFlags as their names.
 type absorberFlagText AbsorberFlags
 
-// AbsorberColumns returns the columns of the absorber table in order.
-func AbsorberColumns() []Column { return tableOf[Absorber]().public() }
-
 func absorberColumns() []column[Absorber] {
 	type A = Absorber
 	return []column[A]{

@@ -75,20 +75,6 @@ func typeName(field any) string {
 	return "float64"
 }
 
-func (t table[T]) public() []Column {
-	out := make([]Column, len(t.columns))
-	for i, c := range t.columns {
-		out[i] = c.Column
-	}
-	return out
-}
-
-// ObjectColumns returns the columns of the object table in order.
-func ObjectColumns() []Column { return tableOf[Object]().public() }
-
-// LineColumns returns the columns of the line table in order.
-func LineColumns() []Column { return tableOf[Line]().public() }
-
 // CleanText is the form in which every format holds a text: control characters
 // and bytes that are not UTF-8 are written as backslash escapes (\n, \x1b), so
 // that a row stays one line and a name can be printed. All other text,

@@ -76,7 +76,7 @@ func TestCSVGolden(t *testing.T) {
 }
 
 func TestDocsGolden(t *testing.T) {
-	golden(t, filepath.Join("..", "docs", "columns.md"), MarkdownColumns())
+	golden(t, filepath.Join("..", "docs", "columns.md"), markdownColumns())
 }
 
 // rounded is v with the decimals of its column, half a unit of the last place

@@ -13,9 +13,6 @@ type Index struct {
 // IndexUnits lists what an index may be. It returns a new slice.
 func IndexUnits() []string { return []string{"Angstrom", "mag", "ratio"} }
 
-// IndexColumns returns the columns of the table of indices in order.
-func IndexColumns() []Column { return tableOf[Index]().public() }
-
 func indexColumns() []column[Index] {
 	type I = Index
 	return []column[I]{

@@ -101,23 +101,23 @@ func TestParquetMetadata(t *testing.T) {
 		t.Fatal(err)
 	}
 	defer r.Close()
-	if r.NumRows() != int64(len(someObjects())) {
-		t.Errorf("NumRows = %d", r.NumRows())
+	if r.file.NumRows() != int64(len(someObjects())) {
+		t.Errorf("%d rows", r.file.NumRows())
 	}
 	for _, f := range someProvenance {
 		if f.Name == "" {
 			continue
 		}
-		if got, ok := r.Fact(f.Name); !ok || got != f.Value {
+		if got, ok := r.Facts()[f.Name]; !ok || got != f.Value {
 			t.Errorf("%s = %q, want %q", f.Name, got, f.Value)
 		}
 	}
-	described, _ := r.Fact("columns")
+	described := r.Facts()["columns"]
 	var columns []struct{ Name, Unit, UCD, Description string }
 	if err := json.Unmarshal([]byte(described), &columns); err != nil {
 		t.Fatal(err)
 	}
-	for i, c := range ObjectColumns() {
+	for i, c := range objectColumnsTold() {
 		if got := columns[i]; got.Name != c.Name || got.Unit != c.Unit || got.UCD != c.UCD || got.Description != c.Description {
 			t.Errorf("column %d described as %+v, want %+v", i, got, c)
 		}
@@ -132,7 +132,7 @@ func TestParquetMetadata(t *testing.T) {
 	}
 	// NaN is null, for engines that would sort it above all numbers.
 	index := -1
-	for i, c := range ObjectColumns() {
+	for i, c := range objectColumnsTold() {
 		if c.Name == "ra" {
 			index = i
 		}

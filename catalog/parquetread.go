@@ -54,13 +54,6 @@ func OpenParquet[T Row](r io.ReaderAt, size int64) (*ParquetReader[T], error) {
 		batch: make([]parquet.Row, batchRows), words: map[string]string{}}, nil
 }
 
-// NumRows returns the number of rows that the footer states.
-func (r *ParquetReader[T]) NumRows() int64 { return r.file.NumRows() }
-
-// Fact returns what the metadata holds under a name, such as that of a Fact of
-// the provenance.
-func (r *ParquetReader[T]) Fact(name string) (string, bool) { return r.file.Lookup(name) }
-
 // Next reads one row; io.EOF after the last. A row that fails Check is an
 // error.
 func (r *ParquetReader[T]) Next(row *T) error {

@@ -120,26 +120,6 @@ func (f Flags) Names() []string {
 // String returns the names joined by "|", empty if no flag is set.
 func (f Flags) String() string { return strings.Join(f.Names(), "|") }
 
-// ParseFlags is the inverse of String for defined flags. Order and repetition
-// do not matter; an unknown name is an error.
-func ParseFlags(s string) (Flags, error) {
-	var f Flags
-	if s == "" {
-		return 0, nil
-	}
-next:
-	for name := range strings.SplitSeq(s, "|") {
-		for bit, known := range flagTable {
-			if name == known.name {
-				f |= 1 << bit
-				continue next
-			}
-		}
-		return 0, fmt.Errorf("unknown flag %q; the flags are %s", name, strings.Join(FlagNames(), ", "))
-	}
-	return f, nil
-}
-
 // Object is one row of the object table: one spectrum and the answer to it.
 // Numbers that are not known are NaN.
 type Object struct {

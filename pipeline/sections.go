@@ -122,7 +122,7 @@ type VerdictSettings struct {
 func (s Settings) finderOptions() redshift.Options {
 	opt := redshift.Options{
 		KnotSpacing: s.Continuum.KnotSpacing, Floor: s.Redshift.TemplateFloor, Stiffness: s.Redshift.Stiffness, Temper: s.Redshift.Temper,
-		ClipSpikes: spikeClip, Nominees: s.Redshift.Nominees, MinPixels: s.Redshift.MinPixels,
+		Nominees: s.Redshift.Nominees, MinPixels: s.Redshift.MinPixels,
 		SearchFrom: s.Redshift.SearchFrom, SearchTo: s.Redshift.SearchTo, TelluricFloor: s.Redshift.TelluricFloor,
 	}
 	opt.SkyBands, opt.TelluricBands = pairs(s.Redshift.SkyBands), pairs(s.Redshift.TelluricBands)
@@ -148,10 +148,6 @@ func (s Settings) notedBands() []lines.Band {
 	}
 	return out
 }
-
-// spikeClip is the distance in sigmas from which a pixel does not shape the
-// continuum of the redshift search.
-const spikeClip = 6
 
 func (s Settings) thresholds() redshift.Thresholds {
 	v := s.Verdict

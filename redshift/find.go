@@ -9,14 +9,13 @@ import (
 	"duskline/spectrum"
 )
 
-// Options steers a Finder. Zero values are not defaults: start from
-// DefaultOptions.
+// Options steers a Finder. The defaults, in configs/default.toml, put 18 interior knots of the
+// spline over 3500 to 10500 Angstrom.
 type Options struct {
 	KnotSpacing float64 // of the continuum spline, dex
 	Floor       float64 // template error, fraction of the local flux
 	Stiffness   float64 // prior on fast waves of the continuum, fraction; 0 for a plain spline
 	Temper      int     // half width in pixels over which misfit lowers the weights; 0 for never
-	ClipSpikes  float64 // sigmas beyond which a pixel does not shape the continuum
 	Nominees    int     // trial redshifts a family and width that go to the joint fit
 	MinPixels   int     // usable pixels below which no redshift is sought
 	SearchFrom  float64 // observed Angstrom; pixels outside do not count when enough are inside
@@ -35,29 +34,6 @@ type Options struct {
 	SkyLines [][2]float64
 	// Lines are rest wavelengths, Angstrom, at which objects have emission lines beside those of the families.
 	Lines []float64
-}
-
-// DefaultOptions returns the settings the tool is tuned with.
-//
-// The knot spacing puts 18 interior knots over 3500 to 10500 Angstrom. The
-// band without weight is the [O I] night-sky line; the telluric bands are B, A and two of water.
-func DefaultOptions() Options {
-	return Options{
-		KnotSpacing:   0.0251,
-		Floor:         0.02,
-		Stiffness:     0.03,
-		Temper:        12,
-		ClipSpikes:    6,
-		Nominees:      5,
-		MinPixels:     200,
-		SearchFrom:    3000,
-		SearchTo:      26000,
-		SkyBands:      [][2]float64{{5565, 5590}},
-		TelluricBands: [][2]float64{{6860, 6960}, {7590, 7720}, {13450, 14400}, {18000, 19500}},
-		TelluricFloor: 0.3,
-		WaterBands:    [][2]float64{{7164, 7342}, {8127, 8348}, {8946, 9850}},
-		SkyLines:      [][2]float64{{5890.5, 5898.6}, {6301, 6303.1}, {6364.5, 6366.6}},
-	}
 }
 
 // Finder finds redshifts with a fixed set of families. It is immutable and may
@@ -240,7 +216,7 @@ func (f *Finder) prepare(g *spectrum.Grid, s *Scratch, res *Result) bool {
 	fillBands(l.weight, g, f.opt.SkyBands, 0)
 	f.limitRange(l)
 	s.maskTroughs(l)
-	copt := continuum.Options{Spacing: f.opt.KnotSpacing, ClipLow: f.opt.ClipSpikes, ClipHigh: f.opt.ClipSpikes, Iterations: 4}
+	copt := continuum.Options{Spacing: f.opt.KnotSpacing, ClipLow: clipSpikes, ClipHigh: clipSpikes, Iterations: 4}
 	if err := s.fit.Fit(s.x, l.resid, l.weight, copt); err != nil {
 		res.FewPixels = true
 		res.Reason = err.Error()
@@ -305,6 +281,10 @@ func capOutliers(l *level) {
 }
 
 const outlierCap = 8.0
+
+// clipSpikes is the distance in sigmas from which a pixel does not shape the continuum
+// of the search.
+const clipSpikes = 6.0
 
 // limitRange takes the weight of pixels outside the searched wavelengths, if
 // enough are left inside: in the far ultraviolet the star families have no

@@ -3,15 +3,82 @@ package redshift
 import (
 	"io/fs"
 	"math"
+	"sync"
 	"testing"
 
 	"duskline/configs"
 	"duskline/continuum"
 	"duskline/linelist"
 	"duskline/spectrum"
+
+	"github.com/pelletier/go-toml/v2"
 )
 
 const testStep = 1e-4
+
+// defaults are the sections of configs/default.toml that steer this package.
+type defaults struct {
+	Continuum struct {
+		KnotSpacing float64 `toml:"knot_spacing"`
+	}
+	Redshift struct {
+		SearchFrom    float64   `toml:"search_from"`
+		SearchTo      float64   `toml:"search_to"`
+		TemplateFloor float64   `toml:"template_floor"`
+		Stiffness     float64   `toml:"stiffness"`
+		Temper        int       `toml:"temper"`
+		Nominees      int       `toml:"nominees"`
+		MinPixels     int       `toml:"min_pixels"`
+		SkyBands      []float64 `toml:"sky_bands"`
+		TelluricBands []float64 `toml:"telluric_bands"`
+		TelluricFloor float64   `toml:"telluric_floor"`
+		WaterBands    []float64 `toml:"water_bands"`
+	}
+	Lines struct {
+		SkyBands []float64 `toml:"sky_bands"`
+	}
+	Verdict struct {
+		SecureConfidence float64 `toml:"secure_confidence"`
+		SecureLines      int     `toml:"secure_lines"`
+		NoneConfidence   float64 `toml:"none_confidence"`
+		GapScale         float64 `toml:"gap_scale"`
+		TiedGap          float64 `toml:"tied_gap"`
+		MisfitChi2       float64 `toml:"misfit_chi2"`
+		HopelessChi2     float64 `toml:"hopeless_chi2"`
+		FaintSNR         float64 `toml:"faint_snr"`
+	}
+}
+
+var readDefaults = sync.OnceValue(func() (d defaults) {
+	if err := toml.Unmarshal(configs.Default(), &d); err != nil {
+		panic(err)
+	}
+	return d
+})
+
+// DefaultOptions returns the options of the default settings.
+func DefaultOptions() Options {
+	d := readDefaults()
+	pairs := func(v []float64) (out [][2]float64) {
+		for i := 0; i+1 < len(v); i += 2 {
+			out = append(out, [2]float64{v[i], v[i+1]})
+		}
+		return out
+	}
+	r := &d.Redshift
+	return Options{
+		KnotSpacing: d.Continuum.KnotSpacing, Floor: r.TemplateFloor, Stiffness: r.Stiffness, Temper: r.Temper, Nominees: r.Nominees,
+		MinPixels: r.MinPixels, SearchFrom: r.SearchFrom, SearchTo: r.SearchTo, SkyBands: pairs(r.SkyBands),
+		TelluricBands: pairs(r.TelluricBands), TelluricFloor: r.TelluricFloor, WaterBands: pairs(r.WaterBands), SkyLines: pairs(d.Lines.SkyBands),
+	}
+}
+
+// DefaultThresholds returns the thresholds of the default settings.
+func DefaultThresholds() Thresholds {
+	v := readDefaults().Verdict
+	return Thresholds{SecureConfidence: v.SecureConfidence, SecureLines: v.SecureLines, NoneConfidence: v.NoneConfidence,
+		GapScale: v.GapScale, TiedGap: v.TiedGap, MisfitChi2: v.MisfitChi2, HopelessChi2: v.HopelessChi2, FaintSNR: v.FaintSNR}
+}
 
 // kmsPixel is a pixel of the test grids in km/s.
 const kmsPixel = speedOfLight * ln10 * testStep

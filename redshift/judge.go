@@ -19,7 +19,11 @@ const (
 // String returns "none", "uncertain" or "secure".
 func (v Verdict) String() string { return [...]string{"none", "uncertain", "secure"}[v] }
 
-// Thresholds steers Judge. Start from DefaultThresholds.
+// Thresholds steers Judge. By the defaults, in configs/default.toml, a wrong
+// answer is as likely as a right one without a gap, and its chance falls by e
+// for each 4.5 units of score, in units of the misfit. Scale and limits were
+// set by hand on open survey spectra with published redshifts; they are not a
+// calibration.
 type Thresholds struct {
 	SecureConfidence float64 // least confidence of a secure redshift
 	SecureLines      int     // least number of features that stand out by themselves, less those that are missing
@@ -29,16 +33,6 @@ type Thresholds struct {
 	HopelessChi2     float64 // and from which it is never secure
 	TiedGap          float64 // gap below which the rival is tied
 	FaintSNR         float64 // signal-to-noise a pixel below which a spectrum without features is faint
-}
-
-// DefaultThresholds returns the settings of the first confidence: a wrong
-// answer is as likely as a right one without a gap, and its chance falls by e
-// for each 4.5 units of score, in units of the misfit. Scale and limits were
-// set by hand on open survey spectra with published redshifts; they are not a
-// calibration.
-func DefaultThresholds() Thresholds {
-	return Thresholds{SecureConfidence: 0.995, SecureLines: 2, NoneConfidence: 0.8, GapScale: 4.5,
-		MisfitChi2: 5, HopelessChi2: 30, TiedGap: 9, FaintSNR: 1}
 }
 
 // overwhelming is how many times the gap that a secure redshift needs makes up

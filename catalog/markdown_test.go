@@ -5,9 +5,9 @@ import (
 	"strings"
 )
 
-// MarkdownColumns returns the page docs/columns.md: what the columns of
+// markdownColumns returns the page docs/columns.md: what the columns of
 // all tables and the flags mean.
-func MarkdownColumns() string {
+func markdownColumns() string {
 	var b strings.Builder
 	b.WriteString(`# Columns of the catalog
 
@@ -25,10 +25,10 @@ Wavelengths are in vacuum and in the barycentric frame.
 Control characters and bytes that are not UTF-8 are written as escapes such as \n and \xff. FITS text is ASCII: there
 all other characters are written as escapes such as \u00e9.
 `)
-	markdownTable(&b, "Object table", ObjectColumns())
-	markdownTable(&b, "Line table", LineColumns())
-	markdownTable(&b, "Absorber table", AbsorberColumns())
-	markdownTable(&b, "Table of indices", IndexColumns())
+	markdownTable(&b, "Object table", objectColumnsTold())
+	markdownTable(&b, "Line table", lineColumnsTold())
+	markdownTable(&b, "Absorber table", absorberColumnsTold())
+	markdownTable(&b, "Table of indices", indexColumnsTold())
 	b.WriteString("\n## Flags\n\nBits of `flags`, low bit first. `flag_names` has the names of those that are set, joined by `|`.\n\n" +
 		"| bit | value | name | says |\n|---|---|---|---|\n")
 	for bit, f := range flagTable {
@@ -56,3 +56,23 @@ func markdownTable(b *strings.Builder, title string, columns []Column) {
 			strings.ReplaceAll(c.Description, "|", `\|`))
 	}
 }
+
+func (t table[T]) public() []Column {
+	out := make([]Column, len(t.columns))
+	for i, c := range t.columns {
+		out[i] = c.Column
+	}
+	return out
+}
+
+// objectColumnsTold returns the columns of the object table in order.
+func objectColumnsTold() []Column { return tableOf[Object]().public() }
+
+// lineColumnsTold returns the columns of the line table in order.
+func lineColumnsTold() []Column { return tableOf[Line]().public() }
+
+// absorberColumnsTold returns the columns of the absorber table in order.
+func absorberColumnsTold() []Column { return tableOf[Absorber]().public() }
+
+// indexColumnsTold returns the columns of the table of indices in order.
+func indexColumnsTold() []Column { return tableOf[Index]().public() }
