@@ -42,6 +42,15 @@ func writeCSV[T Row](t interface{ Fatal(...any) }, rows []T) []byte {
 	if err != nil {
 		t.Fatal(err)
 	}
+	writeRows(t, w, rows)
+	return b.Bytes()
+}
+
+// writeRows writes rows and closes the table.
+func writeRows[T Row](t interface{ Fatal(...any) }, w interface {
+	Write(*T) error
+	Close() error
+}, rows []T) {
 	for i := range rows {
 		if err := w.Write(&rows[i]); err != nil {
 			t.Fatal(err)
@@ -50,7 +59,6 @@ func writeCSV[T Row](t interface{ Fatal(...any) }, rows []T) []byte {
 	if err := w.Close(); err != nil {
 		t.Fatal(err)
 	}
-	return b.Bytes()
 }
 
 func readCSV[T Row](r io.Reader) ([]T, error) {

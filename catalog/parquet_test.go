@@ -21,14 +21,7 @@ func writeParquet[T Row](t interface{ Fatal(...any) }, rows []T) []byte {
 	if err != nil {
 		t.Fatal(err)
 	}
-	for i := range rows {
-		if err := w.Write(&rows[i]); err != nil {
-			t.Fatal(err)
-		}
-	}
-	if err := w.Close(); err != nil {
-		t.Fatal(err)
-	}
+	writeRows(t, w, rows)
 	return b.Bytes()
 }
 

@@ -55,8 +55,8 @@ func (f *Finder) leftovers(s *Scratch, g *spectrum.Grid, p *peak) []float64 {
 	if len(s.aside) == 0 {
 		return nil
 	}
-	// The median of |x| of a Gaussian is 0.6745.
 	f.hideOwn(s, g, p)
+	// The median of |x| of a Gaussian is 0.6745.
 	least := leftSNR * math.Max(1, spectrum.Median(s.aside)/0.6745)
 	var emission []int
 	absorption := 0
