@@ -307,7 +307,7 @@ func waves(list []float64) string {
 	if len(list) > most {
 		more = fmt.Sprintf(" and %d more", len(list)-most)
 	}
-	return strings.Join(text, ", ") + more + " Angstrom"
+	return strings.Join(text, ", ") + " Angstrom" + more
 }
 
 // doubts says in words why a redshift is not secure.
