@@ -1,6 +1,7 @@
 package pipeline
 
 import (
+	"fmt"
 	"math"
 	"slices"
 	"sort"
@@ -15,6 +16,7 @@ import (
 // ratioCase is a component whose relative depths are measured.
 type ratioCase struct {
 	family, component string
+	and               string   // family whose objects are measured too
 	held              []string // components fitted beside it
 	strong            bool     // on the half of the objects with the strongest lines
 	library           []string // spectra beside those of the survey
@@ -42,8 +44,8 @@ var ratioCases = []ratioCase{
 	{family: "late", component: "metals", held: []string{"sodium", "calcium_triplet", "balmer_absorption", "balmer_wings"}, strong: true, library: libraryDwarfs, factor: unlike},
 	{family: "late", component: "sodium", held: []string{"metals", "calcium_triplet", "balmer_absorption", "balmer_wings"}, library: libraryDwarfs, factor: alike},
 	{family: "late", component: "calcium_triplet", held: []string{"metals", "sodium", "balmer_absorption", "balmer_wings"}, library: libraryDwarfs, factor: alike},
-	{family: "late", component: "balmer_absorption", held: []string{"metals", "sodium", "calcium_triplet"}, factor: alike},
-	{family: "late", component: "balmer_wings", held: []string{"metals", "sodium", "calcium_triplet", "balmer_absorption"}, factor: alike},
+	{family: "late", component: "balmer_absorption", and: "hot", held: []string{"metals", "sodium", "calcium_triplet"}, factor: alike},
+	{family: "late", component: "balmer_wings", and: "hot", held: []string{"metals", "sodium", "calcium_triplet", "balmer_absorption"}, factor: alike},
 	{family: "passive", component: "typical", held: []string{"OII", "Ha_NII"}, factor: unlike},
 	{family: "passive", component: "metals", held: []string{"balmer_absorption", "break_4000", "OII", "Ha_NII"}, factor: unlike},
 	{family: "passive", component: "balmer_absorption", held: []string{"metals", "break_4000", "broad_bands", "OII"}, factor: unlike, blended: metal},
@@ -140,7 +142,7 @@ func TestRecipeRatios(t *testing.T) {
 			}
 			return commonRatios(depth, sigma, recipe, strong)
 		}
-		objects := b.of(c.family)
+		objects := append(b.of(c.family), b.of(c.and)...)
 		if len(objects) < 4 {
 			t.Errorf("%s: %d secure survey objects, too few to measure", c.family, len(objects))
 			continue
@@ -150,10 +152,14 @@ func TestRecipeRatios(t *testing.T) {
 		if c.library != nil {
 			lib, libErr = measure(libraryObjects(t, b.chain, c.library), false)
 		}
-		t.Logf("%s %s: %d survey objects; recipe, survey, library", c.family, c.component, len(objects))
+		t.Logf("%s %s: recipe, %d survey objects, library", c.family, c.component, len(objects))
 		for k := range shapes {
 			name, m, e := shapes[k].name(), ours[k], oursErr[k]
-			t.Logf("  %-12s %.2f  %.2f +- %.2f  %.2f +- %.2f", name, recipe[k], m, e, lib[k], libErr[k])
+			line := fmt.Sprintf("  %-12s %.2f  %.2f +- %.2f", name, recipe[k], m, e)
+			if c.library != nil {
+				line += fmt.Sprintf("  %.2f +- %.2f", lib[k], libErr[k])
+			}
+			t.Log(line)
 			if math.IsNaN(m) && c.library != nil {
 				m, e = lib[k], libErr[k]
 			}
