@@ -156,7 +156,7 @@ func measureDepths(o *restObject, shapes []shape, fam *redshift.Family, held []i
 			columns = append(columns, v)
 		}
 	}
-	basis := continuum.NewBasis(g.LogWave(lo), g.LogWave(hi), redshift.DefaultOptions().KnotSpacing)
+	basis := continuum.NewBasis(g.LogWave(lo), g.LogWave(hi), DefaultSettings().Continuum.KnotSpacing)
 	size := basis.Size()
 	a := mat.NewDense(size+len(columns)+1, size+len(columns)+1, nil) // normal equations, the data last
 	row := make([]float64, size+len(columns)+1)
