@@ -355,6 +355,9 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 	if res.Bare() {
 		why = append(why, "the input looks divided by its continuum: without broad lines and breaks an absorber passes for the object")
 	}
+	if res.Blind() {
+		why = append(why, "less than half of the lines it should have are covered, and the model does not fit")
+	}
 	if res.RangeEnd {
 		why = append(why, "the redshift lies at the end of the family's range")
 	}

@@ -66,7 +66,7 @@ func (t Thresholds) Judge(r *Result) {
 		enough = 1-r.Confidence <= 0.5*math.Pow(2*(1-t.SecureConfidence), overwhelming)
 	}
 	switch {
-	case r.Confidence >= t.SecureConfidence && enough && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd && !r.Bare() && !r.Scattered && r.LinesMissing == 0 && (r.Class != "quasar" || r.InEmission):
+	case r.Confidence >= t.SecureConfidence && enough && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd && !r.Bare() && !r.Blind() && !r.Scattered && r.LinesMissing == 0 && (r.Class != "quasar" || r.InEmission):
 		r.Verdict = Secure
 	case r.LinesSeen == 0 && r.Confidence < t.NoneConfidence:
 		r.Verdict = None
@@ -79,6 +79,13 @@ func (t Thresholds) Judge(r *Result) {
 // it from absorbers in front of it: broad lines and breaks, divided away with
 // the continuum.
 func (r *Result) Bare() bool { return r.Normalized && (r.Class == "galaxy" || r.Class == "quasar") }
+
+// Blind reports whether a galaxy or quasar is claimed on a piece of its spectrum
+// that shows less than half of the lines it should have, by a model that does not
+// fit: a stretch of forest passes for many things.
+func (r *Result) Blind() bool {
+	return r.Misfit && r.Unseen && (r.Class == "galaxy" || r.Class == "quasar")
+}
 
 // countFeatures counts the lines that stand out by themselves, lines that
 // overlap within their widths, or are nearer than apart pixels, as one.
