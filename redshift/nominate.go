@@ -76,8 +76,8 @@ const (
 	// light just blueward of Lyman-alpha, so that the break says more than lines.
 	sweepFrom  = 3.5
 	sweepKept  = 3
-	sweepStep  = 2      // rough pixels, 2,200 km/s
-	sweepApart = 3      // steps
+	sweepStep  = 4      // rough pixels, 4,400 km/s
+	sweepApart = 1      // steps
 	sweepWidth = 2600.0 // km/s, of Lyman-alpha
 )
 
@@ -93,9 +93,10 @@ func (f *Finder) sweep(s *Scratch) {
 	step := sweepStep * l.step
 	first := math.Max(math.Log10(1+math.Max(f.series.ZMin, sweepFrom)), l.start-forestEdgeLog)
 	last := math.Min(math.Log10(1+f.series.ZMax), l.start+float64(l.n-1)*l.step-forestEdgeLog)
+	drop := func(x float64) float64 { return s.bench.evaluate(l, f.series, sweepWidth, x).drop }
 	s.drops = s.drops[:0]
 	for x := first; x <= last; x += step {
-		s.drops = append(s.drops, s.bench.evaluate(l, f.series, sweepWidth, x).drop)
+		s.drops = append(s.drops, drop(x))
 	}
 	for range sweepKept {
 		best := 0
@@ -107,7 +108,15 @@ func (f *Finder) sweep(s *Scratch) {
 		if len(s.drops) == 0 || s.drops[best] <= 0 {
 			return
 		}
-		s.breaks = append(s.breaks, first+float64(best)*step)
+		x := first + float64(best)*step
+		// The better neighbor half-way to the next, if any is.
+		top := s.drops[best]
+		for _, near := range [2]float64{x - 0.5*step, x + 0.5*step} {
+			if v := drop(near); v > top && near >= first && near <= last {
+				x, top = near, v
+			}
+		}
+		s.breaks = append(s.breaks, x)
 		clear(s.drops[max(0, best-sweepApart):min(len(s.drops), best+sweepApart+1)])
 	}
 }
