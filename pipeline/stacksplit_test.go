@@ -106,6 +106,12 @@ func TestStackSplit(t *testing.T) {
 		kinds, noises = [][]string{nil, {"passive"}, {"quasar"}, {"passive", "quasar"}}, []float64{1, 4, 8}
 	}
 	for _, noise := range noises {
+		// Of some seventy one may turn by chance; with noise more lie at the edge:
+		// two draws of it differ by up to four in a class.
+		room := 1
+		if noise > 1 {
+			room = 4
+		}
 		var without splitTally
 		for _, with := range kinds {
 			got := judgeSplit(t, dir, list, recipes, with, noise)
@@ -115,8 +121,7 @@ func TestStackSplit(t *testing.T) {
 				continue
 			}
 			for class, n := range without.right {
-				// Of some seventy one may turn by chance.
-				if got.right[class] < n-1 {
+				if got.right[class] < n-room {
 					t.Errorf("noise x %g: with composites %v %d of class %s are right, without %d", noise, with, got.right[class], class, n)
 				}
 			}
