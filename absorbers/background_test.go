@@ -64,6 +64,9 @@ func makeGalaxy(r *rand.Rand, z, sn float64, front ...cloudTruth) Arm {
 // lines, which the same search in front of quasars takes for systems.
 // DUSKLINE_LONG=1 takes 400 instead of 60 a step of S/N (of a pixel at rest 1350).
 func TestHydrogenBeforeGalaxies(t *testing.T) {
+	if testing.Short() {
+		t.Skip("takes statistics that the race detector is not for")
+	}
 	n := 60
 	if os.Getenv("DUSKLINE_LONG") == "1" {
 		n = 400

@@ -11,6 +11,9 @@ import (
 // average, and of 4: many sub-damped systems where lines crowd, next to none damped.
 // DUSKLINE_LONG=1 takes 500 quasars instead of 60, of S/N 2 to 20 a pixel.
 func TestForestGroups(t *testing.T) {
+	if testing.Short() {
+		t.Skip("takes statistics that the race detector is not for")
+	}
 	n := 60
 	if os.Getenv("DUSKLINE_LONG") == "1" {
 		n = 500

@@ -55,6 +55,9 @@ func redSide(r *rand.Rand, z, sn float64) (a Arm) {
 // by rest equivalent width. DUSKLINE_LONG=1 takes 1,000 quasars a step of S/N (a pixel
 // at rest 1350 Angstrom) instead of 100.
 func TestDoubletsBeforeQuasars(t *testing.T) {
+	if testing.Short() {
+		t.Skip("takes statistics that the race detector is not for")
+	}
 	n := 100
 	if os.Getenv("DUSKLINE_LONG") == "1" {
 		n = 1000

@@ -44,6 +44,9 @@ func water(r *rand.Rand, g *spectrum.Grid, most float64, lined bool) []float64 {
 // the tool must make twice as many secure, or this water misleads nobody.
 func TestContinuaBehindWaterAreNotSecure(t *testing.T) {
 	if testing.Short() {
+		t.Skip("takes statistics that the race detector is not for")
+	}
+	if testing.Short() {
 		t.Skip("statistics: long, and nothing runs at the same time")
 	}
 	const spectra = 320
