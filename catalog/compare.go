@@ -122,6 +122,7 @@ type Comparison struct {
 	Matched, OnlyOld, OnlyNew int64
 	NewInputs                 int64 // matched objects whose input is another
 	Within                    int64 // redshifts that moved, but within the limit
+	ErrorsMoved               int64 // of redshifts, by more than a tenth
 	ByWeight                  [Contradiction + 1]int64
 	Verdicts                  map[[2]string]int64 // old and new
 	Classes                   map[[2]string]int64
@@ -230,6 +231,9 @@ func (c *Comparison) redshift(d *Change) {
 		return
 	}
 	d.Kms = lightKms * (z1 - z0) / (1 + z0)
+	if math.Abs(math.Log(d.New.RedshiftErr/d.Old.RedshiftErr)) > 0.1 {
+		c.ErrorsMoved++
+	}
 	if z0 == z1 {
 		c.Redshifts.add(0)
 		return

@@ -50,6 +50,22 @@ var changeCases = []struct {
 	{"lines not measured", func(e *Entry) { e.Lines = nil }, LinesMoved, "3 lines"},
 }
 
+// Errors that grew or shrank are told, though they change no answer.
+func TestChangedErrorsAreCounted(t *testing.T) {
+	for _, k := range []struct {
+		err  float64
+		want int64
+	}{{1e-4, 0}, {1.09e-4, 0}, {1.2e-4, 1}, {0.85e-4, 1}, {math.NaN(), 0}} {
+		c := NewComparison(3, 10)
+		check(t, c.Add(OldSide, entry("x", nil)))
+		check(t, c.Add(NewSide, entry("x", func(e *Entry) { e.RedshiftErr = k.err })))
+		check(t, c.Finish())
+		if c.ErrorsMoved != k.want || c.Changed() != 0 {
+			t.Errorf("error of %g for 1e-4: %d counted, want %d; %d changed", k.err, c.ErrorsMoved, k.want, c.Changed())
+		}
+	}
+}
+
 func TestChangesHaveTheirWeight(t *testing.T) {
 	for _, k := range changeCases {
 		c := NewComparison(3, 10)

@@ -74,7 +74,7 @@ var flagTable = [...]struct{ name, says string }{
 	{"lines_missing", "strong lines are covered and not there"},
 	{"below_zero", "the continuum is negative over a good part"},
 	{"scattered", "the lines disagree on the velocity"},
-	{"on_sky_line", "a supporting line is on a night-sky feature"},
+	{"on_sky_line", "without lines on night-sky lines or in bands of the air fewer than two support the redshift"},
 	{"frame_assumed", "air/vacuum or velocity frame was assumed"},
 	{"noise_estimated", "noise was estimated from the flux"},
 	{"weights_suspect", "the stated errors disagree with the scatter"},

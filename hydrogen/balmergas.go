@@ -114,7 +114,7 @@ func (g *balmerGas) linesAt(wave float64) (sum [gasLayers]float64) {
 			continue
 		}
 		x := math.Max(0, math.Log(d/opacityFirst)/opacityStep)
-		j := int(x)
+		j := min(int(x), len(line.opacity)-2)
 		x -= float64(j)
 		a, b := &line.opacity[j], &line.opacity[j+1]
 		for k := range sum {

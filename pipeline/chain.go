@@ -287,7 +287,7 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 		why = append(why, fmt.Sprintf("wavelengths are in the %s frame and were kept: the redshift is in that frame", s.Frame))
 	}
 	if res.Unexplained {
-		why = append(why, "narrow emission that no line at this redshift explains, as from a second object in the aperture, at "+waves(res.Leftovers))
+		why = append(why, "narrow emission that no known line at this redshift explains, as a second object in the aperture would have, at "+waves(res.Leftovers))
 	}
 	for _, w := range s.Warnings {
 		why = append(why, w.Text)
@@ -335,9 +335,9 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 		case !res.Tight:
 			why = append(why, "the templates explain little more than the continuum alone")
 		case res.Misfit && !res.Tied:
-			why = append(why, fmt.Sprintf("chi2/dof of %.1f is too bad to rule out %s at %.4f", res.Chi2Dof, res.RivalFamily, res.RivalRedshift))
+			why = append(why, fmt.Sprintf("chi2/dof of %.1f is too bad to rule out family %s at %.4f", res.Chi2Dof, res.RivalFamily, res.RivalRedshift))
 		default:
-			why = append(why, fmt.Sprintf("%s at %.4f fits nearly as well", res.RivalFamily, res.RivalRedshift))
+			why = append(why, fmt.Sprintf("family %s at %.4f fits nearly as well", res.RivalFamily, res.RivalRedshift))
 		}
 	}
 	if res.Chi2Dof >= t.HopelessChi2 {

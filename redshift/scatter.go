@@ -57,7 +57,7 @@ func checkScatters(groups []ScatterRecipe, list *linelist.List) []string {
 //	share_g = (D_g^T W D) / (D^T W D)
 //
 // and groups count in quadrature. The continuum, which hardly takes up a
-// derivative of a line, is left out.
+// derivative of a line, is left out, and so is the forest, whose doubt is edgeDoubt.
 func (s *Scratch) lineDoubt(p *peak) float64 {
 	if len(p.family.scatters) == 0 {
 		return 0
@@ -88,8 +88,8 @@ func (s *Scratch) lineDoubt(p *peak) float64 {
 	return math.Sqrt(sum)
 }
 
-// addSlope adds the change of the model's lines over a pixel of shift, of all of
-// them or of those named.
+// addSlope adds the change of the model over a pixel of shift, of all but the forest or of
+// the lines named.
 func (s *Scratch) addSlope(dst []float64, p *peak, names []string) {
 	l := &s.full
 	for c := range p.family.components {
@@ -98,24 +98,37 @@ func (s *Scratch) addSlope(dst []float64, p *peak, names []string) {
 			continue
 		}
 		for _, side := range [2]float64{-0.5, 0.5} {
-			s.single.reset(l.n)
-			for i := range comp.terms {
-				t := &comp.terms[i]
-				if names != nil && !slices.Contains(names, t.name) {
-					continue
-				}
-				sigma := comp.sigmaKms(t, p.width) / (speedOfLight * ln10 * l.step)
-				gaussian(&s.single, l.n, (t.logWave+p.shift-l.start)/l.step+side, sigma, 2*side*p.fit.amp[c]*t.amp)
+			if names == nil {
+				comp.draw(&s.single, l.n, l.start, l.step, p.shift+side*l.step, p.width)
+			} else {
+				s.drawNamed(comp, names, (p.shift-l.start)/l.step+side, p.width)
 			}
 			for _, r := range s.single.runs {
 				for i := r.lo; i < r.hi; i++ {
-					v := s.single.values[i]
+					v := 2 * side * p.fit.amp[c] * s.single.values[i]
 					if comp.absorption {
-						v *= -l.cont[i]
+						v *= l.cont[i]
 					}
 					dst[i] += v
 				}
 			}
+		}
+	}
+}
+
+// drawNamed draws the lines of a component that are named, moved by a number of pixels.
+func (s *Scratch) drawNamed(comp *component, names []string, move, width float64) {
+	l := &s.full
+	sign := 1.0
+	if comp.absorption {
+		sign = -1
+	}
+	s.single.reset(l.n)
+	for i := range comp.terms {
+		t := &comp.terms[i]
+		if slices.Contains(names, t.name) {
+			sigma := comp.sigmaKms(t, width) / (speedOfLight * ln10 * l.step)
+			gaussian(&s.single, l.n, t.logWave/l.step+move, sigma, sign*t.amp)
 		}
 	}
 }

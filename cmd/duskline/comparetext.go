@@ -45,6 +45,7 @@ func writeComparison(w io.Writer, c *catalog.Comparison, causes []string) {
 		fmt.Fprintf(w, "%11d  %-14s %s\n", c.ByWeight[weight], weight, weightText[weight])
 	}
 	fmt.Fprintf(w, "%11d  %-14s moved by at most %g errors, not counted\n", c.Within, "within", c.Limit)
+	fmt.Fprintf(w, "%11d  %-14s of the redshift changed by more than a tenth, not counted\n", c.ErrorsMoved, "error")
 	writeMatrix(w, "verdict", catalog.Verdicts(), c.Verdicts)
 	writeMatrix(w, "class", catalog.Classes(), c.Classes)
 	writeFlags(w, c)
