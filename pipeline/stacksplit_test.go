@@ -7,15 +7,12 @@ import (
 	"math/rand/v2"
 	"os"
 	"path/filepath"
-	"runtime"
 	"testing"
 
 	"duskline/catalog"
 	"duskline/internal/outside"
 	"duskline/pipeline"
 	"duskline/spectrum"
-
-	"golang.org/x/sync/errgroup"
 )
 
 // Families made of a composite beside the built-in ones.
@@ -189,32 +186,18 @@ func judgeSplit(t *testing.T, dir string, list []published, recipes [2]map[strin
 			t.Fatal(err)
 		}
 	}
-	objects, errs := make([]catalog.Object, len(list)), make([]error, len(list))
-	var g errgroup.Group
-	workers := runtime.GOMAXPROCS(0)
-	for w := range workers {
-		g.Go(func() error {
-			benches := [2]pipeline.Worker{chains[0].NewWorker(), chains[1].NewWorker()}
-			for i := w; i < len(list); i += workers {
-				r := rand.New(rand.NewPCG(1, uint64(i)))
-				objects[i], errs[i] = best(noisy{benches[i%2], noise, r}, filepath.Join(dir, list[i].file))
-			}
-			return nil
-		})
-	}
-	if err := g.Wait(); err != nil {
-		t.Fatal(err)
-	}
+	objects, errs := processAll(t, dir, list, func() func(int) pipeline.Worker {
+		halves := [2]pipeline.Worker{chains[0].NewWorker(), chains[1].NewWorker()}
+		return func(i int) pipeline.Worker {
+			return noisy{halves[i%2], noise, rand.New(rand.NewPCG(1, uint64(i)))}
+		}
+	})
 	for i, p := range list {
 		o := objects[i]
 		if errs[i] != nil || p.reliable != "yes" || math.IsNaN(p.z) || p.class == "SKY" {
 			continue
 		}
-		limit := 1000.0
-		if p.class == "QSO" {
-			limit = 3000
-		}
-		right := math.Abs(spectrum.SpeedOfLight*(o.Redshift-p.z)/(1+p.z)) <= limit
+		right := p.right(&o)
 		secure := o.Verdict == catalog.Secure
 		switch {
 		case right && secure:
