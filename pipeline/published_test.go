@@ -145,6 +145,7 @@ func TestPublishedRedshifts(t *testing.T) {
 	}
 	var unread, skySecure, secure, secureWrong, right, class, rightBright, rightBrightSecure int
 	var offsets, pulls []float64
+	var quasars quasarOffsets
 	for i, p := range list {
 		o := objects[i]
 		if errs[i] != nil {
@@ -207,6 +208,8 @@ func TestPublishedRedshifts(t *testing.T) {
 		if !isRight {
 			t.Logf("wrong: %s %s z=%.4f S/N=%.1f: got %s %s %.4f confidence %.3f gap %.1f, rival %s %.4f, %s", p.file, p.class, p.z, p.snr,
 				o.Verdict, o.Family, o.Redshift, o.Confidence, o.Gap, o.RivalFamily, o.RivalRedshift, o.Flags)
+		} else if p.class == "QSO" {
+			quasars.add(p.z, v, spectrum.SpeedOfLight*o.RedshiftErr/(1+p.z))
 		} else if strings.HasPrefix(p.dataset, "sdss_") && p.class == "GALAXY" {
 			offsets = append(offsets, v)
 			sigma := spectrum.SpeedOfLight * o.RedshiftErr / (1 + p.z)
@@ -250,6 +253,10 @@ func TestPublishedRedshifts(t *testing.T) {
 	check(200*secureWrong <= secure, "%d of %d secure redshifts are wrong, want at most 0.5 %%", secureWrong, secure)
 	check(float64(rightBrightSecure) >= 0.85*float64(rightBright), "%d of %d right redshifts at S/N >= 3 are secure, want 85 %%", rightBrightSecure, rightBright)
 
+	// Lines of quasars do not stand at rest in them: an error that knows that covers two in three.
+	most := quasars.log(t)
+	check(most < 1.2, "two in three quasars lie within %.2f errors of the published redshift, want 1, with two standard errors of room among sixty", most)
+
 	scatter := robustSigma(offsets)
 	within := 0
 	for _, p := range pulls {
@@ -261,6 +268,38 @@ func TestPublishedRedshifts(t *testing.T) {
 		scatter, within, len(pulls), secure, secureWrong, rightBright, rightBrightSecure)
 	check(scatter < 60, "scatter of the redshifts of survey galaxies is %.1f km/s, want under 60", scatter)
 	check(float64(within) >= 0.68*float64(len(pulls)), "%d of %d survey galaxies lie within 1.5 combined errors, want 68 %%", within, len(pulls))
+}
+
+// quasarOffsets holds redshifts, offsets from the published ones and errors, km/s.
+type quasarOffsets struct{ z, v, sigma []float64 }
+
+func (q *quasarOffsets) add(z, v, sigma float64) {
+	q.z, q.v, q.sigma = append(q.z, z), append(q.v, v), append(q.sigma, sigma)
+}
+
+// log tells offsets by redshift and returns within how many errors two in three of all lie.
+func (q *quasarOffsets) log(t *testing.T) float64 {
+	t.Helper()
+	within := func(from, to float64) (n int, median, errors float64) {
+		var v, p []float64
+		for i, z := range q.z {
+			if z >= from && z < to {
+				v, p = append(v, q.v[i]), append(p, math.Abs(q.v[i])/q.sigma[i])
+			}
+		}
+		if len(v) == 0 {
+			return 0, math.NaN(), math.NaN()
+		}
+		sort.Float64s(v)
+		sort.Float64s(p)
+		return len(v), v[len(v)/2], p[2*len(p)/3]
+	}
+	for _, r := range [][2]float64{{0, 1.5}, {1.5, 2.5}, {2.5, 3.2}, {3.2, 5}, {5, 8}} {
+		n, median, errors := within(r[0], r[1])
+		t.Logf("%2d quasars at z %g to %g: median offset %5.0f km/s, two in three within %.2f errors", n, r[0], r[1], median, errors)
+	}
+	_, _, all := within(0, math.Inf(1))
+	return all
 }
 
 // robustSigma is 1.4826 times the median absolute deviation.
