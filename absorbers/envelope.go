@@ -11,6 +11,10 @@ const (
 	// clipHigh of its error; a few rounds settle it.
 	clipLow, clipHigh = 2.0, 3.5
 	clipRounds        = 8
+	// What is kept of Gaussian noise between those limits has this mean, in its own
+	// standard deviation: (phi(2) - phi(3.5)) / (Phi(3.5) - Phi(-2)) of the truncated normal
+	// distribution (Johnson, Kotz & Balakrishnan 1994, section 10.1, from memory).
+	clipBias = 0.0544
 	// So does one whose neighborhood of clipKms on either side lies below as a
 	// whole by clipBox of its error, contFloor included: shallow lines of many
 	// pixels would otherwise bend the parabola into themselves.
@@ -22,6 +26,12 @@ const (
 	// of the pixel, and what the line leaves of the square of x has at least
 	// this variance (0.09 for pixels spread evenly over the window).
 	bendSpread = 0.02
+	// Where the parabola does not follow the spectrum, on the flanks and peaks of narrow
+	// emission lines, its window has narrowHalf: where all pixels over more than runKms
+	// have left it, which is longer than a narrow absorption line, or where those within
+	// clipKms of one lie above it by clipPeak of their error, as no absorption does.
+	narrowHalf       = 0.5 * envelopeHalf
+	runKms, clipPeak = 800.0, 4.0
 	// envelopePiece is the length, in half windows, of the pieces in which
 	// running sums begin anew, so that fourth powers keep their digits.
 	envelopePiece = 16.0
@@ -32,7 +42,8 @@ type envelope struct {
 	level, err []float64 // NaN where there is none
 	keep       []bool
 	root       []float64    // of the weights
-	sum        [8][]float64 // running sums of w, wx, wx^2, wx^3, wx^4, wy, wxy, wx^2y
+	narrow     []bool       // where the window has narrowHalf
+	sum        [9][]float64 // running sums of w, wx, wx^2, wx^3, wx^4, wy, wxy, wx^2y, sqrt(w)
 }
 
 // fit follows emission lines and runs over absorption lines: in a window around
@@ -55,6 +66,20 @@ func (e *envelope) fit(t *track, start int) {
 	for k := range e.sum {
 		e.sum[k] = resize(e.sum[k], n+1)
 	}
+	if cap(e.narrow) < n {
+		e.narrow = make([]bool, n+n/2)
+	}
+	e.narrow = e.narrow[:n]
+	clear(e.narrow)
+	e.settle(t, start)
+	if e.findPeaked(t, start) {
+		e.settle(t, start)
+	}
+}
+
+// settle fits and clips until no pixel changes sides.
+func (e *envelope) settle(t *track, start int) {
+	n := len(t.x)
 	for round := range clipRounds {
 		for first := start; first < n; {
 			end := index(t.x, t.x[first]+envelopePiece*envelopeHalf)
@@ -67,6 +92,62 @@ func (e *envelope) fit(t *track, start int) {
 	}
 }
 
+// findPeaked marks as narrow, and takes all pixels back in, where the parabola does not
+// follow the spectrum, and reports whether that is anywhere.
+func (e *envelope) findPeaked(t *track, start int) bool {
+	n := len(t.x)
+	found := false
+	mark := func(low, high float64) {
+		found = true
+		for i := index(t.x, low-envelopeHalf); i < n && t.x[i] <= high+envelopeHalf; i++ {
+			if i >= start {
+				e.narrow[i] = true
+			}
+		}
+	}
+	ws, rs := e.residuals(t, start)
+	run := start // first pixel after the last that was kept
+	lo, hi := start, start
+	for i := start; i < n; i++ {
+		for hi < n && t.x[hi] <= t.x[i]+clipKms {
+			hi++
+		}
+		for t.x[lo] < t.x[i]-clipKms {
+			lo++
+		}
+		if e.keep[i] || t.weight[i] == 0 || i == n-1 {
+			if i > run && t.x[i-1]-t.x[run] > runKms {
+				mark(t.x[run], t.x[i-1])
+			}
+			run = i + 1
+		}
+		if w, floor := ws[hi]-ws[lo], contFloor*e.level[i]; w > 0 && (rs[hi]-rs[lo])/w > clipPeak*math.Sqrt(1/w+floor*floor) {
+			mark(t.x[i], t.x[i])
+		}
+	}
+	for i := start; i < n; i++ {
+		if e.narrow[i] {
+			e.keep[i] = t.weight[i] > 0
+		}
+	}
+	return found
+}
+
+// residuals fills two running sums, of weight and of weighted residual from the
+// present continuum, in room that the lines through the windows use.
+func (e *envelope) residuals(t *track, start int) (ws, rs []float64) {
+	ws, rs = e.sum[0], e.sum[1]
+	ws[start], rs[start] = 0, 0
+	for i := start; i < len(t.x); i++ {
+		w, r := t.weight[i], t.flux[i]-e.level[i]
+		if w == 0 || math.IsNaN(r) {
+			w, r = 0, 0
+		}
+		ws[i+1], rs[i+1] = ws[i]+w, rs[i]+w*r
+	}
+	return ws, rs
+}
+
 // piece fits the windows of the pixels from first to end by running sums.
 func (e *envelope) piece(t *track, first, end int) {
 	s := &e.sum
@@ -76,9 +157,9 @@ func (e *envelope) piece(t *track, first, end int) {
 		s[k][begin] = 0
 	}
 	for i := begin; i < stop; i++ {
-		w := 0.0
+		w, root := 0.0, 0.0
 		if e.keep[i] {
-			w = t.weight[i]
+			w, root = t.weight[i], e.root[i]
 		}
 		x, y := (t.x[i]-x0)/envelopeHalf, t.flux[i]
 		wx := w * x
@@ -91,33 +172,45 @@ func (e *envelope) piece(t *track, first, end int) {
 		s[5][i+1] = s[5][i] + w*y
 		s[6][i+1] = s[6][i] + wx*y
 		s[7][i+1] = s[7][i] + wxx*y
+		s[8][i+1] = s[8][i] + root
 	}
 	lo, hi, kept := begin, begin, 0
 	for i := first; i < end; i++ {
-		for hi < stop && t.x[hi] <= t.x[i]+envelopeHalf {
-			if e.keep[hi] {
-				kept++
-			}
-			hi++
+		half := envelopeHalf
+		if e.narrow[i] {
+			half = narrowHalf
 		}
-		for t.x[lo] < t.x[i]-envelopeHalf {
-			if e.keep[lo] {
-				kept--
-			}
-			lo++
+		for ; hi < stop && t.x[hi] <= t.x[i]+half; hi++ {
+			kept += e.count(hi)
+		}
+		for ; t.x[hi-1] > t.x[i]+half; hi-- {
+			kept -= e.count(hi - 1)
+		}
+		for ; t.x[lo] < t.x[i]-half; lo++ {
+			kept -= e.count(lo)
+		}
+		for ; lo > begin && t.x[lo-1] >= t.x[i]-half; lo-- {
+			kept += e.count(lo - 1)
 		}
 		e.level[i], e.err[i] = math.NaN(), math.NaN()
 		if kept < envelopeLeast || float64(kept) < envelopeShare*float64(hi-lo) {
 			continue
 		}
-		e.level[i], e.err[i] = e.at((t.x[i]-x0)/envelopeHalf, lo, hi)
+		e.level[i], e.err[i] = e.at((t.x[i]-x0)/envelopeHalf, half/envelopeHalf, lo, hi)
 	}
+}
+
+func (e *envelope) count(i int) int {
+	if e.keep[i] {
+		return 1
+	}
+	return 0
 }
 
 // at returns the value at x and its error of the parabola through the kept
 // pixels from lo to hi, by polynomials that are orthogonal over them. Where they
 // do not hold its bend it is a line, where not that, the mean.
-func (e *envelope) at(x float64, lo, hi int) (level, err float64) {
+func (e *envelope) at(x, half float64, lo, hi int) (level, err float64) {
 	s := &e.sum
 	w := s[0][hi] - s[0][lo]
 	mean := (s[1][hi] - s[1][lo]) / w
@@ -127,9 +220,9 @@ func (e *envelope) at(x float64, lo, hi int) (level, err float64) {
 	c3 := m3 - 3*mean*m2 + 2*mean*mean*mean
 	c4 := m4 - 4*mean*m3 + 6*mean*mean*m2 - 3*mean*mean*mean*mean
 	y0, y1, y2 := (s[5][hi]-s[5][lo])/w, (s[6][hi]-s[6][lo])/w, (s[7][hi]-s[7][lo])/w
-	level, variance := y0, 1.0
+	level, variance := y0-clipBias*(s[8][hi]-s[8][lo])/w, 1.0
 	d := x - mean
-	if c2 <= 0.02 || math.Abs(d) >= 1 {
+	if c2 <= 0.02*half*half || math.Abs(d) >= half {
 		return level, math.Sqrt(variance / w)
 	}
 	slope := (y1 - mean*y0) / c2
@@ -137,7 +230,7 @@ func (e *envelope) at(x float64, lo, hi int) (level, err float64) {
 	variance += d * d / c2
 	// The bend: q = d^2 - (c3/c2) d - c2.
 	norm := c4 - c3*c3/c2 - c2*c2
-	if norm > bendSpread && math.Abs(d) < 0.5 {
+	if norm > bendSpread*half*half*half*half && math.Abs(d) < 0.5*half {
 		q := d*d - c3/c2*d - c2
 		square := y2 - 2*mean*y1 + mean*mean*y0 // mean of (x - mean)^2 y
 		bend := (square - c3*slope - c2*y0) / norm
@@ -153,16 +246,7 @@ func (e *envelope) clip(t *track, start int) bool {
 	changed := false
 	n := len(t.x)
 	pull := func(i int) float64 { return (t.flux[i] - e.level[i]) * e.root[i] }
-	// Running sums of weight and of weighted residual, in room that lines uses.
-	ws, rs := e.sum[0], e.sum[1]
-	ws[start], rs[start] = 0, 0
-	for i := start; i < n; i++ {
-		w, r := t.weight[i], t.flux[i]-e.level[i]
-		if w == 0 || math.IsNaN(r) {
-			w, r = 0, 0
-		}
-		ws[i+1], rs[i+1] = ws[i]+w, rs[i]+w*r
-	}
+	ws, rs := e.residuals(t, start)
 	lo, hi := start, start
 	for i := start; i < n; i++ {
 		for hi < n && t.x[hi] <= t.x[i]+clipKms {

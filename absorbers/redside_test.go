@@ -139,7 +139,7 @@ func paintDoublet(a *Arm, d doublet, z, logN, b float64) float64 {
 			}
 			// Mean over the pixel.
 			sum, m := 0.0, 0.0
-			for j := int((v-34.5)/fine) + half; j <= int((v+34.5)/fine)+half; j++ {
+			for j := int(math.Ceil((v-34.5)/fine)) + half; j <= int(math.Floor((v+34.5)/fine))+half; j++ {
 				if j >= 0 && j < len(depth) {
 					sum += depth[j]
 					m++
