@@ -43,28 +43,38 @@ func (f *File) segment(s *spectrum.Spectrum, a *arm, row int64) (spectrum.Segmen
 		// Sigmas or variances of zero throughout say nothing; an inverse variance
 		// of zero throughout says that there is no data.
 		hasErrors = role == roleIvar || !allZero(arr.weight)
+		if hasErrors {
+			loseErrors(s, a, role, arr.flux, arr.weight)
+		}
 		toIvar(arr.weight, role)
 		seg.Ivar = arr.weight
 	}
 	if !hasErrors {
 		seg.Ivar = ones(seg.Ivar, len(seg.Flux))
 	}
+	s.Pixels += len(seg.Flux)
+	unlit := 0
 	for i, v := range seg.Flux {
 		if v-v != 0 { // NaN or infinite
 			seg.Ivar[i], seg.Flux[i] = 0, 0
+			unlit++
 		}
 	}
+	s.Lose("flux NaN or infinite", a.flux.String(), unlit)
+	lost := losses{s, seg.Good()}
 	marksBad := hasErrors && (role == roleIvar || hasZero(seg.Ivar))
 	for k, m := range a.masks {
 		if len(arr.masks[k]) != len(seg.Flux) {
 			return seg, fail("%d flags for %d fluxes", len(arr.masks[k]), len(seg.Flux))
 		}
 		applyMask(seg.Ivar, arr.masks[k], m, marksBad)
+		lost.since(&seg, "masked", m.at.String())
 	}
 	if n, ok := f.number(a.points, row); ok && n > 0 && n < float64(len(seg.Flux)) {
 		for i := int(n); i < len(seg.Flux); i++ {
 			seg.Ivar[i] = 0
 		}
+		lost.since(&seg, "beyond the stated number of pixels", a.points.String())
 	}
 	resolution := arr.resolution
 	if a.kernel.isSet() {
@@ -81,6 +91,7 @@ func (f *File) segment(s *spectrum.Spectrum, a *arm, row int64) (spectrum.Segmen
 		resolution = nil
 	}
 	dropped, reordered := order(&seg, &resolution)
+	lost.since(&seg, "wavelength impossible, repeated or out of order", a.wave.String())
 	switch {
 	case reordered:
 		s.Warn(spectrum.PixelsDropped, "wavelengths out of order were sorted and %d pixels dropped", dropped)
@@ -88,13 +99,23 @@ func (f *File) segment(s *spectrum.Spectrum, a *arm, row int64) (spectrum.Segmen
 		s.Warn(spectrum.PixelsDropped, "%d pixels with repeated, unordered or impossible wavelengths were dropped", dropped)
 	}
 	if len(seg.Wave) < 2 {
-		return seg, fail("no wavelengths that can be used")
+		return seg, noWavelengths(a, wave, row)
 	}
 	seg.LogUniform = uniform && dropped == 0 || isLogUniform(seg.Wave)
+	if v, ok := sameFlux(&seg); ok {
+		clear(seg.Ivar)
+		lost.since(&seg, fmt.Sprintf("flux the same everywhere, %.6g", v), a.flux.String())
+	}
 	blankEnds(&seg, hasErrors)
+	lost.since(&seg, "padding of constant flux at the ends", a.flux.String())
 	if !hasErrors {
 		estimateIvar(seg.Flux, seg.Ivar)
-		s.Warn(spectrum.NoiseEstimated, "the input has no errors; noise estimated from the scatter of the flux")
+		lost.since(&seg, "no errors given and no scatter to estimate them from", a.flux.String())
+		none := "the input has no errors"
+		if a.weight.isSet() {
+			none = fmt.Sprintf("the errors in %s are all zero", a.weight)
+		}
+		s.Warn(spectrum.NoiseEstimated, "%s; noise estimated from the scatter of the flux", none)
 	} else if ratio, ok := scatterRatio(seg.Flux, seg.Ivar); ok {
 		s.Warn(spectrum.WeightsSuspect, "the flux scatters by %.2g times its stated errors", ratio)
 	}

@@ -150,6 +150,62 @@ func (h *hdu) info(used map[place]bool) HDUInfo {
 	return info
 }
 
+// Most that an error names of what a file has.
+const (
+	mostHDUs    = 5
+	mostColumns = 12
+)
+
+// contents names the HDUs, in few words, for an error about a file without a spectrum.
+func (f *File) contents() string {
+	var parts []string
+	for _, h := range f.hdus[:min(mostHDUs, len(f.hdus))] {
+		parts = append(parts, h.brief())
+	}
+	if more := len(f.hdus) - mostHDUs; more > 0 {
+		parts = append(parts, fmt.Sprintf("%d more", more))
+	}
+	text := strings.Join(parts, ", ")
+	if len(f.hdus) == 1 && f.hdus[0].length == 0 {
+		text += fmt.Sprintf(" and nothing after it (%d bytes)", f.src.size)
+	}
+	return text
+}
+
+// brief names an HDU with its shape and, of a table, its columns.
+func (h *hdu) brief() string {
+	info := h.info(nil)
+	name := ""
+	if h.name != "" {
+		name = fmt.Sprintf(" %q", h.name)
+	}
+	text := fmt.Sprintf("HDU %d%s (%s, %s", h.index, name, info.Kind, info.Shape)
+	if len(info.Columns) > 0 {
+		var names []string
+		for _, c := range info.Columns[:min(mostColumns, len(info.Columns))] {
+			names = append(names, oneLine(c.Name))
+		}
+		text += ": " + strings.Join(names, " ")
+		if more := len(info.Columns) - mostColumns; more > 0 {
+			text += fmt.Sprintf(" and %d more", more)
+		}
+	}
+	switch {
+	case h.kind == kindImage && h.length > 0:
+		if ctype := h.header.text("CTYPE1"); ctype != "" {
+			text += fmt.Sprintf("; CTYPE1 is %q", ctype)
+		} else {
+			text += "; no CTYPE1"
+		}
+	case h.kind != kindTable && h.kind != kindASCII:
+	case h.axes[1] == 0:
+		text += "; it is empty"
+	case h.axes[1] < minTableRows:
+		text += fmt.Sprintf("; a spectrum with a row a pixel has at least %d", minTableRows)
+	}
+	return text + ")"
+}
+
 // String names the unit.
 func (u spectralUnit) String() string {
 	base := ""

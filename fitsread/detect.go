@@ -107,8 +107,12 @@ func (f *File) nothingFound() error {
 	if err := f.otherClass(); err != nil {
 		return err
 	}
-	return fault(ErrNoSpectrum, -1, "write a layout that names HDU and columns (see configs/layouts/example.toml)",
-		"no wavelengths and fluxes were recognized in %d HDUs", len(f.hdus))
+	hint := "write a layout that names HDU and columns (see configs/layouts/example.toml)"
+	if len(f.hdus) == 1 && f.hdus[0].length == 0 {
+		hint = "check that the file is whole"
+	}
+	return fault(ErrNoSpectrum, -1, hint,
+		"no spectrum was recognized: looked for a table with wavelength and flux, or an image with a spectral axis; the file has %s", f.contents())
 }
 
 func compressedFault(h *hdu) *ReadError {

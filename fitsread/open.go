@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 	"sort"
 
 	"duskline/spectrum"
@@ -169,8 +170,10 @@ func (f *File) readAs(i int, who Identity) (s *spectrum.Spectrum, err error) {
 func (f *File) readSegments(s *spectrum.Spectrum, g *group, row int64) error {
 	var firstErr error
 	add := func(a *arm, row int64, name string) error {
+		pixels, losses := s.Pixels, slices.Clone(s.Losses)
 		seg, err := f.segment(s, a, row)
 		if errors.Is(err, ErrBadData) {
+			s.Pixels, s.Losses = pixels, losses
 			if firstErr == nil {
 				firstErr = err
 			}

@@ -82,6 +82,7 @@ type Bench struct {
 	grid     spectrum.Grid
 	scratch  *redshift.Scratch
 	level    level
+	spikes   int // pixels that MaskSpikes took
 	measured lines.Scratch
 	sight    sightline
 	x        []float64
@@ -118,8 +119,9 @@ func (b *Bench) lay(s *spectrum.Spectrum) {
 	if s.Frame == observed {
 		s.BaryVelocity = math.NaN() // nothing was applied
 	}
+	b.spikes = 0
 	if k := b.chain.set.Redshift.SpikeSigmas; k > 0 {
-		s.MaskSpikes(k)
+		b.spikes = s.MaskSpikes(k)
 	}
 	s.RescaleArms(minSharedPixels)
 	b.gridder.Grid(&b.grid, s)
@@ -283,6 +285,9 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 		o.RedshiftErr = math.Hypot(o.RedshiftErr, (1+o.Redshift)*frameDoubt/spectrum.SpeedOfLight)
 	}
 	why := b.doubts(res)
+	if res.FewPixels {
+		why = []string{b.fewPixels(s, res.Reason)}
+	}
 	if s.Frame == spectrum.RestFrame || s.Frame == spectrum.OtherFrame {
 		why = append(why, fmt.Sprintf("wavelengths are in the %s frame and were kept: the redshift is in that frame", s.Frame))
 	}

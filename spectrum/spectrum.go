@@ -87,6 +87,13 @@ type Warning struct {
 	Text string // one clause for people, such as "air or vacuum not stated; vacuum assumed"
 }
 
+// Loss is why pixels of an input must not be used.
+type Loss struct {
+	Cause  string // what is wrong, such as "flux NaN or infinite"
+	Where  string // such as "column FLUX of HDU 1", may be empty
+	Pixels int
+}
+
 // Segment is one contiguous piece of a spectrum: the whole of it for most
 // files, one arm or one echelle order for others.
 //
@@ -174,6 +181,9 @@ type Spectrum struct {
 	// digits: equal ones mean equal spectra.
 	InputDigest string
 	Warnings    []Warning
+	// Pixels is how many the input has, and Losses are those that must not be used.
+	Pixels int
+	Losses []Loss
 }
 
 // Warn appends a warning unless the same code is already present.
@@ -194,4 +204,18 @@ func (s *Spectrum) Has(code Code) bool {
 		}
 	}
 	return false
+}
+
+// Lose notes n pixels that must not be used; those of one cause and place are added up.
+func (s *Spectrum) Lose(cause, where string, n int) {
+	if n <= 0 {
+		return
+	}
+	for i := range s.Losses {
+		if l := &s.Losses[i]; l.Cause == cause && l.Where == where {
+			l.Pixels += n
+			return
+		}
+	}
+	s.Losses = append(s.Losses, Loss{cause, where, n})
 }
