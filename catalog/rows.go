@@ -59,6 +59,8 @@ const (
 	Normalized                       // the input was divided by its continuum
 	OutsideLimits                    // a better fit lies outside the manifest's limits
 	Unexplained                      // features stand out that the model does not explain
+	FewLines                         // fewer lines stand out than secure needs, or none of a quasar in emission
+	LowConfidence                    // the confidence is below what secure needs
 )
 
 // flagTable is in order of bits.
@@ -81,6 +83,8 @@ var flagTable = [...]struct{ name, says string }{
 	{"normalized", "the input looks divided by its continuum"},
 	{"outside_limits", "a better fit lies outside the manifest's limits"},
 	{"unexplained", "features stand out that the model does not explain"},
+	{"few_lines", "fewer lines stand out by themselves than secure needs, or none of a quasar in emission"},
+	{"low_confidence", "the confidence is below what secure needs"},
 }
 
 // knownFlags has every defined bit set.

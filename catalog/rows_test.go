@@ -105,13 +105,14 @@ func TestFlags(t *testing.T) {
 		RangeEnd: "range_end", LoneLine: "lone_line", Misfit: "misfit", LinesUnseen: "lines_unseen", LinesMissing: "lines_missing",
 		BelowZero: "below_zero", Scattered: "scattered", OnSkyLine: "on_sky_line", FrameAssumed: "frame_assumed",
 		NoiseEstimated: "noise_estimated", WeightsSuspect: "weights_suspect",
-		Normalized: "normalized", OutsideLimits: "outside_limits", Unexplained: "unexplained"} {
+		Normalized: "normalized", OutsideLimits: "outside_limits", Unexplained: "unexplained",
+		FewLines: "few_lines", LowConfidence: "low_confidence"} {
 		if got := bit.String(); got != want {
 			t.Errorf("Flags(%d) = %q, want %q", bit, got, want)
 		}
 	}
-	if Unreadable != 1 || WeightsSuspect != 1<<14 || Normalized != 1<<15 || OutsideLimits != 1<<16 || Unexplained != 1<<17 || knownFlags != 1<<18-1 {
-		t.Errorf("bits moved: unreadable %d, normalized %d, unexplained %d, all %d", Unreadable, Normalized, Unexplained, knownFlags)
+	if Unreadable != 1 || WeightsSuspect != 1<<14 || Normalized != 1<<15 || OutsideLimits != 1<<16 || Unexplained != 1<<17 || FewLines != 1<<18 || LowConfidence != 1<<19 || knownFlags != 1<<20-1 {
+		t.Errorf("bits moved: unreadable %d, normalized %d, unexplained %d, few_lines %d, low_confidence %d, all %d", Unreadable, Normalized, Unexplained, FewLines, LowConfidence, knownFlags)
 	}
 	if got := Flags(0); got.String() != "" || got.Names() != nil {
 		t.Errorf("no flag: %q, %q", got.String(), got.Names())

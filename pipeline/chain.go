@@ -271,7 +271,7 @@ func (b *Bench) object(s *spectrum.Spectrum, res *redshift.Result) catalog.Objec
 			s.Frame == spectrum.RestFrame || s.Frame == spectrum.OtherFrame, catalog.FrameAssumed},
 		{s.Has(spectrum.NoiseEstimated), catalog.NoiseEstimated}, {s.Has(spectrum.WeightsSuspect), catalog.WeightsSuspect},
 		{res.Normalized, catalog.Normalized}, {res.OnSky, catalog.OnSkyLine},
-		{res.Unexplained, catalog.Unexplained},
+		{res.Unexplained, catalog.Unexplained}, {res.FewLines, catalog.FewLines}, {res.LowConfidence, catalog.LowConfidence},
 	} {
 		if d.set {
 			o.Flags |= d.flag

@@ -70,6 +70,9 @@ func BenchmarkShortChain(b *testing.B) {
 	}
 }
 
+// assumptions are the flags that speak of the input, not of the answer.
+const assumptions = catalog.FrameAssumed | catalog.NoiseEstimated | catalog.WeightsSuspect
+
 // Short spectra of low resolution: what is called secure is right.
 func TestShortSpectra(t *testing.T) {
 	if testing.Short() {
@@ -84,6 +87,9 @@ func TestShortSpectra(t *testing.T) {
 			t.Fatal(err)
 		}
 		o := worker.Process(s).Object
+		if o.Verdict != catalog.Secure && (o.Flags&^assumptions == 0 || o.Reason == "") {
+			t.Errorf("%s is %s with flags %v and reason %q: nothing says why", want.ObjectID, o.Verdict, o.Flags.Names(), o.Reason)
+		}
 		ok := synth.IsRight(want, o)
 		if ok {
 			right++

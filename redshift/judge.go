@@ -42,17 +42,18 @@ const overwhelming = 3
 // secondObject is the number of leftovers that tell of another object; one may be a cosmic ray.
 const secondObject = 2
 
-// Judge sets Confidence, Verdict and the doubts that follow from thresholds.
+// Judge sets Confidence, Verdict and the doubts that follow from thresholds. A
+// verdict other than Secure comes with a doubt that says why.
 func (t Thresholds) Judge(r *Result) {
 	r.Confidence = 0
 	if !r.Found {
 		r.Verdict = None
-		r.Faint = r.SNR < t.FaintSNR
+		r.Faint, r.LowConfidence = r.SNR < t.FaintSNR, !r.FewPixels
 		return
 	}
 	r.Confidence = 1 - 0.5*math.Exp(-r.Gap/(t.GapScale*math.Max(1, math.Max(r.Chi2Dof, r.Correlation))))
 	r.Tied = r.Gap < t.TiedGap
-	r.Misfit = r.Chi2Dof > t.MisfitChi2
+	r.Misfit = r.Chi2Dof > t.MisfitChi2 || r.Chi2Dof >= t.HopelessChi2
 	r.Faint = r.LinesSeen == 0 && r.SNR < t.FaintSNR
 	r.LoneLine = r.LinesSeen == 1
 	r.Unseen = r.LinesExpected > 0 && 2*r.LinesCovered < r.LinesExpected
@@ -65,8 +66,10 @@ func (t Thresholds) Judge(r *Result) {
 		// line may be a cosmic ray or another line.
 		enough = 1-r.Confidence <= 0.5*math.Pow(2*(1-t.SecureConfidence), overwhelming)
 	}
+	r.FewLines = !enough || r.Class == "quasar" && !r.InEmission
+	r.LowConfidence = !(r.Confidence >= t.SecureConfidence)
 	switch {
-	case r.Confidence >= t.SecureConfidence && enough && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd && !r.Bare() && !r.Blind() && !r.Scattered && r.LinesMissing == 0 && (r.Class != "quasar" || r.InEmission):
+	case !r.LowConfidence && !r.FewLines && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd && !r.Bare() && !r.Blind() && !r.Scattered && r.LinesMissing == 0:
 		r.Verdict = Secure
 	case r.LinesSeen == 0 && r.Confidence < t.NoneConfidence:
 		r.Verdict = None

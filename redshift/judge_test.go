@@ -4,6 +4,8 @@ import (
 	"math"
 	"slices"
 	"testing"
+
+	"pgregory.net/rapid"
 )
 
 func TestJudge(t *testing.T) {
@@ -21,19 +23,19 @@ func TestJudge(t *testing.T) {
 		doubts  func(r *Result) []bool // all must be set
 	}{
 		{"all is well", good, Secure, func(r *Result) []bool {
-			return []bool{!r.Tied, !r.Misfit, !r.Faint, !r.LoneLine, !r.Unseen}
+			return []bool{!r.Tied, !r.Misfit, !r.Faint, !r.LoneLine, !r.Unseen, !r.FewLines, !r.LowConfidence}
 		}},
 		{"one line", with(func(r *Result) { r.LinesSeen, r.InEmission = 1, true }), Uncertain, func(r *Result) []bool { return []bool{r.LoneLine} }},
 		{"one line in absorption, a large gap", with(func(r *Result) { r.LinesSeen = 1 }), Secure, func(r *Result) []bool { return []bool{r.LoneLine} }},
-		{"one line in absorption", with(func(r *Result) { r.LinesSeen, r.Gap = 1, 50 }), Uncertain, nil},
-		{"correlated pixels", with(func(r *Result) { r.Correlation, r.Gap = 3, 50 }), Uncertain, nil},
+		{"one line in absorption", with(func(r *Result) { r.LinesSeen, r.Gap = 1, 50 }), Uncertain, func(r *Result) []bool { return []bool{r.LoneLine, r.FewLines, !r.LowConfidence} }},
+		{"correlated pixels", with(func(r *Result) { r.Correlation, r.Gap = 3, 50 }), Uncertain, func(r *Result) []bool { return []bool{r.LowConfidence, !r.FewLines, !r.Tied} }},
 		{"beyond description", with(func(r *Result) { r.Chi2Dof, r.Gap = 31, 1e6 }), Uncertain, func(r *Result) []bool { return []bool{r.Misfit} }},
 		{"two lines, one on the night sky", with(func(r *Result) { r.LinesSeen, r.LinesOfAir, r.InEmission = 2, 1, true }), Uncertain, func(r *Result) []bool { return []bool{r.OnSky} }},
 		{"three lines, one on the night sky", with(func(r *Result) { r.LinesSeen, r.LinesOfAir, r.InEmission = 3, 1, true }), Secure, func(r *Result) []bool { return []bool{!r.OnSky} }},
 		{"lines seen, but as many missing", with(func(r *Result) { r.LinesMissing, r.InEmission = 4, true }), Uncertain, nil},
 		{"lines seen, some missing", with(func(r *Result) { r.LinesMissing = 3 }), Uncertain, nil},
-		{"lines that disagree", with(func(r *Result) { r.Scattered = true }), Uncertain, nil},
-		{"a quasar without emission", with(func(r *Result) { r.Class = "quasar" }), Uncertain, nil},
+		{"lines that disagree", with(func(r *Result) { r.Scattered = true }), Uncertain, func(r *Result) []bool { return []bool{!r.FewLines, !r.LowConfidence} }},
+		{"a quasar without emission", with(func(r *Result) { r.Class = "quasar" }), Uncertain, func(r *Result) []bool { return []bool{r.FewLines, !r.LowConfidence} }},
 		{"a quasar with emission", with(func(r *Result) { r.Class, r.InEmission = "quasar", true }), Secure, nil},
 		{"a small gap", with(func(r *Result) { r.Gap = 8.9 }), Uncertain, func(r *Result) []bool { return []bool{r.Tied} }},
 		{"a gap in a misfit", with(func(r *Result) { r.Chi2Dof = 8; r.Gap = 100 }), Uncertain, func(r *Result) []bool { return []bool{r.Misfit, !r.Tied} }},
@@ -49,7 +51,9 @@ func TestJudge(t *testing.T) {
 		{"a star seen in part, by a model that does not fit", with(func(r *Result) { r.Class, r.LinesCovered, r.Chi2Dof, r.Gap = "star", 2, 8, 1e4 }), Secure, func(r *Result) []bool { return []bool{!r.Blind()} }},
 		{"a galaxy seen whole, by a model that does not fit", with(func(r *Result) { r.Class, r.Chi2Dof, r.Gap = "galaxy", 8, 1e4 }), Secure, func(r *Result) []bool { return []bool{!r.Blind()} }},
 		{"nothing expected", with(func(r *Result) { r.LinesExpected, r.LinesCovered = 0, 0 }), Secure, func(r *Result) []bool { return []bool{!r.Unseen} }},
-		{"not found", Result{SNR: math.NaN(), Gap: math.NaN()}, None, func(r *Result) []bool { return []bool{!r.Faint, r.Confidence == 0} }},
+		{"not found", Result{SNR: math.NaN(), Gap: math.NaN()}, None, func(r *Result) []bool { return []bool{!r.Faint, r.Confidence == 0, r.LowConfidence} }},
+		{"no feature, a large gap", with(func(r *Result) { r.LinesSeen = 0 }), Uncertain, func(r *Result) []bool { return []bool{r.FewLines, !r.LowConfidence, !r.Faint} }},
+		{"not found for want of pixels", Result{SNR: math.NaN(), Gap: math.NaN(), FewPixels: true}, None, func(r *Result) []bool { return []bool{!r.LowConfidence} }},
 		{"not found and faint", Result{SNR: 0.2, Gap: math.NaN()}, None, func(r *Result) []bool { return []bool{r.Faint} }},
 	} {
 		r := c.r
@@ -69,6 +73,37 @@ func TestJudge(t *testing.T) {
 	if s := []string{None.String(), Uncertain.String(), Secure.String()}; s[0] != "none" || s[1] != "uncertain" || s[2] != "secure" {
 		t.Errorf("verdicts are called %v", s)
 	}
+}
+
+// A verdict other than secure has a doubt that tells why, whatever the thresholds; a secure
+// one has none of those that deny it.
+func TestNoVerdictWithoutDoubt(t *testing.T) {
+	rapid.Check(t, func(t *rapid.T) {
+		th := DefaultThresholds()
+		if rapid.Bool().Draw(t, "other thresholds") {
+			th.SecureLines = rapid.IntRange(1, 5).Draw(t, "secure lines")
+			th.MisfitChi2 = rapid.Float64Range(1, 40).Draw(t, "misfit")
+			th.HopelessChi2 = rapid.Float64Range(1, 40).Draw(t, "hopeless")
+			th.TiedGap = rapid.Float64Range(0, 20).Draw(t, "tied")
+		}
+		flag := func(name string) bool { return rapid.IntRange(0, 3).Draw(t, name) == 0 }
+		r := Result{Found: !flag("nothing found"), Class: rapid.SampledFrom([]string{"galaxy", "quasar", "star"}).Draw(t, "class"),
+			Gap: rapid.Float64Range(0, 150).Draw(t, "gap"), Chi2Dof: rapid.Float64Range(0.5, 45).Draw(t, "chi2"), SNR: rapid.Float64Range(0, 20).Draw(t, "snr"),
+			LinesSeen: rapid.IntRange(0, 6).Draw(t, "lines"), LinesExpected: 6, LinesCovered: rapid.IntRange(0, 6).Draw(t, "covered"), InEmission: !flag("no emission")}
+		r.LinesOfAir = rapid.IntRange(0, r.LinesSeen).Draw(t, "lines of air")
+		if flag("missing") {
+			r.LinesMissing = 1
+		}
+		r.RangeEnd, r.Scattered, r.Normalized = flag("range end"), flag("scattered"), flag("normalized")
+		th.Judge(&r)
+		denying := r.FewPixels || r.FewLines || r.LowConfidence || r.RangeEnd || r.Scattered || r.LinesMissing > 0 || r.Bare() || r.Blind()
+		switch {
+		case r.Verdict == Secure && denying:
+			t.Fatalf("secure with a doubt that denies it: %+v", r)
+		case r.Verdict != Secure && !denying && !r.Misfit:
+			t.Fatalf("%v without a doubt: %+v", r.Verdict, r)
+		}
+	})
 }
 
 // Confidence is one half without a gap and grows with it; a misfit stretches

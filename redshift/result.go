@@ -46,6 +46,8 @@ type Result struct {
 	Normalized                                bool // the input was divided by its continuum; set by the caller
 	Faint, Tied, LoneLine, Misfit, Unseen     bool
 	OnSky                                     bool // without LinesOfAir too few are left
+	FewLines                                  bool // fewer lines than Secure needs, or a quasar's none in emission
+	LowConfidence                             bool // less than Secure needs
 	Unexplained                               bool // Leftovers enough for a second object
 
 	Verdict Verdict
