@@ -54,30 +54,43 @@ type Template struct {
 // with the spectra they name; name is how people call the folder. The error is
 // an *InputError. What is wrong inside a recipe is found by Templates.
 func ReadRecipes(folder, name string) ([]RecipeText, error) {
-	entries, err := os.ReadDir(folder)
+	files, err := RecipeFiles(folder, name)
 	if err != nil {
-		return nil, inputError("the folder of recipes %s cannot be read: %s", name, plain(err))
+		return nil, err
 	}
 	var out []RecipeText
 	var problems []string
-	for _, e := range entries {
-		if !strings.EqualFold(filepath.Ext(e.Name()), ".toml") || strings.HasPrefix(e.Name(), ".") {
-			continue
-		}
-		r, err := ReadRecipe(filepath.Join(folder, e.Name()), filepath.Join(name, e.Name()))
+	for _, file := range files {
+		r, err := ReadRecipe(filepath.Join(folder, file), filepath.Join(name, file))
 		if err != nil {
 			problems = append(problems, err.Error())
 			continue
 		}
 		out = append(out, r)
 	}
-	if len(out)+len(problems) == 0 {
-		problems = append(problems, name+" holds no recipe (*.toml); give the folder of your recipes")
-	}
 	if len(problems) > 0 {
 		return nil, &InputError{problems}
 	}
 	return out, nil
+}
+
+// RecipeFiles names the recipes (*.toml) of a folder, at least one, in order; name is how
+// people call the folder. The error is an *InputError.
+func RecipeFiles(folder, name string) ([]string, error) {
+	entries, err := os.ReadDir(folder)
+	if err != nil {
+		return nil, inputError("the folder of recipes %s cannot be read: %s", name, plain(err))
+	}
+	var files []string
+	for _, e := range entries {
+		if strings.EqualFold(filepath.Ext(e.Name()), ".toml") && !strings.HasPrefix(e.Name(), ".") {
+			files = append(files, e.Name())
+		}
+	}
+	if len(files) == 0 {
+		return nil, inputError("%s holds no recipe (*.toml); give the folder of your recipes", name)
+	}
+	return files, nil
 }
 
 // ReadRecipe reads one recipe with the spectra it names. The error is an
@@ -145,7 +158,7 @@ func plainRead(err error) string {
 	if errors.As(err, &re) {
 		named := *re
 		named.File = "the file"
-		return named.Error()
+		return strings.TrimPrefix(named.Error(), "the file: ") // the caller names it
 	}
 	return plain(err)
 }

@@ -64,8 +64,9 @@ type component struct {
 
 // term is a Gaussian.
 type term struct {
-	name    string // of the line, empty for a bump
-	logWave float64
+	name    string  // of the line, empty for a bump
+	logWave float64 // with the shift
+	moved   float64 // the shift, km/s
 	width   float64 // km/s; 0: the component's
 	amp     float64
 	// shadow marks a Gaussian that stands for a line in the scan and in the

@@ -243,7 +243,7 @@ func compile(r *ComponentRecipe, list *linelist.List, stacks Stacks) (component,
 			bad("lines: %s: shift = %g, want -30000 to 30000 km/s", l.Line, l.Shift)
 		}
 		shift := math.Log10(1 + l.Shift/speedOfLight)
-		c.terms = append(c.terms, term{name: l.Line, logWave: math.Log10(found.Wave) + shift, amp: l.Ratio})
+		c.terms = append(c.terms, term{name: l.Line, logWave: math.Log10(found.Wave) + shift, moved: l.Shift, amp: l.Ratio})
 	}
 	if b := r.CaseB; b != nil {
 		if len(b.Upper) == 0 {

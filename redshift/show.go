@@ -21,6 +21,8 @@ type ShapeView struct {
 	Kind  string  // "line", "bump", "edge", "head", "stark", "jump", "forest" or "stack"
 	Name  string  // of a line in the line list; digest of a stack
 	Wave  float64 // vacuum Angstrom, with the shift of the line; first of a stack, 0 for forest and stark
+	Rest  float64 // of a line or bump: the same without the shift
+	Shift float64 // of a line, km/s against the redshift of the object, negative blueward
 	Last  float64 // last wavelength of a stack
 	Ratio float64 // relative height or depth
 	Width float64 // Gaussian sigma in km/s; of an edge and the tail of a head in Angstrom
@@ -45,7 +47,8 @@ func (f *Family) View(width float64) []ComponentView {
 		}
 		for j := range c.terms {
 			t := &c.terms[j]
-			s := ShapeView{Kind: "line", Name: t.name, Wave: math.Pow(10, t.logWave), Ratio: t.amp, Width: c.sigmaKms(t, width)}
+			s := ShapeView{Kind: "line", Name: t.name, Wave: math.Pow(10, t.logWave), Shift: t.moved, Ratio: t.amp, Width: c.sigmaKms(t, width)}
+			s.Rest = s.Wave / (1 + t.moved/speedOfLight)
 			if t.width > 0 && !t.shadow {
 				s.Kind = "bump"
 			}

@@ -3,7 +3,9 @@ package main
 import (
 	"fmt"
 	"io"
+	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 
 	"duskline/pipeline"
@@ -136,7 +138,7 @@ func writeTemplate(w io.Writer, f *pipeline.Template) {
 	if f.BuiltIn {
 		from = "built-in, " + f.File
 	}
-	fmt.Fprintf(w, "%s (%s): %s\n\n", f.Name, f.Class, f.Summary)
+	fmt.Fprintf(w, "%s (%s): %s\nWavelengths are at rest in vacuum, Angstrom; a shift is that of the line against the redshift of the object.\n\n", f.Name, f.Class, f.Summary)
 	writeTable(w, func(t io.Writer) {
 		fmt.Fprintf(t, "redshift\t%g to %g\n", f.ZMin, f.ZMax)
 		fmt.Fprintf(t, "widths\t%s km/s, Gaussian sigma; a component may have its own\n", joined(f.Widths))
@@ -168,7 +170,11 @@ func writeTemplate(w io.Writer, f *pipeline.Template) {
 			for _, s := range v.Shapes {
 				switch s.Kind {
 				case "line", "bump":
-					fmt.Fprintf(t, "  %s\t%.2f A\tratio %.4g\tsigma %.5g km/s\n", orNot(s.Name, s.Kind), s.Wave, s.Ratio, s.Width)
+					shift := ""
+					if s.Shift != 0 {
+						shift = fmt.Sprintf("\tshift %+.0f km/s", s.Shift)
+					}
+					fmt.Fprintf(t, "  %s\t%.2f A\tratio %.4g\tsigma %.5g km/s%s\n", orNot(s.Name, s.Kind), s.Rest, s.Ratio, s.Width, shift)
 				case "stark", "jump":
 					what := "lines"
 					if s.Kind == "jump" {
@@ -198,35 +204,42 @@ func moved(kms float64) string {
 }
 
 type templatesCheckCmd struct {
-	File []string `arg:"" help:"Recipe files in TOML."`
+	Path []string `arg:"" help:"Recipe files in TOML, or folders of them (*.toml)."`
 }
 
 // Help teaches by example.
 func (templatesCheckCmd) Help() string {
 	return `Examples:
-  duskline templates check ours/lensed.toml
-  duskline templates check ours/*.toml
+  duskline templates check ours/                a folder of recipes, as for duskline run --recipes ours/
+  duskline templates check ours/lensed.toml     one of them
 
-Every problem is reported with file, component and key; the exit code is then 2.`
+Recipes are checked together, as a run would read them. Every problem is reported with file, component and key; the exit code is then 2.`
 }
 
 func (c *templatesCheckCmd) run(a *app) (int, error) {
+	files, problems := c.files(a)
+	failed := map[string]bool{}
 	var recipes []pipeline.RecipeText
-	var problems []string
-	for _, name := range c.File {
+	for _, name := range files {
 		r, err := pipeline.ReadRecipe(a.locate(name), name)
 		if err != nil {
-			problems = append(problems, err.Error())
+			problems, failed[name] = append(problems, err.Error()), true
 			continue
 		}
 		recipes = append(recipes, r)
 	}
 	all, err := pipeline.Templates(recipes)
 	if err != nil {
-		problems = append(problems, strings.Split(err.Error(), "\n")...)
-	}
-	if len(problems) > 0 {
-		return 0, &pipeline.InputError{Problems: problems}
+		for _, line := range strings.Split(err.Error(), "\n") {
+			problems = append(problems, line)
+			for _, r := range recipes {
+				failed[r.Name] = failed[r.Name] || strings.HasPrefix(line, r.Name+": ")
+			}
+		}
+		recipes = slices.DeleteFunc(recipes, func(r pipeline.RecipeText) bool { return failed[r.Name] })
+		if all, err = pipeline.Templates(recipes); err != nil {
+			recipes = nil // which of them is wrong cannot be told
+		}
 	}
 	for _, r := range recipes {
 		says := "switches a built-in family off"
@@ -238,5 +251,32 @@ func (c *templatesCheckCmd) run(a *app) (int, error) {
 		}
 		fmt.Fprintf(a.stdout, "%s: in order; %s\n", r.Name, says)
 	}
+	if len(problems) > 0 {
+		return 0, &pipeline.InputError{Problems: append(problems, fmt.Sprintf("%d of %s in order", len(recipes), count(int64(len(files)), "recipe", "recipes")))}
+	}
+	fmt.Fprintf(a.stdout, "\n%s in order.\n", count(int64(len(files)), "recipe is", "recipes are"))
 	return exitDone, nil
+}
+
+// files names the recipes to check, those of folders in order of their names, each once.
+func (c *templatesCheckCmd) files(a *app) (files, problems []string) {
+	for _, path := range c.Path {
+		names := []string{path}
+		if info, err := os.Stat(a.locate(path)); err == nil && info.IsDir() {
+			within, err := pipeline.RecipeFiles(a.locate(path), path)
+			if err != nil {
+				problems = append(problems, err.Error())
+			}
+			names = names[:0]
+			for _, name := range within {
+				names = append(names, filepath.Join(path, name))
+			}
+		}
+		for _, name := range names {
+			if !slices.Contains(files, name) {
+				files = append(files, name)
+			}
+		}
+	}
+	return files, problems
 }
