@@ -285,7 +285,11 @@ func number(x float64, decimals int) string {
 	if math.IsNaN(x) {
 		return "-"
 	}
-	return fmt.Sprintf("%.*f", decimals, x)
+	text := fmt.Sprintf("%.*f", decimals, x)
+	if strings.Trim(text, "-0.") == "" {
+		text = strings.TrimPrefix(text, "-") // no minus before a zero
+	}
+	return text
 }
 
 // title says in one line what a picture shows.
@@ -296,5 +300,8 @@ func title(o *catalog.Object) string {
 	} else {
 		parts = append(parts, fmt.Sprintf("%s   z = %.5f ± %.5f (%s)", o.Class, o.Redshift, o.RedshiftErr, o.Verdict))
 	}
-	return strings.Join(append(parts, fmt.Sprintf("S/N %s a pixel", number(o.SNR, 1))), "   ")
+	if !math.IsNaN(o.SNR) {
+		parts = append(parts, fmt.Sprintf("S/N %s a pixel", number(o.SNR, 1)))
+	}
+	return strings.Join(parts, "   ")
 }

@@ -1,11 +1,12 @@
 package main
 
 import (
-	"duskline/catalog"
 	"fmt"
 	"math"
 	"slices"
+	"strings"
 
+	"duskline/catalog"
 	"duskline/pipeline"
 	"duskline/spectrum"
 )
@@ -13,6 +14,7 @@ import (
 // picture is a spectrum made ready for drawing. Pixels without data are NaN.
 type picture struct {
 	title     string
+	flags     string
 	fluxLabel string
 	redshift  float64 // NaN when there is none
 	wave      []float64
@@ -22,6 +24,8 @@ type picture struct {
 	continuum []float64
 	marks     []pipeline.Mark
 	low, high float64 // of the flux worth seeing
+	logFlux   bool    // the flux axis is logarithmic, as is
+	logWave   bool    // that of wavelength
 }
 
 const (
@@ -29,8 +33,16 @@ const (
 	maxMarks     = 40
 	peakPixels   = 8 // half width of the surroundings of an emission line that hold its peak
 	// maxPeak bounds the flux range to this many times that of nearly all
-	// pixels: one line must not flatten all others.
-	maxPeak = 4.0
+	// pixels: one line must not flatten all others. maxStray does where no line is known.
+	maxPeak  = 4.0
+	maxStray = 3.0
+	// A pixel without signal and with noiseRatio times the median error says nothing.
+	noiseRatio = 3.0
+	// logFrom is the factor that flux spans from which its axis is logarithmic: a decade
+	// and a half. Nearly all of it must stand above its errors.
+	logFrom = 30.0
+	// logWaveFrom is the same for wavelength: from the ultraviolet to the red.
+	logWaveFrom = 4.0
 )
 
 // newPicture lays out the last object of a bench.
@@ -40,7 +52,7 @@ func newPicture(s *spectrum.Spectrum, out *pipeline.Outcome, v pipeline.View) *p
 	if out.Object.Verdict == catalog.None {
 		redshift = math.NaN() // a guess has no rest frame
 	}
-	p := &picture{title: title(&out.Object), redshift: redshift, marks: pipeline.Marks(out),
+	p := &picture{title: title(&out.Object), flags: strings.Join(out.Object.Flags.Names(), ", "), redshift: redshift, marks: pipeline.Marks(out),
 		wave: make([]float64, n), flux: make([]float64, n), sigma: make([]float64, n), continuum: make([]float64, n)}
 	if len(p.marks) > maxMarks {
 		strongest := slices.Clone(p.marks)
@@ -112,32 +124,68 @@ func smoothed(flux, sigma []float64) []float64 {
 	return out
 }
 
-// setRange chooses the flux range: nearly all of the smoothed spectrum, without
-// spikes, but with the peaks of the emission lines unless they are far higher.
+// setRange chooses the flux range: nearly all of the smoothed spectrum, without spikes
+// and without ends that are noise alone, but with the peaks of the emission lines unless
+// they are far higher. Where flux that is seen well spans more than logFrom, the axis is
+// logarithmic and cuts no peak.
 func (p *picture) setRange() {
-	var known []float64
-	for _, f := range p.smooth {
-		if !math.IsNaN(f) {
-			known = append(known, f)
-		}
+	if n := len(p.wave); n > 0 {
+		p.logWave = p.wave[n-1] > logWaveFrom*p.wave[0]
 	}
+	known, clear := p.telling()
 	if len(known) == 0 {
 		p.low, p.high = 0, 1
 		return
 	}
-	slices.Sort(known)
 	at := func(q float64) float64 { return known[int(q*float64(len(known)-1))] }
-	p.low, p.high = math.Min(0, at(0.003)), at(0.997)
-	top := p.low + maxPeak*(at(0.97)-p.low)
+	highest := at(0.997)
 	for _, m := range p.marks {
 		if m.Emission {
-			p.high = math.Max(p.high, math.Min(top, p.peak(m.Wave)))
+			highest = math.Max(highest, p.peak(m.Wave))
 		}
 	}
+	if clear >= 0.95 && at(0.03) > 0 && highest > logFrom*at(0.03) {
+		p.logFlux = true
+		p.low, p.high = at(0.03)/2, 1.2*highest
+		if floor := at(0.003); floor > 0 {
+			p.low = math.Min(at(0.03)/1.2, math.Max(p.low, floor))
+		}
+		return
+	}
+	bulk := math.Max(at(0.97), -at(0.03))
+	p.low = math.Max(math.Min(0, at(0.003)), -1.6*bulk)
+	p.high = math.Min(at(0.997), p.low+maxStray*(at(0.97)-p.low))
+	p.high = math.Max(p.high, math.Min(highest, p.low+maxPeak*(at(0.97)-p.low)))
 	if !(p.high > p.low) {
 		p.high = p.low + 1
 	}
 	p.high += 0.04 * (p.high - p.low)
+}
+
+// telling returns the smoothed flux, sorted, without pixels that are noise alone, and
+// the share of it above three times its error.
+func (p *picture) telling() (known []float64, clear float64) {
+	var errors []float64
+	for _, s := range p.sigma {
+		if !math.IsNaN(s) {
+			errors = append(errors, s)
+		}
+	}
+	if len(errors) == 0 {
+		return nil, 0
+	}
+	typical := spectrum.Median(errors)
+	for i, f := range p.smooth {
+		if math.IsNaN(f) || p.sigma[i] > noiseRatio*typical && math.Abs(f) < noiseRatio*p.sigma[i] {
+			continue
+		}
+		known = append(known, f)
+		if f > 3*p.sigma[i] {
+			clear++
+		}
+	}
+	slices.Sort(known)
+	return known, clear / float64(max(1, len(known)))
 }
 
 // peak returns the largest smoothed flux around a wavelength.
@@ -169,11 +217,12 @@ func (p *picture) scale(unit string) {
 	factor := 1.0
 	if exponent < -2 || exponent > 3 {
 		factor = math.Pow(10, -exponent)
-		p.fluxLabel = fmt.Sprintf("flux × 1e%+.0f", -exponent)
+		p.fluxLabel = fmt.Sprintf("flux / 1e%.0f", exponent)
 	}
-	if unit != "" {
-		p.fluxLabel += "   [" + unit + "]"
+	if unit == "" {
+		unit = "unit not stated"
 	}
+	p.fluxLabel += "   [" + unit + "]"
 	for _, values := range [][]float64{p.flux, p.smooth, p.sigma, p.continuum} {
 		for i := range values {
 			values[i] *= factor

@@ -1,9 +1,11 @@
 package main
 
 import (
+	"fmt"
 	"math"
 	"math/rand/v2"
 	"sort"
+	"strings"
 	"testing"
 
 	"duskline/pipeline"
@@ -82,6 +84,99 @@ func TestEvenTicks(t *testing.T) {
 		ticks := evenTicks{7}.Ticks(c.low, c.high)
 		if len(ticks) < 3 || ticks[0].Label != c.first || ticks[len(ticks)-1].Label != c.last {
 			t.Errorf("ticks from %g to %g are %v, want %s to %s", c.low, c.high, ticks, c.first, c.last)
+		}
+	}
+}
+
+// drawn makes a picture of n pixels out of functions of 0 to 1 along it.
+func drawn(n int, flux, sigma func(x float64) float64) *picture {
+	r := rand.New(rand.NewPCG(3, 4))
+	p := &picture{}
+	for i := range n {
+		x := float64(i) / float64(n-1)
+		s := sigma(x)
+		p.wave = append(p.wave, 4000+5000*x)
+		p.sigma = append(p.sigma, s)
+		p.flux = append(p.flux, flux(x)+s*r.NormFloat64())
+	}
+	p.smooth = smoothed(p.flux, p.sigma)
+	return p
+}
+
+// The flux axis is logarithmic where flux that is seen well spans more than a decade and
+// a half, and follows neither noisy ends nor strays.
+func TestRangeOfFlux(t *testing.T) {
+	even := func(float64) float64 { return 1 }
+	for _, c := range []struct {
+		name        string
+		p           *picture
+		log         bool
+		low, high   float64 // between which the range must lie
+		least, most float64 // that it must hold
+	}{
+		{"a blue star over three decades", drawn(4000, func(x float64) float64 { return 1e4 * math.Pow(10, -3*x) }, even), true, 4, 1.3e4, 14, 9e3},
+		{"over one decade", drawn(4000, func(x float64) float64 { return 1e3 * math.Pow(10, -x) }, even), false, -1, 1.2e3, 100, 950},
+		{"over three decades, half of it noise", drawn(4000, func(x float64) float64 { return 10 * math.Pow(10, -3*x) }, even), false, -3, 12, 0, 9},
+		{"noise at both ends", drawn(4000, func(float64) float64 { return 10 }, func(x float64) float64 { return 1 + 300*math.Pow(2*x-1, 12) }), false, -40, 60, 0, 11},
+		{"noise alone", drawn(4000, func(float64) float64 { return 0 }, even), false, -2, 2, -0.8, 0.8},
+	} {
+		p := c.p
+		p.setRange()
+		if p.logFlux != c.log || p.low < c.low || p.high > c.high || p.low > c.least || p.high < c.most {
+			t.Errorf("%s: from %g to %g, logarithmic %t; want %t, within %g to %g, %g to %g in it", c.name, p.low, p.high, p.logFlux, c.log, c.low, c.high, c.least, c.most)
+		}
+	}
+	p := drawn(100, func(float64) float64 { return 1 }, even)
+	if p.wave[99] = 16001; p.wave[0] != 4000 {
+		t.Fatal("the wavelengths of the test changed")
+	}
+	if p.setRange(); !p.logWave {
+		t.Error("wavelengths over a factor of more than four are not drawn on a logarithmic axis")
+	}
+}
+
+func TestLogTicks(t *testing.T) {
+	for _, c := range []struct {
+		low, high float64
+		n         int
+		want      string
+	}{
+		{1150, 10500, 12, "1500 2000 3000 4000 5000 6000 8000 10000"},
+		{0.0013, 7, 7, "0.003 0.01 0.03 0.1 0.3 1 3"},
+		{0.0013, 7, 5, "0.01 0.1 1"},
+		{0.2, 7, 7, "0.2 0.5 1 2 5"},
+	} {
+		got := ""
+		for _, tick := range (logTicks{c.n}).Ticks(c.low, c.high) {
+			got += tick.Label + " "
+		}
+		if strings.TrimSpace(got) != c.want {
+			t.Errorf("ticks from %g to %g are %s, want %s", c.low, c.high, got, c.want)
+		}
+		for _, tick := range (powers{logTicks{c.n}}).Ticks(math.Log10(c.low), math.Log10(c.high)) {
+			if v := math.Pow(10, tick.Value); fmt.Sprintf("%.6g", v) != tick.Label {
+				t.Errorf("tick %s stands at %g", tick.Label, v)
+			}
+		}
+	}
+}
+
+// A list that does not fit says that there is more.
+func TestShortened(t *testing.T) {
+	for width, want := range map[int]string{40: "tied, lone_line, few_lines", 20: "tied, lone_line ...", 9: "tied ...", 3: ""} {
+		if got := shortened("tied, lone_line, few_lines", func(s string) bool { return len(s) <= width }); got != want {
+			t.Errorf("in %d characters %q, want %q", width, got, want)
+		}
+	}
+}
+
+func TestNumber(t *testing.T) {
+	for _, c := range []struct {
+		x    float64
+		want string
+	}{{-0.04, "0.0"}, {0, "0.0"}, {-0.06, "-0.1"}, {math.NaN(), "-"}} {
+		if got := number(c.x, 1); got != c.want {
+			t.Errorf("number(%g) = %q, want %q", c.x, got, c.want)
 		}
 	}
 }

@@ -6,6 +6,7 @@ import (
 	"image/color"
 	"math"
 	"os"
+	"strings"
 
 	"duskline/pipeline"
 
@@ -70,12 +71,18 @@ func (p *picture) draw(c draw.Canvas) {
 	if n := len(p.wave); n > 0 {
 		pl.X.Min, pl.X.Max = p.wave[0], p.wave[n-1]
 	}
-	pl.Y.Min, pl.Y.Max = p.low, p.high
-	pl.X.Tick.Marker, pl.Y.Tick.Marker = evenTicks{9}, evenTicks{6}
-	pl.Add(zeroLine{})
+	pl.Y.Min, pl.Y.Max = p.height(p.low), p.height(p.high)
+	pl.X.Tick.Marker, pl.Y.Tick.Marker = p.waveTicks(), evenTicks{6}
+	if p.logWave {
+		pl.X.Scale = plot.LogScale{}
+	}
+	if p.logFlux {
+		pl.Y.Tick.Marker = powers{logTicks{7}}
+	}
+	pl.Add(zeroLine{p})
 	for _, curve := range []trace{
-		{p, p.flux, draw.LineStyle{Color: inkPixels, Width: 0.6}},
 		{p, p.sigma, draw.LineStyle{Color: inkSigma, Width: 0.8}},
+		{p, p.flux, draw.LineStyle{Color: inkPixels, Width: 0.6}},
 		{p, p.smooth, draw.LineStyle{Color: inkSmooth, Width: 0.9}},
 		{p, p.continuum, draw.LineStyle{Color: inkContinuum, Width: 1.4}},
 	} {
@@ -85,10 +92,34 @@ func (p *picture) draw(c draw.Canvas) {
 	names.makeRoom(pl)
 	pl.Add(names)
 	if !math.IsNaN(p.redshift) {
-		pl.Add(restAxis{1 + p.redshift})
+		pl.Add(restAxis{1 + p.redshift, p.waveTicks()})
+	}
+	if len(p.wave) == 0 {
+		pl.HideAxes()
+		pl.X.Label.Text, pl.Y.Label.Text = "", ""
+		pl.Draw(c)
+		c.FillText(labelStyle(14, color.Black), vg.Point{X: c.Min.X + 60, Y: c.Center().Y}, "no usable pixel: "+p.flags)
+		return
 	}
 	pl.Draw(draw.Crop(c, 6, -22, captionHeight, -8))
 	p.caption(c)
+}
+
+// height is where a flux stands on its axis, itself or its log10; what is too low for
+// the latter stands below the axis.
+func (p *picture) height(flux float64) float64 {
+	if p.logFlux {
+		return math.Log10(math.Max(flux, 0.1*p.low))
+	}
+	return flux
+}
+
+// waveTicks places the ticks of wavelength axes.
+func (p *picture) waveTicks() plot.Ticker {
+	if p.logWave {
+		return logTicks{12}
+	}
+	return evenTicks{9}
 }
 
 // pick returns the marks in emission or in absorption inside the plot.
@@ -113,8 +144,8 @@ func (p *picture) caption(c draw.Canvas) {
 		ink  color.Color
 		says string
 	}{
-		{inkPixels, "pixels"}, {inkSmooth, fmt.Sprintf("smoothed (Gaussian, sigma %g pixels)", smoothPixels)}, {inkContinuum, "continuum"},
-		{inkSigma, "1-sigma error"}, {inkEmission, "lines in emission, above"}, {inkAbsorption, "lines in absorption, below"},
+		{inkPixels, "pixels"}, {inkSmooth, fmt.Sprintf("smoothed, sigma %g pixels", smoothPixels)}, {inkContinuum, "continuum"},
+		{inkSigma, "1-sigma error"}, {inkEmission, "emission lines"}, {inkAbsorption, "absorption lines"},
 	} {
 		c.StrokeLine2(draw.LineStyle{Color: entry.ink, Width: 2.5}, x, y, x+18, y)
 		style := labelStyle(10, color.Black)
@@ -122,6 +153,26 @@ func (p *picture) caption(c draw.Canvas) {
 		c.FillText(style, vg.Point{X: x + 23, Y: y}, entry.says)
 		x += 23 + style.Width(entry.says) + 22
 	}
+	style := labelStyle(10, color.Gray{90})
+	style.XAlign, style.YAlign = draw.XRight, draw.YCenter
+	if flags := shortened(p.flags, func(s string) bool { return style.Width(s) < c.Max.X-8-x }); flags != "" {
+		c.FillText(style, vg.Point{X: c.Max.X - 8, Y: y}, flags)
+	}
+}
+
+// shortened leaves out the last entries of a list until it fits.
+func shortened(list string, fits func(string) bool) string {
+	parts := strings.Split(list, ", ")
+	for n := len(parts); n > 0; n-- {
+		short := strings.Join(parts[:n], ", ")
+		if n < len(parts) {
+			short += " ..."
+		}
+		if fits(short) {
+			return short
+		}
+	}
+	return ""
 }
 
 // trace is a curve that is interrupted where it is NaN and cut at the flux
@@ -136,7 +187,8 @@ type trace struct {
 func (t trace) Plot(c draw.Canvas, p *plot.Plot) {
 	toX, toY := p.Transforms(&c)
 	inside := c
-	inside.Min.Y, inside.Max.Y = toY(t.picture.low), toY(t.picture.high)
+	height := t.picture.height
+	inside.Min.Y, inside.Max.Y = toY(height(t.picture.low)), toY(height(t.picture.high))
 	var line []vg.Point
 	for i, x := range t.picture.wave {
 		if math.IsNaN(t.y[i]) {
@@ -144,17 +196,17 @@ func (t trace) Plot(c draw.Canvas, p *plot.Plot) {
 			line = nil
 			continue
 		}
-		line = append(line, vg.Point{X: toX(x), Y: toY(t.y[i])})
+		line = append(line, vg.Point{X: toX(x), Y: toY(height(t.y[i]))})
 	}
 	c.StrokeLines(t.style, inside.ClipLinesXY(line)...)
 }
 
 // zeroLine is a thin line at zero flux.
-type zeroLine struct{}
+type zeroLine struct{ picture *picture }
 
 // Plot implements plot.Plotter.
-func (zeroLine) Plot(c draw.Canvas, p *plot.Plot) {
-	if p.Y.Min > 0 || p.Y.Max < 0 {
+func (z zeroLine) Plot(c draw.Canvas, p *plot.Plot) {
+	if z.picture.logFlux || p.Y.Min > 0 || p.Y.Max < 0 {
 		return
 	}
 	_, toY := p.Transforms(&c)
@@ -217,7 +269,7 @@ func (l *lineNames) row(c draw.Canvas, p *plot.Plot, marks []pipeline.Mark, abov
 	leader := draw.LineStyle{Color: ink, Width: 0.6}
 	for i, x := range spread(wanted, labelGap, float64(c.Min.X)+labelGap/2, float64(c.Max.X)-labelGap/2) {
 		at, line := vg.Length(x), vg.Length(wanted[i])
-		from := toY(l.touch(marks[i].Wave, above)) + 5*direction
+		from := toY(l.picture.height(l.touch(marks[i].Wave, above))) + 5*direction
 		c.StrokeLines(leader, []vg.Point{{X: line, Y: from}, {X: line, Y: edge + 4*direction}, {X: at, Y: edge + (leaderLength-2)*direction}})
 		c.FillText(style, vg.Point{X: at, Y: edge + leaderLength*direction}, marks[i].Label)
 	}
@@ -245,7 +297,10 @@ func (l *lineNames) touch(wave float64, above bool) float64 {
 }
 
 // restAxis draws the rest-frame wavelengths along the upper edge.
-type restAxis struct{ factor float64 } // 1 + z
+type restAxis struct {
+	factor float64 // 1 + z
+	ticks  plot.Ticker
+}
 
 // Plot implements plot.Plotter.
 func (r restAxis) Plot(c draw.Canvas, p *plot.Plot) {
@@ -254,7 +309,7 @@ func (r restAxis) Plot(c draw.Canvas, p *plot.Plot) {
 	c.StrokeLine2(line, c.Min.X, c.Max.Y, c.Max.X, c.Max.Y)
 	style := labelStyle(10, color.Black)
 	style.XAlign, style.YAlign = draw.XCenter, draw.YBottom
-	for _, t := range (evenTicks{9}).Ticks(p.X.Min/r.factor, p.X.Max/r.factor) {
+	for _, t := range r.ticks.Ticks(p.X.Min/r.factor, p.X.Max/r.factor) {
 		x := toX(t.Value * r.factor)
 		c.StrokeLine2(line, x, c.Max.Y, x, c.Max.Y+tickLength)
 		c.FillText(style, vg.Point{X: x, Y: c.Max.Y + tickLength + 1}, t.Label)
@@ -282,6 +337,41 @@ func (e evenTicks) Ticks(low, high float64) []plot.Tick {
 	for i := math.Ceil(low / step); i*step <= high*(1+1e-12); i++ {
 		value := i*step + 0 // no minus before a zero
 		ticks = append(ticks, plot.Tick{Value: value, Label: fmt.Sprintf("%.*f", decimals, value)})
+	}
+	return ticks
+}
+
+// logTicks places at most n labeled ticks on a logarithmic axis: at as many round
+// multiples of the powers of ten as there is room for.
+type logTicks struct{ n int }
+
+// Ticks implements plot.Ticker.
+func (l logTicks) Ticks(low, high float64) []plot.Tick {
+	var ticks []plot.Tick
+	for _, multiples := range [][]float64{{1, 1.5, 2, 3, 4, 5, 6, 8}, {1, 2, 5}, {1, 3}, {1}} {
+		ticks = nil
+		for e := math.Floor(math.Log10(low)); e <= math.Log10(high); e++ {
+			for _, k := range multiples {
+				if v := k * math.Pow(10, e); v >= low && v <= high {
+					ticks = append(ticks, plot.Tick{Value: v, Label: fmt.Sprintf("%.6g", v)})
+				}
+			}
+		}
+		if len(ticks) <= l.n {
+			break
+		}
+	}
+	return ticks
+}
+
+// powers places logTicks on an axis of log10.
+type powers struct{ of logTicks }
+
+// Ticks implements plot.Ticker.
+func (p powers) Ticks(low, high float64) []plot.Tick {
+	ticks := p.of.Ticks(math.Pow(10, low), math.Pow(10, high))
+	for i := range ticks {
+		ticks[i].Value = math.Log10(ticks[i].Value)
 	}
 	return ticks
 }
