@@ -6,7 +6,8 @@
 // steps, lines with strengths chosen here), never from the templates that
 // measure redshifts, so that an answer is not found because it was put in.
 // Noise follows a night sky with airglow lines; pixels die, cosmic rays hit, the
-// flux calibration is off by a few percent. Every number comes from a seeded
+// flux calibration is off by a few percent. Lines stand off the redshift by as much as in
+// real objects (motion.go). Every number comes from a seeded
 // generator: the same seed gives the same bytes.
 //
 // Strengths, shapes and frequencies of occurrence are chosen by eye to look

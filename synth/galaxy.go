@@ -138,10 +138,12 @@ func emissionGalaxy(r *rand.Rand) func(c *canvas) {
 // pushed outward by a wind.
 func distantGalaxy(r *rand.Rand) func(c *canvas) {
 	slope := -2.1 + 0.8*r.Float64()
-	lya := r.NormFloat64()*18 + 8 // rest equivalent width, positive in emission
-	outflow := 80 + 180*r.Float64()
+	lya := r.NormFloat64()*18 + 8   // rest equivalent width, positive in emission
+	outflow := 80 + 180*r.Float64() // km/s, the typical one
 	metal := 0.6 + 0.8*r.Float64()
 	sight := newForest(r)
+	outflow += outflowMotion * r.NormFloat64()
+	lag := lymanAlphaMotion * r.NormFloat64() // of Lyman-alpha in emission
 	return func(c *canvas) {
 		c.fill(func(w float64) float64 {
 			f := math.Pow(w/1500, slope)
@@ -162,8 +164,8 @@ func distantGalaxy(r *rand.Rand) func(c *canvas) {
 		base := math.Pow(1216.0/1500, slope)
 		if lya > 0 {
 			c.absorb(1215.67, -outflow, 300, 2.5)
-			c.emit(1215.67, 250, 110, lya*0.7*base*(1+c.z))
-			c.emit(1215.67, 480, 180, lya*0.3*base*(1+c.z))
+			c.emit(1215.67, 250+lag, 110, lya*0.7*base*(1+c.z))
+			c.emit(1215.67, 480+lag, 180, lya*0.3*base*(1+c.z))
 		} else {
 			c.absorb(1215.67, -outflow/2, 500, 6-lya/2)
 		}

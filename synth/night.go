@@ -168,7 +168,9 @@ func (p *plate) fiber(arms []*arm, seed uint64, i int) (*exposure, Truth) {
 	s := drawSource(r)
 	t := s.truth()
 	t.ObjectID, t.Layout = e.id, p.layout
-	e.data, t.SNR = observe(r, arms, s.scene, e.velocity, s.snr)
+	// From a generator of its own, so that all else of the night stays as it is.
+	zero := calibrationMotion * rand.New(rand.NewPCG(seed, 1<<63|uint64(p.number)<<32|uint64(i))).NormFloat64()
+	e.data, t.SNR = observe(r, arms, s.scene, e.velocity+zero, s.snr)
 	return e, t
 }
 

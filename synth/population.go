@@ -13,8 +13,8 @@ type kind struct {
 	name, class string
 	share       float64 // of all fibers
 	snr, spread float64 // median and scatter (in ln) of the signal-to-noise ratio
-	// draw gives a redshift and what paints a source of this kind there; nil for
-	// blank sky.
+	// draw gives a redshift and what paints a source of this kind there, at the
+	// redshift that a canvas has; nil for blank sky.
 	draw func(r *rand.Rand) (z float64, paint func(c *canvas), dla *absorber)
 }
 
@@ -23,7 +23,13 @@ type kind struct {
 func starKind(name string, share, snr, cool, hot float64) kind {
 	return kind{name, catalog.Star, share, snr, 0.7, func(r *rand.Rand) (float64, func(c *canvas), *absorber) {
 		z := 80 * r.NormFloat64() / spectrum.SpeedOfLight
-		return z, star(r, cool+(hot-cool)*r.Float64()), nil
+		kelvin := cool + (hot-cool)*r.Float64()
+		paint := star(r, kelvin)
+		velocity := starMotion(kelvin) * r.NormFloat64()
+		return z, func(c *canvas) {
+			c.z = moved(c.z, velocity)
+			paint(c)
+		}, nil
 	}}
 }
 

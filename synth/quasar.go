@@ -49,6 +49,8 @@ func quasar(r *rand.Rand, z float64) (func(c *canvas), *absorber) {
 		low := math.Max(2.15, (1+z)*0.86-1)
 		dla = &absorber{z: low + (z-0.06-low)*r.Float64(), logNHI: 20.3 + 1.0*r.Float64()}
 	}
+	motion := newQuasarMotion(r)
+	sight.zone = zoneVelocity * math.Exp(zoneScatter*r.NormFloat64())
 	return func(c *canvas) {
 		c.fill(func(w float64) float64 {
 			f := math.Pow(w/3000, slope)
@@ -66,12 +68,13 @@ func quasar(r *rand.Rand, z float64) (func(c *canvas), *absorber) {
 			level := c.at(l.wave)
 			flux := l.ew * lines * scatter[i] * level * (1 + z)
 			// Two parts, so that the profile is more pointed than a Gaussian.
-			c.emit(l.wave, l.velocity, 0.6*width*l.width, 0.45*flux)
-			c.emit(l.wave, l.velocity*1.15, 1.5*width*l.width, 0.55*flux)
+			velocity := motion.of(l.wave)
+			c.emit(l.wave, velocity+l.velocity, 0.6*width*l.width, 0.45*flux)
+			c.emit(l.wave, velocity+l.velocity*1.15, 1.5*width*l.width, 0.55*flux)
 		}
 		for _, l := range []struct{ wave, share float64 }{{5008.24, 1}, {4960.30, 0.336}, {3728.5, 0.18}, {3869.86, 0.10},
 			{3426.86, 0.10}, {4364.44, 0.03}, {6585.28, 0.35}, {6549.86, 0.12}, {6718.29, 0.1}, {6732.67, 0.1}} {
-			c.emit(l.wave, 0, 170, narrow*l.share*c.at(5100)*(1+z))
+			c.emit(l.wave, motion.narrow, 170, narrow*l.share*c.at(5100)*(1+z))
 		}
 		sight.dim(c)
 		if dla != nil {
@@ -106,7 +109,17 @@ func (a *absorber) dim(c *canvas) {
 // forest is one line of sight through the intergalactic medium: the mean optical
 // depth of package hydrogen times a fluctuation that is lognormal with mean one
 // and correlated over some hundred km/s.
-type forest struct{ factor []float64 }
+type forest struct {
+	factor []float64
+	zone   float64 // velocity from the source, km/s, at which its own light halves the optical depth; 0 for none
+}
+
+// Quasars thin the gas around them (Bajtlik, Duncan & Ostriker 1988, ApJ 327, 570): by
+// 1/(1+(zone/v)^2). Size and scatter (in ln) of the zone: common practice, no source.
+const (
+	zoneVelocity = 1000.0
+	zoneScatter  = 0.6
+)
 
 // Grid of the fluctuation.
 const (
@@ -136,6 +149,11 @@ func (f *forest) dim(c *canvas) {
 		x := (math.Log10(w) - forestStart) / forestStep
 		k := min(max(int(x), 0), forestLen-2)
 		t := x - float64(k)
-		c.flux[i] *= math.Pow(hydrogen.Transmission(c.z, w), f.factor[k]*(1-t)+f.factor[k+1]*t)
+		depth := f.factor[k]*(1-t) + f.factor[k+1]*t
+		if f.zone > 0 {
+			q := f.zone / (spectrum.SpeedOfLight * math.Log(edge/w))
+			depth /= 1 + q*q
+		}
+		c.flux[i] *= math.Pow(hydrogen.Transmission(c.z, w), depth)
 	}
 }

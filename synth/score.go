@@ -18,6 +18,8 @@ type Tally struct {
 	Right       int
 	Secure      int // rows with verdict secure
 	SecureRight int // of these, right ones
+	// Pull is the rms of redshift less truth over the error, of SecureRight; NaN for none.
+	Pull float64
 	ClassRight  int // rows whose class is that of the truth; 0 for Sky and Broken
 }
 
@@ -81,6 +83,10 @@ func Score(truth []Truth, objects []catalog.Object) Result {
 			res.Misses = append(res.Misses, Miss{t, o})
 		}
 	}
+	for i := range res.Classes {
+		res.Classes[i].finish()
+	}
+	res.Total.finish()
 	res.Missing = len(index)
 	return res
 }
@@ -97,9 +103,13 @@ func (n *Tally) count(t Truth, o catalog.Object, right bool) {
 		n.Secure++
 		if right {
 			n.SecureRight++
+			pull := (o.Redshift - t.Redshift) / o.RedshiftErr
+			n.Pull += pull * pull // the sum until finish
 		}
 	}
 }
+
+func (n *Tally) finish() { n.Pull = math.Sqrt(n.Pull / float64(n.SecureRight)) }
 
 // IsRight reports whether a row answers its truth, by the rule of Tally.Right.
 func IsRight(t Truth, o catalog.Object) bool {

@@ -22,7 +22,7 @@ type demoCmd struct {
 
 // Help teaches by example.
 func (demoCmd) Help() string {
-	return `Writes one night of the invented Lantern Ridge survey in six file layouts, with faint objects, blank sky and broken files as in a real night, processes it with the defaults, and compares the catalog with the truth. The spectra are painted with models of their own, not with the templates that measure them.
+	return `Writes one night of the invented Lantern Ridge survey in six file layouts, with faint objects, blank sky and broken files as in a real night, processes it with the defaults, and compares the catalog with the truth. The spectra are painted with models of their own, not with the templates that measure them, and their lines stand off the redshift by as much as those of real stars, galaxies and quasars.
 
 Examples:
   duskline demo                  in a temporary folder
@@ -103,9 +103,9 @@ func readCatalog(path string) ([]catalog.Object, error) {
 // writeScore prints the answers against the truth.
 func writeScore(w io.Writer, res synth.Result) {
 	fmt.Fprintf(w, "\nAgainst the truth:\n\n")
-	fmt.Fprintf(w, "%-10s%11s%11s%11s%11s%11s\n", "truth", "spectra", "right", "secure", "and right", "class")
+	fmt.Fprintf(w, "%-10s%11s%11s%11s%11s%11s%11s\n", "truth", "spectra", "right", "secure", "and right", "class", "pull")
 	line := func(n synth.Tally) {
-		fmt.Fprintf(w, "%-10s%11d%11d%11d%11d%11d\n", n.Class, n.Objects, n.Right, n.Secure, n.SecureRight, n.ClassRight)
+		fmt.Fprintf(w, "%-10s%11d%11d%11d%11d%11d%11s\n", n.Class, n.Objects, n.Right, n.Secure, n.SecureRight, n.ClassRight, number(n.Pull, 2))
 	}
 	for _, n := range res.Classes {
 		line(n)
@@ -113,7 +113,8 @@ func writeScore(w io.Writer, res synth.Result) {
 	res.Total.Class = "all"
 	line(res.Total)
 	fmt.Fprintf(w, "\nright: redshift within 1,000 km/s of the truth, quasars 3,000; for sky and broken files: not secure\n"+
-		"and right: of the secure ones; class: told right\n")
+		"and right: of the secure ones; class: told right\n"+
+		"pull: rms of (redshift - truth) / error of those secure and right; 1 where errors are what they say\n")
 	for _, m := range res.Misses {
 		fmt.Fprintf(w, "Secure and wrong: %s row %d, %s at %.4f, found %s at %.4f.\n", m.Truth.File, m.Truth.Row, m.Truth.Kind,
 			m.Truth.Redshift, m.Object.Class, m.Object.Redshift)
