@@ -21,31 +21,32 @@ const module = "duskline"
 // also import what makes their inputs, see testEdges. Anything else fails:
 // reading knows nothing of statistics, statistics knows nothing of files.
 var edges = map[string][]string{
-	"spectrum":         {},
-	"hydrogen":         {},
-	"configs":          {},
-	"cluster":          {"internal/shards"},
-	"manifest":         {"internal/spill"},
-	"internal/fitsout": {},
-	"internal/outside": {},
-	"internal/shards":  {},
-	"internal/spill":   {},
-	"linelist":         {"hydrogen"},
-	"fitsread":         {"spectrum"},
-	"continuum":        {"spectrum"},
-	"redshift":         {"spectrum", "hydrogen", "linelist", "continuum"},
-	"lines":            {"spectrum", "hydrogen", "linelist"},
-	"absorbers":        {"spectrum", "hydrogen", "linelist"},
-	"catalog":          {"internal/fitsout", "internal/spill"},
-	"synth":            {"spectrum", "hydrogen", "linelist", "catalog", "internal/fitsout"},
+	"spectrum":             {},
+	"hydrogen":             {},
+	"configs":              {},
+	"cluster":              {"internal/shards"},
+	"manifest":             {"internal/spill"},
+	"internal/checkvalues": {},
+	"internal/fitsout":     {},
+	"internal/outside":     {},
+	"internal/shards":      {},
+	"internal/spill":       {},
+	"linelist":             {"hydrogen"},
+	"fitsread":             {"spectrum"},
+	"continuum":            {"spectrum"},
+	"redshift":             {"spectrum", "hydrogen", "linelist", "continuum"},
+	"lines":                {"spectrum", "hydrogen", "linelist"},
+	"absorbers":            {"spectrum", "hydrogen", "linelist"},
+	"catalog":              {"internal/fitsout", "internal/spill"},
+	"synth":                {"spectrum", "hydrogen", "linelist", "catalog", "internal/fitsout"},
 	"pipeline": {"spectrum", "hydrogen", "linelist", "configs", "fitsread", "continuum", "redshift", "lines", "absorbers",
 		"catalog", "synth", "internal/fitsout", "internal/shards", "internal/spill", "manifest"},
 	"cmd/duskline": {"pipeline", "cluster", "internal/shards", "catalog", "synth", "configs", "fitsread", "spectrum"},
 }
 
 // testEdges is what the tests of any package may import on top: makers of
-// inputs, what finds programs and data outside, and the embedded configuration. None of these may import it back.
-var testEdges = []string{"configs", "internal/fitsout", "internal/outside", "synth", "linelist", "hydrogen", "spectrum"}
+// inputs, what reads published values, finds programs and data outside, and the embedded configuration. None of these may import it back.
+var testEdges = []string{"configs", "internal/checkvalues", "internal/fitsout", "internal/outside", "synth", "linelist", "hydrogen", "spectrum"}
 
 func TestImportDirections(t *testing.T) {
 	seen := map[string]bool{}

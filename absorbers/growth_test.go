@@ -1,13 +1,11 @@
 package absorbers
 
 import (
-	"encoding/csv"
 	"math"
-	"os"
-	"strconv"
 	"testing"
 
 	"duskline/hydrogen"
+	"duskline/internal/checkvalues"
 )
 
 var lya = hydrogen.AbsorptionLine{Wave: 1215.6701, F: 0.4164, Gamma: 6.265e8}
@@ -17,27 +15,11 @@ var lya = hydrogen.AbsorptionLine{Wave: 1215.6701, F: 0.4164, Gamma: 6.265e8}
 // digits and the 2e-6 of EquivalentWidth are magnified by 1/slope, on the flat
 // part up to twenty times.
 func TestColumnOf(t *testing.T) {
-	f, err := os.Open("../testdata/cog_ew.csv")
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer f.Close()
-	r := csv.NewReader(f)
-	r.Comment = '#'
-	rows, err := r.ReadAll()
-	if err != nil {
-		t.Fatal(err)
-	}
+	rows := checkvalues.Rows(t, "../testdata/cog_ew.csv")
 	if len(rows) < 100 {
 		t.Fatalf("%d rows", len(rows))
 	}
-	num := func(s string) float64 {
-		v, err := strconv.ParseFloat(s, 64)
-		if err != nil {
-			t.Fatal(err)
-		}
-		return v
-	}
+	num := func(s string) float64 { return checkvalues.Number(t, s) }
 	flat := 0
 	for _, row := range rows[1:] {
 		line := hydrogen.AbsorptionLine{Wave: num(row[1]), F: num(row[2]), Gamma: num(row[3])}

@@ -1,14 +1,12 @@
 package fitsread
 
 import (
-	"encoding/csv"
 	"fmt"
 	"math"
-	"os"
-	"strconv"
 	"strings"
 	"testing"
 
+	"duskline/internal/checkvalues"
 	"duskline/spectrum"
 )
 
@@ -17,26 +15,11 @@ import (
 // recovered from the wavelength by the definitions of FITS Paper III, table 1.
 // 1e-9 relative: the task's own figure; the file prints 13 digits.
 func TestAxisCodes(t *testing.T) {
-	text, err := os.ReadFile("testdata/fits_spectral_axis.csv")
-	if err != nil {
-		t.Fatal(err)
-	}
-	r := csv.NewReader(strings.NewReader(string(text)))
-	r.Comment = '#'
-	rows, err := r.ReadAll()
-	if err != nil {
-		t.Fatal(err)
-	}
+	rows := checkvalues.Rows(t, "testdata/fits_spectral_axis.csv")
 	const restFrequency = 1420405751.786 // Hz, of the Paper III example (section 10.1)
 	tested := 0
 	for _, row := range rows[1:] {
-		num := func(i int) float64 {
-			v, err := strconv.ParseFloat(row[i], 64)
-			if err != nil {
-				t.Fatal(err)
-			}
-			return v
-		}
+		num := func(i int) float64 { return checkvalues.Number(t, row[i]) }
 		if strings.HasPrefix(row[0], "wcslib") {
 			near(t, row[0]+" "+row[2], standardVacuumToAir(num(2)), num(7), 1e-10)
 			tested++

@@ -1,13 +1,12 @@
 package fitsread
 
 import (
-	"encoding/csv"
-	"os"
 	"os/exec"
 	"path/filepath"
 	"strings"
 	"testing"
 
+	"duskline/internal/checkvalues"
 	"duskline/internal/outside"
 	"duskline/spectrum"
 )
@@ -27,25 +26,12 @@ func moduleDir(t testing.TB, module string) string {
 // nothing of velocity frames: a frame is that of a card, or flagged.
 func TestRealSpectra(t *testing.T) {
 	dir := outside.Spectra(t)
-	fh, err := os.Open(filepath.Join(dir, "truth.csv"))
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer fh.Close()
-	rows, err := csv.NewReader(fh).ReadAll()
-	if err != nil {
-		t.Fatal(err)
-	}
-	medium := -1
-	for i, name := range rows[0] {
-		if name == "wavelengths" {
-			medium = i
-		}
-	}
+	table := checkvalues.Read(t, filepath.Join(dir, "truth.csv"), 258)
 	files, spectra := 0, 0
 	mediumStated, frameStated := 0, 0
-	for _, row := range rows[1:] {
-		f, err := Open(filepath.Join(dir, row[0]), Options{})
+	for i := range table.Len() {
+		name, medium := table.Text(i, "file"), table.Text(i, "wavelengths")
+		f, err := Open(filepath.Join(dir, name), Options{})
 		if err != nil {
 			t.Errorf("%v", err)
 			continue
@@ -59,10 +45,10 @@ func TestRealSpectra(t *testing.T) {
 			}
 			checkContract(t, s)
 			spectra++
-			stated := strings.HasPrefix(row[medium], s.Medium.String())
-			presumed := row[medium] == "" || strings.Contains(row[medium], "presumed")
+			stated := strings.HasPrefix(medium, s.Medium.String())
+			presumed := medium == "" || strings.Contains(medium, "presumed")
 			if !stated && !presumed && !s.Has(spectrum.MediumAssumed) {
-				t.Errorf("%s: %s, not assumed; published: %s", row[0], s.Medium, row[medium])
+				t.Errorf("%s: %s, not assumed; published: %s", name, s.Medium, medium)
 			}
 			if !s.Has(spectrum.MediumAssumed) {
 				mediumStated++
@@ -72,7 +58,7 @@ func TestRealSpectra(t *testing.T) {
 			}
 			frameStated++
 			if why := f.plan.groups[0].obs.frameWhy; !strings.HasPrefix(why, "card ") && !strings.HasPrefix(why, "SPECSYS") {
-				t.Errorf("%s: %s without doubt, and no card says so: %s", row[0], s.Frame, why)
+				t.Errorf("%s: %s without doubt, and no card says so: %s", name, s.Frame, why)
 			}
 		}
 		f.Close()

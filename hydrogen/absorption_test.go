@@ -18,9 +18,9 @@ func TestOpticalDepthConstants(t *testing.T) {
 
 func TestEquivalentWidths(t *testing.T) {
 	c := readTable(t, "../../testdata/cog_ew.csv", 180)
-	for i := range c.rows {
-		line := AbsorptionLine{Wave: c.number(i, "lambda0_A"), F: c.number(i, "f"), Gamma: c.number(i, "gamma_s-1")}
-		b, logN := c.number(i, "b_km_s"), c.number(i, "logN_cm-2")
+	for i := range c.Len() {
+		line := AbsorptionLine{Wave: c.Number(i, "lambda0_A"), F: c.Number(i, "f"), Gamma: c.Number(i, "gamma_s-1")}
+		b, logN := c.Number(i, "b_km_s"), c.Number(i, "logN_cm-2")
 		column := math.Pow(10, logN)
 		// The table prints nine to eleven digits; Voigt is good to 1e-6.
 		for _, q := range []struct {
@@ -32,8 +32,8 @@ func TestEquivalentWidths(t *testing.T) {
 			{"W", "W_A_dimensionless_u(symmetric)", line.EquivalentWidth(column, b), 1e-6},
 			{"W within 10 %", "W_A_within_pm0.1lam0", line.EquivalentWidthWithin(column, b, 0.1), 1e-6},
 		} {
-			if d := relative(q.got, c.number(i, q.column)); !(d < q.tol) {
-				t.Errorf("%s b=%g logN=%g: %s = %.9g, off by %.1e", c.text(i, "line"), b, logN, q.what, q.got, d)
+			if d := relative(q.got, c.Number(i, q.column)); !(d < q.tol) {
+				t.Errorf("%s b=%g logN=%g: %s = %.9g, off by %.1e", c.Text(i, "line"), b, logN, q.what, q.got, d)
 			}
 		}
 	}

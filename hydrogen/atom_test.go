@@ -27,13 +27,13 @@ func TestWavelengths(t *testing.T) {
 	// 1e-4 A asked for; the table prints 1e-5.
 	const tol = 1.5e-5
 	c := readTable(t, "hydrogen_wavelengths.csv", 24)
-	for i := range c.rows {
-		x, err := NewTransition(c.integer(i, "n_lo"), c.integer(i, "n_up"))
+	for i := range c.Len() {
+		x, err := NewTransition(int(c.Number(i, "n_lo")), int(c.Number(i, "n_up")))
 		if err != nil {
 			t.Fatal(err)
 		}
-		within(t, c.text(i, "line")+" centroid", x.Wave, c.number(i, "vac_gf_centroid_A"), tol)
-		within(t, c.text(i, "line")+" strongest", x.WaveStrongest, c.number(i, "vac_strongest_component_A"), tol)
+		within(t, c.Text(i, "line")+" centroid", x.Wave, c.Number(i, "vac_gf_centroid_A"), tol)
+		within(t, c.Text(i, "line")+" strongest", x.WaveStrongest, c.Number(i, "vac_strongest_component_A"), tol)
 	}
 }
 
@@ -90,21 +90,21 @@ func TestEnergiesPeopleKnow(t *testing.T) {
 
 func TestOscillatorStrengths(t *testing.T) {
 	c := readTable(t, "hydrogen_f.csv", 77)
-	for i := range c.rows {
-		n, m := c.integer(i, "n_lo"), c.integer(i, "n_up")
+	for i := range c.Len() {
+		n, m := int(c.Number(i, "n_lo")), int(c.Number(i, "n_up"))
 		x, err := NewTransition(n, m)
 		if err != nil {
 			t.Fatal(err)
 		}
 		// The table prints 13 digits.
-		if d := relative(x.FInfinite, c.number(i, "f_inf_mass")); !(d < 2e-12) {
+		if d := relative(x.FInfinite, c.Number(i, "f_inf_mass")); !(d < 2e-12) {
 			t.Errorf("f(%d,%d) = %.13g, off by %.1e", n, m, x.FInfinite, d)
 		}
-		if d := relative(x.F, c.number(i, "f_H_reduced_mass(x(1+me/mp))")); !(d < 2e-12) {
+		if d := relative(x.F, c.Number(i, "f_H_reduced_mass(x(1+me/mp))")); !(d < 2e-12) {
 			t.Errorf("f_H(%d,%d) = %.13g, off by %.1e", n, m, x.F, d)
 		}
 		// Nine digits printed; constants of CODATA 2018 there, 2022 here.
-		if d := relative(x.A, c.number(i, "A_ul_H_s-1")); !(d < 1e-8) {
+		if d := relative(x.A, c.Number(i, "A_ul_H_s-1")); !(d < 1e-8) {
 			t.Errorf("A(%d,%d) = %.9g, off by %.1e", m, n, x.A, d)
 		}
 	}
@@ -118,13 +118,13 @@ func TestOscillatorStrengths(t *testing.T) {
 
 func TestOscillatorStrengthsOfSublevels(t *testing.T) {
 	c := readTable(t, "hydrogen_f_nl.csv", 153)
-	for i := range c.rows {
-		n, l, m, k := c.integer(i, "n_lo"), c.integer(i, "l_lo"), c.integer(i, "n_up"), c.integer(i, "l_up")
+	for i := range c.Len() {
+		n, l, m, k := int(c.Number(i, "n_lo")), int(c.Number(i, "l_lo")), int(c.Number(i, "n_up")), int(c.Number(i, "l_up"))
 		f, err := OscillatorStrength(n, l, m, k)
 		if err != nil {
 			t.Fatal(err)
 		}
-		if d := relative(f, c.number(i, "f_inf_mass")); !(d < 2e-12) { // 13 digits printed
+		if d := relative(f, c.Number(i, "f_inf_mass")); !(d < 2e-12) { // 13 digits printed
 			t.Errorf("f(%d,%d-%d,%d) = %.13g, off by %.1e", n, l, m, k, f, d)
 		}
 	}
@@ -178,8 +178,8 @@ func TestAllOscillatorStrengthsAgainstClosedForm(t *testing.T) {
 
 func TestDampingConstants(t *testing.T) {
 	c := readTable(t, "hydrogen_gamma.csv", 11)
-	for i := range c.rows {
-		n := c.integer(i, "n")
+	for i := range c.Len() {
+		n := int(c.Number(i, "n"))
 		for l, column := range []string{"gamma_ns", "gamma_np", "gamma_nd"} {
 			if l >= n {
 				continue
@@ -188,7 +188,7 @@ func TestDampingConstants(t *testing.T) {
 			if err != nil {
 				t.Fatal(err)
 			}
-			if d := relative(got, c.number(i, column)); !(d < 1e-6) { // seven digits printed
+			if d := relative(got, c.Number(i, column)); !(d < 1e-6) { // seven digits printed
 				t.Errorf("decay rate of n=%d l=%d: %.7g, off by %.1e", n, l, got, d)
 			}
 		}
@@ -196,7 +196,7 @@ func TestDampingConstants(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		if d := relative(lyman.Gamma, c.number(i, "gamma_np")); !(d < 1e-6) {
+		if d := relative(lyman.Gamma, c.Number(i, "gamma_np")); !(d < 1e-6) {
 			t.Errorf("Lyman 1-%d: gamma %.7g, off by %.1e", n, lyman.Gamma, d)
 		}
 	}

@@ -13,16 +13,16 @@ func TestCaseBAtNodes(t *testing.T) {
 	c := readTable(t, "caseB.csv", 42)
 	upper := map[string]int{"Ha/Hb": 3, "Hg/Hb": 5, "Hd/Hb": 6, "H10/Hb": 10, "H15/Hb": 15, "H20/Hb": 20}
 	nodes := 0
-	for i := range c.rows {
-		n, ok := upper[c.text(i, "ratio")]
+	for i := range c.Len() {
+		n, ok := upper[c.Text(i, "ratio")]
 		if !ok {
 			continue
 		}
 		nodes++
-		got := CaseB(c.number(i, "T_K"), c.number(i, "ne_cm-3"), n)
-		want := c.number(i, "value")
+		got := CaseB(c.Number(i, "T_K"), c.Number(i, "ne_cm-3"), n)
+		want := c.Number(i, "value")
 		if !(relative(got, want) < 1e-14) { // exp of a logarithm
-			t.Errorf("CaseB(%s, %s, %d) = %.16g, want %g", c.text(i, "T_K"), c.text(i, "ne_cm-3"), n, got, want)
+			t.Errorf("CaseB(%s, %s, %d) = %.16g, want %g", c.Text(i, "T_K"), c.Text(i, "ne_cm-3"), n, got, want)
 		}
 	}
 	if nodes != 31 {
@@ -35,16 +35,16 @@ func TestCaseBBetweenNodes(t *testing.T) {
 	// Other published values at 10^4 K and low density, not used in the
 	// interpolation: H7, H8, H9 (the last two from memory, three digits).
 	upper := map[string]int{"He(H7)/Hb": 7, "H8/Hb": 8, "H9/Hb": 9}
-	for i := range c.rows {
-		if n, ok := upper[c.text(i, "ratio")]; ok {
-			delete(upper, c.text(i, "ratio"))
-			if d := relative(CaseB(1e4, 1e2, n), c.number(i, "value")); !(d < 2e-3) {
-				t.Errorf("H%d = %g, want %s", n, CaseB(1e4, 1e2, n), c.text(i, "value"))
+	for i := range c.Len() {
+		if n, ok := upper[c.Text(i, "ratio")]; ok {
+			delete(upper, c.Text(i, "ratio"))
+			if d := relative(CaseB(1e4, 1e2, n), c.Number(i, "value")); !(d < 2e-3) {
+				t.Errorf("H%d = %g, want %s", n, CaseB(1e4, 1e2, n), c.Text(i, "value"))
 			}
 		}
-		if c.text(i, "ratio") == "Lya/Hb" {
-			if v, err := strconv.ParseFloat(strings.TrimSpace(c.text(i, "value")), 64); err != nil || v != LymanAlphaOverHbeta {
-				t.Errorf("Lyman alpha over H beta = %g, want %s", LymanAlphaOverHbeta, c.text(i, "value"))
+		if c.Text(i, "ratio") == "Lya/Hb" {
+			if v, err := strconv.ParseFloat(strings.TrimSpace(c.Text(i, "value")), 64); err != nil || v != LymanAlphaOverHbeta {
+				t.Errorf("Lyman alpha over H beta = %g, want %s", LymanAlphaOverHbeta, c.Text(i, "value"))
 			}
 			upper["seen Lya"] = 2
 		}

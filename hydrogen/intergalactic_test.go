@@ -9,12 +9,12 @@ import (
 
 func TestForestCoefficients(t *testing.T) {
 	c := readTable(t, "inoue2014_table2.csv", 39)
-	if len(c.rows) != len(forestLines) {
-		t.Fatalf("%d lines, the paper has %d", len(forestLines), len(c.rows))
+	if c.Len() != len(forestLines) {
+		t.Fatalf("%d lines, the paper has %d", len(forestLines), c.Len())
 	}
-	for i := range c.rows {
-		want := forestLine{c.number(i, "lambda_A"), c.number(i, "A_LAF1"), c.number(i, "A_LAF2"),
-			c.number(i, "A_LAF3"), c.number(i, "A_DLA1"), c.number(i, "A_DLA2")}
+	for i := range c.Len() {
+		want := forestLine{c.Number(i, "lambda_A"), c.Number(i, "A_LAF1"), c.Number(i, "A_LAF2"),
+			c.Number(i, "A_LAF3"), c.Number(i, "A_DLA1"), c.Number(i, "A_DLA2")}
 		l := forestLines[i]
 		if l != want {
 			t.Errorf("upper level %d: %+v, want %+v", i+2, l, want)
@@ -41,14 +41,14 @@ func TestForestCoefficients(t *testing.T) {
 func TestTransmissionAgainstTable(t *testing.T) {
 	c := readTable(t, "igm_transmission.csv", 99)
 	madau := 0
-	for i := range c.rows {
-		z, wave := c.number(i, "z"), c.number(i, "lambda_obs_A")
+	for i := range c.Len() {
+		z, wave := c.Number(i, "z"), c.Number(i, "lambda_obs_A")
 		// Seven digits printed; wavelengths to 1e-3 A.
-		within(t, "Inoue", Transmission(z, wave), c.number(i, "Inoue14_T(lambda_L=911.8)"), 2e-6)
+		within(t, "Inoue", Transmission(z, wave), c.Number(i, "Inoue14_T(lambda_L=911.8)"), 2e-6)
 		// Below the Lyman alpha of redshift zero the table goes on counting
 		// absorbers at negative redshift, which are not there.
 		if wave > 1215.67 {
-			within(t, "Madau", MadauTransmission(z, wave), c.number(i, "Madau95_T"), 2e-6)
+			within(t, "Madau", MadauTransmission(z, wave), c.Number(i, "Madau95_T"), 2e-6)
 			madau++
 		}
 	}

@@ -19,9 +19,9 @@ import (
 func TestVoigtAgainstTable(t *testing.T) {
 	c := readTable(t, "voigt_wofz.csv", 532)
 	var worstRe, worstIm, worstFast float64
-	for i := range c.rows {
-		a, u := c.number(i, "a_im_z"), c.number(i, "u_re_z")
-		h, l := c.number(i, "H_re_w_30dig"), c.number(i, "L_im_w_30dig")
+	for i := range c.Len() {
+		a, u := c.Number(i, "a_im_z"), c.Number(i, "u_re_z")
+		h, l := c.Number(i, "H_re_w_30dig"), c.Number(i, "L_im_w_30dig")
 		w := Faddeeva(complex(u, a))
 		worstRe = math.Max(worstRe, relative(real(w), h))
 		worstIm = math.Max(worstIm, relative(imag(w), l))

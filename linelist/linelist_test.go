@@ -1,16 +1,14 @@
 package linelist_test
 
 import (
-	"encoding/csv"
 	"math"
-	"os"
 	"slices"
-	"strconv"
 	"strings"
 	"testing"
 
 	"duskline/configs"
 	"duskline/hydrogen"
+	"duskline/internal/checkvalues"
 	"duskline/linelist"
 )
 
@@ -80,27 +78,9 @@ type published struct {
 // vac_A_source name the sources.
 func readWavelengths(t *testing.T) []*published {
 	t.Helper()
-	f, err := os.Open("testdata/wavelengths.csv")
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer f.Close()
-	r := csv.NewReader(f)
-	r.Comment = '#'
-	records, err := r.ReadAll()
-	if err != nil {
-		t.Fatal(err)
-	}
 	var rows []*published
-	for _, rec := range records[1:] {
-		p := &published{ion: rec[0], label: rec[1]}
-		if p.wave, err = strconv.ParseFloat(rec[2], 64); err != nil {
-			t.Fatal(err)
-		}
-		if p.memory, err = strconv.ParseFloat(rec[3], 64); err != nil {
-			t.Fatal(err)
-		}
-		rows = append(rows, p)
+	for _, rec := range checkvalues.Rows(t, "testdata/wavelengths.csv")[1:] {
+		rows = append(rows, &published{ion: rec[0], label: rec[1], wave: checkvalues.Number(t, rec[2]), memory: checkvalues.Number(t, rec[3])})
 	}
 	return rows
 }

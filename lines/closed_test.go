@@ -1,14 +1,12 @@
 package lines
 
 import (
-	"encoding/csv"
 	"math"
-	"os"
-	"strconv"
 	"strings"
 	"testing"
 
 	"duskline/hydrogen"
+	"duskline/internal/checkvalues"
 )
 
 // near fails the test when got is not within tol of want.
@@ -86,41 +84,14 @@ func TestIntrinsicWidthTwoArms(t *testing.T) {
 	}
 }
 
-// readCSV returns the rows below the header of a file in testdata, without
-// comment lines.
-func readCSV(t *testing.T, name string) [][]string {
-	t.Helper()
-	f, err := os.Open("testdata/" + name)
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer f.Close()
-	r := csv.NewReader(f)
-	r.Comment = '#'
-	rows, err := r.ReadAll()
-	if err != nil {
-		t.Fatal(err)
-	}
-	return rows
-}
-
-func number(t *testing.T, s string) float64 {
-	t.Helper()
-	v, err := strconv.ParseFloat(s, 64)
-	if err != nil {
-		t.Fatal(err)
-	}
-	return v
-}
-
 // The sum over a wide window of a Voigt line must return the equivalent width
 // of the curve of growth. Source: testdata/cog_ew.csv, column of the profile in
 // frequency within 10 % of the center.
 func TestVoigtSum(t *testing.T) {
-	rows := readCSV(t, "cog_ew.csv")
+	rows := checkvalues.Rows(t, "testdata/cog_ew.csv")
 	for _, row := range rows[1:] {
-		lam0, f, gamma, b, logN := number(t, row[1]), number(t, row[2]), number(t, row[3]), number(t, row[4]), number(t, row[5])
-		want := number(t, row[9])
+		lam0, f, gamma, b, logN := checkvalues.Number(t, row[1]), checkvalues.Number(t, row[2]), checkvalues.Number(t, row[3]), checkvalues.Number(t, row[4]), checkvalues.Number(t, row[5])
+		want := checkvalues.Number(t, row[9])
 		damp := gamma * lam0 * 1e-13 / (4 * math.Pi * b)
 		tau0 := 1.49736415e-15 * math.Pow(10, logN) * f * lam0 / b
 		// Steps of b/10; the profile is smooth, so sampling at pixel centers
@@ -145,9 +116,9 @@ func TestVoigtSum(t *testing.T) {
 // of window and sidebands are counted.
 func TestVega(t *testing.T) {
 	var a Arm
-	for _, row := range readCSV(t, "vega_calspec_excerpt.csv") {
-		a.Wave = append(a.Wave, number(t, row[0]))
-		a.Flux = append(a.Flux, number(t, row[1]))
+	for _, row := range checkvalues.Rows(t, "testdata/vega_calspec_excerpt.csv") {
+		a.Wave = append(a.Wave, checkvalues.Number(t, row[0]))
+		a.Flux = append(a.Flux, checkvalues.Number(t, row[1]))
 		a.Ivar = append(a.Ivar, 1e24)
 	}
 	a.Cont = make([]float64, len(a.Wave))
@@ -155,7 +126,7 @@ func TestVega(t *testing.T) {
 		lo, hi, _ := strings.Cut(band, "-")
 		n := 0.0
 		for i, w := range a.Wave {
-			if w >= number(t, lo) && w <= number(t, hi) {
+			if w >= checkvalues.Number(t, lo) && w <= checkvalues.Number(t, hi) {
 				wave += w
 				flux += a.Flux[i]
 				n++
@@ -163,13 +134,13 @@ func TestVega(t *testing.T) {
 		}
 		return wave / n, flux / n
 	}
-	for _, row := range readCSV(t, "vega_ew.csv")[1:] {
+	for _, row := range checkvalues.Rows(t, "testdata/vega_ew.csv")[1:] {
 		w1, f1 := side(row[3])
 		w2, f2 := side(row[4])
 		for i, w := range a.Wave {
 			a.Cont[i] = f1 + (f2-f1)*(w-w1)/(w2-w1)
 		}
-		mid, half, want := number(t, row[1]), number(t, row[2]), number(t, row[6])
+		mid, half, want := checkvalues.Number(t, row[1]), checkvalues.Number(t, row[2]), checkvalues.Number(t, row[6])
 		got, _, _ := Sum(&a, mid-half, mid+half, 0)
 		near(t, row[0]+" +-"+row[2], got, want, 0.005*want)
 	}

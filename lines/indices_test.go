@@ -8,20 +8,21 @@ import (
 	"testing"
 
 	"duskline/configs"
+	"duskline/internal/checkvalues"
 )
 
 // Vega between the bands of testdata/vega_ew.csv; 0.5 % covers how pixels at the
 // ends are counted.
 func TestIndexVega(t *testing.T) {
 	var a Arm
-	for _, row := range readCSV(t, "vega_calspec_excerpt.csv") {
-		a.Wave = append(a.Wave, number(t, row[0]))
-		a.Flux = append(a.Flux, number(t, row[1]))
+	for _, row := range checkvalues.Rows(t, "testdata/vega_calspec_excerpt.csv") {
+		a.Wave = append(a.Wave, checkvalues.Number(t, row[0]))
+		a.Flux = append(a.Flux, checkvalues.Number(t, row[1]))
 		a.Ivar = append(a.Ivar, 1e24)
 	}
 	a.Cont = make([]float64, len(a.Wave))
-	for _, row := range readCSV(t, "vega_ew.csv")[1:] {
-		mid, half, want := number(t, row[1]), number(t, row[2]), number(t, row[6])
+	for _, row := range checkvalues.Rows(t, "testdata/vega_ew.csv")[1:] {
+		mid, half, want := checkvalues.Number(t, row[1]), checkvalues.Number(t, row[2]), checkvalues.Number(t, row[6])
 		b1, b2, _ := strings.Cut(row[3], "-")
 		r1, r2, _ := strings.Cut(row[4], "-")
 		list, err := ParseIndices([]byte(fmt.Sprintf("[[index]]\nname = %q\nmedium = \"vacuum\"\nunit = \"angstrom\"\nband = [%g, %g]\nblue = [%s, %s]\nred = [%s, %s]\nsource = \"test\"\n",

@@ -1,9 +1,7 @@
 package pipeline_test
 
 import (
-	"encoding/csv"
 	"math"
-	"os"
 	"path/filepath"
 	"strconv"
 	"strings"
@@ -15,6 +13,7 @@ import (
 	"duskline/configs"
 	"duskline/fitsread"
 	"duskline/hydrogen"
+	"duskline/internal/checkvalues"
 	"duskline/internal/outside"
 	"duskline/linelist"
 	"duskline/spectrum"
@@ -53,22 +52,6 @@ func absorberFinder(t *testing.T) *absorbers.Finder {
 		t.Fatal(err)
 	}
 	return absorbers.NewFinder(list)
-}
-
-func readTableCSV(t *testing.T, path string) [][]string {
-	t.Helper()
-	f, err := os.Open(path)
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer f.Close()
-	r := csv.NewReader(f)
-	r.Comment, r.FieldsPerRecord, r.LazyQuotes = '#', -1, true
-	rows, err := r.ReadAll()
-	if err != nil {
-		t.Fatal(err)
-	}
-	return rows
 }
 
 func cell(row []string, i int) float64 {
@@ -166,7 +149,7 @@ func TestPublishedMgII(t *testing.T) {
 		zs[p.file] = p.z
 	}
 	found := 0
-	for _, row := range readTableCSV(t, filepath.Join(dir, "mgii_absorbers.csv"))[1:] {
+	for _, row := range checkvalues.Rows(t, filepath.Join(dir, "mgii_absorbers.csv"))[1:] {
 		z, w, err := cell(row, 1), cell(row, 2), cell(row, 3)
 		arms := sightlineArms(t, filepath.Join(dir, row[0]))
 		here := false

@@ -10,6 +10,7 @@ import (
 
 	"duskline/absorbers"
 	"duskline/configs"
+	"duskline/internal/checkvalues"
 	"duskline/internal/outside"
 	"duskline/linelist"
 	"duskline/spectrum"
@@ -24,7 +25,7 @@ type publishedLine struct {
 
 func readPublishedLines(t *testing.T, dir string) (out []publishedLine) {
 	t.Helper()
-	for _, row := range readTableCSV(t, filepath.Join(dir, "xqr30_absorbers.csv")) {
+	for _, row := range checkvalues.Rows(t, filepath.Join(dir, "xqr30_absorbers.csv")) {
 		// Rows of lines, not of components, and not upper limits.
 		if len(row) > 15 && row[2] == "-" && strings.TrimSpace(row[7]) == "-" && cell(row, 5) > 0 {
 			out = append(out, publishedLine{row[0], row[4], cell(row, 3), cell(row, 5), cell(row, 6), row[15] == "Y"})
@@ -80,7 +81,7 @@ func TestPublishedDoublets(t *testing.T) {
 	}
 	published := readPublishedLines(t, dir)
 	var doublets, lines []match
-	for _, row := range readTableCSV(t, filepath.Join(dir, "xqr30_quasars.csv"))[1:] {
+	for _, row := range checkvalues.Rows(t, filepath.Join(dir, "xqr30_quasars.csv"))[1:] {
 		name, zQuasar := row[0], cell(row, 1)
 		if arms[name] == nil {
 			continue

@@ -1,9 +1,7 @@
 package pipeline_test
 
 import (
-	"encoding/csv"
 	"math"
-	"os"
 	"path/filepath"
 	"runtime"
 	"sort"
@@ -13,6 +11,7 @@ import (
 
 	"duskline/catalog"
 	"duskline/fitsread"
+	"duskline/internal/checkvalues"
 	"duskline/internal/outside"
 	"duskline/pipeline"
 	"duskline/spectrum"
@@ -29,19 +28,7 @@ type published struct {
 
 func readPublished(t *testing.T, dir string) []published {
 	t.Helper()
-	f, err := os.Open(filepath.Join(dir, "truth.csv"))
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer f.Close()
-	rows, err := csv.NewReader(f).ReadAll()
-	if err != nil {
-		t.Fatal(err)
-	}
-	col := map[string]int{}
-	for i, name := range rows[0] {
-		col[name] = i
-	}
+	table := checkvalues.Read(t, filepath.Join(dir, "truth.csv"), 258)
 	num := func(s string) float64 {
 		v, err := strconv.ParseFloat(strings.TrimLeft(s, "<>~"), 64)
 		if err != nil {
@@ -50,9 +37,10 @@ func readPublished(t *testing.T, dir string) []published {
 		return v
 	}
 	var out []published
-	for _, r := range rows[1:] {
-		out = append(out, published{r[col["file"]], r[col["dataset"]], r[col["class"]], r[col["reliable"]],
-			num(r[col["redshift"]]), num(r[col["redshift_err"]]), num(r[col["snr_median"]])})
+	for i := range table.Len() {
+		text := func(column string) string { return table.Text(i, column) }
+		out = append(out, published{text("file"), text("dataset"), text("class"), text("reliable"),
+			num(text("redshift")), num(text("redshift_err")), num(text("snr_median"))})
 	}
 	return out
 }

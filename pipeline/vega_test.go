@@ -1,35 +1,15 @@
 package pipeline_test
 
 import (
-	"encoding/csv"
 	"math"
-	"os"
-	"path/filepath"
 	"strconv"
 	"testing"
 
 	"duskline/catalog"
+	"duskline/internal/checkvalues"
 	"duskline/pipeline"
 	"duskline/spectrum"
 )
-
-// csvRows reads a file of package lines without its comments.
-func csvRows(t *testing.T, name string) [][]string {
-	t.Helper()
-	f, err := os.Open(filepath.Join("..", "lines", "testdata", name))
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer f.Close()
-	r := csv.NewReader(f)
-	r.Comment = '#'
-	r.FieldsPerRecord = -1
-	rows, err := r.ReadAll()
-	if err != nil {
-		t.Fatal(err)
-	}
-	return rows
-}
 
 // TestVegaBalmerLines takes the public CALSPEC spectrum of Vega (alpha_lyr_stis_005,
 // the excerpt that package lines carries) through the whole chain.
@@ -44,7 +24,7 @@ func csvRows(t *testing.T, name string) [][]string {
 // width found has inside the window must be the tabulated value within 6 %.
 func TestVegaBalmerLines(t *testing.T) {
 	var seg spectrum.Segment
-	for _, row := range csvRows(t, "vega_calspec_excerpt.csv") {
+	for _, row := range checkvalues.Rows(t, "../lines/testdata/vega_calspec_excerpt.csv") {
 		wave, err1 := strconv.ParseFloat(row[0], 64)
 		flux, err2 := strconv.ParseFloat(row[1], 64)
 		if err1 != nil || err2 != nil {
@@ -71,7 +51,7 @@ func TestVegaBalmerLines(t *testing.T) {
 	}
 	view := bench.View()
 	compared := 0
-	for _, row := range csvRows(t, "vega_ew.csv") {
+	for _, row := range checkvalues.Rows(t, "../lines/testdata/vega_ew.csv") {
 		if row[0] == "line" {
 			continue
 		}

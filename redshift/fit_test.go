@@ -1,14 +1,12 @@
 package redshift
 
 import (
-	"encoding/csv"
 	"math"
 	"math/rand/v2"
-	"os"
-	"strconv"
 	"testing"
 
 	"duskline/continuum"
+	"duskline/internal/checkvalues"
 
 	"gonum.org/v1/gonum/mat"
 	"pgregory.net/rapid"
@@ -226,17 +224,7 @@ func TestEvaluateAgainstDense(t *testing.T) {
 // Chi^2 over lags of the example in testdata/chi2_lags.csv (numpy 1.24, direct
 // sums; the setup is in its second line).
 func TestChi2OverLags(t *testing.T) {
-	file, err := os.Open("testdata/chi2_lags.csv")
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer file.Close()
-	reader := csv.NewReader(file)
-	reader.Comment = '#'
-	rows, err := reader.ReadAll()
-	if err != nil {
-		t.Fatal(err)
-	}
+	rows := checkvalues.Rows(t, "testdata/chi2_lags.csv")
 	const n = 64
 	full := func(i, lag int) float64 { // the template without a reach, zero-padded
 		if i-lag < 0 || i-lag >= n {
@@ -264,9 +252,7 @@ func TestChi2OverLags(t *testing.T) {
 	for _, row := range rows[1:] {
 		var v [4]float64
 		for k := range v {
-			if v[k], err = strconv.ParseFloat(row[k], 64); err != nil {
-				t.Fatal(err)
-			}
+			v[k] = checkvalues.Number(t, row[k])
 		}
 		lag, amplitude, chi2, sigma := int(v[0]), v[1], v[2], v[3]
 		// The table by its own definition: 12 digits are printed.

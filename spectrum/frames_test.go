@@ -1,72 +1,35 @@
 package spectrum
 
 import (
-	"encoding/csv"
 	"math"
-	"os"
 	"strconv"
 	"strings"
 	"testing"
 
+	"duskline/internal/checkvalues"
+
 	"pgregory.net/rapid"
 )
-
-// readTable reads a CSV file of testdata whose first line is a comment with its
-// source, and returns its rows as maps from column name to text.
-func readTable(t *testing.T, name string) []map[string]string {
-	t.Helper()
-	f, err := os.Open("testdata/" + name)
-	if err != nil {
-		t.Fatal(err)
-	}
-	defer f.Close()
-	r := csv.NewReader(f)
-	r.Comment = '#'
-	records, err := r.ReadAll()
-	if err != nil {
-		t.Fatal(err)
-	}
-	if len(records) < 2 {
-		t.Fatalf("%s has no rows", name)
-	}
-	var rows []map[string]string
-	for _, rec := range records[1:] {
-		row := map[string]string{}
-		for i, field := range rec {
-			row[records[0][i]] = field
-		}
-		rows = append(rows, row)
-	}
-	return rows
-}
-
-func number(t *testing.T, row map[string]string, column string) float64 {
-	t.Helper()
-	v, err := strconv.ParseFloat(row[column], 64)
-	if err != nil {
-		t.Fatalf("column %s: %v", column, err)
-	}
-	return v
-}
 
 func TestAirVacuumTable(t *testing.T) {
 	// Tolerance: half a unit of the table's last printed digit, and rounding.
 	const tol = 0.6e-6
 	n := 0
-	for _, row := range readTable(t, "air_vacuum.csv") {
-		in, want := number(t, row, "lambda_in_A"), number(t, row, "lambda_out_A")
+	table := checkvalues.Read(t, "testdata/air_vacuum.csv", 1)
+	for row := range table.Len() {
+		in, want := table.Number(row, "lambda_in_A"), table.Number(row, "lambda_out_A")
 		var got float64
-		switch row["direction"] {
+		switch table.Text(row, "direction") {
 		case "vac->air":
 			got = VacuumToAir(in)
 		case "air->vac(exact inverse)":
 			got = AirToVacuum(in)
 		default:
-			t.Fatalf("direction %q", row["direction"])
+			t.Fatalf("direction %q", table.Text(row, "direction"))
 		}
 		n++
 		if math.Abs(got-want) > tol {
-			t.Errorf("%s %g: %.7f, want %.7f", row["direction"], in, got, want)
+			t.Errorf("%s %g: %.7f, want %.7f", table.Text(row, "direction"), in, got, want)
 		}
 	}
 	if n < 12 {
@@ -97,13 +60,14 @@ func TestEarthVelocitySeries(t *testing.T) {
 	// own dates; these dates were not used.
 	const tol = 0.32
 	var worst float64
-	for _, row := range readTable(t, "earth_velocity.csv") {
-		got := earthVelocity((number(t, row, "jd_tt") - 2451545) / 36525)
+	table := checkvalues.Read(t, "testdata/earth_velocity.csv", 1)
+	for row := range table.Len() {
+		got := earthVelocity((table.Number(row, "jd_tt") - 2451545) / 36525)
 		for i, col := range []string{"vx", "vy", "vz"} {
-			d := math.Abs(got[i] - number(t, row, col))
+			d := math.Abs(got[i] - table.Number(row, col))
 			worst = max(worst, d)
 			if d > tol {
-				t.Errorf("JD %s %s: %.3f m/s, want %s", row["jd_tt"], col, got[i], row[col])
+				t.Errorf("JD %s %s: %.3f m/s, want %s", table.Text(row, "jd_tt"), col, got[i], table.Text(row, col))
 			}
 		}
 	}
@@ -120,18 +84,18 @@ func TestBarycentricVelocity(t *testing.T) {
 		{"barycentric_dates.csv", "jd_utc", "ra_deg", "dec_deg", "v_bary_m_s"},
 	} {
 		var worst, sum float64
-		rows := readTable(t, list.file)
-		for _, row := range rows {
-			site := Site{number(t, row, "lon_deg_E"), number(t, row, "lat_deg"), number(t, row, "height_m")}
-			got := 1000 * BarycentricVelocity(site, number(t, row, list.jd), number(t, row, list.ra), number(t, row, list.dec))
-			want := number(t, row, list.v)
+		table := checkvalues.Read(t, "testdata/"+list.file, 1)
+		for row := range table.Len() {
+			site := Site{table.Number(row, "lon_deg_E"), table.Number(row, "lat_deg"), table.Number(row, "height_m")}
+			got := 1000 * BarycentricVelocity(site, table.Number(row, list.jd), table.Number(row, list.ra), table.Number(row, list.dec))
+			want := table.Number(row, list.v)
 			d := math.Abs(got - want)
 			worst, sum = max(worst, d), sum+d*d
 			if !(d <= tol) {
-				t.Errorf("%s, JD %s, %s %s: %.3f m/s, want %.3f", list.file, row[list.jd], row[list.ra], row[list.dec], got, want)
+				t.Errorf("%s, JD %s, %s %s: %.3f m/s, want %.3f", list.file, table.Text(row, list.jd), table.Text(row, list.ra), table.Text(row, list.dec), got, want)
 			}
 		}
-		t.Logf("%s: %d rows, rms %.3f, largest %.3f m/s", list.file, len(rows), math.Sqrt(sum/float64(len(rows))), worst)
+		t.Logf("%s: %d rows, rms %.3f, largest %.3f m/s", list.file, table.Len(), math.Sqrt(sum/float64(table.Len())), worst)
 	}
 }
 

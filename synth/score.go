@@ -19,8 +19,8 @@ type Tally struct {
 	Secure      int // rows with verdict secure
 	SecureRight int // of these, right ones
 	// Pull is the rms of redshift less truth over the error, of SecureRight; NaN for none.
-	Pull float64
-	ClassRight  int // rows whose class is that of the truth; 0 for Sky and Broken
+	Pull       float64
+	ClassRight int // rows whose class is that of the truth; 0 for Sky and Broken
 }
 
 // Miss is a row that is secure and wrong.
