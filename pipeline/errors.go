@@ -24,10 +24,15 @@ func inputError(format string, args ...any) error {
 type MismatchError struct {
 	Out         string
 	Differences []string // one clause each
+	Program     bool     // one of them is the program
 }
 
 // Error names the differences and the ways out.
 func (e *MismatchError) Error() string {
+	if e.Program {
+		return fmt.Sprintf("%s holds a run of another program: %s. To finish that run, use the program that began it; "+
+			"to repeat it with this one, duskline run --like %s --out NEW.", e.Out, strings.Join(e.Differences, "; "), e.Out)
+	}
 	return fmt.Sprintf("%s holds a run that was planned differently: %s. "+
 		"To finish that run as planned, give --out %s without any PATH or settings; to process what you asked for, give a new --out.",
 		e.Out, strings.Join(e.Differences, "; "), e.Out)

@@ -266,6 +266,11 @@ func (h *planHead) differences(want *planHead) []string {
 	return out
 }
 
+// otherProgram reports whether the plan was made by another program or build.
+func (h *planHead) otherProgram(want *planHead) bool {
+	return h.Program != want.Program || h.Build != want.Build
+}
+
 func orNone(s string) string {
 	if s == "" {
 		return "none"

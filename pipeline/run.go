@@ -219,7 +219,7 @@ func Recorded(job Job) (*Run, error) {
 	asNow := run.head
 	asNow.Program, asNow.Build = job.Program, job.Build
 	if diffs := run.head.differences(&asNow); len(diffs) > 0 {
-		return nil, &MismatchError{job.Out, diffs}
+		return nil, &MismatchError{job.Out, diffs, run.head.otherProgram(&asNow)}
 	}
 	return run, nil
 }
@@ -331,7 +331,7 @@ func (r *Run) agree(ctx context.Context, want planHead) error {
 		diffs = append(diffs, more...)
 	}
 	if len(diffs) > 0 {
-		return &MismatchError{r.job.Out, diffs}
+		return &MismatchError{r.job.Out, diffs, r.head.otherProgram(&want)}
 	}
 	return nil
 }

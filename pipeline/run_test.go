@@ -124,6 +124,8 @@ func TestMismatch(t *testing.T) {
 			t.Errorf("%s: %v, want a MismatchError", name, err)
 		} else if !strings.Contains(err.Error(), c.says) || len(mismatch.Differences) != 1 {
 			t.Errorf("%s: %q does not say %q alone", name, err, c.says)
+		} else if advice := strings.Contains(err.Error(), "use the program that began it"); advice != (name == "program") {
+			t.Errorf("%s: the advice is that for another program: %t", name, advice)
 		}
 	}
 	writeNight(t, job.Base, "night/g.fits: g1\n")

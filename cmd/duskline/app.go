@@ -101,7 +101,7 @@ func runApp(a *app, args []string) (code int) {
 	}
 	parsed, err := parser.Parse(args)
 	if err != nil {
-		complain(stderr, fmt.Errorf("%w; see duskline --help", err))
+		complain(stderr, parseProblem(err, parser))
 		return exitUsage
 	}
 	folder, err := os.Getwd()

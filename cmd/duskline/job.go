@@ -79,6 +79,9 @@ func (c *jobFlags) recall(a *app, job *pipeline.Job) error {
 	case c.Like != "" && !pipeline.IsRun(a.locate(c.Out)):
 		from = c.Like
 	}
+	if from != c.Out && !pipeline.IsRun(a.locate(from)) {
+		return &pipeline.InputError{Problems: []string{fmt.Sprintf("%s holds no run; --like wants the folder of an earlier one", from)}}
+	}
 	planned, err := pipeline.Recall(a.folder, from)
 	if err != nil {
 		return err

@@ -47,3 +47,18 @@ func builtInLayout(name string) ([]byte, bool) {
 	text, err := fs.ReadFile(configs.Layouts(), name+".toml")
 	return text, err == nil
 }
+
+// builtInLayouts names the layouts that come with the program.
+func builtInLayouts() []string {
+	entries, err := fs.ReadDir(configs.Layouts(), ".")
+	if err != nil {
+		panic("configs/layouts: " + err.Error()) // the build is broken
+	}
+	var names []string
+	for _, e := range entries {
+		if name, ok := strings.CutSuffix(e.Name(), ".toml"); ok {
+			names = append(names, name)
+		}
+	}
+	return names
+}

@@ -93,6 +93,10 @@ func readLayouts(a *app, names []string) ([]pipeline.LayoutText, error) {
 			continue
 		}
 		text, err := readText(a, name, "layout")
+		if err != nil && !strings.ContainsAny(name, "./\\") {
+			return nil, &pipeline.InputError{Problems: []string{fmt.Sprintf("there is no layout %s: neither a file of this name, nor one of those that come with the program, which are %s",
+				name, strings.Join(builtInLayouts(), ", "))}}
+		}
 		if err != nil {
 			return nil, err
 		}
