@@ -14,12 +14,51 @@ func markdownColumns() string {
 Generated from the table in package catalog, which also drives the files; a test keeps both in step.
 Version of the columns: ` + FormatVersion + `.
 
-The object table is the HDU OBJECTS of catalog.fits, catalog.csv and objects.parquet. The line table is the HDU
-LINES of catalog.fits and lines.parquet, the absorber table the HDU ABSORBERS and absorbers.parquet. ` + "`object_id`" + `
-joins them. Where the setting lines.indices names a file, the table of indices is the HDU INDICES and indices.parquet.
+## Where the tables are
 
-A number that is not known is NaN in FITS, null in Parquet and an empty field in CSV. Whole numbers and text are
-always there; text that is not known is empty. CSV holds the decimals given below, FITS and Parquet the full double.
+| table | one row | FITS | other files |
+|---|---|---|---|
+| objects | a spectrum | HDU OBJECTS of catalog.fits | catalog.csv, objects.parquet |
+| lines | a line of an object | HDU LINES | lines.parquet |
+| absorbers | a system in front of an object | HDU ABSORBERS | absorbers.parquet |
+| indices, where the setting lines.indices names a file | an index of an object | HDU INDICES | indices.parquet |
+
+` + "`object_id`" + ` joins them.
+
+## How to read a row
+
+Start with ` + "`verdict`" + `:
+
+| verdict | use it so |
+|---|---|
+| ` + "`secure`" + ` | the redshift can be used as it stands; ` + "`redshift_err`" + ` is one sigma |
+| ` + "`uncertain`" + ` | a best answer that a person should look at; ` + "`flag_names`" + ` and ` + "`reason`" + ` say why |
+| ` + "`none`" + ` | no redshift can be told; the number in the row is a guess and must not be used |
+
+A row that is not secure has at least one of the flags that say why:
+
+| the row is not secure, because | flag |
+|---|---|
+| it could not be read, or too little of it can be used | ` + "`unreadable`, `few_pixels`" + ` |
+| nothing stands above the noise | ` + "`faint`" + ` |
+| fewer lines stand out than needed | ` + "`few_lines`, with `lone_line` for one, `on_sky_line` where others may be of the air" + ` |
+| another answer is nearly as good | ` + "`low_confidence`, with `tied` where the scores are close" + ` |
+| the model does not describe the spectrum | ` + "`misfit`, `lines_missing`, `scattered`" + ` |
+| the answer lies at an edge | ` + "`range_end`, `outside_limits`" + ` |
+| the input lacks what tells a galaxy or quasar | ` + "`normalized`, or `misfit` with `lines_unseen`" + ` |
+
+The other flags speak of the input: ` + "`frame_assumed`, `noise_estimated`, `weights_suspect`, `below_zero`, `unexplained`" + `.
+Secure rows may have them, and ` + "`lone_line`, `misfit`, `lines_unseen`, `on_sky_line`, `outside_limits`, `normalized` (stars)" + ` too.
+
+## What is not known
+
+| | FITS | Parquet | CSV |
+|---|---|---|---|
+| a number that is not known | NaN | null | empty field |
+| text that is not known | empty | empty | empty field |
+| whole numbers | always there | always there | always there |
+| decimals | full double | full double | as given below |
+
 Wavelengths are in vacuum and in the barycentric frame.
 
 Control characters and bytes that are not UTF-8 are written as escapes such as \n and \xff. FITS text is ASCII: there
