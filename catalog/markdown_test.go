@@ -3,6 +3,7 @@ package catalog
 import (
 	"fmt"
 	"strings"
+	"testing"
 )
 
 // markdownColumns returns the page docs/columns.md: what the columns of
@@ -71,13 +72,37 @@ all other characters are written as escapes such as \u00e9.
 	b.WriteString("\n## Flags\n\nBits of `flags`, low bit first. `flag_names` has the names of those that are set, joined by `|`.\n\n" +
 		"| bit | value | name | says |\n|---|---|---|---|\n")
 	for bit, f := range flagTable {
-		fmt.Fprintf(&b, "| %d | %d | `%s` | %s |\n", bit, 1<<bit, f.name, f.says)
+		fmt.Fprintf(&b, "| %d | %d | `%s` | %s |\n", bit, 1<<bit, f.name, flagMeanings[f.name])
 	}
 	b.WriteString("\n## Flags of absorbers\n\nBits of `flags` in the absorber table.\n\n| bit | value | name | says |\n|---|---|---|---|\n")
 	for bit, f := range absorberFlagTable {
 		fmt.Fprintf(&b, "| %d | %d | `%s` | %s |\n", bit, 1<<bit, f.name, f.says)
 	}
 	return b.String()
+}
+
+// flagMeanings say what a flag means for who uses the catalog.
+var flagMeanings = map[string]string{
+	"unreadable":      "the file or this spectrum in it could not be read; `reason` says what to do",
+	"few_pixels":      "too few usable pixels; `reason` says what took the others",
+	"faint":           "neither continuum nor lines stand above the noise",
+	"tied":            "another redshift fits nearly as well: see `rival_redshift` and `gap`",
+	"range_end":       "the best redshift lies at the end of the family's range",
+	"lone_line":       "a single feature stands out by itself; secure only where many weak ones in absorption make up for it",
+	"misfit":          "the best model leaves the spectrum badly described",
+	"lines_unseen":    "more than half of the lines that should be strong are outside the coverage or masked",
+	"lines_missing":   "lines that the model predicts strongly are covered and not there",
+	"below_zero":      "the continuum is negative over a good part",
+	"scattered":       "the lines disagree on the velocity",
+	"on_sky_line":     "without lines on night-sky lines or in bands of the air fewer than two support the redshift; emission on a night-sky line alone never makes it secure",
+	"frame_assumed":   "air or vacuum, or the velocity frame, was not stated and was assumed",
+	"noise_estimated": "no errors in the input: noise was estimated from the flux",
+	"weights_suspect": "the stated errors disagree with the scatter",
+	"normalized":      "the input looks divided by its continuum; no galaxy or quasar is secure then",
+	"outside_limits":  "outside the limits or the class that the manifest gives something fits better; secure only where that has the same redshift",
+	"unexplained":     "narrow emission that no line at the redshift explains: a second object in the aperture? `reason` gives the wavelengths",
+	"few_lines":       "fewer lines stand out by themselves than `secure` needs (two, or one with a very clear lead), or of a quasar none in emission; the redshift then rests on the shape of the whole",
+	"low_confidence":  "`confidence` is below what `secure` needs (0.995): the lead over the rival, or over no template at all, is small for a fit this good",
 }
 
 func markdownTable(b *strings.Builder, title string, columns []Column) {
@@ -115,3 +140,14 @@ func absorberColumnsTold() []Column { return tableOf[Absorber]().public() }
 
 // indexColumnsTold returns the columns of the table of indices in order.
 func indexColumnsTold() []Column { return tableOf[Index]().public() }
+
+func TestEveryFlagIsExplained(t *testing.T) {
+	for _, name := range FlagNames() {
+		if flagMeanings[name] == "" {
+			t.Errorf("docs/columns.md would not say what the flag %s means", name)
+		}
+	}
+	if len(flagMeanings) != len(flagTable) {
+		t.Errorf("%d flags are explained, there are %d", len(flagMeanings), len(flagTable))
+	}
+}
