@@ -83,8 +83,8 @@ var flagTable = [...]struct{ name, says string }{
 	{"normalized", "the input looks divided by its continuum"},
 	{"outside_limits", "a better fit lies outside the manifest's limits"},
 	{"unexplained", "features stand out that the model does not explain"},
-	{"few_lines", "fewer lines stand out by themselves than secure needs, or none of a quasar in emission"},
-	{"low_confidence", "the confidence is below what secure needs"},
+	{"few_lines", "too few lines stand out for secure"},
+	{"low_confidence", "the confidence is too low for secure"},
 }
 
 // knownFlags has every defined bit set.
