@@ -56,11 +56,7 @@ func (b *Bench) fewPixels(s *spectrum.Spectrum, why string) string {
 	}
 	var parts []string
 	for _, l := range losses[:min(mostLosses, len(losses))] {
-		where := ""
-		if l.Where != "" {
-			where = " (" + l.Where + ")"
-		}
-		parts = append(parts, fmt.Sprintf("%d %s%s", l.Pixels, l.Cause, where))
+		parts = append(parts, l.String())
 	}
 	if more := len(losses) - mostLosses; more > 0 {
 		parts = append(parts, fmt.Sprintf("%d more causes", more))

@@ -94,6 +94,14 @@ type Loss struct {
 	Pixels int
 }
 
+// String tells a loss in words, such as "50 flux NaN or infinite (column FLUX of HDU 1)".
+func (l Loss) String() string {
+	if l.Where == "" {
+		return fmt.Sprintf("%d %s", l.Pixels, l.Cause)
+	}
+	return fmt.Sprintf("%d %s (%s)", l.Pixels, l.Cause, l.Where)
+}
+
 // Segment is one contiguous piece of a spectrum: the whole of it for most
 // files, one arm or one echelle order for others.
 //

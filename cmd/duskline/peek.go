@@ -86,6 +86,7 @@ func (c *peekCmd) run(a *app) (int, error) {
 	if err != nil {
 		return 0, c.unreadable(err)
 	}
+	s.SourceFile = c.File
 	writeSpectrum(a.stdout, c.Row, s)
 	bench := chain.NewBench()
 	out := bench.Process(s)
@@ -207,6 +208,9 @@ func writeSpectrum(w io.Writer, row int, s *spectrum.Spectrum) {
 		fmt.Fprintf(t, "pixels\t%d from %.1f to %.1f Angstrom (%s), %d of them good\n", seg.Len(), seg.Wave[0], seg.Wave[seg.Len()-1],
 			strings.TrimSpace(s.Medium.String()+" "+seg.Name), seg.Good())
 	}
+	for _, l := range s.Losses {
+		fmt.Fprintf(t, "not used\t%s\n", l)
+	}
 	switch {
 	case s.Frame == spectrum.Topocentric || s.Frame == spectrum.Geocentric:
 		if math.IsNaN(s.BaryVelocity) {
@@ -240,7 +244,7 @@ func writeAnswer(w io.Writer, out *pipeline.Outcome) {
 		fmt.Fprintf(t, "flags\t%s\n", strings.Join(o.Flags.Names(), ", "))
 	}
 	if o.Reason != "" {
-		fmt.Fprintf(t, "reason\t%s\n", o.Reason)
+		fmt.Fprintf(t, "reason\t%s\n", strings.ReplaceAll(o.Reason, "; ", ";\n\t"))
 	}
 	t.Flush()
 	writeLines(w, out)
