@@ -79,7 +79,9 @@ func (p *picture) draw(c draw.Canvas) {
 	if p.logFlux {
 		pl.Y.Tick.Marker = powers{logTicks{7}}
 	}
-	pl.Add(zeroLine{p})
+	if !p.logFlux {
+		pl.Add(zeroLine{})
+	}
 	for _, curve := range []trace{
 		{p, p.sigma, draw.LineStyle{Color: inkSigma, Width: 0.8}},
 		{p, p.flux, draw.LineStyle{Color: inkPixels, Width: 0.6}},
@@ -202,11 +204,11 @@ func (t trace) Plot(c draw.Canvas, p *plot.Plot) {
 }
 
 // zeroLine is a thin line at zero flux.
-type zeroLine struct{ picture *picture }
+type zeroLine struct{}
 
 // Plot implements plot.Plotter.
-func (z zeroLine) Plot(c draw.Canvas, p *plot.Plot) {
-	if z.picture.logFlux || p.Y.Min > 0 || p.Y.Max < 0 {
+func (zeroLine) Plot(c draw.Canvas, p *plot.Plot) {
+	if p.Y.Min > 0 || p.Y.Max < 0 {
 		return
 	}
 	_, toY := p.Transforms(&c)
