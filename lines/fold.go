@@ -1,6 +1,9 @@
 package lines
 
-import "math"
+import (
+	"math"
+	"strings"
+)
 
 // Fold joins the second component of every line, the row that follows it, to
 // its first and returns the shortened slice: for objects whose lines are one
@@ -32,6 +35,9 @@ func Fold(results []Result) []Result {
 		total.EWSumErr = math.Hypot(b.EWSumErr, a.EWRestErr)
 		total.SNR = math.Abs(total.Flux) / total.FluxErr
 		switch {
+		case total.Flux > 0 && out[n-1].Kind != Emission && r.Kind != Emission && doubted(out[n-1].Reason, r.Reason) != "":
+			total.Kind, total.UpperLimit = Limit, math.Abs(total.EWRest)+3*total.EWRestErr
+			total.Reason = doubted(out[n-1].Reason, r.Reason)
 		case total.SNR < seenFrom:
 			total.Kind, total.UpperLimit = Limit, math.Abs(total.EWRest)+3*total.EWRestErr
 		case total.Flux > 0:
@@ -39,7 +45,24 @@ func Fold(results []Result) []Result {
 		default:
 			total.Kind, total.UpperLimit = Absorption, math.NaN()
 		}
+		if total.Kind != Limit && doubted(total.Reason) != "" {
+			total.Reason = "" // of a part that does not count
+		}
+		if total.Kind != Limit && math.IsNaN(total.OffsetKms) {
+			total.OffsetKms, total.OffsetErr = a.OffsetKms, a.OffsetErr
+		}
 		out[n-1] = total
 	}
 	return out
+}
+
+// doubted returns the first of two reasons that takes emission back, empty for none.
+func doubted(reasons ...string) string {
+	for _, r := range reasons {
+		switch strings.TrimPrefix(r, ReasonSum+"|") {
+		case ReasonCrowded, ReasonNoCompanion, ReasonWrongSign:
+			return r
+		}
+	}
+	return ""
 }

@@ -28,6 +28,22 @@ func TestFold(t *testing.T) {
 	}
 }
 
+// Emission that was taken back in one part does not come back with the sum, unless the
+// other part shines.
+func TestFoldKeepsDoubt(t *testing.T) {
+	nan := math.NaN()
+	part := func(name, kind, reason string) Result {
+		return Result{Name: name, Kind: kind, Reason: reason, EWRest: -4, EWRestErr: 0.3, EWSum: -4, EWSumErr: 0.3, Flux: 40, FluxErr: 3, SNR: 13, WidthKms: 300, UpperLimit: nan}
+	}
+	for _, tc := range []struct{ first, kind, reason string }{{Limit, Limit, ReasonCrowded}, {Emission, Emission, ""}} {
+		first := part("Hb", tc.first, tc.reason)
+		got := Fold([]Result{first, part("Hb_broad", Limit, ReasonCrowded)})
+		if len(got) != 1 || got[0].Kind != tc.kind || got[0].Reason != tc.reason || tc.kind == Limit && !(got[0].UpperLimit > 8) {
+			t.Errorf("%s with a doubted part: %+v", tc.first, got)
+		}
+	}
+}
+
 // A line that is not expected takes nothing from its neighbor.
 func TestExpect(t *testing.T) {
 	list, err := linelist.Parse([]byte(twoLines))

@@ -37,13 +37,15 @@ const (
 const (
 	ReasonMasked      = "masked"       // too few good pixels on the line
 	ReasonUnexpected  = "unexpected"   // Options.Expect leaves the line out
-	ReasonWrongSign   = "wrong_sign"   // a line that never absorbs, where something absorbs: not this line
+	ReasonWrongSign   = "wrong_sign"   // a line that never absorbs, where something absorbs, or the reverse: not this line
 	ReasonOffEdge     = "off_edge"     // the line runs over the end of the coverage
 	ReasonNoContinuum = "no_continuum" // continuum missing, negative or not above 3 times its error
 	ReasonBlended     = "blended"      // too close to another line, which carries the sum of both
 	ReasonSum         = "sum"          // measured: carries the lines of its blend that are blended
 	ReasonNoFit       = "no_fit"       // the pixels do not determine the profile
 	ReasonAtBound     = "at_bound"     // offset or width ended at the limit of its range; the values stand
+	ReasonCrowded     = "crowded"      // no higher than the dips around it are deep: the gap between absorption, not emission
+	ReasonNoCompanion = "no_companion" // a line of the ion that would be stronger in emission is not there
 )
 
 // Result is one line of the list in one spectrum. Numbers that do not apply
@@ -178,7 +180,9 @@ func (o *Options) widthMax(l *line, broad bool) float64 {
 
 // Meter measures the lines of one list. It is immutable and may be shared.
 type Meter struct {
-	lines []line
+	lines   []line
+	sisters [][]int // indices of the lines that are at least as strong, for every line
+	none    []byte  // inList for every line
 }
 
 // line is a line of the list with what planning needs to know of it.
@@ -250,6 +254,8 @@ func NewMeter(list *linelist.List) *Meter {
 			}
 		}
 	}
+	m.findSisters()
+	m.none = make([]byte, len(m.lines))
 	return m
 }
 
@@ -284,6 +290,25 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 		s.labels, s.labeled = map[labelKey]string{}, m
 	}
 	s.meter, s.arms, s.opt = m, arms, opt.withDefaults()
+	s.bar = append(s.bar[:0], m.none...)
+	s.round()
+	if s.weigh() {
+		s.round()
+		s.weigh()
+		s.recall()
+	}
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		if dst = append(dst, t.result); t.second.Name != "" {
+			dst = append(dst, t.second)
+		}
+	}
+	s.meter, s.arms = nil, nil
+	return dst
+}
+
+// round looks for the lines and fits them.
+func (s *Scratch) round() {
 	s.claims = s.claims[:0]
 	s.load()
 	s.survey()
@@ -296,14 +321,6 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 			}
 		}
 	}
-	for i := range s.tracks {
-		t := &s.tracks[i]
-		if dst = append(dst, t.result); t.second.Name != "" {
-			dst = append(dst, t.second)
-		}
-	}
-	s.meter, s.arms = nil, nil
-	return dst
 }
 
 func (a *Arm) check() {

@@ -43,6 +43,8 @@ type Scratch struct {
 	guesses   [len(stellarSigma)]stellarGuess
 	placed    []placement
 	placedArm int // the arm of placed
+	heights   []height
+	bar       []byte // of every line of the list, for a second round: inList and others
 	labels    map[labelKey]string
 	labeled   *Meter // whose names the labels are
 }
@@ -65,7 +67,9 @@ type track struct {
 	first   float64 // snr before stronger lines claimed their pixels
 	v, s    float64 // offset and total sigma of the best box, or the guess
 	result  Result
-	second  Result // of the broader component, Name empty where there is none
+	second  Result     // of the broader component, Name empty where there is none
+	doubt   [2]string  // why the emission of either is none
+	high    [2]float64 // how high its emission stands, in units of the dips around
 }
 
 // kinematics is an offset with the width of the source.

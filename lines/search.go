@@ -36,9 +36,12 @@ func (s *Scratch) findTracks() {
 		t.result = blank(l)
 		t.s = max(math.Hypot(s.opt.guess(t.broad), t.sres), 0.5*t.pix)
 		t.center, t.next = c, s.nextInGroup(i, t.broad)
-		if s.opt.Expect != nil && !s.opt.Expect(&l.Line) {
+		switch {
+		case s.opt.Expect != nil && !s.opt.Expect(&l.Line):
 			t.result.Reason = ReasonUnexpected
-		} else {
+		case s.bar[i] == notThere:
+			t.result.Reason = ReasonWrongSign
+		default:
 			s.search(&t)
 			t.first = t.snr
 		}
@@ -47,7 +50,7 @@ func (s *Scratch) findTracks() {
 	s.refine()
 	for i := range s.tracks {
 		t := &s.tracks[i]
-		t.usable = t.result.Reason != ReasonUnexpected && s.covered(t)
+		t.usable = t.result.Reason == "" && s.covered(t)
 	}
 }
 
@@ -208,7 +211,7 @@ func (s *Scratch) search(t *track) {
 				variance += 1 / fw
 			}
 			snr := mean / math.Sqrt(variance)
-			if (snr > 0 && t.line.Seen == Absorption) || (snr < 0 && t.line.Seen == Emission) {
+			if (snr > 0 && (t.line.Seen == Absorption || s.bar[t.index] != inList)) || (snr < 0 && t.line.Seen == Emission) {
 				continue
 			}
 			if math.Abs(snr) > math.Abs(best) {

@@ -1,0 +1,478 @@
+package lines
+
+import (
+	"cmp"
+	"math"
+	"slices"
+
+	"duskline/spectrum"
+)
+
+// Emission in stars and galaxies has to stand above more than the noise. Where
+// absorption lines and bands crowd, the continuum given is a mean of what they leave, and
+// the gaps between them lie above it without anything shining there. Two things
+// tell a gap from a line, both in the spectrum itself: how deep the dips
+// around it are (relief), and whether a line of the same ion that nature makes
+// stronger is there (denied).
+
+const (
+	// reliefReach is how far around a line its surroundings count, in sigmas of the
+	// line, and at least, km/s. Common practice, no source: some ten features of its
+	// width, and for a narrow line a whole blend.
+	reliefReach = 20.0
+	reliefLeast = 4000.0
+	// reliefFrom is how many boxes in dips it takes to tell.
+	reliefFrom = 6
+	// reliefBoxes bounds how many boxes are tried around a narrow line.
+	reliefBoxes = 60
+	// reliefOwn is the part around a line, in sigmas, that is its own.
+	reliefOwn = 2.5
+	// boxShare is the mean of a Gaussian over +-1 sigma in units of its peak,
+	// sqrt(pi/2) erf(1/sqrt 2).
+	boxShare = 0.8556
+	// flankFrom and flankTo bound the flanks of a box, in sigmas.
+	flankFrom, flankTo = 1.75, 3.5
+)
+
+// height is a mean flux with its variance.
+type height struct{ mean, variance float64 }
+
+// frame is the pixels of a box and of its flanks: between [0] and [5] without
+// those between [1] and [4], the box itself between [2] and [3].
+type frame [6]int
+
+var frameEdges = [6]float64{-flankTo, -flankFrom, -1, 1, flankFrom, flankTo}
+
+// slide moves a frame, whose edges only ever move redward, to a wavelength.
+func (f *frame) slide(a *Arm, wave, sigma float64) {
+	d := wave * sigma / spectrum.SpeedOfLight
+	for k, e := range frameEdges {
+		for f[k] < len(a.Wave) && a.Wave[f[k]] < wave+e*d {
+			f[k]++
+		}
+	}
+	f[3] = max(f[3], f[2]+1)
+}
+
+// place returns the frame at a wavelength.
+func place(a *Arm, wave, sigma float64) (f frame) {
+	first := a.index(wave * (1 - flankTo*sigma/spectrum.SpeedOfLight))
+	for k := range f {
+		f[k] = first
+	}
+	f.slide(a, wave, sigma)
+	return f
+}
+
+// above returns the height of a frame over its flanks; its variance is 0 where too few
+// pixels are good.
+func (s *Scratch) above(arm int, f *frame) height {
+	box := s.within(arm, f)
+	lw, lwr, ln := s.box(arm, f[0], f[1])
+	rw, rwr, rn := s.box(arm, f[4], f[5])
+	if w := lw + rw; box.variance > 0 && ln > 0 && rn > 0 && w > 0 {
+		return height{box.mean - (lwr+rwr)/w, box.variance + 1/w}
+	}
+	return height{}
+}
+
+// within returns the mean residual in the box of a frame, likewise.
+func (s *Scratch) within(arm int, f *frame) height {
+	w, wr, n := s.box(arm, f[2], f[3])
+	if n < 0.6*float64(f[3]-f[2]) || !(w > 0) {
+		return height{}
+	}
+	return height{wr / w, 1 / w}
+}
+
+// relief returns how deep, in units of flux, the dips around an observed
+// wavelength are that have the width of a Gaussian of sigma, km/s: the larger of two root mean
+// squares, of what boxes of that width lie below their flanks, and below the median of all
+// boxes, less what noise does. The first sees through a continuum that is wrong
+// all along, the second sees dips wider than the line.
+func (s *Scratch) relief(arm int, mu, sigma float64) float64 {
+	a := &s.arms[arm]
+	reach, own := max(reliefReach*sigma, reliefLeast)/spectrum.SpeedOfLight, reliefOwn*sigma/spectrum.SpeedOfLight
+	i, end := a.index(mu*(1-reach)), a.index(mu*(1+reach))
+	if i == len(a.Wave) {
+		return 0
+	}
+	s.heights = s.heights[:0]
+	var flanked dips
+	least := (end - i) / reliefBoxes
+	for f := place(a, a.Wave[i], sigma); i < end; i += max(1, least, (f[3]-f[2])/2) {
+		f.slide(a, a.Wave[i], sigma)
+		if math.Abs(a.Wave[i]/mu-1) < own {
+			continue
+		}
+		if h := s.above(arm, &f); h.variance > 0 {
+			flanked.add(h)
+		}
+		if h := s.within(arm, &f); h.variance > 0 {
+			s.heights = append(s.heights, h)
+		}
+	}
+	if len(s.heights) == 0 {
+		return 0
+	}
+	slices.SortFunc(s.heights, func(a, b height) int { return cmp.Compare(a.mean, b.mean) })
+	middle := s.heights[len(s.heights)/2].mean
+	var whole dips
+	for _, h := range s.heights {
+		whole.add(height{h.mean - middle, h.variance})
+	}
+	return max(flanked.depth(), whole.depth())
+}
+
+// dips gathers heights below zero.
+type dips struct{ sum, noise, n float64 }
+
+func (d *dips) add(h height) {
+	if h.mean < 0 {
+		d.sum += h.mean * h.mean
+		d.noise += h.variance
+		d.n++
+	}
+}
+
+// depth returns the root mean square depth beyond the noise, which is granted two
+// standard deviations of the mean of n squares.
+func (d *dips) depth() float64 {
+	if d.n < reliefFrom {
+		return 0
+	}
+	return math.Sqrt(max(0, d.sum-d.noise*(1+2*math.Sqrt(2/d.n))) / d.n)
+}
+
+// clearEmission takes all lines measured in emission away from the residuals, and the
+// absorption under them that was told apart.
+func (s *Scratch) clearEmission() {
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		for _, r := range t.parts() {
+			if r.Kind != Emission && !(t.shines() && r.Kind == Absorption) {
+				continue
+			}
+			mu, sigma := r.place(t)
+			d := sigma * mu / spectrum.SpeedOfLight
+			for k := range s.arms {
+				a, o := &s.arms[k], s.first[k]
+				for j := a.index(mu - profileReach*d); j < len(a.Wave) && a.Wave[j] < mu+profileReach*d; j++ {
+					u := (a.Wave[j] - mu) / d
+					s.resid[o+j] -= r.Flux * invSqrt2Pi / d * decay(0.5*u*u)
+				}
+			}
+		}
+	}
+	s.claims = s.claims[:0]
+	s.survey()
+}
+
+// shines reports whether a part of the line is in emission.
+func (t *track) shines() bool { return t.result.Kind == Emission || t.second.Kind == Emission }
+
+// place returns observed center and total Gaussian sigma, km/s, of a result.
+func (r *Result) place(t *track) (mu, sigma float64) {
+	v := r.OffsetKms
+	if math.IsNaN(v) {
+		v = 0
+	}
+	return t.lam0 * (1 + v/spectrum.SpeedOfLight), max(math.Hypot(r.WidthKms, t.sres), 0.5*t.pix)
+}
+
+// bump returns the mean height over +-1 sigma of a line in emission, with
+// what other lines of its ion add there.
+func (s *Scratch) bump(t *track, r *Result) (mu, sigma, peak float64) {
+	mu, sigma = r.place(t)
+	for i := range s.tracks {
+		o := &s.tracks[i]
+		if o.result.Kind != Emission || o.line.ion != t.line.ion || o != t && r == &t.second {
+			continue
+		}
+		q := &o.result
+		if o == t {
+			q = r
+		}
+		at, width := q.place(o)
+		u := spectrum.SpeedOfLight * (at/mu - 1) / width
+		if u*u < 2*decayEnd {
+			peak += q.Flux * invSqrt2Pi * spectrum.SpeedOfLight / (width * at) * decay(0.5*u*u)
+		}
+	}
+	return mu, sigma, boxShare * peak
+}
+
+const (
+	// firmSNR and firmHeight are the S/N, and the height in units of the dips
+	// around it, from which a line is beyond doubt and speaks for others.
+	firmSNR, firmHeight = 10.0, 5.0
+	// allyHeight is the height from which emission is believed where a firm line has its
+	// offset and width: a gap would have to lie in the one place. Common practice, no
+	// source: twice in a hundred a Gaussian variate is above two.
+	allyHeight = 1.5
+	// Kin differ by less than this part of the width in offset, and by less than this
+	// factor in width.
+	allyOffset, allyWidth = 0.5, 1.5
+)
+
+// judge notes how the emission of a line stands against the dips around it.
+func (s *Scratch) judge(t *track, part int) {
+	r := t.parts()[part]
+	mu, sigma, peak := s.bump(t, r)
+	rough := s.relief(t.arm, mu, sigma)
+	t.high[part] = math.Inf(1)
+	if rough > 0 {
+		t.high[part] = peak / rough
+	}
+	t.doubt[part] = ""
+	if peak < seenFrom*math.Hypot(peak/r.SNR, rough) && rough > 0 {
+		t.doubt[part] = ReasonCrowded
+	}
+}
+
+// acquit clears lines that a firm one with the same offset and width speaks for, if no
+// stronger one of their ion is missing.
+func (s *Scratch) acquit() {
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		for part, r := range t.parts() {
+			if t.doubt[part] == "" || t.high[part] < allyHeight || s.lacksSister(t) {
+				continue
+			}
+			_, sigma := r.place(t)
+			for j := range s.tracks {
+				o := &s.tracks[j]
+				for k, q := range o.parts() {
+					if o == t || q.Kind != Emission || o.high[k] < firmHeight || q.SNR < firmSNR {
+						continue
+					}
+					_, width := q.place(o)
+					if math.Abs(q.OffsetKms-r.OffsetKms) < allyOffset*width && max(width/sigma, sigma/width) < allyWidth {
+						t.doubt[part] = ""
+					}
+				}
+			}
+		}
+	}
+}
+
+// narrowShock is the sigma, km/s, up to which hydrogen may shine in a higher Balmer
+// line alone: that of shocks in pulsating red stars, whose bands hide H-alpha.
+// Common practice, no source.
+const narrowShock = 300.0
+
+// lacksSister reports whether a stronger line of the ion is covered and not in emission.
+func (s *Scratch) lacksSister(t *track) bool {
+	for _, sister := range s.meter.sisters[t.index] {
+		for i := range s.tracks {
+			if r := &s.tracks[i].result; s.tracks[i].index == sister && (r.Kind == Limit || r.Kind == Absorption) && !r.OnSky {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+// acquitTwins clears lines that share their amplitude with one that stands.
+func (s *Scratch) acquitTwins() {
+	for i := range s.tracks {
+		for j := range s.tracks {
+			t, o := &s.tracks[i], &s.tracks[j]
+			if d := t.line.doublet; i == j || d < 0 || o.line.doublet != d {
+				continue
+			}
+			for part, r := range o.parts() {
+				if r.Kind == Emission && o.doubt[part] == "" {
+					t.doubt[part] = ""
+				}
+			}
+		}
+	}
+}
+
+// deniedFrom is by how many errors a stronger line must be too weak. Common practice, no source.
+const deniedFrom = 2.0
+
+// pairs are lines of one ion, the second at least as strong in flux as the first.
+// Case B has He I 4471 at 0.37 of 5876 and 4026 at 0.17; [O III] 4363 reaches 5007 at
+// densities of 1e7, [N II] 5755 6583 at 1e6 (Osterbrock & Ferland 2006, from memory); [Ne III] 3967
+// has 0.30 of 3869, from the same level (Storey & Zeippen 2000, from memory). Dust weakens the
+// bluer line.
+var pairs = [][2]string{
+	{"HeI_4026", "HeI_4471"}, {"HeI_4026", "HeI_5876"}, {"HeI_4471", "HeI_5876"},
+	{"OIII_4363", "OIII_5007"}, {"NII_5755", "NII_6583"}, {"NeIII_3967", "NeIII_3869"},
+}
+
+// findSisters lists for every line the stronger ones of its ion: pairs, and the
+// lines from lower levels in the Balmer and Paschen series. H-epsilon and later ones speak
+// for none: Ca II and their neighbors take from them.
+func (m *Meter) findSisters() {
+	m.sisters = make([][]int, len(m.lines))
+	for _, p := range pairs {
+		if i, j := m.find(p[0]), m.find(p[1]); i >= 0 && j >= 0 {
+			m.sisters[i] = append(m.sisters[i], j)
+		}
+	}
+	for i := range m.lines {
+		for j := range m.lines {
+			if a, b := &m.lines[i], &m.lines[j]; a.series() > 0 && a.series() == b.series() && b.Wave > max(a.Wave, 4000) {
+				m.sisters[i] = append(m.sisters[i], j)
+			}
+		}
+	}
+}
+
+// series returns the lower level of a Balmer or Paschen line, 0 for others.
+func (l *line) series() int {
+	switch {
+	case l.ion != hydrogenIon:
+	case l.Wave > 3640 && l.Wave < 6600:
+		return 2
+	case l.Wave > 8200 && l.Wave < 19000:
+		return 3
+	}
+	return 0
+}
+
+// find returns the index of a line, -1 where the list has none of the name.
+func (m *Meter) find(name string) int {
+	return slices.IndexFunc(m.lines, func(l line) bool { return l.Name == name })
+}
+
+// denied reports whether a line that must be stronger is not there: the spectrum, emission
+// taken away, has at its place less by deniedFrom errors, dips included.
+func (s *Scratch) denied(t *track, r *Result) bool {
+	if t.line.series() == 2 && r.WidthKms < narrowShock {
+		return false
+	}
+	mu, sigma, peak := s.bump(t, r)
+	for _, sister := range s.meter.sisters[t.index] {
+		for i := range s.tracks {
+			o := &s.tracks[i]
+			if o.index != sister || !o.usable || o.result.OnSky || o.result.Kind == Unmeasured || o.result.Kind == Emission && o.doubt[0] == "" {
+				continue
+			}
+			at := o.lam0 * mu / t.lam0
+			f := place(&s.arms[o.arm], at, sigma)
+			h := s.above(o.arm, &f)
+			if !(h.variance > 0) {
+				continue
+			}
+			least := peak * mu / at // of the same flux a redder line is lower
+			err := math.Hypot(least/r.SNR, math.Hypot(math.Sqrt(h.variance), s.relief(o.arm, at, sigma)))
+			if least-h.mean > deniedFrom*err {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+// How a line is kept from a second round.
+const (
+	inList   = iota // it is not
+	inGap           // its emission was the gap between dips: no box in emission
+	inVoid          // its emission was denied: the same
+	notThere        // it never emits and took the emission of a neighbor: left out
+)
+
+// chromospheric is the one line listed in absorption only that stars with active
+// chromospheres have in emission and that no other line is taken for.
+const chromospheric = "CaII_K"
+
+// weigh takes back what is no emission and reports whether a second round without
+// it would measure its neighbors better.
+func (s *Scratch) weigh() (again bool) {
+	if s.opt.Broad {
+		return false // of quasars neither iron nor the forest is told from dips
+	}
+	s.clearEmission()
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		for part, r := range t.parts() {
+			if t.doubt[part] = ""; r.Kind == Emission {
+				s.judge(t, part)
+			}
+		}
+	}
+	s.acquit()
+	s.acquitTwins()
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		for part, r := range t.parts() {
+			switch {
+			case r.Kind != Emission:
+			case t.line.Seen == Absorption && t.line.Name != chromospheric:
+				t.doubt[part] = ReasonWrongSign
+			case t.doubt[part] == "" && (s.bar[t.index] == inVoid || s.denied(t, r)):
+				t.doubt[part] = ReasonNoCompanion
+			}
+		}
+	}
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		for part, r := range t.parts() {
+			bar := byte(inList)
+			switch t.doubt[part] {
+			case ReasonCrowded:
+				bar = inGap
+			case ReasonNoCompanion:
+				bar = inVoid
+			case ReasonWrongSign:
+				if r.Blend != "" {
+					bar = notThere
+				}
+			default:
+				continue
+			}
+			r.takeBack(t.doubt[part])
+			if bar != inList && s.bar[t.index] == inList {
+				s.bar[t.index] = bar
+				again = again || bar == notThere || t.seen() && r.Blend != ""
+			}
+		}
+	}
+	return again
+}
+
+// parts returns the results of a line: its own and that of a second component.
+func (t *track) parts() [2]*Result { return [2]*Result{&t.result, &t.second} }
+
+// takeBack makes emission a limit, or what it is without an equivalent width.
+func (r *Result) takeBack(why string) {
+	if math.IsNaN(r.EWRest) {
+		blankNumbers(r)
+		r.Reason = why
+		return
+	}
+	r.Kind, r.UpperLimit = Limit, math.Abs(r.EWRest)+3*r.EWRestErr
+	if why == ReasonWrongSign {
+		r.UpperLimit = 3 * r.EWRestErr
+	}
+	r.OffsetKms, r.OffsetErr = math.NaN(), math.NaN()
+	if r.Reason == ReasonSum {
+		why = sumAnd[why]
+	}
+	r.Reason = why
+}
+
+// sumAnd joins reasons to ReasonSum: the row has the light of others all the same.
+var sumAnd = map[string]string{
+	ReasonCrowded: ReasonSum + "|" + ReasonCrowded, ReasonWrongSign: ReasonSum + "|" + ReasonWrongSign, ReasonNoCompanion: ReasonSum + "|" + ReasonNoCompanion,
+}
+
+// recall says of lines that were barred, and are mere limits without it, why they were.
+func (s *Scratch) recall() {
+	for i := range s.tracks {
+		t := &s.tracks[i]
+		if t.result.Kind != Limit || t.result.Reason != "" {
+			continue
+		}
+		switch s.bar[t.index] {
+		case inGap:
+			t.result.Reason = ReasonCrowded
+		case inVoid:
+			t.result.Reason = ReasonNoCompanion
+		}
+	}
+}
