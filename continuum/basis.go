@@ -99,11 +99,14 @@ func (n *Normal) Ridge(lambda float64) {
 	}
 	p := lambda * mean / float64(n.size)
 	for i := 0; i+2 < n.size; i++ {
-		n.difference(i, p, []float64{1, -2, 1})
+		n.difference(i, p, second)
 	}
 }
 
-var fourth = []float64{1, -4, 6, -4, 1}
+var (
+	second = []float64{1, -2, 1}
+	fourth = []float64{1, -4, 6, -4, 1}
+)
 
 // Stiffen adds the penalty precision(i) times the squared fourth difference of
 // the coefficients i to i+4, for all i: a Gaussian prior on the continuum that

@@ -23,6 +23,10 @@ type Options struct {
 	// Iterations is the largest number of fits; the loop ends early when the
 	// set of clipped points no longer changes.
 	Iterations int
+	// Bend is the standard deviation of the prior on the spline's bends in gaps, in
+	// units of the flux: of the change of its slope over one knot, times the
+	// spacing. 0 leaves gaps to the ridge. See unbend.
+	Bend float64
 	// Grow also leaves out that many neighbors on each side of a clipped point.
 	Grow int
 }
@@ -39,6 +43,10 @@ type Fitter struct {
 	next    []bool
 	resid   []float64
 	inverse []float64
+
+	intervals []interval
+	held      []float64 // x of the points that count in the last round
+
 	scatter float64
 	clipped int
 	rounds  int
@@ -81,7 +89,7 @@ func (f *Fitter) Fit(x, flux, ivar []float64, opt Options) error {
 		f.first[i], f.values[i] = f.basis.Eval(x[i])
 	}
 	clear(f.out)
-	f.clipped = 0
+	f.clipped, f.scatter = 0, 1
 	for f.rounds = 1; ; f.rounds++ {
 		f.normal.Reset(k)
 		clear(f.coef)
@@ -98,13 +106,18 @@ func (f *Fitter) Fit(x, flux, ivar []float64, opt Options) error {
 			}
 		}
 		f.normal.Ridge(ridge)
+		if opt.Bend > 0 {
+			f.survey(flux, ivar, lo, hi)
+			f.unbend(opt.Bend)
+		}
 		if !f.normal.Factor() {
 			return ErrTooFew
 		}
 		f.normal.Solve(f.coef)
-		f.resid = f.resid[:0]
+		f.resid, f.held = f.resid[:0], f.held[:0]
 		for i := lo; i <= hi; i++ {
 			if ivar[i] > 0 && !f.out[i] {
+				f.held = append(f.held, x[i])
 				f.resid = append(f.resid, math.Abs(math.Sqrt(ivar[i])*(flux[i]-f.at(i))))
 			}
 		}
@@ -180,9 +193,9 @@ func (f *Fitter) Errors() {
 }
 
 // Sigma returns the standard error of the continuum at x from the noise alone,
-// after a call of Errors. In a gap of more than three knots, which only the
-// ridge carries the spline over, it is far larger than the spline's error:
-// nothing is known there.
+// after a call of Errors. In a gap it has what Options.Bend leaves open; without that, in a
+// gap of more than three knots, which only the ridge carries the spline over, it is far
+// larger than the spline's error: nothing is known there.
 func (f *Fitter) Sigma(x float64) float64 {
 	k := f.basis.Size()
 	i, v := f.basis.Eval(math.Max(f.basis.Low, math.Min(f.basis.High, x)))

@@ -7,11 +7,11 @@ import (
 )
 
 // complexes are the rest wavelengths, vacuum Angstrom, between which blends of
-// broad lines hide the continuum of a quasar: C IV down to the minimum before
+// broad lines hide the continuum of a quasar: O I with C II, Si IV, C IV down to the minimum before
 // He II, Al III with Si III] and C III], Mg II (the ends of Vanden Berk et al. 2001, AJ
 // 122, 549, table 2, from memory), and H-beta with [O III] (between the windows of
 // Shen et al. 2011, ApJS 194, 45, from memory).
-var complexes = [][2]float64{{1494, 1620}, {1830, 1976}, {2686, 2913}, {4700, 5100}}
+var complexes = [][2]float64{{1283, 1357}, {1357, 1446}, {1494, 1620}, {1830, 1976}, {2686, 2913}, {4700, 5100}}
 
 const (
 	// sideHalf is half the width, rest Angstrom, of the two windows at the ends of

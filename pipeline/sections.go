@@ -157,5 +157,5 @@ func (s Settings) thresholds() redshift.Thresholds {
 
 func (s Settings) continuumOptions() continuum.Options {
 	c := s.Continuum
-	return continuum.Options{Spacing: c.KnotSpacing, ClipLow: c.ClipLow, ClipHigh: c.ClipHigh, Iterations: c.Iterations}
+	return continuum.Options{Spacing: c.KnotSpacing, ClipLow: c.ClipLow, ClipHigh: c.ClipHigh, Iterations: c.Iterations, Bend: gapBend}
 }
