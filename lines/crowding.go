@@ -243,6 +243,7 @@ const (
 	inList   = iota // it is not
 	inGap           // its emission was the gap between dips: no box in emission
 	inVoid          // its emission was denied: the same
+	strayed         // it went to the end of its range: no box
 	notThere        // it never emits and took the emission of a neighbor: left out
 )
 
@@ -254,9 +255,10 @@ const forestEnd, forestWidth = 1215.5, 500.0
 // chromospheres have in emission and that no other line is taken for.
 const chromospheric = "CaII_K"
 
-// weigh takes back what is no emission and reports whether a second round without
-// it would measure its neighbors better.
-func (s *Scratch) weigh() (again bool) {
+// weigh takes back what is no line and reports whether a second round without
+// it would measure its neighbors better. What strays only in the last round, where nothing
+// more can be done for it, keeps its kind.
+func (s *Scratch) weigh(last bool) (again bool) {
 	// Of quasars neither iron nor the forest is told from dips.
 	if !s.opt.Broad {
 		s.clearEmission()
@@ -274,6 +276,8 @@ func (s *Scratch) weigh() (again bool) {
 		t := &s.tracks[i]
 		for part, r := range t.parts() {
 			switch {
+			case t.doubt[part] == "" && s.beyond(t, r) && (!last || s.bar[t.index] == strayed):
+				t.doubt[part] = ReasonAtBound
 			case r.Kind == Absorption && t.broad && t.line.Wave < forestEnd && r.WidthKms > forestWidth:
 				t.doubt[part] = ReasonCrowded
 			case r.Kind != Emission:
@@ -289,6 +293,8 @@ func (s *Scratch) weigh() (again bool) {
 		for part, r := range t.parts() {
 			bar := byte(inList)
 			switch t.doubt[part] {
+			case ReasonAtBound:
+				bar = strayed
 			case ReasonCrowded:
 				bar = inGap
 			case ReasonNoCompanion:
@@ -297,17 +303,23 @@ func (s *Scratch) weigh() (again bool) {
 				if r.Blend != "" {
 					bar = notThere
 				}
-			default:
+			case "":
 				continue
 			}
 			r.takeBack(t.doubt[part])
-			if bar != inList && r.Flux > 0 && s.bar[t.index] == inList {
+			if bar != inList && (r.Flux > 0 || bar == strayed) && s.bar[t.index] == inList {
 				s.bar[t.index] = bar
-				again = again || bar == notThere || t.seen() && r.Blend != ""
+				again = again || bar == notThere || bar == strayed || t.seen() && r.Blend != ""
 			}
 		}
 	}
 	return again
+}
+
+// beyond reports whether the center of a line ended at the limit of its range: what is
+// there lies elsewhere, and is something else.
+func (s *Scratch) beyond(t *track, r *Result) bool {
+	return (r.Kind == Emission || r.Kind == Absorption) && math.Abs(r.OffsetKms) > 0.999*s.opt.search(t.broad)
 }
 
 // parts returns the results of a line: its own and that of a second component.
@@ -333,7 +345,7 @@ func (r *Result) takeBack(why string) {
 
 // sumAnd joins reasons to ReasonSum: the row has the light of others all the same.
 var sumAnd = map[string]string{
-	ReasonCrowded: ReasonSum + "|" + ReasonCrowded, ReasonWrongSign: ReasonSum + "|" + ReasonWrongSign, ReasonNoCompanion: ReasonSum + "|" + ReasonNoCompanion,
+	ReasonCrowded: ReasonSum + "|" + ReasonCrowded, ReasonWrongSign: ReasonSum + "|" + ReasonWrongSign, ReasonNoCompanion: ReasonSum + "|" + ReasonNoCompanion, ReasonAtBound: ReasonSum + "|" + ReasonAtBound,
 }
 
 // recall says of lines that were barred, and are mere limits without it, why they were.
@@ -348,6 +360,8 @@ func (s *Scratch) recall() {
 			t.result.Reason = ReasonCrowded
 		case inVoid:
 			t.result.Reason = ReasonNoCompanion
+		case strayed:
+			t.result.Reason = ReasonAtBound
 		}
 	}
 }

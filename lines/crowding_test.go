@@ -143,3 +143,21 @@ func TestCompanions(t *testing.T) {
 		}
 	}
 }
+
+// What lies beyond the range of a line's offset is something else: a limit at the place of the
+// line, with the width of the spectrum's other line. Within the range it is the line.
+func TestStrayed(t *testing.T) {
+	m := parse(t, oneLine+"[[line]]\nname = \"B\"\nion = \"Y I\"\nwave = 5300.0\nseen = \"absorption\"\nsource = \"invented\"\n")
+	for _, tc := range []struct {
+		offset       float64 // km/s, of 300 allowed
+		kind, reason string
+	}{
+		{0, Absorption, ""}, {200, Absorption, ""}, {450, Limit, ReasonAtBound}, {-500, Limit, ReasonAtBound},
+	} {
+		var a Arm
+		noisy(&a, newArm(grid(5150, 30, 1600), 1, 0.02, rest(5000*(1+tc.offset/c), 150, -0.5), rest(5300, 100, -0.4)), rand.New(rand.NewPCG(43, 1)))
+		if r := m.Measure(nil, []Arm{a}, Options{}, nil)[0]; r.Kind != tc.kind || r.Reason != tc.reason {
+			t.Errorf("%g km/s off: %s %q at %.0f km/s, %.2f +- %.2f", tc.offset, r.Kind, r.Reason, r.OffsetKms, r.EWRest, r.EWRestErr)
+		}
+	}
+}

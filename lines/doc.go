@@ -26,9 +26,10 @@
 //     away.
 //  5. Blends in which nothing was seen come last, with the offset and width of
 //     the strongest line of the spectrum, as linear fits.
-//  6. Except in quasars crowding.go takes back emission that is the gap between
-//     absorption lines, or that other lines of its ion deny; where that was part
-//     of a blend, all is measured once more without it.
+//  6. crowding.go takes back what is no line: emission that is the gap between
+//     absorption lines (relief.go) or that other lines of its ion deny, a wrong
+//     sign, an offset at its limit. Where others may gain by it, all is measured once
+//     more without.
 //
 // docs/lines.md tells the same to the user of the table of lines.
 package lines

@@ -60,7 +60,7 @@ func Fold(results []Result) []Result {
 func doubted(reasons ...string) string {
 	for _, r := range reasons {
 		switch strings.TrimPrefix(r, ReasonSum+"|") {
-		case ReasonCrowded, ReasonNoCompanion, ReasonWrongSign:
+		case ReasonCrowded, ReasonNoCompanion, ReasonWrongSign, ReasonAtBound:
 			return r
 		}
 	}

@@ -43,7 +43,7 @@ const (
 	ReasonBlended     = "blended"      // too close to another line, which carries the sum of both
 	ReasonSum         = "sum"          // measured: carries the lines of its blend that are blended
 	ReasonNoFit       = "no_fit"       // the pixels do not determine the profile
-	ReasonAtBound     = "at_bound"     // offset or width ended at the limit of its range; the values stand
+	ReasonAtBound     = "at_bound"     // offset or width ended at the limit of its range; the values stand, but of a limit the offset was elsewhere
 	ReasonCrowded     = "crowded"      // no higher than the dips around it are deep: the gap between absorption, not emission
 	ReasonNoCompanion = "no_companion" // a line of the ion that would be stronger in emission is not there
 )
@@ -292,9 +292,9 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 	s.meter, s.arms, s.opt = m, arms, opt.withDefaults()
 	s.bar = append(s.bar[:0], m.none...)
 	s.round()
-	if s.weigh() {
+	if s.weigh(false) {
 		s.round()
-		s.weigh()
+		s.weigh(true)
 		s.recall()
 	}
 	for i := range s.tracks {

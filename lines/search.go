@@ -185,9 +185,13 @@ func (s *Scratch) search(t *track) {
 		high = min(high, max(low, 0.25*t.next))
 	}
 	limit := s.opt.search(t.broad)
+	high = max(high, low)
+	if s.bar[t.index] == strayed {
+		high = 0
+	}
 	last := -1
 	var best float64
-	for sg := low; sg <= max(high, low); sg *= 1.5 {
+	for sg := low; sg <= high; sg *= 1.5 {
 		h := max(1, int(math.Round(1.5*sg/t.pix-0.5)))
 		if h == last {
 			continue
