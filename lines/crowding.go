@@ -166,11 +166,11 @@ const deniedFrom = 2.0
 // pairs are lines of one ion, the second at least as strong in flux as the first.
 // Case B has He I 4471 at 0.37 of 5876 and 4026 at 0.17; [O III] 4363 reaches 5007 at
 // densities of 1e7, [N II] 5755 6583 at 1e6 (Osterbrock & Ferland 2006, from memory); [Ne III] 3967
-// has 0.30 of 3869, from the same level (Storey & Zeippen 2000, from memory). Dust weakens the
-// bluer line.
+// has 0.30 of 3869, from the same level (Storey & Zeippen 2000, from memory), and [Ne V] 3346 0.37 of
+// 3426 (Osterbrock & Ferland 2006, from memory). Dust weakens the bluer line.
 var pairs = [][2]string{
 	{"HeI_4026", "HeI_4471"}, {"HeI_4026", "HeI_5876"}, {"HeI_4471", "HeI_5876"},
-	{"OIII_4363", "OIII_5007"}, {"NII_5755", "NII_6583"}, {"NeIII_3967", "NeIII_3869"},
+	{"OIII_4363", "OIII_5007"}, {"NII_5755", "NII_6583"}, {"NeIII_3967", "NeIII_3869"}, {"NeV_3346", "NeV_3426"},
 }
 
 // findSisters lists for every line the stronger ones of its ion: pairs, and the
@@ -260,8 +260,8 @@ const chromospheric = "CaII_K"
 // more can be done for it, keeps its kind.
 func (s *Scratch) weigh(last bool) (again bool) {
 	// Of quasars neither iron nor the forest is told from dips.
+	s.clearEmission()
 	if !s.opt.Broad {
-		s.clearEmission()
 		for i := range s.tracks {
 			for part, r := range s.tracks[i].parts() {
 				if r.Kind == Emission {
@@ -276,6 +276,9 @@ func (s *Scratch) weigh(last bool) (again bool) {
 		t := &s.tracks[i]
 		for part, r := range t.parts() {
 			switch {
+			case s.merged(t, r):
+				blankNumbers(r)
+				r.Reason = ReasonNoFit
 			case t.doubt[part] == "" && s.beyond(t, r) && (!last || s.bar[t.index] == strayed):
 				t.doubt[part] = ReasonAtBound
 			case r.Kind == Absorption && t.broad && t.line.Wave < forestEnd && r.WidthKms > forestWidth:
@@ -283,7 +286,7 @@ func (s *Scratch) weigh(last bool) (again bool) {
 			case r.Kind != Emission:
 			case t.line.Seen == Absorption && t.line.Name != chromospheric:
 				t.doubt[part] = ReasonWrongSign
-			case t.doubt[part] == "" && !s.opt.Broad && (s.bar[t.index] == inVoid || s.denied(t, r)):
+			case t.doubt[part] == "" && !t.broad && (s.bar[t.index] == inVoid || s.denied(t, r)):
 				t.doubt[part] = ReasonNoCompanion
 			}
 		}
@@ -320,6 +323,12 @@ func (s *Scratch) weigh(last bool) (again bool) {
 // there lies elsewhere, and is something else.
 func (s *Scratch) beyond(t *track, r *Result) bool {
 	return (r.Kind == Emission || r.Kind == Absorption) && math.Abs(r.OffsetKms) > 0.999*s.opt.search(t.broad)
+}
+
+// merged reports whether a line of hydrogen with wide wings is as wide as it may be: its
+// neighbors and it are one, and what it has of that is not told.
+func (s *Scratch) merged(t *track, r *Result) bool {
+	return s.opt.Stark && t.line.ion == hydrogenIon && r.Kind == Absorption && r.WidthKms > 0.999*starkWidest
 }
 
 // parts returns the results of a line: its own and that of a second component.
