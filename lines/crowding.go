@@ -77,10 +77,9 @@ const (
 	// around it, from which a line is beyond doubt and speaks for others.
 	firmSNR, firmHeight = 10.0, 5.0
 	// allyHeight is the height from which emission is believed where a firm line has its
-	// offset and width: a gap would have to lie in the one place. Common practice, no
-	// source: twice in a hundred a Gaussian variate is above two.
+	// offset and width: a gap would have to lie in the one place. Common practice, no source.
 	allyHeight = 1.5
-	// Kin differ by less than this part of the width in offset, and by less than this
+	// Allies differ by less than this part of the width in offset, and by less than this
 	// factor in width.
 	allyOffset, allyWidth = 0.5, 1.5
 )
