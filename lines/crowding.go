@@ -263,7 +263,7 @@ func (s *Scratch) weigh(last bool) (again bool) {
 	if !s.opt.Broad {
 		for i := range s.tracks {
 			for part, r := range s.tracks[i].parts() {
-				if r.Kind == Emission {
+				if r.Kind == Emission && !s.tracks[i].stands {
 					s.judge(&s.tracks[i], part)
 				}
 			}
@@ -275,6 +275,7 @@ func (s *Scratch) weigh(last bool) (again bool) {
 		t := &s.tracks[i]
 		for part, r := range t.parts() {
 			switch {
+			case t.stands:
 			case s.merged(t, r):
 				blankNumbers(r)
 				r.Reason = ReasonNoFit

@@ -291,9 +291,9 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 	}
 	s.meter, s.arms, s.opt = m, arms, opt.withDefaults()
 	s.bar = append(s.bar[:0], m.none...)
-	s.round()
+	s.round(false)
 	if s.weigh(false) {
-		s.round()
+		s.round(true)
 		s.weigh(true)
 		s.recall()
 	}
@@ -305,22 +305,6 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 	}
 	s.meter, s.arms = nil, nil
 	return dst
-}
-
-// round looks for the lines and fits them.
-func (s *Scratch) round() {
-	s.claims = s.claims[:0]
-	s.load()
-	s.survey()
-	s.findTracks()
-	s.plan()
-	for _, faint := range []bool{false, true} {
-		for _, b := range s.order {
-			if s.blends[b].faint == faint {
-				s.measureBlend(&s.blends[b])
-			}
-		}
-	}
 }
 
 func (a *Arm) check() {

@@ -42,7 +42,7 @@ func (s *Scratch) apart(a, b *track) float64 {
 // plan settles lines that cannot be told apart and gathers the blends.
 func (s *Scratch) plan() {
 	s.blends, s.member = s.blends[:0], s.member[:0]
-	s.anchor, s.series, s.wings = [2][2]kinematics{}, [2]kinematics{}, kinematics{}
+	s.lent = lent{}
 	s.parent = s.parent[:0]
 	for i := range s.tracks {
 		s.parent = append(s.parent, i)

@@ -1,7 +1,6 @@
 package lines
 
 import (
-	"cmp"
 	"math"
 	"slices"
 
@@ -17,7 +16,7 @@ const (
 	// reliefFrom is how many boxes in dips it takes to tell.
 	reliefFrom = 6
 	// reliefBoxes bounds how many boxes are tried around a narrow line.
-	reliefBoxes = 60
+	reliefBoxes = 40
 	// reliefOwn is the part around a line, in sigmas, that is its own.
 	reliefOwn = 2.5
 	// boxShare is the mean of a Gaussian over +-1 sigma in units of its peak,
@@ -108,8 +107,12 @@ func (s *Scratch) relief(arm int, mu, sigma float64) float64 {
 	if len(s.heights) == 0 {
 		return 0
 	}
-	slices.SortFunc(s.heights, func(a, b height) int { return cmp.Compare(a.mean, b.mean) })
-	middle := s.heights[len(s.heights)/2].mean
+	s.means = s.means[:0]
+	for _, h := range s.heights {
+		s.means = append(s.means, h.mean)
+	}
+	slices.Sort(s.means)
+	middle := s.means[len(s.means)/2]
 	var whole dips
 	for _, h := range s.heights {
 		whole.add(height{h.mean - middle, h.variance})

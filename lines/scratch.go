@@ -24,9 +24,12 @@ type Scratch struct {
 	blends []blend
 	order  []int // blends, strongest first
 	member []int // track indices of all blends, one after the other
-	anchor [2][2]kinematics
-	series [2]kinematics // of the strongest line of hydrogen in a quasar, by sign
-	wings  kinematics    // of the strongest line of hydrogen in a hot star
+	lent         // by the blends measured so far
+
+	done      []done // blends of the first round
+	wasMember []int
+	borrowed  lent // what faint blends of the first round could borrow
+	was       []was
 
 	bins      []int // pixels a bin may have, along a window
 	prob      problem
@@ -44,6 +47,7 @@ type Scratch struct {
 	placed    []placement
 	placedArm int // the arm of placed
 	heights   []height
+	means     []float64
 	bar       []byte // of every line of the list, for a second round: inList and others
 	labels    map[labelKey]string
 	labeled   *Meter // whose names the labels are
@@ -63,6 +67,7 @@ type track struct {
 	broad   bool    // allowed broad widths and offsets
 	usable  bool    // takes part in a fit
 	strong  bool    // claims the pixels around it
+	stands  bool    // has its results from the first round, judged there
 	snr     float64 // of the best box, signed: negative in absorption
 	first   float64 // snr before stronger lines claimed their pixels
 	v, s    float64 // offset and total sigma of the best box, or the guess
