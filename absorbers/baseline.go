@@ -28,6 +28,8 @@ type forest struct {
 	memory   float64   // by how much correlation of neighboring bins raises that of wide means
 	sres     float64   // instrument's sigma, km/s
 	lines    bool      // the background has broad emission lines
+	own      []float64 // wavelengths of a galaxy's own lines
+	alpha    float64   // of Lyman alpha
 	basis    [][]float64
 	keep     []bool
 	shade    []float64 // transmission of the systems found, 1 at first

@@ -109,6 +109,7 @@ type doublet struct {
 type Finder struct {
 	doublets []doublet
 	series   []hydrogen.AbsorptionLine // Lyman alpha first
+	own      []float64                 // see ownLines
 	names    []string
 }
 
@@ -118,7 +119,7 @@ const seriesLines = 5
 // NewFinder returns the finder of a list. Doublets whose two lines are in the
 // list with oscillator strengths are looked for; hydrogen is computed.
 func NewFinder(list *linelist.List) *Finder {
-	f := &Finder{}
+	f := &Finder{own: ownWaves(list)}
 	for _, d := range []struct{ kind, strong, weak string }{
 		{MgII, "MgII_2796", "MgII_2803"}, {CIV, "CIV_1548", "CIV_1550"},
 		{SiIV, "SiIV_1393", "SiIV_1402"}, {AlIII, "AlIII_1854", "AlIII_1862"},
@@ -184,6 +185,7 @@ func (f *Finder) Find(dst []System, arms []Arm, opt Options, scratch *Scratch) [
 	if len(s.track.x) < 2*envelopeLeast {
 		return dst
 	}
+	s.forest.own, s.forest.alpha = f.own, f.series[0].Wave
 	if s.forest.fill(&s.track, opt.Z) && s.forest.follow(opt) {
 		s.findDamped(f, opt)
 		dst = s.reportHydrogen(dst, f, opt)

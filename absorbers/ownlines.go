@@ -2,7 +2,9 @@ package absorbers
 
 import (
 	"math"
+	"slices"
 
+	"duskline/linelist"
 	"duskline/spectrum"
 )
 
@@ -18,13 +20,22 @@ const (
 	ownHalfKms = 800.0
 )
 
-// ownWaves are the lines of galaxies that are strong or crowd, vacuum Angstrom (Morton
-// 2003, from memory): higher Lyman lines, C III 977, N III 990, O VI, C II 1037, Si II
-// 1190 and 1193, N I 1200, Si III 1206, and beyond Lyman alpha N V and Si II 1260. Single
-// fainter ones, such as N II 1084, Fe III 1122, Fe II 1145 and C III 1176, are much
-// narrower than a line of ownLogN.
-var ownWaves = [...]float64{
-	949.74, 972.54, 977.02, 989.80, 1025.72, 1031.93, 1037.0, 1190.42, 1193.29, 1200.0, 1206.50, 1238.82, 1242.80, 1260.42,
+// ownLines names the lines of galaxies that are strong or crowd. Single fainter ones, such as
+// N II 1084, Fe III 1122, Fe II 1145 and C III 1176, are much narrower than a line of ownLogN.
+var ownLines = [...]string{
+	"Lyd", "Lyg", "CIII_977", "NIII_989", "Lyb", "OVI_1031", "CII_1036", "OVI_1037", "SiII_1190", "SiII_1193", "NI_1200", "SiIII_1206",
+	"NV_1238", "NV_1242", "SiII_1260",
+}
+
+// ownWaves returns the wavelengths of those that are in the list.
+func ownWaves(list *linelist.List) []float64 {
+	var waves []float64
+	for _, l := range slices.Concat(list.Lines(), list.Rare()) {
+		if slices.Contains(ownLines[:], l.Name) {
+			waves = append(waves, l.Wave)
+		}
+	}
+	return waves
 }
 
 // hideOwn takes the bins out that a galaxy's own lines dim.
@@ -36,8 +47,8 @@ func (f *forest) hideOwn(z float64) {
 			f.noise[i] = 0
 		}
 	}
-	for _, w := range ownWaves {
+	for _, w := range f.own {
 		hide(w, ownHalfKms+2*f.sres, ownHalfKms+2*f.sres)
 	}
-	hide(1215.67, ownHydrogenKms, ownHydrogenKms)
+	hide(f.alpha, ownHydrogenKms, ownHydrogenKms)
 }

@@ -39,7 +39,7 @@ func objectColumns() []column[Object] {
 			func(o *O) any { return &o.Gap }},
 		{Column{Name: "r_stat", UCD: "stat.correlation", Display: "F10.3", Description: "Tonry & Davis (1979) r of the best peak"},
 			func(o *O) any { return &o.RStat }},
-		{Column{Name: "lines_seen", UCD: "meta.number;spect.line", Description: "features that stand out by themselves, a blend as one"},
+		{Column{Name: "lines_seen", UCD: "meta.number;spect.line", Description: "features that stand out by themselves, a blend as one, and all weak ones that do so together as one"},
 			func(o *O) any { return &o.LinesSeen }},
 		{Column{Name: "snr", UCD: "stat.snr", Display: "F10.3", Description: "median signal-to-noise ratio a pixel"},
 			func(o *O) any { return &o.SNR }},

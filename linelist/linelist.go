@@ -5,12 +5,13 @@ package linelist
 
 import (
 	"bytes"
+	"cmp"
 	"crypto/sha256"
 	"encoding/hex"
 	"errors"
 	"fmt"
 	"math"
-	"sort"
+	"slices"
 
 	"duskline/hydrogen"
 
@@ -36,25 +37,31 @@ type Line struct {
 	// G band; its profile fit is an approximation.
 	Feature bool
 	Source  string // where the numbers come from
+	// Galactic is true for lines that gas of our own Galaxy absorbs, strong
+	// enough for a survey, in front of whatever is behind it.
+	Galactic bool
 }
 
 // List is an immutable set of lines in order of rest wavelength.
 type List struct {
 	lines  []Line
+	rare   []Line
+	night  []float64
 	byName map[string]int
 	digest string
 }
 
 type lineRow struct {
-	Name    string  `toml:"name"`
-	Ion     string  `toml:"ion"`
-	Wave    float64 `toml:"wave"`
-	F       float64 `toml:"f"`
-	Gamma   float64 `toml:"gamma"`
-	Group   string  `toml:"group"`
-	Seen    string  `toml:"seen"`
-	Feature bool    `toml:"feature"`
-	Source  string  `toml:"source"`
+	Name     string  `toml:"name"`
+	Ion      string  `toml:"ion"`
+	Wave     float64 `toml:"wave"`
+	F        float64 `toml:"f"`
+	Gamma    float64 `toml:"gamma"`
+	Group    string  `toml:"group"`
+	Seen     string  `toml:"seen"`
+	Feature  bool    `toml:"feature"`
+	Source   string  `toml:"source"`
+	Galactic bool    `toml:"galactic"`
 }
 
 type hydrogenRow struct {
@@ -68,6 +75,11 @@ type hydrogenRow struct {
 type document struct {
 	Hydrogen []hydrogenRow `toml:"hydrogen"`
 	Line     []lineRow     `toml:"line"`
+	Rare     []lineRow     `toml:"rare"`
+	Night    struct {
+		Source string    `toml:"source"`
+		Lines  []float64 `toml:"lines"`
+	} `toml:"night"`
 }
 
 // Parse reads a line list. Hydrogen rows give quantum numbers only: their
@@ -97,13 +109,25 @@ func Parse(text []byte) (*List, error) {
 	for _, r := range doc.Line {
 		lines = append(lines, Line(r))
 	}
+	var rare []Line
+	for _, r := range doc.Rare {
+		rare = append(rare, Line(r))
+	}
 	seen := map[string]bool{}
-	for _, l := range lines {
+	for _, l := range slices.Concat(lines, rare) {
 		errs = append(errs, l.problems()...)
 		if l.Name != "" && seen[l.Name] {
 			errs = append(errs, fmt.Errorf("line list: line %q is listed twice", l.Name))
 		}
 		seen[l.Name] = true
+	}
+	if len(doc.Night.Lines) > 0 && doc.Night.Source == "" {
+		errs = append(errs, errors.New("line list: night: source is missing: say where the numbers come from"))
+	}
+	for i, w := range doc.Night.Lines {
+		if !(w > 100 && w < 1e6) || i > 0 && !(w > doc.Night.Lines[i-1]) {
+			errs = append(errs, fmt.Errorf("line list: night: line %d at %g, want vacuum Angstrom between 100 and 1e6, each above the one before", i+1, w))
+		}
 	}
 	if len(errs) > 0 {
 		return nil, errors.Join(errs...)
@@ -111,8 +135,10 @@ func Parse(text []byte) (*List, error) {
 	if len(lines) == 0 {
 		return nil, errors.New("line list: no lines")
 	}
-	sort.SliceStable(lines, func(i, j int) bool { return lines[i].Wave < lines[j].Wave })
-	list := &List{lines: lines, byName: make(map[string]int, len(lines))}
+	byWave := func(a, b Line) int { return cmp.Compare(a.Wave, b.Wave) }
+	slices.SortStableFunc(lines, byWave)
+	slices.SortStableFunc(rare, byWave)
+	list := &List{lines: lines, rare: rare, night: doc.Night.Lines, byName: make(map[string]int, len(lines))}
 	for i, l := range lines {
 		list.byName[l.Name] = i
 	}
@@ -149,7 +175,15 @@ func (l *Line) problems() []error {
 // change the slice.
 func (l *List) Lines() []Line { return l.lines }
 
-// Find returns the line of that name.
+// Rare returns, in order of rest wavelength, the lines that explain what a spectrum
+// shows but are not measured and stand in no template. The caller must not change the slice.
+func (l *List) Rare() []Line { return l.rare }
+
+// Night returns the observed wavelengths of the lines of the night sky, vacuum Angstrom, in
+// order. The caller must not change the slice.
+func (l *List) Night() []float64 { return l.night }
+
+// Find returns the line of that name, none of the rare ones.
 func (l *List) Find(name string) (Line, bool) {
 	i, ok := l.byName[name]
 	if !ok {

@@ -124,6 +124,73 @@ func TestWavelengths(t *testing.T) {
 	}
 }
 
+// Rare lines are not among those that are measured, and no line of the list lies within 50 km/s of one: it
+// would be the same. Their air wavelengths are from memory, to 0.5 Angstrom (25 km/s).
+func TestRareLines(t *testing.T) {
+	list := builtIn(t)
+	if len(list.Rare()) < 16 {
+		t.Errorf("%d rare lines, configs/lines.toml has 16", len(list.Rare()))
+	}
+	last := 0.0
+	for _, r := range list.Rare() {
+		if _, ok := list.Find(r.Name); ok {
+			t.Errorf("%s is found among the lines that are measured", r.Name)
+		}
+		if r.Wave < last {
+			t.Errorf("%s is out of order", r.Name)
+		}
+		last = r.Wave
+		for _, l := range list.Lines() {
+			if math.Abs(l.Wave/r.Wave-1)*299792.458 < 50 {
+				t.Errorf("%s is %s", r.Name, l.Name)
+			}
+		}
+	}
+	for _, c := range []struct {
+		name string
+		air  float64 // Angstrom, NIST ASD, from memory
+	}{{"NI_5198", 5197.90}, {"FeVII_6087", 6087.0}, {"FeX_6374", 6374.5}, {"OII_7320", 7319.99}, {"FeXI_7892", 7891.8}} {
+		k := slices.IndexFunc(list.Rare(), func(l linelist.Line) bool { return l.Name == c.name })
+		// Vacuum wavelengths are longer by a factor of 1.000276 to 1.000279 from 5,000 to 8,000 Angstrom (Ciddor 1996).
+		if k < 0 || math.Abs(list.Rare()[k].Wave/c.air-1.0002775) > 1e-4 {
+			t.Errorf("%s is not at %g in air", c.name, c.air)
+		}
+	}
+}
+
+// The brightest lines of the night sky are there: [O I], sodium, mercury, and those of OH (Osterbrock et al. 1996, PASP 108, 277, from memory, air
+// wavelengths; mercury NIST, from memory). An angstrom is half the width of a line at R = 2000, and OH lines are blends of two.
+func TestNightSky(t *testing.T) {
+	night := builtIn(t).Night()
+	for _, air := range []float64{4358.33, 5460.74, 5577.34, 5889.95, 5895.92, 6300.30, 6363.78, 6863.96, 7276.41, 7340.89, 7750.64, 7794.11, 7821.50, 7913.71,
+		7964.65, 7993.33, 8344.60, 8399.17, 8430.17, 8465.36, 8827.10, 8885.85, 8919.64, 8958.08, 9375.96, 9439.67, 9476.9, 9791.4} {
+		want := air * (1 + 2.77e-4) // Ciddor 1996, within 3e-6 from 4300 to 10000 Angstrom
+		k, _ := slices.BinarySearch(night, want)
+		near := math.Inf(1)
+		for _, i := range []int{k - 1, k} {
+			if i >= 0 && i < len(night) {
+				near = math.Min(near, math.Abs(night[i]-want))
+			}
+		}
+		if near > 1 {
+			t.Errorf("no line within an angstrom of %.2f, %.1f away", want, near)
+		}
+	}
+}
+
+// Gas of our Galaxy is strong in Ca II and Na I in the optical.
+func TestGalacticLines(t *testing.T) {
+	var names []string
+	for _, l := range builtIn(t).Lines() {
+		if l.Galactic {
+			names = append(names, l.Name)
+		}
+	}
+	if want := []string{"CaII_K", "CaII_H", "NaI_D2", "NaI_D1"}; !slices.Equal(names, want) {
+		t.Errorf("galactic lines are %v, want %v", names, want)
+	}
+}
+
 // Hydrogen is computed: the rows carry what package hydrogen says, exactly.
 func TestHydrogenRows(t *testing.T) {
 	list := builtIn(t)
@@ -219,6 +286,11 @@ func TestParseRefuses(t *testing.T) {
 		{"hydrogen upside down", `hydrogen = [{ name = "Q", lower = 3, upper = 2, seen = "both" }]`, []string{`"Q"`}},
 		{"hydrogen level zero", `hydrogen = [{ name = "Q", lower = 0, upper = 2, seen = "both" }]`, []string{`"Q"`}},
 		{"a hydrogen name again", `hydrogen = [{ name = "X_5000", lower = 2, upper = 3, seen = "both" }]` + goodLine, []string{"X_5000", "twice"}},
+		{"a rare line by the name of another", goodLine + strings.Replace(goodLine, "line", "rare", 1), []string{"X_5000", "twice"}},
+		{"a rare line without a source", goodLine + strings.Replace(strings.ReplaceAll(line(`source = "invented"`, ``), "X_5000", "Y"), "line", "rare", 1), []string{`"Y"`, "source is missing"}},
+		{"a night sky without a source", goodLine + "[night]\nlines = [5578.9]\n", []string{"night", "source is missing"}},
+		{"a night sky out of order", goodLine + "[night]\nsource = \"invented\"\nlines = [6302.0, 5578.9]\n", []string{"night", "line 2", "5578.9"}},
+		{"a night sky of nothing", goodLine + "[night]\nsource = \"invented\"\nlines = [nan]\n", []string{"night", "line 1", "NaN"}},
 		{"several at once", line("5000.0", "-1.0") + strings.ReplaceAll(line(`"both"`, `"no"`), "X_5000", "Y") + `
 [[hydrogen]]
 name = "Q"

@@ -3,6 +3,7 @@ package pipeline
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 
 	"duskline/absorbers"
@@ -47,11 +48,15 @@ func NewChain(set Settings, recipes ...RecipeText) (*Chain, error) {
 		c.digests["family "+t.Family.Name] = t.Digest
 	}
 	opt := set.finderOptions()
-	for _, l := range list.Lines() {
+	for _, l := range slices.Concat(list.Lines(), list.Rare()) {
 		if l.Seen != "absorption" {
 			opt.Lines = append(opt.Lines, l.Wave)
 		}
+		if l.Galactic {
+			opt.Galactic = append(opt.Galactic, l.Name)
+		}
 	}
+	opt.Night = list.Night()
 	c.finder, err = redshift.NewFinder(families, set.Grid.Step, opt)
 	if err != nil {
 		return nil, err
@@ -335,10 +340,12 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 	case res.OnSky:
 		why = append(why, fmt.Sprintf("only %d of %d needed features stand out that are not on night-sky lines or in bands of water", res.LinesSeen-res.LinesOfAir, t.SecureLines))
 	}
-	if res.Confidence < t.SecureConfidence && !res.Faint {
+	if (res.Confidence < t.SecureConfidence || res.Tied) && !res.Faint {
 		switch {
 		case !res.Tight:
 			why = append(why, "the templates explain little more than the continuum alone")
+		case res.Confidence >= t.SecureConfidence:
+			why = append(why, fmt.Sprintf("family %s at %.4f explains %.0f %% as much", res.RivalFamily, res.RivalRedshift, 100*(1-res.Gap/res.Drop)))
 		case res.Misfit && !res.Tied:
 			why = append(why, fmt.Sprintf("chi2/dof of %.1f is too bad to rule out family %s at %.4f", res.Chi2Dof, res.RivalFamily, res.RivalRedshift))
 		default:
@@ -348,14 +355,23 @@ func (b *Bench) doubts(res *redshift.Result) []string {
 	if res.Chi2Dof >= t.HopelessChi2 {
 		why = append(why, fmt.Sprintf("no family describes the spectrum: chi2/dof is %.0f", res.Chi2Dof))
 	}
-	if res.LinesMissing > 0 {
+	if res.StrongMissing() > 0 {
 		why = append(why, "lines that should be strong are not there")
+	}
+	if res.WeakMissing {
+		why = append(why, "the weaker lines that it should have are not there")
+	}
+	if res.ForestMissing {
+		why = append(why, "the Lyman-alpha forest, deep at this redshift, is not there")
 	}
 	if res.Scattered {
 		why = append(why, "the lines disagree on the velocity")
 	}
-	if res.Class == catalog.Quasar && !res.InEmission {
-		why = append(why, "no emission line of a quasar stands out")
+	if res.Dark || res.Class == catalog.Quasar && !res.InEmission {
+		why = append(why, "no emission line stands out, and the family is one of emission lines")
+	}
+	if res.Foreground {
+		why = append(why, "what stands out may be gas of our own Galaxy in front of something else")
 	}
 	if res.Bare() {
 		why = append(why, "the input looks divided by its continuum: without broad lines and breaks an absorber passes for the object")

@@ -113,6 +113,7 @@ type VerdictSettings struct {
 	NoneConfidence   float64 `toml:"none_confidence" min:"0" max:"1"`
 	GapScale         float64 `toml:"gap_scale" min:"0.1" max:"1000"`
 	TiedGap          float64 `toml:"tied_gap" min:"0" max:"1000"`
+	TiedShare        float64 `toml:"tied_share" min:"0" max:"1"`
 	MisfitChi2       float64 `toml:"misfit_chi2" min:"1" max:"1e6"`
 	HopelessChi2     float64 `toml:"hopeless_chi2" min:"1" max:"1e9"`
 	FaintSNR         float64 `toml:"faint_snr" min:"0" max:"100"`
@@ -152,7 +153,7 @@ func (s Settings) notedBands() []lines.Band {
 func (s Settings) thresholds() redshift.Thresholds {
 	v := s.Verdict
 	return redshift.Thresholds{SecureConfidence: v.SecureConfidence, SecureLines: v.SecureLines, NoneConfidence: v.NoneConfidence,
-		GapScale: v.GapScale, MisfitChi2: v.MisfitChi2, HopelessChi2: v.HopelessChi2, TiedGap: v.TiedGap, FaintSNR: v.FaintSNR}
+		GapScale: v.GapScale, MisfitChi2: v.MisfitChi2, HopelessChi2: v.HopelessChi2, TiedGap: v.TiedGap, TiedShare: v.TiedShare, FaintSNR: v.FaintSNR}
 }
 
 func (s Settings) continuumOptions() continuum.Options {

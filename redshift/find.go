@@ -32,8 +32,12 @@ type Options struct {
 	// SkyLines are observed wavelengths of night-sky lines, of which the subtraction may leave
 	// what looks like an emission line.
 	SkyLines [][2]float64
-	// Lines are rest wavelengths, Angstrom, at which objects have emission lines beside those of the families.
+	// Lines are rest wavelengths, Angstrom, at which objects have emission lines beside those of the families, coronal and auroral ones with them.
 	Lines []float64
+	// Night holds observed wavelengths of lines of the night sky, Angstrom, in order.
+	Night []float64
+	// Galactic names the lines that gas of our own Galaxy absorbs in front of everything.
+	Galactic []string
 }
 
 // Finder finds redshifts with a fixed set of families. It is immutable and may
@@ -102,8 +106,11 @@ type Scratch struct {
 	independent float64   // fraction of the pixels that are independent
 	floor       []float64 // template error, fraction of the local flux
 	left        float64   // share of the light that water takes, see waterLeft
+	night       float64   // by how much residuals on lines of the night sky exceed others, see nightLeft
 	shares      []float64 // of departure
 	filtered    []float64 // of leftovers
+	byWave      []int     // of weakLines
+	promises    []promise
 	aside       []float64
 	errors      []float64
 	basis       continuum.Basis

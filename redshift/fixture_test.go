@@ -3,6 +3,7 @@ package redshift
 import (
 	"io/fs"
 	"math"
+	"slices"
 	"sync"
 	"testing"
 
@@ -43,6 +44,7 @@ type defaults struct {
 		NoneConfidence   float64 `toml:"none_confidence"`
 		GapScale         float64 `toml:"gap_scale"`
 		TiedGap          float64 `toml:"tied_gap"`
+		TiedShare        float64 `toml:"tied_share"`
 		MisfitChi2       float64 `toml:"misfit_chi2"`
 		HopelessChi2     float64 `toml:"hopeless_chi2"`
 		FaintSNR         float64 `toml:"faint_snr"`
@@ -56,8 +58,22 @@ var readDefaults = sync.OnceValue(func() (d defaults) {
 	return d
 })
 
-// DefaultOptions returns the options of the default settings.
+// DefaultOptions returns the options of the default settings with the built-in line list.
 func DefaultOptions() Options {
+	list, err := linelist.Parse(configs.Lines())
+	if err != nil {
+		panic(err)
+	}
+	var emission []float64
+	var galactic []string
+	for _, l := range slices.Concat(list.Lines(), list.Rare()) {
+		if l.Seen != "absorption" {
+			emission = append(emission, l.Wave)
+		}
+		if l.Galactic {
+			galactic = append(galactic, l.Name)
+		}
+	}
 	d := readDefaults()
 	pairs := func(v []float64) (out [][2]float64) {
 		for i := 0; i+1 < len(v); i += 2 {
@@ -70,6 +86,7 @@ func DefaultOptions() Options {
 		KnotSpacing: d.Continuum.KnotSpacing, Floor: r.TemplateFloor, Stiffness: r.Stiffness, Temper: r.Temper, Nominees: r.Nominees,
 		MinPixels: r.MinPixels, SearchFrom: r.SearchFrom, SearchTo: r.SearchTo, SkyBands: pairs(r.SkyBands),
 		TelluricBands: pairs(r.TelluricBands), TelluricFloor: r.TelluricFloor, WaterBands: pairs(r.WaterBands), SkyLines: pairs(d.Lines.SkyBands),
+		Lines: emission, Galactic: galactic, Night: list.Night(),
 	}
 }
 
@@ -77,7 +94,7 @@ func DefaultOptions() Options {
 func DefaultThresholds() Thresholds {
 	v := readDefaults().Verdict
 	return Thresholds{SecureConfidence: v.SecureConfidence, SecureLines: v.SecureLines, NoneConfidence: v.NoneConfidence,
-		GapScale: v.GapScale, TiedGap: v.TiedGap, MisfitChi2: v.MisfitChi2, HopelessChi2: v.HopelessChi2, FaintSNR: v.FaintSNR}
+		GapScale: v.GapScale, TiedGap: v.TiedGap, TiedShare: v.TiedShare, MisfitChi2: v.MisfitChi2, HopelessChi2: v.HopelessChi2, FaintSNR: v.FaintSNR}
 }
 
 // kmsPixel is a pixel of the test grids in km/s.

@@ -32,6 +32,7 @@ type Thresholds struct {
 	MisfitChi2       float64 // chi^2 per degree of freedom from which a fit is a misfit
 	HopelessChi2     float64 // and from which it is never secure
 	TiedGap          float64 // gap below which the rival is tied
+	TiedShare        float64 // the same as a share of what the winner lowers chi^2 by
 	FaintSNR         float64 // signal-to-noise a pixel below which a spectrum without features is faint
 }
 
@@ -52,13 +53,18 @@ func (t Thresholds) Judge(r *Result) {
 		return
 	}
 	r.Confidence = 1 - 0.5*math.Exp(-r.Gap/(t.GapScale*math.Max(1, math.Max(r.Chi2Dof, r.Correlation))))
-	r.Tied = r.Gap < t.TiedGap
+	// Templates describe what is there to a share of it, and no better in bright spectra: a rival that
+	// explains nearly all that the winner does may be the right one for any number of sigmas.
+	r.Tied = r.Gap < t.TiedGap || r.Gap < t.TiedShare*r.Drop
 	r.Misfit = r.Chi2Dof > t.MisfitChi2 || r.Chi2Dof >= t.HopelessChi2
 	r.Faint = r.LinesSeen == 0 && r.SNR < t.FaintSNR
 	r.LoneLine = r.LinesSeen == 1
 	r.Unseen = r.LinesExpected > 0 && 2*r.LinesCovered < r.LinesExpected
 	r.Unexplained = len(r.Leftovers) >= secondObject
 	clear := r.LinesSeen - r.LinesOfAir - r.LinesMissing
+	if r.Unexplained {
+		clear -= len(r.Leftovers) // each speaks against as one line does for
+	}
 	r.OnSky = r.LinesOfAir > 0 && r.LinesSeen-r.LinesOfAir < t.SecureLines
 	enough := clear >= t.SecureLines
 	if clear == t.SecureLines-1 && !r.InEmission {
@@ -66,16 +72,27 @@ func (t Thresholds) Judge(r *Result) {
 		// line may be a cosmic ray or another line.
 		enough = 1-r.Confidence <= 0.5*math.Pow(2*(1-t.SecureConfidence), overwhelming)
 	}
-	r.FewLines = !enough || r.Class == "quasar" && !r.InEmission
+	r.FewLines = !enough || r.Dark || r.Foreground || r.Class == "quasar" && !r.InEmission
 	r.LowConfidence = !(r.Confidence >= t.SecureConfidence)
 	switch {
-	case !r.LowConfidence && !r.FewLines && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd && !r.Bare() && !r.Blind() && !r.Scattered && r.LinesMissing == 0:
+	case !r.LowConfidence && !r.FewLines && !r.Tied && r.Chi2Dof < t.HopelessChi2 && !r.RangeEnd && !r.Bare() && !r.Blind() && !r.Scattered && r.LinesMissing == 0:
 		r.Verdict = Secure
 	case r.LinesSeen == 0 && r.Confidence < t.NoneConfidence:
 		r.Verdict = None
 	default:
 		r.Verdict = Uncertain
 	}
+}
+
+// StrongMissing is the number of single lines that the model predicts strongly and the data lack.
+func (r *Result) StrongMissing() int {
+	n := r.LinesMissing
+	for _, also := range [2]bool{r.WeakMissing, r.ForestMissing} {
+		if also {
+			n--
+		}
+	}
+	return n
 }
 
 // Bare reports whether the spectrum of an extragalactic object lacks what tells

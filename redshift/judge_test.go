@@ -37,6 +37,14 @@ func TestJudge(t *testing.T) {
 		{"lines that disagree", with(func(r *Result) { r.Scattered = true }), Uncertain, func(r *Result) []bool { return []bool{!r.FewLines, !r.LowConfidence} }},
 		{"a quasar without emission", with(func(r *Result) { r.Class = "quasar" }), Uncertain, func(r *Result) []bool { return []bool{r.FewLines, !r.LowConfidence} }},
 		{"a quasar with emission", with(func(r *Result) { r.Class, r.InEmission = "quasar", true }), Secure, nil},
+		{"a family of emission lines without any", with(func(r *Result) { r.Class, r.Dark = "galaxy", true }), Uncertain, nil},
+		{"a star of foreground gas", with(func(r *Result) { r.Class, r.Foreground = "star", true }), Uncertain, nil},
+		{"two features, three left over", with(func(r *Result) { r.LinesSeen, r.Leftovers = 2, []float64{5000, 6000, 7000} }), Uncertain, func(r *Result) []bool { return []bool{r.Unexplained} }},
+		{"five features, three left over", with(func(r *Result) { r.Leftovers = []float64{5000, 6000, 7000} }), Secure, func(r *Result) []bool { return []bool{r.Unexplained} }},
+		{"two features, one left over", with(func(r *Result) { r.LinesSeen, r.Leftovers = 2, []float64{5000} }), Secure, func(r *Result) []bool { return []bool{!r.Unexplained} }},
+		{"a rival that explains 89 %", with(func(r *Result) { r.Gap, r.Drop = 1100, 1e4 }), Uncertain, func(r *Result) []bool { return []bool{r.Tied} }},
+		{"a rival that explains 87 %", with(func(r *Result) { r.Gap, r.Drop = 1300, 1e4 }), Secure, func(r *Result) []bool { return []bool{!r.Tied} }},
+		{"weak lines missing", with(func(r *Result) { r.LinesMissing, r.WeakMissing = 1, true }), Uncertain, func(r *Result) []bool { return []bool{r.StrongMissing() == 0} }},
 		{"a small gap", with(func(r *Result) { r.Gap = 8.9 }), Uncertain, func(r *Result) []bool { return []bool{r.Tied} }},
 		{"a gap in a misfit", with(func(r *Result) { r.Chi2Dof = 8; r.Gap = 100 }), Uncertain, func(r *Result) []bool { return []bool{r.Misfit, !r.Tied} }},
 		{"the end of the range", with(func(r *Result) { r.RangeEnd = true }), Uncertain, nil},
@@ -94,9 +102,13 @@ func TestNoVerdictWithoutDoubt(t *testing.T) {
 		if flag("missing") {
 			r.LinesMissing = 1
 		}
+		r.Drop, r.Dark, r.Foreground = r.Gap*rapid.Float64Range(1, 20).Draw(t, "drop over gap"), flag("dark"), flag("foreground")
+		if flag("left over") {
+			r.Leftovers = []float64{5000, 6000}
+		}
 		r.RangeEnd, r.Scattered, r.Normalized = flag("range end"), flag("scattered"), flag("normalized")
 		th.Judge(&r)
-		denying := r.FewPixels || r.FewLines || r.LowConfidence || r.RangeEnd || r.Scattered || r.LinesMissing > 0 || r.Bare() || r.Blind()
+		denying := r.FewPixels || r.FewLines || r.Tied || r.LowConfidence || r.RangeEnd || r.Scattered || r.LinesMissing > 0 || r.Bare() || r.Blind()
 		switch {
 		case r.Verdict == Secure && denying:
 			t.Fatalf("secure with a doubt that denies it: %+v", r)

@@ -35,7 +35,11 @@ type Result struct {
 	InEmission    bool // one of them is in emission
 	LinesExpected int  // lines that should stand out in a member of the family
 	LinesCovered  int  // those of them inside the coverage
-	LinesMissing  int  // lines that the model predicts strongly and the data lack
+	LinesMissing  int  // lines that the model predicts strongly and the data lack, weak ones together and the forest as one each
+	WeakMissing   bool // the lines that do not stand out by themselves lack together
+	ForestMissing bool // the forest of Lyman-alpha lacks where it should be deep
+	Dark          bool // of a family of emission lines none stands out, nor do they together
+	Foreground    bool // a star that stands on lines of our own Galaxy's gas alone
 
 	// Leftovers are the observed wavelengths, Angstrom, of narrow emission that no line at
 	// the redshift explains, strongest first.
@@ -127,6 +131,7 @@ func (f *Finder) conclude(g *spectrum.Grid, s *Scratch, res *Result) {
 	// stiffened spline has about the freedom of its coarse parent.
 	res.Chi2Dof = chi2 / math.Max(1, s.independent*float64(l.good)-float64(s.fit.Basis().Size()+best.fit.active+1))
 	res.Leftovers = f.leftovers(s, g, &best)
+	f.nightLeft(s)
 	f.evidence(s, &best, res)
 	res.RedshiftErr = f.redshiftError(s, &best)
 	lo, hi := math.Log10(1+best.family.ZMin), math.Log10(1+best.family.ZMax)
@@ -227,12 +232,14 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 	res.LinesOfAir = res.LinesSeen - countFeatures(slices.DeleteFunc(s.features, func(o feature) bool { return o.air }), apart)
 	least := 2 * SeenSNR * math.Sqrt(res.Correlation)
 	// A break or band that the data demand counts as one feature.
+	bands := 0
 	for c := range p.family.components {
 		comp := &p.family.components[c]
 		if a := p.fit.amp[c]; a > 0 && comp.wide() && comp.stack == nil && len(comp.terms) == 0 && a*math.Sqrt(math.Max(0, s.bench.norm(c))) > least {
-			res.LinesSeen++
+			bands++
 		}
 	}
+	res.LinesSeen += bands
 	res.LinesExpected = len(p.family.expected)
 	for _, e := range p.family.expected {
 		x := (e.logWave + p.shift - l.start) / l.step
@@ -241,6 +248,9 @@ func (f *Finder) evidence(s *Scratch, p *peak, res *Result) {
 		}
 	}
 	res.Scattered = scattered(res.Lines, p.width)
+	res.Dark = dark(p, res)
+	res.Foreground = foreground(p, res.Lines, bands, f.opt.Galactic)
+	s.keeps(p, res)
 }
 
 // trace is one line of a model with its amplitude, summed over the components

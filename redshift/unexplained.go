@@ -21,11 +21,6 @@ const (
 	ownKms, ownBroadKms = 500.0, 2500.0
 )
 
-// rarely holds rest wavelengths in vacuum, Angstrom, of coronal and auroral lines of nebulae and active
-// nuclei that no family has: [N I] 5199, 5202; [Fe XIV] 5304; [Fe VII] 5160, 5722, 6089; [Fe X] 6376;
-// [O II] 7321, 7332; [Ar III] 7753; [Fe XI] 7894; [Fe II] 8619 (NIST, from memory, to 0.5 Angstrom).
-var rarely = [...]float64{5160.3, 5199.3, 5201.7, 5304.3, 5722.3, 6088.7, 6376.3, 7321.5, 7332.0, 7753.2, 7894.0, 8619.3}
-
 // leftovers returns the observed wavelengths of narrow emission features in the residual s.tmp
 // that belong to no line of any family at the redshift, nor to the air, strongest first: as
 // many as there are more of them than features just as strong in absorption, for the sky's subtraction
@@ -130,11 +125,9 @@ func (f *Finder) hideOwn(s *Scratch, g *spectrum.Grid, p *peak) {
 			}
 		}
 	}
-	for _, waves := range [][]float64{f.opt.Lines, rarely[:]} {
-		for _, wave := range waves {
-			x := math.Log10(wave) + p.shift
-			hide(x-half, x+half)
-		}
+	for _, wave := range f.opt.Lines {
+		x := math.Log10(wave) + p.shift
+		hide(x-half, x+half)
 	}
 	if p.family.forested {
 		hide(l.start, forestEdgeLog+p.shift)

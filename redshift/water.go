@@ -115,11 +115,15 @@ const (
 	narrowKms = 400.0
 )
 
-// airMade reports whether a line may be what the night sky or water left: narrow
-// emission on a line of the night sky; anything else in a band of water, where water
+// airMade reports whether a line may be what the night sky or water left: a narrow one on a line of the
+// night sky, where residuals exceed others, unless it exceeds them as well; narrow
+// emission on one of Options.SkyLines; anything else in a band of water, where water
 // shows in the spectrum.
 func (f *Finder) airMade(s *Scratch, e *LineEvidence) bool {
 	half := skyCore * e.Width / speedOfLight * e.Wave
+	if e.Width < narrowKms && s.night > 1 && e.SNR < s.night*SeenSNR && near(f.opt.Night, e.Wave-half, e.Wave+half) {
+		return true
+	}
 	if !e.Absorption && e.Width < narrowKms {
 		return touches(f.opt.SkyLines, e.Wave-half, e.Wave+half)
 	}
