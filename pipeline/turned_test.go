@@ -25,7 +25,7 @@ func (w turning) Process(s *spectrum.Spectrum) pipeline.Outcome {
 }
 
 // TestTurnedSpectra holds open spectra, turned end for end, against being secure. 52 of 258 were when a model was
-// not asked for what it promises and the spectrum lacks; the bound is what is left, 6 %.
+// not asked for what it promises and the spectrum lacks; 8 are left, and the bound is 4 %.
 func TestTurnedSpectra(t *testing.T) {
 	dir := outside.Spectra(t)
 	list := readPublished(t, dir)
@@ -46,7 +46,7 @@ func TestTurnedSpectra(t *testing.T) {
 		}
 	}
 	t.Logf("%d of %d turned spectra are secure", secure, read)
-	if 100*secure > 6*read {
-		t.Errorf("%d of %d turned spectra came out secure, want at most 6 %%", secure, read)
+	if 100*secure > 4*read {
+		t.Errorf("%d of %d turned spectra came out secure, want at most 4 %%", secure, read)
 	}
 }

@@ -40,6 +40,10 @@ type Thresholds struct {
 // for one missing feature.
 const overwhelming = 3
 
+// pairShare takes the place of TiedShare for a quasar on no more features than it needs: broad lines have no
+// form by which they are known, and any two bumps stand as far apart as some two lines.
+const pairShare = 0.2
+
 // secondObject is the number of leftovers that tell of another object; one may be a cosmic ray.
 const secondObject = 2
 
@@ -55,7 +59,11 @@ func (t Thresholds) Judge(r *Result) {
 	r.Confidence = 1 - 0.5*math.Exp(-r.Gap/(t.GapScale*math.Max(1, math.Max(r.Chi2Dof, r.Correlation))))
 	// Templates describe what is there to a share of it, and no better in bright spectra: a rival that
 	// explains nearly all that the winner does may be the right one for any number of sigmas.
-	r.Tied = r.Gap < t.TiedGap || r.Gap < t.TiedShare*r.Drop
+	share := t.TiedShare
+	if r.Class == "quasar" && r.LinesSeen <= t.SecureLines {
+		share = math.Max(share, pairShare)
+	}
+	r.Tied = r.Gap < t.TiedGap || r.Gap < share*r.Drop
 	r.Misfit = r.Chi2Dof > t.MisfitChi2 || r.Chi2Dof >= t.HopelessChi2
 	r.Faint = r.LinesSeen == 0 && r.SNR < t.FaintSNR
 	r.LoneLine = r.LinesSeen == 1

@@ -50,7 +50,7 @@ type Result struct {
 	Normalized                                bool // the input was divided by its continuum; set by the caller
 	Faint, Tied, LoneLine, Misfit, Unseen     bool
 	OnSky                                     bool // without LinesOfAir too few are left
-	FewLines                                  bool // fewer lines than Secure needs, or a quasar's none in emission
+	FewLines                                  bool // fewer lines than Secure needs, none in emission where there must be, or of our Galaxy's gas alone
 	LowConfidence                             bool // less than Secure needs
 	Unexplained                               bool // Leftovers enough for a second object
 
