@@ -59,7 +59,7 @@ const (
 	Normalized                       // the input was divided by its continuum
 	OutsideLimits                    // a better fit lies outside the manifest's limits
 	Unexplained                      // features stand out that the model does not explain
-	FewLines                         // fewer lines stand out than secure needs, or none of a quasar in emission
+	FewLines                         // fewer lines stand out than secure needs, none in emission where there must be, or our Galaxy's alone
 	LowConfidence                    // the confidence is below what secure needs
 )
 
@@ -68,12 +68,12 @@ var flagTable = [...]struct{ name, says string }{
 	{"unreadable", "the file or this spectrum in it could not be read"},
 	{"few_pixels", "too few usable pixels"},
 	{"faint", "neither continuum nor lines stand above the noise"},
-	{"tied", "another redshift fits nearly as well, or explains nearly as much"},
+	{"tied", "another redshift fits nearly as well"},
 	{"range_end", "best redshift at the end of the searched range"},
 	{"lone_line", "a single line carries the redshift"},
 	{"misfit", "the best model describes the spectrum badly"},
 	{"lines_unseen", "strong lines are outside the coverage or masked"},
-	{"lines_missing", "strong lines, the weaker ones together, or the Lyman-alpha forest are covered and not there"},
+	{"lines_missing", "strong lines are covered and not there"},
 	{"below_zero", "the continuum is negative over a good part"},
 	{"scattered", "the lines disagree on the velocity"},
 	{"on_sky_line", "without lines on night-sky lines or in bands of the air fewer than two support the redshift"},
