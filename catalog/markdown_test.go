@@ -43,7 +43,7 @@ A row that is not secure has at least one of the flags that say why:
 | it could not be read, or too little of it can be used | ` + "`unreadable`, `few_pixels`" + ` |
 | nothing stands above the noise | ` + "`faint`" + ` |
 | fewer lines stand out than needed | ` + "`few_lines`, with `lone_line` for one, `on_sky_line` where others may be of the air" + ` |
-| another answer is nearly as good | ` + "`low_confidence`, with `tied` where the scores are close" + ` |
+| another answer is nearly as good | ` + "`low_confidence`, or `tied` where the scores are close" + ` |
 | the model does not describe the spectrum | ` + "`misfit`, `lines_missing`, `scattered`" + ` |
 | the answer lies at an edge | ` + "`range_end`, `outside_limits`" + ` |
 | the input lacks what tells a galaxy or quasar | ` + "`normalized`, or `misfit` with `lines_unseen`" + ` |
@@ -86,12 +86,12 @@ var flagMeanings = map[string]string{
 	"unreadable":      "the file or this spectrum in it could not be read; `reason` says what to do",
 	"few_pixels":      "too few usable pixels; `reason` says what took the others",
 	"faint":           "neither continuum nor lines stand above the noise",
-	"tied":            "another redshift fits nearly as well: see `rival_redshift` and `gap`",
+	"tied":            "another redshift fits nearly as well, or explains nearly as much: see `rival_redshift` and `gap`; never secure",
 	"range_end":       "the best redshift lies at the end of the family's range",
 	"lone_line":       "a single feature stands out by itself; secure only where many weak ones in absorption make up for it",
 	"misfit":          "the best model leaves the spectrum badly described",
 	"lines_unseen":    "more than half of the lines that should be strong are outside the coverage or masked",
-	"lines_missing":   "lines that the model predicts strongly are covered and not there",
+	"lines_missing":   "lines that the model predicts strongly, the weaker ones together, or the Lyman-alpha forest are covered and not there",
 	"below_zero":      "the continuum is negative over a good part",
 	"scattered":       "the lines disagree on the velocity",
 	"on_sky_line":     "without lines on night-sky lines or in bands of the air fewer than two support the redshift; emission on a night-sky line alone never makes it secure",
@@ -100,8 +100,8 @@ var flagMeanings = map[string]string{
 	"weights_suspect": "the stated errors disagree with the scatter",
 	"normalized":      "the input looks divided by its continuum; no galaxy or quasar is secure then",
 	"outside_limits":  "outside the limits or the class that the manifest gives something fits better; secure only where that has the same redshift",
-	"unexplained":     "narrow emission that no line at the redshift explains: a second object in the aperture? `reason` gives the wavelengths",
-	"few_lines":       "fewer lines stand out by themselves than `secure` needs (two, or one with a very clear lead), or of a quasar none in emission; the redshift then rests on the shape of the whole",
+	"unexplained":     "narrow emission that no line at the redshift explains: a second object in the aperture? `reason` gives the wavelengths; each takes one from the features that `secure` needs",
+	"few_lines":       "fewer lines stand out by themselves than `secure` needs (two, or one with a very clear lead), or of a family that lives on emission none in emission, or of a star none but those of our own Galaxy's gas; the redshift then rests on the shape of the whole",
 	"low_confidence":  "`confidence` is below what `secure` needs (0.995): the lead over the rival, or over no template at all, is small for a fit this good",
 }
 
