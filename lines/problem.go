@@ -161,21 +161,22 @@ func (q *problem) normal(p, a, b []float64) float64 {
 		}
 	}
 	for _, e := range q.equal {
-		d := p[e.i] - p[e.j]
-		a[e.i*n+e.i] += e.weight
-		a[e.j*n+e.j] += e.weight
-		a[min(e.i, e.j)*n+max(e.i, e.j)] -= e.weight
-		b[e.i] -= e.weight * d
-		b[e.j] += e.weight * d
+		d := e.a*p[e.i] - e.b*p[e.j]
+		a[e.i*n+e.i] += e.weight * e.a * e.a
+		a[e.j*n+e.j] += e.weight * e.b * e.b
+		a[min(e.i, e.j)*n+max(e.i, e.j)] -= e.weight * e.a * e.b
+		b[e.i] -= e.weight * e.a * d
+		b[e.j] += e.weight * e.b * d
 		chi2 += e.weight * d * d
 	}
 	return chi2
 }
 
-// equality holds two parameters together.
+// equality holds two amplitudes of a lot in the ratio of b to a.
 type equality struct {
-	i, j   int
-	weight float64
+	first, second int // components
+	i, j          int // parameters: a p[i] = b p[j]
+	a, b, weight  float64
 }
 
 // jacobian fills cols and spans with the derivatives of the model at the

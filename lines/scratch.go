@@ -43,6 +43,11 @@ type Scratch struct {
 	cross     []float64
 	bumps     []bump
 	free      snapshot // a blend before its lines are joined to lots
+	tilted    [tiltNodes]tiltNode
+	tiltBest  float64 // see tiltRange
+	tiltErr   float64
+	even      snapshot    // with equal amplitudes in the lots
+	sides     [2]snapshot // see refit
 	guesses   [len(stellarSigma)]stellarGuess
 	placed    []placement
 	placedArm int // the arm of placed

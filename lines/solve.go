@@ -11,6 +11,7 @@ const resolvedFrom, resolvedBroad = 2.8, 2.2
 // measureBlend fits one blend and writes the results of its lines. A blend in
 // which the fit finds nothing after all is marked faint and left for later.
 func (s *Scratch) measureBlend(b *blend) {
+	s.prob.equal = s.prob.equal[:0]
 	main := s.formTies(b)
 	ok := false
 	for round := range maxRounds {
@@ -81,7 +82,7 @@ func (s *Scratch) unbound() {
 // be of the sign that the strongest of them has not, and reports whether there
 // are any. Without it two large ones of opposite sign may stand for one line.
 func (s *Scratch) boundCrowded() bool {
-	q, m := &s.prob, &s.lm
+	q := &s.prob
 	any := false
 	for k := range q.ties {
 		e := &q.ties[k]
@@ -89,16 +90,25 @@ func (s *Scratch) boundCrowded() bool {
 			continue
 		}
 		any = true
-		e.vprior = e.vmax / 3
-		for _, a := range s.avg.tight {
-			if e.snr < 0 {
-				m.hi[a] = 0
-			} else {
-				m.lo[a] = 0
-			}
-		}
+		e.vprior = crowdedOffset(e)
+		s.boundTight(e)
 	}
 	return any
+}
+
+// crowdedOffset is the standard error that the offset of crowded lines has beforehand.
+func crowdedOffset(e *tie) float64 { return e.vmax / 3 }
+
+// boundTight forbids the amplitudes that findTight has listed to be of the sign that
+// the strongest line of a tie has not.
+func (s *Scratch) boundTight(e *tie) {
+	for _, a := range s.avg.tight {
+		if e.snr < 0 {
+			s.lm.hi[a] = 0
+		} else {
+			s.lm.lo[a] = 0
+		}
+	}
 }
 
 func (s *Scratch) fixKinematics(fixed bool) {
@@ -310,7 +320,7 @@ func (s *Scratch) regrouped() bool {
 			d := &q.comps[j]
 			if d.tie == c.tie {
 				near := s.apart(&s.tracks[c.track], &s.tracks[d.track]) < mergeSame*q.ties[c.tie].s
-				if near && d.amp != c.amp {
+				if near && d.amp != c.amp || !near && d.amp == c.amp && !q.ties[c.tie].broad {
 					return true
 				}
 				break

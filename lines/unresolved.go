@@ -1,10 +1,6 @@
 package lines
 
-import (
-	"math"
-
-	"duskline/spectrum"
-)
+import "math"
 
 const (
 	// splitMoves is how far, in units of the width, offset and width may go with one
@@ -12,12 +8,18 @@ const (
 	// sum of both is reported. Offset and width enter the profile far from linearly then, and
 	// the errors of each line do not hold; below they do, in simulation (TestPulls).
 	splitMoves = 0.08
+	// splitWidth is the power of the width with which that goes for lines 1.5 to 2.6 sigma
+	// apart: it is taken for a width that is larger by its standard error, or noise
+	// would part lines of low S/N that only look narrow.
+	splitWidth = 1.65
 	// splitClear is the same in the free fit, below which no closer look is needed:
 	// noise may make it half as large as it should be.
 	splitClear = 0.4 * splitMoves
 	// Lines nearer than this many sigma of both together are looked at: lines
 	// of one width nearer than about 3.3 of it.
 	nearWithin = 1.8
+	// Those of which one is not seen are looked at to so many sigma of each.
+	lonelyWithin = 3.3
 )
 
 // findUnresolved looks for lines that share offset and width and stand so
@@ -26,7 +28,8 @@ const (
 // traded for offset and width, its errors depend on where the noise has put it. Offset,
 // width and sum of a fit with equal amplitudes are stable, and with one more linear
 // parameter, the flux that the one line gives to the other, tell the error to
-// expect of that (Cramer-Rao bound). The fit is left as it was.
+// expect of that (Cramer-Rao bound). Where lots are left their amplitudes stay equal, else the
+// fit is as it was.
 func (s *Scratch) findUnresolved() {
 	q, m, g := &s.prob, &s.lm, &s.free
 	lots := 0
@@ -42,8 +45,8 @@ func (s *Scratch) findUnresolved() {
 		return
 	}
 	scale := s.errorScale() // of the free fit: equal parts may not fit
-	g.ties, g.p, g.cov, g.held = append(g.ties[:0], q.ties...), append(g.p[:0], m.p...), append(g.cov[:0], m.cov...), append(g.held[:0], m.held...)
-	g.chi2, g.free = m.chi2, m.free
+	g.take(s)
+	trapped := s.trapped()
 	s.startLots()
 	s.fixKinematics(true)
 	m.linear(q)
@@ -53,24 +56,206 @@ func (s *Scratch) findUnresolved() {
 	}
 	m.covariance()
 	s.readKinematics()
+	open := false
+	if trapped || m.chi2 < g.chi2 {
+		open = s.refit(scale)
+	}
 	s.residuals()
+	cut, left := false, false
+	s.tiltBest, s.tiltErr = 0, 0
 	for j := range q.comps {
 		for i := range j {
 			a, b := &q.comps[i], &q.comps[j]
 			if a.lot == 0 || a.lot != b.lot || s.between(i, j) {
 				continue
 			}
-			if s.splitMove(i, j)*scale < splitMoves {
+			if !open && s.splitMove(i, j)*scale < splitMoves {
 				s.cutLot(i, j)
+				cut = true
 			}
 		}
 	}
+	for i := range q.comps {
+		left = left || q.comps[i].lot > 0
+	}
+	if left && !cut && s.calm() {
+		m.chi2 = q.normal(m.p, m.a, m.b)
+		return
+	}
 	q.equal = q.equal[:0]
-	copy(q.ties, g.ties)
-	copy(m.p, g.p)
-	copy(m.cov, g.cov)
-	copy(m.held, g.held)
-	m.chi2, m.free = g.chi2, g.free
+	if g.give(s); left {
+		s.startLots()
+		s.settleLots()
+		s.readKinematics()
+	}
+}
+
+// calm reports whether no broad line of the blend has an offset and a width of its own.
+func (s *Scratch) calm() bool {
+	for k := range s.prob.ties {
+		if e := &s.prob.ties[k]; e.own && e.broad {
+			return false
+		}
+	}
+	return true
+}
+
+// settleLots solves for a fit near by, with the ratios in the lots held, and its covariance.
+// With broad lines in the blend plain steps may go astray.
+func (s *Scratch) settleLots() bool {
+	m := &s.lm
+	if !s.calm() {
+		return m.minimize(&s.prob)
+	}
+	for range tiltSteps {
+		if !m.linear(&s.prob) {
+			return false
+		}
+		if m.gain < nodeGain {
+			break
+		}
+	}
+	return m.covariance()
+}
+
+// trapped reports whether of two lines of a lot one may have all the light: that may be a
+// fit which has put the one in the place of the other.
+func (s *Scratch) trapped() bool {
+	q := &s.prob
+	for j := range q.comps {
+		for i := range j {
+			if a, b := &q.comps[i], &q.comps[j]; a.lot > 0 && a.lot == b.lot && s.lonely(a, b) {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+// lonely reports whether one of two components is not seen, or of the other sign.
+func (s *Scratch) lonely(a, b *component) bool {
+	m := &s.lm
+	x, y := m.p[a.amp], m.p[b.amp]
+	f := seenFrom * s.errorScale()
+	return a.amp != b.amp && (x*y <= 0 || x*x < f*f*m.cov[a.amp*(m.n+1)] || y*y < f*f*m.cov[b.amp*(m.n+1)])
+}
+
+const (
+	// refit starts with a tilt, see averageLots, of that.
+	refitTilt = 0.8
+	// Two fits that differ by less of chi^2, three standard errors, are both possible.
+	mirrorGain = 9.0
+)
+
+// refit looks for a better free fit: from where the one with equal amplitudes is, or, where that is worse than the free
+// one, with more light in the lines of that side where the free fit has less. A strong line
+// beside a weak one may be taken for that: see choose. The fit
+// with equal amplitudes stays the solution.
+func (s *Scratch) refit(scale float64) (open bool) {
+	q, m := &s.prob, &s.lm
+	s.even.take(s)
+	held := q.equal
+	for k := range q.ties {
+		if e := &q.ties[k]; e.own {
+			t := 0.0
+			if s.even.chi2 > s.free.chi2 {
+				t = -math.Copysign(refitTilt, s.freeTilt(e))
+			}
+			s.tilt(e, t)
+		}
+	}
+	m.linear(q)
+	q.equal = nil
+	s.boundLots()
+	m.minimize(q)
+	s.unbound()
+	m.covariance()
+	s.readKinematics()
+	s.sides[0].take(s)
+	s.sides[1].copy(&s.free)
+	for k := range s.free.ties {
+		if e := &s.free.ties[k]; e.vprior == 0 && s.hasLot(k) {
+			prior := e.v / crowdedOffset(e)
+			s.sides[1].chi2 += prior * prior
+		}
+	}
+	open = s.choose(mirrorGain * scale * scale)
+	s.even.give(s)
+	q.equal = held
+	for k := range q.ties {
+		if e := &q.ties[k]; e.own {
+			s.tilt(e, 0)
+		}
+	}
+	copy(m.p, s.even.p)
+	return open
+}
+
+// freeTilt returns where the lines of the lots of tie e have their light in the free fit:
+// below 0 on the blue side.
+func (s *Scratch) freeTilt(e *tie) float64 {
+	sum := 0.0
+	for i := range s.prob.comps {
+		if c := &s.prob.comps[i]; c.lot > 0 && s.prob.ties[c.tie].pv == e.pv {
+			sum += s.placeInLot(i) * math.Abs(c.share*s.free.p[c.amp])
+		}
+	}
+	return sum
+}
+
+// choose makes one of the two fits of refit the free one: of those within gain of the
+// best chi^2 the one with the least offset, unless it is the same fit but for that. It
+// reports whether there is another whose offset is less than twice as large.
+func (s *Scratch) choose(gain float64) (open bool) {
+	k := 0
+	for k < len(s.prob.ties)-1 && !(s.prob.ties[k].own && s.hasLot(k)) {
+		k++
+	}
+	least := math.Inf(1)
+	for i := range s.sides {
+		least = min(least, s.sides[i].chi2)
+	}
+	best := -1
+	other := func(i int) bool {
+		x, y := &s.sides[best].ties[k], &s.sides[i].ties[k]
+		return s.sides[i].chi2 < least+gain && math.Abs(x.v-y.v) > 0.5*min(x.s, y.s)
+	}
+	for i := range s.sides {
+		c := &s.sides[i]
+		switch {
+		case c.chi2 >= least+gain:
+		case best < 0, other(i) && math.Abs(c.ties[k].v) < math.Abs(s.sides[best].ties[k].v), !other(i) && c.chi2 < s.sides[best].chi2:
+			best = i
+		}
+	}
+	for i := range s.sides {
+		if best >= 0 && other(i) && math.Abs(s.sides[best].ties[k].v) > 0.5*math.Abs(s.sides[i].ties[k].v) {
+			open = true
+		}
+	}
+	if best == 0 {
+		s.free.copy(&s.sides[0])
+	}
+	return open
+}
+
+// boundLots does for the lots what boundCrowded does for crowded lines.
+func (s *Scratch) boundLots() {
+	q := &s.prob
+	for k := range q.ties {
+		e := &q.ties[k]
+		if !e.own || !s.hasLot(k) {
+			continue
+		}
+		e.vprior = crowdedOffset(e)
+		s.avg.tight = s.avg.tight[:0]
+		for i := range q.comps {
+			if c := &q.comps[i]; c.lot > 0 && q.ties[c.tie].pv == e.pv {
+				s.avg.tight = appendNew(s.avg.tight, 0, c.amp)
+			}
+		}
+		s.boundTight(e)
+	}
 }
 
 // snapshot is a solution of a blend.
@@ -80,6 +265,29 @@ type snapshot struct {
 	held   []bool
 	chi2   float64
 	free   int
+}
+
+// take keeps the solution of the present blend.
+func (g *snapshot) take(s *Scratch) {
+	q, m := &s.prob, &s.lm
+	g.ties, g.p, g.cov, g.held = append(g.ties[:0], q.ties...), append(g.p[:0], m.p...), append(g.cov[:0], m.cov...), append(g.held[:0], m.held...)
+	g.chi2, g.free = m.chi2, m.free
+}
+
+// copy keeps another one.
+func (g *snapshot) copy(o *snapshot) {
+	g.ties, g.p, g.cov, g.held = append(g.ties[:0], o.ties...), append(g.p[:0], o.p...), append(g.cov[:0], o.cov...), append(g.held[:0], o.held...)
+	g.chi2, g.free = o.chi2, o.free
+}
+
+// give makes it the solution again.
+func (g *snapshot) give(s *Scratch) {
+	q, m := &s.prob, &s.lm
+	copy(q.ties, g.ties)
+	copy(m.p, g.p)
+	copy(m.cov, g.cov)
+	copy(m.held, g.held)
+	m.chi2, m.free = g.chi2, g.free
 }
 
 // maybeUnresolved reports whether a look at two components is due.
@@ -98,6 +306,9 @@ func (s *Scratch) maybeUnresolved(i, j int) bool {
 	va, vb, vab := m.cov[a.amp*m.n+a.amp], m.cov[b.amp*m.n+b.amp], m.cov[a.amp*m.n+b.amp]
 	total := x + y
 	d := s.apart(&s.tracks[a.track], &s.tracks[b.track])
+	if d < lonelyWithin*e.s && s.lonely(a, b) {
+		return true
+	}
 	f := min(max(y/total, 0), 1)
 	if !(d < nearWithin*math.Sqrt(e.s*e.s+f*(1-f)*d*d)) {
 		return false
@@ -173,46 +384,20 @@ func (s *Scratch) cutLot(i, j int) {
 // are held equal: they differ by less than 1e-4 of their errors then.
 const equalStiff = 1e5
 
-// startLots holds the amplitudes of each lot equal, and moves offset and width of their
-// ions to where the light of the first lot keeps its center and its width.
+// startLots holds the amplitudes of each lot equal.
 func (s *Scratch) startLots() {
 	q, m := &s.prob, &s.lm
-	for k := range q.ties {
-		e := &q.ties[k]
-		if !e.own {
-			continue
-		}
-		var n, sum, v, vv, w, ww float64
-		first := -1
-		for i := range q.comps {
-			c := &q.comps[i]
-			if c.lot == 0 || q.ties[c.tie].pv != e.pv {
-				continue
-			}
-			if first < 0 {
-				first = i
-			}
-			o := &q.comps[first]
-			if c.lot != o.lot {
-				continue
-			}
-			x := spectrum.SpeedOfLight * (c.lam0/o.lam0 - 1)
-			f := math.Abs(c.share * m.p[c.amp])
-			n, w, ww = n+1, w+x, ww+x*x
-			sum, v, vv = sum+f, v+f*x, vv+f*x*x
-		}
-		if n < 2 || !(sum > 0) {
-			continue
-		}
-		v, vv, w, ww = v/sum, vv/sum, w/n, ww/n
-		m.p[e.pv] = min(max(e.v+v-w, -e.vmax), e.vmax)
-		m.p[e.ps] = min(max(math.Sqrt(max(0, e.s*e.s+vv-v*v-ww+w*w)), e.smin), e.smax)
-	}
+	q.equal = q.equal[:0]
 	for j := range q.comps {
 		for i := range j {
 			if a, b := &q.comps[i], &q.comps[j]; a.lot > 0 && a.lot == b.lot && a.amp != b.amp && !s.between(i, j) {
-				q.equal = append(q.equal, equality{a.amp, b.amp, equalStiff * (m.a[a.amp*(m.n+1)] + m.a[b.amp*(m.n+1)])})
+				q.equal = append(q.equal, equality{i, j, a.amp, b.amp, 1, 1, equalStiff * (m.a[a.amp*(m.n+1)] + m.a[b.amp*(m.n+1)])})
 			}
+		}
+	}
+	for k := range q.ties {
+		if e := &q.ties[k]; e.own {
+			s.tilt(e, 0)
 		}
 	}
 }
@@ -230,9 +415,28 @@ func (s *Scratch) splitMove(i, j int) float64 {
 		s.bumps = append(s.bumps, bump{c.lam0, e.v, e.s, float64(1 - 2*n)})
 	}
 	if _, h := s.probeWith(s.bumps); h > 0 {
-		return math.Hypot(s.grad[own.pv], s.grad[own.ps]) / (own.s * math.Sqrt(h))
+		wide := 1 + splitWidth*math.Sqrt(s.lm.cov[own.ps*(s.lm.n+1)])*s.errorScale()/own.s
+		s.noteTilt(i, j, h)
+		return wide * math.Hypot(s.grad[own.pv], s.grad[own.ps]) / (own.s * math.Sqrt(h))
 	}
 	return math.Inf(1)
+}
+
+// noteTilt keeps the tilt that two lines of a lot have in the free fit, and its standard error:
+// that of the free fit or that of the fit with equal amplitudes, 1/sqrt(h) for the flux
+// that the one gives to the other, whichever is larger.
+func (s *Scratch) noteTilt(i, j int, h float64) {
+	q, m, g := &s.prob, &s.lm, &s.free
+	if q.comps[i].lam0 > q.comps[j].lam0 {
+		i, j = j, i
+	}
+	a, b := q.comps[i].amp, q.comps[j].amp
+	x, y := g.p[a], g.p[b]
+	total := m.p[a] + m.p[b]
+	n, scale := m.n, s.errorScale()
+	v := y*y*g.cov[a*(n+1)] + x*x*g.cov[b*(n+1)] - 2*x*y*g.cov[a*n+b]
+	s.tiltErr = max(s.tiltErr, 2*math.Sqrt(max(0, v))/(total*total), 2*scale/(math.Abs(total)*math.Sqrt(h)))
+	s.tiltBest = min(max((y-x)/total, -1), 1)
 }
 
 // lotCarrier returns the component that carries the sum of the lot of ci: the line
