@@ -150,9 +150,11 @@ func (s *Scratch) tilt(e *tie, t float64) {
 			continue
 		}
 		var old, fresh light
+		flux := 0.0
 		for k := range q.comps {
 			c := &q.comps[k]
 			if c.lot == lot {
+				flux += c.share * m.p[c.amp]
 				x := spectrum.SpeedOfLight * (c.lam0/q.comps[i].lam0 - 1)
 				old.add(x, math.Abs(c.share*m.p[c.amp]))
 				fresh.add(x, 1+t*s.placeInLot(k))
@@ -161,13 +163,9 @@ func (s *Scratch) tilt(e *tie, t float64) {
 		if !(old.sum > 0) {
 			continue
 		}
-		sign := 1.0
-		if flux, _ := s.lotFlux(i, nil, 0); flux < 0 {
-			sign = -1
-		}
 		for k := range q.comps {
 			if c := &q.comps[k]; c.lot == lot && c.share == 1 {
-				m.p[c.amp] = sign * old.sum / fresh.sum * (1 + t*s.placeInLot(k))
+				m.p[c.amp] = math.Copysign(old.sum/fresh.sum*(1+t*s.placeInLot(k)), flux)
 			}
 		}
 		if first == 0 {

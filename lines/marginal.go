@@ -11,7 +11,7 @@ const (
 	// in depths, not in areas, would be 2. It leaves the least bias in simulation.
 	tightPower = 3.0
 	// loneSNR is the S/N below which the error of a lone line is that of the posterior.
-	loneSNR  = 8.0
+	loneSNR  = 7.0
 	loneStep = 1.5
 	// Nodes of marginalize lie gridStep standard errors apart: the trapezoid
 	// rule with that step integrates a Gaussian to 5e-4. They end where chi^2

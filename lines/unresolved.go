@@ -48,9 +48,6 @@ func (s *Scratch) findUnresolved() {
 	g.take(s)
 	trapped := s.trapped()
 	s.startLots()
-	s.fixKinematics(true)
-	m.linear(q)
-	s.fixKinematics(false)
 	for range 2 {
 		m.linear(q)
 	}
@@ -79,7 +76,6 @@ func (s *Scratch) findUnresolved() {
 		left = left || q.comps[i].lot > 0
 	}
 	if left && !cut && s.calm() {
-		m.chi2 = q.normal(m.p, m.a, m.b)
 		return
 	}
 	q.equal = q.equal[:0]
