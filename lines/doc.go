@@ -20,8 +20,8 @@
 //  3. solve.go fits each blend: Gaussians averaged over the pixels
 //     (profile.go) plus the straight lines, by Levenberg-Marquardt
 //     (marquardt.go). unresolved.go finds the lines that only their sum is
-//     known of, split.go second components, and marginal.go takes the mean over
-//     the posterior where lines are crowded.
+//     known of, split.go second components. lots.go takes the mean over the
+//     posterior for such sums, marginal.go where lines are crowded.
 //  4. sum.go sums the pixels of every line, with the fitted neighbors taken
 //     away.
 //  5. Blends in which nothing was seen come last, with the offset and width of

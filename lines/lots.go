@@ -10,7 +10,7 @@ const (
 	// averageLots fits for so many tilts, and integrates over so many.
 	tiltNodes = 5
 	tiltFine  = 48
-	// A node takes so many steps, or ends with one that gains less than nodeGain.
+	// A node takes at most so many steps.
 	tiltSteps = 2
 	// The tilts reach so many standard errors from the best one.
 	tiltReach = 3.0
@@ -47,9 +47,10 @@ type tiltNode struct {
 // of the light, and the covariance by that of the posterior. With that held, offset,
 // width and sum are as well determined as those of a lone line, so that the fit for each
 // node is close to linear. Lines have the parts 1 + t x, with x from -1 to 1 through the
-// lot; all t from -1 to 1 are as likely beforehand. Between the nodes chi^2 is interpolated, and the posterior exp(-chi^2/2) integrated
-// over the polynomials gives their weights. For the law of covariance see marginalize.
-// chi2 of the solution becomes that of the best tilt.
+// lot; all t from -1 to 1 are as likely beforehand. Between the nodes chi^2 is
+// interpolated, and the posterior exp(-chi^2/2) integrated over the polynomials gives
+// their weights. For the law of covariance see marginalize. chi2 of the solution becomes
+// that of the best tilt.
 func (s *Scratch) averageLots(e *tie) {
 	m, g := &s.lm, &s.avg
 	g.begin(m)

@@ -69,3 +69,33 @@ source = "invented"
 		}
 	}
 }
+
+// A fit must not put one of two close lines into the place of the other, or into the
+// middle of both: it would be wrong by 20 errors. 7 is more than the tail of 300
+// pulls of a skew distribution.
+func TestNotInTheOthersPlace(t *testing.T) {
+	for _, tc := range []struct{ apart, ratio, noise float64 }{
+		{1.8, 1, 0.02}, {1.5, 3, 0.02}, {2.2, 3, 0.05}, {2.6, 0.1, 0.05},
+	} {
+		const sigmaKms = 80.0
+		sigma := 5000 * sigmaKms / c
+		flux := -0.6 / max(1, tc.ratio) * math.Sqrt(2*math.Pi) * sigma
+		wave := 5000 * (1 + tc.apart*sigmaKms/c)
+		m := parse(t, fmt.Sprintf(pair, "X I", wave))
+		clean := newArm(grid(5000, 20, 1201), 1, tc.noise, profileTruth{5000, sigma, flux}, profileTruth{wave, sigma, tc.ratio * flux})
+		rng := rand.New(rand.NewPCG(1, 2))
+		var a Arm
+		var sc Scratch
+		wrong := 0
+		for range 300 {
+			noisy(&a, clean, rng)
+			res := m.Measure(nil, []Arm{a}, Options{}, &sc)
+			if res[0].Reason == "" && math.Abs(res[0].EWRest+flux) > 7*res[0].EWRestErr {
+				wrong++
+			}
+		}
+		if wrong > 0 {
+			t.Errorf("%+v: in %d of 300 spectra the first line is wrong by more than 7 errors", tc, wrong)
+		}
+	}
+}
