@@ -14,6 +14,8 @@ const (
 	tiltSteps = 2
 	// The tilts reach so many standard errors from the best one.
 	tiltReach = 3.0
+	// The least part of the square of the width that tilt leaves.
+	cramped = 0.3
 )
 
 // tiltAt and tiltPlace are the nodes of Chebyshev of averageLots and a finer set between 1 and
@@ -100,6 +102,11 @@ func (s *Scratch) averageLots(e *tie) {
 	}
 	g.square = 0
 	g.finish(m)
+	// A node that has gone astray spoils the polynomials.
+	if w := m.p[e.ps]; !(w > 0.5*s.tilted[from].p[e.ps] && w < 2*s.tilted[from].p[e.ps]) || !(m.cov[e.ps*(m.n+1)] >= 0) {
+		copy(m.p, s.tilted[from].p)
+		copy(m.cov, s.tilted[from].cov)
+	}
 	e.v, e.s = m.p[e.pv], m.p[e.ps]
 }
 
@@ -173,7 +180,11 @@ func (s *Scratch) tilt(e *tie, t float64) {
 			first = lot
 			v, w := old.center(), fresh.center()
 			m.p[e.pv] = min(max(m.p[e.pv]+v-w, -e.vmax), e.vmax)
-			m.p[e.ps] = min(max(math.Sqrt(max(0, m.p[e.ps]*m.p[e.ps]+old.variance()-fresh.variance())), e.smin), e.smax)
+			ss := m.p[e.ps] * m.p[e.ps]
+			wide := ss + old.variance() - fresh.variance()
+			// All light was in one line, and the new parts lie farther apart than it is wide.
+			s.cramped = wide < cramped*ss
+			m.p[e.ps] = min(max(math.Sqrt(max(wide, cramped*ss)), e.smin), e.smax)
 		}
 	}
 }

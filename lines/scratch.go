@@ -46,6 +46,7 @@ type Scratch struct {
 	tilted    [tiltNodes]tiltNode
 	tiltBest  float64 // see tiltRange
 	tiltErr   float64
+	cramped   bool        // the last tilt may be far from the fit
 	even      snapshot    // with equal amplitudes in the lots
 	sides     [2]snapshot // see refit
 	guesses   [len(stellarSigma)]stellarGuess

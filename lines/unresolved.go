@@ -18,6 +18,9 @@ const (
 	// Lines nearer than this many sigma of both together are looked at: lines
 	// of one width nearer than about 3.3 of it.
 	nearWithin = 1.8
+	// evenWorse is how much worse in chi^2, five standard errors, equal amplitudes must be
+	// for a line that is not seen to be told from the other by that alone.
+	evenWorse = 25.0
 	// Those of which one is not seen are looked at to so many sigma of each.
 	lonelyWithin = 3.3
 )
@@ -48,14 +51,20 @@ func (s *Scratch) findUnresolved() {
 	g.take(s)
 	trapped := s.trapped()
 	s.startLots()
-	for range 2 {
-		m.linear(q)
-	}
-	m.covariance()
+	m.minimize(q)
 	s.readKinematics()
 	open := false
 	if trapped || m.chi2 < g.chi2 {
 		open = s.refit(scale)
+	}
+	if trapped && !open && m.chi2 > g.chi2+evenWorse*scale*scale {
+		// A line that is not there: equal parts describe nothing.
+		for i := range q.comps {
+			q.comps[i].lot = 0
+		}
+		q.equal = q.equal[:0]
+		g.give(s)
+		return
 	}
 	s.residuals()
 	cut, left := false, false
@@ -100,7 +109,7 @@ func (s *Scratch) calm() bool {
 // With broad lines in the blend plain steps may go astray.
 func (s *Scratch) settleLots() bool {
 	m := &s.lm
-	if !s.calm() {
+	if !s.calm() || s.cramped {
 		return m.minimize(&s.prob)
 	}
 	for range tiltSteps {
