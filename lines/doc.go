@@ -20,7 +20,8 @@
 //  3. solve.go fits each blend: Gaussians averaged over the pixels
 //     (profile.go) plus the straight lines, by Levenberg-Marquardt
 //     (marquardt.go). unresolved.go finds the lines that only their sum is
-//     known of, split.go second components. lots.go takes the mean over the
+//     known of, refit.go whether two have changed places, split.go second
+//     components. lots.go takes the mean over the
 //     posterior for such sums, marginal.go where lines are crowded.
 //  4. sum.go sums the pixels of every line, with the fitted neighbors taken
 //     away.
@@ -28,8 +29,8 @@
 //     the strongest line of the spectrum, as linear fits.
 //  6. crowding.go takes back what is no line: emission that is the gap between
 //     absorption lines (relief.go) or that other lines of its ion deny, a wrong
-//     sign, an offset at its limit. Where others may gain by it, all is measured once
-//     more without.
+//     sign, an offset at its limit. Where others may gain by it, again.go measures
+//     their blends once more without.
 //
 // docs/lines.md tells the same to the user of the table of lines.
 package lines
