@@ -2,6 +2,7 @@ package fitsread
 
 import (
 	"math"
+	"slices"
 
 	"duskline/spectrum"
 )
@@ -108,38 +109,75 @@ func estimateIvar(flux, ivar []float64) {
 
 // scatterRatio compares the scatter of the flux with the stated errors: the
 // median of |2 f(i) - f(i-2) - f(i+2)| over its expected error, times 1.4826, is
-// 1 for independent errors that are right. suspect is true below 1/3 and above 3.
-// Where it is above, only pixels below S/N 20 count, since at higher S/N the
-// lines of the object itself scatter more than its noise; 100 pixels must remain.
+// 1 for independent errors that are right. suspect is true below 1/3, and above 3
+// where it is noise that scatters and not the lines of the object itself, which
+// at high S/N exceed it: where pixels below S/N 20 show the same, or where the
+// excess is even, see isEven. 100 pixels must remain for either.
 func scatterRatio(flux, ivar []float64) (ratio float64, suspect bool) {
 	const least, maxSN = 100, 20
-	q := stated(flux, ivar, math.Inf(1))
+	at := stated(flux, ivar, math.Inf(1))
+	q := known(nil, at)
 	if len(q) < least {
 		return 0, false
 	}
 	if ratio = madToSigma * medianOf(q); ratio <= 3 {
 		return ratio, ratio < 1.0/3
 	}
-	if q = stated(flux, ivar, maxSN*maxSN); len(q) < least {
+	if isEven(at, ratio) {
+		return ratio, true
+	}
+	if q = known(nil, stated(flux, ivar, maxSN*maxSN)); len(q) < least {
 		return ratio, false
 	}
 	ratio = madToSigma * medianOf(q)
 	return ratio, ratio > 3
 }
 
-// stated returns |2 f(i) - f(i-2) - f(i+2)| over its stated error for pixels
-// whose squared S/N is below limit.
+// isEven reports whether the quietest quarter of windows of 100 pixels scatters
+// hardly less than all do. For noise it is 0.91 of it: the median of 100 scatters
+// by some 14 % (1.17/sqrt(n) and the correlation of neighbors), and the lower
+// quartile lies 0.67 of that below. 0.75 leaves as much again for stated errors
+// that are off by different factors along the spectrum. The lines of stars leave
+// quiet windows: in spectra of S/N 300 to 9000 it is 0.4 to 0.72 of all.
+func isEven(at []float64, ratio float64) bool {
+	const window, leastWindows, share = 100, 4, 0.75
+	var quiet, one []float64
+	for i := 0; i < len(at); i += window {
+		if one = known(one[:0], at[i:min(i+window, len(at))]); len(one) >= window/2 {
+			quiet = append(quiet, madToSigma*spectrum.Median(one))
+		}
+	}
+	if len(quiet) < leastWindows {
+		return false
+	}
+	slices.Sort(quiet)
+	return quiet[len(quiet)/4] >= share*ratio
+}
+
+// stated returns for every pixel |2 f(i) - f(i-2) - f(i+2)| over its stated error,
+// NaN where a pixel has no weight or its squared S/N is limit or more.
 func stated(flux, ivar []float64, limit float64) []float64 {
-	out := make([]float64, 0, len(flux))
-	for i := 2; i+2 < len(flux); i++ {
+	out := make([]float64, len(flux))
+	for i := range out {
+		out[i] = math.NaN()
+		if i < 2 || i+2 >= len(flux) {
+			continue
+		}
 		a, b, c := ivar[i-2], ivar[i], ivar[i+2]
 		if !(a > 0 && b > 0 && c > 0) || flux[i]*flux[i]*b >= limit {
 			continue
 		}
-		d := math.Abs(2*flux[i] - flux[i-2] - flux[i+2])
-		if q := d / math.Sqrt(4/b+1/a+1/c); q-q == 0 {
-			out = append(out, q)
-		}
+		out[i] = math.Abs(2*flux[i]-flux[i-2]-flux[i+2]) / math.Sqrt(4/b+1/a+1/c)
 	}
 	return out
+}
+
+// known appends the finite numbers of v to dst.
+func known(dst, v []float64) []float64 {
+	for _, x := range v {
+		if x-x == 0 {
+			dst = append(dst, x)
+		}
+	}
+	return dst
 }

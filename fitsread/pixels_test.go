@@ -195,6 +195,35 @@ func TestNoiseEstimate(t *testing.T) {
 	}
 }
 
+// Errors that are too small are told at any S/N, and the lines of a star at high S/N
+// are not taken for noise.
+func TestErrorsTooSmallAtHighSignal(t *testing.T) {
+	n := 4000
+	for _, sn := range []float64{5, 20, 60, 300} {
+		flux := noisy(n, 1)
+		lined := make([]float64, n)
+		for i := range flux {
+			flux[i] += sn
+			lined[i] = flux[i]
+			// Lines 4 pixels wide, of 1 to 30 %, over three quarters of the spectrum.
+			if i > n/4 {
+				lined[i] -= sn * 0.3 * math.Pow(math.Sin(float64(i)/4), 2) * math.Pow(math.Sin(float64(i)/900), 2)
+			}
+		}
+		for _, factor := range []float64{1, 2, 5, 10} {
+			ratio, suspect := scatterRatio(flux, constant(n, factor*factor))
+			if suspect != (factor > 3) || math.Abs(ratio/factor-1) > 0.1 {
+				t.Errorf("S/N %g, errors a factor %g too small: ratio %g, suspect %v", sn, factor, ratio, suspect)
+			}
+		}
+		if ratio, suspect := scatterRatio(lined, constant(n, 1)); suspect {
+			t.Errorf("S/N %g, right errors, with lines: ratio %g, suspect", sn, ratio)
+		} else if sn == 300 && ratio < 3 {
+			t.Errorf("lines that scatter by %g only test nothing", ratio)
+		}
+	}
+}
+
 // Spectra without noise get finite weights; without flux, none.
 func TestNoiseOfModels(t *testing.T) {
 	n := 600
