@@ -101,6 +101,10 @@ func (f *File) segment(s *spectrum.Spectrum, a *arm, row int64) (spectrum.Segmen
 	if len(seg.Wave) < 2 {
 		return seg, noWavelengths(a, wave, row)
 	}
+	if n, largest := dropFarOff(&seg); n > 0 {
+		s.Warn(spectrum.ValuesDropped, "the flux of %d pixels, up to %.2g, is more than %.0e times that of the others and not used", n, largest, farOff)
+		lost.since(&seg, "flux impossibly far from the others", a.flux.String())
+	}
 	seg.LogUniform = uniform && dropped == 0 || isLogUniform(seg.Wave)
 	if v, ok := sameFlux(&seg); ok {
 		clear(seg.Ivar)

@@ -2,6 +2,7 @@ package fitsread
 
 import (
 	"fmt"
+	"math"
 	"strings"
 
 	"duskline/spectrum"
@@ -93,4 +94,35 @@ func noWavelengths(a *arm, wave []float64, row int64) *ReadError {
 	}
 	return fault(ErrBadData, h.index, "check the file, or write a layout for it", "no wavelengths that can be used: of %d, %s",
 		len(wave), strings.Join(why, ", ")).at(column, int(row))
+}
+
+// farOff is how many times the median absolute flux a pixel may have. A well of a
+// detector holds some 1e5 electrons and is read with a noise of some electrons
+// (common practice, no source); lines of nebulae, and the ends of spectra from the
+// far ultraviolet on, stay within 1e6 of the middle. Values beyond are no light,
+// and their squares leave nothing of what is summed with them.
+const farOff = 1e8
+
+// dropFarOff takes the weight from pixels whose flux is impossibly far from the
+// others, and returns their number and the largest.
+func dropFarOff(seg *spectrum.Segment) (n int, largest float64) {
+	level := make([]float64, 0, len(seg.Flux))
+	for i, f := range seg.Flux {
+		if seg.Ivar[i] > 0 {
+			level = append(level, math.Abs(f))
+		}
+	}
+	limit := farOff * medianOf(level)
+	if limit == 0 {
+		return 0, 0
+	}
+	for i, f := range seg.Flux {
+		if seg.Ivar[i] > 0 && math.Abs(f) > limit {
+			seg.Ivar[i] = 0
+			if n++; math.Abs(f) > math.Abs(largest) {
+				largest = f
+			}
+		}
+	}
+	return n, largest
 }

@@ -92,3 +92,31 @@ func TestErrorsAllZero(t *testing.T) {
 		t.Errorf("warnings %v", s.Warnings)
 	}
 }
+
+// Values that no detector gives are dropped, with their number and why; a strong line is not.
+func TestFluxFarOff(t *testing.T) {
+	n := 400
+	read := func(value float64) *spectrum.Spectrum {
+		flux := noisy(n, 1)
+		for i := range flux {
+			flux[i] += 10
+		}
+		for i := 200; i < 203; i++ {
+			flux[i] = value
+		}
+		return first(t, join(empty(), table("", n, []tcol{{name: "WAVE", form: "D", unit: "Angstrom", data: ramp(n, 4000, 1)},
+			{name: "FLUX", form: "D", data: flux}, {name: "ERR", form: "D", data: constant(n, 1)}})))
+	}
+	for _, value := range []float64{1e30, -1e30, 1e11} {
+		s := read(value)
+		if seg := &s.Segments[0]; seg.Good() != n-3 || seg.Ivar[201] != 0 || !s.Has(spectrum.ValuesDropped) {
+			t.Errorf("%g: %d good of %d, warnings %v", value, seg.Good(), n, s.Warnings)
+		}
+		if len(s.Losses) != 1 || s.Losses[0].Pixels != 3 {
+			t.Errorf("%g: losses %v", value, s.Losses)
+		}
+	}
+	if s := read(1e6); s.Segments[0].Good() != n || s.Has(spectrum.ValuesDropped) {
+		t.Errorf("a line of 1e5 times the continuum: %d good of %d", s.Segments[0].Good(), n)
+	}
+}

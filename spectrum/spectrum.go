@@ -75,6 +75,7 @@ const (
 	NoiseEstimated  Code = "noise_estimated" // no errors in the input
 	WeightsSuspect  Code = "weights_suspect" // stated errors disagree with the scatter
 	PixelsDropped   Code = "pixels_dropped"  // repeated, unordered or non-finite wavelengths dropped
+	ValuesDropped   Code = "values_dropped"  // fluxes impossibly far from the others dropped
 	CoverageCut     Code = "coverage_cut"    // wavelengths outside the supported range cut
 	ArmsRescaled    Code = "arms_rescaled"   // arms brought to a common flux level
 	FrameUncertain  Code = "frame_uncertain" // correction stated in words only, or contradictory cards

@@ -3,6 +3,9 @@ package main
 import (
 	"fmt"
 	"path/filepath"
+	"regexp"
+	"slices"
+	"strconv"
 	"strings"
 
 	"duskline/pipeline"
@@ -44,7 +47,7 @@ func (c *jobFlags) job(a *app) (pipeline.Job, error) {
 		}
 	}
 	if len(c.Set) > 0 {
-		if job.Settings, err = job.Settings.Over([]byte(strings.Join(c.Set, "\n"))); err != nil {
+		if job.Settings, err = job.Settings.Over([]byte(settingLines(c.Set))); err != nil {
 			return job, fmt.Errorf("--set %s is not used:\n%w", strings.Join(c.Set, " --set "), err)
 		}
 	}
@@ -67,6 +70,22 @@ func (c *jobFlags) job(a *app) (pipeline.Job, error) {
 		job.Settings.Run.Workers = c.Workers
 	}
 	return job, nil
+}
+
+// bareWord is KEY=word where the word has no quotes.
+var bareWord = regexp.MustCompile(`^(\s*[\w.]+\s*=\s*)([A-Za-z][A-Za-z_-]*)\s*$`)
+
+// settingLines makes TOML of the values of --set. A shell takes away the quotes that
+// TOML wants around a text, so a bare word gets them back.
+func settingLines(set []string) string {
+	lines := make([]string, len(set))
+	for i, s := range set {
+		lines[i] = s
+		if m := bareWord.FindStringSubmatch(s); m != nil && !slices.Contains([]string{"true", "false", "inf", "nan"}, m[2]) {
+			lines[i] = m[1] + strconv.Quote(m[2])
+		}
+	}
+	return strings.Join(lines, "\n")
 }
 
 // recall fills a job from a run that was planned before, if the flags refer to
