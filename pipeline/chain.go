@@ -185,7 +185,7 @@ func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) bool {
 		arm.Cont, arm.ContErr = resized(arm.Cont, n), resized(arm.ContErr, n)
 		for i, w := range seg.Wave {
 			x := math.Log10(w)
-			if !b.level.covers(x, g.Step) {
+			if !b.level.covers(x, g.Step) || b.level.absorbed(g, x) {
 				arm.Cont[i], arm.ContErr[i] = math.NaN(), math.NaN()
 				continue
 			}
@@ -204,6 +204,7 @@ func (b *Bench) measure(s *spectrum.Spectrum, res *redshift.Result) bool {
 		opt.ContinuumSlack, opt.Stark = 0.01, true
 	}
 	b.results = b.chain.meter.Measure(b.results, b.arms, opt, &b.measured)
+	b.level.withPartners(b.results)
 	if res.Class == catalog.Star {
 		b.results = lines.Fold(b.results)
 	}

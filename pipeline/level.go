@@ -19,7 +19,9 @@ type level struct {
 	jump        float64 // log10 wavelength below which below holds; 0: nowhere
 	flux, ivar  []float64
 	window      []float64
-	spacing     float64 // of the knots
+	troughs     []trough // of a quasar's outflows
+	edge        float64  // log10 wavelength below which lines have none, for a saturated forest; 0: nowhere
+	spacing     float64  // of the knots
 }
 
 // Value returns the continuum at a log10 wavelength.
@@ -59,7 +61,7 @@ func (l *level) covers(x, slack float64) bool {
 		f = &l.below
 	}
 	low := f.Basis().Low
-	if x < low-slack || x > high+slack {
+	if x < l.edge || x < low-slack || x > high+slack {
 		return false
 	}
 	reach := heldWithin * l.spacing
@@ -69,16 +71,18 @@ func (l *level) covers(x, slack float64) bool {
 // fit fits the continuum to the grid with the lines of the found redshift
 // masked. It reports false when no continuum could be had.
 func (l *level) fit(g *spectrum.Grid, x []float64, res *redshift.Result, set *Settings) bool {
-	l.ready, l.jump = false, 0
+	l.ready, l.jump, l.edge, l.troughs = false, 0, 0, l.troughs[:0]
 	l.flux, l.ivar = append(l.flux[:0], g.Flux...), append(l.ivar[:0], g.Ivar...)
 	opt := set.continuumOptions()
 	l.spacing = opt.Spacing
 	masks := masker{grid: g, ivar: l.ivar, widths: set.Continuum.MaskWidths}
 	masks.lines(res)
 	if res.Class == catalog.Quasar {
+		l.crossTroughs(g, &masks, 1+res.Redshift)
 		for _, c := range complexes {
 			l.bridgeComplex(g, &masks, c, 1+res.Redshift)
 		}
+		l.anchor(g, &masks, 1+res.Redshift)
 	}
 	l.wide = res.Class == catalog.Star && res.Family == "hot"
 	if !l.wide {
@@ -100,7 +104,7 @@ func (l *level) fit(g *spectrum.Grid, x []float64, res *redshift.Result, set *Se
 
 // plain fits the continuum to all pixels.
 func (l *level) plain(g *spectrum.Grid, x []float64, opt continuum.Options) bool {
-	l.jump = 0
+	l.jump, l.edge = 0, 0
 	return l.main.Fit(x, g.Flux, g.Ivar, opt) == nil
 }
 

@@ -24,29 +24,21 @@ const (
 // bridgeComplex writes the pseudo-continuum of a complex over its pixels: a power
 // law through the medians of two windows centered on its ends. The weight of both
 // windows is spread over the bridge, so that the error of the spline is that of
-// what is seen; but none is better than extrapolationDoubt. Where a window is
-// not covered, or not positive, nothing is done: the masks of the lines remain.
+// what is seen; but none is better than extrapolationDoubt. A window in a trough has
+// the value of the power law across that. Where a window is not covered, or not positive, nothing is done: the masks of the lines remain.
 func (l *level) bridgeComplex(g *spectrum.Grid, m *masker, ends [2]float64, z1 float64) {
 	var x, level [2]float64
 	weight := math.Inf(1)
 	for k, end := range ends {
-		n, w := 0, 0.0
-		l.window = l.window[:0]
-		lo, hi := m.pixels((end-sideHalf)*z1, (end+sideHalf)*z1)
-		for i := lo; i < hi; i++ {
-			if g.Ivar[i] > 0 {
-				l.window = append(l.window, g.Flux[i])
-				w += g.Ivar[i]
-				n++
-			}
+		from, to := (end-sideHalf)*z1, (end+sideHalf)*z1
+		f, w := l.seen(g, m, from, to)
+		if p := l.inTrough(m.pixels(from, to)); p != nil {
+			f, w = p.value(end*z1), math.Inf(1)
 		}
-		if n < sideLeast {
+		if !(f > 0) {
 			return
 		}
-		x[k], level[k] = math.Log(end*z1), spectrum.Median(l.window)
-		if !(level[k] > 0) {
-			return
-		}
+		x[k], level[k] = math.Log(end*z1), f
 		weight = min(weight, w)
 	}
 	lo, hi := m.pixels(ends[0]*z1, ends[1]*z1)
