@@ -22,7 +22,8 @@
 //     (marquardt.go). unresolved.go finds the lines that only their sum is
 //     known of, refit.go whether two have changed places, split.go second
 //     components. lots.go takes the mean over the
-//     posterior for such sums, marginal.go where lines are crowded.
+//     posterior for such sums, marginal.go where lines are crowded. Of broad lines,
+//     stray.go tells which is in the place of another, broadsum.go what only their sum is known of.
 //  4. sum.go sums the pixels of every line, with the fitted neighbors taken
 //     away.
 //  5. Blends in which nothing was seen come last, with the offset and width of

@@ -37,6 +37,9 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 		doubt = math.Hypot(doubt, starkDoubt*math.Abs(flux))
 	}
 	hidden := math.Abs(c.share) * s.continuumDoubt(ci)
+	if c.lot > 0 {
+		hidden = s.lotDoubt(ci)
+	}
 	fluxErr := math.Hypot(sd, math.Hypot(doubt, hidden))
 	if !ok || !(sd > 0) || !finite(flux, fluxErr) {
 		r.Reason = ReasonNoFit

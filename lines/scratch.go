@@ -42,6 +42,8 @@ type Scratch struct {
 	grad      []float64
 	cross     []float64
 	bumps     []bump
+	sums      []int // first components of broad lots
+	moved     []int
 	free      snapshot // a blend before its lines are joined to lots
 	tilted    [tiltNodes]tiltNode
 	tiltBest  float64 // see tiltRange

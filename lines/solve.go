@@ -22,6 +22,11 @@ func (s *Scratch) measureBlend(b *blend) {
 			break
 		}
 	}
+	if ok && !b.faint && s.homeward(main) {
+		s.build(main)
+		ok = s.fit(maxRounds)
+		s.readKinematics()
+	}
 	if ok && !b.faint {
 		s.findUnresolved()
 	}
@@ -36,9 +41,11 @@ func (s *Scratch) measureBlend(b *blend) {
 	if ok && !b.faint {
 		s.marginalize()
 		s.allowStellar()
+		s.sumBroad()
 	}
 	s.report(ok)
 	if !b.faint && ok {
+		s.openBroad()
 		s.dropAnchors()
 	}
 }
@@ -240,7 +247,7 @@ func (s *Scratch) revise(main int, ok bool) bool {
 		switch {
 		case !e.own && !e.settled && snr >= ownFrom && s.standsApart(k):
 			e.own, e.settled, e.borrowed, again = true, true, false, true
-		case e.own && snr < seenFrom:
+		case e.own && (snr < seenFrom || s.invades(k, main)):
 			e.settled, again = true, true
 			s.follow(k, main)
 		}

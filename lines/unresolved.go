@@ -279,6 +279,9 @@ func (s *Scratch) lotCarrier(ci int) int {
 	q := &s.prob
 	best, support := -1, 0.0
 	lot := q.comps[ci].lot
+	if k := s.leadOf(lot); k >= 0 {
+		return k
+	}
 	flux, _ := s.lotFlux(ci, nil, 0)
 	for k := range q.comps {
 		c := &q.comps[k]
