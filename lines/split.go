@@ -27,6 +27,8 @@ const (
 	splitSeen = 5.0
 	// The broader one is at least so many times as wide as the other.
 	splitWider = 1.5
+	// Beyond that part of its range a width is at its limit.
+	widest = 0.98
 )
 
 // split looks for a second component of every ion with offset and width of its
@@ -195,7 +197,9 @@ func (s *Scratch) trySecond(main, k int, v, w float64) {
 	if s.stellar(k, ties) {
 		need, seen = splitStellar*math.Log(pixels), seenFrom
 	}
-	if ok && (old-m.chi2)/(scale*scale) > need && wider > splitWider*slimmer && wider < 0.98*a.smax &&
+	// What is as wide as may be even alone hides nothing of its narrow part.
+	held := first.s > widest*first.smax && slimmer < first.s/splitWider
+	if ok && (old-m.chi2)/(scale*scale) > need && wider > splitWider*slimmer && (held || wider < widest*a.smax) &&
 		math.Min(s.standing(k, scale), s.standing(ties, scale)) > seen {
 		if a.s > b.s {
 			for i := range q.comps {

@@ -143,23 +143,49 @@ func (s *Scratch) fillWindow(w *window) {
 // seen line of another blend, unless they are as near to a line of this one.
 func (s *Scratch) maskOutsiders(w *window) {
 	q := &s.prob
-	blend := s.root(q.comps[0].track)
 	for i := range s.tracks {
-		t := &s.tracks[i]
-		if !t.usable || math.Abs(t.snr) < 5 || s.root(i) == blend {
-			continue
-		}
-		mu := t.lam0 * (1 + t.v/spectrum.SpeedOfLight)
-		d := joinWithin * t.s * t.lam0 / spectrum.SpeedOfLight
-		if mu+d < q.lam[w.lo] || mu-d > q.lam[w.hi-1] {
+		lo, hi, ok := s.outsider(i)
+		if !ok || hi < q.lam[w.lo] || lo > q.lam[w.hi-1] {
 			continue
 		}
 		for k := w.lo; k < w.hi; k++ {
-			if math.Abs(q.lam[k]-mu) < d && !s.nearOwn(q.lam[k]) {
+			if q.lam[k] > lo && q.lam[k] < hi && !s.nearOwn(q.lam[k]) {
 				q.w[k] = 0
 			}
 		}
 	}
+}
+
+// partFrom is the S/N of the box from which a line in the corner of a bin spoils a fit. Common practice, no source.
+const partFrom = 50.0
+
+// partOutsiders lets no bin reach over the limits of what maskOutsiders takes for a strong
+// narrow line: one whose middle is outside would have most of that line.
+func (s *Scratch) partOutsiders(w *window) {
+	a := &s.arms[w.arm]
+	for i := range s.tracks {
+		lo, hi, ok := s.outsider(i)
+		if !ok || s.tracks[i].broad || math.Abs(s.tracks[i].snr) < partFrom || hi < a.Wave[w.pix0] || lo > a.Wave[w.pixLimit-1] {
+			continue
+		}
+		// A bin of one pixel ends those beside it.
+		for _, k := range [2]int{a.index(lo), a.index(hi) - 1} {
+			if k >= w.pix0 && k < w.pixLimit {
+				s.bins[k-w.pix0] = 1
+			}
+		}
+	}
+}
+
+// outsider returns the wavelengths that a clearly seen line of another blend takes.
+func (s *Scratch) outsider(i int) (lo, hi float64, ok bool) {
+	t := &s.tracks[i]
+	if !t.usable || math.Abs(t.snr) < 5 || s.root(i) == s.root(s.prob.comps[0].track) {
+		return 0, 0, false
+	}
+	mu := t.lam0 * (1 + t.v/spectrum.SpeedOfLight)
+	d := joinWithin * t.s * t.lam0 / spectrum.SpeedOfLight
+	return mu - d, mu + d, true
 }
 
 // nearOwn reports whether a wavelength lies within 2.5 sigma of a line of the
@@ -250,6 +276,7 @@ func (s *Scratch) markBins(w *window) {
 			s.bins[i-w.pix0] = min(s.bins[i-w.pix0], most)
 		}
 	}
+	s.partOutsiders(w)
 }
 
 // binFrom returns how many pixels from pixel i on form one bin.
