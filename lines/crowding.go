@@ -341,10 +341,8 @@ func (r *Result) takeBack(why string) {
 		r.Reason = why
 		return
 	}
-	r.Kind, r.UpperLimit = Limit, math.Abs(r.EWRest)+3*r.EWRestErr
-	if why == ReasonWrongSign {
-		r.UpperLimit = 3 * r.EWRestErr
-	}
+	r.Kind = Limit
+	r.bound()
 	r.OffsetKms, r.OffsetErr = math.NaN(), math.NaN()
 	if r.Reason == ReasonSum {
 		why = sumAnd[why]

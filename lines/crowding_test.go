@@ -144,6 +144,34 @@ func TestCompanions(t *testing.T) {
 	}
 }
 
+// Hot stars absorb He II, what is no star does not: there it is a limit, that of all others.
+func TestIonizedHeliumAbsorbs(t *testing.T) {
+	m := fullMeter(t)
+	for _, tc := range []struct {
+		opt          Options
+		kind, reason string
+	}{
+		{Options{Expect: func(*linelist.Line) bool { return true }}, Absorption, ""},
+		{Options{Expect: func(*linelist.Line) bool { return true }, Stark: true}, Absorption, ""},
+		{Options{}, Limit, ReasonWrongSign},
+		{Options{Expect: func(l *linelist.Line) bool { return l.Ion != "He II" }}, Unmeasured, ReasonUnexpected},
+	} {
+		var a Arm
+		truth := rest(waveOf(t, m, "HeII_4686"), 400, -0.3)
+		noisy(&a, newArm(grid(4200, 69, 2000), 1, 0.02, truth), rand.New(rand.NewPCG(47, 1)))
+		r := find1(t, m.Measure(nil, []Arm{a}, tc.opt, nil), "HeII_4686")
+		if r.Kind != tc.kind || r.Reason != tc.reason {
+			t.Errorf("Expect %t, Stark %t: %s %q, want %s %q", tc.opt.Expect != nil, tc.opt.Stark, r.Kind, r.Reason, tc.kind, tc.reason)
+		}
+		if r.Kind == Absorption && math.Abs(r.EWRest+truth.flux) > 4*r.EWRestErr {
+			t.Errorf("%.3f +- %.3f, want %.3f", r.EWRest, r.EWRestErr, -truth.flux)
+		}
+		if r.Kind == Limit && math.Abs(r.UpperLimit-math.Abs(r.EWRest)-3*r.EWRestErr) > 1e-12*r.UpperLimit {
+			t.Errorf("limit %.3f of %.3f +- %.3f, want |W| and three errors", r.UpperLimit, r.EWRest, r.EWRestErr)
+		}
+	}
+}
+
 // What lies beyond the range of a line's offset is something else: a limit at the place of the
 // line, with the width of the spectrum's other line. Within the range it is the line.
 func TestStrayed(t *testing.T) {

@@ -2,6 +2,7 @@ package lines
 
 import (
 	"math"
+	"slices"
 	"strings"
 
 	"duskline/linelist"
@@ -114,7 +115,8 @@ type Options struct {
 	Stark bool
 
 	// Expect says which lines objects of this kind have; the others are not
-	// fitted, so that they take nothing from those that are there. nil: all.
+	// fitted, so that they take nothing from those that are there. nil: all, as in
+	// galaxies and quasars; He II then only in emission.
 	Expect func(*linelist.Line) bool
 
 	Sky []Band // wavelengths to be noted in Result.OnSky
@@ -167,8 +169,11 @@ func (o *Options) widthMax(l *line, broad bool) float64 {
 		return o.WidthMax
 	}
 	if o.Stark {
-		if l.ion == hydrogenIon {
+		switch l.ion {
+		case hydrogenIon:
 			return starkWidest
+		case ionizedHelium:
+			return starkHelium
 		}
 		return starkMetal
 	}
@@ -183,6 +188,9 @@ type Meter struct {
 	lines   []line
 	sisters [][]int // indices of the lines that are at least as strong, for every line
 	none    []byte  // inList for every line
+	// diffuse is the same for what is no star: gas shines in He II, and only the
+	// hottest stars absorb it, whose light other stars and iron drown in a galaxy.
+	diffuse *Meter
 }
 
 // line is a line of the list with what planning needs to know of it.
@@ -256,10 +264,22 @@ func NewMeter(list *linelist.List) *Meter {
 	}
 	m.findSisters()
 	m.none = make([]byte, len(m.lines))
+	d := *m
+	d.lines = slices.Clone(m.lines)
+	for i := range d.lines {
+		if l := &d.lines[i]; l.ion == ionizedHelium && l.Seen != Absorption {
+			l.Seen = Emission
+		}
+	}
+	m.diffuse = &d
 	return m
 }
 
-const hydrogenIon = "H I"
+const hydrogenIon, ionizedHelium = "H I", "He II"
+
+// starkHelium is the largest sigma, km/s, of He II in hot stars: it has one electron and the
+// linear Stark effect of hydrogen, but is weaker. Open spectra of hot subdwarfs have up to 530.
+const starkHelium = 600.0
 
 // plainIon strips what does not name the ion: brackets and fine-structure stars.
 func plainIon(s string) string {
@@ -290,6 +310,9 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 		s.labels, s.labeled = map[labelKey]string{}, m
 	}
 	s.meter, s.arms, s.opt = m, arms, opt.withDefaults()
+	if opt.Expect == nil {
+		s.meter = m.diffuse
+	}
 	s.bar = append(s.bar[:0], m.none...)
 	s.round(false)
 	if s.weigh(false) {
@@ -299,6 +322,11 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 	}
 	for i := range s.tracks {
 		t := &s.tracks[i]
+		for _, r := range t.parts() {
+			if r.Kind == Limit {
+				r.bound()
+			}
+		}
 		if dst = append(dst, t.result); t.second.Name != "" {
 			dst = append(dst, t.second)
 		}
@@ -306,6 +334,9 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 	s.meter, s.arms = nil, nil
 	return dst
 }
+
+// bound sets the upper limit, of whatever reason the row is none.
+func (r *Result) bound() { r.UpperLimit = math.Abs(r.EWRest) + 3*r.EWRestErr }
 
 func (a *Arm) check() {
 	n := len(a.Wave)
