@@ -112,7 +112,7 @@ func (s *Scratch) acquit() {
 			for j := range s.tracks {
 				o := &s.tracks[j]
 				for k, q := range o.parts() {
-					if o == t || q.Kind != Emission || o.high[k] < firmHeight || q.SNR < firmSNR {
+					if o == t || !s.firm(o, k) {
 						continue
 					}
 					_, width := q.place(o)
@@ -159,8 +159,66 @@ func (s *Scratch) acquitTwins() {
 	}
 }
 
-// deniedFrom is by how many errors a stronger line must be too weak. Common practice, no source.
-const deniedFrom = 2.0
+// deniedFrom is by how many errors a stronger line must be too weak, of which noise counts skyDoubt
+// times in bands of the sky, whose residuals it does not know. Common practice, no source.
+const deniedFrom, skyDoubt = 2.0, 2.0
+
+// vouched reports whether a firm line of the ion shines at the offset of a line, itself included.
+func (s *Scratch) vouched(t *track, r *Result) bool {
+	for i := range s.tracks {
+		o := &s.tracks[i]
+		for part, q := range o.parts() {
+			if o.line.ion != t.line.ion || !s.firm(o, part) {
+				continue
+			}
+			if _, width := q.place(o); math.Abs(q.OffsetKms-r.OffsetKms) < allyOffset*width {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+// firm reports whether a part of a line is in emission beyond doubt.
+func (s *Scratch) firm(t *track, part int) bool {
+	r := t.parts()[part]
+	return r.Kind == Emission && t.doubt[part] == "" && r.SNR >= firmSNR && t.high[part] >= firmHeight
+}
+
+// bloatFrom is how many times as wide as the gas of a galaxy none of its narrow lines is: the
+// same gas makes them all. Common practice, no source.
+const bloatFrom = 2.0
+
+// bloated reports whether a forbidden line, or one of He I, of a galaxy is wider than its gas, by
+// the error of its width: that of the strongest forbidden line or, if more, of hydrogen,
+// for He I with its broad part.
+func (s *Scratch) bloated(t *track, r *Result) bool {
+	if s.opt.Broad || s.opt.Expect != nil || !(r.WidthErr >= 0) || !t.line.narrow && t.line.ion != "He I" {
+		return false
+	}
+	var width, best [2]float64
+	for i := range s.tracks {
+		o := &s.tracks[i]
+		for part, q := range o.parts() {
+			if o == t || !s.firm(o, part) {
+				continue
+			}
+			hydrogen := 0
+			switch {
+			case o.line.ion == hydrogenIon && (part == 0 || !t.line.narrow):
+				hydrogen = 1
+			case !o.line.narrow || part > 0:
+				continue
+			}
+			if q.SNR > best[hydrogen] {
+				best[hydrogen], width[hydrogen] = q.SNR, q.WidthKms
+			}
+		}
+	}
+	// A width of none is narrower than the instrument, which is not known better than that.
+	most := bloatFrom * max(width[0], width[1], t.sres, t.pix)
+	return max(best[0], best[1]) > 0 && r.WidthKms-r.WidthErr > most
+}
 
 // pairs are lines of one ion, the second at least as strong in flux as the first.
 // Case B has He I 4471 at 0.37 of 5876 and 4026 at 0.17; [O III] 4363 reaches 5007 at
@@ -218,7 +276,7 @@ func (s *Scratch) denied(t *track, r *Result) bool {
 	for _, sister := range s.meter.sisters[t.index] {
 		for i := range s.tracks {
 			o := &s.tracks[i]
-			if o.index != sister || !o.usable || o.result.OnSky || o.result.Kind == Unmeasured || o.result.Kind == Emission && o.doubt[0] == "" {
+			if o.index != sister || !o.usable || o.result.Kind == Unmeasured || o.result.Kind == Emission && o.doubt[0] == "" {
 				continue
 			}
 			at := o.lam0 * mu / t.lam0
@@ -228,7 +286,14 @@ func (s *Scratch) denied(t *track, r *Result) bool {
 				continue
 			}
 			least := peak * mu / at // of the same flux a redder line is lower
-			err := math.Hypot(least/r.SNR, math.Hypot(math.Sqrt(h.variance), s.relief(o.arm, at, sigma)))
+			noise := math.Sqrt(h.variance)
+			if o.result.OnSky {
+				if s.vouched(t, r) {
+					continue
+				}
+				noise *= skyDoubt
+			}
+			err := math.Hypot(least/r.SNR, math.Hypot(noise, s.relief(o.arm, at, sigma)))
 			if least-h.mean > deniedFrom*err {
 				return true
 			}
@@ -286,6 +351,8 @@ func (s *Scratch) weigh(last bool) (again bool) {
 			case r.Kind != Emission:
 			case t.line.Seen == Absorption && t.line.Name != chromospheric:
 				t.doubt[part] = ReasonWrongSign
+			case t.doubt[part] == "" && part == 0 && s.bloated(t, r):
+				t.doubt[part] = ReasonCrowded
 			case t.doubt[part] == "" && !t.broad && (s.bar[t.index] == inVoid || s.denied(t, r)):
 				t.doubt[part] = ReasonNoCompanion
 			}

@@ -144,6 +144,37 @@ func TestCompanions(t *testing.T) {
 	}
 }
 
+// A companion in a band of the sky denies, too, though not what a firm line of the ion vouches for; and no narrow
+// line of a galaxy is more than twice as wide as its gas.
+func TestSkyAndWidthDeny(t *testing.T) {
+	m := fullMeter(t)
+	hump := func(name string, sigma, peak float64) profileTruth { return rest(waveOf(t, m, name), sigma, peak) }
+	sky := []Band{{4468, 4478}, {5860, 5890}}
+	for _, tc := range []struct {
+		name, kind, reason string
+		sky                []Band
+		lit                []profileTruth
+	}{
+		{"HeI_4026", Limit, ReasonNoCompanion, sky, []profileTruth{hump("HeI_4026", 300, 0.12)}},
+		{"HeI_4471", Limit, ReasonNoCompanion, sky[1:], []profileTruth{hump("HeI_4471", 300, 0.1)}},
+		{"HeI_4471", Emission, "", sky[1:], []profileTruth{hump("HeI_4471", 300, 0.4)}}, // firm itself
+		{"HeI_4471", Limit, ReasonNoCompanion, nil, []profileTruth{hump("HeI_4471", 300, 0.4)}},
+		{"SII_4069", Emission, "", nil, []profileTruth{hump("OIII_5007", 150, 3), hump("OIII_4959", 150, 1), hump("SII_4069", 900, 0.2)}}, // what of it has the width of the gas
+		{"SII_4069", Emission, "", nil, []profileTruth{hump("OIII_5007", 150, 3), hump("OIII_4959", 150, 1), hump("SII_4069", 250, 0.2)}},
+		{"SII_4069", Emission, "", nil, []profileTruth{hump("SII_4069", 900, 0.2)}}, // nothing to compare
+	} {
+		var a Arm
+		noisy(&a, newArm(grid(3900, 69, 4700), 1, 0.03, tc.lit...), rand.New(rand.NewPCG(53, 1)))
+		res := m.Measure(nil, []Arm{a}, Options{Sky: tc.sky}, nil)
+		if r := find1(t, res, tc.name); r.Kind != tc.kind || r.Reason != tc.reason {
+			t.Errorf("%s in %v, sky %v: %s %q, %.2f +- %.2f, %.0f km/s, want %s %q", tc.name, tc.lit, tc.sky, r.Kind, r.Reason, r.EWRest, r.EWRestErr, r.WidthKms, tc.kind, tc.reason)
+		}
+		if len(tc.lit) == 3 && find1(t, res, tc.name).WidthKms > 1.2*300 {
+			t.Errorf("%s in %v: %.0f km/s wide", tc.name, tc.lit, find1(t, res, tc.name).WidthKms)
+		}
+	}
+}
+
 // Hot stars absorb He II, what is no star does not: there it is a limit, that of all others.
 func TestIonizedHeliumAbsorbs(t *testing.T) {
 	m := fullMeter(t)
