@@ -84,12 +84,12 @@ func (s *Scratch) note(b *blend, before *lent) {
 	s.done = append(s.done, d)
 }
 
-// reuse gives a blend its results of the first round, if it has the same lines and
-// none of them was barred, and reports whether it has.
+// reuse gives a blend its results of the first round, if it has the same lines, none of them
+// was barred and none may be more than it was, and reports whether it has.
 func (s *Scratch) reuse(b *blend) bool {
 	members := s.member[b.first : b.first+b.count]
 	for _, i := range members {
-		if s.bar[s.tracks[i].index] != inList {
+		if t := &s.tracks[i]; s.bar[t.index] != inList || s.meter == s.labeled.flaring && t.line.Seen != s.labeled.lines[t.index].Seen {
 			return false
 		}
 	}

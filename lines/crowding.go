@@ -193,7 +193,7 @@ const bloatFrom = 2.0
 // the error of its width: that of the strongest forbidden line or, if more, of hydrogen,
 // for He I with its broad part.
 func (s *Scratch) bloated(t *track, r *Result) bool {
-	if s.opt.Broad || s.opt.Expect != nil || !(r.WidthErr >= 0) || !t.line.narrow && t.line.ion != "He I" {
+	if s.opt.Broad || s.opt.Expect != nil || !(r.WidthErr >= 0) || !t.line.narrow && t.line.ion != helium {
 		return false
 	}
 	var width, best [2]float64
@@ -315,9 +315,37 @@ const (
 // there as broadly as forestWidth, sigma in km/s, is not told from it.
 const forestEnd, forestWidth = 1215.5, 500.0
 
-// chromospheric is the one line listed in absorption only that stars with active
-// chromospheres have in emission and that no other line is taken for.
-const chromospheric = "CaII_K"
+// chromospheric reports whether a line listed in absorption only is one that stars with active
+// chromospheres have in emission.
+func (l *line) chromospheric() bool { return l.Name == "CaII_K" || l.Name == "CaII_H" }
+
+// mayShine reports whether a line listed in absorption only may be in emission all the same: Ca II K,
+// for which no other line is taken, and in stars H, where K shines.
+func (s *Scratch) mayShine(t *track) bool {
+	if !t.line.chromospheric() || t.line.Name == "CaII_K" {
+		return t.line.chromospheric()
+	}
+	for i := range s.tracks {
+		if k := &s.tracks[i]; s.opt.Expect != nil && k.line.Name == "CaII_K" {
+			return k.result.Kind == Emission && k.doubt[0] == ""
+		}
+	}
+	return false
+}
+
+// flares reports whether hydrogen shines in a star that is too cool to have helium.
+func (s *Scratch) flares() bool {
+	i := s.meter.find("HeI_5876")
+	if s.opt.Expect == nil || i < 0 || s.opt.Expect(&s.meter.lines[i].Line) {
+		return false
+	}
+	for i := range s.tracks {
+		if t := &s.tracks[i]; t.line.series() == 2 && (s.firm(t, 0) || s.firm(t, 1)) {
+			return true
+		}
+	}
+	return false
+}
 
 // weigh takes back what is no line and reports whether a second round without
 // it would measure its neighbors better. What strays only in the last round, where nothing
@@ -349,7 +377,7 @@ func (s *Scratch) weigh(last bool) (again bool) {
 			case r.Kind == Absorption && t.broad && t.line.Wave < forestEnd && r.WidthKms > forestWidth:
 				t.doubt[part] = ReasonCrowded
 			case r.Kind != Emission:
-			case t.line.Seen == Absorption && t.line.Name != chromospheric:
+			case (t.line.Seen == Absorption || t.line.chromospheric()) && !s.mayShine(t):
 				t.doubt[part] = ReasonWrongSign
 			case t.doubt[part] == "" && part == 0 && s.bloated(t, r):
 				t.doubt[part] = ReasonCrowded

@@ -3,6 +3,7 @@ package lines
 import (
 	"math"
 	"math/rand/v2"
+	"slices"
 	"testing"
 
 	"duskline/linelist"
@@ -140,6 +141,40 @@ func TestCompanions(t *testing.T) {
 		res := m.Measure(nil, []Arm{a}, Options{}, nil)
 		if r := find1(t, res, tc.name); r.Kind != tc.kind || r.Reason != tc.reason {
 			t.Errorf("%s in %v: %s %q, %.2f +- %.2f, want %s %q", tc.name, tc.lit, r.Kind, r.Reason, r.EWRest, r.EWRestErr, tc.kind, tc.reason)
+		}
+	}
+}
+
+// Where hydrogen of a cool star shines, He I may, and Ca II H takes its light from H-epsilon; where it
+// does not, He I is not fitted, and where K does not shine, H is none.
+func TestFlareStar(t *testing.T) {
+	m := fullMeter(t)
+	cool := func(l *linelist.Line) bool { return l.Seen != "emission" && l.Ion != "He I" && l.Ion != "He II" }
+	balmer, calcium, both := []string{"Ha", "Hb", "Hg", "Hd", "H7"}, []string{"CaII_K", "CaII_H"}, []string{"HeI_4471", "HeI_5876"}
+	for _, tc := range []struct {
+		lit, seen   []string
+		name, other string // the kind or reason of one that is not lit
+	}{
+		{slices.Concat(balmer, calcium, both), slices.Concat(balmer, calcium, both), "HeI_4026", Limit},
+		{slices.Concat(balmer, both), slices.Concat(balmer, both), "CaII_H", Limit},
+		{both, nil, "HeI_5876", Unmeasured},
+		{balmer, balmer, "HeI_5876", Limit},
+	} {
+		var lit []profileTruth
+		for _, name := range tc.lit {
+			lit = append(lit, rest(waveOf(t, m, name), 60, 1))
+		}
+		var a Arm
+		noisy(&a, newArm(grid(3800, 30, 19000), 1, 0.02, lit...), rand.New(rand.NewPCG(59, 1)))
+		res := m.Measure(nil, []Arm{a}, Options{Expect: cool}, nil)
+		for _, name := range tc.seen {
+			want := rest(waveOf(t, m, name), 60, 1).flux
+			if r := find1(t, res, name); r.Kind != Emission || math.Abs(r.EWRest+want) > 4*r.EWRestErr {
+				t.Errorf("%v: %s is %s %s, %.2f +- %.2f, want %.2f", tc.lit, name, r.Kind, r.Reason, r.EWRest, r.EWRestErr, -want)
+			}
+		}
+		if r := find1(t, res, tc.name); r.Kind != tc.other {
+			t.Errorf("%v: %s is %s %s, %.2f +- %.2f, want %s", tc.lit, tc.name, r.Kind, r.Reason, r.EWRest, r.EWRestErr, tc.other)
 		}
 	}
 }

@@ -116,7 +116,8 @@ type Options struct {
 
 	// Expect says which lines objects of this kind have; the others are not
 	// fitted, so that they take nothing from those that are there. nil: all, as in
-	// galaxies and quasars; He II then only in emission.
+	// galaxies and quasars; He II then only in emission. Where hydrogen shines, He I but
+	// 3889 is fitted all the same, in emission.
 	Expect func(*linelist.Line) bool
 
 	Sky []Band // wavelengths to be noted in Result.OnSky
@@ -190,7 +191,9 @@ type Meter struct {
 	none    []byte  // inList for every line
 	// diffuse is the same for what is no star: gas shines in He II, and only the
 	// hottest stars absorb it, whose light other stars and iron drown in a galaxy.
-	diffuse *Meter
+	// flaring is that for stars too cool for helium whose hydrogen shines: so may He I, and
+	// Ca II H beside hydrogen.
+	diffuse, flaring *Meter
 }
 
 // line is a line of the list with what planning needs to know of it.
@@ -264,18 +267,28 @@ func NewMeter(list *linelist.List) *Meter {
 	}
 	m.findSisters()
 	m.none = make([]byte, len(m.lines))
-	d := *m
-	d.lines = slices.Clone(m.lines)
-	for i := range d.lines {
-		if l := &d.lines[i]; l.ion == ionizedHelium && l.Seen != Absorption {
-			l.Seen = Emission
+	m.diffuse, m.flaring = m.shining(ionizedHelium), m.shining(helium)
+	for i := range m.flaring.lines {
+		if l := &m.flaring.lines[i]; l.chromospheric() {
+			l.Seen = "both"
 		}
 	}
-	m.diffuse = &d
 	return m
 }
 
-const hydrogenIon, ionizedHelium = "H I", "He II"
+// shining returns the meter of a list in which an ion is only seen in emission.
+func (m *Meter) shining(ion string) *Meter {
+	d := *m
+	d.lines = slices.Clone(m.lines)
+	for i := range d.lines {
+		if l := &d.lines[i]; l.ion == ion && l.Seen != Absorption {
+			l.Seen = Emission
+		}
+	}
+	return &d
+}
+
+const hydrogenIon, helium, ionizedHelium = "H I", "He I", "He II"
 
 // starkHelium is the largest sigma, km/s, of He II in hot stars: it has one electron and the
 // linear Stark effect of hydrogen, but is weaker. Open spectra of hot subdwarfs have up to 530.
@@ -293,7 +306,7 @@ func plainIon(s string) string {
 // It never fails: bad data ends in Kind unmeasured with a Reason. An arm whose
 // slices differ in length is a caller's bug and panics, as does a redshift of
 // -1 or less. With a scratch that has seen spectra of the same size, and dst of
-// enough capacity, nothing is allocated. A scratch serves one call at a time;
+// enough capacity, nothing is allocated, flare stars apart. A scratch serves one call at a time;
 // nil makes a new one.
 func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch) []Result {
 	if !(opt.Z > -1) || math.IsInf(opt.Z, 0) {
@@ -315,7 +328,14 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 	}
 	s.bar = append(s.bar[:0], m.none...)
 	s.round(false)
-	if s.weigh(false) {
+	again := s.weigh(false)
+	if s.flares() {
+		again, s.meter = true, m.flaring
+		s.opt.Expect = func(l *linelist.Line) bool {
+			return l.Ion == helium && l.Name != "HeI_3889" || opt.Expect(l) // of H8 it is not told
+		}
+	}
+	if again {
 		s.round(true)
 		s.weigh(true)
 		s.recall()
