@@ -193,7 +193,7 @@ const bloatFrom = 2.0
 // the error of its width: that of the strongest forbidden line or, if more, of hydrogen,
 // for He I with its broad part.
 func (s *Scratch) bloated(t *track, r *Result) bool {
-	if s.opt.Broad || s.opt.Expect != nil || !(r.WidthErr >= 0) || !t.line.narrow && t.line.ion != helium {
+	if s.opt.Broad || s.star() || !(r.WidthErr >= 0) || !t.line.narrow && t.line.ion != helium {
 		return false
 	}
 	var width, best [2]float64
@@ -221,13 +221,14 @@ func (s *Scratch) bloated(t *track, r *Result) bool {
 }
 
 // pairs are lines of one ion, the second at least as strong in flux as the first.
-// Case B has He I 4471 at 0.37 of 5876 and 4026 at 0.17; [O III] 4363 reaches 5007 at
-// densities of 1e7, [N II] 5755 6583 at 1e6 (Osterbrock & Ferland 2006, from memory); [Ne III] 3967
+// Case B has He I 4471 at 0.37 of 5876, 6678 at 0.28 and 4026 at 0.17; [O III] 4363 reaches 5007 at
+// densities of 1e7, [N II] 5755 6583 at 1e6, and
+// [S III] 6312 9069 later still (Osterbrock & Ferland 2006, from memory); [Ne III] 3967
 // has 0.30 of 3869, from the same level (Storey & Zeippen 2000, from memory), and [Ne V] 3346 0.37 of
 // 3426 (Osterbrock & Ferland 2006, from memory). Dust weakens the bluer line.
 var pairs = [][2]string{
-	{"HeI_4026", "HeI_4471"}, {"HeI_4026", "HeI_5876"}, {"HeI_4471", "HeI_5876"},
-	{"OIII_4363", "OIII_5007"}, {"NII_5755", "NII_6583"}, {"NeIII_3967", "NeIII_3869"}, {"NeV_3346", "NeV_3426"},
+	{"HeI_4026", "HeI_4471"}, {"HeI_4026", "HeI_5876"}, {"HeI_4471", "HeI_5876"}, {"HeI_6678", "HeI_5876"},
+	{"OIII_4363", "OIII_5007"}, {"NII_5755", "NII_6583"}, {"NeIII_3967", "NeIII_3869"}, {"NeV_3346", "NeV_3426"}, {"SIII_6312", "SIII_9069"},
 }
 
 // findSisters lists for every line the stronger ones of its ion: pairs, and the
@@ -326,22 +327,8 @@ func (s *Scratch) mayShine(t *track) bool {
 		return t.line.chromospheric()
 	}
 	for i := range s.tracks {
-		if k := &s.tracks[i]; s.opt.Expect != nil && k.line.Name == "CaII_K" {
+		if k := &s.tracks[i]; s.star() && k.line.Name == "CaII_K" {
 			return k.result.Kind == Emission && k.doubt[0] == ""
-		}
-	}
-	return false
-}
-
-// flares reports whether hydrogen shines in a star that is too cool to have helium.
-func (s *Scratch) flares() bool {
-	i := s.meter.find("HeI_5876")
-	if s.opt.Expect == nil || i < 0 || s.opt.Expect(&s.meter.lines[i].Line) {
-		return false
-	}
-	for i := range s.tracks {
-		if t := &s.tracks[i]; t.line.series() == 2 && (s.firm(t, 0) || s.firm(t, 1)) {
-			return true
 		}
 	}
 	return false

@@ -116,8 +116,8 @@ type Options struct {
 
 	// Expect says which lines objects of this kind have; the others are not
 	// fitted, so that they take nothing from those that are there. nil: all, as in
-	// galaxies and quasars; He II then only in emission. Where hydrogen shines, He I but
-	// 3889 is fitted all the same, in emission.
+	// galaxies and quasars; He II then only in emission. Lines of hydrogen that crowd at
+	// the limit of their series, and He I of stars without it, go by expectation.
 	Expect func(*linelist.Line) bool
 
 	Sky []Band // wavelengths to be noted in Result.OnSky
@@ -281,7 +281,7 @@ func (m *Meter) shining(ion string) *Meter {
 	d := *m
 	d.lines = slices.Clone(m.lines)
 	for i := range d.lines {
-		if l := &d.lines[i]; l.ion == ion && l.Seen != Absorption {
+		if l := &d.lines[i]; l.ion == ion && l.Seen != Absorption || ion == ionizedHelium && crowds(&l.Line) == 3 {
 			l.Seen = Emission
 		}
 	}
@@ -306,7 +306,7 @@ func plainIon(s string) string {
 // It never fails: bad data ends in Kind unmeasured with a Reason. An arm whose
 // slices differ in length is a caller's bug and panics, as does a redshift of
 // -1 or less. With a scratch that has seen spectra of the same size, and dst of
-// enough capacity, nothing is allocated, flare stars apart. A scratch serves one call at a time;
+// enough capacity, nothing is allocated, cool stars apart. A scratch serves one call at a time;
 // nil makes a new one.
 func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch) []Result {
 	if !(opt.Z > -1) || math.IsInf(opt.Z, 0) {
@@ -326,13 +326,14 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 	if opt.Expect == nil {
 		s.meter = m.diffuse
 	}
+	s.opt.Expect = s.expectation(opt, false)
 	s.bar = append(s.bar[:0], m.none...)
 	s.round(false)
 	again := s.weigh(false)
-	if s.flares() {
-		again, s.meter = true, m.flaring
-		s.opt.Expect = func(l *linelist.Line) bool {
-			return l.Ion == helium && l.Name != "HeI_3889" || opt.Expect(l) // of H8 it is not told
+	if s.glows(opt) {
+		again, s.opt.Expect = true, s.expectation(opt, true)
+		if s.cool(opt) {
+			s.meter = m.flaring
 		}
 	}
 	if again {
