@@ -40,6 +40,11 @@ func (s *Scratch) round(again bool) {
 	s.load()
 	s.survey()
 	s.findTracks()
+	if !again && s.glows() {
+		s.claims = s.claims[:0]
+		s.survey()
+		s.findTracks()
+	}
 	s.plan()
 	for _, faint := range []bool{false, true} {
 		keep := again

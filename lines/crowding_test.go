@@ -4,6 +4,7 @@ import (
 	"math"
 	"math/rand/v2"
 	"slices"
+	"strings"
 	"testing"
 
 	"duskline/linelist"
@@ -175,6 +176,47 @@ func TestFlareStar(t *testing.T) {
 		}
 		if r := find1(t, res, tc.name); r.Kind != tc.other {
 			t.Errorf("%v: %s is %s %s, %.2f +- %.2f, want %s", tc.lit, tc.name, r.Kind, r.Reason, r.EWRest, r.EWRestErr, tc.other)
+		}
+	}
+}
+
+// Pa13, Pa15 and Pa16 of a nebula are no Ca II, and [S III] 6312 makes no [O I] broad: they are fitted where they
+// are seen, at any width that separates them, and unexpected where they are not, which leaves Ca II of stars alone.
+func TestNebulaHasNoCalcium(t *testing.T) {
+	m := fullMeter(t)
+	hydrogen := map[string]float64{"Ha": 3, "Hb": 1, "Pa9": 0.09, "Pa10": 0.06, "Pa11": 0.045, "Pa12": 0.035, "Pa13": 0.027, "Pa14": 0.022, "Pa15": 0.018, "Pa16": 0.015}
+	var nebula, stars []profileTruth
+	for _, l := range m.lines { // in order, not that of the map
+		if p := hydrogen[l.Name]; p > 0 {
+			nebula = append(nebula, rest(l.Wave, 70, 20*p))
+		}
+	}
+	nebula = append(nebula, rest(waveOf(t, m, "SIII_6312"), 70, 0.3), rest(waveOf(t, m, "OI_6300"), 70, 0.3), rest(waveOf(t, m, "OI_6364"), 70, 0.097), rest(waveOf(t, m, "HeI_6678"), 70, 0.6), rest(waveOf(t, m, "HeI_5876"), 70, 2), rest(waveOf(t, m, "SIII_9069"), 70, 3))
+	for _, name := range []string{"CaII_8498", "CaII_8542", "CaII_8662"} {
+		stars = append(stars, rest(waveOf(t, m, name), 150, -0.2))
+	}
+	for _, tc := range []struct {
+		lit  []profileTruth
+		want map[string]string // kinds
+	}{
+		{nebula, map[string]string{"Pa11": Emission, "Pa14": Emission, "HeI_6678": Emission, "SIII_6312": Emission, "OI_6300": Emission}},
+		{append(stars, rest(waveOf(t, m, "Ha"), 150, 1)), map[string]string{"Pa13": Unmeasured, "SIII_6312": Unmeasured, "HeI_6678": Unmeasured, "CaII_8498": Absorption, "CaII_8542": Absorption, "CaII_8662": Absorption}},
+	} {
+		var a Arm
+		noisy(&a, newArm(grid(6800, 30, 6400), 1, 0.02, tc.lit...), rand.New(rand.NewPCG(61, 1)))
+		res := m.Measure(nil, []Arm{a}, Options{}, nil)
+		for name, kind := range tc.want {
+			if r := find1(t, res, name); r.Kind != kind {
+				t.Errorf("%s is %s %s, want %s", name, r.Kind, r.Reason, kind)
+			}
+		}
+		for _, r := range res {
+			if strings.HasPrefix(r.Name, "CaII_8") && r.Kind == Emission {
+				t.Errorf("%s in emission, %.2f +- %.2f", r.Name, r.EWRest, r.EWRestErr)
+			}
+			if r.Name == "OI_6300" && r.Kind == Emission && math.Abs(r.WidthKms-70) > 4*r.WidthErr {
+				t.Errorf("[O I] is %.0f +- %.0f km/s wide, want 70", r.WidthKms, r.WidthErr)
+			}
 		}
 	}
 }

@@ -121,6 +121,8 @@ type Options struct {
 	Expect func(*linelist.Line) bool
 
 	Sky []Band // wavelengths to be noted in Result.OnSky
+
+	asked func(*linelist.Line) bool // Expect as it was given, see expectation
 }
 
 func (o Options) withDefaults() Options {
@@ -326,15 +328,13 @@ func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch)
 	if opt.Expect == nil {
 		s.meter = m.diffuse
 	}
-	s.opt.Expect = s.expectation(opt, false)
+	s.opt.asked = opt.Expect
+	s.opt.Expect = s.expectation(false, 0)
 	s.bar = append(s.bar[:0], m.none...)
 	s.round(false)
 	again := s.weigh(false)
-	if s.glows(opt) {
-		again, s.opt.Expect = true, s.expectation(opt, true)
-		if s.cool(opt) {
-			s.meter = m.flaring
-		}
+	if s.flares() {
+		again, s.meter = true, m.flaring
 	}
 	if again {
 		s.round(true)
