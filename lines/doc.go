@@ -14,6 +14,7 @@
 //
 //  1. search.go looks at every line with boxes of many widths and offsets, on
 //     running sums, and keeps the most significant: a start, not an answer.
+//     expectation.go says which lines an object has.
 //  2. plan.go joins lines into blends: those of one group of the line list and
 //     those within a few widths of one another. Lines of one ion in a blend
 //     share offset and width.

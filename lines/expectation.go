@@ -58,10 +58,10 @@ var proof = [...]struct {
 // expectation returns Options.Expect without the lines that objects of its kind do not
 // have as long as hydrogen does not shine in them, and with the faint ones that are seen.
 func (s *Scratch) expectation(shines bool, seen seenFaint) func(*linelist.Line) bool {
-	expect, star := s.opt.asked, s.star()
+	expect := s.opt.asked
 	switch {
-	case expect == nil && seen == 0:
-		return nothingFaint
+	case expect == nil:
+		return diffuse[seen]
 	case s.cool() && shines:
 		return func(l *linelist.Line) bool {
 			return crowds(l) != 3 && (l.Ion == helium && l.Name != "HeI_3889" || expect(l)) // 3889 is not told from H8
@@ -69,16 +69,16 @@ func (s *Scratch) expectation(shines bool, seen seenFaint) func(*linelist.Line) 
 	case s.cool() && !s.opt.Stark:
 		return func(l *linelist.Line) bool { return crowds(l) == 0 && expect(l) }
 	}
-	return func(l *linelist.Line) bool {
-		f := faint(l)
-		if star {
-			f &= paschen // helium absorbs in them
-		}
-		return f&^seen == 0 && (expect == nil || expect(l))
-	}
+	return func(l *linelist.Line) bool { return faint(l)&paschen&^seen == 0 && expect(l) } // helium absorbs in stars
 }
 
-func nothingFaint(l *linelist.Line) bool { return faint(l) == 0 }
+// diffuse are the expectations of what is no star, by the faint lines that are seen.
+var diffuse = func() (f [2 * sulfur]func(*linelist.Line) bool) {
+	for k := range f {
+		f[k] = func(l *linelist.Line) bool { return faint(l)&^seenFaint(k) == 0 }
+	}
+	return f
+}()
 
 // star reports whether the object is one: of others everything is expected.
 func (s *Scratch) star() bool { return s.meter != s.labeled.diffuse }

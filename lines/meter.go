@@ -308,7 +308,7 @@ func plainIon(s string) string {
 // It never fails: bad data ends in Kind unmeasured with a Reason. An arm whose
 // slices differ in length is a caller's bug and panics, as does a redshift of
 // -1 or less. With a scratch that has seen spectra of the same size, and dst of
-// enough capacity, nothing is allocated, cool stars apart. A scratch serves one call at a time;
+// enough capacity, nothing is allocated, but with Options.Expect a little. A scratch serves one call at a time;
 // nil makes a new one.
 func (m *Meter) Measure(dst []Result, arms []Arm, opt Options, scratch *Scratch) []Result {
 	if !(opt.Z > -1) || math.IsInf(opt.Z, 0) {
