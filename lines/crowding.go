@@ -14,13 +14,15 @@ import (
 // around it are (relief), and whether a line of the same ion that nature makes
 // stronger is there (denied).
 
-// clearEmission takes all lines measured in emission away from the residuals, and the
-// absorption under them that was told apart.
+// clearEmission takes all lines measured in emission away from the residuals, the
+// absorption under them that was told apart, and firm absorption by lines that the list groups, such as
+// Na I D beside He I: several at one offset are no unknown dip.
 func (s *Scratch) clearEmission() {
 	for i := range s.tracks {
 		t := &s.tracks[i]
 		for _, r := range t.parts() {
-			if r.Kind != Emission && !(t.shines() && r.Kind == Absorption) {
+			known := r.Kind == Absorption && (t.shines() || r.SNR >= firmSNR && t.line.group >= 0)
+			if r.Kind != Emission && !known {
 				continue
 			}
 			mu, sigma := r.place(t)

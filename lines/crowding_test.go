@@ -221,6 +221,18 @@ func TestNebulaHasNoCalcium(t *testing.T) {
 	}
 }
 
+// Deep Na I D beside He I 5876 are known lines, and no unknown dips that He I could be the gap between.
+func TestSodiumIsKnown(t *testing.T) {
+	m := fullMeter(t)
+	lit := []profileTruth{rest(waveOf(t, m, "HeI_5876"), 120, 0.12), rest(waveOf(t, m, "NaI_D2"), 120, -0.6), rest(waveOf(t, m, "NaI_D1"), 120, -0.5)}
+	var a Arm
+	noisy(&a, newArm(grid(5880, 50, 500), 1, 0.01, lit...), rand.New(rand.NewPCG(67, 1)))
+	r := find1(t, m.Measure(nil, []Arm{a}, Options{}, nil), "HeI_5876")
+	if r.Kind != Emission || math.Abs(r.EWRest+lit[0].flux) > 4*r.EWRestErr {
+		t.Errorf("%s %s, %.2f +- %.2f, want %.2f", r.Kind, r.Reason, r.EWRest, r.EWRestErr, -lit[0].flux)
+	}
+}
+
 // A companion in a band of the sky denies, too, though not what a firm line of the ion vouches for; and no narrow
 // line of a galaxy is more than twice as wide as its gas.
 func TestSkyAndWidthDeny(t *testing.T) {
