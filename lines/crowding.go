@@ -81,6 +81,8 @@ const (
 	// allyHeight is the height from which emission is believed where a firm line has its
 	// offset and width: a gap would have to lie in the one place. Common practice, no source.
 	allyHeight = 1.5
+	// kinHeight is that where the firm line is one of the same ion. Common practice, no source.
+	kinHeight = 1.0
 	// Allies differ by less than this part of the width in offset, and by less than this
 	// factor in width.
 	allyOffset, allyWidth = 0.5, 1.5
@@ -107,14 +109,14 @@ func (s *Scratch) acquit() {
 	for i := range s.tracks {
 		t := &s.tracks[i]
 		for part, r := range t.parts() {
-			if t.doubt[part] == "" || t.high[part] < allyHeight || s.lacksSister(t) {
+			if t.doubt[part] == "" || t.high[part] < kinHeight || s.lacksSister(t) {
 				continue
 			}
 			_, sigma := r.place(t)
 			for j := range s.tracks {
 				o := &s.tracks[j]
 				for k, q := range o.parts() {
-					if o == t || !s.firm(o, k) {
+					if o == t || !s.firm(o, k) || o.line.ion != t.line.ion && t.high[part] < allyHeight {
 						continue
 					}
 					_, width := q.place(o)
