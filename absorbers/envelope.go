@@ -1,6 +1,9 @@
 package absorbers
 
-import "math"
+import (
+	"math"
+	"slices"
+)
 
 const (
 	// envelopeHalf is the half width of the window in which the continuum of
@@ -71,19 +74,21 @@ func (e *envelope) fit(t *track, start int) {
 	}
 	e.narrow = e.narrow[:n]
 	clear(e.narrow)
-	e.settle(t, start)
+	e.settle(t, start, false)
 	if e.findPeaked(t, start) {
-		e.settle(t, start)
+		e.settle(t, start, true)
 	}
 }
 
-// settle fits and clips until no pixel changes sides.
-func (e *envelope) settle(t *track, start int) {
+// settle fits and clips until no pixel changes sides, all pieces or those with peaks.
+func (e *envelope) settle(t *track, start int, peaked bool) {
 	n := len(t.x)
 	for round := range clipRounds {
 		for first := start; first < n; {
 			end := index(t.x, t.x[first]+envelopePiece*envelopeHalf)
-			e.piece(t, first, end)
+			if !peaked || slices.Contains(e.narrow[first:end], true) {
+				e.piece(t, first, end)
+			}
 			first = end
 		}
 		if round == clipRounds-1 || !e.clip(t, start) {
