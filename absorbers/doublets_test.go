@@ -160,6 +160,9 @@ func TestOwnLines(t *testing.T) {
 // A line of something else beside one of the two does not enter its sum: the
 // other line tells what the doublet can have there.
 func TestForeignLine(t *testing.T) {
+	if testing.Short() {
+		t.Skip("takes statistics that the race detector is not for")
+	}
 	f := fullFinder(t)
 	const z = 1.1
 	pair := [][4]float64{{2796.3522, z, 1.0, 60}, {2803.531, z, 0.7, 60}}
@@ -193,6 +196,9 @@ func TestForeignLine(t *testing.T) {
 // sky lines and in telluric bands, make few doublets; the rest keeps its errors. 1,200
 // spectra had 0.09 in each, at the ends of the stretch: 22 of 240, and four times the root.
 func TestDistrustedErrors(t *testing.T) {
+	if testing.Short() {
+		t.Skip("takes statistics that the race detector is not for")
+	}
 	f := fullFinder(t)
 	r := rand.New(rand.NewPCG(37, 7))
 	made := 0
