@@ -36,10 +36,12 @@ func Fold(results []Result) []Result {
 		total.SNR = math.Abs(total.Flux) / total.FluxErr
 		switch {
 		case total.Flux > 0 && out[n-1].Kind != Emission && r.Kind != Emission && doubted(out[n-1].Reason, r.Reason) != "":
-			total.Kind, total.UpperLimit = Limit, math.Abs(total.EWRest)+3*total.EWRestErr
+			total.Kind = Limit
+			total.bound()
 			total.Reason = doubted(out[n-1].Reason, r.Reason)
 		case total.SNR < seenFrom:
-			total.Kind, total.UpperLimit = Limit, math.Abs(total.EWRest)+3*total.EWRestErr
+			total.Kind = Limit
+			total.bound()
 		case total.Flux > 0:
 			total.Kind, total.UpperLimit = Emission, math.NaN()
 		default:

@@ -95,12 +95,9 @@ func (s *Scratch) reportLine(ci int, ok bool, scale float64) {
 		r.Kind = Emission
 	case seen:
 		r.Kind = Absorption
-	case known && r.Reason == ReasonWrongSign:
-		r.Kind = Limit
-		r.UpperLimit = 3 * r.EWRestErr
 	case known:
 		r.Kind = Limit
-		r.UpperLimit = math.Abs(r.EWRest) + 3*r.EWRestErr
+		r.bound()
 	}
 	if r.Reason == "" && s.carries(ci) {
 		r.Reason = ReasonSum
